@@ -1,0 +1,174 @@
+//! The crystals compiled into the program, and the user's own.
+
+use super::file::File;
+use super::{Fault, Material, MaterialError};
+
+macro_rules! built_in {
+    ($($id:literal),* $(,)?) => {
+        &[$(($id, include_str!(concat!("../../data/materials/", $id, ".toml")))),*]
+    };
+}
+
+/// Ids and texts of the files under data/materials, in the order in which they are listed.
+const BUILT_IN: &[(&str, &str)] = built_in![
+    "bbo",
+    "lbo",
+    "bibo",
+    "ktp",
+    "rtp",
+    "kta",
+    "kdp",
+    "dkdp",
+    "adp",
+    "clbo",
+    "liio3",
+    "linbo3",
+    "mgo-linbo3",
+    "litao3",
+    "knbo3",
+    "aggas2",
+    "aggase2",
+    "zngep2",
+    "cdse",
+    "gase",
+    "cdgeas2",
+    "alpha-bbo",
+    "quartz",
+    "calcite",
+    "yvo4",
+    "rutile",
+    "mgf2",
+    "sapphire",
+];
+
+/// A commented material file to start from.
+pub const TEMPLATE: &str = include_str!("../../data/material-template.toml");
+
+/// Where materials are looked up: those compiled in, then those the user added.
+#[derive(Debug, Default)]
+pub struct Catalogue {
+    added: Vec<(String, Material)>,
+}
+
+impl Catalogue {
+    /// Adds a material file of the user. `name` is what errors call it.
+    ///
+    /// # Errors
+    /// A fault of the file with its line and column, or an id that is taken, naming both places.
+    pub fn add(&mut self, name: &str, text: &str) -> Result<&Material, MaterialError> {
+        let material = read(name, text)?;
+        let clash = if BUILT_IN.iter().any(|(id, _)| *id == material.id) {
+            Some("a crystal compiled into the program")
+        } else {
+            self.added.iter().find(|(_, m)| m.id == material.id).map(|(other, _)| other.as_str())
+        };
+        if let Some(other) = clash {
+            return Err(MaterialError::File(format!(
+                "{name}: the id `{}` is taken by {other}; choose another id",
+                material.id
+            )));
+        }
+        self.added.push((name.into(), material));
+        Ok(&self.added[self.added.len() - 1].1)
+    }
+
+    /// Ids of all materials, compiled-in ones first.
+    pub fn ids(&self) -> impl Iterator<Item = &str> {
+        BUILT_IN.iter().map(|(id, _)| *id).chain(self.added.iter().map(|(_, m)| m.id.as_str()))
+    }
+
+    /// One material. Only this file is read, so that a single answer does not wait for all of them.
+    ///
+    /// # Errors
+    /// [`MaterialError::Unknown`] with the nearest id.
+    pub fn get(&self, id: &str) -> Result<Material, MaterialError> {
+        if let Some((_, text)) = BUILT_IN.iter().find(|(name, _)| *name == id) {
+            return read(&format!("data/materials/{id}.toml"), text);
+        }
+        if let Some((_, material)) = self.added.iter().find(|(_, m)| m.id == id) {
+            return Ok(material.clone());
+        }
+        let hint = nearest(id, self.ids()).map_or(String::new(), |near| format!(", did you mean `{near}`?"));
+        Err(MaterialError::Unknown { id: id.into(), hint })
+    }
+}
+
+/// Reads and validates a material file.
+fn read(name: &str, text: &str) -> Result<Material, MaterialError> {
+    let file: File = toml::from_str(text).map_err(|e| {
+        let message = e.message().replace('\n', " ");
+        fault_text(name, text, &Fault { span: e.span().unwrap_or(0..0), message })
+    })?;
+    Material::from_file(file).map_err(|fault| fault_text(name, text, &fault))
+}
+
+fn fault_text(name: &str, text: &str, fault: &Fault) -> MaterialError {
+    MaterialError::File(crate::job::point_at(name, text, fault.span.clone(), &fault.message))
+}
+
+/// The name closest to `wanted`, if one is close enough to be meant.
+pub(crate) fn nearest<'a>(wanted: &str, names: impl Iterator<Item = &'a str>) -> Option<&'a str> {
+    names
+        .map(|name| (strsim::jaro_winkler(&wanted.to_lowercase(), name), name))
+        .filter(|(likeness, _)| *likeness > 0.72)
+        .max_by(|a, b| a.0.total_cmp(&b.0))
+        .map(|(_, name)| name)
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn every_file_under_data_is_compiled_in() {
+        let dir = std::path::Path::new(env!("CARGO_MANIFEST_DIR")).join("data/materials");
+        let mut files: Vec<String> = std::fs::read_dir(dir)
+            .expect("data/materials")
+            .filter_map(|f| f.ok()?.path().file_stem()?.to_str().map(String::from))
+            .collect();
+        let mut listed: Vec<String> = BUILT_IN.iter().map(|(id, _)| (*id).into()).collect();
+        files.sort();
+        listed.sort();
+        assert_eq!(files, listed);
+    }
+
+    #[test]
+    fn every_material_reads_and_reproduces_its_check_values() {
+        for id in Catalogue::default().ids() {
+            let material = Catalogue::default().get(id).unwrap_or_else(|e| panic!("{e}"));
+            assert_eq!(material.id, id);
+            for set in material.sets() {
+                assert!(set.file.check.len() >= 2, "{id}:{} has too few check values", set.id);
+                for check in &set.file.check {
+                    let axis = match check.axis.as_str() {
+                        "o" | "x" => 0,
+                        "y" => 1,
+                        _ => 2,
+                    };
+                    let wavelength = crate::quantity::Wavelength::metres(check.wavelength_um * 1e-6);
+                    let n = set.index(axis, wavelength, set.temperature).expect("an index").n;
+                    // the data base prints 7 decimals
+                    assert!((n - check.n).abs() < 1e-6, "{id}:{} {} {}", set.id, check.wavelength_um, n);
+                }
+            }
+        }
+    }
+
+    #[test]
+    fn the_template_is_a_valid_material() {
+        Catalogue::default().add("template", TEMPLATE).unwrap_or_else(|e| panic!("{e}"));
+    }
+
+    #[test]
+    fn unknown_crystals_get_a_suggestion() {
+        let error = Catalogue::default().get("BB0").expect_err("unknown").to_string();
+        assert!(error.contains("did you mean `bbo`"), "{error}");
+    }
+
+    #[test]
+    fn an_id_clash_names_both_places() {
+        let text = include_str!("../../data/materials/bbo.toml");
+        let error = Catalogue::default().add("mine.toml", text).expect_err("clash").to_string();
+        assert!(error.contains("mine.toml") && error.contains("compiled into the program"), "{error}");
+    }
+}
