@@ -1,0 +1,285 @@
+//! Where two rings meet: Delta_k1(d) = Delta_k2(d) = 0 for the external direction d of one photon; and how far they
+//! miss where they do not.
+
+use std::f64::consts::{FRAC_PI_2, TAU};
+
+use nalgebra::{Matrix2, Vector2, Vector3};
+
+use super::mismatch::Mismatch;
+use super::ring::{Ring, SAMPLES, azimuth};
+use super::root::bracketed;
+use crate::frame::{Direction, Lab};
+
+/// Rings this close (radians) count as touching, or as lying on each other.
+const CONTACT: f64 = 1e-6 * std::f64::consts::PI / 180.0;
+
+/// A direction in which a photon is phase matched in two histories.
+#[derive(Debug, Clone, Copy)]
+pub struct Crossing {
+    /// Of the photon.
+    pub direction: Direction,
+    /// Of its twin, as the first history has it; `None` where it is totally reflected.
+    pub partner: Option<Direction>,
+    /// Angle between the curves on the screen, radians, 0 to pi/2.
+    pub angle: f64,
+}
+
+/// Which way rings miss each other.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum GapKind {
+    /// Side by side.
+    Outside,
+    /// One within the other.
+    Inside,
+}
+
+/// Least distance between two rings.
+#[derive(Debug, Clone, Copy)]
+pub struct Contact {
+    /// Least angle between a point of one and a point of the other, radians.
+    pub gap: f64,
+    /// Which way they miss.
+    pub kind: GapKind,
+}
+
+/// How two rings lie to each other.
+#[derive(Debug, Clone)]
+pub enum Meeting {
+    /// They cross; by ascending azimuth about the first ring's axis.
+    Cross(Vec<Crossing>),
+    /// They touch in a point.
+    Touch(Crossing),
+    /// They lie on each other; the crossing is the point straight up from the axis.
+    Coincide(Crossing),
+    /// They miss.
+    Miss(Contact),
+}
+
+/// One ring with the mismatch it was traced with.
+#[derive(Debug, Clone, Copy)]
+pub struct Traced<'a> {
+    /// Its mismatch.
+    pub mismatch: &'a Mismatch,
+    /// The ring.
+    pub ring: &'a Ring,
+}
+
+/// The other ring's mismatch along a ring.
+#[derive(Debug, Clone, Copy)]
+struct Along {
+    /// Delta_k of the other process, rad/m: negative inside the other ring.
+    value: f64,
+    /// Its change per radian of azimuth.
+    slope: f64,
+    /// Size of its gradient, rad/m per radian of direction: near the other ring, value/scale is the angle off it.
+    scale: f64,
+}
+
+impl Along {
+    fn off(&self) -> f64 {
+        self.value / self.scale
+    }
+}
+
+/// Finds how two rings of a photon of one wavelength meet; `None` where a ring cannot be followed.
+#[must_use]
+pub fn meet(first: Traced<'_>, second: Traced<'_>) -> Option<Meeting> {
+    let samples = sample(first, second.mismatch)?;
+    if samples.iter().all(|s| s.off().abs() < CONTACT) {
+        return crossing(first, second, FRAC_PI_2).map(Meeting::Coincide);
+    }
+    let mut azimuths = Vec::with_capacity(4);
+    let mut touch = None;
+    for j in 0..SAMPLES {
+        between(first, second, j, &samples, &mut azimuths, &mut touch);
+    }
+    touch = touch.or_else(|| grazing(first, second, &mut azimuths));
+    let crossings: Vec<Crossing> =
+        azimuths.into_iter().filter_map(|phi| crossing(first, second, phi)).collect();
+    match (crossings.is_empty(), touch) {
+        (false, _) => Some(Meeting::Cross(crossings)),
+        (true, Some(phi)) => crossing(first, second, phi).map(Meeting::Touch),
+        (true, None) => {
+            let (contact, phi) = contact(first, second, &samples)?;
+            match contact.gap < CONTACT {
+                true => crossing(first, second, phi).map(Meeting::Touch),
+                false => Some(Meeting::Miss(contact)),
+            }
+        }
+    }
+}
+
+/// Takes two crossings between which the rings part by less than [`CONTACT`] out of the list: they are one contact.
+fn grazing(first: Traced<'_>, second: Traced<'_>, azimuths: &mut Vec<f64>) -> Option<f64> {
+    let count = azimuths.len();
+    for i in 0..count {
+        let (a, b) = (azimuths[i], azimuths[(i + 1) % count]);
+        let middle = if b >= a { 0.5 * (a + b) } else { 0.5 * (a + b + TAU) };
+        let near = (b - a).rem_euclid(TAU) < TAU / SAMPLES as f64;
+        if near && along(first, second.mismatch, middle)?.off().abs() < CONTACT {
+            azimuths.retain(|phi| *phi != a && *phi != b);
+            return Some(middle);
+        }
+    }
+    None
+}
+
+/// Least and largest Delta_k of the other process along a ring, rad/m: a tangency from outside is a zero of the first,
+/// from inside a zero of the second (or of the first, where the other ring is the inner one).
+#[must_use]
+pub fn reach(first: Traced<'_>, other: &Mismatch) -> Option<[f64; 2]> {
+    let samples = sample(first, other)?;
+    let mut reach = [f64::INFINITY, f64::NEG_INFINITY];
+    for (j, pair) in samples.windows(2).enumerate() {
+        let mut stretch = |value: f64| reach = [reach[0].min(value), reach[1].max(value)];
+        stretch(pair[0].value);
+        if pair[0].slope.is_sign_negative() != pair[1].slope.is_sign_negative() {
+            let slope = |phi: f64| along(first, other, phi).map(|s| s.slope);
+            if let Some(phi) = bracketed(slope, azimuth(j), azimuth(j + 1), pair[0].slope) {
+                stretch(along(first, other, phi)?.value);
+            }
+        }
+    }
+    Some(reach)
+}
+
+fn sample(first: Traced<'_>, other: &Mismatch) -> Option<[Along; SAMPLES + 1]> {
+    let mut samples = [Along { value: 0.0, slope: 0.0, scale: 1.0 }; SAMPLES + 1];
+    for (j, slot) in samples.iter_mut().enumerate().take(SAMPLES) {
+        *slot = along(first, other, azimuth(j))?;
+    }
+    samples[SAMPLES] = samples[0];
+    Some(samples)
+}
+
+/// Crossings between samples j and j + 1, by sign change or around an extremum of equal sign that reaches zero.
+fn between(
+    first: Traced<'_>,
+    second: Traced<'_>,
+    j: usize,
+    samples: &[Along; SAMPLES + 1],
+    azimuths: &mut Vec<f64>,
+    touch: &mut Option<f64>,
+) {
+    let (a, b) = (azimuth(j), azimuth(j + 1));
+    let (here, there) = (samples[j], samples[j + 1]);
+    let value = |phi: f64| along(first, second.mismatch, phi).map(|s| s.value);
+    if here.value.is_sign_negative() != there.value.is_sign_negative() {
+        azimuths.extend(bracketed(value, a, b, here.value));
+        return;
+    }
+    // towards zero at a, away from it at b
+    let approaches = here.slope * here.value < 0.0 && there.slope * there.value > 0.0;
+    if !approaches {
+        return;
+    }
+    let slope = |phi: f64| along(first, second.mismatch, phi).map(|s| s.slope);
+    let Some(turning) = bracketed(slope, a, b, here.slope) else { return };
+    let Some(nearest) = along(first, second.mismatch, turning) else { return };
+    if nearest.off().abs() < CONTACT {
+        *touch = Some(turning);
+    } else if nearest.value.is_sign_negative() != here.value.is_sign_negative() {
+        azimuths.extend(bracketed(value, a, turning, here.value));
+        azimuths.extend(bracketed(value, b, turning, there.value));
+    }
+}
+
+fn along(first: Traced<'_>, other: &Mismatch, phi: f64) -> Option<Along> {
+    let (d, tangent) = first.ring.point_and_tangent(first.mismatch, phi)?;
+    let there = other.towards(d)?;
+    let across = there.gradient - d * there.gradient.dot(&d);
+    let scale = across.norm().max(f64::MIN_POSITIVE);
+    Some(Along { value: there.value, slope: there.gradient.dot(&tangent), scale })
+}
+
+/// The crossing near an azimuth of the first ring, polished by Newton in both equations.
+fn crossing(first: Traced<'_>, second: Traced<'_>, phi: f64) -> Option<Crossing> {
+    let mut d = first.ring.at(first.mismatch, phi)?.lab().0;
+    for _ in 0..4 {
+        let (one, two) = (first.mismatch.towards(d)?, second.mismatch.towards(d)?);
+        let e1 = d.cross(&Vector3::x()).normalize();
+        let e2 = d.cross(&e1);
+        let jacobian = Matrix2::new(
+            one.gradient.dot(&e1),
+            one.gradient.dot(&e2),
+            two.gradient.dot(&e1),
+            two.gradient.dot(&e2),
+        );
+        // curves that touch leave the second equation to the first
+        let size = jacobian.row(0).norm() * jacobian.row(1).norm();
+        if jacobian.determinant().abs() < 1e-6 * size {
+            break;
+        }
+        let step = jacobian.try_inverse()? * Vector2::new(-one.value, -two.value);
+        d = (d + e1 * step.x + e2 * step.y).normalize();
+    }
+    let direction = Direction::new(Lab(d));
+    Some(Crossing {
+        direction,
+        partner: first.mismatch.partner(direction),
+        angle: screen_angle(d, first.mismatch.towards(d)?.gradient, second.mismatch.towards(d)?.gradient),
+    })
+}
+
+/// Angle on the screen between two curves through d with the given gradients, 0 to pi/2.
+fn screen_angle(d: Vector3<f64>, one: Vector3<f64>, two: Vector3<f64>) -> f64 {
+    let on_screen = |gradient: Vector3<f64>| {
+        let tangent = d.cross(&gradient);
+        // d(x/z) = (t_x - x t_z/z)/z
+        Vector2::new(tangent.x - d.x * tangent.z / d.z, tangent.y - d.y * tangent.z / d.z)
+    };
+    let (a, b) = (on_screen(one), on_screen(two));
+    a.perp(&b).abs().atan2(a.dot(&b).abs())
+}
+
+/// Least angle between two rings that do not meet, and the first ring's azimuth where it is found.
+fn contact(first: Traced<'_>, second: Traced<'_>, samples: &[Along; SAMPLES + 1]) -> Option<(Contact, f64)> {
+    let inside_second = samples[0].value < 0.0;
+    let around_second = || first.mismatch.towards(second.ring.vector(0)).is_some_and(|t| t.value < 0.0);
+    let kind = if inside_second || around_second() { GapKind::Inside } else { GapKind::Outside };
+    let mut nearest = (f64::INFINITY, 0, 0);
+    for i in 0..SAMPLES {
+        let d = first.ring.vector(i);
+        for j in 0..SAMPLES {
+            let distance = (d - second.ring.vector(j)).norm_squared();
+            if distance < nearest.0 {
+                nearest = (distance, i, j);
+            }
+        }
+    }
+    let mut at = Vector2::new(azimuth(nearest.1), azimuth(nearest.2));
+    // the chord stands on both curves: (d1 - d2).t1 = (d1 - d2).t2 = 0, by Newton with differences for the Jacobian
+    let standing = |at: Vector2<f64>| {
+        let (d1, t1) = first.ring.point_and_tangent(first.mismatch, at.x)?;
+        let (d2, t2) = second.ring.point_and_tangent(second.mismatch, at.y)?;
+        Some((d1, d2, Vector2::new((d1 - d2).dot(&t1.normalize()), (d1 - d2).dot(&t2.normalize()))))
+    };
+    let angle = |d1: Vector3<f64>, d2: Vector3<f64>| d1.cross(&d2).norm().atan2(d1.dot(&d2));
+    let (d1, d2, _) = standing(at)?;
+    let mut gap = angle(d1, d2);
+    for _ in 0..20 {
+        const STEP: f64 = 1e-5;
+        let (_, _, here) = standing(at)?;
+        let (_, _, du) = standing(at + Vector2::new(STEP, 0.0))?;
+        let (_, _, dv) = standing(at + Vector2::new(0.0, STEP))?;
+        let jacobian = Matrix2::from_columns(&[(du - here) / STEP, (dv - here) / STEP]);
+        let Some(inverse) = jacobian.try_inverse() else { break };
+        let mut step = inverse * -here;
+        let longest = step.amax();
+        if longest > TAU / SAMPLES as f64 {
+            step *= TAU / SAMPLES as f64 / longest;
+        }
+        let (d1, d2, _) = standing(at + step)?;
+        let closer = angle(d1, d2);
+        if closer >= gap {
+            break;
+        }
+        at += step;
+        let done = gap - closer < 1e-15;
+        gap = closer;
+        if done {
+            break;
+        }
+    }
+    Some((Contact { gap, kind }, at.x))
+}

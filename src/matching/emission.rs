@@ -1,0 +1,193 @@
+//! One crystal emitting pairs of given wavelengths: indices once per wavelength, media once per orientation.
+
+use nalgebra::Vector3;
+
+use super::interaction::{Interaction, Process, Roles};
+use super::mismatch::Mismatch;
+use super::partner::Pairing;
+use crate::frame::{Direction, Lab, Placement};
+use crate::material::{MaterialError, Principal};
+use crate::optics::{Crystal, Medium};
+use crate::quantity::Wavelength;
+
+/// Wavelengths of one process; energy is conserved by construction.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Photons {
+    /// Of the pump.
+    pub pump: Wavelength,
+    /// Of the signal.
+    pub signal: Wavelength,
+    /// Of the idler.
+    pub idler: Wavelength,
+}
+
+impl Photons {
+    /// The idler follows from pump and signal; `None` where the signal is not longer than the pump.
+    #[must_use]
+    pub fn new(pump: Wavelength, signal: Wavelength) -> Option<Self> {
+        Some(Self { pump, signal, idler: signal.partner(pump)? })
+    }
+
+    /// Whether signal and idler have the same wavelength (to a part in 10^9).
+    #[must_use]
+    pub fn degenerate(&self) -> bool {
+        (self.signal.si() / self.idler.si() - 1.0).abs() < 1e-9
+    }
+
+    /// Signal and idler exchanged.
+    #[must_use]
+    pub fn exchanged(&self) -> Self {
+        Self { pump: self.pump, signal: self.idler, idler: self.signal }
+    }
+}
+
+/// Principal indices at the three wavelengths: independent of how the crystal is cut and mounted.
+#[derive(Debug, Clone, Copy)]
+pub struct Triplet {
+    /// At the pump.
+    pub pump: Principal,
+    /// At the signal.
+    pub signal: Principal,
+    /// At the idler.
+    pub idler: Principal,
+}
+
+impl Triplet {
+    /// Looks up the indices of a crystal.
+    ///
+    /// # Errors
+    /// A wavelength or temperature outside the data set's range.
+    pub fn new(crystal: &Crystal, photons: &Photons) -> Result<Self, MaterialError> {
+        Ok(Self {
+            pump: crystal.principal(photons.pump)?,
+            signal: crystal.principal(photons.signal)?,
+            idler: crystal.principal(photons.idler)?,
+        })
+    }
+
+    /// The three media in a placement.
+    #[must_use]
+    pub fn media(&self, placement: &Placement) -> Media {
+        let axes = placement.dielectric_axes();
+        Media {
+            pump: Medium::new(&self.pump, axes),
+            signal: Medium::new(&self.signal, axes),
+            idler: Medium::new(&self.idler, axes),
+        }
+    }
+}
+
+/// The crystal at the three frequencies, in the mount frame.
+#[derive(Debug, Clone, Copy)]
+pub struct Media {
+    /// At the pump.
+    pub pump: Medium,
+    /// At the signal.
+    pub signal: Medium,
+    /// At the idler.
+    pub idler: Medium,
+}
+
+/// A crystal that stands in the beam, at the wavelengths of one pair of photons.
+#[derive(Debug, Clone)]
+pub struct Emission {
+    /// The wavelengths.
+    pub photons: Photons,
+    /// Frames of the crystal.
+    pub placement: Placement,
+    /// The crystal at the three frequencies.
+    pub media: Media,
+    /// 2 pi / period of the domains at the crystal's temperature, rad/m; 0 without poling.
+    pub grating: f64,
+    /// Length along the normal, m.
+    pub length: f64,
+}
+
+impl Emission {
+    /// From indices that are already known; `crystal` gives cut, mount, length and poling.
+    #[must_use]
+    pub fn new(crystal: &Crystal, photons: Photons, triplet: &Triplet) -> Self {
+        let placement = crystal.placement();
+        Self {
+            photons,
+            media: triplet.media(&placement),
+            placement,
+            grating: crystal.hot_poling().map_or(0.0, |period| 2.0 * std::f64::consts::PI / period.si()),
+            length: crystal.hot_length().si(),
+        }
+    }
+
+    /// Looks the indices up.
+    ///
+    /// # Errors
+    /// A wavelength or temperature outside the data set's range.
+    pub fn of(crystal: &Crystal, photons: Photons) -> Result<Self, MaterialError> {
+        Ok(Self::new(crystal, photons, &Triplet::new(crystal, &photons)?))
+    }
+
+    /// Sheet assignments of an interaction at these wavelengths.
+    ///
+    /// # Errors
+    /// o and e asked of a biaxial crystal.
+    pub fn roles(&self, interaction: Interaction) -> Result<Vec<Roles>, String> {
+        interaction.roles(&self.media.pump, &self.media.signal, &self.media.idler)
+    }
+
+    /// In the words of the crystal's kind.
+    #[must_use]
+    pub fn process(&self, roles: Roles) -> Process {
+        roles.process(&self.media.pump, &self.media.signal, &self.media.idler)
+    }
+
+    /// Mismatch of a process, with the sign of the grating that matches better for a pair along the pump.
+    #[must_use]
+    pub fn mismatch(&self, roles: Roles) -> Option<Mismatch> {
+        let bare = Mismatch::new(&self.media, roles, &self.placement, 0.0)?;
+        if self.grating == 0.0 {
+            return Some(bare);
+        }
+        let sign = bare.at(bare.along_pump()).map_or(1.0, |at| at.value.signum());
+        Mismatch::new(&self.media, roles, &self.placement, sign * self.grating)
+    }
+
+    /// Sign s of the grating term that [`Self::mismatch`] uses.
+    #[must_use]
+    pub fn grating_sign(&self, roles: Roles) -> Option<f64> {
+        let bare = Mismatch::new(&self.media, roles, &self.placement, 0.0)?;
+        bare.at(bare.along_pump()).map(|at| at.value.signum())
+    }
+
+    /// The pump and a pair whose signal leaves towards `signal`; `None` where a wave does not exist.
+    #[must_use]
+    pub fn pairing(&self, roles: Roles, signal: Direction) -> Option<Pairing> {
+        Pairing::new(self, roles, signal)
+    }
+
+    /// The same pairs seen from the idler.
+    #[must_use]
+    pub fn exchanged(&self) -> Self {
+        let media = Media { pump: self.media.pump, signal: self.media.idler, idler: self.media.signal };
+        Self { photons: self.photons.exchanged(), media, ..self.clone() }
+    }
+
+    /// Polar angle and azimuth of the pump's wave vector in the dielectric frame, radians.
+    #[must_use]
+    pub fn pump_inside(&self, roles: Roles) -> Option<(f64, f64)> {
+        let mismatch = Mismatch::new(&self.media, roles, &self.placement, 0.0)?;
+        let k = self.media.pump.wave(roles.pump, mismatch.pump())?.k;
+        let d = self.placement.to_dielectric(k).0;
+        Some((d.xy().norm().atan2(d.z), d.y.atan2(d.x)))
+    }
+
+    /// Azimuth of the signal's electric field in the lab, from +x towards +y, degrees in [0, 180), along the pump.
+    #[must_use]
+    pub fn field_azimuth(&self, roles: Roles, signal: Direction) -> Option<f64> {
+        let pairing = self.pairing(roles, signal)?;
+        let Lab(field) = self.placement.to_lab(pairing.signal.field);
+        let Lab(d) = signal.lab();
+        // the transverse part of the field, in the plane that the photon outside lies across
+        let outside: Vector3<f64> = field - d * field.dot(&d);
+        let azimuth = crate::quantity::tidy(outside.y.atan2(outside.x).to_degrees()).rem_euclid(180.0);
+        Some(if azimuth > 180.0 - 1e-9 { 0.0 } else { azimuth })
+    }
+}

@@ -1,0 +1,235 @@
+//! The normal phase mismatch of one process as a function of the signal's direction.
+//!
+//! Delta_k = k_wp - k_ws(q_s) - k_wi(q_p - q_s) - K,   K = 2 pi s m / Lambda,
+//! d Delta_k / d q_s = S_s,t/S_s,w - S_i,t/S_i,w.
+//! Tangential wave vectors and frequencies are conserved exactly.
+
+use nalgebra::Vector3;
+
+use super::emission::Media;
+use super::interaction::Roles;
+use crate::frame::{Direction, Lab, Mount, Placement, Tangential};
+use crate::optics::Surface;
+
+/// Phase mismatch of one process in one crystal; signal and idler by role.
+#[derive(Debug, Clone, Copy)]
+pub struct Mismatch {
+    q_pump: Tangential,
+    k_pump: f64,
+    grating: f64,
+    signal: Surface,
+    idler: Surface,
+    k0_signal: f64,
+    k0_idler: f64,
+    face: [Vector3<f64>; 2],
+    normal: Vector3<f64>,
+}
+
+/// Mismatch and its gradient at one tangential wave vector.
+#[derive(Debug, Clone, Copy)]
+pub struct Sample {
+    /// Delta_k, rad/m.
+    pub value: f64,
+    /// d Delta_k/d q_u and d q_v, dimensionless.
+    pub slope: [f64; 2],
+}
+
+/// Mismatch towards an external direction of the signal.
+#[derive(Debug, Clone, Copy)]
+pub(crate) struct Towards {
+    /// Delta_k, rad/m.
+    pub value: f64,
+    /// Delta_k changes by gradient . delta d for a small change of the unit direction d (lab), rad/m.
+    pub gradient: Vector3<f64>,
+}
+
+/// Where the mismatch is stationary.
+#[derive(Debug, Clone, Copy)]
+pub(crate) struct Stationary {
+    /// Signal's tangential wave vector.
+    pub q: Tangential,
+    /// Delta_k there, rad/m.
+    pub value: f64,
+    /// Geometric mean of the two curvatures along q, m.
+    pub curvature: f64,
+}
+
+impl Mismatch {
+    /// For the media of a process in a crystal placed so, pumped along lab z; `grating` in rad/m. `None` where the
+    /// pump cannot enter.
+    #[must_use]
+    pub fn new(media: &Media, roles: Roles, placement: &Placement, grating: f64) -> Option<Self> {
+        let k0_pump = media.pump.k0();
+        let Mount(d) = placement.to_mount(Lab(Vector3::z()));
+        let q_pump = Tangential { u: k0_pump * d.x, v: k0_pump * d.y };
+        let face = placement.face_axes();
+        Some(Self {
+            q_pump,
+            k_pump: media.pump.surface(roles.pump).normal(q_pump)?.k_w,
+            grating,
+            signal: *media.signal.surface(roles.signal),
+            idler: *media.idler.surface(roles.idler),
+            k0_signal: media.signal.k0(),
+            k0_idler: media.idler.k0(),
+            face,
+            normal: face[0].cross(&face[1]),
+        })
+    }
+
+    /// The same pairs seen from the idler: signal and idler exchanged.
+    #[must_use]
+    pub fn exchanged(&self) -> Self {
+        Self {
+            signal: self.idler,
+            idler: self.signal,
+            k0_signal: self.k0_idler,
+            k0_idler: self.k0_signal,
+            ..*self
+        }
+    }
+
+    /// Tangential wave vector of the pump, rad/m.
+    #[must_use]
+    pub fn pump(&self) -> Tangential {
+        self.q_pump
+    }
+
+    /// Mismatch at a signal's tangential wave vector (rad/m); `None` where a photon is evanescent.
+    #[inline]
+    #[must_use]
+    pub fn at(&self, q: Tangential) -> Option<Sample> {
+        let signal = self.signal.normal(q)?;
+        let idler = self.idler.normal(self.q_pump - q)?;
+        Some(Sample {
+            value: self.k_pump - signal.k_w - idler.k_w - self.grating,
+            slope: [idler.slope[0] - signal.slope[0], idler.slope[1] - signal.slope[1]],
+        })
+    }
+
+    /// Mismatch towards a unit direction in the lab; `None` behind the exit face and where the idler is evanescent.
+    #[inline]
+    pub(crate) fn towards(&self, d: Vector3<f64>) -> Option<Towards> {
+        if d.dot(&self.normal) <= 0.0 {
+            return None;
+        }
+        let [u, v] = &self.face;
+        let sample = self.at(Tangential { u: self.k0_signal * d.dot(u), v: self.k0_signal * d.dot(v) })?;
+        let gradient = (u * sample.slope[0] + v * sample.slope[1]) * self.k0_signal;
+        Some(Towards { value: sample.value, gradient })
+    }
+
+    /// The signal's tangential wave vector for an external direction.
+    #[must_use]
+    pub fn tangential(&self, direction: Direction) -> Tangential {
+        let Lab(d) = direction.lab();
+        Tangential { u: self.k0_signal * d.dot(&self.face[0]), v: self.k0_signal * d.dot(&self.face[1]) }
+    }
+
+    /// The signal's external direction; `None` where it is totally reflected.
+    #[must_use]
+    pub fn direction(&self, q: Tangential) -> Option<Direction> {
+        outside(q, self.k0_signal, &self.face, &self.normal)
+    }
+
+    /// Where the idler goes when the signal goes to `direction`; `None` where it is totally reflected.
+    #[must_use]
+    pub fn partner(&self, direction: Direction) -> Option<Direction> {
+        outside(self.q_pump - self.tangential(direction), self.k0_idler, &self.face, &self.normal)
+    }
+
+    /// The signal's wave vector inside the crystal, mount frame, rad/m.
+    pub(crate) fn inside(&self, direction: Direction) -> Option<Vector3<f64>> {
+        let q = self.tangential(direction);
+        Some(Vector3::new(q.u, q.v, self.signal.normal(q)?.k_w))
+    }
+
+    /// Whether the mismatch is a convex function, so that its zeros are one convex curve about its minimum.
+    #[must_use]
+    pub fn is_convex(&self) -> bool {
+        self.signal.is_convex() && self.idler.is_convex()
+    }
+
+    /// The stationary point reached by damped Newton steps from `start`; `None` if they leave the domain.
+    pub(crate) fn stationary(&self, start: Tangential) -> Option<Stationary> {
+        const STEPS: usize = 100;
+        let mut q = start;
+        let mut here = self.at(q)?;
+        for _ in 0..STEPS {
+            let [a, b, c] = self.hessian(q)?;
+            let determinant = a * c - b * b;
+            let [gu, gv] = here.slope;
+            let (mut du, mut dv) = if determinant > 0.0 {
+                ((b * gv - c * gu) / determinant, (b * gu - a * gv) / determinant)
+            } else {
+                let size = 1e-3 * self.k0_signal / gu.hypot(gv).max(1e-300);
+                (-gu * size, -gv * size)
+            };
+            let limit = 0.3 * self.k0_signal;
+            let size = du.hypot(dv);
+            if size > limit {
+                (du, dv) = (du * limit / size, dv * limit / size);
+            }
+            let next = self.descend(q, &here, [du, dv]);
+            let Some((moved, sample)) = next else {
+                return self.found(q, &here);
+            };
+            (q, here) = (moved, sample);
+            if du.hypot(dv) <= 1e-13 * self.k0_signal {
+                break;
+            }
+        }
+        self.found(q, &here)
+    }
+
+    /// Halves a step until the slope along it does not grow and the point lies in the domain.
+    fn descend(&self, q: Tangential, here: &Sample, step: [f64; 2]) -> Option<(Tangential, Sample)> {
+        let before = here.slope[0].hypot(here.slope[1]);
+        let mut scale = 1.0;
+        for _ in 0..40 {
+            let moved = Tangential { u: q.u + scale * step[0], v: q.v + scale * step[1] };
+            if let Some(sample) = self.at(moved) {
+                let lower = sample.value < here.value;
+                if sample.slope[0].hypot(sample.slope[1]) < before || lower {
+                    return Some((moved, sample));
+                }
+            }
+            scale *= 0.5;
+        }
+        None
+    }
+
+    fn found(&self, q: Tangential, here: &Sample) -> Option<Stationary> {
+        let [a, b, c] = self.hessian(q)?;
+        (here.slope[0].hypot(here.slope[1]) < 1e-7).then(|| Stationary {
+            q,
+            value: here.value,
+            curvature: (a * c - b * b).abs().sqrt(),
+        })
+    }
+
+    /// Second derivatives of Delta_k with respect to q: uu, uv, vv.
+    fn hessian(&self, q: Tangential) -> Option<[f64; 3]> {
+        let other = self.q_pump - q;
+        let (signal, idler) = (self.signal.normal(q)?, self.idler.normal(other)?);
+        let s = self.signal.curvature(q, &signal);
+        let i = self.idler.curvature(other, &idler);
+        Some([-s.uu - i.uu, -s.uv - i.uv, -s.vv - i.vv])
+    }
+
+    /// Tangential wave vector of a signal that travels with the pump: a start for [`Self::stationary`].
+    pub(crate) fn along_pump(&self) -> Tangential {
+        let share = self.k0_signal / (self.k0_signal + self.k0_idler);
+        Tangential { u: share * self.q_pump.u, v: share * self.q_pump.v }
+    }
+
+    pub(crate) fn k0_signal(&self) -> f64 {
+        self.k0_signal
+    }
+}
+
+/// External direction of a tangential wave vector, in the lab.
+fn outside(q: Tangential, k0: f64, face: &[Vector3<f64>; 2], normal: &Vector3<f64>) -> Option<Direction> {
+    let (u, v) = (q.u / k0, q.v / k0);
+    let w2 = 1.0 - u * u - v * v;
+    (w2 > 0.0).then(|| Direction::new(Lab(face[0] * u + face[1] * v + normal * w2.sqrt())))
+}

@@ -1,0 +1,80 @@
+//! Phase matching: which directions, cuts and turns let a pump photon become a pair.
+
+mod acceptance;
+mod cones;
+mod crossing;
+mod cut;
+mod emission;
+mod interaction;
+mod mismatch;
+mod partner;
+mod ring;
+mod root;
+mod target;
+mod tuning;
+
+pub use acceptance::{Acceptance, acceptances};
+pub use cones::{Cones, ConesError, CrossingRow, HistoryName, Landing, RingRow, cones};
+pub use crossing::{Contact, Crossing, GapKind, Meeting, Traced, meet};
+pub use cut::{CutSolution, Design, Find, Plane, Shortfall, best_phi, design, shortfall};
+pub use emission::{Emission, Media, Photons, Triplet};
+pub use interaction::{Interaction, Process, ProcessError, Roles};
+pub use mismatch::{Mismatch, Sample};
+pub use partner::Pairing;
+pub use ring::{Ring, RingFault, SAMPLES, rings};
+pub use root::{Root, Scan, roots};
+pub use target::{Measure, Target};
+pub use tuning::{Actuator, Turn, nearest_touch, tune, tuning_turn};
+
+use std::fmt;
+
+/// What a row says about itself instead of a number that does not exist.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, Hash)]
+pub enum Status {
+    /// Everything asked for is there.
+    Ok,
+    /// Two rings touch in a point (within 1e-6 deg).
+    Touching,
+    /// Two rings lie on each other all the way round.
+    Coincident,
+    /// Two rings miss each other.
+    Apart,
+    /// No direction is phase matched.
+    NoPhaseMatching,
+    /// d_eff is zero by symmetry; the geometry holds.
+    NoNonlinearity,
+    /// A wavelength or temperature is outside the data set's range.
+    OutOfRange,
+    /// The material absorbs.
+    Opaque,
+    /// A photon cannot leave through the face.
+    TotalReflection,
+    /// The ring leaves the search region.
+    OpenRing,
+    /// A wave travels along an optic axis, where fast and slow are the same.
+    OpticAxis,
+    /// An impossible description.
+    Invalid,
+    /// The solver gave up.
+    NotConverged,
+}
+
+impl fmt::Display for Status {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        f.pad(match self {
+            Self::Ok => "ok",
+            Self::Touching => "touching",
+            Self::Coincident => "coincident",
+            Self::Apart => "apart",
+            Self::NoPhaseMatching => "no_phase_matching",
+            Self::NoNonlinearity => "no_nonlinearity",
+            Self::OutOfRange => "out_of_range",
+            Self::Opaque => "opaque",
+            Self::TotalReflection => "total_reflection",
+            Self::OpenRing => "open_ring",
+            Self::OpticAxis => "optic_axis",
+            Self::Invalid => "invalid",
+            Self::NotConverged => "not_converged",
+        })
+    }
+}

@@ -1,0 +1,180 @@
+//! How far to turn (or heat, or tune the pump) to reach a target.
+
+use super::emission::{Emission, Photons, Triplet};
+use super::interaction::Roles;
+use super::root::{Scan, roots};
+use super::target::{Measure, Target, touching_reach};
+use crate::frame::Direction;
+use crate::material::MaterialError;
+use crate::optics::Crystal;
+use crate::quantity::{Angle, Temperature, Wavelength};
+
+/// What is changed.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Actuator {
+    /// `crystal.tilt`.
+    Tilt,
+    /// `crystal.cross_tilt`.
+    CrossTilt,
+    /// `crystal.temperature`.
+    Temperature,
+    /// `pump.wavelength`.
+    Pump,
+}
+
+/// A setting that meets the target.
+#[derive(Debug, Clone)]
+pub struct Turn {
+    /// The setting in SI: radians, degrees Celsius or metres.
+    pub setting: f64,
+    /// Crystal at the setting.
+    pub crystal: Crystal,
+    /// Wavelengths at the setting.
+    pub photons: Photons,
+    /// Angle between the pump inside the crystal and Z, radians.
+    pub theta_inside: f64,
+    /// Azimuth of the pump inside the crystal, radians.
+    pub phi_inside: f64,
+    /// Geometry at the setting.
+    pub measure: Measure,
+}
+
+/// Search half range of a turn, radians.
+const TURN_RANGE: f64 = 30.0 * std::f64::consts::PI / 180.0;
+/// Sampling interval of a turn, radians.
+const TURN_STEP: f64 = 0.25 * std::f64::consts::PI / 180.0;
+
+/// The crystal and photons of a search, with indices looked up only where they change.
+struct Bench<'a> {
+    crystal: &'a Crystal,
+    photons: Photons,
+    /// A signal wavelength that stays when the pump changes; else both photons keep their frequency ratio.
+    fixed_signal: Option<Wavelength>,
+    triplet: Triplet,
+    actuator: Actuator,
+}
+
+impl Bench<'_> {
+    fn at(&self, setting: f64) -> Option<(Crystal, Photons, Emission)> {
+        let mut crystal = self.crystal.clone();
+        let mut photons = self.photons;
+        match self.actuator {
+            Actuator::Tilt => crystal.orientation.tilt = Angle::radians(setting),
+            Actuator::CrossTilt => crystal.orientation.cross_tilt = Angle::radians(setting),
+            Actuator::Temperature => crystal.temperature = Temperature::celsius(setting),
+            Actuator::Pump => {
+                photons = retuned(&self.photons, Wavelength::metres(setting), self.fixed_signal)?
+            }
+        }
+        let emission = match self.actuator {
+            Actuator::Tilt | Actuator::CrossTilt => Emission::new(&crystal, photons, &self.triplet),
+            Actuator::Temperature | Actuator::Pump => Emission::of(&crystal, photons).ok()?,
+        };
+        Some((crystal, photons, emission))
+    }
+
+    fn scan(&self) -> Scan {
+        match self.actuator {
+            Actuator::Tilt | Actuator::CrossTilt => {
+                let now = self.now();
+                let intervals = (2.0 * TURN_RANGE / TURN_STEP).round() as usize;
+                Scan { from: now - TURN_RANGE, to: now + TURN_RANGE, intervals }
+            }
+            Actuator::Temperature => Scan { from: -50.0, to: 300.0, intervals: 175 },
+            Actuator::Pump => {
+                let now = self.photons.pump.si();
+                Scan { from: 0.8 * now, to: 1.25 * now, intervals: 225 }
+            }
+        }
+    }
+
+    fn now(&self) -> f64 {
+        match self.actuator {
+            Actuator::Tilt => self.crystal.orientation.tilt.si(),
+            Actuator::CrossTilt => self.crystal.orientation.cross_tilt.si(),
+            Actuator::Temperature => self.crystal.temperature.degc(),
+            Actuator::Pump => self.photons.pump.si(),
+        }
+    }
+
+    /// Settings of all roots, nearest to the present one first.
+    fn settings(&self, target: Target, roles: Roles) -> Vec<f64> {
+        let find = |f: &mut dyn FnMut(&Emission) -> Option<f64>| {
+            roots(&mut |x| self.at(x).and_then(|(_, _, emission)| f(&emission)), self.scan())
+        };
+        let mut found = match target {
+            Target::Touching => {
+                let mut all = find(&mut |e| touching_reach(e, roles).map(|r| r[0]));
+                all.extend(find(&mut |e| touching_reach(e, roles).map(|r| r[1])));
+                all
+            }
+            _ => find(&mut |e| target.residual(e, roles)),
+        };
+        let now = self.now();
+        found.sort_by(|a, b| (a.x - now).abs().total_cmp(&(b.x - now).abs()));
+        found.into_iter().map(|root| root.x).collect()
+    }
+}
+
+/// The photons when the pump changes: the signal stays if fixed, else the frequency ratio stays.
+pub(super) fn retuned(
+    photons: &Photons,
+    pump: Wavelength,
+    fixed_signal: Option<Wavelength>,
+) -> Option<Photons> {
+    let share = photons.pump.si() / photons.signal.si();
+    Photons::new(pump, fixed_signal.unwrap_or(Wavelength::metres(pump.si() / share)))
+}
+
+/// All settings of `actuator` that meet the target, nearest to the present one first.
+///
+/// # Errors
+/// A wavelength or temperature outside the data set's range.
+pub fn tune(
+    crystal: &Crystal,
+    photons: Photons,
+    fixed_signal: Option<Wavelength>,
+    roles: Roles,
+    target: Target,
+    actuator: Actuator,
+) -> Result<Vec<Turn>, MaterialError> {
+    let triplet = Triplet::new(crystal, &photons)?;
+    let bench = Bench { crystal, photons, fixed_signal, triplet, actuator };
+    let turns = bench.settings(target, roles).into_iter().filter_map(|setting| {
+        let (crystal, photons, emission) = bench.at(setting)?;
+        let (theta_inside, phi_inside) = emission.pump_inside(roles)?;
+        let measure = Measure::of(&emission, roles);
+        Some(Turn { setting, crystal, photons, theta_inside, phi_inside, measure })
+    });
+    Ok(turns.collect())
+}
+
+/// The setting of `actuator` nearest the present one at which the rings of `roles` and of the exchanged process touch.
+#[must_use]
+pub fn nearest_touch(
+    crystal: &Crystal,
+    photons: Photons,
+    triplet: Triplet,
+    roles: Roles,
+    actuator: Actuator,
+) -> Option<f64> {
+    let bench = Bench { crystal, photons, fixed_signal: None, triplet, actuator };
+    bench.settings(Target::Touching, roles).first().copied()
+}
+
+/// The turn with the larger first-order effect on the mismatch of a pair along the pump: tilt, but in XY-plane cuts.
+#[must_use]
+pub fn tuning_turn(crystal: &Crystal, photons: Photons, triplet: &Triplet, roles: Roles) -> Actuator {
+    const STEP: f64 = 1e-3;
+    let effect = |actuator: Actuator| {
+        let bench = Bench { crystal, photons, fixed_signal: None, triplet: *triplet, actuator };
+        let value = |setting: f64| {
+            let (_, _, emission) = bench.at(setting)?;
+            let mismatch = emission.mismatch(roles)?;
+            mismatch.at(mismatch.tangential(Direction::forward())).map(|s| s.value)
+        };
+        let now = bench.now();
+        value(now + STEP).zip(value(now - STEP)).map_or(0.0, |(up, down)| (up - down).abs())
+    };
+    if effect(Actuator::CrossTilt) > effect(Actuator::Tilt) { Actuator::CrossTilt } else { Actuator::Tilt }
+}
