@@ -41,6 +41,10 @@ pub struct RingRow {
     pub crystal: usize,
     /// Process it belongs to.
     pub process: Process,
+    /// Sheets of that process.
+    pub roles: Roles,
+    /// Wavelengths of that process.
+    pub photons: Photons,
     /// Which photon of it.
     pub photon: Landing,
     /// Of that photon.
@@ -254,6 +258,8 @@ fn ring_rows(history: &History, rows: &mut Vec<RingRow>) {
             rows.push(RingRow {
                 crystal: history.name.crystal,
                 process: history.name.process,
+                roles,
+                photons,
                 photon,
                 wavelength,
                 polarization,

@@ -10,6 +10,7 @@ mod mismatch;
 mod partner;
 mod ring;
 mod root;
+mod spread;
 mod target;
 mod tuning;
 
@@ -23,8 +24,9 @@ pub use mismatch::{Mismatch, Sample};
 pub use partner::Pairing;
 pub use ring::{Ring, RingFault, SAMPLES, rings};
 pub use root::{Root, Scan, roots};
+pub use spread::{Opinion, opinions};
 pub use target::{Measure, Target};
-pub use tuning::{Actuator, Turn, nearest_touch, tune, tuning_turn};
+pub use tuning::{Actuator, Turn, nearest_touch, opening_turn, tune, tuning_turn};
 
 use std::fmt;
 

@@ -162,6 +162,22 @@ pub fn nearest_touch(
     bench.settings(Target::Touching, roles).first().copied()
 }
 
+/// The smallest change of the tuning turn at which a ring that is missing begins as a point: turn and change in radians.
+///
+/// # Errors
+/// A wavelength or temperature outside the data set's range.
+pub fn opening_turn(
+    crystal: &Crystal,
+    photons: Photons,
+    roles: Roles,
+) -> Result<Option<(Actuator, f64)>, MaterialError> {
+    let triplet = Triplet::new(crystal, &photons)?;
+    let actuator = tuning_turn(crystal, photons, &triplet, roles);
+    let bench = Bench { crystal, photons, fixed_signal: None, triplet, actuator };
+    let nearest = bench.settings(Target::Beamlike, roles).first().copied();
+    Ok(nearest.map(|setting| (actuator, setting - bench.now())))
+}
+
 /// The turn with the larger first-order effect on the mismatch of a pair along the pump: tilt, but in XY-plane cuts.
 #[must_use]
 pub fn tuning_turn(crystal: &Crystal, photons: Photons, triplet: &Triplet, roles: Roles) -> Actuator {

@@ -6,6 +6,7 @@ pub mod dispersion;
 pub mod file;
 pub mod tensor;
 
+pub(crate) use catalogue::nearest;
 pub use catalogue::{Catalogue, TEMPLATE};
 pub use file::{Known, Optic, Relative};
 

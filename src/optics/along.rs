@@ -25,6 +25,20 @@ pub struct Along {
     pub on_optic_axis: bool,
 }
 
+impl Along {
+    /// dn/dT from those of the principal axes (1/K); `None` where one that counts is not known.
+    ///
+    /// 1/n^2 = sum D_i^2/n_i^2 with D an eigenvector, so dn = n^3 sum D_i^2 dn_i/n_i^3.
+    #[must_use]
+    pub fn thermo_slope(&self, principal: &Principal, axes: [Option<f64>; 3]) -> Option<f64> {
+        let mut sum = 0.0;
+        for ((weight, index), slope) in self.displacement.iter().zip(&principal.axes).zip(axes) {
+            sum += weight * weight / index.n.powi(3) * slope?;
+        }
+        Some(self.n.powi(3) * sum)
+    }
+}
+
 /// Waves along a unit direction in the dielectric frame: fast and slow, with their names.
 #[must_use]
 pub fn along_direction(principal: &Principal, direction: Vector3<f64>) -> [(Polarization, Along); 2] {

@@ -2,6 +2,8 @@
 
 use std::sync::Arc;
 
+use nalgebra::Vector3;
+
 use crate::frame::{Cut, Dielectric, Orientation, Placement, Reversal};
 use crate::material::{DataSet, Material, MaterialError, Principal, Reach};
 use crate::quantity::{Angle, Length, Temperature, Wavelength};
@@ -94,6 +96,23 @@ impl Crystal {
     #[must_use]
     pub fn placement(&self) -> Placement {
         Placement::new(self.cut, self.reversal, &self.orientation)
+    }
+
+    /// Axis in the lab about which a small positive change of `tilt` (or `cross_tilt`) turns the crystal, right-handed.
+    #[must_use]
+    pub fn turning_axis(&self, cross: bool) -> Vector3<f64> {
+        const STEP: f64 = 1e-6;
+        let mut turned = self.orientation;
+        let turn = if cross { &mut turned.cross_tilt } else { &mut turned.tilt };
+        *turn = Angle::radians(turn.si() + STEP);
+        (turned.rotation() * self.orientation.rotation().inverse()).scaled_axis().normalize()
+    }
+
+    /// Where the entrance face sends the pump's reflection.
+    #[must_use]
+    pub fn reflection(&self) -> Vector3<f64> {
+        let normal = self.orientation.rotation() * Vector3::z();
+        Vector3::z() - normal * (2.0 * normal.z)
     }
 
     /// Principal indices at a wavelength and the crystal's temperature.

@@ -1,0 +1,246 @@
+//! The job file as it is written. Every quantity is a text with a unit; every value keeps its place.
+//!
+//! Meaning, defaults and limits are in [`super::setup`], which turns this into SI.
+
+use serde::{Deserialize, Serialize};
+use toml::Spanned;
+
+/// A text and its place.
+pub type Text = Spanned<String>;
+
+/// A whole job.
+#[derive(Debug, Clone, Default, Deserialize, Serialize)]
+#[serde(deny_unknown_fields)]
+pub struct Description {
+    /// What the experiment is called.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub title: Option<String>,
+    /// The pump.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub pump: Option<Spanned<Pump>>,
+    /// Crystals, in the order in which the pump meets them.
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    pub crystal: Vec<Spanned<Crystal>>,
+    /// The common mount.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub mount: Option<Mount>,
+    /// Which pairs.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub emission: Option<Spanned<Emission>>,
+    /// The screen.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub screen: Option<Screen>,
+    /// What the mount's scale shows.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub stage: Option<Stage>,
+    /// How the photons are collected.
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    pub collection: Vec<Collection>,
+    /// Filters before the detectors.
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    pub filter: Vec<Filter>,
+    /// Compensators in the arms or the pump.
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    pub compensator: Vec<Compensator>,
+    /// What is swept.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub sweep: Option<Sweep>,
+}
+
+/// `[pump]`
+#[derive(Debug, Clone, Default, Deserialize, Serialize)]
+#[serde(deny_unknown_fields)]
+#[allow(missing_docs, reason = "one field per key, explained where it is read")]
+pub struct Pump {
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub wavelength: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub waist: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub power: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub linewidth: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub pulse: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub spectrum: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub polarization: Option<toml::Value>,
+}
+
+/// `[crystal]` or `[[crystal]]`
+#[derive(Debug, Clone, Default, Deserialize, Serialize)]
+#[serde(deny_unknown_fields)]
+#[allow(missing_docs, reason = "one field per key, explained where it is read")]
+pub struct Crystal {
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub name: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub material: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub dataset: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub cut: Option<Spanned<Cut>>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub length: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub temperature: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub reference_temperature: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub tilt: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub cross_tilt: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub roll: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub reversed: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub poling: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub gap_before: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub extrapolate: Option<bool>,
+}
+
+/// `cut = { theta, phi }`, or a target that is solved first.
+#[derive(Debug, Clone, Default, Deserialize, Serialize)]
+#[serde(deny_unknown_fields, rename_all = "kebab-case")]
+#[allow(missing_docs, reason = "one field per key, explained where it is read")]
+pub struct Cut {
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub theta: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub phi: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub crossing: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub half_angle: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub separation: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub collinear: Option<bool>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub beamlike: Option<bool>,
+}
+
+/// `[mount]`
+#[derive(Debug, Clone, Default, Deserialize, Serialize)]
+#[serde(deny_unknown_fields)]
+#[allow(missing_docs, reason = "one field per key, explained where it is read")]
+pub struct Mount {
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub about_x: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub about_y: Option<Text>,
+}
+
+/// `[emission]`
+#[derive(Debug, Clone, Default, Deserialize, Serialize)]
+#[serde(deny_unknown_fields)]
+#[allow(missing_docs, reason = "one field per key, explained where it is read")]
+pub struct Emission {
+    #[serde(rename = "type", skip_serializing_if = "Option::is_none")]
+    pub kind: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub process: Option<Text>,
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    pub signal: Vec<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub idler: Option<Text>,
+}
+
+/// `[screen]`
+#[derive(Debug, Clone, Default, Deserialize, Serialize)]
+#[serde(deny_unknown_fields)]
+#[allow(missing_docs, reason = "one field per key, explained where it is read")]
+pub struct Screen {
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub distance: Option<Text>,
+}
+
+/// `[stage]`
+#[derive(Debug, Clone, Default, Deserialize, Serialize)]
+#[serde(deny_unknown_fields)]
+#[allow(missing_docs, reason = "one field per key, explained where it is read")]
+pub struct Stage {
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub zero: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub per_turn: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub reversed: Option<bool>,
+}
+
+/// `[[collection]]`
+#[derive(Debug, Clone, Default, Deserialize, Serialize)]
+#[serde(deny_unknown_fields)]
+#[allow(missing_docs, reason = "one field per key, explained where it is read")]
+pub struct Collection {
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub arm: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub iris: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub fibre: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub direction: Option<Towards>,
+}
+
+/// `direction = { h, v }`
+#[derive(Debug, Clone, Deserialize, Serialize)]
+#[serde(deny_unknown_fields)]
+#[allow(missing_docs, reason = "one field per key, explained where it is read")]
+pub struct Towards {
+    pub h: Text,
+    pub v: Text,
+}
+
+/// `[[filter]]`
+#[derive(Debug, Clone, Default, Deserialize, Serialize)]
+#[serde(deny_unknown_fields)]
+#[allow(missing_docs, reason = "one field per key, explained where it is read")]
+pub struct Filter {
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub arm: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub shape: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub file: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub width: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub centre: Option<Text>,
+}
+
+/// `[[compensator]]`
+#[derive(Debug, Clone, Default, Deserialize, Serialize)]
+#[serde(deny_unknown_fields)]
+#[allow(missing_docs, reason = "one field per key, explained where it is read")]
+pub struct Compensator {
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub arm: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub material: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub dataset: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub cut: Option<Cut>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub length: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub roll: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub tilt: Option<Text>,
+}
+
+/// `[sweep]`
+#[derive(Debug, Clone, Default, Deserialize, Serialize)]
+#[serde(deny_unknown_fields)]
+#[allow(missing_docs, reason = "one field per key, explained where it is read")]
+pub struct Sweep {
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub report: Option<Text>,
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    pub axes: Vec<toml::Value>,
+}

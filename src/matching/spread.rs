@@ -1,0 +1,29 @@
+//! What the other data sets of a material give for the same question: how sure an angle is.
+
+use super::emission::{Photons, Triplet};
+use crate::material::MaterialError;
+use crate::optics::Crystal;
+
+/// What one other data set says.
+#[derive(Debug, Clone)]
+pub struct Opinion<T> {
+    /// Id of the data set.
+    pub dataset: String,
+    /// Its answer, or why it cannot serve these wavelengths.
+    pub answer: Result<T, MaterialError>,
+}
+
+/// Asks every other data set of the crystal's material that covers the wavelengths.
+pub fn opinions<T>(
+    crystal: &Crystal,
+    photons: &Photons,
+    mut ask: impl FnMut(&Crystal) -> T,
+) -> Vec<Opinion<T>> {
+    let sets = crystal.material.sets().iter().enumerate().filter(|(index, _)| *index != crystal.dataset);
+    sets.map(|(index, set)| {
+        let other = Crystal { reach: crate::material::Reach::Within, ..crystal.with_dataset(index) };
+        let answer = Triplet::new(&other, photons).map(|_| ask(&other));
+        Opinion { dataset: set.id.clone(), answer }
+    })
+    .collect()
+}

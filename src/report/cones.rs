@@ -1,0 +1,445 @@
+//! Report `cones`: rings and their crossings.
+
+use crate::frame::Direction;
+use crate::job::Setup;
+use crate::matching::{
+    Actuator, Cones, CrossingRow, GapKind, HistoryName, Landing, Opinion, RingRow, Status,
+};
+use crate::quantity::Angle;
+
+use super::angles::{degrees, fixed, grid, or_dash, rounded, signed};
+use super::conventions::room_words;
+use super::spread;
+use super::table::{Cell, Column, Table, column};
+
+/// Columns of the rings, without the two that end every table.
+pub const RINGS: [Column; 16] = [
+    column("crystal", "", "number of the crystal from 1"),
+    column("process", "", "pump -> signal + idler"),
+    column("photon", "", "signal or idler"),
+    column("wavelength_nm", "nm", "of the photon, in vacuum"),
+    column("polarization", "", "o, e, fast or slow"),
+    column(
+        "field_azimuth_deg",
+        "deg",
+        "of the photon's electric field, from +x towards +y, at the ring's axis",
+    ),
+    column("axis_h_deg", "deg", "horizontal angle of the axis of the cone that fits best, outside"),
+    column("axis_v_deg", "deg", "vertical angle of that axis, outside"),
+    column("half_angle_deg", "deg", "half angle of that cone, outside"),
+    column("half_angle_min_deg", "deg", "least angle between axis and ring, outside"),
+    column("half_angle_max_deg", "deg", "largest angle between axis and ring, outside"),
+    column("thickness_deg", "deg", "mean width at half maximum of sinc^2; empty where the inside is filled"),
+    column("internal_half_angle_deg", "deg", "half angle of the cone of wave vectors inside the crystal"),
+    column("x_mm", "mm", "centre of the circle that fits the ring on the screen"),
+    column("y_mm", "mm", "centre of the circle that fits the ring on the screen"),
+    column("radius_mm", "mm", "radius of that circle"),
+];
+
+/// Columns of the crossings, without the two that end every table.
+pub const CROSSINGS: [Column; 24] = [
+    column("pair", "", "number of the pair of directions, from 1"),
+    column("first_crystal", "", "crystal of the first history"),
+    column("first_process", "", "process of the first history, photon a as signal"),
+    column("second_crystal", "", "crystal of the second history"),
+    column("second_process", "", "process of the second history, photon a as signal"),
+    column("a_wavelength_nm", "nm", "of the photon of a listed signal wavelength"),
+    column("b_wavelength_nm", "nm", "of its partner"),
+    column("a_h_deg", "deg", "horizontal angle, outside"),
+    column("a_v_deg", "deg", "vertical angle, outside"),
+    column("a_polar_deg", "deg", "angle from the pump, outside"),
+    column("a_azimuth_deg", "deg", "azimuth about the pump, from +x towards +y"),
+    column("a_x_mm", "mm", "on the screen"),
+    column("a_y_mm", "mm", "on the screen"),
+    column("b_h_deg", "deg", "horizontal angle, outside"),
+    column("b_v_deg", "deg", "vertical angle, outside"),
+    column("b_polar_deg", "deg", "angle from the pump, outside"),
+    column("b_azimuth_deg", "deg", "azimuth about the pump, from +x towards +y"),
+    column("b_x_mm", "mm", "on the screen"),
+    column("b_y_mm", "mm", "on the screen"),
+    column("separation_deg", "deg", "angle between a and b, outside"),
+    column("intersection_angle_deg", "deg", "between the curves on the screen, 0 to 90"),
+    column("gap_deg", "deg", "least angle between the rings where they miss"),
+    column("gap_kind", "", "outside or inside"),
+    column("tilt_to_touch_deg", "deg", "setting of the tuning turn at which the rings touch"),
+];
+
+/// One row for each distinct ring.
+#[must_use]
+pub fn rings_table(setup: &Setup, cones: &Cones) -> Table {
+    let mut table = Table::new("rings", &RINGS);
+    for row in &cones.rings {
+        let mut cells = vec![
+            (row.crystal + 1).into(),
+            row.process.to_string().into(),
+            landing(row.photon).into(),
+            row.wavelength.nm().into(),
+            row.polarization.to_string().into(),
+            row.field_azimuth.into(),
+        ];
+        match &row.ring {
+            Ok(ring) => {
+                let (centre, radius) = ring.circle();
+                let mm = setup.screen.mm();
+                cells.extend([
+                    ring.axis.h_deg().into(),
+                    ring.axis.v_deg().into(),
+                    ring.half_angle.to_degrees().into(),
+                    ring.least.to_degrees().into(),
+                    ring.largest.to_degrees().into(),
+                    ring.thickness.map(f64::to_degrees).into(),
+                    ring.internal_half_angle.to_degrees().into(),
+                    (centre.x * mm).into(),
+                    (centre.y * mm).into(),
+                    (radius * mm).into(),
+                ]);
+            }
+            Err(_) => cells.resize(RINGS.len(), Cell::Empty),
+        }
+        table.push(cells, row.extrapolated, row.status);
+    }
+    table
+}
+
+fn landing(photon: Landing) -> &'static str {
+    match photon {
+        Landing::Signal => "signal",
+        Landing::Idler => "idler",
+    }
+}
+
+/// One row for each pair of directions, or for each two histories that miss.
+#[must_use]
+pub fn crossings_table(setup: &Setup, cones: &Cones) -> Table {
+    let mut table = Table::new("crossings", &CROSSINGS);
+    for row in &cones.crossings {
+        let mut cells = vec![
+            row.pair.map_or(Cell::Empty, Cell::from),
+            (row.first.crystal + 1).into(),
+            row.first.process.to_string().into(),
+            (row.second.crystal + 1).into(),
+            row.second.process.to_string().into(),
+            row.a_wavelength.nm().into(),
+            row.b_wavelength.nm().into(),
+        ];
+        let a = row.crossing.as_ref().map(|c| c.direction);
+        let b = row.crossing.as_ref().and_then(|c| c.partner);
+        cells.extend(place(setup, a));
+        cells.extend(place(setup, b));
+        cells.push(a.zip(b).map(|(a, b)| a.angle_to(b).to_degrees()).into());
+        cells.push(row.crossing.as_ref().map(|c| c.angle.to_degrees()).into());
+        cells.push(row.contact.map(|c| c.gap.to_degrees()).into());
+        cells.push(row.contact.map(|c| c.kind.name()).into());
+        cells.push(row.tilt_to_touch.map(|t| Angle::radians(t).degrees()).into());
+        table.push(cells, row.extrapolated, row.status);
+    }
+    table
+}
+
+fn place(setup: &Setup, direction: Option<Direction>) -> [Cell; 6] {
+    let Some(d) = direction else { return std::array::from_fn(|_| Cell::Empty) };
+    let (x, y) = d.on_screen_mm(setup.screen);
+    [d.h_deg(), d.v_deg(), d.polar_deg(), d.azimuth_deg(), x, y].map(Cell::from)
+}
+
+/// A turn that begins to give light, for each ring that has none.
+pub type Advice = Option<(Actuator, Angle)>;
+
+/// For people; `advice` has an entry for each ring.
+#[must_use]
+pub fn text(setup: &Setup, cones: &Cones, advice: &[Advice]) -> String {
+    let mut out = heading(setup);
+    out.push_str(&format!(
+        "\nRings (degrees outside the crystal; mm on the screen at {} m)\n",
+        rounded(setup.screen.si(), 3)
+    ));
+    let header = [
+        "ring",
+        "process",
+        "axis h",
+        "axis v",
+        "half angle",
+        "least",
+        "largest",
+        "thickness",
+        "inside",
+        "x mm",
+        "y mm",
+        "r mm",
+    ];
+    let rows: Vec<Vec<String>> = cones.rings.iter().map(|row| ring_cells(setup, row)).collect();
+    out.push_str(&grid(&header, &rows));
+    for (row, advice) in cones.rings.iter().zip(advice) {
+        out.push_str(&ring_words(setup, row, *advice));
+    }
+    out.push('\n');
+    if cones.crossings.is_empty() {
+        out.push_str(
+            "Crossings: none is to be expected, since no two rings here have opposite polarization.\n",
+        );
+    } else {
+        out.push_str("Crossings\n");
+        for row in &cones.crossings {
+            out.push_str(&crossing_words(setup, row));
+        }
+    }
+    out.push_str(&reflections(setup));
+    out
+}
+
+fn heading(setup: &Setup) -> String {
+    let mut out = format!("Pump {} nm", rounded(setup.pump().nm(), 3));
+    for crystal in &setup.crystals {
+        let turn = &crystal.orientation;
+        out.push_str(&format!(
+            "; {}:{} cut theta {} deg, phi {} deg, {} mm{}, tilt {} deg, roll {} deg",
+            crystal.material.id,
+            crystal.set().id,
+            rounded(crystal.cut.theta.degrees(), 3),
+            rounded(crystal.cut.phi.degrees(), 3),
+            rounded(crystal.length.mm(), 3),
+            if setup.length_given { "" } else { " (default length)" },
+            rounded(turn.tilt.degrees(), 3),
+            rounded(turn.roll.degrees(), 3),
+        ));
+        if turn.cross_tilt.si() != 0.0 {
+            out.push_str(&format!(", cross tilt {} deg", rounded(turn.cross_tilt.degrees(), 3)));
+        }
+    }
+    out.push_str(&format!("; {}\n", setup.interaction));
+    out
+}
+
+fn ring_cells(setup: &Setup, row: &RingRow) -> Vec<String> {
+    let mut cells = vec![
+        format!("{} {} {} nm", row.polarization, landing(row.photon), rounded(row.wavelength.nm(), 2)),
+        if setup.crystals.len() > 1 {
+            format!("{}: {}", row.crystal + 1, row.process)
+        } else {
+            row.process.to_string()
+        },
+    ];
+    match &row.ring {
+        Ok(ring) => {
+            let (centre, radius) = ring.circle();
+            let mm = setup.screen.mm();
+            cells.extend([
+                signed(ring.axis.h_deg(), 3),
+                signed(ring.axis.v_deg(), 3),
+                degrees(ring.half_angle),
+                degrees(ring.least),
+                degrees(ring.largest),
+                ring.thickness.map_or_else(|| "filled".into(), degrees),
+                degrees(ring.internal_half_angle),
+                signed(centre.x * mm, 2),
+                signed(centre.y * mm, 2),
+                fixed(radius * mm, 2),
+            ]);
+        }
+        Err(_) => cells.extend([row.status.to_string()]),
+    }
+    cells
+}
+
+/// On which side a ring lies and how its light is polarized; or what to do where there is none.
+fn ring_words(setup: &Setup, row: &RingRow, advice: Advice) -> String {
+    let name = format!("{} ring ({} nm)", row.polarization, rounded(row.wavelength.nm(), 2));
+    match &row.ring {
+        Ok(ring) => {
+            let (h, v) = (ring.axis.h_deg(), ring.axis.v_deg());
+            let sideways = if h.abs() < 0.01 {
+                ""
+            } else if h > 0.0 {
+                "to +x (left, looking along the beam)"
+            } else {
+                "to -x (right, looking along the beam)"
+            };
+            let upright = if v.abs() < 0.01 {
+                ""
+            } else if v > 0.0 {
+                "up"
+            } else {
+                "down"
+            };
+            let side =
+                [sideways, upright].into_iter().filter(|s| !s.is_empty()).collect::<Vec<_>>().join(" and ");
+            let centred = side.is_empty();
+            let field = row.field_azimuth.map_or(String::new(), |a| {
+                let word = if !(0.5..=179.5).contains(&a) {
+                    ", polarized horizontally"
+                } else if (a - 90.0).abs() < 0.5 {
+                    ", polarized vertically"
+                } else {
+                    ""
+                };
+                if word.is_empty() {
+                    format!(", polarized at {} deg from +x towards +y", fixed(a, 1))
+                } else {
+                    word.into()
+                }
+            });
+            let note = match row.status {
+                Status::NoNonlinearity => "; but symmetry forbids these pairs (d_eff is zero)",
+                Status::TotalReflection => "; some partners are totally reflected inside the crystal",
+                _ => "",
+            };
+            format!(
+                "  The {name} is {}{field}{note}.\n",
+                if centred { "centred on the pump".into() } else { format!("off the pump {side}") }
+            )
+        }
+        Err(fault) => match (row.status, fault.shortfall) {
+            (Status::NoPhaseMatching, shortfall) => {
+                let off = shortfall.map_or(String::new(), |s| {
+                    format!(": the best direction misses by {} rad/mm", fixed(s * 1e-3, 2))
+                });
+                format!(
+                    "  No direction is phase matched for the {name}{off}. {}\n",
+                    turn_advice(setup, row.crystal, advice)
+                )
+            }
+            (Status::OpenRing, _) => {
+                format!("  The {name} leaves the search region, 60 deg about the pump.\n")
+            }
+            (Status::TotalReflection, _) => {
+                format!("  The {name} is cut by total reflection at the exit face.\n")
+            }
+            (status, _) => format!("  The {name}: {status}.\n"),
+        },
+    }
+}
+
+/// Which way to turn where there is no light.
+fn turn_advice(setup: &Setup, index: usize, advice: Advice) -> String {
+    match advice {
+        Some((actuator, turn)) => {
+            let key = if actuator == Actuator::CrossTilt { "cross tilt" } else { "tilt" };
+            let words = room_words(&setup.crystals[index], actuator, turn);
+            format!("A {key} changed by {} deg begins to give light: {words}.", signed(turn.degrees(), 3))
+        }
+        None => "No turn within 30 deg gives light.".into(),
+    }
+}
+
+fn crossing_words(setup: &Setup, row: &CrossingRow) -> String {
+    let history = |h: &HistoryName| {
+        if setup.crystals.len() > 1 {
+            format!("{}: {}", h.crystal + 1, h.process)
+        } else {
+            h.process.to_string()
+        }
+    };
+    let both = format!("{} with {}", history(&row.first), history(&row.second));
+    let Some(crossing) = &row.crossing else { return missing_words(setup, row, &both) };
+    let mut out = format!(
+        "  Pair {}{}: {both}; separation {} deg, curves meet at {} deg\n",
+        row.pair.unwrap_or(0),
+        match row.status {
+            Status::Touching => " (the rings touch)",
+            Status::Coincident => " (the rings lie on each other; the point straight up from the axis)",
+            Status::NoNonlinearity => " (symmetry forbids these pairs)",
+            _ => "",
+        },
+        or_dash(crossing.partner.map(|b| crossing.direction.angle_to(b).to_degrees()), 3),
+        fixed(crossing.angle.to_degrees(), 1),
+    );
+    let mut photon = |name: &str, wavelength: f64, direction: Option<Direction>| {
+        let place = direction.map_or_else(
+            || "totally reflected inside the crystal".into(),
+            |d| {
+                let (x, y) = d.on_screen_mm(setup.screen);
+                format!(
+                    "h {} deg, v {} deg ({} deg from the pump); x {} mm, y {} mm",
+                    signed(d.h_deg(), 3),
+                    signed(d.v_deg(), 3),
+                    fixed(d.polar_deg(), 3),
+                    signed(x, 2),
+                    signed(y, 2)
+                )
+            },
+        );
+        out.push_str(&format!("    {name} {} nm: {place}\n", rounded(wavelength, 2)));
+    };
+    photon("a", row.a_wavelength.nm(), Some(crossing.direction));
+    photon("b", row.b_wavelength.nm(), crossing.partner);
+    out
+}
+
+fn missing_words(setup: &Setup, row: &CrossingRow, both: &str) -> String {
+    let Some(contact) = row.contact else {
+        return format!("  {both}: no crossing, because a ring is missing ({}).\n", row.status);
+    };
+    let how = match contact.kind {
+        GapKind::Outside => "lie apart",
+        GapKind::Inside => "lie one inside the other",
+    };
+    let touch = match (row.tilt_to_touch, row.turn) {
+        (Some(setting), Some(actuator)) => {
+            let crystal = &setup.crystals[row.first.crystal];
+            let cross = actuator == Actuator::CrossTilt;
+            let now = if cross { crystal.orientation.cross_tilt } else { crystal.orientation.tilt };
+            let turn = Angle::radians(setting - now.si());
+            format!(
+                "they touch at {} {} deg: {}",
+                if cross { "cross tilt" } else { "tilt" },
+                signed(setting.to_degrees(), 3),
+                room_words(crystal, actuator, turn)
+            )
+        }
+        _ => "no turn within 30 deg makes them touch".into(),
+    };
+    format!("  {both}: the rings {how}, gap {} deg; {touch}.\n", degrees(contact.gap))
+}
+
+fn reflections(setup: &Setup) -> String {
+    let mut out = String::new();
+    for crystal in &setup.crystals {
+        let r = crystal.reflection();
+        let (x, y) = (-r.x / r.z * setup.screen.mm(), -r.y / r.z * setup.screen.mm());
+        if x.hypot(y) > 0.5 {
+            out.push_str(&format!(
+                "  The entrance face reflects pump light back: x {} mm, y {} mm at {} m towards the laser.\n",
+                signed(x, 1),
+                signed(y, 1),
+                rounded(setup.screen.si(), 3)
+            ));
+        }
+    }
+    out
+}
+
+/// The lines about the other data sets: half angle of each ring, and the crossings.
+#[must_use]
+pub fn spread_lines(own: &Cones, opinions: &[Opinion<Option<Cones>>]) -> Vec<String> {
+    let half_angle = |cones: &Cones, n: usize| {
+        cones.rings.get(n).and_then(|r| r.ring.as_ref().ok()).map(|r| r.half_angle.to_degrees())
+    };
+    let crossing = |cones: &Cones| {
+        let polar =
+            cones.crossings.iter().filter_map(|c| c.crossing.as_ref()).map(|c| c.direction.polar_deg());
+        polar.reduce(f64::max)
+    };
+    let mut lines: Vec<String> = own
+        .rings
+        .iter()
+        .enumerate()
+        .map(|(n, row)| {
+            let what = format!(
+                "the half angle of the {} ring ({} nm) in deg",
+                row.polarization,
+                rounded(row.wavelength.nm(), 1)
+            );
+            spread::line(
+                &what,
+                half_angle(own, n),
+                &spread::numbers(opinions, |c| c.as_ref().and_then(|c| half_angle(c, n))),
+            )
+        })
+        .collect();
+    if !own.crossings.is_empty() {
+        let numbers = spread::numbers(opinions, |c| c.as_ref().and_then(crossing));
+        lines.insert(0, spread::line("the crossings' angle from the pump in deg", crossing(own), &numbers));
+        lines.truncate(3);
+    }
+    lines
+}

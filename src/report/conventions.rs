@@ -1,0 +1,184 @@
+//! What the numbers of an answer mean: data sets, angles, signs, in a line or two; and the usual cautions.
+
+use crate::job::Setup;
+use crate::matching::Actuator;
+use crate::material::{DataSet, Optic};
+use crate::optics::Crystal;
+use crate::quantity::{Angle, Wavelength};
+
+use super::angles::rounded;
+
+/// Lines for people, ids for scripts.
+#[derive(Debug, Clone, Default)]
+pub struct Conventions {
+    /// One or two lines that end a text.
+    pub lines: Vec<String>,
+    /// `material:dataset` in use.
+    pub datasets: Vec<String>,
+    /// Things to know before trusting a number; also printed on stderr.
+    pub warnings: Vec<String>,
+}
+
+impl Conventions {
+    /// For an experiment; `rolled` crystals and screens are described as they stand.
+    #[must_use]
+    pub fn of(setup: &Setup) -> Self {
+        let mut all = Self::default();
+        for crystal in &setup.crystals {
+            all.add_dataset(crystal);
+        }
+        all.lines.push(angles_line(setup));
+        all.add_warnings(setup);
+        all
+    }
+
+    /// Adds the line about a crystal's data set, once.
+    pub fn add_dataset(&mut self, crystal: &Crystal) {
+        let id = format!("{}:{}", crystal.material.id, crystal.set().id);
+        if !self.datasets.contains(&id) {
+            self.lines.insert(self.datasets.len(), dataset_line(&id, crystal));
+            self.datasets.push(id);
+            if let Some(warning) = &crystal.set().file.warning {
+                self.warnings.push(format!("{}:{}: {warning}", crystal.material.id, crystal.set().id));
+            }
+        }
+    }
+
+    fn add_warnings(&mut self, setup: &Setup) {
+        let Some(pump) = setup.pump else { return };
+        for crystal in &setup.crystals {
+            let signals = setup.signals.for_pump(pump);
+            let idlers = signals.iter().filter_map(|s| s.partner(pump));
+            let outside: Vec<String> = std::iter::once(pump)
+                .chain(signals.iter().copied())
+                .chain(idlers)
+                .filter(|w| !crystal.set().covers(*w))
+                .map(|w| format!("{} nm", rounded(w.nm(), 1)))
+                .collect();
+            if !outside.is_empty() {
+                let mut unique = outside;
+                unique.dedup();
+                self.warnings.push(format!(
+                    "extrapolated: {} is outside {} to {}, where {}:{} is valid",
+                    unique.join(", "),
+                    crystal.set().from,
+                    crystal.set().to,
+                    crystal.material.id,
+                    crystal.set().id
+                ));
+            }
+            if crystal.material.file.point_group.get_ref() == "2" {
+                self.warnings.push(format!(
+                    "{} is monoclinic: its dielectric axes turn slightly with wavelength, which is neglected",
+                    crystal.material.id
+                ));
+            }
+        }
+        if let Some(pump) = setup.pump.filter(|p| p.nm() < 450.0) {
+            self.lines.push(caution(pump));
+        }
+    }
+}
+
+/// "Data set bbo:kato-1986 (...), 220 nm to 1060 nm, 20 degC".
+fn dataset_line(id: &str, crystal: &Crystal) -> String {
+    let set: &DataSet = crystal.set();
+    let temperature = match set.file.temperature {
+        None if (crystal.temperature.degc() - 20.0).abs() < 1e-9 => {
+            "20 degC (the source states no temperature)".to_string()
+        }
+        _ => crystal.temperature.to_string(),
+    };
+    format!(
+        "Data set {id} ({}; {}), valid {} to {}, at {temperature}.",
+        set.file.citation, set.file.known, set.from, set.to
+    )
+}
+
+fn angles_line(setup: &Setup) -> String {
+    let uniaxial = setup.crystals.iter().all(|c| c.material.file.optic == Optic::Uniaxial);
+    let z = if uniaxial { "the optic axis Z" } else { "the dielectric axis Z" };
+    format!(
+        "theta is the angle between face normal and {z}, phi the normal's azimuth from X; positive tilt increases theta, \
+         positive cross tilt phi. At roll 0 Z leans towards +x, on the left of who looks along the beam; h is the angle \
+         towards +x, v upwards, outside the crystal unless called inside; mm on a screen at {} m.",
+        rounded(setup.screen.si(), 3)
+    )
+}
+
+fn caution(pump: Wavelength) -> String {
+    let sight = if pump.nm() < 380.0 { "is invisible" } else { "looks far dimmer than it is" };
+    format!(
+        "Laser safety: {} nm {sight} and harms eyes and skin; reflections from tilted faces too. Enclose the beam, wear \
+         goggles rated for it; local rules and the laser safety officer decide.",
+        rounded(pump.nm(), 1)
+    )
+}
+
+/// A turn in the words of a room: which way, seen from where, for the crystal's actual roll.
+#[must_use]
+pub fn room_words(crystal: &Crystal, actuator: Actuator, turn: Angle) -> String {
+    let size = format!("{} deg", rounded(turn.degrees().abs(), 3));
+    if turn.degrees().abs() < 5e-4 {
+        return "leave the mount as it is".into();
+    }
+    let axis = crystal.turning_axis(actuator == Actuator::CrossTilt) * turn.si().signum();
+    if axis.y.abs() > 0.999 {
+        let sense = if axis.y > 0.0 { "counterclockwise" } else { "clockwise" };
+        return format!("turn the mount {sense} seen from above by {size}");
+    }
+    if axis.x.abs() > 0.999 {
+        // a right-handed turn about +x carries the top (+y) towards +z, downstream
+        let towards = if axis.x > 0.0 { "away from the laser" } else { "towards the laser" };
+        return format!("tip the top of the mount {towards} by {size}");
+    }
+    // an axis across the beam at some angle from the vertical: describe it by its upper end
+    let (upper, sense) = if axis.y >= 0.0 { (axis, "counterclockwise") } else { (-axis, "clockwise") };
+    let lean = upper.x.atan2(upper.y).to_degrees();
+    let side = if lean >= 0.0 { "left" } else { "right" };
+    format!(
+        "turn the mount {sense} by {size}, seen from the upper end of an axis across the beam that leans {} deg from the \
+         vertical to the {side} of who looks along the beam",
+        rounded(lean.abs(), 1)
+    )
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::material::Catalogue;
+    use std::sync::Arc;
+
+    fn bbo(roll: f64) -> Crystal {
+        let material = Arc::new(Catalogue::default().get("bbo").expect("bbo"));
+        let mut crystal = Crystal::new(material, None).expect("the default set").with_cut(29.0, 90.0);
+        crystal.orientation.roll = Angle::from_degrees(roll);
+        crystal
+    }
+
+    /// Z leans to +x, to the left of who looks along the beam. To increase theta the normal must swing towards +x too,
+    /// left: from above, with the beam going up the page and +x to the left, that is counterclockwise.
+    #[test]
+    fn positive_tilt_at_roll_0_is_counterclockwise_from_above() {
+        let words = room_words(&bbo(0.0), Actuator::Tilt, Angle::from_degrees(0.42));
+        assert_eq!(words, "turn the mount counterclockwise seen from above by 0.42 deg");
+        let words = room_words(&bbo(0.0), Actuator::Tilt, Angle::from_degrees(-0.42));
+        assert_eq!(words, "turn the mount clockwise seen from above by 0.42 deg");
+    }
+
+    /// At roll 90 deg Z leans up; the normal must swing up, so the top of the crystal comes back towards the laser.
+    #[test]
+    fn positive_tilt_at_roll_90_tips_the_top_towards_the_laser() {
+        let words = room_words(&bbo(90.0), Actuator::Tilt, Angle::from_degrees(1.0));
+        assert_eq!(words, "tip the top of the mount towards the laser by 1 deg");
+    }
+
+    #[test]
+    fn oblique_axes_are_described_by_their_upper_end() {
+        let words = room_words(&bbo(45.0), Actuator::Tilt, Angle::from_degrees(1.0));
+        assert!(
+            words.contains("counterclockwise") && words.contains("45 deg from the vertical to the right"),
+            "{words}"
+        );
+    }
+}

@@ -1,0 +1,305 @@
+//! Report `cut`: which cut to order.
+
+use crate::job::Setup;
+use crate::matching::{CutSolution, Find, Opinion, Shortfall, Status, Target};
+use crate::optics::Crystal;
+
+use super::angles::{fixed, grid, or_dash, rounded};
+use super::spread;
+use super::table::{Cell, Column, Table, column};
+
+/// Columns, without the two that end every table.
+pub const COLUMNS: [Column; 21] = [
+    column("material", "", "crystal id"),
+    column("dataset", "", "data set id"),
+    column("process", "", "pump -> signal + idler"),
+    column("pump_nm", "nm", "vacuum wavelength of the pump"),
+    column("signal_nm", "nm", "vacuum wavelength of the signal"),
+    column("idler_nm", "nm", "vacuum wavelength of the idler"),
+    column("temperature_degc", "degC", "of the crystal"),
+    column("theta_deg", "deg", "face normal to Z"),
+    column("phi_deg", "deg", "azimuth of the face normal from X"),
+    column("plane", "", "principal plane of a biaxial crystal that holds the normal"),
+    column("poling_um", "um", "poling period at the reference temperature"),
+    column("length_mm", "mm", "crystal length that the acceptances hold for"),
+    column("d_eff_pm_per_v", "pm/V", "|d_eff| with unit electric fields at the target directions"),
+    column("pump_walkoff_deg", "deg", "wave vector to ray, inside"),
+    column("signal_walkoff_deg", "deg", "wave vector to ray, inside"),
+    column("idler_walkoff_deg", "deg", "wave vector to ray, inside"),
+    column("pair_delay_fs_per_mm", "fs/mm", "group delay of signal minus idler"),
+    column("pump_angle_fwhm_deg", "deg", "acceptance: crystal turned about v, outside angle"),
+    column("pump_wavelength_fwhm_nm", "nm", "acceptance: frequency ratio and directions fixed"),
+    column("signal_fwhm_nm", "nm", "acceptance: pump and signal direction fixed"),
+    column("temperature_fwhm_k", "K", "acceptance: all else fixed"),
+];
+
+/// One material's answer.
+#[derive(Debug, Clone)]
+pub struct Attempt {
+    /// The crystal that was asked about.
+    pub crystal: Crystal,
+    /// Solutions, or the status that says why there is none and a sentence about it.
+    pub outcome: Result<Vec<CutSolution>, (Status, String)>,
+}
+
+/// Rows of all attempts.
+#[must_use]
+pub fn table(setup: &Setup, attempts: &[Attempt]) -> Table {
+    let mut table = Table::new("cut", &COLUMNS);
+    for attempt in attempts {
+        match &attempt.outcome {
+            Ok(solutions) => {
+                for s in solutions {
+                    table.push(row(s), s.extrapolated, s.status);
+                }
+            }
+            Err((status, _)) => table.push(unsolved(setup, &attempt.crystal), false, *status),
+        }
+    }
+    table
+}
+
+fn row(s: &CutSolution) -> Vec<Cell> {
+    let walkoff = |pick: fn(&crate::matching::Pairing) -> f64| {
+        Cell::from(s.pairing.as_ref().map(pick).map(f64::to_degrees))
+    };
+    let per_mm = s.pairing.as_ref().map(|p| p.delay() * 1e12);
+    vec![
+        s.crystal.material.id.as_str().into(),
+        s.crystal.set().id.as_str().into(),
+        s.process.to_string().into(),
+        s.photons.pump.nm().into(),
+        s.photons.signal.nm().into(),
+        s.photons.idler.nm().into(),
+        s.crystal.temperature.degc().into(),
+        s.crystal.cut.theta.degrees().into(),
+        s.crystal.cut.phi.degrees().into(),
+        s.plane.name().into(),
+        s.crystal.poling.map(|p| p.um()).into(),
+        s.crystal.length.mm().into(),
+        s.d_eff.into(),
+        walkoff(|p| p.pump.walkoff()),
+        walkoff(|p| p.signal.walkoff()),
+        walkoff(|p| p.idler.walkoff()),
+        per_mm.into(),
+        s.acceptance.pump_angle.map(f64::to_degrees).into(),
+        s.acceptance.pump_wavelength.map(|w| w * 1e9).into(),
+        s.acceptance.signal.map(|w| w * 1e9).into(),
+        s.acceptance.temperature.into(),
+    ]
+}
+
+fn unsolved(setup: &Setup, crystal: &Crystal) -> Vec<Cell> {
+    let photons = setup.photons();
+    let mut cells = vec![
+        crystal.material.id.as_str().into(),
+        crystal.set().id.as_str().into(),
+        Cell::Empty,
+        photons.pump.nm().into(),
+        photons.signal.nm().into(),
+        photons.idler.nm().into(),
+        crystal.temperature.degc().into(),
+    ];
+    cells.resize(COLUMNS.len(), Cell::Empty);
+    cells[11] = crystal.length.mm().into();
+    cells
+}
+
+/// The wanted emission in words.
+#[must_use]
+pub fn target_words(target: Target) -> String {
+    let degrees = |a: f64| format!("{} deg", rounded(a.to_degrees(), 4));
+    match target {
+        Target::Collinear => "pairs along the pump".into(),
+        Target::HalfAngle(a) => format!("a cone of half angle {} outside", degrees(a)),
+        Target::Crossing(a) => format!("cones that cross {} from the pump outside", degrees(a)),
+        Target::Separation(a) => format!("crossings {} apart outside", degrees(a)),
+        Target::Beamlike => "a cone shrunk to a beam".into(),
+        Target::Touching => "cones that touch".into(),
+    }
+}
+
+/// The first lines of every text: the question in words.
+#[must_use]
+pub fn heading(setup: &Setup, target: Target) -> String {
+    let photons = setup.photons();
+    format!(
+        "{} -> {} + {}, {}, {}",
+        nm(photons.pump.nm()),
+        nm(photons.signal.nm()),
+        nm(photons.idler.nm()),
+        setup.interaction,
+        target_words(target)
+    )
+}
+
+fn nm(value: f64) -> String {
+    format!("{} nm", rounded(value, 3))
+}
+
+/// For people, one material: each solution with what an order needs.
+#[must_use]
+pub fn text(setup: &Setup, target: Target, find: Find, attempts: &[Attempt]) -> String {
+    let mut out = heading(setup, target);
+    out.push('\n');
+    for attempt in attempts {
+        match &attempt.outcome {
+            Ok(solutions) => solutions.iter().for_each(|s| out.push_str(&solution_text(s, find))),
+            Err((_, why)) => out.push_str(&format!("\n{}: {why}\n", attempt.crystal.material.id)),
+        }
+    }
+    out
+}
+
+fn solution_text(s: &CutSolution, find: Find) -> String {
+    let crystal = &s.crystal;
+    let place = s.plane.name().map_or(String::new(), |plane| format!(" ({plane} plane)"));
+    let found = match find {
+        Find::Theta | Find::Phi => String::new(),
+        Find::Poling => format!(", period {} um", or_dash(crystal.poling.map(|p| p.um()), 4)),
+        Find::Temperature => format!(", temperature {} degC", fixed(crystal.temperature.degc(), 2)),
+        Find::Pump => format!(", pump {} nm", fixed(s.photons.pump.nm(), 3)),
+    };
+    let mut out = format!(
+        "\n{}:{}  {}  theta {} deg, phi {} deg{place}{found}\n",
+        crystal.material.id,
+        crystal.set().id,
+        s.process,
+        fixed(crystal.cut.theta.degrees(), 3),
+        rounded(crystal.cut.phi.degrees(), 3),
+    );
+    let mut detail = |label: &str, value: String| out.push_str(&format!("  {label:<22}{value}\n"));
+    detail("|d_eff|", s.d_eff.map_or_else(|| "not known".into(), |d| format!("{} pm/V", fixed(d, 3))));
+    if let Some(p) = &s.pairing {
+        let walkoff = [&p.pump, &p.signal, &p.idler].map(|w| fixed(w.walkoff().to_degrees(), 2));
+        detail(
+            "walk-off inside",
+            format!("pump {}, signal {}, idler {} deg", walkoff[0], walkoff[1], walkoff[2]),
+        );
+        detail("pair delay", format!("{} fs/mm (signal minus idler)", fixed(p.delay() * 1e12, 1)));
+    }
+    let a = &s.acceptance;
+    detail(
+        &format!("FWHM at {} mm", rounded(crystal.length.mm(), 3)),
+        format!(
+            "pump angle {} deg, pump {} nm, signal {} nm, temperature {} K",
+            or_dash(a.pump_angle.map(f64::to_degrees), 3),
+            or_dash(a.pump_wavelength.map(|w| w * 1e9), 3),
+            or_dash(a.signal.map(|w| w * 1e9), 2),
+            or_dash(a.temperature, 1)
+        ),
+    );
+    if let Some(sign) = s.grating_sign {
+        let sense = if sign > 0.0 { "+" } else { "-" };
+        detail(
+            "grating",
+            format!(
+                "its vector enters the mismatch with sign {sense}; period stated at {}",
+                crystal.reference_temperature
+            ),
+        );
+    }
+    if s.status != Status::Ok {
+        detail("status", s.status.to_string());
+    }
+    if let Some(convention) =
+        crystal.material.file.nonlinearity.as_ref().and_then(|n| n.get_ref().convention.as_ref())
+    {
+        detail("phi convention", convention.clone());
+    }
+    out
+}
+
+/// For people, many materials: what can do it, best first, and in a word why the others cannot.
+#[must_use]
+pub fn ranking(setup: &Setup, target: Target, attempts: &[Attempt]) -> String {
+    let mut solved: Vec<&CutSolution> =
+        attempts.iter().filter_map(|a| a.outcome.as_ref().ok()).flatten().collect();
+    solved.sort_by(|a, b| b.d_eff.unwrap_or(0.0).total_cmp(&a.d_eff.unwrap_or(0.0)));
+    let rows: Vec<Vec<String>> = solved
+        .iter()
+        .map(|s| {
+            vec![
+                format!("{}:{}", s.crystal.material.id, s.crystal.set().id),
+                s.process.to_string(),
+                fixed(s.crystal.cut.theta.degrees(), 3),
+                rounded(s.crystal.cut.phi.degrees(), 3),
+                s.plane.name().unwrap_or("-").into(),
+                or_dash(s.d_eff, 3),
+                or_dash(s.pairing.as_ref().map(|p| p.pump.walkoff().to_degrees()), 2),
+                or_dash(s.pairing.as_ref().map(|p| p.delay() * 1e12), 1),
+                s.status.to_string(),
+            ]
+        })
+        .collect();
+    let header =
+        ["crystal", "process", "theta", "phi", "plane", "d_eff pm/V", "walk-off", "delay fs/mm", "status"];
+    let mut out = format!("{}\n\n{}", heading(setup, target), grid(&header, &rows));
+    out.push('\n');
+    for status in [Status::NoPhaseMatching, Status::NoNonlinearity, Status::OutOfRange] {
+        let ids: Vec<&str> = attempts
+            .iter()
+            .filter(|a| a.outcome.as_ref().is_err_and(|(s, _)| *s == status))
+            .map(|a| a.crystal.material.id.as_str())
+            .collect();
+        if !ids.is_empty() {
+            out.push_str(&format!("{}: {}\n", status.to_string().replace('_', " "), ids.join(", ")));
+        }
+    }
+    out
+}
+
+/// The line about the other data sets of one material.
+#[must_use]
+pub fn spread_line(find: Find, own: &[CutSolution], opinions: &[Opinion<Vec<CutSolution>>]) -> String {
+    let first = own.first();
+    let number = |all: &[CutSolution]| {
+        // of several solutions, the one of the same process and plane
+        let like = all.iter().find(|s| first.is_none_or(|f| f.process == s.process && f.plane == s.plane));
+        like.and_then(|s| sought(s, find, first))
+    };
+    let what = match find {
+        Find::Theta | Find::Phi => "the cut in deg",
+        Find::Poling => "the period in um",
+        Find::Temperature => "the temperature in degC",
+        Find::Pump => "the pump in nm",
+    };
+    spread::line(what, number(own), &spread::numbers(opinions, |all| number(all)))
+}
+
+fn sought(s: &CutSolution, find: Find, first: Option<&CutSolution>) -> Option<f64> {
+    let in_xy = first.is_some_and(|f| f.plane == crate::matching::Plane::Xy);
+    match find {
+        Find::Theta if in_xy => Some(s.crystal.cut.phi.degrees()),
+        Find::Theta => Some(s.crystal.cut.theta.degrees()),
+        Find::Phi => Some(s.crystal.cut.phi.degrees()),
+        Find::Poling => s.crystal.poling.map(|p| p.um()),
+        Find::Temperature => Some(s.crystal.temperature.degc()),
+        Find::Pump => Some(s.photons.pump.nm()),
+    }
+}
+
+/// Why there is no solution, and what would match.
+#[must_use]
+pub fn no_solution(
+    setup: &Setup,
+    target: Target,
+    shortfall: Option<Shortfall>,
+    alternatives: &[String],
+) -> String {
+    let mut text = format!("no cut gives {} in {}", target_words(target), setup.interaction);
+    if let Some(s) = shortfall {
+        text.push_str(&format!(
+            "; the nearest collinear mismatch is {} rad/mm at theta {} deg, phi {} deg",
+            fixed(s.mismatch * 1e-3, 2),
+            fixed(s.cut.theta.degrees(), 1),
+            rounded(s.cut.phi.degrees(), 1)
+        ));
+    }
+    if alternatives.is_empty() {
+        text.push_str("; no other type and no other pump within a factor of two matches either");
+    } else {
+        text.push_str(&format!("; {} would match", alternatives.join(", ")));
+    }
+    text
+}

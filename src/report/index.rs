@@ -1,0 +1,158 @@
+//! Report `index`: what each wave sees.
+
+use crate::matching::Status;
+use crate::material::{MaterialError, Optic, Reach};
+use crate::optics::{Along, Crystal, along_axes, along_direction};
+use crate::quantity::Wavelength;
+
+use super::angles::{fixed, grid, or_dash, rounded};
+use super::table::{Cell, Column, Table, column};
+
+/// Columns, without the two that end every table.
+pub const COLUMNS: [Column; 10] = [
+    column("material", "", "crystal id"),
+    column("dataset", "", "data set id"),
+    column("wavelength_nm", "nm", "in vacuum"),
+    column("temperature_degc", "degC", "of the crystal"),
+    column("polarization", "", "o, e, fast, slow, or the principal axis x, y, z"),
+    column("n", "", "phase index"),
+    column("group_index", "", "c dk/domega at fixed direction of the wave vector"),
+    column("gvd_fs2_per_mm", "fs^2/mm", "d2k/domega2 at fixed direction of the wave vector"),
+    column("walkoff_deg", "deg", "wave vector to ray"),
+    column("dn_dt_per_k", "1/K", "temperature derivative of the phase index; empty where not known"),
+];
+
+/// One wave at one wavelength.
+#[derive(Debug, Clone)]
+pub struct IndexRow {
+    material: String,
+    dataset: String,
+    wavelength: Wavelength,
+    temperature_degc: f64,
+    polarization: String,
+    along: Option<Along>,
+    dn_dt: Option<f64>,
+    extrapolated: bool,
+    status: Status,
+}
+
+/// The waves of a crystal at one wavelength: along its face normal where `directed`, else along the principal axes.
+///
+/// # Errors
+/// A wavelength or temperature outside the data set's range.
+pub fn rows(
+    crystal: &Crystal,
+    wavelength: Wavelength,
+    directed: bool,
+) -> Result<Vec<IndexRow>, MaterialError> {
+    let principal = crystal.principal(wavelength)?;
+    let waves: Vec<(String, Along)> = if directed {
+        let [_, _, normal] = crystal.cut.axes();
+        along_direction(&principal, normal.0).into_iter().map(|(p, along)| (p.to_string(), along)).collect()
+    } else {
+        let axes = along_axes(&principal);
+        match principal.optic {
+            Optic::Uniaxial => vec![("o".into(), axes[0]), ("e".into(), axes[2])],
+            Optic::Biaxial => {
+                ["x", "y", "z"].iter().zip(axes).map(|(n, along)| ((*n).into(), along)).collect()
+            }
+        }
+    };
+    let slopes: [Option<f64>; 3] =
+        std::array::from_fn(|axis| crystal.set().thermo_slope(axis, wavelength, crystal.temperature));
+    Ok(waves
+        .into_iter()
+        .map(|(polarization, along)| IndexRow {
+            material: crystal.material.id.clone(),
+            dataset: crystal.set().id.clone(),
+            wavelength,
+            temperature_degc: crystal.temperature.degc(),
+            polarization,
+            dn_dt: along.thermo_slope(&principal, slopes),
+            extrapolated: crystal.extrapolates(wavelength),
+            status: if along.on_optic_axis { Status::OpticAxis } else { Status::Ok },
+            along: Some(along),
+        })
+        .collect())
+}
+
+/// A row for a data set that does not cover the wavelength, where several are asked.
+#[must_use]
+pub fn out_of_range(crystal: &Crystal, wavelength: Wavelength) -> IndexRow {
+    debug_assert_eq!(crystal.reach, Reach::Within);
+    IndexRow {
+        material: crystal.material.id.clone(),
+        dataset: crystal.set().id.clone(),
+        wavelength,
+        temperature_degc: crystal.temperature.degc(),
+        polarization: String::new(),
+        along: None,
+        dn_dt: None,
+        extrapolated: false,
+        status: Status::OutOfRange,
+    }
+}
+
+/// All rows as a table.
+#[must_use]
+pub fn table(rows: &[IndexRow]) -> Table {
+    let mut table = Table::new("index", &COLUMNS);
+    for row in rows {
+        let along = row.along.as_ref();
+        let polarization = Some(row.polarization.as_str()).filter(|p| !p.is_empty());
+        let cells = vec![
+            row.material.as_str().into(),
+            row.dataset.as_str().into(),
+            row.wavelength.nm().into(),
+            row.temperature_degc.into(),
+            polarization.into(),
+            along.map(|a| a.n).into(),
+            along.map(|a| a.group_index).into(),
+            along.map(|a| a.dispersion * 1e27).into(),
+            along.map(|a| a.walkoff.to_degrees()).into(),
+            Cell::from(row.dn_dt),
+        ];
+        table.push(cells, row.extrapolated, row.status);
+    }
+    table
+}
+
+/// For people.
+#[must_use]
+pub fn text(rows: &[IndexRow]) -> String {
+    let header = [
+        "crystal",
+        "nm",
+        "degC",
+        "wave",
+        "n",
+        "group index",
+        "GVD fs^2/mm",
+        "walk-off deg",
+        "dn/dT 1e-6/K",
+        "status",
+    ];
+    let cells: Vec<Vec<String>> = rows
+        .iter()
+        .map(|row| {
+            let along = row.along.as_ref();
+            vec![
+                format!("{}:{}", row.material, row.dataset),
+                rounded(row.wavelength.nm(), 3),
+                rounded(row.temperature_degc, 2),
+                row.polarization.clone(),
+                or_dash(along.map(|a| a.n), 6),
+                or_dash(along.map(|a| a.group_index), 6),
+                or_dash(along.map(|a| a.dispersion * 1e27), 2),
+                or_dash(along.map(|a| a.walkoff.to_degrees()), 3),
+                row.dn_dt.map_or_else(|| "-".into(), |d| fixed(d * 1e6, 2)),
+                if row.extrapolated {
+                    format!("{} (extrapolated)", row.status)
+                } else {
+                    row.status.to_string()
+                },
+            ]
+        })
+        .collect();
+    grid(&header, &cells)
+}

@@ -1,0 +1,56 @@
+//! Results as rows, and rows as text, CSV and JSON.
+
+mod angles;
+pub mod cones;
+mod conventions;
+pub mod cut;
+mod export;
+pub mod index;
+pub mod materials;
+mod spread;
+pub mod table;
+pub mod tilt;
+pub mod twin;
+
+pub use conventions::{Conventions, room_words};
+pub use export::{csv, json};
+pub use table::{Cell, Column, Table};
+
+/// What a command found, in every form it can be written in.
+#[derive(Debug, Clone)]
+pub struct Answer {
+    /// Name of the command.
+    pub command: &'static str,
+    /// Tables for scripts; the first is the one that CSV takes unless told otherwise.
+    pub tables: Vec<Table>,
+    /// For people: body without conventions.
+    pub text: String,
+    /// What the numbers mean, and warnings.
+    pub conventions: Conventions,
+    /// The job as it was understood.
+    pub job: serde_json::Value,
+    /// Whether a single question had a solution.
+    pub solved: bool,
+}
+
+impl Answer {
+    /// For people: body, then conventions.
+    #[must_use]
+    pub fn to_text(&self) -> String {
+        let mut text = self.text.trim_end().to_string();
+        text.push_str("\n\n");
+        for line in &self.conventions.lines {
+            text.push_str(line);
+            text.push('\n');
+        }
+        text
+    }
+}
+
+/// The job of a setup, every default filled in, as JSON.
+#[must_use]
+pub fn resolved_job(setup: &crate::job::Setup) -> serde_json::Value {
+    let text = crate::job::template(setup);
+    let value: toml::Value = toml::from_str(&text).expect("the template is valid TOML");
+    serde_json::to_value(value).expect("TOML without dates is JSON")
+}

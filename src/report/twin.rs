@@ -1,0 +1,118 @@
+//! Report `twin`: where a photon's partner goes.
+
+use crate::frame::Direction;
+use crate::job::Setup;
+use crate::matching::{Emission, Pairing, Roles, Status};
+use crate::material::tensor::is_centrosymmetric;
+
+use super::angles::{fixed, grid, rounded, signed};
+use super::table::{Cell, Column, Table, column};
+
+/// Columns, without the two that end every table.
+pub const COLUMNS: [Column; 11] = [
+    column("process", "", "pump -> signal + idler, the given photon as signal"),
+    column("polarization", "", "of the given photon"),
+    column("h_deg", "deg", "horizontal angle of the given photon, outside"),
+    column("v_deg", "deg", "vertical angle of the given photon, outside"),
+    column("wavelength_nm", "nm", "of the given photon"),
+    column("partner_polarization", "", "of its partner"),
+    column("partner_h_deg", "deg", "horizontal angle of the partner, outside"),
+    column("partner_v_deg", "deg", "vertical angle of the partner, outside"),
+    column("partner_wavelength_nm", "nm", "of the partner"),
+    column("mismatch_rad_per_mm", "rad/mm", "Delta_k along the face normal"),
+    column("phase_matching_factor", "", "sinc^2(Delta_k L/2)"),
+];
+
+/// One process: the waves of the pair, if they exist.
+pub type Twin = (Roles, Option<Pairing>);
+
+/// One row per process.
+#[must_use]
+pub fn table(setup: &Setup, emission: &Emission, photon: Direction, twins: &[Twin]) -> Table {
+    let mut table = Table::new("twin", &COLUMNS);
+    let extrapolated = [emission.photons.pump, emission.photons.signal, emission.photons.idler]
+        .iter()
+        .any(|w| setup.crystals[0].extrapolates(*w));
+    for (roles, pairing) in twins {
+        let process = emission.process(*roles);
+        let partner = pairing.as_ref().and_then(|p| p.idler_outside);
+        let cells = vec![
+            process.to_string().into(),
+            process.signal.to_string().into(),
+            photon.h_deg().into(),
+            photon.v_deg().into(),
+            emission.photons.signal.nm().into(),
+            process.idler.to_string().into(),
+            partner.map(Direction::h_deg).into(),
+            partner.map(Direction::v_deg).into(),
+            emission.photons.idler.nm().into(),
+            pairing.as_ref().map(|p| p.mismatch * 1e-3).into(),
+            Cell::from(pairing.as_ref().map(|p| p.phase_matching_factor(emission.length))),
+        ];
+        table.push(cells, extrapolated, status(setup, emission, pairing.as_ref()));
+    }
+    table
+}
+
+fn status(setup: &Setup, emission: &Emission, pairing: Option<&Pairing>) -> Status {
+    let material = &setup.crystals[0].material;
+    match pairing {
+        None => Status::TotalReflection,
+        Some(p) if p.idler_outside.is_none() => Status::TotalReflection,
+        Some(p) if p.on_optic_axis() => Status::OpticAxis,
+        Some(p) => match &material.tensor {
+            Some(tensor) if p.d_eff(emission, tensor) < 1e-6 * tensor.largest() => Status::NoNonlinearity,
+            None if is_centrosymmetric(material.file.point_group.get_ref()) => Status::NoNonlinearity,
+            _ => Status::Ok,
+        },
+    }
+}
+
+/// For people.
+#[must_use]
+pub fn text(setup: &Setup, emission: &Emission, photon: Direction, twins: &[Twin]) -> String {
+    let mut out = format!(
+        "A {} nm photon at h {} deg, v {} deg; its partner has {} nm; {} mm of {}\n\n",
+        rounded(emission.photons.signal.nm(), 3),
+        signed(photon.h_deg(), 3),
+        signed(photon.v_deg(), 3),
+        rounded(emission.photons.idler.nm(), 3),
+        rounded(setup.crystals[0].length.mm(), 3),
+        setup.crystals[0].material.id,
+    );
+    let header = [
+        "process",
+        "photon",
+        "partner",
+        "partner h",
+        "partner v",
+        "x mm",
+        "y mm",
+        "Delta k rad/mm",
+        "sinc^2",
+    ];
+    let rows: Vec<Vec<String>> = twins
+        .iter()
+        .map(|(roles, pairing)| {
+            let process = emission.process(*roles);
+            let mut cells = vec![process.to_string(), process.signal.to_string(), process.idler.to_string()];
+            match pairing.as_ref().and_then(|p| p.idler_outside.map(|d| (p, d))) {
+                Some((p, d)) => {
+                    let (x, y) = d.on_screen_mm(setup.screen);
+                    cells.extend([
+                        signed(d.h_deg(), 3),
+                        signed(d.v_deg(), 3),
+                        signed(x, 2),
+                        signed(y, 2),
+                        fixed(p.mismatch * 1e-3, 3),
+                        fixed(p.phase_matching_factor(emission.length), 3),
+                    ]);
+                }
+                None => cells.push("totally reflected".into()),
+            }
+            cells
+        })
+        .collect();
+    out.push_str(&grid(&header, &rows));
+    out
+}
