@@ -5,7 +5,7 @@
 //!
 //! Data flows one way: what was typed ([`job::description`]) becomes a validated setup in SI ([`job::setup`]), the
 //! physics ([`optics`], [`matching`]) works on that, and [`report`] turns results into rows and rows into text, CSV or
-//! JSON. The library never prints, exits or reads the environment; the commands under [`cli`] never compute.
+//! JSON. The library never prints, exits or reads the environment; the commands, in the program's `cli`, never compute.
 //!
 //! | module | subject |
 //! |---|---|
@@ -16,9 +16,7 @@
 //! | [`matching`] | phase matching: cuts, rings, crossings, turns |
 //! | [`job`] | the description of an experiment |
 //! | [`report`] | rows to text, CSV, JSON |
-//! | [`cli`] | one file per command |
 
-pub mod cli;
 pub mod frame;
 pub mod job;
 pub mod matching;

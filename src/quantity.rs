@@ -410,8 +410,16 @@ impl FromStr for Wavelength {
 }
 
 impl fmt::Display for Wavelength {
+    /// `405 nm`, exactly; with a precision, at most so many decimals.
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        write!(f, "{} nm", self.nm())
+        match f.precision() {
+            Some(digits) => {
+                let text = format!("{:.digits$}", self.nm());
+                let short = if digits > 0 { text.trim_end_matches('0').trim_end_matches('.') } else { &text };
+                write!(f, "{short} nm")
+            }
+            None => write!(f, "{} nm", self.nm()),
+        }
     }
 }
 

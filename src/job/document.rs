@@ -51,6 +51,13 @@ impl Document {
         self.buffer.push('\n');
     }
 
+    /// Adds the sources of another document after those of this one.
+    pub fn append(&mut self, other: &Self) {
+        for source in &other.sources {
+            self.push(&source.name, source.is_file, &other.buffer[source.range.clone()]);
+        }
+    }
+
     /// Overrides one key with a text. `option` is what messages call it (`--tilt`).
     pub fn set(&mut self, option: &str, key: &str, value: &str) {
         self.push(option, false, &format!("{} = {}", dotted(key), toml::Value::String(value.into())));
@@ -309,18 +316,17 @@ const LISTS: [&str; 4] = ["crystal", "compensator", "filter", "collection"];
 /// One table becomes a list of one; one signal becomes a list of one.
 fn normalise(tree: &mut DeTable<'_>) {
     for key in LISTS {
-        if let Some(value) = tree.get_mut(key) {
-            if value.get_ref().is_table() {
-                wrap(value);
-            }
+        if let Some(value) = tree.get_mut(key)
+            && value.get_ref().is_table()
+        {
+            wrap(value);
         }
     }
-    if let Some(DeValue::Table(emission)) = tree.get_mut("emission").map(Spanned::get_mut) {
-        if let Some(signal) = emission.get_mut("signal") {
-            if signal.get_ref().is_str() {
-                wrap(signal);
-            }
-        }
+    if let Some(DeValue::Table(emission)) = tree.get_mut("emission").map(Spanned::get_mut)
+        && let Some(signal) = emission.get_mut("signal")
+        && signal.get_ref().is_str()
+    {
+        wrap(signal);
     }
 }
 

@@ -32,7 +32,7 @@ pub enum SetupError {
 /// What a description must hold beside pump and crystal.
 #[derive(Debug, Clone, Copy, Default)]
 pub struct Needs {
-    /// A cut, given or solved for; else it may be missing.
+    /// A cut, given or solved for; else it may be missing and a target is left alone.
     pub cut: bool,
     /// A pump wavelength; else it may be missing.
     pub pump: bool,
@@ -350,10 +350,10 @@ fn signals(
 fn stage(reader: &Reader<'_>, d: &Description) -> Result<Option<Stage>, SetupError> {
     let Some(stage) = &d.stage else { return Ok(None) };
     let per_turn = reader.maybe::<Angle>(stage.per_turn.as_ref())?;
-    if let (Some(text), Some(angle)) = (&stage.per_turn, per_turn) {
-        if angle.si() <= 0.0 {
-            return Err(reader.fault(text, "the turn per screw turn must be positive; write reversed = true for a screw that counts backwards"));
-        }
+    if let (Some(text), Some(angle)) = (&stage.per_turn, per_turn)
+        && angle.si() <= 0.0
+    {
+        return Err(reader.fault(text, "the turn per screw turn must be positive; write reversed = true for a screw that counts backwards"));
     }
     Ok(Some(Stage {
         zero: reader.maybe(stage.zero.as_ref())?.unwrap_or_default(),
@@ -452,10 +452,10 @@ fn given_cut(
     let Some(written) = &c.cut else { return Ok(GivenCut::default()) };
     let cut = written.get_ref();
     let theta = reader.maybe::<Angle>(cut.theta.as_ref())?;
-    if let (Some(text), Some(theta)) = (&cut.theta, theta) {
-        if !(0.0..=180.0).contains(&theta.degrees()) {
-            return Err(reader.fault(text, &format!("theta must lie within 0 deg to 180 deg, not {theta}")));
-        }
+    if let (Some(text), Some(theta)) = (&cut.theta, theta)
+        && !(0.0..=180.0).contains(&theta.degrees())
+    {
+        return Err(reader.fault(text, &format!("theta must lie within 0 deg to 180 deg, not {theta}")));
     }
     let angle = |text: &Text, most: f64| -> Result<f64, SetupError> {
         let angle: Angle = reader.read(text)?;
@@ -493,11 +493,14 @@ fn given_cut(
 /// Solves a cut that was given as a target, and chooses phi where it was left open.
 fn settle_cut(setup: &mut Setup, index: usize, needs: Needs) -> Result<(), SetupError> {
     let given = setup.cut[index];
+    if !needs.cut {
+        return Ok(());
+    }
     if let (Some(Target::HalfAngle(_)), false) = (given.target, setup.interaction_given) {
         setup.interaction = Interaction::One;
     }
     let Some(target) = given.target else {
-        if needs.cut && !given.theta {
+        if !given.theta {
             return Err(JobError(format!(
                 "no cut: pass --theta (and --phi), or let it be solved with --cut, for example --cut {}; \
                  `twincone cut` answers which one to order",

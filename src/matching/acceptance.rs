@@ -7,6 +7,7 @@ use super::partner::HALF_MAXIMUM;
 use super::root::bracketed;
 use super::tuning::retuned;
 use crate::frame::Direction;
+use crate::material::Reach;
 use crate::optics::Crystal;
 use crate::quantity::{Angle, Temperature, Wavelength};
 
@@ -50,7 +51,9 @@ pub fn acceptances(crystal: &Crystal, photons: Photons, roles: Roles, signal: Di
     };
     let heated = |shift: f64| {
         let temperature = Temperature::celsius(crystal.temperature.degc() + shift);
-        mismatch(&Emission::of(&Crystal { temperature, ..crystal.clone() }, photons).ok()?)
+        // a width may reach beyond the range that the thermo-optic terms were measured in
+        let hot = Crystal { temperature, reach: Reach::Extrapolate, ..crystal.clone() };
+        mismatch(&Emission::of(&hot, photons).ok()?)
     };
     Acceptance {
         pump_angle: full_width(tilted, edge, 1e-6, 0.5),

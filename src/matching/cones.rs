@@ -162,10 +162,10 @@ fn of_crystal(
         all = vec![brightest(crystal, &emission, &all)];
     }
     // one process of a degenerate pair is its own twin with the names of the photons exchanged
-    if let (Interaction::Explicit(_), [only], true) = (interaction, all.as_slice(), photons.degenerate()) {
-        if only.signal != only.idler {
-            all.push(only.exchanged());
-        }
+    if let (Interaction::Explicit(_), [only], true) = (interaction, all.as_slice(), photons.degenerate())
+        && only.signal != only.idler
+    {
+        all.push(only.exchanged());
     }
     let extrapolated = [photons.pump, photons.signal, photons.idler].iter().any(|w| crystal.extrapolates(*w));
     Ok(all
@@ -217,7 +217,9 @@ fn is_dark(
         let pairing = emission.pairing(roles, direction);
         pairing.is_some_and(|p| p.d_eff(emission, tensor) < 1e-6 * tensor.largest())
     };
-    rings.as_ref().is_ok_and(|all| all.iter().all(|ring| (0..4).all(|n| dark(ring.direction(18 * n + 5)))))
+    rings
+        .as_ref()
+        .is_ok_and(|all| all.iter().all(|ring| (0..4).all(|n| dark(ring.curve.direction(18 * n + 5)))))
 }
 
 /// Adds the rings of both photons of a history, unless they are there already.
@@ -331,7 +333,8 @@ fn crossing_rows(crystals: &[Crystal], first: &History, second: &History, rows: 
     let mut meetings: Vec<(Crossing, Status)> = Vec::new();
     for one in ones {
         for two in twos {
-            match meet(Traced { mismatch: m1, ring: one }, Traced { mismatch: m2, ring: two }) {
+            match meet(Traced { mismatch: m1, curve: &one.curve }, Traced { mismatch: m2, curve: &two.curve })
+            {
                 Some(Meeting::Cross(all)) => meetings.extend(all.into_iter().map(|c| (c, Status::Ok))),
                 Some(Meeting::Touch(point)) => meetings.push((point, Status::Touching)),
                 Some(Meeting::Coincide(point)) => meetings.push((point, Status::Coincident)),

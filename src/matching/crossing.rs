@@ -6,7 +6,7 @@ use std::f64::consts::{FRAC_PI_2, TAU};
 use nalgebra::{Matrix2, Vector2, Vector3};
 
 use super::mismatch::Mismatch;
-use super::ring::{Ring, SAMPLES, azimuth};
+use super::ring::{Curve, SAMPLES, azimuth};
 use super::root::bracketed;
 use crate::frame::{Direction, Lab};
 
@@ -60,8 +60,8 @@ pub enum Meeting {
 pub struct Traced<'a> {
     /// Its mismatch.
     pub mismatch: &'a Mismatch,
-    /// The ring.
-    pub ring: &'a Ring,
+    /// The ring's curve.
+    pub curve: &'a Curve,
 }
 
 /// The other ring's mismatch along a ring.
@@ -76,6 +76,13 @@ struct Along {
 }
 
 impl Along {
+    fn at(other: &Mismatch, d: Vector3<f64>, tangent: Vector3<f64>) -> Option<Self> {
+        let there = other.towards(d)?;
+        let across = there.gradient - d * there.gradient.dot(&d);
+        let scale = across.norm().max(f64::MIN_POSITIVE);
+        Some(Self { value: there.value, slope: there.gradient.dot(&tangent), scale })
+    }
+
     fn off(&self) -> f64 {
         self.value / self.scale
     }
@@ -146,7 +153,8 @@ pub fn reach(first: Traced<'_>, other: &Mismatch) -> Option<[f64; 2]> {
 fn sample(first: Traced<'_>, other: &Mismatch) -> Option<[Along; SAMPLES + 1]> {
     let mut samples = [Along { value: 0.0, slope: 0.0, scale: 1.0 }; SAMPLES + 1];
     for (j, slot) in samples.iter_mut().enumerate().take(SAMPLES) {
-        *slot = along(first, other, azimuth(j))?;
+        let (d, tangent) = first.curve.sample(first.mismatch, j)?;
+        *slot = Along::at(other, d, tangent)?;
     }
     samples[SAMPLES] = samples[0];
     Some(samples)
@@ -185,16 +193,13 @@ fn between(
 }
 
 fn along(first: Traced<'_>, other: &Mismatch, phi: f64) -> Option<Along> {
-    let (d, tangent) = first.ring.point_and_tangent(first.mismatch, phi)?;
-    let there = other.towards(d)?;
-    let across = there.gradient - d * there.gradient.dot(&d);
-    let scale = across.norm().max(f64::MIN_POSITIVE);
-    Some(Along { value: there.value, slope: there.gradient.dot(&tangent), scale })
+    let (d, tangent) = first.curve.point_and_tangent(first.mismatch, phi)?;
+    Along::at(other, d, tangent)
 }
 
 /// The crossing near an azimuth of the first ring, polished by Newton in both equations.
 fn crossing(first: Traced<'_>, second: Traced<'_>, phi: f64) -> Option<Crossing> {
-    let mut d = first.ring.at(first.mismatch, phi)?.lab().0;
+    let mut d = first.curve.at(first.mismatch, phi)?.lab().0;
     for _ in 0..4 {
         let (one, two) = (first.mismatch.towards(d)?, second.mismatch.towards(d)?);
         let e1 = d.cross(&Vector3::x()).normalize();
@@ -235,13 +240,13 @@ fn screen_angle(d: Vector3<f64>, one: Vector3<f64>, two: Vector3<f64>) -> f64 {
 /// Least angle between two rings that do not meet, and the first ring's azimuth where it is found.
 fn contact(first: Traced<'_>, second: Traced<'_>, samples: &[Along; SAMPLES + 1]) -> Option<(Contact, f64)> {
     let inside_second = samples[0].value < 0.0;
-    let around_second = || first.mismatch.towards(second.ring.vector(0)).is_some_and(|t| t.value < 0.0);
+    let around_second = || first.mismatch.towards(second.curve.vector(0)).is_some_and(|t| t.value < 0.0);
     let kind = if inside_second || around_second() { GapKind::Inside } else { GapKind::Outside };
     let mut nearest = (f64::INFINITY, 0, 0);
     for i in 0..SAMPLES {
-        let d = first.ring.vector(i);
+        let d = first.curve.vector(i);
         for j in 0..SAMPLES {
-            let distance = (d - second.ring.vector(j)).norm_squared();
+            let distance = (d - second.curve.vector(j)).norm_squared();
             if distance < nearest.0 {
                 nearest = (distance, i, j);
             }
@@ -250,8 +255,8 @@ fn contact(first: Traced<'_>, second: Traced<'_>, samples: &[Along; SAMPLES + 1]
     let mut at = Vector2::new(azimuth(nearest.1), azimuth(nearest.2));
     // the chord stands on both curves: (d1 - d2).t1 = (d1 - d2).t2 = 0, by Newton with differences for the Jacobian
     let standing = |at: Vector2<f64>| {
-        let (d1, t1) = first.ring.point_and_tangent(first.mismatch, at.x)?;
-        let (d2, t2) = second.ring.point_and_tangent(second.mismatch, at.y)?;
+        let (d1, t1) = first.curve.point_and_tangent(first.mismatch, at.x)?;
+        let (d2, t2) = second.curve.point_and_tangent(second.mismatch, at.y)?;
         Some((d1, d2, Vector2::new((d1 - d2).dot(&t1.normalize()), (d1 - d2).dot(&t2.normalize()))))
     };
     let angle = |d1: Vector3<f64>, d2: Vector3<f64>| d1.cross(&d2).norm().atan2(d1.dot(&d2));

@@ -144,7 +144,11 @@ impl Line<'_> {
     fn scan(&self) -> Scan {
         let pump = self.design.photons.pump.si();
         match self.find {
-            Find::Theta | Find::Phi => Scan { from: 0.0, to: FRAC_PI_2, intervals: 180 },
+            // rings change slowly with the cut and cost more than a collinear mismatch
+            Find::Theta | Find::Phi => {
+                let intervals = if self.design.target == Target::Collinear { 180 } else { 90 };
+                Scan { from: 0.0, to: FRAC_PI_2, intervals }
+            }
             // x is the inverse period
             Find::Poling => Scan { from: 0.0, to: 1.0 / 0.5e-6, intervals: 800 },
             Find::Temperature => Scan { from: -50.0, to: 300.0, intervals: 175 },
@@ -248,10 +252,12 @@ fn plane_of(crystal: &Crystal, find: Find) -> Plane {
 fn solution(line: &Line<'_>, roles: Roles, root: Root) -> Vec<CutSolution> {
     let Some((mut crystal, photons, emission)) = line.at(root.x) else { return Vec::new() };
     let uniaxial = crystal.material.file.optic == Optic::Uniaxial;
-    if uniaxial && line.find == Find::Theta && !line.design.phi_given {
-        if let Some(tensor) = &crystal.material.tensor {
-            crystal.cut.phi = best_phi(&emission, roles, tensor).unwrap_or_default();
-        }
+    if uniaxial
+        && line.find == Find::Theta
+        && !line.design.phi_given
+        && let Some(tensor) = &crystal.material.tensor
+    {
+        crystal.cut.phi = best_phi(&emission, roles, tensor).unwrap_or_default();
     }
     let here = describe(line, roles, root, crystal.clone(), photons);
     let mut all = vec![here];
@@ -376,4 +382,32 @@ pub fn shortfall(design: &Design) -> Result<Option<Shortfall>, ConesError> {
         }
     }
     Ok(nearest)
+}
+
+/// Other ways to meet the target that do have a solution, in words: another type, another pump wavelength.
+#[must_use]
+pub fn alternatives(asked: &Design, nearest: Option<Shortfall>) -> Vec<String> {
+    let mut found = Vec::new();
+    if asked.find == Find::Theta {
+        for interaction in [Interaction::One, Interaction::Two] {
+            let other = Design { interaction, ..asked.clone() };
+            if interaction != asked.interaction && design(&other).is_ok_and(|all| !all.is_empty()) {
+                found.push(interaction.to_string());
+            }
+        }
+    }
+    let Some(nearest) = nearest else { return found };
+    let crystal = Crystal { cut: nearest.cut, ..asked.crystal.clone() };
+    let pump = Design { crystal, find: Find::Pump, target: Target::Collinear, ..asked.clone() };
+    let now = asked.photons.pump.si();
+    let pumps = design(&pump).unwrap_or_default();
+    let closest = pumps.iter().min_by(|a, b| {
+        let away = |s: &CutSolution| (s.photons.pump.si() - now).abs();
+        away(a).total_cmp(&away(b))
+    });
+    if let Some(s) = closest {
+        let (nm, theta) = (s.photons.pump.nm(), nearest.cut.theta.degrees());
+        found.push(format!("a pump of {nm:.1} nm at theta {theta:.1} deg"));
+    }
+    found
 }

@@ -58,10 +58,20 @@ impl Triplet {
     /// # Errors
     /// A wavelength or temperature outside the data set's range.
     pub fn new(crystal: &Crystal, photons: &Photons) -> Result<Self, MaterialError> {
+        let look_up = |name: &'static str, wavelength: Wavelength| {
+            crystal.principal(wavelength).map_err(|error| match error {
+                MaterialError::OutOfRange { wavelength, from, to, material, dataset, .. } => {
+                    let all = [photons.pump, photons.signal, photons.idler];
+                    let remedy = crystal.material.sets_that_cover(&all);
+                    MaterialError::OutOfRange { whose: name, wavelength, from, to, material, dataset, remedy }
+                }
+                other => other,
+            })
+        };
         Ok(Self {
-            pump: crystal.principal(photons.pump)?,
-            signal: crystal.principal(photons.signal)?,
-            idler: crystal.principal(photons.idler)?,
+            pump: look_up("the pump, ", photons.pump)?,
+            signal: look_up("the signal, ", photons.signal)?,
+            idler: look_up("the idler, ", photons.idler)?,
         })
     }
 

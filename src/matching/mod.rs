@@ -17,16 +17,16 @@ mod tuning;
 pub use acceptance::{Acceptance, acceptances};
 pub use cones::{Cones, ConesError, CrossingRow, HistoryName, Landing, RingRow, cones};
 pub use crossing::{Contact, Crossing, GapKind, Meeting, Traced, meet};
-pub use cut::{CutSolution, Design, Find, Plane, Shortfall, best_phi, design, shortfall};
+pub use cut::{CutSolution, Design, Find, Plane, Shortfall, alternatives, best_phi, design, shortfall};
 pub use emission::{Emission, Media, Photons, Triplet};
 pub use interaction::{Interaction, Process, ProcessError, Roles};
 pub use mismatch::{Mismatch, Sample};
 pub use partner::Pairing;
-pub use ring::{Ring, RingFault, SAMPLES, rings};
+pub use ring::{Curve, Ring, RingFault, SAMPLES, curves, half_angle, rings};
 pub use root::{Root, Scan, roots};
 pub use spread::{Opinion, opinions};
 pub use target::{Measure, Target};
-pub use tuning::{Actuator, Turn, nearest_touch, opening_turn, tune, tuning_turn};
+pub use tuning::{Actuator, Turn, nearest_touch, opening_turn, shortage, tune, tuning_turn};
 
 use std::fmt;
 

@@ -19,16 +19,26 @@ pub const SAMPLES: usize = 72;
 /// Cosine of the search region's half angle about the pump, 60 deg.
 const REGION: f64 = 0.5;
 
+/// A closed curve of directions, traced by azimuth about an axis inside it.
+#[derive(Debug, Clone)]
+pub struct Curve {
+    frame: Meridians,
+    /// Polar angles at the azimuths of [`azimuth`].
+    samples: [f64; SAMPLES],
+}
+
 /// A ring and the cone that fits it.
 #[derive(Debug, Clone)]
 pub struct Ring {
+    /// The curve, traced about the axis of the cone that fits it.
+    pub curve: Curve,
     /// Axis of the best-fitting circular cone, outside.
     pub axis: Direction,
     /// Half angle of that cone, outside, radians.
     pub half_angle: f64,
-    /// Least angle between axis and ring, radians.
+    /// Least angle between axis and ring, outside, radians.
     pub least: f64,
-    /// Largest angle between axis and ring, radians.
+    /// Largest angle between axis and ring, outside, radians.
     pub largest: f64,
     /// Half angle of the cone that fits the photon's wave vectors inside the crystal, radians.
     pub internal_half_angle: f64,
@@ -37,8 +47,6 @@ pub struct Ring {
     pub thickness: Option<f64>,
     /// `Ok`, or `TotalReflection` where some partners cannot leave the crystal.
     pub status: Status,
-    frame: Meridians,
-    samples: [f64; SAMPLES],
 }
 
 /// Why there is no ring.
@@ -73,6 +81,10 @@ impl Meridians {
     fn outward(&self, phi: f64) -> Vector3<f64> {
         let (s, c) = phi.sin_cos();
         self.across[0] * c + self.across[1] * s
+    }
+
+    fn meridian(&self, phi: f64) -> Meridian {
+        Meridian { axis: self.axis, outward: self.outward(phi) }
     }
 
     fn point(&self, psi: f64, phi: f64) -> Vector3<f64> {
@@ -116,8 +128,8 @@ impl Mismatch {
                     }
                     let slope = here.gradient.dot(&(meridian.outward * cos - meridian.axis * sin));
                     next = psi - value / slope;
-                    // at rounding error the value no longer decides which side psi is on
-                    if (next - psi).abs() <= 4.0 * f64::EPSILON * psi.max(1e-6) {
+                    // Newton squares the relative error: after a step this small the next would be below rounding
+                    if (next - psi).abs() <= 1e-8 * psi {
                         return Hit::At(next);
                     }
                 }
@@ -146,11 +158,26 @@ impl Mismatch {
 /// # Errors
 /// The fault of the one ring that is not there, where there is none at all.
 pub fn rings(mismatch: &Mismatch, length: f64) -> Result<Vec<Ring>, RingFault> {
-    let seeds = seeds(mismatch)?;
+    all(seeds(mismatch)?, |seed| Ring::fit(Curve::about(mismatch, &seed)?, mismatch, length))
+}
+
+/// The curves of all rings, each traced about the direction where its mismatch is least: all that crossings need.
+///
+/// # Errors
+/// As [`rings`].
+pub fn curves(mismatch: &Mismatch) -> Result<Vec<Curve>, RingFault> {
+    all(seeds(mismatch)?, |seed| Curve::about(mismatch, &seed)?.within_region())
+}
+
+/// What can be made of the seeds; the fault of one where there is nothing.
+fn all<T>(
+    seeds: Vec<Stationary>,
+    mut make: impl FnMut(Stationary) -> Result<T, RingFault>,
+) -> Result<Vec<T>, RingFault> {
     let mut found = Vec::with_capacity(seeds.len());
     let mut fault = None;
     for seed in seeds {
-        match Ring::about(mismatch, &seed, length) {
+        match make(seed) {
             Ok(ring) => found.push(ring),
             Err(why) => fault = Some(why),
         }
@@ -193,7 +220,7 @@ fn seeds(mismatch: &Mismatch) -> Result<Vec<Stationary>, RingFault> {
 
 /// Grid points with the least Delta_k in each connected region of Delta_k < 0 (flood fill over four neighbours).
 fn lowest_of_each_region(mismatch: &Mismatch) -> Vec<Tangential> {
-    const SIDE: usize = 61;
+    const SIDE: usize = 41;
     let place = |i: usize| 2.0 * i as f64 / (SIDE - 1) as f64 - 1.0;
     let k0 = mismatch.k0_signal();
     let at = |n: usize| Tangential { u: k0 * place(n % SIDE), v: k0 * place(n / SIDE) };
@@ -229,56 +256,60 @@ fn lowest_of_each_region(mismatch: &Mismatch) -> Vec<Tangential> {
     lowest
 }
 
-impl Ring {
-    /// The ring about a seed.
-    fn about(mismatch: &Mismatch, seed: &Stationary, length: f64) -> Result<Self, RingFault> {
-        const PASSES: usize = 20;
+impl Curve {
+    /// The curve about a seed, traced from there.
+    fn about(mismatch: &Mismatch, seed: &Stationary) -> Result<Self, RingFault> {
         let Some(start) = mismatch.direction(seed.q) else {
             return Err(RingFault::new(Status::TotalReflection));
         };
         // Delta_k ~ Delta_0 + curvature q^2/2 gives the first radius
         let radius = (-2.0 * seed.value / seed.curvature).sqrt() / mismatch.k0_signal();
-        let mut frame = Meridians::about(start.lab().0);
-        let mut samples = [radius; SAMPLES];
+        let mut curve = Self { frame: Meridians::about(start.lab().0), samples: [radius; SAMPLES] };
+        curve.trace(mismatch)?;
+        Ok(curve)
+    }
+
+    /// The curve, if all of it lies in the search region.
+    fn within_region(self) -> Result<Self, RingFault> {
+        let outside = (0..SAMPLES).any(|j| self.vector(j).z < REGION);
+        if outside { Err(RingFault::new(Status::OpenRing)) } else { Ok(self) }
+    }
+
+    /// Traces again about the axis of the cone that fits best, until the axis stays.
+    fn centred(mut self, mismatch: &Mismatch) -> Result<Self, RingFault> {
+        const PASSES: usize = 20;
         for _ in 0..PASSES {
-            trace(mismatch, &frame, &mut samples)?;
-            let axis = axis_of(|j| frame.point(samples[j], azimuth(j)), &frame.axis);
-            let moved = axis.cross(&frame.axis).norm();
-            if moved < 1e-9_f64.to_radians() {
-                return Self::finish(mismatch, frame, samples, length);
+            let axis = axis_of(|j| self.vector(j), &self.frame.axis);
+            if axis.cross(&self.frame.axis).norm() < 1e-9_f64.to_radians() {
+                return Ok(self);
             }
-            // radii about the old axis are a good guess about the new one
-            frame = Meridians::about(axis);
+            // radii about the old axis, corrected for its shift, are a good guess about the new one
+            let shift = self.frame.axis - axis;
+            self.frame = Meridians::about(axis);
+            for j in 0..SAMPLES {
+                self.samples[j] += self.frame.outward(azimuth(j)).dot(&shift);
+            }
+            self.trace(mismatch)?;
         }
         Err(RingFault::new(Status::NotConverged))
     }
 
-    fn finish(
-        mismatch: &Mismatch,
-        frame: Meridians,
-        samples: [f64; SAMPLES],
-        length: f64,
-    ) -> Result<Self, RingFault> {
-        let point = |j: usize| frame.point(samples[j], azimuth(j));
-        if (0..SAMPLES).any(|j| point(j).z < REGION) {
-            return Err(RingFault::new(Status::OpenRing));
+    /// Polar angles at all azimuths; those there are guesses on entry.
+    fn trace(&mut self, mismatch: &Mismatch) -> Result<(), RingFault> {
+        // how far the last guess was off, to correct the next one
+        let mut correction = 0.0;
+        for j in 0..SAMPLES {
+            let guess = self.samples[j] + correction;
+            match mismatch.meet(&self.frame.meridian(azimuth(j)), 0.0, guess) {
+                Hit::At(psi) => {
+                    correction = psi - self.samples[j];
+                    self.samples[j] = psi;
+                }
+                Hit::Face => return Err(RingFault::new(Status::TotalReflection)),
+                Hit::Lost => return Err(RingFault::new(Status::NotConverged)),
+            }
         }
-        let (least, largest) = extremes(mismatch, &frame, &samples);
-        let inside =
-            |j: usize| mismatch.inside(Direction::new(Lab(point(j)))).map_or(Vector3::z(), |k| k.normalize());
-        let internal_axis = axis_of(inside, &Vector3::z());
-        let partners_leave = (0..SAMPLES).all(|j| mismatch.partner(Direction::new(Lab(point(j)))).is_some());
-        Ok(Self {
-            axis: Direction::new(Lab(frame.axis)),
-            half_angle: cone_angle(point, &frame.axis),
-            least,
-            largest,
-            internal_half_angle: cone_angle(inside, &internal_axis),
-            thickness: thickness(mismatch, &frame, &samples, length),
-            status: if partners_leave { Status::Ok } else { Status::TotalReflection },
-            frame,
-            samples,
-        })
+        Ok(())
     }
 
     /// Direction of the sample at azimuth 360 deg j/72 about the axis, from +x towards +y.
@@ -291,7 +322,7 @@ impl Ring {
         self.frame.point(self.samples[j % SAMPLES], azimuth(j))
     }
 
-    /// The point of the ring at an azimuth about its axis (radians); `mismatch` must be the one it was traced with.
+    /// The point of the curve at an azimuth about its axis (radians); `mismatch` must be the one it was traced with.
     #[must_use]
     pub fn at(&self, mismatch: &Mismatch, phi: f64) -> Option<Direction> {
         self.radius(mismatch, phi).map(|psi| Direction::new(Lab(self.frame.point(psi, phi))))
@@ -299,8 +330,7 @@ impl Ring {
 
     fn radius(&self, mismatch: &Mismatch, phi: f64) -> Option<f64> {
         let nearest = (phi / TAU * SAMPLES as f64).round().rem_euclid(SAMPLES as f64) as usize % SAMPLES;
-        let meridian = Meridian { axis: self.frame.axis, outward: self.frame.outward(phi) };
-        match mismatch.meet(&meridian, 0.0, self.samples[nearest]) {
+        match mismatch.meet(&self.frame.meridian(phi), 0.0, self.samples[nearest]) {
             Hit::At(psi) => Some(psi),
             Hit::Face | Hit::Lost => None,
         }
@@ -313,48 +343,69 @@ impl Ring {
         phi: f64,
     ) -> Option<(Vector3<f64>, Vector3<f64>)> {
         let psi = self.radius(mismatch, phi)?;
-        let d = self.frame.point(psi, phi);
-        let gradient = mismatch.towards(d)?.gradient;
+        self.tangent(mismatch, psi, phi).map(|tangent| (self.frame.point(psi, phi), tangent))
+    }
+
+    /// Point and tangent at a sample.
+    pub(super) fn sample(&self, mismatch: &Mismatch, j: usize) -> Option<(Vector3<f64>, Vector3<f64>)> {
+        self.tangent(mismatch, self.samples[j], azimuth(j)).map(|tangent| (self.vector(j), tangent))
+    }
+
+    fn tangent(&self, mismatch: &Mismatch, psi: f64, phi: f64) -> Option<Vector3<f64>> {
+        let gradient = mismatch.towards(self.frame.point(psi, phi))?.gradient;
         let (sin, cos) = psi.sin_cos();
         let outward = self.frame.outward(phi);
         let along_psi = outward * cos - self.frame.axis * sin;
         let along_phi = self.frame.axis.cross(&outward) * sin;
         // Delta_k stays zero: psi' = -(g.d_phi)/(g.d_psi)
         let psi_slope = -gradient.dot(&along_phi) / gradient.dot(&along_psi);
-        Some((d, along_phi + along_psi * psi_slope))
+        Some(along_phi + along_psi * psi_slope)
+    }
+}
+
+impl Ring {
+    /// Fits the cone and looks at the details.
+    fn fit(curve: Curve, mismatch: &Mismatch, length: f64) -> Result<Self, RingFault> {
+        let curve = curve.centred(mismatch)?.within_region()?;
+        let (least, largest) = extremes(mismatch, &curve);
+        let point = |j: usize| curve.vector(j);
+        let inside = |j: usize| mismatch.inside(curve.direction(j)).map_or(Vector3::z(), |k| k.normalize());
+        let internal_axis = axis_of(inside, &Vector3::z());
+        let partners_leave = (0..SAMPLES).all(|j| mismatch.partner(curve.direction(j)).is_some());
+        Ok(Self {
+            axis: Direction::new(Lab(curve.frame.axis)),
+            half_angle: cone_angle(point, &curve.frame.axis),
+            least,
+            largest,
+            internal_half_angle: cone_angle(inside, &internal_axis),
+            thickness: thickness(mismatch, &curve, length),
+            status: if partners_leave { Status::Ok } else { Status::TotalReflection },
+            curve,
+        })
     }
 
     /// The circle that fits the ring best on a screen across the pump: centre and radius in units of the distance.
     #[must_use]
     pub fn circle(&self) -> (Vector2<f64>, f64) {
         let points: [Vector2<f64>; SAMPLES] = std::array::from_fn(|j| {
-            let d = self.vector(j);
+            let d = self.curve.vector(j);
             Vector2::new(d.x / d.z, d.y / d.z)
         });
         fit_circle(&points)
     }
 }
 
+/// Half angle of the cone that fits the first ring of a process best, radians; `None` where there is no ring.
+#[must_use]
+pub fn half_angle(mismatch: &Mismatch) -> Option<f64> {
+    let seed = seeds(mismatch).ok()?.into_iter().next()?;
+    let curve = Curve::about(mismatch, &seed).ok()?.centred(mismatch).ok()?.within_region().ok()?;
+    Some(cone_angle(|j| curve.vector(j), &curve.frame.axis))
+}
+
 /// Azimuth of sample j, radians.
 pub(super) fn azimuth(j: usize) -> f64 {
     TAU * j as f64 / SAMPLES as f64
-}
-
-/// Radii at all azimuths; `samples` holds guesses on entry.
-fn trace(mismatch: &Mismatch, frame: &Meridians, samples: &mut [f64; SAMPLES]) -> Result<(), RingFault> {
-    let mut before = samples[SAMPLES - 1];
-    let mut earlier = before;
-    for j in 0..SAMPLES {
-        let meridian = Meridian { axis: frame.axis, outward: frame.outward(azimuth(j)) };
-        let guess = if j < 2 { samples[j] } else { 2.0 * before - earlier };
-        match mismatch.meet(&meridian, 0.0, guess) {
-            Hit::At(psi) => samples[j] = psi,
-            Hit::Face => return Err(RingFault::new(Status::TotalReflection)),
-            Hit::Lost => return Err(RingFault::new(Status::NotConverged)),
-        }
-        (earlier, before) = (before, samples[j]);
-    }
-    Ok(())
 }
 
 /// Normal of the plane that fits the points best: smallest eigenvector of their covariance, on the side of `towards`.
@@ -376,7 +427,8 @@ fn cone_angle(point: impl Fn(usize) -> Vector3<f64>, axis: &Vector3<f64>) -> f64
 }
 
 /// Least and largest stationary values of the radius, found where its slope changes sign between samples.
-fn extremes(mismatch: &Mismatch, frame: &Meridians, samples: &[f64; SAMPLES]) -> (f64, f64) {
+fn extremes(mismatch: &Mismatch, curve: &Curve) -> (f64, f64) {
+    let Curve { frame, samples } = curve;
     let slope_at = |psi: f64, phi: f64| {
         let gradient = mismatch.towards(frame.point(psi, phi)).map_or(Vector3::zeros(), |t| t.gradient);
         let (sin, cos) = psi.sin_cos();
@@ -386,22 +438,19 @@ fn extremes(mismatch: &Mismatch, frame: &Meridians, samples: &[f64; SAMPLES]) ->
     let slopes: [f64; SAMPLES] = std::array::from_fn(|j| slope_at(samples[j], azimuth(j)));
     let mut least = samples.iter().copied().fold(f64::INFINITY, f64::min);
     let mut largest = samples.iter().copied().fold(0.0, f64::max);
+    // a ring that is round to rounding error has no extremes worth looking for
+    if largest - least < 1e-13 {
+        return (least, largest);
+    }
     for j in 0..SAMPLES {
         if slopes[j].is_sign_negative() == slopes[(j + 1) % SAMPLES].is_sign_negative() {
             continue;
         }
-        let radius = |phi: f64| {
-            let meridian = Meridian { axis: frame.axis, outward: frame.outward(phi) };
-            match mismatch.meet(&meridian, 0.0, samples[j]) {
-                Hit::At(psi) => Some(psi),
-                Hit::Face | Hit::Lost => None,
-            }
-        };
-        let slope = |phi: f64| radius(phi).map(|psi| slope_at(psi, phi));
+        let slope = |phi: f64| curve.radius(mismatch, phi).map(|psi| slope_at(psi, phi));
         let Some(phi) = super::root::bracketed(slope, azimuth(j), azimuth(j + 1), slopes[j]) else {
             continue;
         };
-        if let Some(psi) = radius(phi) {
+        if let Some(psi) = curve.radius(mismatch, phi) {
             (least, largest) = (least.min(psi), largest.max(psi));
         }
     }
@@ -409,14 +458,15 @@ fn extremes(mismatch: &Mismatch, frame: &Meridians, samples: &[f64; SAMPLES]) ->
 }
 
 /// Mean radial width between Delta_k L/2 = -1.39 and +1.39; `None` where Delta_k stays above the first inside.
-fn thickness(mismatch: &Mismatch, frame: &Meridians, samples: &[f64; SAMPLES], length: f64) -> Option<f64> {
+fn thickness(mismatch: &Mismatch, curve: &Curve, length: f64) -> Option<f64> {
+    let Curve { frame, samples } = curve;
     let half_width = 2.0 * HALF_MAXIMUM / length;
     if mismatch.towards(frame.axis)?.value >= -half_width {
         return None;
     }
     let mut sum = 0.0;
     for (j, psi) in samples.iter().enumerate() {
-        let meridian = Meridian { axis: frame.axis, outward: frame.outward(azimuth(j)) };
+        let meridian = frame.meridian(azimuth(j));
         let edge = |level| match mismatch.meet(&meridian, level, *psi) {
             Hit::At(psi) => Some(psi),
             Hit::Face | Hit::Lost => None,

@@ -67,10 +67,10 @@ fn stretches(f: &mut impl FnMut(f64) -> Option<f64>, scan: Scan) -> Vec<Vec<(f64
             }
             _ => {}
         }
-        if let Some(value) = value {
-            if current.last().is_none_or(|(last, _)| (last - x).abs() > 0.0) {
-                current.push((x, value));
-            }
+        if let Some(value) = value
+            && current.last().is_none_or(|(last, _)| (last - x).abs() > 0.0)
+        {
+            current.push((x, value));
         }
         before = Some((x, value.is_some()));
     }
@@ -83,7 +83,7 @@ fn stretches(f: &mut impl FnMut(f64) -> Option<f64>, scan: Scan) -> Vec<Vec<(f64
 fn border(f: &mut impl FnMut(f64) -> Option<f64>, inside: f64, outside: f64) -> Option<(f64, f64)> {
     let (mut inside, mut outside) = (inside, outside);
     let mut last = None;
-    for _ in 0..60 {
+    for _ in 0..40 {
         let middle = 0.5 * (inside + outside);
         match f(middle).filter(|v| v.is_finite()) {
             Some(value) => {
@@ -129,6 +129,14 @@ fn near_touch(f: &mut impl FnMut(f64) -> Option<f64>, samples: [(f64, f64); 3]) 
     let sign = fb.signum();
     let same = fa.signum() == sign && fc.signum() == sign;
     if !same || fb == 0.0 || fb.abs() > fa.abs() || fb.abs() > fc.abs() {
+        return Vec::new();
+    }
+    // the parabola through the samples tells whether its vertex comes anywhere near zero
+    let (left, right) = (b - a, c - b);
+    let bend = ((fc - fb) / right - (fb - fa) / left) / (left + right);
+    let tilt = (fc - fb) / right - bend * right;
+    let vertex = fb - tilt * tilt / (4.0 * bend);
+    if bend * sign <= 0.0 || vertex * sign > 0.5 * fb.abs() {
         return Vec::new();
     }
     // golden section on sign * f, which is positive at the ends

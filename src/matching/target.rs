@@ -4,7 +4,7 @@ use super::crossing::{Meeting, Traced, meet, reach};
 use super::emission::Emission;
 use super::interaction::Roles;
 use super::mismatch::Mismatch;
-use super::ring::{Ring, rings};
+use super::ring::{Curve, curves, half_angle};
 use crate::frame::Direction;
 
 /// The wanted emission. Angles in radians, outside the crystal.
@@ -36,20 +36,18 @@ impl Target {
 #[derive(Debug, Clone)]
 struct History {
     mismatch: Mismatch,
-    ring: Option<Ring>,
+    curve: Option<Curve>,
 }
 
 impl History {
     fn of(emission: &Emission, roles: Roles) -> Option<Self> {
         let mismatch = emission.mismatch(roles)?;
-        let ring = rings(&mismatch, emission.length)
-            .ok()
-            .and_then(|mut r| (!r.is_empty()).then(|| r.swap_remove(0)));
-        Some(Self { mismatch, ring })
+        let curve = curves(&mismatch).ok().and_then(|all| all.into_iter().next());
+        Some(Self { mismatch, curve })
     }
 
     fn traced(&self) -> Option<Traced<'_>> {
-        Some(Traced { mismatch: &self.mismatch, ring: self.ring.as_ref()? })
+        Some(Traced { mismatch: &self.mismatch, curve: self.curve.as_ref()? })
     }
 }
 
@@ -70,7 +68,7 @@ impl Measure {
     /// Half angle of `roles`, and crossings of its ring with that of the exchanged process.
     #[must_use]
     pub fn of(emission: &Emission, roles: Roles) -> Self {
-        let half_angle = History::of(emission, roles).and_then(|h| h.ring.map(|r| r.half_angle));
+        let half_angle = emission.mismatch(roles).and_then(|m| half_angle(&m));
         let (crossing, separation, touching) = crossings(emission, roles)
             .map_or((None, None, false), |m| (Some(m.polar), m.separation, m.touching));
         Self { half_angle, crossing, separation, touching }
@@ -117,7 +115,7 @@ impl Target {
             }
             // squares, because angles grow as the square root of the distance from where they begin
             Self::HalfAngle(wanted) => {
-                History::of(emission, roles)?.ring.map(|r| r.half_angle.powi(2) - wanted.powi(2))
+                half_angle(&emission.mismatch(roles)?).map(|a| a.powi(2) - wanted.powi(2))
             }
             Self::Crossing(wanted) => crossings(emission, roles).map(|m| m.polar.powi(2) - wanted.powi(2)),
             Self::Separation(wanted) => {
@@ -139,7 +137,7 @@ impl Target {
             }
             Self::HalfAngle(_) => {
                 let history = History::of(emission, roles)?;
-                history.ring?.at(&history.mismatch, std::f64::consts::FRAC_PI_2)
+                history.curve?.at(&history.mismatch, std::f64::consts::FRAC_PI_2)
             }
             Self::Crossing(_) | Self::Separation(_) | Self::Touching => {
                 crossings(emission, roles).map(|m| m.upper)
@@ -151,6 +149,6 @@ impl Target {
 /// Least and largest mismatch of the exchanged process along the ring of `roles`; zeros are tangencies.
 pub(super) fn touching_reach(emission: &Emission, roles: Roles) -> Option<[f64; 2]> {
     let (one, two) = (History::of(emission, roles)?, History::of(emission, roles.exchanged())?);
-    two.ring.as_ref()?;
+    two.curve.as_ref()?;
     reach(one.traced()?, &two.mismatch)
 }

@@ -149,7 +149,8 @@ pub fn tune(
     Ok(turns.collect())
 }
 
-/// The setting of `actuator` nearest the present one at which the rings of `roles` and of the exchanged process touch.
+/// The setting of `actuator` nearest the present one at which the rings of `roles` and of the exchanged process touch:
+/// steps outwards on both sides until the least or largest reach of one ring into the other changes sign.
 #[must_use]
 pub fn nearest_touch(
     crystal: &Crystal,
@@ -159,7 +160,33 @@ pub fn nearest_touch(
     actuator: Actuator,
 ) -> Option<f64> {
     let bench = Bench { crystal, photons, fixed_signal: None, triplet, actuator };
-    bench.settings(Target::Touching, roles).first().copied()
+    let reach = |x: f64| bench.at(x).and_then(|(_, _, emission)| touching_reach(&emission, roles));
+    let now = bench.now();
+    let here = reach(now);
+    let mut before = [here, here];
+    let mut at = [now, now];
+    while (at[0] - now).abs() < TURN_RANGE {
+        let mut found: Option<f64> = None;
+        for (side, step) in [TURN_STEP, -TURN_STEP].into_iter().enumerate() {
+            let (from, to) = (at[side], at[side] + step);
+            let there = reach(to);
+            for which in 0..2 {
+                let Some((a, b)) = before[side].zip(there).map(|(a, b)| (a[which], b[which])) else {
+                    continue;
+                };
+                if a.is_sign_negative() != b.is_sign_negative() {
+                    let touch = super::root::bracketed(|x| reach(x).map(|r| r[which]), from, to, a);
+                    let nearer = |x: &f64| found.is_none_or(|best| (x - now).abs() < (best - now).abs());
+                    found = touch.filter(nearer).or(found);
+                }
+            }
+            (at[side], before[side]) = (to, there);
+        }
+        if found.is_some() {
+            return found;
+        }
+    }
+    None
 }
 
 /// The smallest change of the tuning turn at which a ring that is missing begins as a point: turn and change in radians.
@@ -193,4 +220,25 @@ pub fn tuning_turn(crystal: &Crystal, photons: Photons, triplet: &Triplet, roles
         value(now + STEP).zip(value(now - STEP)).map_or(0.0, |(up, down)| (up - down).abs())
     };
     if effect(Actuator::CrossTilt) > effect(Actuator::Tilt) { Actuator::CrossTilt } else { Actuator::Tilt }
+}
+
+/// Why no setting meets the target, in a sentence.
+#[must_use]
+pub fn shortage(target: Target, actuator: Actuator, now: &Measure) -> String {
+    let range = match actuator {
+        Actuator::Tilt | Actuator::CrossTilt => "no turn within 30 deg",
+        Actuator::Temperature => "no temperature from -50 degC to 300 degC",
+        Actuator::Pump => "no pump within 0.8 to 1.25 times the present one",
+    };
+    let value =
+        |angle: Option<f64>| angle.map_or("not there".into(), |a| format!("{:.3} deg", a.to_degrees()));
+    let now = match target {
+        Target::HalfAngle(_) => format!("the half angle is {} now", value(now.half_angle)),
+        Target::Crossing(_) => format!("the crossing is {} now", value(now.crossing)),
+        Target::Separation(_) => format!("the separation is {} now", value(now.separation)),
+        Target::Collinear | Target::Beamlike | Target::Touching => {
+            format!("half angle and crossing are {} and {} now", value(now.half_angle), value(now.crossing))
+        }
+    };
+    format!("{range} meets the target; {now}; try --by with another handle, or another cut (`twincone cut`)")
 }

@@ -44,8 +44,12 @@ pub enum MaterialError {
         available: String,
     },
     /// A wavelength that the data set does not cover.
-    #[error("{wavelength} is outside {from} to {to}, where {material}:{dataset} is valid; {remedy}")]
+    #[error(
+        "{whose}{wavelength:.3} is outside {from} to {to}, where {material}:{dataset} is valid; {remedy}"
+    )]
     OutOfRange {
+        /// "the idler, ", or nothing.
+        whose: &'static str,
         /// The wavelength asked for.
         wavelength: Wavelength,
         /// Shortest wavelength of the set.
@@ -93,7 +97,7 @@ pub enum MaterialError {
     },
     /// The formula gives no index there (a pole nearby).
     #[error(
-        "{material}:{dataset} gives no index at {wavelength} and {temperature}: too far outside its range"
+        "{material}:{dataset} gives no index at {wavelength:.3} and {temperature}: too far outside its range"
     )]
     NoIndex {
         /// The wavelength asked for.
@@ -357,24 +361,28 @@ impl Material {
     }
 
     fn out_of_range(&self, set: &DataSet, wavelength: Wavelength) -> MaterialError {
-        let covering: Vec<_> =
-            self.sets.iter().filter(|s| s.covers(wavelength)).map(|s| s.id.as_str()).collect();
         MaterialError::OutOfRange {
+            whose: "",
             wavelength,
             from: set.from,
             to: set.to,
             material: self.id.clone(),
             dataset: set.id.clone(),
-            remedy: match covering.as_slice() {
-                [] => {
-                    "no set of this crystal covers it; pass --extrapolate to go on, and the result is marked"
-                        .into()
-                }
-                some => format!(
-                    "use {}, or pass --extrapolate to go on, and the result is marked",
-                    some.join(" or ")
-                ),
-            },
+            remedy: self.sets_that_cover(&[wavelength]),
+        }
+    }
+
+    /// Which sets cover all these wavelengths, as advice.
+    #[must_use]
+    pub fn sets_that_cover(&self, wavelengths: &[Wavelength]) -> String {
+        let covers_all = |set: &&DataSet| wavelengths.iter().all(|w| set.covers(*w));
+        let covering: Vec<_> = self.sets.iter().filter(covers_all).map(|s| s.id.as_str()).collect();
+        match covering.as_slice() {
+            [] => "no set of this crystal covers it; pass --extrapolate to go on, and the result is marked"
+                .into(),
+            some => {
+                format!("use {}, or pass --extrapolate to go on, and the result is marked", some.join(" or "))
+            }
         }
     }
 
@@ -389,6 +397,51 @@ impl Material {
         // strain tensor is diagonal in the dielectric frame: dl/l = sum_i s_i a_i^2
         let along_at = |at: Temperature| (0..3).map(|i| strain(&axes[i], at) * along[i].powi(2)).sum::<f64>();
         (1.0 + along_at(temperature)) / (1.0 + along_at(reference))
+    }
+
+    /// Looks at every data set over its whole range: indices that exist and are physical, axes in order, check values met.
+    ///
+    /// # Errors
+    /// The first thing that is not right, in a sentence.
+    pub fn examine(&self) -> Result<(), String> {
+        self.sets.iter().try_for_each(|set| self.examine_set(set))
+    }
+
+    fn examine_set(&self, set: &DataSet) -> Result<(), String> {
+        const POINTS: usize = 200;
+        for n in 0..=POINTS {
+            let share = n as f64 / POINTS as f64;
+            let wavelength = Wavelength::metres(set.from.si() * (set.to.si() / set.from.si()).powf(share));
+            let p =
+                self.principal(set, wavelength, set.temperature, Reach::Within).map_err(|e| e.to_string())?;
+            let [x, y, z] = p.axes.map(|i| i.n);
+            if [x, y, z].iter().any(|n| *n > 6.0) {
+                return Err(format!(
+                    "{}: an index above 6 at {wavelength}; look at the signs of the coefficients",
+                    set.id
+                ));
+            }
+            if p.optic == Optic::Biaxial && !(x <= y && y <= z) {
+                return Err(format!(
+                    "{}: n_x <= n_y <= n_z does not hold at {wavelength} ({x:.4}, {y:.4}, {z:.4}); rename the axes",
+                    set.id
+                ));
+            }
+        }
+        for check in &set.file.check {
+            let axis = axis_number(&check.axis, self.file.optic)
+                .ok_or_else(|| format!("{}: `{}` is no axis of this crystal", set.id, check.axis))?;
+            let wavelength = Wavelength::metres(check.wavelength_um * 1e-6);
+            let found = set.index(axis, wavelength, set.temperature).map_or(f64::NAN, |i| i.n);
+            let off = (found - check.n).abs();
+            if off.is_nan() || off > 1e-6 {
+                return Err(format!(
+                    "{}: n_{} at {} um comes out as {found:.7}, not {:.7}; look at the coefficients",
+                    set.id, check.axis, check.wavelength_um, check.n
+                ));
+            }
+        }
+        Ok(())
     }
 
     /// Validates a material file's content.
@@ -434,6 +487,16 @@ fn parse<T: std::str::FromStr<Err = crate::quantity::QuantityError>>(
     text: &Spanned<String>,
 ) -> Result<T, Fault> {
     text.get_ref().parse().map_err(|e: crate::quantity::QuantityError| Fault::at(text, e.to_string()))
+}
+
+/// 0, 1, 2 for the name of an axis.
+fn axis_number(name: &str, optic: Optic) -> Option<usize> {
+    match (optic, name) {
+        (Optic::Uniaxial, "o") | (Optic::Biaxial, "x") => Some(0),
+        (Optic::Biaxial, "y") => Some(1),
+        (Optic::Uniaxial, "e") | (Optic::Biaxial, "z") => Some(2),
+        _ => None,
+    }
 }
 
 /// Picks o, o, e or x, y, z from the five optional axes o, e, x, y, z.

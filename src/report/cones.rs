@@ -82,15 +82,15 @@ pub fn rings_table(setup: &Setup, cones: &Cones) -> Table {
                 let (centre, radius) = ring.circle();
                 let mm = setup.screen.mm();
                 cells.extend([
-                    ring.axis.h_deg().into(),
-                    ring.axis.v_deg().into(),
+                    Cell::degrees(ring.axis.h_deg()),
+                    Cell::degrees(ring.axis.v_deg()),
                     ring.half_angle.to_degrees().into(),
                     ring.least.to_degrees().into(),
                     ring.largest.to_degrees().into(),
                     ring.thickness.map(f64::to_degrees).into(),
                     ring.internal_half_angle.to_degrees().into(),
-                    (centre.x * mm).into(),
-                    (centre.y * mm).into(),
+                    Cell::degrees(centre.x * mm),
+                    Cell::degrees(centre.y * mm),
                     (radius * mm).into(),
                 ]);
             }
@@ -139,7 +139,7 @@ pub fn crossings_table(setup: &Setup, cones: &Cones) -> Table {
 fn place(setup: &Setup, direction: Option<Direction>) -> [Cell; 6] {
     let Some(d) = direction else { return std::array::from_fn(|_| Cell::Empty) };
     let (x, y) = d.on_screen_mm(setup.screen);
-    [d.h_deg(), d.v_deg(), d.polar_deg(), d.azimuth_deg(), x, y].map(Cell::from)
+    [d.h_deg(), d.v_deg(), d.polar_deg(), d.azimuth_deg(), x, y].map(Cell::degrees)
 }
 
 /// A turn that begins to give light, for each ring that has none.

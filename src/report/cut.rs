@@ -61,7 +61,7 @@ pub fn table(setup: &Setup, attempts: &[Attempt]) -> Table {
 
 fn row(s: &CutSolution) -> Vec<Cell> {
     let walkoff = |pick: fn(&crate::matching::Pairing) -> f64| {
-        Cell::from(s.pairing.as_ref().map(pick).map(f64::to_degrees))
+        s.pairing.as_ref().map(pick).map_or(Cell::Empty, |a| Cell::degrees(a.to_degrees()))
     };
     let per_mm = s.pairing.as_ref().map(|p| p.delay() * 1e12);
     vec![

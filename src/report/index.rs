@@ -109,7 +109,7 @@ pub fn table(rows: &[IndexRow]) -> Table {
             along.map(|a| a.n).into(),
             along.map(|a| a.group_index).into(),
             along.map(|a| a.dispersion * 1e27).into(),
-            along.map(|a| a.walkoff.to_degrees()).into(),
+            along.map_or(Cell::Empty, |a| Cell::degrees(a.walkoff.to_degrees())),
             Cell::from(row.dn_dt),
         ];
         table.push(cells, row.extrapolated, row.status);

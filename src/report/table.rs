@@ -47,6 +47,14 @@ impl From<f64> for Cell {
     }
 }
 
+impl Cell {
+    /// An angle in degrees, without the rounding noise of one that is zero by symmetry.
+    #[must_use]
+    pub fn degrees(value: f64) -> Self {
+        Self::from(if value.abs() < 1e-12 { 0.0 } else { value })
+    }
+}
+
 impl From<Option<f64>> for Cell {
     fn from(value: Option<f64>) -> Self {
         value.map_or(Self::Empty, Self::from)

@@ -1,0 +1,290 @@
+//! `cut`: which cut do I order?
+
+use clap::{Args as ClapArgs, ValueEnum};
+use twincone::job::setup::{GivenCut, Needs, Setup, resolve};
+use twincone::matching::{
+    ConesError, CutSolution, Design, Find, Interaction, Status, Target, alternatives, design, opinions,
+    shortfall,
+};
+use twincone::material::{MaterialError, tensor::is_centrosymmetric};
+use twincone::optics::Crystal;
+use twincone::quantity::Angle;
+use twincone::report::cut::{Attempt, no_solution, ranking, spread_line, table, text};
+use twincone::report::{Answer, Conventions, resolved_job};
+
+use super::failure::Failure;
+use super::options::{ExperimentArgs, add_file, catalogue};
+use super::output::{Outcome, OutputArgs};
+
+/// Options of `cut`.
+#[derive(Debug, ClapArgs)]
+pub struct Args {
+    #[command(flatten)]
+    target: TargetArgs,
+    /// What to solve for, at otherwise given cut
+    #[arg(long, value_enum, default_value = "theta")]
+    find: Sought,
+    /// Try every crystal and rank those that can do it
+    #[arg(long)]
+    all_materials: bool,
+    /// One row per data set, with the spread
+    #[arg(long)]
+    all_datasets: bool,
+    #[command(flatten)]
+    experiment: ExperimentArgs,
+}
+
+/// The wanted emission; angles outside the crystal.
+#[derive(Debug, ClapArgs)]
+#[group(multiple = false)]
+pub struct TargetArgs {
+    /// Pairs along the pump (default)
+    #[arg(long)]
+    pub collinear: bool,
+    /// Half angle of the signal's cone
+    #[arg(long, value_name = "ANGLE", allow_hyphen_values = true)]
+    pub half_angle: Option<String>,
+    /// Angle of the crossings from the pump
+    #[arg(long, value_name = "ANGLE", allow_hyphen_values = true)]
+    pub crossing: Option<String>,
+    /// Full angle between the two photons at the crossings
+    #[arg(long, value_name = "ANGLE", allow_hyphen_values = true)]
+    pub separation: Option<String>,
+    /// The signal's cone shrinks to a beam
+    #[arg(long)]
+    pub beamlike: bool,
+}
+
+#[derive(Debug, Clone, Copy, ValueEnum)]
+enum Sought {
+    /// Angle between face normal and Z; in biaxial crystals in all principal planes
+    Theta,
+    /// Azimuth of the face normal
+    Phi,
+    /// Poling period
+    Poling,
+    /// Temperature
+    Temperature,
+    /// Pump wavelength
+    Pump,
+}
+
+impl TargetArgs {
+    /// The target, if one was named.
+    ///
+    /// # Errors
+    /// An angle without a unit or out of bounds.
+    pub fn target(&self) -> Result<Option<Target>, Failure> {
+        let angle = |option: &str, text: &str, most: f64| -> Result<f64, Failure> {
+            let angle: Angle = text.parse().map_err(|e| Failure::usage(format!("{option}: {e}")))?;
+            if angle.degrees() > 0.0 && angle.degrees() < most {
+                Ok(angle.si())
+            } else {
+                Err(Failure::usage(format!(
+                    "{option}: the angle must lie between 0 deg and {most} deg, not {angle}"
+                )))
+            }
+        };
+        Ok(match (&self.half_angle, &self.crossing, &self.separation) {
+            (Some(text), ..) => Some(Target::HalfAngle(angle("--half-angle", text, 60.0)?)),
+            (_, Some(text), _) => Some(Target::Crossing(angle("--crossing", text, 60.0)?)),
+            (.., Some(text)) => Some(Target::Separation(angle("--separation", text, 120.0)?)),
+            _ if self.beamlike => Some(Target::Beamlike),
+            _ if self.collinear => Some(Target::Collinear),
+            _ => None,
+        })
+    }
+}
+
+impl Sought {
+    fn find(self) -> Find {
+        match self {
+            Self::Theta => Find::Theta,
+            Self::Phi => Find::Phi,
+            Self::Poling => Find::Poling,
+            Self::Temperature => Find::Temperature,
+            Self::Pump => Find::Pump,
+        }
+    }
+}
+
+/// Solves for one material, several, or all.
+///
+/// # Errors
+/// What is missing, wrong or outside a data set's range.
+pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
+    let setups = setups(args, output)?;
+    let several = args.all_materials || setups.len() > 1;
+    let mut attempts = Vec::new();
+    let mut spreads = Vec::new();
+    let mut conventions = Conventions::default();
+    let find = args.find.find();
+    let mut asked = Target::Collinear;
+    for setup in &setups {
+        let question = question(args, setup)?;
+        asked = question.target;
+        let own = attempt(setup, &question, several)?;
+        let others = opinions(&question.crystal, &setup.photons(), |other| {
+            let crystal = other.clone();
+            let found = design(&Design { crystal, ..question.clone() }).unwrap_or_default();
+            (other.clone(), found)
+        });
+        if let Ok(found) = &own.outcome {
+            let answers = others.iter().map(|o| twincone::matching::Opinion {
+                dataset: o.dataset.clone(),
+                answer: o.answer.as_ref().map(|(_, found)| found.clone()).map_err(Clone::clone),
+            });
+            let line = spread_line(find, found, &answers.collect::<Vec<_>>());
+            spreads.push(if several { format!("{}: {line}", setup.crystals[0].material.id) } else { line });
+        }
+        attempts.push(own);
+        if args.all_datasets {
+            attempts.extend(others.into_iter().map(|o| other_attempt(&question.crystal, o)));
+        }
+    }
+    describe(&setups, &attempts, several, &mut conventions);
+    conventions.lines.splice(0..0, spreads);
+    let solved = attempts.iter().any(|a| a.outcome.is_ok());
+    let mut first = setups[0].clone();
+    first.interaction = question(args, &first)?.interaction;
+    let answer = Answer {
+        command: "cut",
+        tables: vec![table(&first, &attempts)],
+        text: if several { ranking(&first, asked, &attempts) } else { text(&first, asked, find, &attempts) },
+        conventions,
+        job: resolved_job(&first),
+        solved,
+    };
+    output.outcome(&answer, None)
+}
+
+/// Conventions of the first setup, and a line for each data set that answered.
+fn describe(setups: &[Setup], attempts: &[Attempt], several: bool, conventions: &mut Conventions) {
+    *conventions = Conventions::of(&setups[0]);
+    if several {
+        let solved = attempts.iter().filter(|a| a.outcome.is_ok());
+        conventions.warnings.clear();
+        let lines = std::mem::take(&mut conventions.lines);
+        let rest = lines.into_iter().skip(conventions.datasets.len()).collect();
+        *conventions = Conventions { lines: rest, ..Conventions::default() };
+        for attempt in solved {
+            conventions.add_dataset(&attempt.crystal);
+        }
+    }
+}
+
+/// One setup per material.
+fn setups(args: &Args, output: &OutputArgs) -> Result<Vec<Setup>, Failure> {
+    let experiment = &args.experiment;
+    let needs = Needs { cut: false, pump: true };
+    let document = experiment.document()?;
+    let mut catalogue = catalogue(output, &document)?;
+    let listed: Vec<String> = if args.all_materials {
+        if !experiment.materials().is_empty() {
+            return Err(Failure::usage("--material and --all-materials exclude each other; leave one out"));
+        }
+        catalogue.ids().map(String::from).collect()
+    } else {
+        experiment.materials().to_vec()
+    };
+    if listed.len() < 2 && !args.all_materials {
+        let setup = resolve(&document, &catalogue, needs)?;
+        if setup.crystals.len() > 1 {
+            return Err(Failure::usage(
+                "the job has several crystals; `cut` looks at one: name it with --material",
+            ));
+        }
+        experiment.write_job(&setup)?;
+        return Ok(vec![setup]);
+    }
+    let mut all = Vec::new();
+    for material in listed {
+        add_file(&mut catalogue, &material)?;
+        let mut document = document.clone();
+        document.set("--material", "crystal.material", &material);
+        all.push(resolve(&document, &catalogue, needs)?);
+    }
+    Ok(all)
+}
+
+fn question(args: &Args, setup: &Setup) -> Result<Design, Failure> {
+    let given: GivenCut = setup.cut[0];
+    let find = args.find.find();
+    let target = args.target.target()?.or(given.target).unwrap_or(Target::Collinear);
+    let mut crystal = setup.crystals[0].clone();
+    if find == Find::Phi && !given.theta {
+        crystal.cut.theta = Angle::from_degrees(90.0);
+    } else if find != Find::Theta && !given.theta {
+        return Err(Failure::usage(
+            "this searches at a given cut: pass --theta (and --phi), for example --theta 90deg --phi 0deg",
+        ));
+    }
+    if find == Find::Theta && given.theta && args.experiment.names_theta() {
+        return Err(Failure::usage(
+            "--theta is what is sought; leave it out, or ask for --find poling, temperature or pump",
+        ));
+    }
+    let interaction = match (setup.interaction_given, target, find) {
+        (true, ..) => setup.interaction,
+        (false, Target::HalfAngle(_), _) => Interaction::One,
+        (false, Target::Collinear, Find::Poling) => Interaction::Any,
+        _ => setup.interaction,
+    };
+    Ok(Design {
+        crystal,
+        photons: setup.photons(),
+        fixed_signal: setup.signals.fixed(),
+        interaction,
+        target,
+        find,
+        phi_given: given.phi,
+    })
+}
+
+/// Solves; a failure is an answer where several materials compete, else an error.
+fn attempt(setup: &Setup, question: &Design, several: bool) -> Result<Attempt, Failure> {
+    let crystal = question.crystal.clone();
+    if several && is_centrosymmetric(crystal.material.file.point_group.get_ref()) {
+        let why = "the crystal has a centre of symmetry and gives no pairs".into();
+        return Ok(Attempt { crystal, outcome: Err((Status::NoNonlinearity, why)) });
+    }
+    let outcome = match design(question) {
+        Ok(found) if !found.is_empty() => Ok(found),
+        Ok(_) => {
+            let why = if several { String::new() } else { why_none(setup, question)? };
+            Err((Status::NoPhaseMatching, why))
+        }
+        Err(ConesError::Material(error)) if several => Err((status_of(&error), error.to_string())),
+        Err(ConesError::Description(text)) if several => Err((Status::Invalid, text)),
+        Err(error) => return Err(error.into()),
+    };
+    Ok(Attempt { crystal, outcome })
+}
+
+fn status_of(error: &MaterialError) -> Status {
+    match error {
+        MaterialError::NoIndex { .. } => Status::Opaque,
+        _ => Status::OutOfRange,
+    }
+}
+
+fn why_none(setup: &Setup, question: &Design) -> Result<String, Failure> {
+    let nearest = shortfall(question)?;
+    let asked = Setup { interaction: question.interaction, ..setup.clone() };
+    Ok(no_solution(&asked, question.target, nearest, &alternatives(question, nearest)))
+}
+
+type Told = twincone::matching::Opinion<(Crystal, Vec<CutSolution>)>;
+
+fn other_attempt(own: &Crystal, told: Told) -> Attempt {
+    match told.answer {
+        Ok((crystal, found)) if !found.is_empty() => Attempt { crystal, outcome: Ok(found) },
+        Ok((crystal, _)) => {
+            Attempt { crystal, outcome: Err((Status::NoPhaseMatching, "no phase matching".into())) }
+        }
+        Err(error) => {
+            let index = own.material.sets().iter().position(|s| s.id == told.dataset).unwrap_or(own.dataset);
+            Attempt { crystal: own.with_dataset(index), outcome: Err((status_of(&error), error.to_string())) }
+        }
+    }
+}

@@ -1,0 +1,123 @@
+//! `index`: what does each wave see?
+
+use clap::Args as ClapArgs;
+use twincone::job::setup::{Needs, Setup, resolve};
+use twincone::optics::Crystal;
+use twincone::quantity::Wavelength;
+use twincone::report::index::{IndexRow, out_of_range, rows, table, text};
+use twincone::report::{Answer, Conventions, resolved_job};
+
+use super::failure::Failure;
+use super::options::{ExperimentArgs, add_file, catalogue};
+use super::output::{Outcome, OutputArgs};
+
+/// Options of `index`; with `--theta` the waves along the face normal, else along the principal axes.
+#[derive(Debug, ClapArgs)]
+pub struct Args {
+    /// Wavelength, repeatable [default: pump, signal, idler]
+    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
+    wavelength: Vec<String>,
+    /// A curve from this wavelength
+    #[arg(long, value_name = "LENGTH", requires = "to", conflicts_with = "wavelength")]
+    from: Option<String>,
+    /// A curve to this wavelength
+    #[arg(long, value_name = "LENGTH", requires = "from")]
+    to: Option<String>,
+    /// Points of the curve
+    #[arg(long, value_name = "N", default_value = "101", value_parser = clap::value_parser!(u32).range(2..=1_000_000))]
+    points: u32,
+    /// One set of rows per data set
+    #[arg(long)]
+    all_datasets: bool,
+    #[command(flatten)]
+    experiment: ExperimentArgs,
+}
+
+/// Rows for each crystal, data set and wavelength.
+///
+/// # Errors
+/// What is missing, wrong or outside a data set's range.
+pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
+    let setups = setups(args, output)?;
+    let mut all: Vec<IndexRow> = Vec::new();
+    let mut conventions = Conventions::of(&setups[0]);
+    for setup in &setups {
+        let crystal = &setup.crystals[0];
+        let wavelengths = wavelengths(args, setup)?;
+        let directed = setup.cut[0].theta;
+        for wavelength in &wavelengths {
+            all.extend(rows(crystal, *wavelength, directed)?);
+        }
+        conventions.add_dataset(crystal);
+        if args.all_datasets {
+            for other in others(crystal) {
+                for wavelength in &wavelengths {
+                    all.extend(
+                        rows(&other, *wavelength, directed)
+                            .unwrap_or_else(|_| vec![out_of_range(&other, *wavelength)]),
+                    );
+                }
+                conventions.add_dataset(&other);
+            }
+        }
+    }
+    let answer = Answer {
+        command: "index",
+        tables: vec![table(&all)],
+        text: text(&all),
+        conventions,
+        job: resolved_job(&setups[0]),
+        solved: true,
+    };
+    output.outcome(&answer, None)
+}
+
+fn others(crystal: &Crystal) -> impl Iterator<Item = Crystal> {
+    let count = crystal.material.sets().len();
+    (0..count).filter(|index| *index != crystal.dataset).map(|index| crystal.with_dataset(index))
+}
+
+fn setups(args: &Args, output: &OutputArgs) -> Result<Vec<Setup>, Failure> {
+    let needs = Needs { cut: false, pump: args.wavelength.is_empty() && args.from.is_none() };
+    let document = args.experiment.document()?;
+    let mut catalogue = catalogue(output, &document)?;
+    let listed = args.experiment.materials();
+    if listed.len() < 2 {
+        let setup = resolve(&document, &catalogue, needs)?;
+        args.experiment.write_job(&setup)?;
+        return Ok(vec![setup]);
+    }
+    let mut all = Vec::new();
+    for material in listed {
+        add_file(&mut catalogue, material)?;
+        let mut document = document.clone();
+        document.set("--material", "crystal.material", material);
+        all.push(resolve(&document, &catalogue, needs)?);
+    }
+    Ok(all)
+}
+
+fn wavelengths(args: &Args, setup: &Setup) -> Result<Vec<Wavelength>, Failure> {
+    let read = |option: &str, text: &str| -> Result<Wavelength, Failure> {
+        let wavelength: Wavelength = text.parse().map_err(|e| Failure::usage(format!("{option}: {e}")))?;
+        if wavelength.si() > 0.0 {
+            Ok(wavelength)
+        } else {
+            Err(Failure::usage(format!("{option}: a wavelength must be positive, not {wavelength}")))
+        }
+    };
+    if let (Some(from), Some(to)) = (&args.from, &args.to) {
+        let (from, to) = (read("--from", from)?.si(), read("--to", to)?.si());
+        let step = (to - from) / f64::from(args.points - 1);
+        return Ok((0..args.points).map(|n| Wavelength::metres(from + step * f64::from(n))).collect());
+    }
+    if !args.wavelength.is_empty() {
+        return args.wavelength.iter().map(|w| read("--wavelength", w)).collect();
+    }
+    let photons = setup.photons();
+    let mut all = vec![photons.pump, photons.signal];
+    if !photons.degenerate() {
+        all.push(photons.idler);
+    }
+    Ok(all)
+}

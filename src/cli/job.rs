@@ -1,0 +1,87 @@
+//! `job`: the complete commented job for the options given, or a check of one.
+
+use std::path::PathBuf;
+
+use clap::{Args as ClapArgs, Subcommand};
+use twincone::job::setup::{Needs, resolve};
+use twincone::job::{Document, template};
+
+use super::failure::Failure;
+use super::options::{ExperimentArgs, catalogue, read_text};
+use super::output::{Outcome, OutputArgs};
+
+/// Options of `job`.
+#[derive(Debug, ClapArgs)]
+#[command(args_conflicts_with_subcommands = true)]
+pub struct Args {
+    #[command(subcommand)]
+    check: Option<Action>,
+    #[command(flatten)]
+    experiment: ExperimentArgs,
+}
+
+#[derive(Debug, Subcommand)]
+enum Action {
+    /// Read a job file and say what it describes, or what is wrong with it
+    Check {
+        /// The job file, or - for standard input
+        file: PathBuf,
+    },
+}
+
+/// What stands where nothing was said: a violet pump and a crossed-cone crystal.
+const DEFAULTS: [(&str, &str); 3] =
+    [("crystal.material", "bbo"), ("pump.wavelength", "405 nm"), ("crystal.cut.crossing", "3 deg")];
+
+/// Prints a job, or checks one.
+///
+/// # Errors
+/// What is missing or wrong.
+pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
+    if let Some(Action::Check { file }) = &args.check {
+        return check(file, output);
+    }
+    let mut document = Document::default();
+    let typed = args.experiment.document()?;
+    let said = typed.describe()?;
+    if args.experiment.has_job() {
+        document = typed;
+    } else {
+        for (key, value) in DEFAULTS {
+            let missing = match key {
+                "crystal.material" => said.crystal.is_empty() || said.crystal[0].get_ref().material.is_none(),
+                "pump.wavelength" => said.pump.as_ref().is_none_or(|p| p.get_ref().wavelength.is_none()),
+                _ => said.crystal.is_empty() || said.crystal[0].get_ref().cut.is_none(),
+            };
+            if missing {
+                document.set("the default", key, value);
+            }
+        }
+        document.append(&typed);
+    }
+    let setup = resolve(&document, &catalogue(output, &document)?, Needs::ALL)?;
+    args.experiment.write_job(&setup)?;
+    Ok(Outcome::plain(template(&setup)))
+}
+
+fn check(file: &PathBuf, output: &OutputArgs) -> Result<Outcome, Failure> {
+    let name = file.display().to_string();
+    let document = Document::from_file(&name, &read_text(file)?);
+    let setup = resolve(&document, &catalogue(output, &document)?, Needs::ALL)?;
+    let mut text = format!("{name}: a valid job, 1 point\n  pump {}, {}\n", setup.pump(), setup.interaction);
+    for crystal in &setup.crystals {
+        text.push_str(&format!(
+            "  crystal {}: {}:{}, theta {:.3} deg, phi {} deg, {}, tilt {}\n",
+            crystal.name,
+            crystal.material.id,
+            crystal.set().id,
+            crystal.cut.theta.degrees(),
+            crystal.cut.phi.degrees(),
+            crystal.length,
+            crystal.orientation.tilt
+        ));
+    }
+    let signals: Vec<String> = setup.signals().iter().map(ToString::to_string).collect();
+    text.push_str(&format!("  signal {}\n", signals.join(", ")));
+    Ok(Outcome::plain(text))
+}

@@ -1,0 +1,108 @@
+//! The command line: one file per command. Commands read options, call the library and hand its answer on.
+
+mod completions;
+mod cones;
+mod cut;
+mod failure;
+mod index;
+mod job;
+mod man;
+mod materials;
+mod options;
+mod output;
+mod tilt;
+mod twin;
+
+use std::process::ExitCode;
+
+use clap::error::{ContextKind, ErrorKind};
+use clap::{CommandFactory, Parser, Subcommand};
+
+pub use failure::Failure;
+pub use output::{OutputArgs, finish};
+
+/// Which crystal to order, how to tilt it and where the photon pairs go.
+#[derive(Debug, Parser)]
+#[command(name = "twincone", version, about, long_about = LONG, after_help = AFTER, disable_help_subcommand = true)]
+pub struct Typed {
+    #[command(subcommand)]
+    command: Command,
+    /// Where the answer goes.
+    #[command(flatten)]
+    pub output: OutputArgs,
+}
+
+const LONG: &str = "Which crystal to order, how to tilt it and where the photon pairs go: spontaneous parametric \
+down-conversion in birefringent crystals, from wave optics, with refraction at tilted faces treated exactly.";
+
+const AFTER: &str = "Quantities carry a unit: 405nm, 0.5deg, \"2 mm\", 22degC. Angles are outside the crystal unless called inside.
+Exit status: 0 an answer; 1 no solution; 2 bad usage or job file; 3 outside a data set's validity; 4 file trouble.
+Violet and ultraviolet lasers harm eyes and skin: local rules and the laser safety officer decide how they are used.";
+
+#[derive(Debug, Subcommand)]
+enum Command {
+    /// What is known about which crystal, from which paper, in which range
+    Materials(materials::Args),
+    /// Indices, dispersion and walk-off of each wave
+    Index(Box<index::Args>),
+    /// Which cut do I order?
+    Cut(Box<cut::Args>),
+    /// Where does the light go? Rings and their crossings
+    Cones(Box<cones::Args>),
+    /// How far do I turn?
+    Tilt(Box<tilt::Args>),
+    /// A photon goes this way: where is its partner?
+    Twin(Box<twin::Args>),
+    /// The complete commented job file for the options given, or a check of one
+    Job(Box<job::Args>),
+    /// Shell completions
+    Completions(completions::Args),
+    /// The man page
+    Man,
+}
+
+/// Reads the command line.
+///
+/// # Errors
+/// The exit status, after help, version or a message was shown.
+pub fn parse() -> Result<Typed, ExitCode> {
+    Typed::try_parse().map_err(|error| {
+        let status = if error.use_stderr() { 2 } else { 0 };
+        // a closed pipe is no reason to complain
+        let _ = error.print();
+        if let Some(hint) = hint(&error) {
+            output::to_stderr(&hint);
+        }
+        ExitCode::from(status)
+    })
+}
+
+/// What a person probably meant, where clap cannot know.
+fn hint(error: &clap::Error) -> Option<String> {
+    let stray = matches!(error.kind(), ErrorKind::UnknownArgument | ErrorKind::InvalidSubcommand);
+    let asked_for_process = std::env::args().any(|a| a == "--process");
+    let invalid = error.get(ContextKind::InvalidArg).map(ToString::to_string);
+    let arrow = invalid.is_some_and(|a| matches!(a.trim_matches('\''), "-" | "+" | "->" | "e" | "o"));
+    (stray && asked_for_process && arrow).then(|| {
+        "tip: the shell took the `>` of the process; quote it, --process \"e -> o + e\", or write --process e:o+e\n".into()
+    })
+}
+
+/// Runs a command.
+///
+/// # Errors
+/// What went wrong, with the exit status it calls for.
+pub fn run(typed: &Typed) -> Result<output::Outcome, Failure> {
+    let out = &typed.output;
+    match &typed.command {
+        Command::Materials(args) => materials::run(args, out),
+        Command::Index(args) => index::run(args, out),
+        Command::Cut(args) => cut::run(args, out),
+        Command::Cones(args) => cones::run(args, out),
+        Command::Tilt(args) => tilt::run(args, out),
+        Command::Twin(args) => twin::run(args, out),
+        Command::Job(args) => job::run(args, out),
+        Command::Completions(args) => completions::run(args, Typed::command()),
+        Command::Man => man::run(Typed::command()),
+    }
+}

@@ -1,0 +1,287 @@
+//! Options that describe the experiment, the same in every command: each overrides one key of the job.
+
+use std::io::Read;
+use std::path::PathBuf;
+
+use clap::Args;
+use twincone::job::setup::{Needs, Setup, resolve};
+use twincone::job::{Document, template};
+use twincone::material::Catalogue;
+
+use super::failure::Failure;
+use super::output::{OutputArgs, write_whole};
+
+/// The experiment.
+#[derive(Debug, Clone, Default, Args)]
+#[command(next_help_heading = "Experiment")]
+pub struct ExperimentArgs {
+    /// Job file, or - for standard input; the options below override single keys of it
+    #[arg(short, long, value_name = "FILE")]
+    job: Option<PathBuf>,
+    /// Override any key of the job, e.g. --set crystal.2.tilt=0.3deg
+    #[arg(long, value_name = "KEY=VALUE")]
+    set: Vec<String>,
+    /// Write the job that these options amount to
+    #[arg(long, value_name = "FILE")]
+    write_job: Option<PathBuf>,
+    /// Crystal and data set: bbo, bbo:kato-1986, or a material file ./mine.toml
+    #[arg(short, long, value_name = "ID[:DATASET]")]
+    material: Vec<String>,
+    /// Cut: angle between face normal and Z
+    #[arg(long, value_name = "ANGLE", allow_hyphen_values = true)]
+    theta: Option<String>,
+    /// Cut: azimuth of the face normal from X [default: that of largest d_eff]
+    #[arg(long, value_name = "ANGLE", allow_hyphen_values = true)]
+    phi: Option<String>,
+    /// Solve the cut first: crossing=3deg, half-angle=3deg, separation=6deg, collinear or beamlike
+    #[arg(long = "cut", value_name = "TARGET")]
+    cut_target: Option<String>,
+    /// Crystal length along the face normal [default: 1 mm]
+    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
+    length: Option<String>,
+    /// Crystal temperature [default: the data set's own]
+    #[arg(long, value_name = "TEMPERATURE", allow_hyphen_values = true)]
+    temperature: Option<String>,
+    /// Turn that increases theta [default: 0 deg]
+    #[arg(long, value_name = "ANGLE", allow_hyphen_values = true)]
+    tilt: Option<String>,
+    /// Turn that increases phi [default: 0 deg]
+    #[arg(long, value_name = "ANGLE", allow_hyphen_values = true)]
+    cross_tilt: Option<String>,
+    /// Turn about the face normal; 90 deg lets Z lean up [default: 0 deg]
+    #[arg(long, value_name = "ANGLE", allow_hyphen_values = true)]
+    roll: Option<String>,
+    /// Poling period along the face normal [default: none]
+    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
+    poling: Option<String>,
+    /// Pump wavelength in vacuum ("405nm air" converts)
+    #[arg(short, long, value_name = "LENGTH", allow_hyphen_values = true)]
+    pump: Option<String>,
+    /// Pump waist, 1/e^2 radius in the crystal
+    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
+    waist: Option<String>,
+    /// Pump power
+    #[arg(long, value_name = "POWER", allow_hyphen_values = true)]
+    power: Option<String>,
+    /// Pump linewidth, FWHM
+    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
+    linewidth: Option<String>,
+    /// Pump pulse duration, FWHM
+    #[arg(long, value_name = "TIME", allow_hyphen_values = true)]
+    pulse: Option<String>,
+    /// Angle of the pump's field from +x towards +y [default: matched to the crystals]
+    #[arg(long, value_name = "ANGLE", allow_hyphen_values = true)]
+    pump_polarization: Option<String>,
+    /// Interaction: 0, I or II [default: II; I with a half-angle target]
+    #[arg(long = "type", value_name = "TYPE")]
+    kind: Option<String>,
+    /// Polarizations one by one: "e -> o + e", or e:o+e which needs no quotes
+    #[arg(long, value_name = "PROCESS", allow_hyphen_values = true)]
+    process: Option<String>,
+    /// Signal wavelength, repeatable [default: degenerate]
+    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
+    signal: Vec<String>,
+    /// Idler wavelength, instead of the signal's
+    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
+    idler: Option<String>,
+    /// Screen distance [default: 1 m]
+    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
+    distance: Option<String>,
+    /// Iris: full angle seen from the crystal, or diameter at the screen
+    #[arg(long, value_name = "SIZE", allow_hyphen_values = true)]
+    iris: Option<String>,
+    /// Fibre: 1/e^2 mode radius at the crystal
+    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
+    fibre: Option<String>,
+    /// Filter width, FWHM
+    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
+    filter_width: Option<String>,
+    /// Filter centre [default: the photon's wavelength]
+    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
+    filter_centre: Option<String>,
+    /// Filter shape: gaussian or rectangular
+    #[arg(long, value_name = "SHAPE")]
+    filter_shape: Option<String>,
+    /// Use data sets outside their range, and mark the result
+    #[arg(long)]
+    extrapolate: bool,
+}
+
+impl ExperimentArgs {
+    /// (option, key, value) of the options that set one key each.
+    fn overrides(&self) -> [(&'static str, &'static str, &Option<String>); 23] {
+        [
+            ("--theta", "crystal.cut.theta", &self.theta),
+            ("--phi", "crystal.cut.phi", &self.phi),
+            ("--length", "crystal.length", &self.length),
+            ("--temperature", "crystal.temperature", &self.temperature),
+            ("--tilt", "crystal.tilt", &self.tilt),
+            ("--cross-tilt", "crystal.cross_tilt", &self.cross_tilt),
+            ("--roll", "crystal.roll", &self.roll),
+            ("--poling", "crystal.poling", &self.poling),
+            ("--pump", "pump.wavelength", &self.pump),
+            ("--waist", "pump.waist", &self.waist),
+            ("--power", "pump.power", &self.power),
+            ("--linewidth", "pump.linewidth", &self.linewidth),
+            ("--pulse", "pump.pulse", &self.pulse),
+            ("--pump-polarization", "pump.polarization.angle", &self.pump_polarization),
+            ("--type", "emission.type", &self.kind),
+            ("--process", "emission.process", &self.process),
+            ("--idler", "emission.idler", &self.idler),
+            ("--distance", "screen.distance", &self.distance),
+            ("--iris", "collection.*.iris", &self.iris),
+            ("--fibre", "collection.*.fibre", &self.fibre),
+            ("--filter-width", "filter.*.width", &self.filter_width),
+            ("--filter-centre", "filter.*.centre", &self.filter_centre),
+            ("--filter-shape", "filter.*.shape", &self.filter_shape),
+        ]
+    }
+
+    /// Job file and options as one document.
+    ///
+    /// # Errors
+    /// A job file that cannot be read, or options that do not fit together.
+    pub fn document(&self) -> Result<Document, Failure> {
+        let mut document = match &self.job {
+            Some(path) => Document::from_file(&name_of(path), &read_text(path)?),
+            None => Document::default(),
+        };
+        if let [material] = self.material.as_slice() {
+            document.set("--material", "crystal.material", material);
+        }
+        for (option, key, value) in self.overrides() {
+            if let Some(value) = value {
+                document.set(option, key, value);
+            }
+        }
+        if !self.signal.is_empty() {
+            document.set_list("--signal", "emission.signal", &self.signal);
+        }
+        if let Some(target) = &self.cut_target {
+            set_target(&mut document, target)?;
+        }
+        if self.extrapolate {
+            document.set_raw("--extrapolate", "crystal.*.extrapolate", "true");
+        }
+        for assignment in &self.set {
+            let (key, value) = assignment.split_once('=').ok_or_else(|| {
+                Failure::usage(format!(
+                    "--set {assignment}: write KEY=VALUE, for example --set crystal.tilt=0.5deg"
+                ))
+            })?;
+            document.set_raw(&format!("--set {assignment}"), key.trim(), value.trim());
+        }
+        Ok(document)
+    }
+
+    /// Whether a job file was named.
+    pub fn has_job(&self) -> bool {
+        self.job.is_some()
+    }
+
+    /// Whether theta was typed, rather than taken from a job file.
+    pub fn names_theta(&self) -> bool {
+        self.theta.is_some()
+    }
+
+    /// The materials named by --material, in order; empty where the job names its own.
+    pub fn materials(&self) -> &[String] {
+        &self.material
+    }
+
+    /// The experiment.
+    ///
+    /// # Errors
+    /// What is missing or wrong in files and options.
+    pub fn setup(&self, output: &OutputArgs, needs: Needs) -> Result<Setup, Failure> {
+        if self.material.len() > 1 {
+            return Err(Failure::usage(
+                "--material is given more than once; this command looks at one crystal",
+            ));
+        }
+        let document = self.document()?;
+        let setup = resolve(&document, &catalogue(output, &document)?, needs)?;
+        self.write_job(&setup)?;
+        Ok(setup)
+    }
+
+    /// Writes the job file where --write-job asks for one.
+    ///
+    /// # Errors
+    /// A file that cannot be written.
+    pub fn write_job(&self, setup: &Setup) -> Result<(), Failure> {
+        let Some(path) = &self.write_job else { return Ok(()) };
+        write_whole(path, template(setup).as_bytes())
+            .map_err(|e| Failure::file("write", &path.display().to_string(), &e))
+    }
+}
+
+/// `crossing=3deg` or `collinear`.
+fn set_target(document: &mut Document, target: &str) -> Result<(), Failure> {
+    match target.split_once('=') {
+        Some((kind @ ("crossing" | "half-angle" | "separation"), angle)) => {
+            document.set("--cut", &format!("crystal.cut.{kind}"), angle.trim());
+            Ok(())
+        }
+        None if matches!(target, "collinear" | "beamlike") => {
+            document.set_raw("--cut", &format!("crystal.cut.{target}"), "true");
+            Ok(())
+        }
+        _ => Err(Failure::usage(format!(
+            "--cut {target}: write crossing=3deg, half-angle=3deg, separation=6deg, collinear or beamlike"
+        ))),
+    }
+}
+
+/// The compiled-in materials, those of --materials, and the files that the document names.
+///
+/// # Errors
+/// A file that cannot be read or is no material.
+pub fn catalogue(output: &OutputArgs, document: &Document) -> Result<Catalogue, Failure> {
+    let mut catalogue = Catalogue::default();
+    if let Some(dir) = &output.materials {
+        let shown = dir.display().to_string();
+        let entries = std::fs::read_dir(dir).map_err(|e| Failure::file("read", &shown, &e))?;
+        let mut files: Vec<PathBuf> = entries.filter_map(|e| Some(e.ok()?.path())).collect();
+        files.retain(|f| f.extension().is_some_and(|e| e == "toml"));
+        files.sort();
+        for file in files {
+            catalogue.add(&file.display().to_string(), &read_text(&file)?)?;
+        }
+    }
+    for crystal in document.describe()?.crystal {
+        if let Some(material) = &crystal.get_ref().material {
+            add_file(&mut catalogue, material.get_ref())?;
+        }
+    }
+    Ok(catalogue)
+}
+
+/// Adds the material file that `material` names by its path, if it does.
+///
+/// # Errors
+/// A file that cannot be read or is no material.
+pub fn add_file(catalogue: &mut Catalogue, material: &str) -> Result<(), Failure> {
+    let path = material.split_once(".toml").map(|(stem, _)| format!("{stem}.toml"));
+    let Some(path) = path else { return Ok(()) };
+    catalogue.add_or_replace(&path, &read_text(&PathBuf::from(&path))?)?;
+    Ok(())
+}
+
+/// A file's text, or standard input for `-`.
+///
+/// # Errors
+/// A file that cannot be read.
+pub fn read_text(path: &PathBuf) -> Result<String, Failure> {
+    let shown = name_of(path);
+    if path.as_os_str() == "-" {
+        let mut text = String::new();
+        std::io::stdin().read_to_string(&mut text).map_err(|e| Failure::file("read", &shown, &e))?;
+        return Ok(text);
+    }
+    std::fs::read_to_string(path).map_err(|e| Failure::file("read", &shown, &e))
+}
+
+fn name_of(path: &std::path::Path) -> String {
+    if path.as_os_str() == "-" { "standard input".into() } else { path.display().to_string() }
+}

@@ -1,0 +1,104 @@
+//! `tilt`: how far do I turn?
+
+use clap::{Args as ClapArgs, ValueEnum};
+use twincone::job::setup::Needs;
+use twincone::matching::{
+    Actuator, Emission, Interaction, Measure, Target, Triplet, opinions, shortage, tune, tuning_turn,
+};
+use twincone::report::tilt::{spread_line, table, text};
+use twincone::report::{Answer, Conventions, resolved_job};
+
+use super::cut::TargetArgs;
+use super::failure::Failure;
+use super::options::ExperimentArgs;
+use super::output::{Outcome, OutputArgs};
+
+/// Options of `tilt`; `--tilt` says where the mount stands now.
+#[derive(Debug, ClapArgs)]
+pub struct Args {
+    #[command(flatten)]
+    target: TargetArgs,
+    /// The rings touch
+    #[arg(long, conflicts_with = "TargetArgs")]
+    touching: bool,
+    /// What to change [default: the turn with the larger effect]
+    #[arg(long, value_enum)]
+    by: Option<By>,
+    #[command(flatten)]
+    experiment: ExperimentArgs,
+}
+
+#[derive(Debug, Clone, Copy, ValueEnum)]
+enum By {
+    /// The turn that increases theta
+    Tilt,
+    /// The turn that increases phi
+    CrossTilt,
+    /// The crystal's temperature
+    Temperature,
+    /// The pump's wavelength
+    Pump,
+}
+
+impl By {
+    fn actuator(self) -> Actuator {
+        match self {
+            Self::Tilt => Actuator::Tilt,
+            Self::CrossTilt => Actuator::CrossTilt,
+            Self::Temperature => Actuator::Temperature,
+            Self::Pump => Actuator::Pump,
+        }
+    }
+}
+
+/// All settings that meet the target.
+///
+/// # Errors
+/// What is missing, wrong or outside a data set's range.
+pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
+    let mut setup = args.experiment.setup(output, Needs::ALL)?;
+    let target = if args.touching { Some(Target::Touching) } else { args.target.target()? };
+    let target = target.ok_or_else(|| {
+        Failure::usage("no target: pass --crossing, --separation, --half-angle, --collinear, --beamlike or --touching, for example --crossing 3deg")
+    })?;
+    let [crystal] = setup.crystals.as_slice() else {
+        return Err(Failure::usage(
+            "the job has several crystals; `tilt` turns one: describe that one alone",
+        ));
+    };
+    let crystal = crystal.clone();
+    if let (false, Target::HalfAngle(_)) = (setup.interaction_given, target) {
+        setup.interaction = Interaction::One;
+    }
+    let photons = setup.photons();
+    let triplet = Triplet::new(&crystal, &photons)?;
+    let emission = Emission::new(&crystal, photons, &triplet);
+    let all = emission.roles(setup.interaction).map_err(Failure::usage)?;
+    let roles = all[0];
+    if target.needs_two_rings() && roles.signal == roles.idler {
+        return Err(Failure::usage(
+            "crossings need two photons of opposite polarization: use --type II, or ask for --half-angle",
+        ));
+    }
+    let actuator = args.by.map_or_else(|| tuning_turn(&crystal, photons, &triplet, roles), By::actuator);
+    let fixed = setup.signals.fixed();
+    let turns = tune(&crystal, photons, fixed, roles, target, actuator)?;
+    if turns.is_empty() {
+        let now = Measure::of(&emission, roles);
+        return Err(Failure { status: 1, message: shortage(target, actuator, &now) });
+    }
+    let others = opinions(&crystal, &photons, |other| {
+        tune(other, photons, fixed, roles, target, actuator).unwrap_or_default()
+    });
+    let mut conventions = Conventions::of(&setup);
+    conventions.lines.insert(0, spread_line(actuator, &turns, &others));
+    let answer = Answer {
+        command: "tilt",
+        tables: vec![table(&setup, actuator, &turns)],
+        text: text(&setup, target, actuator, args.by.is_none(), &turns),
+        conventions,
+        job: resolved_job(&setup),
+        solved: true,
+    };
+    output.outcome(&answer, None)
+}

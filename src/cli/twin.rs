@@ -1,0 +1,88 @@
+//! `twin`: a photon goes this way; where is its partner?
+
+use clap::Args as ClapArgs;
+use twincone::frame::Direction;
+use twincone::job::setup::{Needs, Setup, Signals};
+use twincone::matching::{Emission, Interaction, Photons};
+use twincone::quantity::{Angle, Length, Wavelength};
+use twincone::report::twin::{Twin, table, text};
+use twincone::report::{Answer, Conventions, resolved_job};
+
+use super::failure::Failure;
+use super::options::ExperimentArgs;
+use super::output::{Outcome, OutputArgs};
+
+/// Options of `twin`.
+#[derive(Debug, ClapArgs)]
+pub struct Args {
+    /// Horizontal and vertical angle, such as 0deg,3deg; or a place on the screen, such as 0mm,52mm
+    #[arg(long, value_name = "H,V", allow_hyphen_values = true)]
+    direction: String,
+    /// Wavelength of the photon [default: the signal's]
+    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
+    wavelength: Option<String>,
+    #[command(flatten)]
+    experiment: ExperimentArgs,
+}
+
+/// One row per process that can have made the photon.
+///
+/// # Errors
+/// What is missing, wrong or outside a data set's range.
+pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
+    let mut setup = args.experiment.setup(output, Needs::ALL)?;
+    let pump = setup.pump();
+    let wavelength = match &args.wavelength {
+        Some(text) => text.parse().map_err(|e| Failure::usage(format!("--wavelength: {e}")))?,
+        None => setup.signals()[0],
+    };
+    let photons = Photons::new(pump, wavelength).ok_or_else(|| too_short(wavelength, pump))?;
+    setup.signals = Signals::At(vec![wavelength]);
+    if setup.crystals.len() > 1 {
+        return Err(Failure::usage(
+            "the job has several crystals; `twin` looks at one: describe that one alone",
+        ));
+    }
+    let direction = direction(&args.direction, &setup)?;
+    let emission = Emission::of(&setup.crystals[0], photons)?;
+    let mut roles = emission.roles(setup.interaction).map_err(Failure::usage)?;
+    if let (Interaction::Explicit(_), [only]) = (setup.interaction, roles.as_slice()) {
+        // the given photon may be either of the named pair
+        if only.signal != only.idler && photons.degenerate() {
+            roles.push(roles[0].exchanged());
+        }
+    }
+    let twins: Vec<Twin> = roles.iter().map(|r| (*r, emission.pairing(*r, direction))).collect();
+    let answer = Answer {
+        command: "twin",
+        tables: vec![table(&setup, &emission, direction, &twins)],
+        text: text(&setup, &emission, direction, &twins),
+        conventions: Conventions::of(&setup),
+        job: resolved_job(&setup),
+        solved: true,
+    };
+    output.outcome(&answer, None)
+}
+
+fn too_short(wavelength: Wavelength, pump: Wavelength) -> Failure {
+    Failure::usage(format!("--wavelength: {wavelength} is not longer than the pump, {pump}"))
+}
+
+/// Two angles, or two lengths on the screen.
+fn direction(text: &str, setup: &Setup) -> Result<Direction, Failure> {
+    let bad = |why: &str| {
+        Failure::usage(format!(
+            "--direction {text}: {why}; write two angles, 0deg,3deg, or two lengths on the screen, 0mm,52mm"
+        ))
+    };
+    let (h, v) = text.split_once(',').ok_or_else(|| bad("there is no comma"))?;
+    if let (Ok(x), Ok(y)) = (h.parse::<Length>(), v.parse::<Length>()) {
+        return Ok(Direction::from_screen(x, y, setup.screen));
+    }
+    let angle = |t: &str| t.parse::<Angle>().map_err(|e| bad(&e.to_string()));
+    let (h, v) = (angle(h)?, angle(v)?);
+    if h.degrees().abs() >= 90.0 || v.degrees().abs() >= 90.0 {
+        return Err(bad("the angles must lie within -90 deg to 90 deg"));
+    }
+    Ok(Direction::from_angles(h, v))
+}
