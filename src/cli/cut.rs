@@ -6,7 +6,7 @@ use twincone::matching::{
     ConesError, CutSolution, Design, Find, Interaction, Status, Target, alternatives, design, opinions,
     shortfall,
 };
-use twincone::material::{MaterialError, tensor::is_centrosymmetric};
+use twincone::material::{MaterialError, Optic, tensor::is_centrosymmetric};
 use twincone::optics::Crystal;
 use twincone::quantity::Angle;
 use twincone::report::cut::{Attempt, no_solution, ranking, spread_line, table, text};
@@ -212,12 +212,23 @@ fn question(args: &Args, setup: &Setup) -> Result<Design, Failure> {
     let find = args.find.find();
     let target = args.target.target()?.or(given.target).unwrap_or(Target::Collinear);
     let mut crystal = setup.crystals[0].clone();
-    if find == Find::Phi && !given.theta {
-        crystal.cut.theta = Angle::from_degrees(90.0);
-    } else if find != Find::Theta && !given.theta {
-        return Err(Failure::usage(
-            "this searches at a given cut: pass --theta (and --phi), for example --theta 90deg --phi 0deg",
-        ));
+    match find {
+        Find::Theta => {}
+        // XY-plane cuts; poled crystals are cut across X or Y unless told
+        Find::Phi | Find::Poling if !given.theta => crystal.cut.theta = Angle::from_degrees(90.0),
+        _ if !given.theta => {
+            return Err(Failure::usage(
+                "this searches at a given cut: pass --theta (and --phi), for example --theta 90deg --phi 0deg",
+            ));
+        }
+        _ => {}
+    }
+    let biaxial = crystal.material.file.optic == Optic::Biaxial;
+    if biaxial && given.theta && !given.phi && matches!(find, Find::Poling | Find::Temperature | Find::Pump) {
+        return Err(Failure::usage(format!(
+            "no phi: {} is biaxial, so its cut needs both angles; pass --phi, for example --phi 0deg",
+            crystal.material.id
+        )));
     }
     if find == Find::Theta && given.theta && args.experiment.names_theta() {
         return Err(Failure::usage(

@@ -4,7 +4,7 @@ use clap::Args as ClapArgs;
 use twincone::job::setup::{Needs, Setup, resolve};
 use twincone::optics::Crystal;
 use twincone::quantity::Wavelength;
-use twincone::report::index::{IndexRow, out_of_range, rows, table, text};
+use twincone::report::index::{IndexRow, out_of_range, rows, spread_line, table, text};
 use twincone::report::{Answer, Conventions, resolved_job};
 
 use super::failure::Failure;
@@ -41,13 +41,17 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let setups = setups(args, output)?;
     let mut all: Vec<IndexRow> = Vec::new();
     let mut conventions = Conventions::of(&setups[0]);
+    let mut spreads = Vec::new();
     for setup in &setups {
         let crystal = &setup.crystals[0];
         let wavelengths = wavelengths(args, setup)?;
         let directed = setup.cut[0].theta;
+        let mut own = Vec::new();
         for wavelength in &wavelengths {
-            all.extend(rows(crystal, *wavelength, directed)?);
+            own.extend(rows(crystal, *wavelength, directed)?);
         }
+        spreads.push(spread_line(crystal, &own, directed));
+        all.append(&mut own);
         conventions.add_dataset(crystal);
         if args.all_datasets {
             for other in others(crystal) {
@@ -61,6 +65,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
             }
         }
     }
+    conventions.lines.splice(0..0, spreads);
     let answer = Answer {
         command: "index",
         tables: vec![table(&all)],

@@ -3,9 +3,9 @@
 use clap::Args as ClapArgs;
 use twincone::frame::Direction;
 use twincone::job::setup::{Needs, Setup, Signals};
-use twincone::matching::{Emission, Interaction, Photons};
+use twincone::matching::{Emission, Interaction, Photons, opinions};
 use twincone::quantity::{Angle, Length, Wavelength};
-use twincone::report::twin::{Twin, table, text};
+use twincone::report::twin::{Twin, spread_line, table, text};
 use twincone::report::{Answer, Conventions, resolved_job};
 
 use super::failure::Failure;
@@ -53,11 +53,17 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         }
     }
     let twins: Vec<Twin> = roles.iter().map(|r| (*r, emission.pairing(*r, direction))).collect();
+    let others = opinions(&setup.crystals[0], &photons, |other| {
+        let there = Emission::of(other, photons).ok()?;
+        Some(there.pairing(twins.first()?.0, direction)?.phase_matching_factor(there.length))
+    });
+    let mut conventions = Conventions::of(&setup);
+    conventions.lines.insert(0, spread_line(&twins, emission.length, &others));
     let answer = Answer {
         command: "twin",
         tables: vec![table(&setup, &emission, direction, &twins)],
         text: text(&setup, &emission, direction, &twins),
-        conventions: Conventions::of(&setup),
+        conventions,
         job: resolved_job(&setup),
         solved: true,
     };

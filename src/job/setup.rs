@@ -9,7 +9,7 @@ use super::description::{self, Description, Text};
 use super::document::{Document, JobError};
 use crate::frame::{Cut, Orientation, Reversal};
 use crate::matching::{Design, Find, Interaction, Photons, Process, ProcessError, Target, design};
-use crate::material::{Catalogue, Material, MaterialError, Reach};
+use crate::material::{Catalogue, Material, MaterialError, Optic, Reach};
 use crate::optics::Crystal;
 use crate::quantity::{Angle, Duration, Frequency, Length, Power, QuantityError, Temperature, Wavelength};
 
@@ -508,6 +508,14 @@ fn settle_cut(setup: &mut Setup, index: usize, needs: Needs) -> Result<(), Setup
             ))
             .into());
         }
+        let biaxial = setup.crystals[index].material.file.optic == Optic::Biaxial;
+        if biaxial && !given.phi {
+            let id = &setup.crystals[index].material.id;
+            return Err(JobError(format!(
+                "no phi: {id} is biaxial, so its cut needs both angles; pass --phi, for example --phi 0deg for the XZ plane"
+            ))
+            .into());
+        }
         choose_phi(setup, index);
         return Ok(());
     };
@@ -545,7 +553,7 @@ fn choose_phi(setup: &mut Setup, index: usize) {
     let (Some(_), false, Some(tensor)) = (setup.pump, given.phi, crystal.material.tensor.clone()) else {
         return;
     };
-    if crystal.material.file.optic != crate::material::Optic::Uniaxial {
+    if crystal.material.file.optic != Optic::Uniaxial {
         return;
     }
     let upright =

@@ -433,12 +433,14 @@ pub fn spread_lines(own: &Cones, opinions: &[Opinion<Option<Cones>>]) -> Vec<Str
                 &what,
                 half_angle(own, n),
                 &spread::numbers(opinions, |c| c.as_ref().and_then(|c| half_angle(c, n))),
+                3,
             )
         })
         .collect();
     if !own.crossings.is_empty() {
         let numbers = spread::numbers(opinions, |c| c.as_ref().and_then(crossing));
-        lines.insert(0, spread::line("the crossings' angle from the pump in deg", crossing(own), &numbers));
+        lines
+            .insert(0, spread::line("the crossings' angle from the pump in deg", crossing(own), &numbers, 3));
         lines.truncate(3);
     }
     lines

@@ -264,7 +264,7 @@ pub fn spread_line(find: Find, own: &[CutSolution], opinions: &[Opinion<Vec<CutS
         Find::Temperature => "the temperature in degC",
         Find::Pump => "the pump in nm",
     };
-    spread::line(what, number(own), &spread::numbers(opinions, |all| number(all)))
+    spread::line(what, number(own), &spread::numbers(opinions, |all| number(all)), 3)
 }
 
 fn sought(s: &CutSolution, find: Find, first: Option<&CutSolution>) -> Option<f64> {

@@ -6,6 +6,7 @@ use crate::optics::{Along, Crystal, along_axes, along_direction};
 use crate::quantity::Wavelength;
 
 use super::angles::{fixed, grid, or_dash, rounded};
+use super::spread;
 use super::table::{Cell, Column, Table, column};
 
 /// Columns, without the two that end every table.
@@ -91,6 +92,23 @@ pub fn out_of_range(crystal: &Crystal, wavelength: Wavelength) -> IndexRow {
         extrapolated: false,
         status: Status::OutOfRange,
     }
+}
+
+/// The line about the other data sets: the index of the first row's wave there.
+#[must_use]
+pub fn spread_line(crystal: &Crystal, own: &[IndexRow], directed: bool) -> String {
+    let Some(first) = own.first() else { return String::new() };
+    let opinions: Vec<(String, Result<Option<f64>, String>)> = (0..crystal.material.sets().len())
+        .filter(|index| *index != crystal.dataset)
+        .map(|index| {
+            let other = Crystal { reach: Reach::Within, ..crystal.with_dataset(index) };
+            let answer = rows(&other, first.wavelength, directed);
+            let n = answer.map(|all| all.first().and_then(|row| row.along.as_ref()).map(|a| a.n));
+            (other.set().id.clone(), n.map_err(|e| spread::reason(&e)))
+        })
+        .collect();
+    let what = format!("n of {} at {:.3}", first.polarization, first.wavelength);
+    spread::line(&what, first.along.as_ref().map(|a| a.n), &opinions, 6)
 }
 
 /// All rows as a table.

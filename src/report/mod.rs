@@ -65,10 +65,12 @@ fn wrap(line: &str, out: &mut String) {
     out.push('\n');
 }
 
-/// The job of a setup, every default filled in, as JSON.
+/// The job of a setup, every default filled in and every cut solved, as JSON.
 #[must_use]
 pub fn resolved_job(setup: &crate::job::Setup) -> serde_json::Value {
-    let text = crate::job::template(setup);
+    let mut solved = setup.clone();
+    solved.cut.iter_mut().filter(|cut| cut.theta || cut.target.is_some()).for_each(|cut| cut.target = None);
+    let text = crate::job::template(&solved);
     let value: toml::Value = toml::from_str(&text).expect("the template is valid TOML");
     serde_json::to_value(value).expect("TOML without dates is JSON")
 }

@@ -9,6 +9,7 @@ pub(super) fn line(
     what: &str,
     own: Option<f64>,
     opinions: &[(String, Result<Option<f64>, String>)],
+    decimals: usize,
 ) -> String {
     if opinions.is_empty() {
         return format!("Other data sets: none, so nothing says how sure {what} is.");
@@ -16,7 +17,9 @@ pub(super) fn line(
     let told: Vec<String> = opinions
         .iter()
         .filter_map(|(id, answer)| answer.as_ref().ok().map(|value| (id, value)))
-        .map(|(id, value)| value.map_or_else(|| format!("{id} none"), |v| format!("{id} {}", fixed(v, 3))))
+        .map(|(id, value)| {
+            value.map_or_else(|| format!("{id} none"), |v| format!("{id} {}", fixed(v, decimals)))
+        })
         .collect();
     let left_out: Vec<String> = opinions
         .iter()
@@ -31,7 +34,7 @@ pub(super) fn line(
     if all.len() > 1 {
         let (low, high) =
             all.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), v| (l.min(*v), h.max(*v)));
-        text.push_str(&format!("; with this one {} to {}", fixed(low, 3), fixed(high, 3)));
+        text.push_str(&format!("; with this one {} to {}", fixed(low, decimals), fixed(high, decimals)));
     }
     if !left_out.is_empty() {
         text.push_str(&format!("; left out: {}", left_out.join(", ")));
@@ -48,7 +51,7 @@ pub(super) fn numbers<T>(
     opinions.iter().map(|o| (o.dataset.clone(), o.answer.as_ref().map(&number).map_err(reason))).collect()
 }
 
-fn reason(error: &crate::material::MaterialError) -> String {
+pub(super) fn reason(error: &crate::material::MaterialError) -> String {
     use crate::material::MaterialError::{NoThermoOptics, OutOfRange, TemperatureOutOfRange};
     match error {
         OutOfRange { from, to, .. } => format!("valid {from} to {to}"),

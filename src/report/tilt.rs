@@ -195,5 +195,5 @@ pub fn spread_line(actuator: Actuator, own: &[Turn], opinions: &[Opinion<Vec<Tur
         Actuator::Temperature => "the temperature in degC",
         Actuator::Pump => "the pump in nm",
     };
-    spread::line(what, number(own), &spread::numbers(opinions, |turns| number(turns)))
+    spread::line(what, number(own), &spread::numbers(opinions, |turns| number(turns)), 3)
 }

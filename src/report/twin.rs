@@ -2,10 +2,11 @@
 
 use crate::frame::Direction;
 use crate::job::Setup;
-use crate::matching::{Emission, Pairing, Roles, Status};
+use crate::matching::{Emission, Opinion, Pairing, Roles, Status};
 use crate::material::tensor::is_centrosymmetric;
 
 use super::angles::{fixed, grid, rounded, signed};
+use super::spread;
 use super::table::{Cell, Column, Table, column};
 
 /// Columns, without the two that end every table.
@@ -66,6 +67,15 @@ fn status(setup: &Setup, emission: &Emission, pairing: Option<&Pairing>) -> Stat
             _ => Status::Ok,
         },
     }
+}
+
+/// The line about the other data sets: how well the first process is matched there. Where the partner goes does not
+/// depend on the indices at all.
+#[must_use]
+pub fn spread_line(own: &[Twin], length: f64, opinions: &[Opinion<Option<f64>>]) -> String {
+    let first =
+        own.first().and_then(|(_, pairing)| pairing.as_ref()).map(|p| p.phase_matching_factor(length));
+    spread::line("sinc^2 of the first process", first, &spread::numbers(opinions, |value| *value), 3)
 }
 
 /// For people.
