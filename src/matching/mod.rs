@@ -21,7 +21,7 @@ pub use cut::{CutSolution, Design, Find, Plane, Shortfall, alternatives, best_ph
 pub use emission::{Emission, Media, Photons, Triplet};
 pub use interaction::{Interaction, Process, ProcessError, Roles};
 pub use mismatch::{Mismatch, Sample};
-pub use partner::Pairing;
+pub use partner::{Pairing, phase_matching_factor};
 pub use ring::{Curve, Ring, RingFault, SAMPLES, curves, half_angle, rings};
 pub use root::{Root, Scan, roots};
 pub use spread::{Opinion, opinions};

@@ -51,7 +51,7 @@ impl Pairing {
     /// sinc^2(Delta_k L/2) for a crystal of this length (m).
     #[must_use]
     pub fn phase_matching_factor(&self, length: f64) -> f64 {
-        sinc(0.5 * self.mismatch * length).powi(2)
+        phase_matching_factor(self.mismatch, length)
     }
 
     /// Whether one of the waves travels along an optic axis.
@@ -59,6 +59,12 @@ impl Pairing {
     pub fn on_optic_axis(&self) -> bool {
         [&self.pump, &self.signal, &self.idler].iter().any(|w| w.on_optic_axis)
     }
+}
+
+/// sinc^2(Delta_k L/2) for a mismatch in rad/m and a crystal length in m.
+#[must_use]
+pub fn phase_matching_factor(mismatch: f64, length: f64) -> f64 {
+    sinc(0.5 * mismatch * length).powi(2)
 }
 
 /// sin(x)/x.

@@ -335,7 +335,7 @@ impl Material {
                 own: set.temperature,
                 asked: temperature,
                 remedy: match others.as_slice() {
-                    [] => "no set of this crystal has them".into(),
+                    [] => "no set of this crystal has them: leave the temperature out".into(),
                     some => format!("choose one of {}, which have them", some.join(", ")),
                 },
             });

@@ -1,4 +1,4 @@
-//! A crystal as it is cut and mounted: what gives a [`Medium`] at each wavelength.
+//! A crystal as it is cut and mounted: what gives a [`Medium`](super::Medium) at each wavelength.
 
 use std::sync::Arc;
 

@@ -1,4 +1,4 @@
-//! Numbers rounded to what is meaningful in text.
+//! Numbers, columns and sentences as people read them.
 
 /// Degrees with three decimals, sign always shown where it matters.
 pub(super) fn degrees(radians: f64) -> String {
@@ -50,6 +50,32 @@ pub(super) fn grid(header: &[&str], rows: &[Vec<String>]) -> String {
     line(header.to_vec());
     for row in rows {
         line(row.iter().map(String::as_str).collect());
+    }
+    out
+}
+
+/// Sentences broken at spaces before column 100; what follows the first line is set in by two more spaces.
+pub(super) fn prose(text: &str) -> String {
+    const WIDTH: usize = 100;
+    let mut out = String::new();
+    for line in text.lines() {
+        let indent = line.len() - line.trim_start().len();
+        let mut column = indent;
+        out.push_str(&line[..indent]);
+        for (index, word) in line.trim_start().split(' ').enumerate() {
+            let length = word.chars().count();
+            if index > 0 && column + 1 + length > WIDTH {
+                out.push('\n');
+                out.push_str(&" ".repeat(indent + 2));
+                column = indent + 2;
+            } else if index > 0 {
+                out.push(' ');
+                column += 1;
+            }
+            out.push_str(word);
+            column += length;
+        }
+        out.push('\n');
     }
     out
 }

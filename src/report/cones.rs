@@ -4,10 +4,11 @@ use crate::frame::Direction;
 use crate::job::Setup;
 use crate::matching::{
     Actuator, Cones, CrossingRow, GapKind, HistoryName, Landing, Opinion, RingRow, Status,
+    phase_matching_factor,
 };
 use crate::quantity::Angle;
 
-use super::angles::{degrees, fixed, grid, or_dash, rounded, signed};
+use super::angles::{degrees, fixed, grid, or_dash, prose, rounded, signed};
 use super::conventions::room_words;
 use super::spread;
 use super::table::{Cell, Column, Table, column};
@@ -148,7 +149,7 @@ pub type Advice = Option<(Actuator, Angle)>;
 /// For people; `advice` has an entry for each ring.
 #[must_use]
 pub fn text(setup: &Setup, cones: &Cones, advice: &[Advice]) -> String {
-    let mut out = heading(setup);
+    let mut out = prose(&heading(setup));
     out.push_str(&format!(
         "\nRings (degrees outside the crystal; mm on the screen at {} m)\n",
         rounded(setup.screen.si(), 3)
@@ -170,7 +171,7 @@ pub fn text(setup: &Setup, cones: &Cones, advice: &[Advice]) -> String {
     let rows: Vec<Vec<String>> = cones.rings.iter().map(|row| ring_cells(setup, row)).collect();
     out.push_str(&grid(&header, &rows));
     for (row, advice) in cones.rings.iter().zip(advice) {
-        out.push_str(&ring_words(setup, row, *advice));
+        out.push_str(&prose(&ring_words(setup, row, *advice)));
     }
     out.push('\n');
     if cones.crossings.is_empty() {
@@ -180,10 +181,10 @@ pub fn text(setup: &Setup, cones: &Cones, advice: &[Advice]) -> String {
     } else {
         out.push_str("Crossings\n");
         for row in &cones.crossings {
-            out.push_str(&crossing_words(setup, row));
+            out.push_str(&prose(&crossing_words(setup, row)));
         }
     }
-    out.push_str(&reflections(setup));
+    out.push_str(&prose(&reflections(setup)));
     out
 }
 
@@ -290,13 +291,18 @@ fn ring_words(setup: &Setup, row: &RingRow, advice: Advice) -> String {
         }
         Err(fault) => match (row.status, fault.shortfall) {
             (Status::NoPhaseMatching, shortfall) => {
+                let length = setup.crystals[row.crystal].hot_length().si();
                 let off = shortfall.map_or(String::new(), |s| {
-                    format!(": the best direction misses by {} rad/mm", fixed(s * 1e-3, 2))
+                    let factor = phase_matching_factor(s, length);
+                    let light = if factor > 0.1 {
+                        format!(", where sinc^2 is {}: there is light without a ring", fixed(factor, 2))
+                    } else {
+                        String::new()
+                    };
+                    format!(": the best direction misses by {} rad/mm{light}", fixed(s * 1e-3, 2))
                 });
-                format!(
-                    "  No direction is phase matched for the {name}{off}. {}\n",
-                    turn_advice(setup, row.crystal, advice)
-                )
+                let advice = turn_advice(setup, row.crystal, advice);
+                format!("  No direction is phase matched for the {name}{off}. {advice}\n")
             }
             (Status::OpenRing, _) => {
                 format!("  The {name} leaves the search region, 60 deg about the pump.\n")
@@ -315,9 +321,9 @@ fn turn_advice(setup: &Setup, index: usize, advice: Advice) -> String {
         Some((actuator, turn)) => {
             let key = if actuator == Actuator::CrossTilt { "cross tilt" } else { "tilt" };
             let words = room_words(&setup.crystals[index], actuator, turn);
-            format!("A {key} changed by {} deg begins to give light: {words}.", signed(turn.degrees(), 3))
+            format!("A {key} changed by {} deg begins to give a ring: {words}.", signed(turn.degrees(), 3))
         }
-        None => "No turn within 30 deg gives light.".into(),
+        None => "No turn within 30 deg gives a ring.".into(),
     }
 }
 

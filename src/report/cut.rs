@@ -4,7 +4,7 @@ use crate::job::Setup;
 use crate::matching::{CutSolution, Find, Opinion, Shortfall, Status, Target};
 use crate::optics::Crystal;
 
-use super::angles::{fixed, grid, or_dash, rounded};
+use super::angles::{fixed, grid, or_dash, prose, rounded};
 use super::spread;
 use super::table::{Cell, Column, Table, column};
 
@@ -144,8 +144,8 @@ pub fn text(setup: &Setup, target: Target, find: Find, attempts: &[Attempt]) -> 
     out.push('\n');
     for attempt in attempts {
         match &attempt.outcome {
-            Ok(solutions) => solutions.iter().for_each(|s| out.push_str(&solution_text(s, find))),
-            Err((_, why)) => out.push_str(&format!("\n{}: {why}\n", attempt.crystal.material.id)),
+            Ok(solutions) => solutions.iter().for_each(|s| out.push_str(&prose(&solution_text(s, find)))),
+            Err((_, why)) => out.push_str(&prose(&format!("\n{}: {why}\n", attempt.crystal.material.id))),
         }
     }
     out

@@ -39,30 +39,9 @@ impl Answer {
     pub fn to_text(&self) -> String {
         let mut text = self.text.trim_end().to_string();
         text.push_str("\n\n");
-        for line in &self.conventions.lines {
-            wrap(line, &mut text);
-        }
+        self.conventions.lines.iter().for_each(|line| text.push_str(&angles::prose(line)));
         text
     }
-}
-
-/// Breaks a line at spaces before column 100; what follows the first is set in.
-fn wrap(line: &str, out: &mut String) {
-    const WIDTH: usize = 100;
-    let mut column = 0;
-    for word in line.split(' ') {
-        let length = word.chars().count();
-        if column > 0 && column + 1 + length > WIDTH {
-            out.push_str("\n  ");
-            column = 2;
-        } else if column > 0 {
-            out.push(' ');
-            column += 1;
-        }
-        out.push_str(word);
-        column += length;
-    }
-    out.push('\n');
 }
 
 /// The job of a setup, every default filled in and every cut solved, as JSON.

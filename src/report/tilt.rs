@@ -6,7 +6,7 @@ use crate::matching::{Actuator, Opinion, Target, Turn};
 use crate::optics::Crystal;
 use crate::quantity::Angle;
 
-use super::angles::{fixed, grid, or_dash, rounded, signed};
+use super::angles::{fixed, grid, or_dash, prose, rounded, signed};
 use super::conventions::room_words;
 use super::cut::target_words;
 use super::spread;
@@ -121,7 +121,7 @@ pub fn text(setup: &Setup, target: Target, actuator: Actuator, chosen: bool, tur
         turns.iter().enumerate().map(|(n, t)| cells(setup, actuator, n, t)).collect();
     out.push_str(&grid(&header, &rows));
     for (index, turn) in turns.iter().enumerate() {
-        out.push_str(&words(setup, actuator, index, turn));
+        out.push_str(&prose(&words(setup, actuator, index, turn)));
     }
     out
 }
