@@ -117,7 +117,6 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let several = args.all_materials || setups.len() > 1;
     let mut attempts = Vec::new();
     let mut spreads = Vec::new();
-    let mut conventions = Conventions::default();
     let find = args.find.find();
     let mut asked = Target::Collinear;
     for setup in &setups {
@@ -135,21 +134,25 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
                 answer: o.answer.as_ref().map(|(_, found)| found.clone()).map_err(Clone::clone),
             });
             let line = spread_line(find, found, &answers.collect::<Vec<_>>());
-            spreads.push(if several { format!("{}: {line}", setup.crystals[0].material.id) } else { line });
+            match several {
+                false => spreads.push(line),
+                true if others.is_empty() => {}
+                true => spreads.push(format!("{}: {line}", setup.crystals[0].material.id)),
+            }
         }
         attempts.push(own);
         if args.all_datasets {
             attempts.extend(others.into_iter().map(|o| other_attempt(&question.crystal, o)));
         }
     }
-    describe(&setups, &attempts, several, &mut conventions);
+    let mut conventions = describe(&setups, &attempts, several);
     conventions.lines.splice(0..0, spreads);
     let solved = attempts.iter().any(|a| a.outcome.is_ok());
     let mut first = setups[0].clone();
     first.interaction = question(args, &first)?.interaction;
     let answer = Answer {
         command: "cut",
-        tables: vec![table(&first, &attempts)],
+        tables: vec![table(&first, &attempts, several)],
         text: if several { ranking(&first, asked, &attempts) } else { text(&first, asked, find, &attempts) },
         conventions,
         job: resolved_job(&first),
@@ -158,19 +161,20 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     output.outcome(&answer, None)
 }
 
-/// Conventions of the first setup, and a line for each data set that answered.
-fn describe(setups: &[Setup], attempts: &[Attempt], several: bool, conventions: &mut Conventions) {
-    *conventions = Conventions::of(&setups[0]);
-    if several {
-        let solved = attempts.iter().filter(|a| a.outcome.is_ok());
-        conventions.warnings.clear();
-        let lines = std::mem::take(&mut conventions.lines);
-        let rest = lines.into_iter().skip(conventions.datasets.len()).collect();
-        *conventions = Conventions { lines: rest, ..Conventions::default() };
-        for attempt in solved {
-            conventions.add_dataset(&attempt.crystal);
-        }
+/// Conventions of the first setup; where several materials compete, the data sets are named in the table.
+fn describe(setups: &[Setup], attempts: &[Attempt], several: bool) -> Conventions {
+    let mut first = Conventions::of(&setups[0]);
+    if !several {
+        return first;
     }
+    let mut named = Conventions::default();
+    for attempt in attempts.iter().filter(|a| a.outcome.is_ok()) {
+        named.add_dataset(&attempt.crystal);
+    }
+    let pointer = "Data sets as named above, each at its own temperature; `twincone materials show ID` gives ranges and papers.";
+    named.lines = vec![pointer.into()];
+    named.lines.extend(first.lines.drain(first.datasets.len()..));
+    named
 }
 
 /// One setup per material.

@@ -54,7 +54,10 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
                 _ => said.crystal.is_empty() || said.crystal[0].get_ref().cut.is_none(),
             };
             if missing {
-                document.set("the default", key, value);
+                let one = said.emission.as_ref().and_then(|e| e.get_ref().kind.as_ref());
+                let cone = key.contains("cut")
+                    && one.is_some_and(|kind| matches!(kind.get_ref().as_str(), "I" | "1"));
+                document.set("the default", if cone { "crystal.cut.half-angle" } else { key }, value);
             }
         }
         document.append(&typed);

@@ -66,6 +66,8 @@ pub struct Setup {
     pub stage: Option<Stage>,
     /// Whether the length was given.
     pub length_given: bool,
+    /// The description it was made of: what later commands read and this setup does not hold.
+    pub written: Description,
 }
 
 /// Which signal wavelengths.
@@ -111,8 +113,8 @@ pub struct GivenCut {
 /// What a mount's scale shows.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct Stage {
-    /// Reading at back-reflection.
-    pub zero: Angle,
+    /// Reading at back-reflection; without it a reading says nothing.
+    pub zero: Option<Angle>,
     /// Turn of the crystal per turn of the screw.
     pub per_turn: Option<Angle>,
     /// Whether readings fall when the tilt rises.
@@ -122,9 +124,9 @@ pub struct Stage {
 impl Stage {
     /// Reading at a tilt.
     #[must_use]
-    pub fn reading(&self, tilt: Angle) -> Angle {
+    pub fn reading(&self, tilt: Angle) -> Option<Angle> {
         let sign = if self.reversed { -1.0 } else { 1.0 };
-        Angle::radians(self.zero.si() + sign * tilt.si())
+        self.zero.map(|zero| Angle::radians(zero.si() + sign * tilt.si()))
     }
 
     /// Turns of the screw for a turn of the crystal.
@@ -252,6 +254,7 @@ pub fn resolve_description(
             .unwrap_or(Length::metres(1.0)),
         stage: stage(&reader, description)?,
         length_given: description.crystal.iter().all(|c| c.get_ref().length.is_some()),
+        written: description.clone(),
     };
     if description.crystal.is_empty() {
         return Err(JobError(
@@ -356,7 +359,7 @@ fn stage(reader: &Reader<'_>, d: &Description) -> Result<Option<Stage>, SetupErr
         return Err(reader.fault(text, "the turn per screw turn must be positive; write reversed = true for a screw that counts backwards"));
     }
     Ok(Some(Stage {
-        zero: reader.maybe(stage.zero.as_ref())?.unwrap_or_default(),
+        zero: reader.maybe(stage.zero.as_ref())?,
         per_turn,
         reversed: stage.reversed.unwrap_or(false),
     }))
@@ -572,6 +575,7 @@ fn check_unused(reader: &Reader<'_>, d: &Description) -> Result<(), SetupError> 
         reader.positive(pump.waist.as_ref(), "the waist")?;
         reader.maybe::<Power>(pump.power.as_ref())?;
         reader.maybe::<Duration>(pump.pulse.as_ref())?;
+        check_polarization(reader, d)?;
         if let Some(text) = &pump.linewidth {
             let as_length = text.get_ref().parse::<Length>().map(|_| ());
             as_length.or_else(|_| text.get_ref().parse::<Frequency>().map(|_| ())).map_err(|_| {
@@ -620,4 +624,22 @@ fn check_unused(reader: &Reader<'_>, d: &Description) -> Result<(), SetupError> 
         reader.turn(compensator.tilt.as_ref(), "the compensator's tilt")?;
     }
     Ok(())
+}
+
+/// `"matched"`, or a table of `angle` and `phase`.
+fn check_polarization(reader: &Reader<'_>, d: &Description) -> Result<(), SetupError> {
+    let Some(pump) = &d.pump else { return Ok(()) };
+    let Some(value) = &pump.get_ref().polarization else { return Ok(()) };
+    let is_angle = |v: &toml::Value| v.as_str().is_some_and(|text| text.parse::<Angle>().is_ok());
+    let fine = match value {
+        toml::Value::String(word) => word == "matched",
+        toml::Value::Table(table) => {
+            table.iter().all(|(k, v)| matches!(k.as_str(), "angle" | "phase") && is_angle(v))
+        }
+        _ => false,
+    };
+    let message = format!(
+        "`{value}` is no pump polarization; write polarization = \"matched\" or {{ angle = \"45 deg\", phase = \"0 deg\" }}"
+    );
+    if fine { Ok(()) } else { Err(reader.fault(pump, &message)) }
 }

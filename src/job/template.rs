@@ -2,6 +2,7 @@
 
 use std::fmt::Write as _;
 
+use super::description::Description;
 use super::setup::{GivenCut, Setup, Signals};
 use crate::frame::Reversal;
 use crate::matching::{Interaction, Target};
@@ -17,16 +18,9 @@ pub fn template(setup: &Setup) -> String {
     section(o, "[pump]");
     let pump = setup.pump.map_or_else(|| "405 nm".into(), |p| p.to_string());
     line(o, "wavelength", &quoted(&pump), "vacuum; \"405 nm air\" converts from standard air");
-    comment(o, "waist = \"150 um\"", "1/e^2 radius in the crystal; without it a plane wave");
-    comment(o, "power = \"40 mW\"", "");
-    comment(o, "linewidth = \"0.1 nm\"", "FWHM; or pulse = \"150 fs\"; without either monochromatic");
-    comment(
-        o,
-        "polarization = \"matched\"",
-        "or { angle = \"45 deg\", phase = \"0 deg\" }: E from +x towards +y",
-    );
-    for (crystal, given) in setup.crystals.iter().zip(&setup.cut) {
-        crystal_section(o, crystal, *given, setup.crystals.len() > 1);
+    pump_section(o, setup);
+    for (index, crystal) in setup.crystals.iter().enumerate() {
+        crystal_section(o, setup, index, crystal);
     }
     emission_section(o, setup);
     section(o, "[screen]");
@@ -34,7 +28,10 @@ pub fn template(setup: &Setup) -> String {
     section(o, "[stage]");
     match &setup.stage {
         Some(stage) => {
-            line(o, "zero", &quoted(&stage.zero.to_string()), "reading at back-reflection");
+            match stage.zero {
+                Some(zero) => line(o, "zero", &quoted(&zero.to_string()), "reading at back-reflection"),
+                None => comment(o, "zero = \"0 deg\"", "reading at back-reflection"),
+            }
             if let Some(per_turn) = stage.per_turn {
                 line(
                     o,
@@ -51,12 +48,62 @@ pub fn template(setup: &Setup) -> String {
             comment(o, "reversed = false", "readings fall when the tilt rises");
         }
     }
+    other_sections(o, setup);
     out
 }
 
-fn crystal_section(o: &mut String, crystal: &Crystal, given: GivenCut, several: bool) {
+/// What of the pump no command reads yet is kept as it was written.
+fn pump_section(o: &mut String, setup: &Setup) {
+    let pump = setup.written.pump.as_ref().map(|p| p.get_ref().clone()).unwrap_or_default();
+    let hints = [
+        ("waist", pump.waist, "\"150 um\"", "1/e^2 radius in the crystal; without it a plane wave"),
+        ("power", pump.power, "\"40 mW\"", ""),
+        (
+            "linewidth",
+            pump.linewidth,
+            "\"0.1 nm\"",
+            "FWHM; or pulse = \"150 fs\"; without either monochromatic",
+        ),
+        ("pulse", pump.pulse, "\"150 fs\"", ""),
+        ("spectrum", pump.spectrum, "\"diode.csv\"", ""),
+    ];
+    for (key, value, example, why) in hints {
+        match value {
+            Some(value) => line(o, key, &quoted(value.get_ref()), why),
+            None if why.is_empty() && key != "power" => {}
+            None => comment(o, &format!("{key} = {example}"), why),
+        }
+    }
+    let why = "or { angle = \"45 deg\", phase = \"0 deg\" }: E from +x towards +y";
+    match pump.polarization {
+        Some(value) => line(o, "polarization", &value.to_string(), why),
+        None => comment(o, "polarization = \"matched\"", why),
+    }
+}
+
+/// Sections that no command reads yet, as they were written.
+fn other_sections(o: &mut String, setup: &Setup) {
+    let written = &setup.written;
+    let rest = Description {
+        mount: written.mount.clone(),
+        collection: written.collection.clone(),
+        filter: written.filter.clone(),
+        compensator: written.compensator.clone(),
+        sweep: written.sweep.clone(),
+        ..Description::default()
+    };
+    let text = toml::to_string(&rest).expect("texts, lists and tables are TOML");
+    if !text.is_empty() {
+        o.push('\n');
+        o.push_str(&text);
+    }
+}
+
+fn crystal_section(o: &mut String, setup: &Setup, index: usize, crystal: &Crystal) {
+    let (given, several) = (setup.cut[index], setup.crystals.len() > 1);
+    let written = setup.written.crystal.get(index).map(|c| c.get_ref().clone()).unwrap_or_default();
     section(o, if several { "[[crystal]]" } else { "[crystal]" });
-    if several {
+    if several || written.name.is_some() {
         line(o, "name", &quoted(&crystal.name), "");
     }
     line(o, "material", &quoted(&crystal.material.id), "`twincone materials` lists them");
@@ -64,6 +111,17 @@ fn crystal_section(o: &mut String, crystal: &Crystal, given: GivenCut, several: 
     line(o, "cut", &cut(crystal, given), "theta: face normal to Z; phi: azimuth of the normal from X");
     line(o, "length", &quoted(&crystal.length.to_string()), "along the face normal");
     line(o, "temperature", &quoted(&crystal.temperature.to_string()), "");
+    if let Some(reference) = &written.reference_temperature {
+        line(
+            o,
+            "reference_temperature",
+            &quoted(reference.get_ref()),
+            "at which length and poling are stated",
+        );
+    }
+    if let Some(gap) = &written.gap_before {
+        line(o, "gap_before", &quoted(gap.get_ref()), "air before the crystal");
+    }
     let turn = &crystal.orientation;
     line(o, "tilt", &quoted(&turn.tilt.to_string()), "positive increases theta");
     line(o, "cross_tilt", &quoted(&turn.cross_tilt.to_string()), "positive increases phi");

@@ -42,18 +42,17 @@ pub struct Attempt {
     pub outcome: Result<Vec<CutSolution>, (Status, String)>,
 }
 
-/// Rows of all attempts.
+/// Rows of all attempts: solutions first, as they come or by falling |d_eff|, then those that have none.
 #[must_use]
-pub fn table(setup: &Setup, attempts: &[Attempt]) -> Table {
+pub fn table(setup: &Setup, attempts: &[Attempt], by_rank: bool) -> Table {
     let mut table = Table::new("cut", &COLUMNS);
+    let solved = attempts.iter().filter_map(|a| a.outcome.as_ref().ok()).flatten();
+    for s in if by_rank { ranked(attempts) } else { solved.collect() } {
+        table.push(row(s), s.extrapolated, s.status);
+    }
     for attempt in attempts {
-        match &attempt.outcome {
-            Ok(solutions) => {
-                for s in solutions {
-                    table.push(row(s), s.extrapolated, s.status);
-                }
-            }
-            Err((status, _)) => table.push(unsolved(setup, &attempt.crystal), false, *status),
+        if let Err((status, _)) = &attempt.outcome {
+            table.push(unsolved(setup, &attempt.crystal), false, *status);
         }
     }
     table
@@ -213,9 +212,8 @@ fn solution_text(s: &CutSolution, find: Find) -> String {
 /// For people, many materials: what can do it, best first, and in a word why the others cannot.
 #[must_use]
 pub fn ranking(setup: &Setup, target: Target, attempts: &[Attempt]) -> String {
-    let mut solved: Vec<&CutSolution> =
-        attempts.iter().filter_map(|a| a.outcome.as_ref().ok()).flatten().collect();
-    solved.sort_by(|a, b| b.d_eff.unwrap_or(0.0).total_cmp(&a.d_eff.unwrap_or(0.0)));
+    let solved: Vec<&CutSolution> =
+        ranked(attempts).into_iter().filter(|s| s.status != Status::NoNonlinearity).collect();
     let rows: Vec<Vec<String>> = solved
         .iter()
         .map(|s| {
@@ -232,21 +230,40 @@ pub fn ranking(setup: &Setup, target: Target, attempts: &[Attempt]) -> String {
             ]
         })
         .collect();
-    let header =
-        ["crystal", "process", "theta", "phi", "plane", "d_eff pm/V", "walk-off", "delay fs/mm", "status"];
+    let header = [
+        "crystal",
+        "process",
+        "theta",
+        "phi",
+        "plane",
+        "d_eff pm/V",
+        "pump walk-off",
+        "delay fs/mm",
+        "status",
+    ];
     let mut out = format!("{}\n\n{}", heading(setup, target), grid(&header, &rows));
     out.push('\n');
     for status in [Status::NoPhaseMatching, Status::NoNonlinearity, Status::OutOfRange] {
-        let ids: Vec<&str> = attempts
-            .iter()
-            .filter(|a| a.outcome.as_ref().is_err_and(|(s, _)| *s == status))
-            .map(|a| a.crystal.material.id.as_str())
-            .collect();
+        let fails = |a: &&Attempt| match &a.outcome {
+            Ok(all) => status == Status::NoNonlinearity && all.iter().all(|s| s.status == status),
+            Err((why, _)) => *why == status,
+        };
+        let ids: Vec<&str> = attempts.iter().filter(fails).map(|a| a.crystal.material.id.as_str()).collect();
         if !ids.is_empty() {
-            out.push_str(&format!("{}: {}\n", status.to_string().replace('_', " "), ids.join(", ")));
+            let line = format!("{}: {}\n", status.to_string().replace('_', " "), ids.join(", "));
+            out.push_str(&prose(&line));
         }
     }
     out
+}
+
+/// Solutions of all attempts, largest |d_eff| first; those that symmetry forbids last.
+fn ranked(attempts: &[Attempt]) -> Vec<&CutSolution> {
+    let mut all: Vec<&CutSolution> =
+        attempts.iter().filter_map(|a| a.outcome.as_ref().ok()).flatten().collect();
+    all.sort_by(|a, b| b.d_eff.unwrap_or(0.0).total_cmp(&a.d_eff.unwrap_or(0.0)));
+    all.sort_by_key(|s| s.status == Status::NoNonlinearity);
+    all
 }
 
 /// The line about the other data sets of one material.

@@ -36,8 +36,8 @@ pub fn table(setup: &Setup, actuator: Actuator, turns: &[Turn]) -> Table {
         let to = &turn.crystal.orientation;
         let change = change(&setup.crystals[0], actuator, turn);
         let stage = setup.stage.as_ref();
-        let reading =
-            stage.map(|s| s.reading(if actuator == Actuator::CrossTilt { to.cross_tilt } else { to.tilt }));
+        let reading = stage
+            .and_then(|s| s.reading(if actuator == Actuator::CrossTilt { to.cross_tilt } else { to.tilt }));
         let measure = &turn.measure;
         let wavelengths = [turn.photons.pump, turn.photons.signal, turn.photons.idler];
         let status = if measure.touching { Status::Touching } else { Status::Ok };
@@ -129,8 +129,9 @@ pub fn text(setup: &Setup, target: Target, actuator: Actuator, chosen: bool, tur
 fn cells(setup: &Setup, actuator: Actuator, index: usize, turn: &Turn) -> Vec<String> {
     let change = change(&setup.crystals[0], actuator, turn);
     let to = &turn.crystal.orientation;
-    let reading =
-        setup.stage.map(|s| s.reading(if actuator == Actuator::CrossTilt { to.cross_tilt } else { to.tilt }));
+    let reading = setup
+        .stage
+        .and_then(|s| s.reading(if actuator == Actuator::CrossTilt { to.cross_tilt } else { to.tilt }));
     let measure = &turn.measure;
     vec![
         (index + 1).to_string(),
