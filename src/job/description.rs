@@ -65,7 +65,7 @@ pub struct Pump {
     #[serde(skip_serializing_if = "Option::is_none")]
     pub spectrum: Option<Text>,
     #[serde(skip_serializing_if = "Option::is_none")]
-    pub polarization: Option<toml::Value>,
+    pub polarization: Option<Spanned<toml::Value>>,
 }
 
 /// `[crystal]` or `[[crystal]]`

@@ -631,7 +631,7 @@ fn check_polarization(reader: &Reader<'_>, d: &Description) -> Result<(), SetupE
     let Some(pump) = &d.pump else { return Ok(()) };
     let Some(value) = &pump.get_ref().polarization else { return Ok(()) };
     let is_angle = |v: &toml::Value| v.as_str().is_some_and(|text| text.parse::<Angle>().is_ok());
-    let fine = match value {
+    let fine = match value.get_ref() {
         toml::Value::String(word) => word == "matched",
         toml::Value::Table(table) => {
             table.iter().all(|(k, v)| matches!(k.as_str(), "angle" | "phase") && is_angle(v))
@@ -639,7 +639,8 @@ fn check_polarization(reader: &Reader<'_>, d: &Description) -> Result<(), SetupE
         _ => false,
     };
     let message = format!(
-        "`{value}` is no pump polarization; write polarization = \"matched\" or {{ angle = \"45 deg\", phase = \"0 deg\" }}"
+        "`{}` is no pump polarization; write polarization = \"matched\" or {{ angle = \"45 deg\", phase = \"0 deg\" }}",
+        value.get_ref()
     );
-    if fine { Ok(()) } else { Err(reader.fault(pump, &message)) }
+    if fine { Ok(()) } else { Err(reader.fault(value, &message)) }
 }

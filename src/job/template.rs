@@ -2,7 +2,7 @@
 
 use std::fmt::Write as _;
 
-use super::description::Description;
+use super::description::{Description, Text};
 use super::setup::{GivenCut, Setup, Signals};
 use crate::frame::Reversal;
 use crate::matching::{Interaction, Target};
@@ -26,28 +26,7 @@ pub fn template(setup: &Setup) -> String {
     section(o, "[screen]");
     line(o, "distance", &quoted(&setup.screen.to_string()), "from the crystal, across the pump");
     section(o, "[stage]");
-    match &setup.stage {
-        Some(stage) => {
-            match stage.zero {
-                Some(zero) => line(o, "zero", &quoted(&zero.to_string()), "reading at back-reflection"),
-                None => comment(o, "zero = \"0 deg\"", "reading at back-reflection"),
-            }
-            if let Some(per_turn) = stage.per_turn {
-                line(
-                    o,
-                    "per_turn",
-                    &quoted(&per_turn.to_string()),
-                    "turn of the crystal per turn of the screw",
-                );
-            }
-            line(o, "reversed", &stage.reversed.to_string(), "readings fall when the tilt rises");
-        }
-        None => {
-            comment(o, "zero = \"0 deg\"", "reading at back-reflection");
-            comment(o, "per_turn = \"5 mrad\"", "turn of the crystal per turn of the screw");
-            comment(o, "reversed = false", "readings fall when the tilt rises");
-        }
-    }
+    stage_section(o, setup);
     other_sections(o, setup);
     out
 }
@@ -76,9 +55,23 @@ fn pump_section(o: &mut String, setup: &Setup) {
     }
     let why = "or { angle = \"45 deg\", phase = \"0 deg\" }: E from +x towards +y";
     match pump.polarization {
-        Some(value) => line(o, "polarization", &value.to_string(), why),
+        Some(value) => line(o, "polarization", &value.get_ref().to_string(), why),
         None => comment(o, "polarization = \"matched\"", why),
     }
+}
+
+fn stage_section(o: &mut String, setup: &Setup) {
+    let written = setup.written.stage.clone().unwrap_or_default();
+    let mut key = |name: &str, value: Option<String>, example: &str, why: &str| match value {
+        Some(value) => line(o, name, &value, why),
+        None => comment(o, &format!("{name} = {example}"), why),
+    };
+    let text = |text: &Text| quoted(text.get_ref());
+    key("zero", written.zero.as_ref().map(text), "\"0 deg\"", "reading at back-reflection");
+    let why = "turn of the crystal per turn of the screw";
+    key("per_turn", written.per_turn.as_ref().map(text), "\"5 mrad\"", why);
+    let why = "readings fall when the tilt rises";
+    key("reversed", written.reversed.map(|r| r.to_string()), "false", why);
 }
 
 /// Sections that no command reads yet, as they were written.
