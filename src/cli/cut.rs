@@ -1,7 +1,8 @@
 //! `cut`: which cut do I order?
 
 use clap::{Args as ClapArgs, ValueEnum};
-use twincone::job::setup::{GivenCut, Needs, Setup, resolve};
+use twincone::job::resolve;
+use twincone::job::setup::{GivenCut, Needs, Setup};
 use twincone::matching::{
     ConesError, CutSolution, Design, Find, Interaction, Status, Target, alternatives, design, opinions,
     shortfall,

@@ -1,7 +1,8 @@
 //! `index`: what does each wave see?
 
 use clap::Args as ClapArgs;
-use twincone::job::setup::{Needs, Setup, resolve};
+use twincone::job::resolve;
+use twincone::job::setup::{Needs, Setup};
 use twincone::optics::Crystal;
 use twincone::quantity::Wavelength;
 use twincone::report::index::{IndexRow, out_of_range, rows, spread_line, table, text};

@@ -3,7 +3,8 @@
 use std::path::PathBuf;
 
 use clap::{Args as ClapArgs, Subcommand};
-use twincone::job::setup::{Needs, resolve};
+use twincone::job::resolve;
+use twincone::job::setup::Needs;
 use twincone::job::{Document, template};
 
 use super::failure::Failure;

@@ -4,7 +4,8 @@ use std::io::Read;
 use std::path::PathBuf;
 
 use clap::Args;
-use twincone::job::setup::{Needs, Setup, resolve};
+use twincone::job::resolve;
+use twincone::job::setup::{Needs, Setup};
 use twincone::job::{Document, template};
 use twincone::material::Catalogue;
 

@@ -1,13 +1,17 @@
 //! The description of an experiment: what was typed, kept with its places, becomes a validated [`Setup`] in SI.
 
+mod checks;
 pub mod description;
 mod document;
 mod places;
+mod resolve;
+mod settle;
 pub mod setup;
 mod template;
 
 pub use document::{Document, JobError};
-pub use setup::{Setup, resolve};
+pub use resolve::{resolve, resolve_description};
+pub use setup::Setup;
 pub use template::template;
 
 pub(crate) use places::point_at;

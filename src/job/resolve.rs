@@ -1,0 +1,353 @@
+//! A description becomes a [`Setup`]: every text is read, every default filled in, every limit checked.
+
+use std::str::FromStr;
+use std::sync::Arc;
+
+use toml::Spanned;
+
+use super::checks::check_unused;
+use super::description::{self, Description, Text};
+use super::document::{Document, JobError};
+use super::settle::settle_cut;
+use super::setup::{GivenCut, Needs, Setup, SetupError, Signals, Stage};
+use crate::frame::{Cut, Orientation, Reversal};
+use crate::matching::{Interaction, Process, ProcessError, Target};
+use crate::material::{Catalogue, Material, Reach};
+use crate::optics::Crystal;
+use crate::quantity::{Angle, Length, QuantityError, Temperature, Wavelength};
+
+/// Reads a description in the words of its document.
+pub(super) struct Reader<'a> {
+    pub(super) document: &'a Document,
+}
+
+impl Reader<'_> {
+    pub(super) fn fault<T>(&self, place: &Spanned<T>, message: &str) -> SetupError {
+        self.document.fault(place.span(), message).into()
+    }
+
+    pub(super) fn read<T: FromStr<Err = QuantityError>>(&self, text: &Text) -> Result<T, SetupError> {
+        text.get_ref().parse().map_err(|e: QuantityError| self.fault(text, &e.to_string()))
+    }
+
+    pub(super) fn maybe<T: FromStr<Err = QuantityError>>(
+        &self,
+        text: Option<&Text>,
+    ) -> Result<Option<T>, SetupError> {
+        text.map(|t| self.read(t)).transpose()
+    }
+
+    pub(super) fn positive(&self, text: Option<&Text>, what: &str) -> Result<Option<Length>, SetupError> {
+        let length = self.maybe::<Length>(text)?;
+        match (text, length) {
+            (Some(text), Some(length)) if length.si() <= 0.0 => {
+                Err(self.fault(text, &format!("{what} must be positive, not {}", text.get_ref())))
+            }
+            _ => Ok(length),
+        }
+    }
+
+    pub(super) fn wavelength(&self, text: &Text, what: &str) -> Result<Wavelength, SetupError> {
+        let wavelength: Wavelength = self.read(text)?;
+        if wavelength.si() <= 0.0 {
+            return Err(self.fault(text, &format!("{what} must be positive, not {}", text.get_ref())));
+        }
+        Ok(wavelength)
+    }
+
+    /// A turn of a crystal; beyond 80 deg the face is edge-on to the beam.
+    pub(super) fn turn(&self, text: Option<&Text>, what: &str) -> Result<Angle, SetupError> {
+        let Some(text) = text else { return Ok(Angle::default()) };
+        let angle: Angle = self.read(text)?;
+        if angle.degrees().abs() > 80.0 {
+            let message = format!(
+                "{what} must lie within -80 deg to 80 deg, not {angle}: the beam would miss the face"
+            );
+            return Err(self.fault(text, &message));
+        }
+        Ok(angle)
+    }
+
+    pub(super) fn one_of<T: Copy>(&self, text: &Text, choices: &[(&str, T)]) -> Result<T, SetupError> {
+        let found = choices.iter().find(|(name, _)| name == text.get_ref());
+        found.map(|(_, value)| *value).ok_or_else(|| {
+            let names: Vec<_> = choices.iter().map(|(name, _)| format!("`{name}`")).collect();
+            self.fault(text, &format!("`{}` is none of {}", text.get_ref(), names.join(", ")))
+        })
+    }
+}
+
+/// Turns a document into an experiment; cuts given as targets are solved here.
+///
+/// # Errors
+/// What is missing, impossible or not to be had, with its place.
+pub fn resolve(document: &Document, catalogue: &Catalogue, needs: Needs) -> Result<Setup, SetupError> {
+    let description = document.describe()?;
+    resolve_description(document, &description, catalogue, needs)
+}
+
+/// As [`resolve`], for a description that was read already.
+///
+/// # Errors
+/// As [`resolve`].
+pub fn resolve_description(
+    document: &Document,
+    description: &Description,
+    catalogue: &Catalogue,
+    needs: Needs,
+) -> Result<Setup, SetupError> {
+    let reader = Reader { document };
+    check_unused(&reader, description)?;
+    let pump = pump_wavelength(&reader, description, needs)?;
+    let (signals, interaction, interaction_given) = emission(&reader, description, pump)?;
+    let mut setup = Setup {
+        title: description.title.clone(),
+        pump,
+        crystals: Vec::new(),
+        cut: Vec::new(),
+        interaction,
+        interaction_given,
+        signals,
+        screen: reader
+            .positive(description.screen.as_ref().and_then(|s| s.distance.as_ref()), "the screen distance")?
+            .unwrap_or(Length::metres(1.0)),
+        stage: stage(&reader, description)?,
+        length_given: description.crystal.iter().all(|c| c.get_ref().length.is_some()),
+        written: description.clone(),
+    };
+    if description.crystal.is_empty() {
+        return Err(JobError(
+            "no crystal: pass --material, for example --material bbo, or write a [crystal] in the job file"
+                .into(),
+        )
+        .into());
+    }
+    for (index, written) in description.crystal.iter().enumerate() {
+        let (crystal, cut) = crystal(&reader, description, written, index, catalogue)?;
+        setup.crystals.push(crystal);
+        setup.cut.push(cut);
+    }
+    for index in 0..setup.crystals.len() {
+        settle_cut(&mut setup, index, needs)?;
+    }
+    Ok(setup)
+}
+
+fn pump_wavelength(
+    reader: &Reader<'_>,
+    d: &Description,
+    needs: Needs,
+) -> Result<Option<Wavelength>, SetupError> {
+    match d.pump.as_ref().and_then(|p| p.get_ref().wavelength.as_ref()) {
+        Some(text) => reader.wavelength(text, "the pump wavelength").map(Some),
+        None if needs.pump => {
+            Err(JobError("no pump wavelength: pass --pump, for example --pump 405nm, or write pump.wavelength in the job file".into()).into())
+        }
+        None => Ok(None),
+    }
+}
+
+type Emitted = (Signals, Interaction, bool);
+
+fn emission(reader: &Reader<'_>, d: &Description, pump: Option<Wavelength>) -> Result<Emitted, SetupError> {
+    let Some(emission) = &d.emission else { return Ok((Signals::Degenerate, Interaction::Two, false)) };
+    let emission = emission.get_ref();
+    let interaction = match (&emission.kind, &emission.process) {
+        (Some(kind), Some(_)) => {
+            return Err(reader.fault(kind, "give the type or the process, not both"));
+        }
+        (_, Some(text)) => {
+            let process: Process =
+                text.get_ref().parse().map_err(|e: ProcessError| reader.fault(text, &e.to_string()))?;
+            Interaction::Explicit(process)
+        }
+        (Some(kind), None) => reader.one_of(
+            kind,
+            &[
+                ("II", Interaction::Two),
+                ("I", Interaction::One),
+                ("0", Interaction::Zero),
+                ("2", Interaction::Two),
+                ("1", Interaction::One),
+            ],
+        )?,
+        (None, None) => Interaction::Two,
+    };
+    let given = emission.kind.is_some() || emission.process.is_some();
+    Ok((signals(reader, emission, pump)?, interaction, given))
+}
+
+fn signals(
+    reader: &Reader<'_>,
+    emission: &description::Emission,
+    pump: Option<Wavelength>,
+) -> Result<Signals, SetupError> {
+    if let (Some(idler), false) = (&emission.idler, emission.signal.is_empty()) {
+        return Err(reader.fault(idler, "give the signal or the idler, not both: energy fixes the other"));
+    }
+    let listed = emission.signal.iter().chain(&emission.idler);
+    let mut all = Vec::new();
+    for text in listed {
+        if text.get_ref().trim() == "degenerate" {
+            if emission.signal.len() > 1 {
+                let Some(pump) = pump else { continue };
+                all.push(pump.doubled());
+                continue;
+            }
+            return Ok(Signals::Degenerate);
+        }
+        let wavelength = reader.wavelength(text, "the signal wavelength")?;
+        let Some(pump) = pump else { continue };
+        let Some(partner) = wavelength.partner(pump) else {
+            return Err(reader.fault(
+                text,
+                &format!("{wavelength} is not longer than the pump, {pump}: a photon of a pair has less energy than the pump"),
+            ));
+        };
+        all.push(if emission.idler.is_some() { partner } else { wavelength });
+    }
+    Ok(if all.is_empty() { Signals::Degenerate } else { Signals::At(all) })
+}
+
+fn stage(reader: &Reader<'_>, d: &Description) -> Result<Option<Stage>, SetupError> {
+    let Some(stage) = &d.stage else { return Ok(None) };
+    let per_turn = reader.maybe::<Angle>(stage.per_turn.as_ref())?;
+    if let (Some(text), Some(angle)) = (&stage.per_turn, per_turn)
+        && angle.si() <= 0.0
+    {
+        return Err(reader.fault(text, "the turn per screw turn must be positive; write reversed = true for a screw that counts backwards"));
+    }
+    Ok(Some(Stage {
+        zero: reader.maybe(stage.zero.as_ref())?,
+        per_turn,
+        reversed: stage.reversed.unwrap_or(false),
+    }))
+}
+
+fn crystal(
+    reader: &Reader<'_>,
+    d: &Description,
+    written: &Spanned<description::Crystal>,
+    index: usize,
+    catalogue: &Catalogue,
+) -> Result<(Crystal, GivenCut), SetupError> {
+    let c = written.get_ref();
+    let (material, dataset) = material(reader, c, catalogue)?;
+    let mut crystal = Crystal::new(material, dataset.as_deref()).map_err(|e| {
+        c.dataset
+            .as_ref()
+            .or(c.material.as_ref())
+            .map_or(e.clone().into(), |t| reader.fault(t, &e.to_string()))
+    })?;
+    crystal.name = c.name.as_ref().map_or((index + 1).to_string(), |n| n.get_ref().clone());
+    if let Some(temperature) = reader.maybe::<Temperature>(c.temperature.as_ref())? {
+        if temperature.degc() < -273.15 {
+            let text = c.temperature.as_ref().unwrap_or_else(|| unreachable!("it was read"));
+            return Err(reader.fault(text, "a temperature cannot lie below absolute zero"));
+        }
+        crystal.temperature = temperature;
+    }
+    if let Some(reference) = reader.maybe(c.reference_temperature.as_ref())? {
+        crystal.reference_temperature = reference;
+    }
+    crystal.length =
+        reader.positive(c.length.as_ref(), "the crystal length")?.unwrap_or(Length::metres(1e-3));
+    crystal.poling = reader.positive(c.poling.as_ref(), "the poling period")?;
+    reader
+        .positive(c.gap_before.as_ref().filter(|g| !g.get_ref().trim_start().starts_with('0')), "the gap")?;
+    if c.extrapolate == Some(true) {
+        crystal.reach = Reach::Extrapolate;
+    }
+    let mount = d.mount.as_ref();
+    crystal.orientation = Orientation {
+        tilt: reader.turn(c.tilt.as_ref(), "the tilt")?,
+        cross_tilt: reader.turn(c.cross_tilt.as_ref(), "the cross tilt")?,
+        roll: reader.maybe(c.roll.as_ref())?.unwrap_or_default(),
+        about_x: reader.turn(mount.and_then(|m| m.about_x.as_ref()), "the mount's turn")?,
+        about_y: reader.turn(mount.and_then(|m| m.about_y.as_ref()), "the mount's turn")?,
+    };
+    if let Some(text) = &c.reversed {
+        crystal.reversal = reader.one_of(
+            text,
+            &[
+                ("about-beam", Reversal::AboutBeam),
+                ("about-vertical", Reversal::AboutVertical),
+                ("about-horizontal", Reversal::AboutHorizontal),
+            ],
+        )?;
+    }
+    let given = given_cut(reader, c, &mut crystal)?;
+    Ok((crystal, given))
+}
+
+/// `bbo`, `bbo:kato-1986`, or `./mine.toml`.
+fn material(
+    reader: &Reader<'_>,
+    c: &description::Crystal,
+    catalogue: &Catalogue,
+) -> Result<(Arc<Material>, Option<String>), SetupError> {
+    let Some(text) = &c.material else {
+        return Err(JobError("no material: pass --material, for example --material bbo, or write crystal.material in the job file".into()).into());
+    };
+    let (id, set) = match text.get_ref().split_once(':') {
+        Some((id, set)) => (id, Some(set.to_string())),
+        None => (text.get_ref().as_str(), None),
+    };
+    let material = catalogue.get(id).map_err(|e| reader.fault(text, &e.to_string()))?;
+    let dataset = match (&c.dataset, set) {
+        (Some(_), Some(_)) => {
+            return Err(
+                reader.fault(text, "the data set is named twice; write it in `dataset` or after the colon")
+            );
+        }
+        (Some(set), None) => Some(set.get_ref().clone()),
+        (None, set) => set,
+    };
+    Ok((Arc::new(material), dataset))
+}
+
+fn given_cut(
+    reader: &Reader<'_>,
+    c: &description::Crystal,
+    crystal: &mut Crystal,
+) -> Result<GivenCut, SetupError> {
+    let Some(written) = &c.cut else { return Ok(GivenCut::default()) };
+    let cut = written.get_ref();
+    let theta = reader.maybe::<Angle>(cut.theta.as_ref())?;
+    if let (Some(text), Some(theta)) = (&cut.theta, theta)
+        && !(0.0..=180.0).contains(&theta.degrees())
+    {
+        return Err(reader.fault(text, &format!("theta must lie within 0 deg to 180 deg, not {theta}")));
+    }
+    let angle = |text: &Text, most: f64| -> Result<f64, SetupError> {
+        let angle: Angle = reader.read(text)?;
+        let allowed = angle.degrees() > 0.0 && angle.degrees() < most;
+        if allowed {
+            Ok(angle.si())
+        } else {
+            Err(reader.fault(text, &format!("the angle must lie between 0 deg and {most} deg, not {angle}")))
+        }
+    };
+    let mut targets = Vec::new();
+    if let Some(text) = &cut.crossing {
+        targets.push(Target::Crossing(angle(text, 60.0)?));
+    }
+    if let Some(text) = &cut.half_angle {
+        targets.push(Target::HalfAngle(angle(text, 60.0)?));
+    }
+    if let Some(text) = &cut.separation {
+        targets.push(Target::Separation(angle(text, 120.0)?));
+    }
+    if cut.collinear == Some(true) {
+        targets.push(Target::Collinear);
+    }
+    if cut.beamlike == Some(true) {
+        targets.push(Target::Beamlike);
+    }
+    if targets.len() + usize::from(theta.is_some()) > 1 {
+        return Err(reader.fault(written, "give theta or one target for the cut, not both"));
+    }
+    let phi = reader.maybe::<Angle>(cut.phi.as_ref())?;
+    crystal.cut = Cut { theta: theta.unwrap_or_default(), phi: phi.unwrap_or_default() };
+    Ok(GivenCut { theta: theta.is_some(), phi: phi.is_some(), target: targets.first().copied() })
+}
