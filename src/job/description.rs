@@ -100,6 +100,8 @@ pub struct Crystal {
     #[serde(skip_serializing_if = "Option::is_none")]
     pub gap_before: Option<Text>,
     #[serde(skip_serializing_if = "Option::is_none")]
+    pub thermal_expansion: Option<bool>,
+    #[serde(skip_serializing_if = "Option::is_none")]
     pub extrapolate: Option<bool>,
 }
 

@@ -255,6 +255,7 @@ fn crystal(
     crystal.poling = reader.positive(c.poling.as_ref(), "the poling period")?;
     reader
         .positive(c.gap_before.as_ref().filter(|g| !g.get_ref().trim_start().starts_with('0')), "the gap")?;
+    crystal.expands = c.thermal_expansion.unwrap_or(true);
     if c.extrapolate == Some(true) {
         crystal.reach = Reach::Extrapolate;
     }

@@ -129,6 +129,9 @@ fn crystal_section(o: &mut String, setup: &Setup, index: usize, crystal: &Crysta
         Reversal::AboutVertical => line(o, "reversed", "\"about-vertical\"", ""),
         Reversal::AboutHorizontal => line(o, "reversed", "\"about-horizontal\"", ""),
     }
+    if !crystal.expands {
+        line(o, "thermal_expansion", "false", "length and poling period do not grow with temperature");
+    }
     if crystal.reach == Reach::Extrapolate {
         line(o, "extrapolate", "true", "outside the data set's range");
     }

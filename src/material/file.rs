@@ -83,8 +83,21 @@ pub struct Nonlinearity {
     pub frame: Frame,
     pub unique_axis: Option<String>,
     pub convention: Option<String>,
+    pub other_convention: Option<OtherConvention>,
     pub known: Known,
     pub source: String,
+}
+
+/// Another choice of crystal axes in use, in which the same cut has another phi.
+#[derive(Debug, Clone, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub struct OtherConvention {
+    /// phi there minus phi here.
+    pub phi_shift: Spanned<String>,
+    /// |d_eff| repeats after this turn.
+    pub phi_period: Spanned<String>,
+    /// How to tell it.
+    pub text: String,
 }
 
 /// Along which of the tensor's axes each dielectric axis lies: `"x"`, `"-y"`, ...

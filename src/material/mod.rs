@@ -17,7 +17,7 @@ pub use file::{Known, Optic, Relative};
 use nalgebra::{Matrix3, Vector3};
 use toml::Spanned;
 
-use crate::quantity::{Temperature, Wavelength};
+use crate::quantity::{Angle, Temperature, Wavelength};
 use file::{ExpansionAxis, File};
 use tensor::Tensor;
 
@@ -165,6 +165,16 @@ impl Material {
         (1.0 + along_at(temperature)) / (1.0 + along_at(reference))
     }
 
+    /// What `phi` is called in the other choice of crystal axes in use: the smallest equivalent angle, and how to tell
+    /// that choice. `None` where there is only one.
+    #[must_use]
+    pub fn other_phi(&self, phi: Angle) -> Option<(Angle, &str)> {
+        let other = self.file.nonlinearity.as_ref()?.get_ref().other_convention.as_ref()?;
+        let degrees = |text: &Spanned<String>| parse::<Angle>(text).ok().map(Angle::degrees);
+        let there = (phi.degrees() + degrees(&other.phi_shift)?).rem_euclid(degrees(&other.phi_period)?);
+        Some((Angle::from_degrees(crate::quantity::tidy(there)), other.text.as_str()))
+    }
+
     /// Looks at every data set over its whole range: indices that exist and are physical, axes in order, check values met.
     ///
     /// # Errors
@@ -276,6 +286,13 @@ fn per_axis<T>(optic: Optic, [o, e, x, y, z]: [&Option<T>; 5]) -> [Option<&T>; 3
 fn build_tensor(file: &File) -> Result<Option<Tensor>, Fault> {
     let Some(spanned) = &file.nonlinearity else { return Ok(None) };
     let given = spanned.get_ref();
+    if let Some(other) = &given.other_convention {
+        parse::<Angle>(&other.phi_shift)?;
+        let period: Angle = parse(&other.phi_period)?;
+        if period.si() <= 0.0 {
+            return Err(Fault::at(&other.phi_period, "the period must be positive, such as 60 deg"));
+        }
+    }
     let mut frame = Matrix3::<f64>::zeros();
     for (column, name) in [&given.frame.x, &given.frame.y, &given.frame.z].into_iter().enumerate() {
         let (sign, bare) = name.strip_prefix('-').map_or((1.0, name.as_str()), |bare| (-1.0, bare));

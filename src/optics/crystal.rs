@@ -31,6 +31,8 @@ pub struct Crystal {
     pub temperature: Temperature,
     /// Temperature at which `length` and `poling` are stated.
     pub reference_temperature: Temperature,
+    /// Whether length and poling period grow with temperature where the material says how.
+    pub expands: bool,
     /// Whether the data set may be used outside its range.
     pub reach: Reach,
 }
@@ -66,6 +68,7 @@ impl Crystal {
             poling: None,
             temperature,
             reference_temperature: Temperature::celsius(25.0),
+            expands: true,
             reach: Reach::Within,
         })
     }
@@ -144,6 +147,9 @@ impl Crystal {
     /// Ratio of a length along the normal at the crystal's temperature to that at `reference_temperature`.
     #[must_use]
     pub fn expansion(&self) -> f64 {
+        if !self.expands {
+            return 1.0;
+        }
         let [_, _, Dielectric(w)] = self.cut.axes();
         self.material.expansion(w, self.reference_temperature, self.temperature)
     }

@@ -206,6 +206,9 @@ fn solution_text(s: &CutSolution, find: Find) -> String {
     {
         detail("phi convention", convention.clone());
     }
+    if let Some((phi, text)) = crystal.material.other_phi(crystal.cut.phi) {
+        detail("", format!("{text}: there this cut is phi {} deg", rounded(phi.degrees(), 3)));
+    }
     out
 }
 
