@@ -250,6 +250,60 @@ mod tests {
             // ooe: d31 sin t;  eeo: 0 with Kleinman symmetry
             assert_abs_diff_eq!(liio3.contract(e, o, o).abs(), 4.1 * st, epsilon = 1e-12);
             assert_abs_diff_eq!(liio3.contract(e, e, o), 0.0, epsilon = 1e-12);
+            let cdse = tensor("6mm", &[("d31", -18.0), ("d33", 36.0)], true).expect("6mm");
+            // ooe: d31 sin t;  eeo: 0
+            assert_abs_diff_eq!(cdse.contract(e, o, o).abs(), 18.0 * st, epsilon = 1e-12);
+            assert_abs_diff_eq!(cdse.contract(e, e, o), 0.0, epsilon = 1e-12);
+            let gase = tensor("-62m", &[("d22", 54.0)], true).expect("-62m");
+            // ooe: d22 cos t sin 3p;  eeo: d22 cos^2 t cos 3p
+            assert_abs_diff_eq!(
+                gase.contract(e, o, o).abs(),
+                (54.0 * ct * (3.0 * p).sin()).abs(),
+                epsilon = 1e-12
+            );
+            assert_abs_diff_eq!(
+                gase.contract(e, e, o).abs(),
+                (54.0 * ct * ct * (3.0 * p).cos()).abs(),
+                epsilon = 1e-12
+            );
+            let quartz = tensor("32", &[("d11", 0.3)], true).expect("32");
+            // ooe: d11 cos t cos 3p;  eeo: d11 cos^2 t sin 3p
+            assert_abs_diff_eq!(
+                quartz.contract(e, o, o).abs(),
+                (0.3 * ct * (3.0 * p).cos()).abs(),
+                epsilon = 1e-12
+            );
+            assert_abs_diff_eq!(
+                quartz.contract(e, e, o).abs(),
+                (0.3 * ct * ct * (3.0 * p).sin()).abs(),
+                epsilon = 1e-12
+            );
+        }
+    }
+
+    /// Principal planes of mm2 with Z polar, without walk-off: V. G. Dmitriev, G. G. Gurzadyan, D. N. Nikogosyan,
+    /// Handbook of Nonlinear Optical Crystals (Springer, 1999), table of d_eff, from memory.
+    #[test]
+    fn closed_forms_in_the_principal_planes_of_mm2() {
+        let elements = [("d15", 1.9), ("d24", 3.7), ("d31", 2.2), ("d32", 3.7), ("d33", 14.6)];
+        let ktp = tensor("mm2", &elements, false).expect("mm2");
+        let [x, y, z] = [Vector3::x(), Vector3::y(), Vector3::z()].map(Dielectric);
+        for angle in [12.0f64, 45.0, 71.0] {
+            let (s, c) = angle.to_radians().sin_cos();
+            // XY plane, normal (cos p, sin p, 0): in-plane field (-sin p, cos p, 0); pump and signal in plane, idler
+            // along Z: d15 sin^2 p + d24 cos^2 p
+            let in_plane = Dielectric(Vector3::new(-s, c, 0.0));
+            assert_abs_diff_eq!(
+                ktp.contract(in_plane, in_plane, z),
+                1.9 * s * s + 3.7 * c * c,
+                epsilon = 1e-12
+            );
+            // XZ plane, normal (sin t, 0, cos t): in-plane field (-cos t, 0, sin t); pump and signal along Y: d24 sin t
+            let in_plane = Dielectric(Vector3::new(-c, 0.0, s));
+            assert_abs_diff_eq!(ktp.contract(y, y, in_plane), 3.7 * s, epsilon = 1e-12);
+            // YZ plane: pump and signal along X: d15 sin t
+            let in_plane = Dielectric(Vector3::new(0.0, -c, s));
+            assert_abs_diff_eq!(ktp.contract(x, x, in_plane), 1.9 * s, epsilon = 1e-12);
         }
     }
 
