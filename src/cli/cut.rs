@@ -1,7 +1,6 @@
 //! `cut`: which cut do I order?
 
 use clap::{Args as ClapArgs, ValueEnum};
-use twincone::job::resolve;
 use twincone::job::setup::{GivenCut, Needs, Setup};
 use twincone::matching::{
     ConesError, CutSolution, Design, Find, Interaction, Status, Target, alternatives, design, opinions,
@@ -14,7 +13,7 @@ use twincone::report::cut::{Attempt, no_solution, ranking, spread_line, table, t
 use twincone::report::{Answer, Conventions, resolved_job};
 
 use super::failure::Failure;
-use super::options::{ExperimentArgs, add_file, catalogue};
+use super::options::ExperimentArgs;
 use super::output::{Outcome, OutputArgs};
 
 /// Options of `cut`.
@@ -114,7 +113,7 @@ impl Sought {
 /// # Errors
 /// What is missing, wrong or outside a data set's range.
 pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
-    let setups = setups(args, output)?;
+    let setups = args.experiment.setups(output, Needs { cut: false, pump: true }, args.all_materials)?;
     let several = args.all_materials || setups.len() > 1;
     let mut attempts = Vec::new();
     let mut spreads = Vec::new();
@@ -176,40 +175,6 @@ fn describe(setups: &[Setup], attempts: &[Attempt], several: bool) -> Convention
     named.lines = vec![pointer.into()];
     named.lines.extend(first.lines.drain(first.datasets.len()..));
     named
-}
-
-/// One setup per material.
-fn setups(args: &Args, output: &OutputArgs) -> Result<Vec<Setup>, Failure> {
-    let experiment = &args.experiment;
-    let needs = Needs { cut: false, pump: true };
-    let document = experiment.document()?;
-    let mut catalogue = catalogue(output, &document)?;
-    let listed: Vec<String> = if args.all_materials {
-        if !experiment.materials().is_empty() {
-            return Err(Failure::usage("--material and --all-materials exclude each other; leave one out"));
-        }
-        catalogue.ids().map(String::from).collect()
-    } else {
-        experiment.materials().to_vec()
-    };
-    if listed.len() < 2 && !args.all_materials {
-        let setup = resolve(&document, &catalogue, needs)?;
-        if setup.crystals.len() > 1 {
-            return Err(Failure::usage(
-                "the job has several crystals; `cut` looks at one: name it with --material",
-            ));
-        }
-        experiment.write_job(&setup)?;
-        return Ok(vec![setup]);
-    }
-    let mut all = Vec::new();
-    for material in listed {
-        add_file(&mut catalogue, &material)?;
-        let mut document = document.clone();
-        document.set("--material", "crystal.material", &material);
-        all.push(resolve(&document, &catalogue, needs)?);
-    }
-    Ok(all)
 }
 
 fn question(args: &Args, setup: &Setup) -> Result<Design, Failure> {

@@ -1,7 +1,6 @@
 //! `index`: what does each wave see?
 
 use clap::Args as ClapArgs;
-use twincone::job::resolve;
 use twincone::job::setup::{Needs, Setup};
 use twincone::optics::Crystal;
 use twincone::quantity::Wavelength;
@@ -9,7 +8,7 @@ use twincone::report::index::{IndexRow, out_of_range, rows, spread_line, table, 
 use twincone::report::{Answer, Conventions, resolved_job};
 
 use super::failure::Failure;
-use super::options::{ExperimentArgs, add_file, catalogue};
+use super::options::ExperimentArgs;
 use super::output::{Outcome, OutputArgs};
 
 /// Options of `index`; with `--theta` the waves along the face normal, else along the principal axes.
@@ -39,7 +38,8 @@ pub struct Args {
 /// # Errors
 /// What is missing, wrong or outside a data set's range.
 pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
-    let setups = setups(args, output)?;
+    let pump = args.wavelength.is_empty() && args.from.is_none();
+    let setups = args.experiment.setups(output, Needs { cut: false, pump }, false)?;
     let mut all: Vec<IndexRow> = Vec::new();
     let mut conventions = Conventions::of(&setups[0]);
     let mut spreads = Vec::new();
@@ -81,26 +81,6 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
 fn others(crystal: &Crystal) -> impl Iterator<Item = Crystal> {
     let count = crystal.material.sets().len();
     (0..count).filter(|index| *index != crystal.dataset).map(|index| crystal.with_dataset(index))
-}
-
-fn setups(args: &Args, output: &OutputArgs) -> Result<Vec<Setup>, Failure> {
-    let needs = Needs { cut: false, pump: args.wavelength.is_empty() && args.from.is_none() };
-    let document = args.experiment.document()?;
-    let mut catalogue = catalogue(output, &document)?;
-    let listed = args.experiment.materials();
-    if listed.len() < 2 {
-        let setup = resolve(&document, &catalogue, needs)?;
-        args.experiment.write_job(&setup)?;
-        return Ok(vec![setup]);
-    }
-    let mut all = Vec::new();
-    for material in listed {
-        add_file(&mut catalogue, material)?;
-        let mut document = document.clone();
-        document.set("--material", "crystal.material", material);
-        all.push(resolve(&document, &catalogue, needs)?);
-    }
-    Ok(all)
 }
 
 fn wavelengths(args: &Args, setup: &Setup) -> Result<Vec<Wavelength>, Failure> {

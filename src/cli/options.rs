@@ -185,9 +185,36 @@ impl ExperimentArgs {
         self.theta.is_some()
     }
 
-    /// The materials named by --material, in order; empty where the job names its own.
-    pub fn materials(&self) -> &[String] {
-        &self.material
+    /// One experiment per material: those named by --material, or all there are, or the job's own.
+    ///
+    /// # Errors
+    /// What is missing or wrong in files and options; a job with several crystals, of which one is to be named.
+    pub fn setups(&self, output: &OutputArgs, needs: Needs, all: bool) -> Result<Vec<Setup>, Failure> {
+        let document = self.document()?;
+        let mut catalogue = catalogue(output, &document)?;
+        if all && !self.material.is_empty() {
+            return Err(Failure::usage("--material and --all-materials exclude each other; leave one out"));
+        }
+        let listed: Vec<String> =
+            if all { catalogue.ids().map(String::from).collect() } else { self.material.clone() };
+        if listed.len() < 2 {
+            let setup = resolve(&document, &catalogue, needs)?;
+            if setup.crystals.len() > 1 {
+                return Err(Failure::usage(
+                    "the job has several crystals; this command looks at one: describe that one alone",
+                ));
+            }
+            self.write_job(&setup)?;
+            return Ok(vec![setup]);
+        }
+        let mut setups = Vec::with_capacity(listed.len());
+        for material in listed {
+            add_file(&mut catalogue, &material)?;
+            let mut document = document.clone();
+            document.set("--material", "crystal.material", &material);
+            setups.push(resolve(&document, &catalogue, needs)?);
+        }
+        Ok(setups)
     }
 
     /// The experiment.

@@ -306,68 +306,99 @@ fn crossing_rows(crystals: &[Crystal], first: &History, second: &History, rows: 
     if !opposed(first, second) {
         return;
     }
-    let photons = first.emission.photons;
-    let dark = first.dark || second.dark;
-    let row = |status: Status| CrossingRow {
+    let Some(meetings) = meetings(first, second) else {
+        let faults = [&first.rings, &second.rings].into_iter().find_map(|r| r.as_ref().err());
+        rows.push(blank_row(first, second, faults.map_or(Status::NoPhaseMatching, |fault| fault.status)));
+        return;
+    };
+    if meetings.points.is_empty() {
+        rows.push(missing_row(crystals, first, second, meetings.nearest));
+        return;
+    }
+    let from = rows.len();
+    let mut number = rows.iter().filter_map(|r| r.pair).max().unwrap_or(0);
+    for (crossing, status) in meetings.points {
+        if first.emission.photons.degenerate() && is_twin_of_earlier(&rows[from..], &crossing) {
+            continue;
+        }
+        number += 1;
+        let status = match status {
+            Status::Ok if crossing.partner.is_none() => Status::TotalReflection,
+            Status::Ok if first.dark || second.dark => Status::NoNonlinearity,
+            other => other,
+        };
+        let blank = blank_row(first, second, status);
+        rows.push(CrossingRow { pair: Some(number), crossing: Some(crossing), ..blank });
+    }
+}
+
+/// Where the rings of two histories meet, in the order of the table; and how near they come where they do not.
+struct Meetings {
+    points: Vec<(Crossing, Status)>,
+    nearest: Option<Contact>,
+}
+
+/// `None` where a ring is missing.
+fn meetings(first: &History, second: &History) -> Option<Meetings> {
+    let (ones, twos) = (first.rings.as_ref().ok()?, second.rings.as_ref().ok()?);
+    let (m1, m2) = (first.mismatch.as_ref()?, second.mismatch.as_ref()?);
+    let mut all = Meetings { points: Vec::new(), nearest: None };
+    for one in ones {
+        for two in twos {
+            let (one, two) = (&one.curve, &two.curve);
+            match meet(Traced { mismatch: m1, curve: one }, Traced { mismatch: m2, curve: two }) {
+                Some(Meeting::Cross(points)) => {
+                    all.points.extend(points.into_iter().map(|c| (c, Status::Ok)))
+                }
+                Some(Meeting::Touch(point)) => all.points.push((point, Status::Touching)),
+                Some(Meeting::Coincide(point)) => all.points.push((point, Status::Coincident)),
+                Some(Meeting::Miss(contact)) if all.nearest.is_none_or(|n| contact.gap < n.gap) => {
+                    all.nearest = Some(contact);
+                }
+                Some(Meeting::Miss(_)) | None => {}
+            }
+        }
+    }
+    order(&mut all.points);
+    Some(all)
+}
+
+fn blank_row(first: &History, second: &History, status: Status) -> CrossingRow {
+    CrossingRow {
         pair: None,
         first: first.name,
         second: second.name,
-        a_wavelength: photons.signal,
-        b_wavelength: photons.idler,
+        a_wavelength: first.emission.photons.signal,
+        b_wavelength: first.emission.photons.idler,
         crossing: None,
         contact: None,
         tilt_to_touch: None,
         turn: None,
         extrapolated: first.extrapolated || second.extrapolated,
         status,
-    };
-    let (Ok(ones), Ok(twos), Some(m1), Some(m2)) =
-        (&first.rings, &second.rings, &first.mismatch, &second.mismatch)
-    else {
-        let status =
-            [&first.rings, &second.rings].into_iter().find_map(|r| r.as_ref().err()).map(|f| f.status);
-        rows.push(row(status.unwrap_or(Status::NoPhaseMatching)));
-        return;
-    };
-    let mut nearest: Option<Contact> = None;
-    let mut meetings: Vec<(Crossing, Status)> = Vec::new();
-    for one in ones {
-        for two in twos {
-            match meet(Traced { mismatch: m1, curve: &one.curve }, Traced { mismatch: m2, curve: &two.curve })
-            {
-                Some(Meeting::Cross(all)) => meetings.extend(all.into_iter().map(|c| (c, Status::Ok))),
-                Some(Meeting::Touch(point)) => meetings.push((point, Status::Touching)),
-                Some(Meeting::Coincide(point)) => meetings.push((point, Status::Coincident)),
-                Some(Meeting::Miss(contact)) if nearest.is_none_or(|n| contact.gap < n.gap) => {
-                    nearest = Some(contact);
-                }
-                Some(Meeting::Miss(_)) | None => {}
-            }
-        }
     }
-    if meetings.is_empty() {
-        let turn = tuning_turn(&crystals[first.name.crystal], photons, &first.triplet, first.roles);
-        let touch = (first.name.crystal == second.name.crystal && nearest.is_some())
-            .then(|| nearest_touch(&crystals[first.name.crystal], photons, first.triplet, first.roles, turn))
-            .flatten();
-        let status = if nearest.is_some() { Status::Apart } else { Status::NotConverged };
-        rows.push(CrossingRow { contact: nearest, tilt_to_touch: touch, turn: Some(turn), ..row(status) });
-        return;
-    }
-    let from = rows.len();
-    let mut number = rows.iter().filter_map(|r| r.pair).max().unwrap_or(0);
-    order(&mut meetings);
-    for (crossing, status) in meetings {
-        if photons.degenerate() && is_twin_of_earlier(&rows[from..], &crossing) {
-            continue;
-        }
-        number += 1;
-        let status = match status {
-            Status::Ok if crossing.partner.is_none() => Status::TotalReflection,
-            Status::Ok if dark => Status::NoNonlinearity,
-            other => other,
-        };
-        rows.push(CrossingRow { pair: Some(number), crossing: Some(crossing), ..row(status) });
+}
+
+/// A row for rings that miss each other: by how much, and the turn that makes them touch.
+fn missing_row(
+    crystals: &[Crystal],
+    first: &History,
+    second: &History,
+    nearest: Option<Contact>,
+) -> CrossingRow {
+    let crystal = &crystals[first.name.crystal];
+    let photons = first.emission.photons;
+    let turn = tuning_turn(crystal, photons, &first.triplet, first.roles);
+    let one_crystal = first.name.crystal == second.name.crystal;
+    let touch = (one_crystal && nearest.is_some())
+        .then(|| nearest_touch(crystal, photons, first.triplet, first.roles, turn))
+        .flatten();
+    let status = if nearest.is_some() { Status::Apart } else { Status::NotConverged };
+    CrossingRow {
+        contact: nearest,
+        tilt_to_touch: touch,
+        turn: Some(turn),
+        ..blank_row(first, second, status)
     }
 }
 
