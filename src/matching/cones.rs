@@ -1,7 +1,7 @@
 //! Where the light goes: all rings of an experiment and all their crossings.
 
 use super::Status;
-use super::crossing::{Contact, Crossing, GapKind, Meeting, Traced, meet};
+use super::crossing::{Contact, Crossing, GapKind, Meeting, Miss, Traced, meet, miss};
 use super::emission::{Emission, Photons, Triplet};
 use super::interaction::{Interaction, Process, Roles};
 use super::mismatch::Mismatch;
@@ -346,16 +346,21 @@ fn meetings(first: &History, second: &History) -> Option<Meetings> {
     for one in ones {
         for two in twos {
             let (one, two) = (&one.curve, &two.curve);
-            match meet(Traced { mismatch: m1, curve: one }, Traced { mismatch: m2, curve: two }) {
+            let (first, second) = (Traced { mismatch: m1, curve: one }, Traced { mismatch: m2, curve: two });
+            match meet(first, m2) {
                 Some(Meeting::Cross(points)) => {
                     all.points.extend(points.into_iter().map(|c| (c, Status::Ok)))
                 }
                 Some(Meeting::Touch(point)) => all.points.push((point, Status::Touching)),
                 Some(Meeting::Coincide(point)) => all.points.push((point, Status::Coincident)),
-                Some(Meeting::Miss(contact)) if all.nearest.is_none_or(|n| contact.gap < n.gap) => {
-                    all.nearest = Some(contact);
-                }
-                Some(Meeting::Miss(_)) | None => {}
+                Some(Meeting::Miss) => match miss(first, second) {
+                    Some(Miss::Touch(point)) => all.points.push((point, Status::Touching)),
+                    Some(Miss::By(contact)) if all.nearest.is_none_or(|n| contact.gap < n.gap) => {
+                        all.nearest = Some(contact);
+                    }
+                    Some(Miss::By(_)) | None => {}
+                },
+                None => {}
             }
         }
     }

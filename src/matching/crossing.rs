@@ -6,7 +6,7 @@ use std::f64::consts::{FRAC_PI_2, TAU};
 use nalgebra::{Matrix2, Vector2, Vector3};
 
 use super::mismatch::Mismatch;
-use super::ring::{Curve, SAMPLES, azimuth};
+use super::ring::{Curve, SAMPLES};
 use super::root::bracketed;
 use crate::frame::{Direction, Lab};
 
@@ -51,8 +51,8 @@ pub enum Meeting {
     Touch(Crossing),
     /// They lie on each other; the crossing is the point straight up from the axis.
     Coincide(Crossing),
-    /// They miss.
-    Miss(Contact),
+    /// They miss; [`contact`] says by how much.
+    Miss,
 }
 
 /// One ring with the mismatch it was traced with.
@@ -88,47 +88,51 @@ impl Along {
     }
 }
 
-/// Finds how two rings of a photon of one wavelength meet; `None` where a ring cannot be followed.
+/// Finds how a ring meets that of another process, for a photon of one wavelength; `None` where it cannot be followed.
 #[must_use]
-pub fn meet(first: Traced<'_>, second: Traced<'_>) -> Option<Meeting> {
-    let samples = sample(first, second.mismatch)?;
+pub fn meet(first: Traced<'_>, other: &Mismatch) -> Option<Meeting> {
+    let samples = sample(first, other)?;
+    let samples = &samples[..=first.curve.count()];
     if samples.iter().all(|s| s.off().abs() < CONTACT) {
-        return crossing(first, second, FRAC_PI_2).map(Meeting::Coincide);
+        return crossing(first, other, FRAC_PI_2).map(Meeting::Coincide);
     }
-    let mut azimuths = Vec::with_capacity(4);
-    let mut touch = None;
-    for j in 0..SAMPLES {
-        between(first, second, j, &samples, &mut azimuths, &mut touch);
+    let mut found = Found { azimuths: Vec::with_capacity(4), touch: None };
+    for (j, pair) in samples.windows(2).enumerate() {
+        found.between(first, other, j, [pair[0], pair[1]]);
     }
-    touch = touch.or_else(|| grazing(first, second, &mut azimuths));
+    let touch = found.touch.or_else(|| found.grazing(first, other));
     let crossings: Vec<Crossing> =
-        azimuths.into_iter().filter_map(|phi| crossing(first, second, phi)).collect();
+        found.azimuths.into_iter().filter_map(|phi| crossing(first, other, phi)).collect();
     match (crossings.is_empty(), touch) {
         (false, _) => Some(Meeting::Cross(crossings)),
-        (true, Some(phi)) => crossing(first, second, phi).map(Meeting::Touch),
-        (true, None) => {
-            let (contact, phi) = contact(first, second, &samples)?;
-            match contact.gap < CONTACT {
-                true => crossing(first, second, phi).map(Meeting::Touch),
-                false => Some(Meeting::Miss(contact)),
-            }
-        }
+        (true, Some(phi)) => crossing(first, other, phi).map(Meeting::Touch),
+        (true, None) => Some(Meeting::Miss),
     }
 }
 
-/// Takes two crossings between which the rings part by less than [`CONTACT`] out of the list: they are one contact.
-fn grazing(first: Traced<'_>, second: Traced<'_>, azimuths: &mut Vec<f64>) -> Option<f64> {
-    let count = azimuths.len();
-    for i in 0..count {
-        let (a, b) = (azimuths[i], azimuths[(i + 1) % count]);
-        let middle = if b >= a { 0.5 * (a + b) } else { 0.5 * (a + b + TAU) };
-        let near = (b - a).rem_euclid(TAU) < TAU / SAMPLES as f64;
-        if near && along(first, second.mismatch, middle)?.off().abs() < CONTACT {
-            azimuths.retain(|phi| *phi != a && *phi != b);
-            return Some(middle);
-        }
-    }
-    None
+/// How two rings that do not cross lie to each other: they touch after all, or miss.
+#[must_use]
+pub fn miss(first: Traced<'_>, second: Traced<'_>) -> Option<Miss> {
+    let (contact, phi) = contact(first, second)?;
+    Some(match contact.gap < CONTACT {
+        true => Miss::Touch(crossing(first, second.mismatch, phi)?),
+        false => Miss::By(contact),
+    })
+}
+
+/// Two rings that do not cross.
+#[derive(Debug, Clone, Copy)]
+pub enum Miss {
+    /// Closer than 1e-6 deg.
+    Touch(Crossing),
+    /// By this much.
+    By(Contact),
+}
+
+/// Azimuths at which the other ring is met.
+struct Found {
+    azimuths: Vec<f64>,
+    touch: Option<f64>,
 }
 
 /// Least and largest Delta_k of the other process along a ring, rad/m: a tangency from outside is a zero of the first,
@@ -136,13 +140,16 @@ fn grazing(first: Traced<'_>, second: Traced<'_>, azimuths: &mut Vec<f64>) -> Op
 #[must_use]
 pub fn reach(first: Traced<'_>, other: &Mismatch) -> Option<[f64; 2]> {
     let samples = sample(first, other)?;
+    let samples = &samples[..=first.curve.count()];
     let mut reach = [f64::INFINITY, f64::NEG_INFINITY];
     for (j, pair) in samples.windows(2).enumerate() {
         let mut stretch = |value: f64| reach = [reach[0].min(value), reach[1].max(value)];
         stretch(pair[0].value);
         if pair[0].slope.is_sign_negative() != pair[1].slope.is_sign_negative() {
             let slope = |phi: f64| along(first, other, phi).map(|s| s.slope);
-            if let Some(phi) = bracketed(slope, azimuth(j), azimuth(j + 1), pair[0].slope) {
+            if let Some(phi) =
+                bracketed(slope, first.curve.azimuth(j), first.curve.azimuth(j + 1), pair[0].slope)
+            {
                 stretch(along(first, other, phi)?.value);
             }
         }
@@ -150,46 +157,67 @@ pub fn reach(first: Traced<'_>, other: &Mismatch) -> Option<[f64; 2]> {
     Some(reach)
 }
 
+/// At the samples of a curve, and once more at the first one.
 fn sample(first: Traced<'_>, other: &Mismatch) -> Option<[Along; SAMPLES + 1]> {
     let mut samples = [Along { value: 0.0, slope: 0.0, scale: 1.0 }; SAMPLES + 1];
-    for (j, slot) in samples.iter_mut().enumerate().take(SAMPLES) {
+    let count = first.curve.count();
+    for (j, slot) in samples.iter_mut().enumerate().take(count) {
         let (d, tangent) = first.curve.sample(first.mismatch, j)?;
         *slot = Along::at(other, d, tangent)?;
     }
-    samples[SAMPLES] = samples[0];
+    samples[count] = samples[0];
     Some(samples)
 }
 
-/// Crossings between samples j and j + 1, by sign change or around an extremum of equal sign that reaches zero.
-fn between(
-    first: Traced<'_>,
-    second: Traced<'_>,
-    j: usize,
-    samples: &[Along; SAMPLES + 1],
-    azimuths: &mut Vec<f64>,
-    touch: &mut Option<f64>,
-) {
-    let (a, b) = (azimuth(j), azimuth(j + 1));
-    let (here, there) = (samples[j], samples[j + 1]);
-    let value = |phi: f64| along(first, second.mismatch, phi).map(|s| s.value);
-    if here.value.is_sign_negative() != there.value.is_sign_negative() {
-        azimuths.extend(bracketed(value, a, b, here.value));
-        return;
+impl Found {
+    /// Crossings between samples j and j + 1, by sign change or around an extremum of equal sign that reaches zero.
+    fn between(&mut self, first: Traced<'_>, other: &Mismatch, j: usize, [here, there]: [Along; 2]) {
+        let (a, b) = (first.curve.azimuth(j), first.curve.azimuth(j + 1));
+        let value = |phi: f64| along(first, other, phi).map(|s| s.value);
+        if here.value.is_sign_negative() != there.value.is_sign_negative() {
+            self.azimuths.extend(bracketed(value, a, b, here.value));
+            return;
+        }
+        // towards zero at a, away from it at b
+        let approaches = here.slope * here.value < 0.0 && there.slope * there.value > 0.0;
+        if !approaches || !comes_near(here, there, b - a) {
+            return;
+        }
+        let slope = |phi: f64| along(first, other, phi).map(|s| s.slope);
+        let Some(turning) = bracketed(slope, a, b, here.slope) else { return };
+        let Some(nearest) = along(first, other, turning) else { return };
+        if nearest.off().abs() < CONTACT {
+            self.touch = Some(turning);
+        } else if nearest.value.is_sign_negative() != here.value.is_sign_negative() {
+            self.azimuths.extend(bracketed(value, a, turning, here.value));
+            self.azimuths.extend(bracketed(value, b, turning, there.value));
+        }
     }
-    // towards zero at a, away from it at b
-    let approaches = here.slope * here.value < 0.0 && there.slope * there.value > 0.0;
-    if !approaches {
-        return;
+
+    /// Takes two crossings between which the rings part by less than [`CONTACT`] out of the list: they are one contact.
+    fn grazing(&mut self, first: Traced<'_>, other: &Mismatch) -> Option<f64> {
+        let count = self.azimuths.len();
+        let step = TAU / first.curve.count() as f64;
+        for i in 0..count {
+            let (a, b) = (self.azimuths[i], self.azimuths[(i + 1) % count]);
+            let middle = if b >= a { 0.5 * (a + b) } else { 0.5 * (a + b + TAU) };
+            let near = (b - a).rem_euclid(TAU) < step;
+            if near && along(first, other, middle)?.off().abs() < CONTACT {
+                self.azimuths.retain(|phi| *phi != a && *phi != b);
+                return Some(middle);
+            }
+        }
+        None
     }
-    let slope = |phi: f64| along(first, second.mismatch, phi).map(|s| s.slope);
-    let Some(turning) = bracketed(slope, a, b, here.slope) else { return };
-    let Some(nearest) = along(first, second.mismatch, turning) else { return };
-    if nearest.off().abs() < CONTACT {
-        *touch = Some(turning);
-    } else if nearest.value.is_sign_negative() != here.value.is_sign_negative() {
-        azimuths.extend(bracketed(value, a, turning, here.value));
-        azimuths.extend(bracketed(value, b, turning, there.value));
-    }
+}
+
+/// Whether an extremum between two samples may reach zero. Where the function is bent one way it stays beyond the point
+/// at which the tangents of both ends meet; a quarter of the nearer value is left as a margin for where it is not.
+fn comes_near(here: Along, there: Along, step: f64) -> bool {
+    // here.value + here.slope x = there.value - there.slope (step - x)
+    let x = (there.value - here.value - there.slope * step) / (here.slope - there.slope);
+    let tangents_meet = here.value + here.slope * x;
+    tangents_meet * here.value.signum() < 0.25 * here.value.abs().min(there.value.abs())
 }
 
 fn along(first: Traced<'_>, other: &Mismatch, phi: f64) -> Option<Along> {
@@ -198,10 +226,10 @@ fn along(first: Traced<'_>, other: &Mismatch, phi: f64) -> Option<Along> {
 }
 
 /// The crossing near an azimuth of the first ring, polished by Newton in both equations.
-fn crossing(first: Traced<'_>, second: Traced<'_>, phi: f64) -> Option<Crossing> {
+fn crossing(first: Traced<'_>, other: &Mismatch, phi: f64) -> Option<Crossing> {
     let mut d = first.curve.at(first.mismatch, phi)?.lab().0;
     for _ in 0..4 {
-        let (one, two) = (first.mismatch.towards(d)?, second.mismatch.towards(d)?);
+        let (one, two) = (first.mismatch.towards(d)?, other.towards(d)?);
         let e1 = d.cross(&Vector3::x()).normalize();
         let e2 = d.cross(&e1);
         let jacobian = Matrix2::new(
@@ -222,7 +250,7 @@ fn crossing(first: Traced<'_>, second: Traced<'_>, phi: f64) -> Option<Crossing>
     Some(Crossing {
         direction,
         partner: first.mismatch.partner(direction),
-        angle: screen_angle(d, first.mismatch.towards(d)?.gradient, second.mismatch.towards(d)?.gradient),
+        angle: screen_angle(d, first.mismatch.towards(d)?.gradient, other.towards(d)?.gradient),
     })
 }
 
@@ -238,21 +266,21 @@ fn screen_angle(d: Vector3<f64>, one: Vector3<f64>, two: Vector3<f64>) -> f64 {
 }
 
 /// Least angle between two rings that do not meet, and the first ring's azimuth where it is found.
-fn contact(first: Traced<'_>, second: Traced<'_>, samples: &[Along; SAMPLES + 1]) -> Option<(Contact, f64)> {
-    let inside_second = samples[0].value < 0.0;
+fn contact(first: Traced<'_>, second: Traced<'_>) -> Option<(Contact, f64)> {
+    let inside_second = second.mismatch.towards(first.curve.vector(0)).is_some_and(|t| t.value < 0.0);
     let around_second = || first.mismatch.towards(second.curve.vector(0)).is_some_and(|t| t.value < 0.0);
     let kind = if inside_second || around_second() { GapKind::Inside } else { GapKind::Outside };
     let mut nearest = (f64::INFINITY, 0, 0);
-    for i in 0..SAMPLES {
+    for i in 0..first.curve.count() {
         let d = first.curve.vector(i);
-        for j in 0..SAMPLES {
+        for j in 0..second.curve.count() {
             let distance = (d - second.curve.vector(j)).norm_squared();
             if distance < nearest.0 {
                 nearest = (distance, i, j);
             }
         }
     }
-    let mut at = Vector2::new(azimuth(nearest.1), azimuth(nearest.2));
+    let mut at = Vector2::new(first.curve.azimuth(nearest.1), second.curve.azimuth(nearest.2));
     // the chord stands on both curves: (d1 - d2).t1 = (d1 - d2).t2 = 0, by Newton with differences for the Jacobian
     let standing = |at: Vector2<f64>| {
         let (d1, t1) = first.curve.point_and_tangent(first.mismatch, at.x)?;
@@ -271,8 +299,9 @@ fn contact(first: Traced<'_>, second: Traced<'_>, samples: &[Along; SAMPLES + 1]
         let Some(inverse) = jacobian.try_inverse() else { break };
         let mut step = inverse * -here;
         let longest = step.amax();
-        if longest > TAU / SAMPLES as f64 {
-            step *= TAU / SAMPLES as f64 / longest;
+        let limit = TAU / first.curve.count() as f64;
+        if longest > limit {
+            step *= limit / longest;
         }
         let (d1, d2, _) = standing(at + step)?;
         let closer = angle(d1, d2);

@@ -16,7 +16,7 @@ mod tuning;
 
 pub use acceptance::{Acceptance, acceptances};
 pub use cones::{Cones, ConesError, CrossingRow, HistoryName, Landing, RingRow, cones};
-pub use crossing::{Contact, Crossing, GapKind, Meeting, Traced, meet};
+pub use crossing::{Contact, Crossing, GapKind, Meeting, Miss, Traced, meet, miss};
 pub use cut::{CutSolution, Design, Find, Plane, Shortfall, alternatives, best_phi, design, shortfall};
 pub use emission::{Emission, Media, Photons, Triplet};
 pub use interaction::{Interaction, Process, ProcessError, Roles};

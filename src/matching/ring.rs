@@ -16,6 +16,10 @@ use crate::frame::{Direction, Lab, Tangential};
 /// Samples on a ring, equally spaced in azimuth about its axis.
 pub const SAMPLES: usize = 72;
 
+/// Samples on a convex curve that is only asked where another ring meets it: between them slopes at both ends tell
+/// whether the other ring comes and goes.
+const FEW_SAMPLES: usize = 24;
+
 /// Cosine of the search region's half angle about the pump, 60 deg.
 const REGION: f64 = 0.5;
 
@@ -23,8 +27,9 @@ const REGION: f64 = 0.5;
 #[derive(Debug, Clone)]
 pub struct Curve {
     frame: Meridians,
-    /// Polar angles at the azimuths of [`azimuth`].
+    /// Polar angles at equally spaced azimuths, the first `count` of them.
     samples: [f64; SAMPLES],
+    count: usize,
 }
 
 /// A ring and the cone that fits it.
@@ -158,7 +163,7 @@ impl Mismatch {
 /// # Errors
 /// The fault of the one ring that is not there, where there is none at all.
 pub fn rings(mismatch: &Mismatch, length: f64) -> Result<Vec<Ring>, RingFault> {
-    all(seeds(mismatch)?, |seed| Ring::fit(Curve::about(mismatch, &seed)?, mismatch, length))
+    all(seeds(mismatch)?, |seed| Ring::fit(Curve::about(mismatch, &seed, SAMPLES)?, mismatch, length))
 }
 
 /// The curves of all rings, each traced about the direction where its mismatch is least: all that crossings need.
@@ -166,7 +171,8 @@ pub fn rings(mismatch: &Mismatch, length: f64) -> Result<Vec<Ring>, RingFault> {
 /// # Errors
 /// As [`rings`].
 pub fn curves(mismatch: &Mismatch) -> Result<Vec<Curve>, RingFault> {
-    all(seeds(mismatch)?, |seed| Curve::about(mismatch, &seed)?.within_region())
+    let count = if mismatch.is_convex() { FEW_SAMPLES } else { SAMPLES };
+    all(seeds(mismatch)?, |seed| Curve::about(mismatch, &seed, count)?.within_region())
 }
 
 /// What can be made of the seeds; the fault of one where there is nothing.
@@ -258,20 +264,20 @@ fn lowest_of_each_region(mismatch: &Mismatch) -> Vec<Tangential> {
 
 impl Curve {
     /// The curve about a seed, traced from there.
-    fn about(mismatch: &Mismatch, seed: &Stationary) -> Result<Self, RingFault> {
+    fn about(mismatch: &Mismatch, seed: &Stationary, count: usize) -> Result<Self, RingFault> {
         let Some(start) = mismatch.direction(seed.q) else {
             return Err(RingFault::new(Status::TotalReflection));
         };
         // Delta_k ~ Delta_0 + curvature q^2/2 gives the first radius
         let radius = (-2.0 * seed.value / seed.curvature).sqrt() / mismatch.k0_signal();
-        let mut curve = Self { frame: Meridians::about(start.lab().0), samples: [radius; SAMPLES] };
+        let mut curve = Self { frame: Meridians::about(start.lab().0), samples: [radius; SAMPLES], count };
         curve.trace(mismatch)?;
         Ok(curve)
     }
 
     /// The curve, if all of it lies in the search region.
     fn within_region(self) -> Result<Self, RingFault> {
-        let outside = (0..SAMPLES).any(|j| self.vector(j).z < REGION);
+        let outside = (0..self.count).any(|j| self.vector(j).z < REGION);
         if outside { Err(RingFault::new(Status::OpenRing)) } else { Ok(self) }
     }
 
@@ -286,8 +292,8 @@ impl Curve {
             // radii about the old axis, corrected for its shift, are a good guess about the new one
             let shift = self.frame.axis - axis;
             self.frame = Meridians::about(axis);
-            for j in 0..SAMPLES {
-                self.samples[j] += self.frame.outward(azimuth(j)).dot(&shift);
+            for j in 0..self.count {
+                self.samples[j] += self.frame.outward(self.azimuth(j)).dot(&shift);
             }
             self.trace(mismatch)?;
         }
@@ -298,9 +304,9 @@ impl Curve {
     fn trace(&mut self, mismatch: &Mismatch) -> Result<(), RingFault> {
         // how far the last guess was off, to correct the next one
         let mut correction = 0.0;
-        for j in 0..SAMPLES {
+        for j in 0..self.count {
             let guess = self.samples[j] + correction;
-            match mismatch.meet(&self.frame.meridian(azimuth(j)), 0.0, guess) {
+            match mismatch.meet(&self.frame.meridian(self.azimuth(j)), 0.0, guess) {
                 Hit::At(psi) => {
                     correction = psi - self.samples[j];
                     self.samples[j] = psi;
@@ -312,14 +318,24 @@ impl Curve {
         Ok(())
     }
 
-    /// Direction of the sample at azimuth 360 deg j/72 about the axis, from +x towards +y.
+    /// Number of samples.
+    pub(super) fn count(&self) -> usize {
+        self.count
+    }
+
+    /// Azimuth of sample j, radians.
+    pub(super) fn azimuth(&self, j: usize) -> f64 {
+        TAU * j as f64 / self.count as f64
+    }
+
+    /// Direction of the sample at azimuth 360 deg j/72 (of a ring) about the axis, from +x towards +y.
     #[must_use]
     pub fn direction(&self, j: usize) -> Direction {
         Direction::new(Lab(self.vector(j)))
     }
 
     pub(super) fn vector(&self, j: usize) -> Vector3<f64> {
-        self.frame.point(self.samples[j % SAMPLES], azimuth(j))
+        self.frame.point(self.samples[j % self.count], self.azimuth(j))
     }
 
     /// The point of the curve at an azimuth about its axis (radians); `mismatch` must be the one it was traced with.
@@ -329,7 +345,8 @@ impl Curve {
     }
 
     fn radius(&self, mismatch: &Mismatch, phi: f64) -> Option<f64> {
-        let nearest = (phi / TAU * SAMPLES as f64).round().rem_euclid(SAMPLES as f64) as usize % SAMPLES;
+        let nearest =
+            (phi / TAU * self.count as f64).round().rem_euclid(self.count as f64) as usize % self.count;
         match mismatch.meet(&self.frame.meridian(phi), 0.0, self.samples[nearest]) {
             Hit::At(psi) => Some(psi),
             Hit::Face | Hit::Lost => None,
@@ -348,7 +365,7 @@ impl Curve {
 
     /// Point and tangent at a sample.
     pub(super) fn sample(&self, mismatch: &Mismatch, j: usize) -> Option<(Vector3<f64>, Vector3<f64>)> {
-        self.tangent(mismatch, self.samples[j], azimuth(j)).map(|tangent| (self.vector(j), tangent))
+        self.tangent(mismatch, self.samples[j], self.azimuth(j)).map(|tangent| (self.vector(j), tangent))
     }
 
     fn tangent(&self, mismatch: &Mismatch, psi: f64, phi: f64) -> Option<Vector3<f64>> {
@@ -399,12 +416,12 @@ impl Ring {
 #[must_use]
 pub fn half_angle(mismatch: &Mismatch) -> Option<f64> {
     let seed = seeds(mismatch).ok()?.into_iter().next()?;
-    let curve = Curve::about(mismatch, &seed).ok()?.centred(mismatch).ok()?.within_region().ok()?;
+    let curve = Curve::about(mismatch, &seed, SAMPLES).ok()?.centred(mismatch).ok()?.within_region().ok()?;
     Some(cone_angle(|j| curve.vector(j), &curve.frame.axis))
 }
 
 /// Azimuth of sample j, radians.
-pub(super) fn azimuth(j: usize) -> f64 {
+fn azimuth(j: usize) -> f64 {
     TAU * j as f64 / SAMPLES as f64
 }
 
@@ -428,7 +445,7 @@ fn cone_angle(point: impl Fn(usize) -> Vector3<f64>, axis: &Vector3<f64>) -> f64
 
 /// Least and largest stationary values of the radius, found where its slope changes sign between samples.
 fn extremes(mismatch: &Mismatch, curve: &Curve) -> (f64, f64) {
-    let Curve { frame, samples } = curve;
+    let Curve { frame, samples, .. } = curve;
     let slope_at = |psi: f64, phi: f64| {
         let gradient = mismatch.towards(frame.point(psi, phi)).map_or(Vector3::zeros(), |t| t.gradient);
         let (sin, cos) = psi.sin_cos();
@@ -459,7 +476,7 @@ fn extremes(mismatch: &Mismatch, curve: &Curve) -> (f64, f64) {
 
 /// Mean radial width between Delta_k L/2 = -1.39 and +1.39; `None` where Delta_k stays above the first inside.
 fn thickness(mismatch: &Mismatch, curve: &Curve, length: f64) -> Option<f64> {
-    let Curve { frame, samples } = curve;
+    let Curve { frame, samples, .. } = curve;
     let half_width = 2.0 * HALF_MAXIMUM / length;
     if mismatch.towards(frame.axis)?.value >= -half_width {
         return None;

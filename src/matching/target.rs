@@ -88,10 +88,12 @@ fn crossings(emission: &Emission, roles: Roles) -> Option<Met> {
         return None;
     }
     let (one, two) = (History::of(emission, roles)?, History::of(emission, roles.exchanged())?);
-    let (all, touching) = match meet(one.traced()?, two.traced()?)? {
+    let traced = one.traced()?;
+    two.curve.as_ref()?;
+    let (all, touching) = match meet(traced, &two.mismatch)? {
         Meeting::Cross(all) => (all, false),
         Meeting::Touch(point) => (vec![point], true),
-        Meeting::Coincide(_) | Meeting::Miss(_) => return None,
+        Meeting::Coincide(_) | Meeting::Miss => return None,
     };
     let count = all.len() as f64;
     let polar = all.iter().map(|c| c.direction.angle_to(Direction::forward())).sum::<f64>() / count;
