@@ -5,7 +5,7 @@
 use std::error::Error;
 use std::sync::Arc;
 
-use twincone::matching::{Interaction, cones};
+use twincone::matching::{Interaction, Want, cones};
 use twincone::material::Catalogue;
 use twincone::optics::Crystal;
 use twincone::quantity::{Angle, Wavelength};
@@ -17,7 +17,7 @@ fn main() -> Result<(), Box<dyn Error>> {
     for step in 0..=8 {
         let mut crystal = Crystal::new(Arc::clone(&bbo), Some("kato-1986"))?.with_cut(28.8, 90.0);
         crystal.orientation.tilt = Angle::from_degrees(0.25 * f64::from(step));
-        let found = cones(&[crystal], pump, &[pump.doubled()], Interaction::One)?;
+        let found = cones(&[crystal], pump, &[pump.doubled()], Interaction::One, Want::Both)?;
         let half_angle = found.rings[0].ring.as_ref().map(|ring| ring.half_angle.to_degrees());
         println!("{},{}", 0.25 * f64::from(step), half_angle.map_or(String::new(), |a| format!("{a:.4}")));
     }

@@ -62,8 +62,14 @@ fn cut_angles_of_bbo() {
 fn crossed_cones_of_the_first_bright_source() {
     let mut bbo = crystal("bbo", "eimerl-1987").with_cut(49.2, 0.0);
     bbo.orientation.tilt = Angle::from_degrees(0.72);
-    let found = cones(&[bbo], Wavelength::from_nm(351.1), &[Wavelength::from_nm(702.2)], Interaction::Two)
-        .expect("cones");
+    let found = cones(
+        &[bbo],
+        Wavelength::from_nm(351.1),
+        &[Wavelength::from_nm(702.2)],
+        Interaction::Two,
+        Want::Both,
+    )
+    .expect("cones");
     assert_eq!(found.rings.len(), 2);
     let e = &found.rings[0];
     assert_eq!((e.polarization.to_string(), e.photon), ("e".into(), Landing::Signal));
@@ -89,8 +95,14 @@ fn crossed_cones_of_the_first_bright_source() {
 #[test]
 fn nondegenerate_crossings_move_sideways() {
     let bbo = crystal("bbo", "eimerl-1987").with_cut(42.2, 0.0);
-    let found = cones(&[bbo], Wavelength::from_nm(405.0), &[Wavelength::from_nm(800.0)], Interaction::Two)
-        .expect("cones");
+    let found = cones(
+        &[bbo],
+        Wavelength::from_nm(405.0),
+        &[Wavelength::from_nm(800.0)],
+        Interaction::Two,
+        Want::Both,
+    )
+    .expect("cones");
     assert_eq!(found.rings.len(), 4);
     assert_eq!(found.crossings.len(), 2);
     for (row, v) in found.crossings.iter().zip([2.979, -2.979]) {
@@ -127,8 +139,14 @@ fn nondegenerate_type_two_has_two_collinear_cuts() {
 #[test]
 fn one_ring_may_lie_inside_the_other() {
     let bbo = crystal("bbo", "kato-1986").with_cut(45.7, 0.0);
-    let found = cones(&[bbo], Wavelength::from_nm(405.0), &[Wavelength::from_nm(700.0)], Interaction::Two)
-        .expect("cones");
+    let found = cones(
+        &[bbo],
+        Wavelength::from_nm(405.0),
+        &[Wavelength::from_nm(700.0)],
+        Interaction::Two,
+        Want::Both,
+    )
+    .expect("cones");
     let row = &found.crossings[0];
     assert_eq!(row.status, Status::Apart);
     let contact = row.contact.expect("a gap");
@@ -137,9 +155,14 @@ fn one_ring_may_lie_inside_the_other() {
     let touch = row.tilt_to_touch.expect("a tilt");
     let mut turned = crystal("bbo", "kato-1986").with_cut(45.7, 0.0);
     turned.orientation.tilt = Angle::radians(touch);
-    let touching =
-        cones(&[turned], Wavelength::from_nm(405.0), &[Wavelength::from_nm(700.0)], Interaction::Two)
-            .expect("cones");
+    let touching = cones(
+        &[turned],
+        Wavelength::from_nm(405.0),
+        &[Wavelength::from_nm(700.0)],
+        Interaction::Two,
+        Want::Both,
+    )
+    .expect("cones");
     assert_eq!(touching.crossings[0].status, Status::Touching);
 }
 
@@ -192,7 +215,7 @@ fn positive_tilt_opens_a_collinear_type_one_cone_and_negative_tilt_closes_it() {
     let at = |tilt: f64| {
         let mut bbo = crystal("bbo", "kato-1986").with_cut(28.8, 90.0);
         bbo.orientation.tilt = Angle::from_degrees(tilt);
-        cones(&[bbo], Wavelength::from_nm(405.0), &[Wavelength::from_nm(810.0)], Interaction::One)
+        cones(&[bbo], Wavelength::from_nm(405.0), &[Wavelength::from_nm(810.0)], Interaction::One, Want::Both)
             .expect("cones")
             .rings[0]
             .clone()

@@ -236,7 +236,7 @@ impl Case {
 
     fn cones(&self) -> Result<Cones, String> {
         let photons = self.photons()?;
-        cones(&[self.crystal()?], photons.pump, &[photons.signal], self.interaction()?)
+        cones(&[self.crystal()?], photons.pump, &[photons.signal], self.interaction()?, Want::Both)
             .map_err(|e| e.to_string())
     }
 

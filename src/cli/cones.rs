@@ -2,7 +2,7 @@
 
 use clap::{Args as ClapArgs, ValueEnum};
 use twincone::job::setup::{Needs, Setup};
-use twincone::matching::{Cones, cones, opening_turn, opinions};
+use twincone::matching::{Cones, Want, cones, opening_turn, opinions};
 use twincone::optics::Crystal;
 use twincone::quantity::Angle;
 use twincone::report::cones::{Advice, crossings_table, rings_table, spread_lines, text};
@@ -68,7 +68,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
 }
 
 fn solve(setup: &Setup, crystals: &[Crystal]) -> Result<Cones, Failure> {
-    Ok(cones(crystals, setup.pump(), &setup.signals(), setup.interaction)?)
+    Ok(cones(crystals, setup.pump(), &setup.signals(), setup.interaction, Want::Both)?)
 }
 
 /// Every crystal of the same material takes the other data set.

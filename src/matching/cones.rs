@@ -5,7 +5,7 @@ use super::crossing::{Contact, Crossing, GapKind, Meeting, Miss, Traced, meet, m
 use super::emission::{Emission, Photons, Triplet};
 use super::interaction::{Interaction, Process, Roles};
 use super::mismatch::Mismatch;
-use super::ring::{Ring, RingFault, rings};
+use super::ring::{Curve, Ring, RingFault, curves, rings};
 use super::tuning::{Actuator, nearest_touch, tuning_turn};
 use crate::frame::Direction;
 use crate::material::{MaterialError, tensor::is_centrosymmetric};
@@ -106,16 +106,32 @@ pub struct Cones {
     pub crossings: Vec<CrossingRow>,
 }
 
-/// A process of one crystal with its rings, seen from the photon of the listed wavelength.
-struct History {
-    name: HistoryName,
-    roles: Roles,
+/// What is wanted of [`cones`].
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Want {
+    /// Rings alone.
+    Rings,
+    /// Crossings alone.
+    Crossings,
+    /// Both.
+    Both,
+}
+
+/// A crystal emitting one pair of wavelengths.
+struct Source<'a> {
+    index: usize,
+    crystal: &'a Crystal,
     emission: Emission,
     triplet: Triplet,
-    mismatch: Option<Mismatch>,
-    rings: Result<Vec<Ring>, RingFault>,
     extrapolated: bool,
-    dark: bool,
+}
+
+/// A process of one crystal, seen from the photon of the listed wavelength.
+struct History<'a> {
+    source: &'a Source<'a>,
+    name: HistoryName,
+    roles: Roles,
+    mismatch: Option<Mismatch>,
 }
 
 /// Rings and crossings of crystals pumped along z, for the listed signal wavelengths.
@@ -127,66 +143,70 @@ pub fn cones(
     pump: Wavelength,
     signals: &[Wavelength],
     interaction: Interaction,
+    want: Want,
 ) -> Result<Cones, ConesError> {
     let mut found = Cones::default();
     for signal in signals {
         let photons = Photons::new(pump, *signal).ok_or_else(|| {
             ConesError::Description(format!("the signal, {signal}, must be longer than the pump, {pump}"))
         })?;
+        let sources: Result<Vec<Source<'_>>, MaterialError> = crystals
+            .iter()
+            .enumerate()
+            .map(|(index, crystal)| Source::new(index, crystal, photons))
+            .collect();
+        let sources = sources?;
         let mut histories = Vec::new();
-        for (index, crystal) in crystals.iter().enumerate() {
-            histories.extend(of_crystal(index, crystal, photons, interaction)?);
+        for source in &sources {
+            histories.extend(source.histories(interaction)?);
         }
-        for history in &histories {
-            ring_rows(history, &mut found.rings);
+        if want != Want::Crossings {
+            histories.iter().for_each(|history| ring_rows(history, &mut found.rings));
         }
-        for (i, first) in histories.iter().enumerate() {
-            for second in &histories[i + 1..] {
-                crossing_rows(crystals, first, second, &mut found.crossings);
+        if want != Want::Rings {
+            for (i, first) in histories.iter().enumerate() {
+                histories[i + 1..]
+                    .iter()
+                    .for_each(|second| crossing_rows(first, second, &mut found.crossings));
             }
         }
     }
     Ok(found)
 }
 
-fn of_crystal(
-    index: usize,
-    crystal: &Crystal,
-    photons: Photons,
-    interaction: Interaction,
-) -> Result<Vec<History>, ConesError> {
-    let triplet = Triplet::new(crystal, &photons)?;
-    let emission = Emission::new(crystal, photons, &triplet);
-    let mut all = emission.roles(interaction).map_err(ConesError::Description)?;
-    if interaction == Interaction::Zero {
-        all = vec![brightest(crystal, &emission, &all)];
+impl<'a> Source<'a> {
+    fn new(index: usize, crystal: &'a Crystal, photons: Photons) -> Result<Self, MaterialError> {
+        let triplet = Triplet::new(crystal, &photons)?;
+        let emission = Emission::new(crystal, photons, &triplet);
+        let extrapolated =
+            [photons.pump, photons.signal, photons.idler].iter().any(|w| crystal.extrapolates(*w));
+        Ok(Self { index, crystal, emission, triplet, extrapolated })
     }
-    // one process of a degenerate pair is its own twin with the names of the photons exchanged
-    if let (Interaction::Explicit(_), [only], true) = (interaction, all.as_slice(), photons.degenerate())
-        && only.signal != only.idler
-    {
-        all.push(only.exchanged());
+
+    fn histories(&'a self, interaction: Interaction) -> Result<Vec<History<'a>>, ConesError> {
+        let mut all = self.emission.roles(interaction).map_err(ConesError::Description)?;
+        if interaction == Interaction::Zero {
+            all = vec![brightest(self.crystal, &self.emission, &all)];
+        }
+        // one process of a degenerate pair is its own twin with the names of the photons exchanged
+        if let (Interaction::Explicit(_), [only], true) =
+            (interaction, all.as_slice(), self.emission.photons.degenerate())
+            && only.signal != only.idler
+        {
+            all.push(only.exchanged());
+        }
+        let history = |roles: Roles| History {
+            source: self,
+            name: HistoryName { crystal: self.index, process: self.emission.process(roles) },
+            roles,
+            mismatch: self.emission.mismatch(roles),
+        };
+        Ok(all.into_iter().map(history).collect())
     }
-    let extrapolated = [photons.pump, photons.signal, photons.idler].iter().any(|w| crystal.extrapolates(*w));
-    Ok(all
-        .into_iter()
-        .map(|roles| {
-            let mismatch = emission.mismatch(roles);
-            let none = RingFault { status: Status::TotalReflection, shortfall: None };
-            let rings = mismatch.as_ref().map_or(Err(none), |m| rings(m, emission.length));
-            History {
-                name: HistoryName { crystal: index, process: emission.process(roles) },
-                roles,
-                dark: is_dark(crystal, &emission, roles, &rings),
-                emission: emission.clone(),
-                triplet,
-                mismatch,
-                rings,
-                extrapolated,
-            }
-        })
-        .collect())
 }
+
+/// What stands for rings where the pump cannot enter.
+const SHUT_OUT: RingFault = RingFault { status: Status::TotalReflection, shortfall: None };
 
 /// The assignment with the largest |d_eff| along the pump.
 pub(super) fn brightest(crystal: &Crystal, emission: &Emission, all: &[Roles]) -> Roles {
@@ -203,30 +223,24 @@ pub(super) fn brightest(crystal: &Crystal, emission: &Emission, all: &[Roles]) -
     best
 }
 
-/// Whether symmetry forbids the pairs all round the ring.
-fn is_dark(
-    crystal: &Crystal,
-    emission: &Emission,
-    roles: Roles,
-    rings: &Result<Vec<Ring>, RingFault>,
-) -> bool {
+/// Whether symmetry forbids the pairs all round the curves: d_eff is looked at in four places, unless the first is bright.
+fn is_dark<'c>(history: &History<'_>, curves: impl Iterator<Item = &'c Curve>) -> bool {
+    let Source { crystal, emission, .. } = history.source;
     let Some(tensor) = &crystal.material.tensor else {
         return is_centrosymmetric(crystal.material.file.point_group.get_ref());
     };
     let dark = |direction: Direction| {
-        let pairing = emission.pairing(roles, direction);
+        let pairing = emission.pairing(history.roles, direction);
         pairing.is_some_and(|p| p.d_eff(emission, tensor) < 1e-6 * tensor.largest())
     };
-    rings
-        .as_ref()
-        .is_ok_and(|all| all.iter().all(|ring| (0..4).all(|n| dark(ring.curve.direction(18 * n + 5)))))
+    let mut curves = curves.peekable();
+    curves.peek().is_some() && curves.all(|curve| curve.quarters().all(dark))
 }
 
 /// Adds the rings of both photons of a history, unless they are there already.
-fn ring_rows(history: &History, rows: &mut Vec<RingRow>) {
-    let photons = history.emission.photons;
-    let roles = history.roles;
-    let media = &history.emission.media;
+fn ring_rows(history: &History<'_>, rows: &mut Vec<RingRow>) {
+    let Source { emission, extrapolated, .. } = history.source;
+    let (photons, roles, media) = (emission.photons, history.roles, &emission.media);
     let signal = (Landing::Signal, photons.signal, media.signal.polarization(roles.signal));
     let idler = (Landing::Idler, photons.idler, media.idler.polarization(roles.idler));
     for ((photon, wavelength, polarization), twin) in [(signal, idler.2), (idler, signal.2)] {
@@ -243,17 +257,22 @@ fn ring_rows(history: &History, rows: &mut Vec<RingRow>) {
         if rows.iter().any(same) {
             continue;
         }
-        let traced = match (photon, &history.mismatch) {
-            (Landing::Signal, _) | (_, None) => history.rings.clone(),
-            (Landing::Idler, Some(mismatch)) => rings(&mismatch.exchanged(), history.emission.length),
-        };
-        let outcomes: Vec<Result<Ring, RingFault>> = match traced {
+        let seen = history.mismatch.as_ref().ok_or(SHUT_OUT).map(|m| match photon {
+            Landing::Signal => *m,
+            Landing::Idler => m.exchanged(),
+        });
+        let outcomes: Vec<Result<Ring, RingFault>> = match seen.and_then(|m| rings(&m, emission.length)) {
             Ok(all) => all.into_iter().map(Ok).collect(),
             Err(fault) => vec![Err(fault)],
         };
         for ring in outcomes {
             let status = match &ring {
-                Ok(_) if history.dark => Status::NoNonlinearity,
+                Ok(found) if photon == Landing::Signal && is_dark(history, std::iter::once(&found.curve)) => {
+                    Status::NoNonlinearity
+                }
+                Ok(_) if photon == Landing::Idler && rows.last().is_some_and(|r| r.is_dark_twin(history)) => {
+                    Status::NoNonlinearity
+                }
                 Ok(ring) => ring.status,
                 Err(fault) => fault.status,
             };
@@ -267,64 +286,76 @@ fn ring_rows(history: &History, rows: &mut Vec<RingRow>) {
                 polarization,
                 field_azimuth: ring.as_ref().ok().and_then(|r| field(history, photon, r)),
                 ring,
-                extrapolated: history.extrapolated,
+                extrapolated: *extrapolated,
                 status,
             });
         }
     }
 }
 
-/// Field azimuth of a photon on its ring's axis.
-fn field(history: &History, photon: Landing, ring: &Ring) -> Option<f64> {
-    match photon {
-        Landing::Signal => history.emission.field_azimuth(history.roles, ring.axis),
-        Landing::Idler => {
-            let seen_from_idler = history.emission.exchanged();
-            seen_from_idler.field_azimuth(history.roles.exchanged(), ring.axis)
-        }
+impl RingRow {
+    /// Whether this is the dark signal ring of a history, so that the idler's ring is dark too.
+    fn is_dark_twin(&self, history: &History<'_>) -> bool {
+        self.status == Status::NoNonlinearity && self.process == history.name.process
     }
 }
 
-/// Whether two histories give photons of opposite polarization in both arms: fields more than 45 deg apart.
-fn opposed(first: &History, second: &History) -> bool {
+/// Field azimuth of a photon on its ring's axis.
+fn field(history: &History<'_>, photon: Landing, ring: &Ring) -> Option<f64> {
+    let emission = &history.source.emission;
+    match photon {
+        Landing::Signal => emission.field_azimuth(history.roles, ring.axis),
+        Landing::Idler => emission.exchanged().field_azimuth(history.roles.exchanged(), ring.axis),
+    }
+}
+
+/// Whether two histories give photons of opposite polarization in both arms: the other sheets of one crystal, or fields
+/// more than 45 deg apart.
+fn opposed(first: &History<'_>, second: &History<'_>) -> bool {
+    if first.name.crystal == second.name.crystal {
+        return first.roles.signal != second.roles.signal && first.roles.idler != second.roles.idler;
+    }
     let across = |a: Option<f64>, b: Option<f64>| {
         a.zip(b).is_some_and(|(a, b)| {
             let apart = (a - b).rem_euclid(180.0);
             apart.min(180.0 - apart) > 45.0
         })
     };
-    let of = |h: &History| {
+    let of = |h: &History<'_>| {
         let forward = Direction::forward();
-        let exchanged = h.emission.exchanged();
-        (h.emission.field_azimuth(h.roles, forward), exchanged.field_azimuth(h.roles.exchanged(), forward))
+        let (seen, exchanged) = (&h.source.emission, h.source.emission.exchanged());
+        (seen.field_azimuth(h.roles, forward), exchanged.field_azimuth(h.roles.exchanged(), forward))
     };
     let ((a1, b1), (a2, b2)) = (of(first), of(second));
     across(a1, a2) && across(b1, b2)
 }
 
-fn crossing_rows(crystals: &[Crystal], first: &History, second: &History, rows: &mut Vec<CrossingRow>) {
+fn crossing_rows(first: &History<'_>, second: &History<'_>, rows: &mut Vec<CrossingRow>) {
     if !opposed(first, second) {
         return;
     }
-    let Some(meetings) = meetings(first, second) else {
-        let faults = [&first.rings, &second.rings].into_iter().find_map(|r| r.as_ref().err());
-        rows.push(blank_row(first, second, faults.map_or(Status::NoPhaseMatching, |fault| fault.status)));
+    let (ones, twos) = (curves_of(first), curves_of(second));
+    let (Ok(ones), Ok(twos), Some(m1), Some(m2)) = (&ones, &twos, &first.mismatch, &second.mismatch) else {
+        let fault = ones.as_ref().err().or(twos.as_ref().err());
+        rows.push(blank_row(first, second, fault.map_or(Status::NoPhaseMatching, |f| f.status)));
         return;
     };
-    if meetings.points.is_empty() {
-        rows.push(missing_row(crystals, first, second, meetings.nearest));
+    let points = meetings((m1, ones), (m2, twos));
+    if points.is_empty() {
+        rows.push(missing_row(first, second, (m1, ones), (m2, twos)));
         return;
     }
+    let dark = is_dark(first, ones.iter()) || is_dark(second, twos.iter());
     let from = rows.len();
     let mut number = rows.iter().filter_map(|r| r.pair).max().unwrap_or(0);
-    for (crossing, status) in meetings.points {
-        if first.emission.photons.degenerate() && is_twin_of_earlier(&rows[from..], &crossing) {
+    for (crossing, status) in points {
+        if first.source.emission.photons.degenerate() && is_twin_of_earlier(&rows[from..], &crossing) {
             continue;
         }
         number += 1;
         let status = match status {
             Status::Ok if crossing.partner.is_none() => Status::TotalReflection,
-            Status::Ok if first.dark || second.dark => Status::NoNonlinearity,
+            Status::Ok if dark => Status::NoNonlinearity,
             other => other,
         };
         let blank = blank_row(first, second, status);
@@ -332,71 +363,76 @@ fn crossing_rows(crystals: &[Crystal], first: &History, second: &History, rows: 
     }
 }
 
-/// Where the rings of two histories meet, in the order of the table; and how near they come where they do not.
-struct Meetings {
-    points: Vec<(Crossing, Status)>,
-    nearest: Option<Contact>,
+fn curves_of(history: &History<'_>) -> Result<Vec<Curve>, RingFault> {
+    history.mismatch.as_ref().ok_or(SHUT_OUT).and_then(curves)
 }
 
-/// `None` where a ring is missing.
-fn meetings(first: &History, second: &History) -> Option<Meetings> {
-    let (ones, twos) = (first.rings.as_ref().ok()?, second.rings.as_ref().ok()?);
-    let (m1, m2) = (first.mismatch.as_ref()?, second.mismatch.as_ref()?);
-    let mut all = Meetings { points: Vec::new(), nearest: None };
+type Curves<'a> = (&'a Mismatch, &'a [Curve]);
+
+/// Where the rings of two histories cross or touch, in the order of the table.
+fn meetings(
+    (m1, ones): (&Mismatch, &Vec<Curve>),
+    (m2, twos): (&Mismatch, &Vec<Curve>),
+) -> Vec<(Crossing, Status)> {
+    let mut points = Vec::new();
     for one in ones {
-        for two in twos {
-            let (one, two) = (&one.curve, &two.curve);
+        let first = Traced { mismatch: m1, curve: one };
+        match meet(first, m2) {
+            Some(Meeting::Cross(all)) => points.extend(all.into_iter().map(|c| (c, Status::Ok))),
+            Some(Meeting::Touch(point)) => points.push((point, Status::Touching)),
+            Some(Meeting::Coincide(point)) => points.push((point, Status::Coincident)),
+            Some(Meeting::Miss) | None => {}
+        }
+    }
+    if points.is_empty() {
+        for (one, two) in ones.iter().flat_map(|one| twos.iter().map(move |two| (one, two))) {
             let (first, second) = (Traced { mismatch: m1, curve: one }, Traced { mismatch: m2, curve: two });
-            match meet(first, m2) {
-                Some(Meeting::Cross(points)) => {
-                    all.points.extend(points.into_iter().map(|c| (c, Status::Ok)))
-                }
-                Some(Meeting::Touch(point)) => all.points.push((point, Status::Touching)),
-                Some(Meeting::Coincide(point)) => all.points.push((point, Status::Coincident)),
-                Some(Meeting::Miss) => match miss(first, second) {
-                    Some(Miss::Touch(point)) => all.points.push((point, Status::Touching)),
-                    Some(Miss::By(contact)) if all.nearest.is_none_or(|n| contact.gap < n.gap) => {
-                        all.nearest = Some(contact);
-                    }
-                    Some(Miss::By(_)) | None => {}
-                },
-                None => {}
+            if let Some(Miss::Touch(point)) = miss(first, second) {
+                points.push((point, Status::Touching));
             }
         }
     }
-    order(&mut all.points);
-    Some(all)
+    order(&mut points);
+    points
 }
 
-fn blank_row(first: &History, second: &History, status: Status) -> CrossingRow {
+fn blank_row(first: &History<'_>, second: &History<'_>, status: Status) -> CrossingRow {
     CrossingRow {
         pair: None,
         first: first.name,
         second: second.name,
-        a_wavelength: first.emission.photons.signal,
-        b_wavelength: first.emission.photons.idler,
+        a_wavelength: first.source.emission.photons.signal,
+        b_wavelength: first.source.emission.photons.idler,
         crossing: None,
         contact: None,
         tilt_to_touch: None,
         turn: None,
-        extrapolated: first.extrapolated || second.extrapolated,
+        extrapolated: first.source.extrapolated || second.source.extrapolated,
         status,
     }
 }
 
 /// A row for rings that miss each other: by how much, and the turn that makes them touch.
 fn missing_row(
-    crystals: &[Crystal],
-    first: &History,
-    second: &History,
-    nearest: Option<Contact>,
+    first: &History<'_>,
+    second: &History<'_>,
+    (m1, ones): Curves<'_>,
+    (m2, twos): Curves<'_>,
 ) -> CrossingRow {
-    let crystal = &crystals[first.name.crystal];
-    let photons = first.emission.photons;
-    let turn = tuning_turn(crystal, photons, &first.triplet, first.roles);
+    let mut nearest: Option<Contact> = None;
+    for (one, two) in ones.iter().flat_map(|one| twos.iter().map(move |two| (one, two))) {
+        let (one, two) = (Traced { mismatch: m1, curve: one }, Traced { mismatch: m2, curve: two });
+        if let Some(Miss::By(contact)) = miss(one, two)
+            && nearest.is_none_or(|n| contact.gap < n.gap)
+        {
+            nearest = Some(contact);
+        }
+    }
+    let Source { crystal, emission, triplet, .. } = first.source;
+    let turn = tuning_turn(crystal, emission.photons, triplet, first.roles);
     let one_crystal = first.name.crystal == second.name.crystal;
     let touch = (one_crystal && nearest.is_some())
-        .then(|| nearest_touch(crystal, photons, first.triplet, first.roles, turn))
+        .then(|| nearest_touch(crystal, emission.photons, *triplet, first.roles, turn))
         .flatten();
     let status = if nearest.is_some() { Status::Apart } else { Status::NotConverged };
     CrossingRow {

@@ -15,7 +15,7 @@ mod target;
 mod tuning;
 
 pub use acceptance::{Acceptance, acceptances};
-pub use cones::{Cones, ConesError, CrossingRow, HistoryName, Landing, RingRow, cones};
+pub use cones::{Cones, ConesError, CrossingRow, HistoryName, Landing, RingRow, Want, cones};
 pub use crossing::{Contact, Crossing, GapKind, Meeting, Miss, Traced, meet, miss};
 pub use cut::{CutSolution, Design, Find, Plane, Shortfall, alternatives, best_phi, design, shortfall};
 pub use emission::{Emission, Media, Photons, Triplet};

@@ -323,6 +323,12 @@ impl Curve {
         self.count
     }
 
+    /// Four directions a quarter turn apart, off the planes of symmetry.
+    pub(super) fn quarters(&self) -> impl Iterator<Item = Direction> {
+        let quarter = self.count / 4;
+        (0..4).map(move |n| self.direction(quarter * n + quarter / 3))
+    }
+
     /// Azimuth of sample j, radians.
     pub(super) fn azimuth(&self, j: usize) -> f64 {
         TAU * j as f64 / self.count as f64
