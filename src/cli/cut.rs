@@ -9,7 +9,7 @@ use twincone::matching::{
 use twincone::material::{MaterialError, Optic, tensor::is_centrosymmetric};
 use twincone::optics::Crystal;
 use twincone::quantity::Angle;
-use twincone::report::cut::{Attempt, no_solution, ranking, spread_line, table, text};
+use twincone::report::cut::{Attempt, no_solution, ranking, spread_lines, table, text};
 use twincone::report::{Answer, Conventions, resolved_job};
 
 use super::failure::Failure;
@@ -133,11 +133,12 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
                 dataset: o.dataset.clone(),
                 answer: o.answer.as_ref().map(|(_, found)| found.clone()).map_err(Clone::clone),
             });
-            let line = spread_line(find, found, &answers.collect::<Vec<_>>());
-            match several {
-                false => spreads.push(line),
-                true if others.is_empty() => {}
-                true => spreads.push(format!("{}: {line}", setup.crystals[0].material.id)),
+            for line in spread_lines(find, found, &answers.collect::<Vec<_>>()) {
+                match several {
+                    false => spreads.push(line),
+                    true if others.is_empty() => {}
+                    true => spreads.push(format!("{}: {line}", setup.crystals[0].material.id)),
+                }
             }
         }
         attempts.push(own);

@@ -123,10 +123,11 @@ impl Stage {
         self.zero.map(|zero| Angle::radians(zero.si() + sign * tilt.si()))
     }
 
-    /// Turns of the screw for a turn of the crystal.
+    /// Turns of the screw for a turn of the crystal, positive where the reading rises.
     #[must_use]
     pub fn turns(&self, turn: Angle) -> Option<f64> {
-        self.per_turn.map(|per_turn| turn.si() / per_turn.si())
+        let sign = if self.reversed { -1.0 } else { 1.0 };
+        self.per_turn.map(|per_turn| sign * turn.si() / per_turn.si())
     }
 }
 

@@ -396,7 +396,8 @@ pub fn alternatives(asked: &Design, nearest: Option<Shortfall>) -> Vec<String> {
             }
         }
     }
-    let Some(nearest) = nearest else { return found };
+    // a pump that matches pairs along it says nothing about rings
+    let Some(nearest) = nearest.filter(|_| asked.target == Target::Collinear) else { return found };
     let crystal = Crystal { cut: nearest.cut, ..asked.crystal.clone() };
     let pump = Design { crystal, find: Find::Pump, target: Target::Collinear, ..asked.clone() };
     let now = asked.photons.pump.si();

@@ -5,7 +5,7 @@ use nalgebra::Vector3;
 use super::interaction::{Interaction, Process, Roles};
 use super::mismatch::Mismatch;
 use super::partner::Pairing;
-use crate::frame::{Direction, Lab, Placement};
+use crate::frame::{Direction, Lab, Orientation, Placement};
 use crate::material::{MaterialError, Principal};
 use crate::optics::{Crystal, Medium};
 use crate::quantity::Wavelength;
@@ -98,6 +98,12 @@ pub struct Media {
     pub idler: Medium,
 }
 
+impl Media {
+    fn exchanged(&self) -> Self {
+        Self { pump: self.pump, signal: self.idler, idler: self.signal }
+    }
+}
+
 /// A crystal that stands in the beam, at the wavelengths of one pair of photons.
 #[derive(Debug, Clone)]
 pub struct Emission {
@@ -109,6 +115,8 @@ pub struct Emission {
     pub media: Media,
     /// 2 pi / period of the domains at the crystal's temperature, rad/m; 0 without poling.
     pub grating: f64,
+    /// The media of the crystal at normal incidence, where the sign of the grating's term is decided.
+    upright: Option<(Placement, Media)>,
     /// Length along the normal, m.
     pub length: f64,
 }
@@ -118,7 +126,12 @@ impl Emission {
     #[must_use]
     pub fn new(crystal: &Crystal, photons: Photons, triplet: &Triplet) -> Self {
         let placement = crystal.placement();
+        let at_normal_incidence = || {
+            let upright = Placement::new(crystal.cut, crystal.reversal, &Orientation::default());
+            (upright, triplet.media(&upright))
+        };
         Self {
+            upright: crystal.poling.map(|_| at_normal_incidence()),
             photons,
             media: triplet.media(&placement),
             placement,
@@ -149,21 +162,19 @@ impl Emission {
         roles.process(&self.media.pump, &self.media.signal, &self.media.idler)
     }
 
-    /// Mismatch of a process, with the sign of the grating that matches better for a pair along the pump.
+    /// Mismatch of a process, with the grating's sign of [`Self::grating_sign`].
     #[must_use]
     pub fn mismatch(&self, roles: Roles) -> Option<Mismatch> {
-        let bare = Mismatch::new(&self.media, roles, &self.placement, 0.0)?;
-        if self.grating == 0.0 {
-            return Some(bare);
-        }
-        let sign = bare.at(bare.along_pump()).map_or(1.0, |at| at.value.signum());
+        let sign = if self.grating == 0.0 { 1.0 } else { self.grating_sign(roles)? };
         Mismatch::new(&self.media, roles, &self.placement, sign * self.grating)
     }
 
-    /// Sign s of the grating term that [`Self::mismatch`] uses.
+    /// Sign s of the grating term: the one that matches better for a pair along the pump at normal incidence, whatever
+    /// the crystal's tilt. `None` without poling.
     #[must_use]
     pub fn grating_sign(&self, roles: Roles) -> Option<f64> {
-        let bare = Mismatch::new(&self.media, roles, &self.placement, 0.0)?;
+        let (placement, media) = self.upright.as_ref()?;
+        let bare = Mismatch::new(media, roles, placement, 0.0)?;
         bare.at(bare.along_pump()).map(|at| at.value.signum())
     }
 
@@ -176,8 +187,8 @@ impl Emission {
     /// The same pairs seen from the idler.
     #[must_use]
     pub fn exchanged(&self) -> Self {
-        let media = Media { pump: self.media.pump, signal: self.media.idler, idler: self.media.signal };
-        Self { photons: self.photons.exchanged(), media, ..self.clone() }
+        let upright = self.upright.map(|(placement, media)| (placement, media.exchanged()));
+        Self { photons: self.photons.exchanged(), media: self.media.exchanged(), upright, ..self.clone() }
     }
 
     /// Polar angle and azimuth of the pump's wave vector in the dielectric frame, radians.

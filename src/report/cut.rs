@@ -1,7 +1,7 @@
 //! Report `cut`: which cut to order.
 
 use crate::job::Setup;
-use crate::matching::{CutSolution, Find, Opinion, Shortfall, Status, Target};
+use crate::matching::{CutSolution, Find, Opinion, Plane, Shortfall, Status, Target};
 use crate::optics::Crystal;
 
 use super::angles::{fixed, grid, or_dash, prose, rounded};
@@ -168,7 +168,9 @@ fn solution_text(s: &CutSolution, find: Find) -> String {
         rounded(crystal.cut.phi.degrees(), 3),
     );
     let mut detail = |label: &str, value: String| out.push_str(&format!("  {label:<22}{value}\n"));
-    detail("|d_eff|", s.d_eff.map_or_else(|| "not known".into(), |d| format!("{} pm/V", fixed(d, 3))));
+    let poled =
+        if crystal.poling.is_some() { " (of the bulk: a first-order grating leaves 2/pi of it)" } else { "" };
+    detail("|d_eff|", s.d_eff.map_or_else(|| "not known".into(), |d| format!("{} pm/V{poled}", fixed(d, 3))));
     if let Some(p) = &s.pairing {
         let walkoff = [&p.pump, &p.signal, &p.idler].map(|w| fixed(w.walkoff().to_degrees(), 2));
         detail(
@@ -181,11 +183,11 @@ fn solution_text(s: &CutSolution, find: Find) -> String {
     detail(
         &format!("FWHM at {} mm", rounded(crystal.length.mm(), 3)),
         format!(
-            "pump angle {} deg, pump {} nm, signal {} nm, temperature {} K",
+            "crystal turned {} deg (outside); pump {} nm with both photons following; signal {} nm; temperature {}",
             or_dash(a.pump_angle.map(f64::to_degrees), 3),
             or_dash(a.pump_wavelength.map(|w| w * 1e9), 3),
             or_dash(a.signal.map(|w| w * 1e9), 2),
-            or_dash(a.temperature, 1)
+            a.temperature.map_or_else(|| "not known".into(), |t| format!("{} K", fixed(t, 1)))
         ),
     );
     if let Some(sign) = s.grating_sign {
@@ -269,33 +271,46 @@ fn ranked(attempts: &[Attempt]) -> Vec<&CutSolution> {
     all
 }
 
-/// The line about the other data sets of one material.
+/// Lines about the other data sets: one for each solution that symmetry allows.
 #[must_use]
-pub fn spread_line(find: Find, own: &[CutSolution], opinions: &[Opinion<Vec<CutSolution>>]) -> String {
-    let first = own.first();
-    let number = |all: &[CutSolution]| {
-        // of several solutions, the one of the same process and plane
-        let like = all.iter().find(|s| first.is_none_or(|f| f.process == s.process && f.plane == s.plane));
-        like.and_then(|s| sought(s, find, first))
-    };
-    let what = match find {
-        Find::Theta | Find::Phi => "the cut in deg",
-        Find::Poling => "the period in um",
-        Find::Temperature => "the temperature in degC",
-        Find::Pump => "the pump in nm",
-    };
-    spread::line(what, number(own), &spread::numbers(opinions, |all| number(all)), 3)
+pub fn spread_lines(find: Find, own: &[CutSolution], opinions: &[Opinion<Vec<CutSolution>>]) -> Vec<String> {
+    let allowed = own.iter().filter(|s| s.status != Status::NoNonlinearity);
+    // mirror images of one another have the same spread
+    let upright = allowed.filter(|s| s.crystal.cut.theta.degrees() <= 90.0 || own.len() == 1);
+    upright
+        .map(|this| {
+            let number = |all: &[CutSolution]| {
+                // of several solutions, the one of the same process and plane that is nearest
+                let alike = all.iter().filter(|s| s.process == this.process && s.plane == this.plane);
+                let away = |v: &f64| (v - sought(this, find)).abs();
+                alike.map(|s| sought(s, find)).min_by(|a, b| away(a).total_cmp(&away(b)))
+            };
+            let what = sought_words(this, find);
+            spread::line(&what, Some(sought(this, find)), &spread::numbers(opinions, |all| number(all)), 3)
+        })
+        .collect()
 }
 
-fn sought(s: &CutSolution, find: Find, first: Option<&CutSolution>) -> Option<f64> {
-    let in_xy = first.is_some_and(|f| f.plane == crate::matching::Plane::Xy);
+fn sought_words(s: &CutSolution, find: Find) -> String {
+    let place = s.plane.name().map_or(String::new(), |plane| format!(" in the {plane} plane"));
     match find {
-        Find::Theta if in_xy => Some(s.crystal.cut.phi.degrees()),
-        Find::Theta => Some(s.crystal.cut.theta.degrees()),
-        Find::Phi => Some(s.crystal.cut.phi.degrees()),
-        Find::Poling => s.crystal.poling.map(|p| p.um()),
-        Find::Temperature => Some(s.crystal.temperature.degc()),
-        Find::Pump => Some(s.photons.pump.nm()),
+        Find::Theta if s.plane == Plane::Xy => "phi in the XY plane in deg".into(),
+        Find::Theta => format!("theta{place} in deg"),
+        Find::Phi => "phi in deg".into(),
+        Find::Poling => format!("the period of {} in um", s.process),
+        Find::Temperature => "the temperature in degC".into(),
+        Find::Pump => "the pump in nm".into(),
+    }
+}
+
+fn sought(s: &CutSolution, find: Find) -> f64 {
+    match find {
+        Find::Theta if s.plane == Plane::Xy => s.crystal.cut.phi.degrees(),
+        Find::Theta => s.crystal.cut.theta.degrees(),
+        Find::Phi => s.crystal.cut.phi.degrees(),
+        Find::Poling => s.crystal.poling.map_or(f64::NAN, |p| p.um()),
+        Find::Temperature => s.crystal.temperature.degc(),
+        Find::Pump => s.photons.pump.nm(),
     }
 }
 
@@ -308,16 +323,23 @@ pub fn no_solution(
     alternatives: &[String],
 ) -> String {
     let mut text = format!("no cut gives {} in {}", target_words(target), setup.interaction);
-    if let Some(s) = shortfall {
-        text.push_str(&format!(
+    match (shortfall, target) {
+        (Some(s), Target::Collinear) => text.push_str(&format!(
             "; the nearest collinear mismatch is {} rad/mm at theta {} deg, phi {} deg",
             fixed(s.mismatch * 1e-3, 2),
             fixed(s.cut.theta.degrees(), 1),
             rounded(s.cut.phi.degrees(), 1)
-        ));
+        )),
+        (Some(s), _) => text.push_str(&format!(
+            "; pairs along the pump are {} at theta {} deg, phi {} deg, and the rings grow from there",
+            if s.mismatch < 5e4 { "matched" } else { "nearest to matching" },
+            fixed(s.cut.theta.degrees(), 1),
+            rounded(s.cut.phi.degrees(), 1)
+        )),
+        (None, _) => {}
     }
     if alternatives.is_empty() {
-        text.push_str("; no other type and no other pump within a factor of two matches either");
+        text.push_str("; no other type matches either");
     } else {
         text.push_str(&format!("; {} would match", alternatives.join(", ")));
     }

@@ -24,8 +24,8 @@ pub const COLUMNS: [Column; 11] = [
     column("half_angle_deg", "deg", "of the cone that fits the signal's ring, outside"),
     column("crossing_deg", "deg", "signal at its crossings to the pump, outside"),
     column("separation_deg", "deg", "between the photons at the crossings, outside"),
-    column("stage_reading_deg", "deg", "what the mount's scale shows"),
-    column("stage_turns", "", "turns of the screw from where the mount stands now"),
+    column("stage_reading_deg", "deg", "what the scale of the tilt shows; empty for other handles"),
+    column("stage_turns", "", "turns of the tilt's screw from now, positive where the reading rises"),
 ];
 
 /// Rows of all solutions; with temperature or pump as the actuator its column leads.
@@ -35,9 +35,8 @@ pub fn table(setup: &Setup, actuator: Actuator, turns: &[Turn]) -> Table {
     for (index, turn) in turns.iter().enumerate() {
         let to = &turn.crystal.orientation;
         let change = change(&setup.crystals[0], actuator, turn);
-        let stage = setup.stage.as_ref();
-        let reading = stage
-            .and_then(|s| s.reading(if actuator == Actuator::CrossTilt { to.cross_tilt } else { to.tilt }));
+        let stage = setup.stage.as_ref().filter(|_| actuator == Actuator::Tilt);
+        let reading = stage.and_then(|s| s.reading(to.tilt));
         let measure = &turn.measure;
         let wavelengths = [turn.photons.pump, turn.photons.signal, turn.photons.idler];
         let status = if measure.touching { Status::Touching } else { Status::Ok };
@@ -129,9 +128,7 @@ pub fn text(setup: &Setup, target: Target, actuator: Actuator, chosen: bool, tur
 fn cells(setup: &Setup, actuator: Actuator, index: usize, turn: &Turn) -> Vec<String> {
     let change = change(&setup.crystals[0], actuator, turn);
     let to = &turn.crystal.orientation;
-    let reading = setup
-        .stage
-        .and_then(|s| s.reading(if actuator == Actuator::CrossTilt { to.cross_tilt } else { to.tilt }));
+    let reading = setup.stage.and_then(|s| s.reading(to.tilt));
     let measure = &turn.measure;
     vec![
         (index + 1).to_string(),
@@ -175,20 +172,24 @@ fn words(setup: &Setup, actuator: Actuator, index: usize, turn: &Turn) -> String
             setting(actuator, turn)
         );
     };
-    let turns = setup.stage.and_then(|s| s.turns(change));
-    let screw = turns.map_or(String::new(), |t| format!(", {} turns of the screw", signed(t, 2)));
+    let turns = setup.stage.filter(|_| actuator == Actuator::Tilt).and_then(|s| s.turns(change));
+    let screw = turns.map_or(String::new(), |t| format!(", screw {} turns", signed(t, 2)));
     format!("  {}: {}{screw}\n", index + 1, room_words(crystal, actuator, change))
 }
 
 /// The line about the other data sets.
 #[must_use]
 pub fn spread_line(actuator: Actuator, own: &[Turn], opinions: &[Opinion<Vec<Turn>>]) -> String {
+    let value = |t: &Turn| match actuator {
+        Actuator::Tilt | Actuator::CrossTilt => t.setting.to_degrees(),
+        Actuator::Temperature => t.setting,
+        Actuator::Pump => t.setting * 1e9,
+    };
+    let first = own.first().map(value);
+    // of several settings the one that corresponds: nearest to the first of this set
     let number = |turns: &[Turn]| {
-        turns.first().map(|t| match actuator {
-            Actuator::Tilt | Actuator::CrossTilt => t.setting.to_degrees(),
-            Actuator::Temperature => t.setting,
-            Actuator::Pump => t.setting * 1e9,
-        })
+        let away = |v: &f64| first.map_or(0.0, |own| (v - own).abs());
+        turns.iter().map(value).min_by(|a, b| away(a).total_cmp(&away(b)))
     };
     let what = match actuator {
         Actuator::Tilt => "the tilt in deg",
@@ -196,5 +197,5 @@ pub fn spread_line(actuator: Actuator, own: &[Turn], opinions: &[Opinion<Vec<Tur
         Actuator::Temperature => "the temperature in degC",
         Actuator::Pump => "the pump in nm",
     };
-    spread::line(what, number(own), &spread::numbers(opinions, |turns| number(turns)), 3)
+    spread::line(what, first, &spread::numbers(opinions, |turns| number(turns)), 3)
 }
