@@ -22,5 +22,6 @@ pub mod job;
 pub mod matching;
 pub mod material;
 pub mod optics;
+pub(crate) mod places;
 pub mod quantity;
 pub mod report;

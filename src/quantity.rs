@@ -86,6 +86,16 @@ const fn scaled(name: &'static str, factor: f64) -> Unit {
 }
 
 const LENGTHS: &[Unit] = &[
+    decimal("mm", -3),
+    decimal("um", -6),
+    decimal("nm", -9),
+    decimal("cm", -2),
+    decimal("m", 0),
+    decimal("pm", -12),
+    decimal("\u{b5}m", -6),
+    decimal("\u{3bc}m", -6),
+];
+const WAVELENGTHS: &[Unit] = &[
     decimal("nm", -9),
     decimal("um", -6),
     decimal("mm", -3),
@@ -122,7 +132,8 @@ struct Kind {
     units: &'static [Unit],
 }
 
-const LENGTH: Kind = Kind { article: "a length", example: "405 nm", units: LENGTHS };
+const LENGTH: Kind = Kind { article: "a length", example: "2 mm", units: LENGTHS };
+const WAVELENGTH: Kind = Kind { article: "a wavelength", example: "405 nm", units: WAVELENGTHS };
 const ANGLE: Kind = Kind { article: "an angle", example: "0.5 deg", units: ANGLES };
 const TEMPERATURE: Kind = Kind { article: "a temperature", example: "22 degC", units: TEMPERATURES };
 const DURATION: Kind = Kind { article: "a time", example: "150 fs", units: DURATIONS };
@@ -182,14 +193,15 @@ impl Kind {
     }
 
     fn wrong_unit(&self, text: &str, unit: &str) -> QuantityError {
-        let near = self.units.iter().find(|u| u.name.eq_ignore_ascii_case(unit));
+        let alike =
+            |u: &&Unit| u.name.eq_ignore_ascii_case(unit) || (u.name.len() > 2 && unit.starts_with(u.name));
+        let near = self.units.iter().find(alike);
         QuantityError::WrongUnit {
             text: text.trim().into(),
             unit: unit.into(),
             kind: self.article,
             units: self.unit_names(),
-            hint: near
-                .map_or(String::new(), |u| format!(" (did you mean `{}`? units are case-sensitive)", u.name)),
+            hint: near.map_or(String::new(), |u| format!("; did you mean `{}`?", u.name)),
         }
     }
 }
@@ -386,7 +398,7 @@ impl Wavelength {
     #[must_use]
     pub fn partner(self, pump: Self) -> Option<Self> {
         let inverse = 1.0 / pump.0 - 1.0 / self.0;
-        (inverse > 0.0).then(|| Self(1.0 / inverse))
+        (self.0 > pump.0 && inverse > 0.0).then(|| Self(1.0 / inverse))
     }
 
     /// Twice the wavelength: the degenerate photon of a pump.
@@ -403,8 +415,8 @@ impl FromStr for Wavelength {
     fn from_str(text: &str) -> Result<Self, QuantityError> {
         let trimmed = text.trim();
         match trimmed.strip_suffix("air") {
-            Some(length) => LENGTH.parse(length).map(vacuum_from_air).map(Self),
-            None => LENGTH.parse(trimmed).map(Self),
+            Some(length) => WAVELENGTH.parse(length).map(vacuum_from_air).map(Self),
+            None => WAVELENGTH.parse(trimmed).map(Self),
         }
     }
 }
@@ -490,8 +502,8 @@ mod tests {
     fn refusals_say_what_would_do() {
         assert_eq!(message::<Angle>("0,5 deg"), "`0,5 deg` has a decimal comma; use a point: `0.5 deg`");
         assert!(message::<Angle>("0.5").starts_with("`0.5` has no unit; an angle needs one of deg, arcmin"));
-        assert!(message::<Length>("5 kg").contains("`kg` is not a unit of a length; use one of nm, um, mm"));
-        assert!(message::<Length>("405 NM").contains("did you mean `nm`? units are case-sensitive"));
+        assert!(message::<Length>("5 kg").contains("`kg` is not a unit of a length; use one of mm, um, nm"));
+        assert!(message::<Length>("405 NM").contains("did you mean `nm`?"));
         assert!(message::<Wavelength>("NaN nm").contains("does not start with a number"));
         assert!(message::<Wavelength>("").contains("does not start with a number"));
         assert!(message::<Length>("1e400 m").contains("not a finite number"));

@@ -51,6 +51,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         solve(&setup, &crystals).ok()
     });
     let mut conventions = Conventions::of(&setup);
+    conventions.warn_of_dim_phi(&setup);
     conventions.lines.splice(0..0, spread_lines(&found, &others));
     let answer = Answer {
         command: "cones",

@@ -2,9 +2,10 @@
 
 use clap::{Args as ClapArgs, ValueEnum};
 use twincone::job::setup::{GivenCut, Needs, Setup};
+use twincone::job::target_angle;
 use twincone::matching::{
-    ConesError, CutSolution, Design, Find, Interaction, Status, Target, alternatives, design, opinions,
-    shortfall,
+    ConesError, CutSolution, Design, Find, Interaction, Opinion, Status, Target, alternatives, design,
+    opinions, shortfall,
 };
 use twincone::material::{MaterialError, Optic, tensor::is_centrosymmetric};
 use twincone::optics::Crystal;
@@ -75,15 +76,8 @@ impl TargetArgs {
     /// # Errors
     /// An angle without a unit or out of bounds.
     pub fn target(&self) -> Result<Option<Target>, Failure> {
-        let angle = |option: &str, text: &str, most: f64| -> Result<f64, Failure> {
-            let angle: Angle = text.parse().map_err(|e| Failure::usage(format!("{option}: {e}")))?;
-            if angle.degrees() > 0.0 && angle.degrees() < most {
-                Ok(angle.si())
-            } else {
-                Err(Failure::usage(format!(
-                    "{option}: the angle must lie between 0 deg and {most} deg, not {angle}"
-                )))
-            }
+        let angle = |option: &str, text: &str, most: f64| {
+            target_angle(text, most).map_err(|why| Failure::usage(format!("{option}: {why}")))
         };
         Ok(match (&self.half_angle, &self.crossing, &self.separation) {
             (Some(text), ..) => Some(Target::HalfAngle(angle("--half-angle", text, 60.0)?)),
@@ -113,53 +107,71 @@ impl Sought {
 /// # Errors
 /// What is missing, wrong or outside a data set's range.
 pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
-    let setups = args.experiment.setups(output, Needs { cut: false, pump: true }, args.all_materials)?;
-    let several = args.all_materials || setups.len() > 1;
+    let listed = args.experiment.setups(output, Needs { cut: false, pump: true }, args.all_materials)?;
+    let several = args.all_materials || listed.len() > 1;
+    let setups: Vec<Setup> = listed.iter().flat_map(Setup::one_per_signal).collect();
     let mut attempts = Vec::new();
     let mut spreads = Vec::new();
     let find = args.find.find();
-    let mut asked = Target::Collinear;
     for setup in &setups {
         let question = question(args, setup)?;
-        asked = question.target;
         let own = attempt(setup, &question, several)?;
         let others = opinions(&question.crystal, &setup.photons(), |other| {
-            let crystal = other.clone();
-            let found = design(&Design { crystal, ..question.clone() }).unwrap_or_default();
+            let found = design(&Design { crystal: other.clone(), ..question.clone() }).unwrap_or_default();
             (other.clone(), found)
         });
-        if let Ok(found) = &own.outcome {
-            let answers = others.iter().map(|o| twincone::matching::Opinion {
-                dataset: o.dataset.clone(),
-                answer: o.answer.as_ref().map(|(_, found)| found.clone()).map_err(Clone::clone),
-            });
-            for line in spread_lines(find, found, &answers.collect::<Vec<_>>()) {
-                match several {
-                    false => spreads.push(line),
-                    true if others.is_empty() => {}
-                    true => spreads.push(format!("{}: {line}", setup.crystals[0].material.id)),
-                }
-            }
+        if let Ok(found) = own.outcome.as_ref().map(Vec::as_slice)
+            && !(several && others.is_empty())
+        {
+            let id = if several { format!("{}: ", setup.crystals[0].material.id) } else { String::new() };
+            let answers: Vec<_> = others.iter().map(|o| o.clone().map(|(_, found)| found)).collect();
+            spreads.extend(spread_lines(find, found, &answers).into_iter().map(|line| format!("{id}{line}")));
         }
         attempts.push(own);
         if args.all_datasets {
             attempts.extend(others.into_iter().map(|o| other_attempt(&question.crystal, o)));
         }
     }
+    let asked = question(args, &setups[0])?;
+    let answered = answered(&setups[0], &asked, &attempts);
+    if !several {
+        args.experiment.write_job(&answered)?;
+    }
     let mut conventions = describe(&setups, &attempts, several);
     conventions.lines.splice(0..0, spreads);
-    let solved = attempts.iter().any(|a| a.outcome.is_ok());
-    let mut first = setups[0].clone();
-    first.interaction = question(args, &first)?.interaction;
+    let first = Setup { interaction: asked.interaction, ..setups[0].clone() };
+    let text = match several {
+        true => ranking(&first, asked.target, &attempts),
+        false => text(&first, asked.target, find, &attempts),
+    };
     let answer = Answer {
         command: "cut",
         tables: vec![table(&first, &attempts, several)],
-        text: if several { ranking(&first, asked, &attempts) } else { text(&first, asked, find, &attempts) },
+        text,
         conventions,
-        job: resolved_job(&first),
-        solved,
+        job: resolved_job(&answered),
+        solved: attempts.iter().any(|a| a.outcome.is_ok()),
     };
     output.outcome(&answer, None)
+}
+
+/// The job that the answer amounts to: the brightest solution, or the target where there is none.
+fn answered(setup: &Setup, asked: &Design, attempts: &[Attempt]) -> Setup {
+    let mut setup = setup.clone();
+    let solutions = attempts.iter().filter_map(|a| a.outcome.as_ref().ok()).flatten();
+    match solutions.max_by(|a, b| a.d_eff.unwrap_or(0.0).total_cmp(&b.d_eff.unwrap_or(0.0))) {
+        Some(best) => {
+            setup.crystals = vec![best.crystal.clone()];
+            setup.pump = Some(best.photons.pump);
+            setup.cut = vec![GivenCut { theta: true, phi: true, target: None }];
+            setup.interaction = match asked.interaction {
+                Interaction::Any => Interaction::Explicit(best.process),
+                named => named,
+            };
+        }
+        None => setup.cut[0].target = Some(asked.target),
+    }
+    setup
 }
 
 /// Conventions of the first setup; where several materials compete, the data sets are named in the table.
@@ -200,6 +212,9 @@ fn question(args: &Args, setup: &Setup) -> Result<Design, Failure> {
             "no phi: {} is biaxial, so its cut needs both angles; pass --phi, for example --phi 0deg",
             crystal.material.id
         )));
+    }
+    if given.target.is_some() && args.target.target()?.is_some() && args.experiment.names_target() {
+        return Err(Failure::usage("the target is named twice: leave out --cut, or the other one"));
     }
     if find == Find::Theta && given.theta && args.experiment.names_theta() {
         return Err(Failure::usage(
@@ -253,10 +268,10 @@ fn status_of(error: &MaterialError) -> Status {
 fn why_none(setup: &Setup, question: &Design) -> Result<String, Failure> {
     let nearest = shortfall(question)?;
     let asked = Setup { interaction: question.interaction, ..setup.clone() };
-    Ok(no_solution(&asked, question.target, nearest, &alternatives(question, nearest)))
+    Ok(no_solution(&asked, question.find, question.target, nearest, &alternatives(question, nearest)))
 }
 
-type Told = twincone::matching::Opinion<(Crystal, Vec<CutSolution>)>;
+type Told = Opinion<(Crystal, Vec<CutSolution>)>;
 
 fn other_attempt(own: &Crystal, told: Told) -> Attempt {
     match told.answer {

@@ -2,9 +2,9 @@
 
 use clap::Args as ClapArgs;
 use twincone::job::setup::{Needs, Setup};
-use twincone::optics::Crystal;
+use twincone::optics::{Crystal, IndexRow, index_rows, missing};
 use twincone::quantity::Wavelength;
-use twincone::report::index::{IndexRow, out_of_range, rows, spread_line, table, text};
+use twincone::report::index::{spread_line, table, text};
 use twincone::report::{Answer, Conventions, resolved_job};
 
 use super::failure::Failure;
@@ -40,6 +40,9 @@ pub struct Args {
 pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let pump = args.wavelength.is_empty() && args.from.is_none();
     let setups = args.experiment.setups(output, Needs { cut: false, pump }, false)?;
+    if let [setup] = setups.as_slice() {
+        args.experiment.write_job(setup)?;
+    }
     let mut all: Vec<IndexRow> = Vec::new();
     let mut conventions = Conventions::of(&setups[0]);
     let mut spreads = Vec::new();
@@ -49,7 +52,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         let directed = setup.cut[0].theta;
         let mut own = Vec::new();
         for wavelength in &wavelengths {
-            own.extend(rows(crystal, *wavelength, directed)?);
+            own.extend(index_rows(crystal, *wavelength, directed)?);
         }
         spreads.push(spread_line(crystal, &own, directed));
         all.append(&mut own);
@@ -57,10 +60,8 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         if args.all_datasets {
             for other in others(crystal) {
                 for wavelength in &wavelengths {
-                    all.extend(
-                        rows(&other, *wavelength, directed)
-                            .unwrap_or_else(|_| vec![out_of_range(&other, *wavelength)]),
-                    );
+                    let found = index_rows(&other, *wavelength, directed);
+                    all.extend(found.unwrap_or_else(|fault| vec![missing(&other, *wavelength, fault)]));
                 }
                 conventions.add_dataset(&other);
             }

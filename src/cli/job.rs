@@ -4,7 +4,7 @@ use std::path::PathBuf;
 
 use clap::{Args as ClapArgs, Subcommand};
 use twincone::job::resolve;
-use twincone::job::setup::Needs;
+use twincone::job::setup::{Needs, SetupError};
 use twincone::job::{Document, template};
 
 use super::failure::Failure;
@@ -52,7 +52,10 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
             let missing = match key {
                 "crystal.material" => said.crystal.is_empty() || said.crystal[0].get_ref().material.is_none(),
                 "pump.wavelength" => said.pump.as_ref().is_none_or(|p| p.get_ref().wavelength.is_none()),
-                _ => said.crystal.is_empty() || said.crystal[0].get_ref().cut.is_none(),
+                _ => !said
+                    .crystal
+                    .iter()
+                    .any(|c| c.get_ref().cut.as_ref().is_some_and(|cut| cut.get_ref().is_decided())),
             };
             if missing {
                 let one = said.emission.as_ref().and_then(|e| e.get_ref().kind.as_ref());
@@ -63,7 +66,12 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         }
         document.append(&typed);
     }
-    let setup = resolve(&document, &catalogue(output, &document)?, Needs::ALL)?;
+    // a target is written down, not solved: a crystal that cannot meet it still gets its job
+    let catalogue = catalogue(output, &document)?;
+    let setup = match resolve(&document, &catalogue, Needs::ALL) {
+        Err(SetupError::NoCut(_)) => resolve(&document, &catalogue, Needs { cut: false, pump: true })?,
+        other => other?,
+    };
     args.experiment.write_job(&setup)?;
     Ok(Outcome::plain(template(&setup)))
 }
@@ -72,20 +80,22 @@ fn check(file: &PathBuf, output: &OutputArgs) -> Result<Outcome, Failure> {
     let name = file.display().to_string();
     let document = Document::from_file(&name, &read_text(file)?);
     let setup = resolve(&document, &catalogue(output, &document)?, Needs::ALL)?;
-    let mut text = format!("{name}: a valid job, 1 point\n  pump {}, {}\n", setup.pump(), setup.interaction);
+    let mut text = format!("{name}: a valid job\n  pump {}, {}\n", setup.pump(), setup.interaction);
     for crystal in &setup.crystals {
         text.push_str(&format!(
-            "  crystal {}: {}:{}, theta {:.3} deg, phi {} deg, {}, tilt {}\n",
+            "  crystal {}: {}:{}, theta {:.3} deg, phi {} deg, {}, tilt {}, cross tilt {}, roll {}\n",
             crystal.name,
             crystal.material.id,
             crystal.set().id,
             crystal.cut.theta.degrees(),
             crystal.cut.phi.degrees(),
             crystal.length,
-            crystal.orientation.tilt
+            crystal.orientation.tilt,
+            crystal.orientation.cross_tilt,
+            crystal.orientation.roll
         ));
     }
-    let signals: Vec<String> = setup.signals().iter().map(ToString::to_string).collect();
+    let signals: Vec<String> = setup.signals().iter().map(|w| format!("{w:.3}")).collect();
     text.push_str(&format!("  signal {}\n", signals.join(", ")));
     Ok(Outcome::plain(text))
 }

@@ -35,7 +35,7 @@ pub struct ExperimentArgs {
     #[arg(long, value_name = "ANGLE", allow_hyphen_values = true)]
     phi: Option<String>,
     /// Solve the cut first: crossing=3deg, half-angle=3deg, separation=6deg, collinear or beamlike
-    #[arg(long = "cut", value_name = "TARGET")]
+    #[arg(long = "cut", value_name = "TARGET", conflicts_with = "theta")]
     cut_target: Option<String>,
     /// Crystal length along the face normal [default: 1 mm]
     #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
@@ -77,13 +77,13 @@ pub struct ExperimentArgs {
     #[arg(long = "type", value_name = "TYPE")]
     kind: Option<String>,
     /// Polarizations one by one: "e -> o + e", or e:o+e which needs no quotes
-    #[arg(long, value_name = "PROCESS", allow_hyphen_values = true)]
+    #[arg(long, value_name = "PROCESS", allow_hyphen_values = true, conflicts_with = "kind")]
     process: Option<String>,
     /// Signal wavelength, repeatable [default: degenerate]
     #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
     signal: Vec<String>,
     /// Idler wavelength, instead of the signal's
-    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
+    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true, conflicts_with = "signal")]
     idler: Option<String>,
     /// Screen distance [default: 1 m]
     #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
@@ -180,6 +180,11 @@ impl ExperimentArgs {
         self.job.is_some()
     }
 
+    /// Whether a target was typed as --cut.
+    pub fn names_target(&self) -> bool {
+        self.cut_target.is_some()
+    }
+
     /// Whether theta was typed, rather than taken from a job file.
     pub fn names_theta(&self) -> bool {
         self.theta.is_some()
@@ -204,8 +209,10 @@ impl ExperimentArgs {
                     "the job has several crystals; this command looks at one: describe that one alone",
                 ));
             }
-            self.write_job(&setup)?;
             return Ok(vec![setup]);
+        }
+        if self.write_job.is_some() {
+            return Err(Failure::usage("--write-job writes one crystal's job; name one --material"));
         }
         let mut setups = Vec::with_capacity(listed.len());
         for material in listed {

@@ -2,9 +2,7 @@
 
 use clap::{Args as ClapArgs, ValueEnum};
 use twincone::job::setup::Needs;
-use twincone::matching::{
-    Actuator, Emission, Interaction, Measure, Target, Triplet, opinions, shortage, tune, tuning_turn,
-};
+use twincone::matching::{Actuator, Interaction, Target, Tuned, Tuning, opinions, shortage, tune};
 use twincone::report::tilt::{spread_line, table, text};
 use twincone::report::{Answer, Conventions, resolved_job};
 
@@ -61,36 +59,29 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let target = target.ok_or_else(|| {
         Failure::usage("no target: pass --crossing, --separation, --half-angle, --collinear, --beamlike or --touching, for example --crossing 3deg")
     })?;
-    let [crystal] = setup.crystals.as_slice() else {
-        return Err(Failure::usage(
-            "the job has several crystals; `tilt` turns one: describe that one alone",
-        ));
-    };
-    let crystal = crystal.clone();
+    let crystal = setup.only_crystal("tilt").map_err(Failure::usage)?.clone();
+    let photons = setup.only_photons("tilt").map_err(Failure::usage)?;
     if let (false, Target::HalfAngle(_)) = (setup.interaction_given, target) {
         setup.interaction = Interaction::One;
     }
-    let photons = setup.photons();
-    let triplet = Triplet::new(&crystal, &photons)?;
-    let emission = Emission::new(&crystal, photons, &triplet);
-    let all = emission.roles(setup.interaction).map_err(Failure::usage)?;
-    let roles = all[0];
-    if target.needs_two_rings() && roles.signal == roles.idler {
-        return Err(Failure::usage(
-            "crossings need two photons of opposite polarization: use --type II, or ask for --half-angle",
-        ));
-    }
-    let actuator = args.by.map_or_else(|| tuning_turn(&crystal, photons, &triplet, roles), By::actuator);
-    let fixed = setup.signals.fixed();
-    let turns = tune(&crystal, photons, fixed, roles, target, actuator)?;
+    let question = Tuning {
+        crystal: crystal.clone(),
+        photons,
+        fixed_signal: setup.signals.fixed(),
+        interaction: setup.interaction,
+        target,
+        actuator: args.by.map(By::actuator),
+    };
+    let Tuned { actuator, turns, now } = tune(&question)?;
     if turns.is_empty() {
-        let now = Measure::of(&emission, roles);
         return Err(Failure { status: 1, message: shortage(target, actuator, &now) });
     }
     let others = opinions(&crystal, &photons, |other| {
-        tune(other, photons, fixed, roles, target, actuator).unwrap_or_default()
+        let again = Tuning { crystal: other.clone(), actuator: Some(actuator), ..question.clone() };
+        tune(&again).map(|tuned| tuned.turns).unwrap_or_default()
     });
     let mut conventions = Conventions::of(&setup);
+    conventions.warn_of_dim_phi(&setup);
     conventions.lines.insert(0, spread_line(actuator, &turns, &others));
     let answer = Answer {
         command: "tilt",

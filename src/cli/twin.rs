@@ -3,9 +3,9 @@
 use clap::Args as ClapArgs;
 use twincone::frame::Direction;
 use twincone::job::setup::{Needs, Setup, Signals};
-use twincone::matching::{Emission, Interaction, Photons, opinions};
+use twincone::matching::{Emission, Photons, opinions, twins};
 use twincone::quantity::{Angle, Length, Wavelength};
-use twincone::report::twin::{Twin, spread_line, table, text};
+use twincone::report::twin::{spread_line, table, text};
 use twincone::report::{Answer, Conventions, resolved_job};
 
 use super::failure::Failure;
@@ -32,32 +32,25 @@ pub struct Args {
 pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let mut setup = args.experiment.setup(output, Needs::ALL)?;
     let pump = setup.pump();
-    let wavelength = match &args.wavelength {
+    let wavelength: Wavelength = match &args.wavelength {
         Some(text) => text.parse().map_err(|e| Failure::usage(format!("--wavelength: {e}")))?,
-        None => setup.signals()[0],
+        None => setup.only_photons("twin").map_err(Failure::usage)?.signal,
     };
+    if wavelength.si() <= 0.0 {
+        return Err(Failure::usage(format!("--wavelength: a wavelength must be positive, not {wavelength}")));
+    }
     let photons = Photons::new(pump, wavelength).ok_or_else(|| too_short(wavelength, pump))?;
     setup.signals = Signals::At(vec![wavelength]);
-    if setup.crystals.len() > 1 {
-        return Err(Failure::usage(
-            "the job has several crystals; `twin` looks at one: describe that one alone",
-        ));
-    }
+    let crystal = setup.only_crystal("twin").map_err(Failure::usage)?.clone();
     let direction = direction(&args.direction, &setup)?;
-    let emission = Emission::of(&setup.crystals[0], photons)?;
-    let mut roles = emission.roles(setup.interaction).map_err(Failure::usage)?;
-    if let (Interaction::Explicit(_), [only]) = (setup.interaction, roles.as_slice()) {
-        // the given photon may be either of the named pair
-        if only.signal != only.idler && photons.degenerate() {
-            roles.push(roles[0].exchanged());
-        }
-    }
-    let twins: Vec<Twin> = roles.iter().map(|r| (*r, emission.pairing(*r, direction))).collect();
+    let emission = Emission::of(&crystal, photons)?;
+    let twins = twins(&crystal, &emission, setup.interaction, direction).map_err(Failure::usage)?;
     let others = opinions(&setup.crystals[0], &photons, |other| {
         let there = Emission::of(other, photons).ok()?;
-        Some(there.pairing(twins.first()?.0, direction)?.phase_matching_factor(there.length))
+        Some(there.pairing(twins.first()?.roles, direction)?.phase_matching_factor(there.length))
     });
     let mut conventions = Conventions::of(&setup);
+    conventions.warn_of_dim_phi(&setup);
     conventions.lines.insert(0, spread_line(&twins, emission.length, &others));
     let answer = Answer {
         command: "twin",

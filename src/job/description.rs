@@ -126,6 +126,15 @@ pub struct Cut {
     pub beamlike: Option<bool>,
 }
 
+impl Cut {
+    /// Whether theta or a target is given.
+    #[must_use]
+    pub fn is_decided(&self) -> bool {
+        let angles = [&self.theta, &self.crossing, &self.half_angle, &self.separation];
+        angles.iter().any(|a| a.is_some()) || self.collinear == Some(true) || self.beamlike == Some(true)
+    }
+}
+
 /// `[mount]`
 #[derive(Debug, Clone, Default, Deserialize, Serialize)]
 #[serde(deny_unknown_fields)]

@@ -11,8 +11,7 @@ use toml::Spanned;
 use toml::de::{DeArray, DeTable, DeValue};
 
 use super::description::Description;
-use super::places::point_at;
-use crate::material::nearest;
+use crate::places::{plain_message, point_at};
 
 /// A description that cannot be used. The text points at the place and says what to do.
 #[derive(Debug, Clone, PartialEq, Eq, Error)]
@@ -89,7 +88,7 @@ impl Document {
             let text = &self.buffer[source.range.clone()];
             let parsed = DeTable::parse(text).map_err(|e| {
                 let span = e.span().unwrap_or(0..0);
-                self.fault(shift(&span, source.range.start), &first_lines(e.message()))
+                self.fault(shift(&span, source.range.start), &plain_message(e.message()))
             })?;
             let mut table = parsed.into_inner();
             shift_table(&mut table, source.range.start);
@@ -102,7 +101,7 @@ impl Document {
         normalise(&mut tree);
         let whole = Spanned::new(0..self.buffer.len(), tree);
         Description::deserialize(toml::de::Deserializer::from(whole)).map_err(|e| {
-            let message = with_nearest_key(e.message());
+            let message = plain_message(e.message());
             self.fault(e.span().unwrap_or(0..0), &message)
         })
     }
@@ -132,10 +131,6 @@ fn dotted(key: &str) -> String {
         .split('.')
         .map(|p| if bare(p) { p.to_string() } else { toml::Value::String(p.into()).to_string() });
     parts.collect::<Vec<_>>().join(".")
-}
-
-fn first_lines(message: &str) -> String {
-    message.lines().filter(|l| !l.trim().is_empty()).collect::<Vec<_>>().join("; ")
 }
 
 fn shift(span: &Range<usize>, by: usize) -> Range<usize> {
@@ -198,7 +193,7 @@ fn merge_value<'a>(
     let span = value.span();
     match (there.get_mut(), value.into_inner()) {
         (DeValue::Table(old), DeValue::Table(new)) => {
-            let new = if LISTS.contains(&key) { without_star(new) } else { new };
+            let new = if LISTS.contains(&key) { for_the_only_one(old, new, key, &span)? } else { new };
             drop_rivals(old, &new, key);
             merge(old, new)
         }
@@ -214,17 +209,29 @@ fn merge_value<'a>(
     }
 }
 
-/// `*` stands for all; where there is one table, for that one.
-fn without_star(mut table: DeTable<'_>) -> DeTable<'_> {
-    match table.remove("*").map(Spanned::into_inner) {
-        Some(DeValue::Table(all)) => {
-            for (key, value) in all {
-                table.insert(key, value);
+/// Where there is one table, `*`, `1` and its name stand for it.
+fn for_the_only_one<'a>(
+    old: &DeTable<'a>,
+    new: DeTable<'a>,
+    key: &str,
+    span: &Range<usize>,
+) -> Result<DeTable<'a>, MergeFault> {
+    let name = old.get("name").and_then(|n| n.get_ref().as_str());
+    let mut table = DeTable::new();
+    for (part, value) in new {
+        let text = part.get_ref().as_ref();
+        let chosen = text == "*" || text == "1" || (name == Some(text) && value.get_ref().is_table());
+        match (chosen, value.into_inner()) {
+            (true, DeValue::Table(all)) => table.extend(all),
+            (false, _) if text.parse::<usize>().is_ok() => {
+                return Err((span.clone(), format!("there is no {key} {text}; there is only one, {key} 1")));
             }
-            table
+            (_, other) => {
+                table.insert(part, Spanned::new(span.clone(), other));
+            }
         }
-        _ => table,
     }
+    Ok(table)
 }
 
 /// Keys of a section that exclude one another: a new one replaces its rivals. A new material drops the old data set.
@@ -335,15 +342,4 @@ fn wrap(value: &mut Spanned<DeValue<'_>>) {
     let inner = std::mem::replace(value.get_mut(), DeValue::Boolean(false));
     let list = DeArray::from_iter([Spanned::new(span.clone(), inner)]);
     *value = Spanned::new(span, DeValue::Array(list));
-}
-
-/// "unknown field `tlt`, expected one of ..." with the nearest key first.
-fn with_nearest_key(message: &str) -> String {
-    let message = first_lines(message);
-    let Some(rest) = message.strip_prefix("unknown field `") else { return message };
-    let Some((wrong, rest)) = rest.split_once('`') else { return message };
-    let known: Vec<&str> = rest.split('`').skip(1).step_by(2).collect();
-    let hint =
-        nearest(wrong, known.iter().copied()).map_or(String::new(), |n| format!("; did you mean `{n}`?"));
-    format!("unknown key `{wrong}`{hint} (known here: {})", known.join(", "))
 }

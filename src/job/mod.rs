@@ -3,15 +3,12 @@
 mod checks;
 pub mod description;
 mod document;
-mod places;
 mod resolve;
 mod settle;
 pub mod setup;
 mod template;
 
 pub use document::{Document, JobError};
-pub use resolve::{resolve, resolve_description};
+pub use resolve::{resolve, resolve_description, target_angle};
 pub use setup::Setup;
 pub use template::template;
-
-pub(crate) use places::point_at;

@@ -52,6 +52,12 @@ impl Reader<'_> {
         if wavelength.si() <= 0.0 {
             return Err(self.fault(text, &format!("{what} must be positive, not {}", text.get_ref())));
         }
+        // far outside any crystal's transparency; also keeps wavenumbers finite
+        if !(1e-8..=1e-2).contains(&wavelength.si()) {
+            let message =
+                format!("{what}, {}, is not a wavelength of light: look at the unit", text.get_ref());
+            return Err(self.fault(text, &message));
+        }
         Ok(wavelength)
     }
 
@@ -71,7 +77,9 @@ impl Reader<'_> {
     pub(super) fn one_of<T: Copy>(&self, text: &Text, choices: &[(&str, T)]) -> Result<T, SetupError> {
         let found = choices.iter().find(|(name, _)| name == text.get_ref());
         found.map(|(_, value)| *value).ok_or_else(|| {
-            let names: Vec<_> = choices.iter().map(|(name, _)| format!("`{name}`")).collect();
+            // other spellings of a choice are accepted but not advertised
+            let advertised = choices.iter().filter(|(name, _)| !matches!(*name, "ii" | "i" | "2" | "1"));
+            let names: Vec<_> = advertised.map(|(name, _)| format!("`{name}`")).collect();
             self.fault(text, &format!("`{}` is none of {}", text.get_ref(), names.join(", ")))
         })
     }
@@ -167,6 +175,8 @@ fn emission(reader: &Reader<'_>, d: &Description, pump: Option<Wavelength>) -> R
                 ("II", Interaction::Two),
                 ("I", Interaction::One),
                 ("0", Interaction::Zero),
+                ("ii", Interaction::Two),
+                ("i", Interaction::One),
                 ("2", Interaction::Two),
                 ("1", Interaction::One),
             ],
@@ -204,6 +214,11 @@ fn signals(
                 &format!("{wavelength} is not longer than the pump, {pump}: a photon of a pair has less energy than the pump"),
             ));
         };
+        if partner.si() > 1e-2 {
+            let message =
+                format!("{wavelength} is so near the pump, {pump}, that its partner is no light any more");
+            return Err(reader.fault(text, &message));
+        }
         all.push(if emission.idler.is_some() { partner } else { wavelength });
     }
     Ok(if all.is_empty() { Signals::Degenerate } else { Signals::At(all) })
@@ -267,6 +282,11 @@ fn crystal(
         about_x: reader.turn(mount.and_then(|m| m.about_x.as_ref()), "the mount's turn")?,
         about_y: reader.turn(mount.and_then(|m| m.about_y.as_ref()), "the mount's turn")?,
     };
+    if (crystal.orientation.rotation() * nalgebra::Vector3::z()).z < 80f64.to_radians().cos() {
+        let message = "tilt, cross tilt and the mount's turns together put the face more than 80 deg off the beam; \
+                       make them smaller";
+        return Err(reader.fault(written, message));
+    }
     if let Some(text) = &c.reversed {
         crystal.reversal = reader.one_of(
             text,
@@ -320,15 +340,8 @@ fn given_cut(
     {
         return Err(reader.fault(text, &format!("theta must lie within 0 deg to 180 deg, not {theta}")));
     }
-    let angle = |text: &Text, most: f64| -> Result<f64, SetupError> {
-        let angle: Angle = reader.read(text)?;
-        let allowed = angle.degrees() > 0.0 && angle.degrees() < most;
-        if allowed {
-            Ok(angle.si())
-        } else {
-            Err(reader.fault(text, &format!("the angle must lie between 0 deg and {most} deg, not {angle}")))
-        }
-    };
+    let angle =
+        |text: &Text, most: f64| target_angle(text.get_ref(), most).map_err(|why| reader.fault(text, &why));
     let mut targets = Vec::new();
     if let Some(text) = &cut.crossing {
         targets.push(Target::Crossing(angle(text, 60.0)?));
@@ -351,4 +364,16 @@ fn given_cut(
     let phi = reader.maybe::<Angle>(cut.phi.as_ref())?;
     crystal.cut = Cut { theta: theta.unwrap_or_default(), phi: phi.unwrap_or_default() };
     Ok(GivenCut { theta: theta.is_some(), phi: phi.is_some(), target: targets.first().copied() })
+}
+
+/// An angle that a target may have, in radians: above 0 and below `most` degrees.
+///
+/// # Errors
+/// What is wrong with it.
+pub fn target_angle(text: &str, most: f64) -> Result<f64, String> {
+    let angle: Angle = text.parse().map_err(|e: QuantityError| e.to_string())?;
+    let allowed = angle.degrees() > 0.0 && angle.degrees() < most;
+    allowed
+        .then_some(angle.si())
+        .ok_or_else(|| format!("the angle must lie between 0 deg and {most} deg, not {angle}"))
 }

@@ -76,7 +76,10 @@ fn choose_phi(setup: &mut Setup, index: usize) {
     let upright =
         Crystal { orientation: Orientation::default(), reversal: Reversal::None, ..crystal.clone() };
     let Ok(emission) = Emission::of(&upright, setup.photons()) else { return };
-    let Some(roles) = emission.roles(setup.interaction).ok().and_then(|r| r.first().copied()) else { return };
+    let Some(roles) = emission.wanted(&upright, setup.interaction).ok().and_then(|r| r.first().copied())
+    else {
+        return;
+    };
     if let Some(phi) = best_phi(&emission, roles, &tensor) {
         setup.crystals[index].cut.phi = phi;
     }

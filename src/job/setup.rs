@@ -147,6 +147,43 @@ impl Setup {
         self.signals.for_pump(self.pump())
     }
 
+    /// The same experiment for each signal wavelength on its own.
+    #[must_use]
+    pub fn one_per_signal(&self) -> Vec<Self> {
+        match &self.signals {
+            Signals::At(all) if all.len() > 1 => {
+                all.iter().map(|w| Self { signals: Signals::At(vec![*w]), ..self.clone() }).collect()
+            }
+            _ => vec![self.clone()],
+        }
+    }
+
+    /// The one crystal.
+    ///
+    /// # Errors
+    /// There are several.
+    pub fn only_crystal(&self, command: &str) -> Result<&Crystal, String> {
+        match self.crystals.as_slice() {
+            [only] => Ok(only),
+            _ => Err(format!(
+                "the job has several crystals; `{command}` looks at one: describe that one alone"
+            )),
+        }
+    }
+
+    /// Photons of the one signal wavelength.
+    ///
+    /// # Errors
+    /// There are several.
+    pub fn only_photons(&self, command: &str) -> Result<Photons, String> {
+        match self.signals().as_slice() {
+            [_] => Ok(self.photons()),
+            _ => Err(format!(
+                "several signal wavelengths are given; `{command}` looks at one: pass --signal once"
+            )),
+        }
+    }
+
     /// Photons of the first listed signal.
     #[must_use]
     pub fn photons(&self) -> Photons {

@@ -99,7 +99,16 @@ fn crystal_section(o: &mut String, setup: &Setup, index: usize, crystal: &Crysta
     if several || written.name.is_some() {
         line(o, "name", &quoted(&crystal.name), "");
     }
-    line(o, "material", &quoted(&crystal.material.id), "`twincone materials` lists them");
+    // a material file is named by its path, which the id does not tell
+    let typed = written.material.as_ref().map(|m| m.get_ref().as_str()).filter(|m| m.contains(".toml"));
+    let typed =
+        typed.map(|m| m.split_once(".toml:").map_or(m.to_string(), |(stem, _)| format!("{stem}.toml")));
+    line(
+        o,
+        "material",
+        &quoted(&typed.unwrap_or_else(|| crystal.material.id.clone())),
+        "`twincone materials` lists them",
+    );
     line(o, "dataset", &quoted(&crystal.set().id), "whose refractive indices");
     line(o, "cut", &cut(crystal, given), "theta: face normal to Z; phi: azimuth of the normal from X");
     line(o, "length", &quoted(&crystal.length.to_string()), "along the face normal");

@@ -8,7 +8,7 @@ use super::mismatch::Mismatch;
 use super::ring::{Curve, Ring, RingFault, curves, rings};
 use super::tuning::{Actuator, nearest_touch, tuning_turn};
 use crate::frame::Direction;
-use crate::material::{MaterialError, tensor::is_centrosymmetric};
+use crate::material::MaterialError;
 use crate::optics::{Crystal, Polarization};
 use crate::quantity::Wavelength;
 
@@ -184,17 +184,7 @@ impl<'a> Source<'a> {
     }
 
     fn histories(&'a self, interaction: Interaction) -> Result<Vec<History<'a>>, ConesError> {
-        let mut all = self.emission.roles(interaction).map_err(ConesError::Description)?;
-        if interaction == Interaction::Zero {
-            all = vec![brightest(self.crystal, &self.emission, &all)];
-        }
-        // one process of a degenerate pair is its own twin with the names of the photons exchanged
-        if let (Interaction::Explicit(_), [only], true) =
-            (interaction, all.as_slice(), self.emission.photons.degenerate())
-            && only.signal != only.idler
-        {
-            all.push(only.exchanged());
-        }
+        let all = self.emission.wanted(self.crystal, interaction).map_err(ConesError::Description)?;
         let history = |roles: Roles| History {
             source: self,
             name: HistoryName { crystal: self.index, process: self.emission.process(roles) },
@@ -208,31 +198,10 @@ impl<'a> Source<'a> {
 /// What stands for rings where the pump cannot enter.
 const SHUT_OUT: RingFault = RingFault { status: Status::TotalReflection, shortfall: None };
 
-/// The assignment with the largest |d_eff| along the pump.
-pub(super) fn brightest(crystal: &Crystal, emission: &Emission, all: &[Roles]) -> Roles {
-    let d_eff = |roles: &Roles| {
-        let tensor = crystal.material.tensor.as_ref()?;
-        Some(emission.pairing(*roles, Direction::forward())?.d_eff(emission, tensor))
-    };
-    let mut best = all[0];
-    for roles in &all[1..] {
-        if d_eff(roles) > d_eff(&best) {
-            best = *roles;
-        }
-    }
-    best
-}
-
 /// Whether symmetry forbids the pairs all round the curves: d_eff is looked at in four places, unless the first is bright.
 fn is_dark<'c>(history: &History<'_>, curves: impl Iterator<Item = &'c Curve>) -> bool {
     let Source { crystal, emission, .. } = history.source;
-    let Some(tensor) = &crystal.material.tensor else {
-        return is_centrosymmetric(crystal.material.file.point_group.get_ref());
-    };
-    let dark = |direction: Direction| {
-        let pairing = emission.pairing(history.roles, direction);
-        pairing.is_some_and(|p| p.d_eff(emission, tensor) < 1e-6 * tensor.largest())
-    };
+    let dark = |direction: Direction| emission.is_dark(crystal, history.roles, direction) == Some(true);
     let mut curves = curves.peekable();
     curves.peek().is_some() && curves.all(|curve| curve.quarters().all(dark))
 }
@@ -377,12 +346,14 @@ fn meetings(
     let mut points = Vec::new();
     for one in ones {
         let first = Traced { mismatch: m1, curve: one };
-        match meet(first, m2) {
-            Some(Meeting::Cross(all)) => points.extend(all.into_iter().map(|c| (c, Status::Ok))),
-            Some(Meeting::Touch(point)) => points.push((point, Status::Touching)),
-            Some(Meeting::Coincide(point)) => points.push((point, Status::Coincident)),
-            Some(Meeting::Miss) | None => {}
-        }
+        points.extend(meet(first, m2).into_iter().map(|(crossing, how)| {
+            let status = match how {
+                Meeting::Cross => Status::Ok,
+                Meeting::Touch => Status::Touching,
+                Meeting::Coincide => Status::Coincident,
+            };
+            (crossing, status)
+        }));
     }
     if points.is_empty() {
         for (one, two) in ones.iter().flat_map(|one| twos.iter().map(move |two| (one, two))) {
@@ -445,14 +416,19 @@ fn missing_row(
 
 /// Larger v first where they differ by more than 1e-6 deg, else larger h.
 fn order(meetings: &mut [(Crossing, Status)]) {
-    meetings.sort_by(|(a, _), (b, _)| {
-        let (a, b) = (a.direction, b.direction);
-        if (a.v_deg() - b.v_deg()).abs() > 1e-6 {
-            b.v_deg().total_cmp(&a.v_deg())
-        } else {
-            b.h_deg().total_cmp(&a.h_deg())
+    meetings.sort_by(|(a, _), (b, _)| b.direction.v_deg().total_cmp(&a.direction.v_deg()));
+    let level = |pair: &[(Crossing, Status)]| {
+        (pair[0].0.direction.v_deg() - pair[1].0.direction.v_deg()).abs() <= 1e-6
+    };
+    let mut from = 0;
+    while from < meetings.len() {
+        let mut to = from + 1;
+        while to < meetings.len() && level(&meetings[to - 1..=to]) {
+            to += 1;
         }
-    });
+        meetings[from..to].sort_by(|(a, _), (b, _)| b.direction.h_deg().total_cmp(&a.direction.h_deg()));
+        from = to;
+    }
 }
 
 fn is_twin_of_earlier(rows: &[CrossingRow], crossing: &Crossing) -> bool {

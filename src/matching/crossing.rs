@@ -42,17 +42,15 @@ pub struct Contact {
     pub kind: GapKind,
 }
 
-/// How two rings lie to each other.
-#[derive(Debug, Clone)]
+/// How a direction in which two rings meet is met.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub enum Meeting {
-    /// They cross; by ascending azimuth about the first ring's axis.
-    Cross(Vec<Crossing>),
-    /// They touch in a point.
-    Touch(Crossing),
-    /// They lie on each other; the crossing is the point straight up from the axis.
-    Coincide(Crossing),
-    /// They miss; [`contact`] says by how much.
-    Miss,
+    /// They cross there.
+    Cross,
+    /// They touch there.
+    Touch,
+    /// They lie on each other all the way round; this is the point straight up from the axis.
+    Coincide,
 }
 
 /// One ring with the mismatch it was traced with.
@@ -88,26 +86,23 @@ impl Along {
     }
 }
 
-/// Finds how a ring meets that of another process, for a photon of one wavelength; `None` where it cannot be followed.
+/// Finds where a ring meets that of another process, for a photon of one wavelength: nothing where they miss each other.
 #[must_use]
-pub fn meet(first: Traced<'_>, other: &Mismatch) -> Option<Meeting> {
-    let samples = sample(first, other)?;
+pub fn meet(first: Traced<'_>, other: &Mismatch) -> Vec<(Crossing, Meeting)> {
+    let Some(samples) = sample(first, other) else { return Vec::new() };
     let samples = &samples[..=first.curve.count()];
     if samples.iter().all(|s| s.off().abs() < CONTACT) {
-        return crossing(first, other, FRAC_PI_2).map(Meeting::Coincide);
+        let up = crossing(first, other, FRAC_PI_2);
+        return up.map(|point| (point, Meeting::Coincide)).into_iter().collect();
     }
-    let mut found = Found { azimuths: Vec::with_capacity(4), touch: None };
+    let mut found = Found::default();
     for (j, pair) in samples.windows(2).enumerate() {
         found.between(first, other, j, [pair[0], pair[1]]);
     }
-    let touch = found.touch.or_else(|| found.grazing(first, other));
-    let crossings: Vec<Crossing> =
-        found.azimuths.into_iter().filter_map(|phi| crossing(first, other, phi)).collect();
-    match (crossings.is_empty(), touch) {
-        (false, _) => Some(Meeting::Cross(crossings)),
-        (true, Some(phi)) => crossing(first, other, phi).map(Meeting::Touch),
-        (true, None) => Some(Meeting::Miss),
-    }
+    found.merge_grazing(first, other);
+    let crossed = found.crossed.into_iter().map(|phi| (phi, Meeting::Cross));
+    let touched = found.touched.into_iter().map(|phi| (phi, Meeting::Touch));
+    crossed.chain(touched).filter_map(|(phi, how)| Some((crossing(first, other, phi)?, how))).collect()
 }
 
 /// How two rings that do not cross lie to each other: they touch after all, or miss.
@@ -130,9 +125,10 @@ pub enum Miss {
 }
 
 /// Azimuths at which the other ring is met.
+#[derive(Default)]
 struct Found {
-    azimuths: Vec<f64>,
-    touch: Option<f64>,
+    crossed: Vec<f64>,
+    touched: Vec<f64>,
 }
 
 /// Least and largest Delta_k of the other process along a ring, rad/m: a tangency from outside is a zero of the first,
@@ -175,7 +171,7 @@ impl Found {
         let (a, b) = (first.curve.azimuth(j), first.curve.azimuth(j + 1));
         let value = |phi: f64| along(first, other, phi).map(|s| s.value);
         if here.value.is_sign_negative() != there.value.is_sign_negative() {
-            self.azimuths.extend(bracketed(value, a, b, here.value));
+            self.crossed.extend(bracketed(value, a, b, here.value));
             return;
         }
         // towards zero at a, away from it at b
@@ -187,27 +183,29 @@ impl Found {
         let Some(turning) = bracketed(slope, a, b, here.slope) else { return };
         let Some(nearest) = along(first, other, turning) else { return };
         if nearest.off().abs() < CONTACT {
-            self.touch = Some(turning);
+            self.touched.push(turning);
         } else if nearest.value.is_sign_negative() != here.value.is_sign_negative() {
-            self.azimuths.extend(bracketed(value, a, turning, here.value));
-            self.azimuths.extend(bracketed(value, b, turning, there.value));
+            self.crossed.extend(bracketed(value, a, turning, here.value));
+            self.crossed.extend(bracketed(value, b, turning, there.value));
         }
     }
 
-    /// Takes two crossings between which the rings part by less than [`CONTACT`] out of the list: they are one contact.
-    fn grazing(&mut self, first: Traced<'_>, other: &Mismatch) -> Option<f64> {
-        let count = self.azimuths.len();
+    /// Two crossings between which the rings part by less than [`CONTACT`] are one contact.
+    fn merge_grazing(&mut self, first: Traced<'_>, other: &Mismatch) {
         let step = TAU / first.curve.count() as f64;
-        for i in 0..count {
-            let (a, b) = (self.azimuths[i], self.azimuths[(i + 1) % count]);
+        let mut i = 0;
+        while i < self.crossed.len() && self.crossed.len() > 1 {
+            let next = (i + 1) % self.crossed.len();
+            let (a, b) = (self.crossed[i], self.crossed[next]);
             let middle = if b >= a { 0.5 * (a + b) } else { 0.5 * (a + b + TAU) };
             let near = (b - a).rem_euclid(TAU) < step;
-            if near && along(first, other, middle)?.off().abs() < CONTACT {
-                self.azimuths.retain(|phi| *phi != a && *phi != b);
-                return Some(middle);
+            if near && along(first, other, middle).is_some_and(|s| s.off().abs() < CONTACT) {
+                self.crossed.retain(|phi| *phi != a && *phi != b);
+                self.touched.push(middle);
+            } else {
+                i += 1;
             }
         }
-        None
     }
 }
 

@@ -6,7 +6,7 @@ use nalgebra::{Rotation3, Vector3};
 
 use super::Status;
 use super::acceptance::{Acceptance, acceptances};
-use super::cones::{ConesError, brightest};
+use super::cones::ConesError;
 use super::emission::{Emission, Photons, Triplet};
 use super::interaction::{Interaction, Process, Roles};
 use super::partner::Pairing;
@@ -186,8 +186,8 @@ pub fn design(design: &Design) -> Result<Vec<CutSolution>, ConesError> {
     if design.interaction == Interaction::Any {
         found.sort_by(|a, b| b.d_eff.unwrap_or(0.0).total_cmp(&a.d_eff.unwrap_or(0.0)));
     }
-    if design.interaction == Interaction::Zero && design.find == Find::Poling {
-        let best = brightest(&crystal, &emission, &wanted);
+    if design.interaction == Interaction::Zero {
+        let best = emission.brightest(&crystal, &wanted);
         found.retain(|s| s.roles == best);
     }
     Ok(found)
@@ -253,7 +253,7 @@ fn solution(line: &Line<'_>, roles: Roles, root: Root) -> Vec<CutSolution> {
     let Some((mut crystal, photons, emission)) = line.at(root.x) else { return Vec::new() };
     let uniaxial = crystal.material.file.optic == Optic::Uniaxial;
     if uniaxial
-        && line.find == Find::Theta
+        && line.find != Find::Phi
         && !line.design.phi_given
         && let Some(tensor) = &crystal.material.tensor
     {
@@ -357,6 +357,39 @@ pub fn best_phi(emission: &Emission, roles: Roles, tensor: &Tensor) -> Option<An
     all.retain(|(_, d)| *d >= best - 1e-9 * best);
     let smallest = all.iter().map(|(phi, _)| *phi).fold(f64::INFINITY, f64::min);
     (best > 1e-6 * tensor.largest()).then(|| Angle::from_degrees(smallest))
+}
+
+/// |d_eff| of a collinear pair at a crystal's own phi, and the largest that another phi of the same theta would give.
+#[derive(Debug, Clone, Copy)]
+pub struct Brightness {
+    /// At the crystal's phi, pm/V.
+    pub own: f64,
+    /// At the best phi, pm/V.
+    pub best: f64,
+    /// The best phi.
+    pub best_phi: Angle,
+}
+
+/// How bright the first process of an interaction is at normal incidence; `None` in biaxial crystals, whose phi is part
+/// of the geometry, and where the tensor is not known.
+#[must_use]
+pub fn brightness(crystal: &Crystal, photons: Photons, interaction: Interaction) -> Option<Brightness> {
+    let tensor = crystal.material.tensor.as_ref()?;
+    if crystal.material.file.optic != Optic::Uniaxial {
+        return None;
+    }
+    let upright =
+        Crystal { orientation: Orientation::default(), reversal: Reversal::None, ..crystal.clone() };
+    let at = |phi: Angle| {
+        let crystal = Crystal { cut: Cut { phi, ..upright.cut }, ..upright.clone() };
+        let emission = Emission::of(&crystal, photons).ok()?;
+        let roles = *emission.wanted(&crystal, interaction).ok()?.first()?;
+        let d_eff = emission.pairing(roles, Direction::forward())?.d_eff(&emission, tensor);
+        Some((d_eff, best_phi(&emission, roles, tensor)))
+    };
+    let (own, best_phi) = at(crystal.cut.phi)?;
+    let best_phi = best_phi?;
+    Some(Brightness { own, best: at(best_phi)?.0, best_phi })
 }
 
 /// The nearest that a collinear pair comes to phase matching over the range of cuts searched.

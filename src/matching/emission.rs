@@ -6,7 +6,7 @@ use super::interaction::{Interaction, Process, Roles};
 use super::mismatch::Mismatch;
 use super::partner::Pairing;
 use crate::frame::{Direction, Lab, Orientation, Placement};
-use crate::material::{MaterialError, Principal};
+use crate::material::{MaterialError, Principal, tensor::is_centrosymmetric};
 use crate::optics::{Crystal, Medium};
 use crate::quantity::Wavelength;
 
@@ -162,6 +162,40 @@ impl Emission {
         roles.process(&self.media.pump, &self.media.signal, &self.media.idler)
     }
 
+    /// The processes that an interaction stands for in this crystal: of type 0 the brighter one; of an explicit
+    /// degenerate process also the same pair with signal and idler exchanged.
+    ///
+    /// # Errors
+    /// o and e asked of a biaxial crystal.
+    pub fn wanted(&self, crystal: &Crystal, interaction: Interaction) -> Result<Vec<Roles>, String> {
+        let mut all = self.roles(interaction)?;
+        if interaction == Interaction::Zero {
+            all = vec![self.brightest(crystal, &all)];
+        }
+        if let (Interaction::Explicit(_), [only], true) =
+            (interaction, all.as_slice(), self.photons.degenerate())
+            && only.signal != only.idler
+        {
+            all.push(only.exchanged());
+        }
+        Ok(all)
+    }
+
+    /// The assignment with the largest |d_eff| along the pump.
+    pub(super) fn brightest(&self, crystal: &Crystal, all: &[Roles]) -> Roles {
+        let d_eff = |roles: &Roles| {
+            let tensor = crystal.material.tensor.as_ref()?;
+            Some(self.pairing(*roles, Direction::forward())?.d_eff(self, tensor))
+        };
+        let mut best = all[0];
+        for roles in &all[1..] {
+            if d_eff(roles) > d_eff(&best) {
+                best = *roles;
+            }
+        }
+        best
+    }
+
     /// Mismatch of a process, with the grating's sign of [`Self::grating_sign`].
     #[must_use]
     pub fn mismatch(&self, roles: Roles) -> Option<Mismatch> {
@@ -191,6 +225,19 @@ impl Emission {
         Self { photons: self.photons.exchanged(), media: self.media.exchanged(), upright, ..self.clone() }
     }
 
+    /// Whether symmetry forbids a pair whose signal leaves towards `signal`; `None` where the tensor is not known.
+    #[must_use]
+    pub fn is_dark(&self, crystal: &Crystal, roles: Roles, signal: Direction) -> Option<bool> {
+        let material = &crystal.material;
+        match &material.tensor {
+            Some(tensor) => {
+                let pairing = self.pairing(roles, signal)?;
+                Some(pairing.d_eff(self, tensor) < 1e-6 * tensor.largest())
+            }
+            None => is_centrosymmetric(material.file.point_group.get_ref()).then_some(true),
+        }
+    }
+
     /// Polar angle and azimuth of the pump's wave vector in the dielectric frame, radians.
     #[must_use]
     pub fn pump_inside(&self, roles: Roles) -> Option<(f64, f64)> {
@@ -208,7 +255,9 @@ impl Emission {
         let Lab(d) = signal.lab();
         // the transverse part of the field, in the plane that the photon outside lies across
         let outside: Vector3<f64> = field - d * field.dot(&d);
-        let azimuth = crate::quantity::tidy(outside.y.atan2(outside.x).to_degrees()).rem_euclid(180.0);
-        Some(if azimuth > 180.0 - 1e-9 { 0.0 } else { azimuth })
+        let azimuth = outside.y.atan2(outside.x).to_degrees().rem_euclid(180.0);
+        // 0 and 180 deg are the same field, whatever rounding makes of it
+        let horizontal = !(1e-9..=180.0 - 1e-9).contains(&azimuth);
+        Some(if horizontal { 0.0 } else { crate::quantity::tidy(azimuth) })
     }
 }

@@ -37,9 +37,10 @@ impl FromStr for Process {
     type Err = ProcessError;
 
     fn from_str(text: &str) -> Result<Self, ProcessError> {
-        let trimmed = text.trim();
+        let trimmed = text.trim().trim_matches(['"', '\'']).trim();
         let unreadable = || ProcessError::Unreadable(trimmed.into());
-        let Some((pump, pair)) = trimmed.split_once("->").or_else(|| trimmed.split_once(':')) else {
+        let Some((pump, pair)) = trimmed.split_once("->").or_else(|| trimmed.split_once(['\u{2192}', ':']))
+        else {
             let start = trimmed.trim_end_matches('-').trim();
             return Err(match polarization(start) {
                 Some(_) => ProcessError::CutByShell(trimmed.into()),
@@ -142,9 +143,13 @@ impl Interaction {
             Self::Zero => vec![Roles::new(Slow, Slow, Slow), Roles::new(Fast, Fast, Fast)],
             Self::One => vec![Roles::new(Fast, Slow, Slow)],
             Self::Two => {
-                let first = signal.sheet(Polarization::Extraordinary).unwrap_or(Slow);
-                let roles = Roles::new(Fast, first, if first == Slow { Fast } else { Slow });
-                vec![roles, roles.exchanged()]
+                // by name at each wavelength, so that signal and idler stay opposite where the optic sign changes
+                let both = |medium: &Medium| {
+                    let e = medium.sheet(Polarization::Extraordinary).unwrap_or(Slow);
+                    [e, if e == Slow { Fast } else { Slow }]
+                };
+                let ([e_signal, o_signal], [e_idler, o_idler]) = (both(signal), both(idler));
+                vec![Roles::new(Fast, e_signal, o_idler), Roles::new(Fast, o_signal, e_idler)]
             }
             Self::Explicit(process) => {
                 let sheets = [(pump, process.pump), (signal, process.signal), (idler, process.idler)];

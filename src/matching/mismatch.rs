@@ -56,11 +56,14 @@ pub(crate) struct Stationary {
 
 impl Mismatch {
     /// For the media of a process in a crystal placed so, pumped along lab z; `grating` in rad/m. `None` where the
-    /// pump cannot enter.
+    /// pump cannot enter or would meet the crystal from behind.
     #[must_use]
     pub fn new(media: &Media, roles: Roles, placement: &Placement, grating: f64) -> Option<Self> {
         let k0_pump = media.pump.k0();
         let Mount(d) = placement.to_mount(Lab(Vector3::z()));
+        if d.z <= 0.0 {
+            return None;
+        }
         let q_pump = Tangential { u: k0_pump * d.x, v: k0_pump * d.y };
         let face = placement.face_axes();
         Some(Self {

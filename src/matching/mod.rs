@@ -17,16 +17,19 @@ mod tuning;
 pub use acceptance::{Acceptance, acceptances};
 pub use cones::{Cones, ConesError, CrossingRow, HistoryName, Landing, RingRow, Want, cones};
 pub use crossing::{Contact, Crossing, GapKind, Meeting, Miss, Traced, meet, miss};
-pub use cut::{CutSolution, Design, Find, Plane, Shortfall, alternatives, best_phi, design, shortfall};
+pub use cut::{
+    Brightness, CutSolution, Design, Find, Plane, Shortfall, alternatives, best_phi, brightness, design,
+    shortfall,
+};
 pub use emission::{Emission, Media, Photons, Triplet};
 pub use interaction::{Interaction, Process, ProcessError, Roles};
 pub use mismatch::{Mismatch, Sample};
-pub use partner::{Pairing, phase_matching_factor};
+pub use partner::{Pairing, Twin, phase_matching_factor, twins};
 pub use ring::{Curve, Ring, RingFault, SAMPLES, curves, half_angle, rings};
 pub use root::{Root, Scan, roots};
 pub use spread::{Opinion, opinions};
 pub use target::{Measure, Target};
-pub use tuning::{Actuator, Turn, nearest_touch, opening_turn, shortage, tune, tuning_turn};
+pub use tuning::{Actuator, Tuned, Tuning, Turn, nearest_touch, opening_turn, shortage, tune, tuning_turn};
 
 use std::fmt;
 

@@ -1,10 +1,11 @@
 //! A pump photon and its pair as waves: fields, rays, delays, effective nonlinearity.
 
+use super::Status;
 use super::emission::Emission;
-use super::interaction::Roles;
+use super::interaction::{Interaction, Process, Roles};
 use crate::frame::{Direction, Tangential};
 use crate::material::tensor::Tensor;
-use crate::optics::Wave;
+use crate::optics::{Crystal, Wave};
 
 /// Three waves of one process; the signal's direction is given.
 #[derive(Debug, Clone, Copy)]
@@ -24,6 +25,8 @@ pub struct Pairing {
 impl Pairing {
     pub(super) fn new(emission: &Emission, roles: Roles, direction: Direction) -> Option<Self> {
         let mismatch = emission.mismatch(roles)?;
+        // behind the exit face there is no such direction
+        mismatch.towards(direction.lab().0)?;
         let q = mismatch.tangential(direction);
         let q_idler: Tangential = mismatch.pump() - q;
         Some(Self {
@@ -59,6 +62,46 @@ impl Pairing {
     pub fn on_optic_axis(&self) -> bool {
         [&self.pump, &self.signal, &self.idler].iter().any(|w| w.on_optic_axis)
     }
+}
+
+/// A process in which a photon can have been made, with the pair's waves where they exist.
+#[derive(Debug, Clone, Copy)]
+pub struct Twin {
+    /// Sheets of the three waves, the given photon as signal.
+    pub roles: Roles,
+    /// In words.
+    pub process: Process,
+    /// The waves; `None` where one of them does not exist.
+    pub pairing: Option<Pairing>,
+    /// `Ok`, `TotalReflection`, `OpticAxis` or `NoNonlinearity`.
+    pub status: Status,
+}
+
+/// The partners of a photon that leaves towards `direction`, one for each process that can have made it.
+///
+/// # Errors
+/// o and e asked of a biaxial crystal.
+pub fn twins(
+    crystal: &Crystal,
+    emission: &Emission,
+    interaction: Interaction,
+    direction: Direction,
+) -> Result<Vec<Twin>, String> {
+    let all = emission.wanted(crystal, interaction)?;
+    Ok(all
+        .into_iter()
+        .map(|roles| {
+            let pairing = emission.pairing(roles, direction);
+            let status = match &pairing {
+                None => Status::TotalReflection,
+                Some(p) if p.idler_outside.is_none() => Status::TotalReflection,
+                Some(p) if p.on_optic_axis() => Status::OpticAxis,
+                _ if emission.is_dark(crystal, roles, direction) == Some(true) => Status::NoNonlinearity,
+                _ => Status::Ok,
+            };
+            Twin { roles, process: emission.process(roles), pairing, status }
+        })
+        .collect())
 }
 
 /// sinc^2(Delta_k L/2) for a mismatch in rad/m and a crystal length in m.

@@ -107,8 +107,8 @@ struct Meridian {
 /// Where a meridian meets Delta_k = level.
 enum Hit {
     At(f64),
-    /// The exit face (90 deg from its normal) comes first.
-    Face,
+    /// At this polar angle the exit face, or the angle at which the partner is evanescent, comes first.
+    Face(f64),
     Lost,
 }
 
@@ -144,12 +144,12 @@ impl Mismatch {
                 next = if high.is_finite() { 0.5 * (low + high) } else { (2.0 * psi).min(PI) };
             }
             if (next - psi).abs() <= 2.0 * f64::EPSILON * psi {
-                return if blocked { Hit::Face } else { Hit::At(next) };
+                return if blocked { Hit::Face(high) } else { Hit::At(next) };
             }
             psi = next;
         }
         if blocked {
-            Hit::Face
+            Hit::Face(high)
         } else if high - low < 1e-9 {
             Hit::At(psi)
         } else {
@@ -221,6 +221,10 @@ fn seeds(mismatch: &Mismatch) -> Result<Vec<Stationary>, RingFault> {
     if seeds.is_empty() {
         return Err(RingFault { status: Status::NoPhaseMatching, shortfall: central.map(|s| s.value) });
     }
+    // the one nearest the pump first
+    let pump = mismatch.along_pump();
+    let away = |s: &Stationary| (s.q.u - pump.u).hypot(s.q.v - pump.v);
+    seeds.sort_by(|a, b| away(a).total_cmp(&away(b)));
     Ok(seeds)
 }
 
@@ -311,7 +315,12 @@ impl Curve {
                     correction = psi - self.samples[j];
                     self.samples[j] = psi;
                 }
-                Hit::Face => return Err(RingFault::new(Status::TotalReflection)),
+                Hit::Face(psi) => {
+                    // a ring that has left the search region is open, whatever it meets further out
+                    let outside = self.frame.point(psi, self.azimuth(j)).z < REGION;
+                    let status = if outside { Status::OpenRing } else { Status::TotalReflection };
+                    return Err(RingFault::new(status));
+                }
                 Hit::Lost => return Err(RingFault::new(Status::NotConverged)),
             }
         }
@@ -355,7 +364,7 @@ impl Curve {
             (phi / TAU * self.count as f64).round().rem_euclid(self.count as f64) as usize % self.count;
         match mismatch.meet(&self.frame.meridian(phi), 0.0, self.samples[nearest]) {
             Hit::At(psi) => Some(psi),
-            Hit::Face | Hit::Lost => None,
+            Hit::Face(_) | Hit::Lost => None,
         }
     }
 
@@ -492,7 +501,7 @@ fn thickness(mismatch: &Mismatch, curve: &Curve, length: f64) -> Option<f64> {
         let meridian = frame.meridian(azimuth(j));
         let edge = |level| match mismatch.meet(&meridian, level, *psi) {
             Hit::At(psi) => Some(psi),
-            Hit::Face | Hit::Lost => None,
+            Hit::Face(_) | Hit::Lost => None,
         };
         sum += edge(half_width)? - edge(-half_width)?;
     }

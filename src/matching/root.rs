@@ -34,7 +34,10 @@ pub fn roots(f: &mut impl FnMut(f64) -> Option<f64>, scan: Scan) -> Vec<Root> {
             if fa == 0.0 {
                 found.push(Root { x: a, tangent: false });
             } else if fb != 0.0 && fa.is_sign_negative() != fb.is_sign_negative() {
-                found.extend(bracketed(&mut *f, a, b, fa).map(|x| Root { x, tangent: false }));
+                // a jump changes sign without a root: there the value stays large
+                let small = 1e-6 * fa.abs().max(fb.abs());
+                let root = bracketed(&mut *f, a, b, fa).filter(|x| f(*x).is_some_and(|v| v.abs() <= small));
+                found.extend(root.map(|x| Root { x, tangent: false }));
             }
         }
         if let Some((x, 0.0)) = stretch.last().copied() {
@@ -216,6 +219,9 @@ mod tests {
         assert!(find(|_| Some(f64::NAN), -3.0, 3.0, 10).is_empty());
         // a pole changes sign without a root: the value there is not small
         assert!(find(|x| (x.abs() > 1e-3).then_some(1.0 / x), -1.0, 1.0, 9).is_empty());
+        assert!(find(|x| Some(1.0 / x), -1.0, 1.0, 9).is_empty());
+        // so does a jump
+        assert!(find(|x| Some(if x < 0.123 { -1.0 } else { 1.0 }), -1.0, 1.0, 9).is_empty());
     }
 
     #[test]

@@ -13,6 +13,13 @@ pub struct Opinion<T> {
     pub answer: Result<T, MaterialError>,
 }
 
+impl<T> Opinion<T> {
+    /// The same opinion about something that follows from it.
+    pub fn map<U>(self, f: impl FnOnce(T) -> U) -> Opinion<U> {
+        Opinion { dataset: self.dataset, answer: self.answer.map(f) }
+    }
+}
+
 /// Asks every other data set of the crystal's material that covers the wavelengths.
 pub fn opinions<T>(
     crystal: &Crystal,

@@ -1,6 +1,6 @@
 //! What a cut or a turn is to bring about, as a number that is zero when it does.
 
-use super::crossing::{Meeting, Traced, meet, reach};
+use super::crossing::{Crossing, Meeting, Traced, meet, reach};
 use super::emission::Emission;
 use super::interaction::Roles;
 use super::mismatch::Mismatch;
@@ -90,11 +90,13 @@ fn crossings(emission: &Emission, roles: Roles) -> Option<Met> {
     let (one, two) = (History::of(emission, roles)?, History::of(emission, roles.exchanged())?);
     let traced = one.traced()?;
     two.curve.as_ref()?;
-    let (all, touching) = match meet(traced, &two.mismatch)? {
-        Meeting::Cross(all) => (all, false),
-        Meeting::Touch(point) => (vec![point], true),
-        Meeting::Coincide(_) | Meeting::Miss => return None,
-    };
+    let met = meet(traced, &two.mismatch);
+    let touching = met.iter().all(|(_, how)| *how == Meeting::Touch);
+    let all: Vec<Crossing> =
+        met.into_iter().filter(|(_, how)| *how != Meeting::Coincide).map(|(c, _)| c).collect();
+    if all.is_empty() {
+        return None;
+    }
     let count = all.len() as f64;
     let polar = all.iter().map(|c| c.direction.angle_to(Direction::forward())).sum::<f64>() / count;
     let separations: Option<Vec<f64>> = all.iter().map(|c| Some(c.direction.angle_to(c.partner?))).collect();

@@ -1,7 +1,9 @@
 //! How far to turn (or heat, or tune the pump) to reach a target.
 
+use super::Status;
+use super::cones::ConesError;
 use super::emission::{Emission, Photons, Triplet};
-use super::interaction::Roles;
+use super::interaction::{Interaction, Process, Roles};
 use super::root::{Scan, roots};
 use super::target::{Measure, Target, touching_reach};
 use crate::frame::Direction;
@@ -27,6 +29,8 @@ pub enum Actuator {
 pub struct Turn {
     /// The setting in SI: radians, degrees Celsius or metres.
     pub setting: f64,
+    /// The process whose signal the target is about.
+    pub process: Process,
     /// Crystal at the setting.
     pub crystal: Crystal,
     /// Wavelengths at the setting.
@@ -37,6 +41,8 @@ pub struct Turn {
     pub phi_inside: f64,
     /// Geometry at the setting.
     pub measure: Measure,
+    /// `Ok`, `Touching` or `NoNonlinearity`.
+    pub status: Status,
 }
 
 /// Search half range of a turn, radians.
@@ -126,27 +132,88 @@ pub(super) fn retuned(
     Photons::new(pump, fixed_signal.unwrap_or(Wavelength::metres(pump.si() / share)))
 }
 
-/// All settings of `actuator` that meet the target, nearest to the present one first.
+/// The question of [`tune`].
+#[derive(Debug, Clone)]
+pub struct Tuning {
+    /// The crystal as it stands now.
+    pub crystal: Crystal,
+    /// Wavelengths.
+    pub photons: Photons,
+    /// A signal wavelength that stays when the pump changes; else both photons keep their frequency ratio.
+    pub fixed_signal: Option<Wavelength>,
+    /// Polarizations.
+    pub interaction: Interaction,
+    /// Wanted emission.
+    pub target: Target,
+    /// What to change; `None` for the turn with the larger effect.
+    pub actuator: Option<Actuator>,
+}
+
+/// The answer of [`tune`].
+#[derive(Debug, Clone)]
+pub struct Tuned {
+    /// What was changed.
+    pub actuator: Actuator,
+    /// Settings that meet the target, nearest to the present one first.
+    pub turns: Vec<Turn>,
+    /// Geometry as the crystal stands now, of the first process.
+    pub now: Measure,
+}
+
+/// All settings that meet the target, for every process of the interaction, nearest to the present one first.
 ///
 /// # Errors
-/// A wavelength or temperature outside the data set's range.
-pub fn tune(
-    crystal: &Crystal,
-    photons: Photons,
-    fixed_signal: Option<Wavelength>,
-    roles: Roles,
-    target: Target,
-    actuator: Actuator,
-) -> Result<Vec<Turn>, MaterialError> {
-    let triplet = Triplet::new(crystal, &photons)?;
-    let bench = Bench { crystal, photons, fixed_signal, triplet, actuator };
-    let turns = bench.settings(target, roles).into_iter().filter_map(|setting| {
-        let (crystal, photons, emission) = bench.at(setting)?;
-        let (theta_inside, phi_inside) = emission.pump_inside(roles)?;
-        let measure = Measure::of(&emission, roles);
-        Some(Turn { setting, crystal, photons, theta_inside, phi_inside, measure })
-    });
-    Ok(turns.collect())
+/// A wavelength or temperature outside the data set's range; an interaction that does not fit crystal or target.
+pub fn tune(question: &Tuning) -> Result<Tuned, ConesError> {
+    let Tuning { crystal, photons, fixed_signal, target, actuator, .. } = question;
+    let triplet = Triplet::new(crystal, photons)?;
+    let emission = Emission::new(crystal, *photons, &triplet);
+    let processes = processes(&emission, question)?;
+    let actuator = actuator.unwrap_or_else(|| tuning_turn(crystal, *photons, &triplet, processes[0]));
+    let bench = Bench { crystal, photons: *photons, fixed_signal: *fixed_signal, triplet, actuator };
+    let mut turns = Vec::new();
+    for roles in &processes {
+        turns.extend(bench.settings(*target, *roles).into_iter().filter_map(|setting| {
+            let (crystal, photons, emission) = bench.at(setting)?;
+            let (theta_inside, phi_inside) = emission.pump_inside(*roles)?;
+            let measure = Measure::of(&emission, *roles);
+            let process = emission.process(*roles);
+            let dark =
+                target.direction(&emission, *roles).and_then(|d| emission.is_dark(&crystal, *roles, d));
+            let status = match dark {
+                Some(true) => Status::NoNonlinearity,
+                _ if measure.touching => Status::Touching,
+                _ => Status::Ok,
+            };
+            Some(Turn { setting, process, crystal, photons, theta_inside, phi_inside, measure, status })
+        }));
+    }
+    let now = bench.now();
+    turns.sort_by(|a, b| (a.setting - now).abs().total_cmp(&(b.setting - now).abs()));
+    Ok(Tuned { actuator, turns, now: Measure::of(&emission, processes[0]) })
+}
+
+/// One process of each two that are the same pair with the photons exchanged, or that meet in the same crossings.
+fn processes(emission: &Emission, question: &Tuning) -> Result<Vec<Roles>, ConesError> {
+    let all = emission.wanted(&question.crystal, question.interaction).map_err(ConesError::Description)?;
+    let mut distinct: Vec<Roles> = Vec::new();
+    for roles in all {
+        let twice = distinct.contains(&roles.exchanged());
+        let alike = question.photons.degenerate() || question.target.needs_two_rings();
+        if !(twice && alike) {
+            distinct.push(roles);
+        }
+    }
+    if question.target.needs_two_rings() {
+        distinct.retain(|roles| roles.signal != roles.idler);
+        if distinct.is_empty() {
+            return Err(ConesError::Description(
+                "crossings need two photons of opposite polarization: use --type II, or ask for --half-angle"
+                    .into(),
+            ));
+        }
+    }
+    Ok(distinct)
 }
 
 /// The setting of `actuator` nearest the present one at which the rings of `roles` and of the exchanged process touch:
@@ -219,14 +286,18 @@ pub fn tuning_turn(crystal: &Crystal, photons: Photons, triplet: &Triplet, roles
         let now = bench.now();
         value(now + STEP).zip(value(now - STEP)).map_or(0.0, |(up, down)| (up - down).abs())
     };
-    if effect(Actuator::CrossTilt) > effect(Actuator::Tilt) { Actuator::CrossTilt } else { Actuator::Tilt }
+    let (tilt, cross) = (effect(Actuator::Tilt), effect(Actuator::CrossTilt));
+    // where neither tunes in first order rounding must not decide
+    let noise = 1e-12 * photons.pump.wavenumber();
+    if cross > tilt && cross > noise { Actuator::CrossTilt } else { Actuator::Tilt }
 }
 
 /// Why no setting meets the target, in a sentence.
 #[must_use]
 pub fn shortage(target: Target, actuator: Actuator, now: &Measure) -> String {
     let range = match actuator {
-        Actuator::Tilt | Actuator::CrossTilt => "no turn within 30 deg",
+        Actuator::Tilt => "no tilt within 30 deg of the present one",
+        Actuator::CrossTilt => "no cross tilt within 30 deg of the present one",
         Actuator::Temperature => "no temperature from -50 degC to 300 degC",
         Actuator::Pump => "no pump within 0.8 to 1.25 times the present one",
     };

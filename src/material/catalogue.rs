@@ -2,6 +2,7 @@
 
 use super::file::File;
 use super::{Fault, Material, MaterialError};
+use crate::places::{nearest, plain_message, point_at};
 
 macro_rules! built_in {
     ($($id:literal),* $(,)?) => {
@@ -16,6 +17,7 @@ const BUILT_IN: &[(&str, &str)] = built_in![
     "bibo",
     "ktp",
     "rtp",
+    "nb-rtp",
     "kta",
     "kdp",
     "dkdp",
@@ -24,7 +26,10 @@ const BUILT_IN: &[(&str, &str)] = built_in![
     "liio3",
     "linbo3",
     "mgo-linbo3",
+    "mgo-sln",
     "litao3",
+    "mgo-litao3",
+    "mgo-slt",
     "knbo3",
     "aggas2",
     "aggase2",
@@ -39,6 +44,19 @@ const BUILT_IN: &[(&str, &str)] = built_in![
     "rutile",
     "mgf2",
     "sapphire",
+];
+
+/// Names in use for crystals that have another id here.
+const ALIASES: &[(&str, &str)] = &[
+    ("beta-bbo", "bbo"),
+    ("\u{3b2}-bbo", "bbo"),
+    ("a-bbo", "alpha-bbo"),
+    ("ppktp", "ktp"),
+    ("ppln", "linbo3"),
+    ("ln", "linbo3"),
+    ("lt", "litao3"),
+    ("bib3o6", "bibo"),
+    ("lib3o5", "lbo"),
 ];
 
 /// A commented material file to start from.
@@ -99,7 +117,10 @@ impl Catalogue {
         if let Some((_, material)) = self.added.iter().find(|(name, m)| m.id == id || name == id) {
             return Ok(material.clone());
         }
-        let hint = nearest(id, self.ids()).map_or(String::new(), |near| format!(", did you mean `{near}`?"));
+        let known_as =
+            ALIASES.iter().find(|(other, _)| other.eq_ignore_ascii_case(id)).map(|(_, meant)| *meant);
+        let near = known_as.or_else(|| nearest(id, self.ids()));
+        let hint = near.map_or(String::new(), |near| format!(", did you mean `{near}`?"));
         Err(MaterialError::Unknown { id: id.into(), hint })
     }
 }
@@ -107,23 +128,14 @@ impl Catalogue {
 /// Reads and validates a material file.
 fn read(name: &str, text: &str) -> Result<Material, MaterialError> {
     let file: File = toml::from_str(text).map_err(|e| {
-        let message = e.message().replace('\n', " ");
+        let message = plain_message(e.message());
         fault_text(name, text, &Fault { span: e.span().unwrap_or(0..0), message })
     })?;
     Material::from_file(file).map_err(|fault| fault_text(name, text, &fault))
 }
 
 fn fault_text(name: &str, text: &str, fault: &Fault) -> MaterialError {
-    MaterialError::File(crate::job::point_at(name, text, fault.span.clone(), &fault.message))
-}
-
-/// The name closest to `wanted`, if one is close enough to be meant.
-pub(crate) fn nearest<'a>(wanted: &str, names: impl Iterator<Item = &'a str>) -> Option<&'a str> {
-    names
-        .map(|name| (strsim::jaro_winkler(&wanted.to_lowercase(), name), name))
-        .filter(|(likeness, _)| *likeness > 0.72)
-        .max_by(|a, b| a.0.total_cmp(&b.0))
-        .map(|(_, name)| name)
+    MaterialError::File(point_at(name, text, fault.span.clone(), &fault.message))
 }
 
 #[cfg(test)]

@@ -8,7 +8,6 @@ mod error;
 pub mod file;
 pub mod tensor;
 
-pub(crate) use catalogue::nearest;
 pub use catalogue::{Catalogue, TEMPLATE};
 pub use dataset::{DataSet, Index, Principal, Reach};
 pub use error::MaterialError;

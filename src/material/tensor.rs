@@ -76,6 +76,7 @@ impl Tensor {
         })?;
         let mut contracted = Contracted::default();
         for (name, value) in elements {
+            contracted.slot(name)?;
             let (group, sign) = groups
                 .iter()
                 .find_map(|group| sign_in(group, name).map(|sign| (group, sign)))

@@ -2,10 +2,12 @@
 
 mod along;
 mod crystal;
+mod index;
 mod medium;
 mod surface;
 
 pub use along::{Along, along_axes, along_direction};
 pub use crystal::Crystal;
+pub use index::{IndexRow, index_rows, missing};
 pub use medium::{Medium, Polarization, Wave};
 pub use surface::{Curvature, Normal, Sheet, Surface};

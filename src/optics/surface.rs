@@ -72,7 +72,7 @@ struct Branch {
     convex: bool,
 }
 
-/// G, its gradient and half its Hessian at one k.
+/// G and its gradient at one k.
 struct Local {
     value: f64,
     gradient: Vector3<f64>,
@@ -174,7 +174,7 @@ fn dimple_in_reach(alpha: f64, gamma: f64, optic_axes: &[Vector3<f64>; 2]) -> bo
     let chi =
         ((1.0 / gamma - 1.0 / beta) * (1.0 / beta - 1.0 / alpha) * alpha * gamma).max(0.0).sqrt().atan();
     let reach = alpha.sqrt().min(1.0).asin() + 2.0 * chi + 1f64.to_radians();
-    optic_axes.iter().any(|axis| axis.z.abs().acos() < reach)
+    optic_axes.iter().any(|axis| axis.z.abs().min(1.0).acos() < reach)
 }
 
 /// Below this sine of the angle to an optic axis the two sheets touch to rounding error.

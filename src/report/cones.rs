@@ -151,7 +151,7 @@ pub type Advice = Option<(Actuator, Angle)>;
 pub fn text(setup: &Setup, cones: &Cones, advice: &[Advice]) -> String {
     let mut out = prose(&heading(setup));
     out.push_str(&format!(
-        "\nRings (degrees outside the crystal; mm on the screen at {} m)\n",
+        "\nRings (degrees outside the crystal; x, y, r: circle that fits best on the screen at {} m)\n",
         rounded(setup.screen.si(), 3)
     ));
     let header = [
@@ -392,6 +392,9 @@ fn missing_words(setup: &Setup, row: &CrossingRow, both: &str) -> String {
                 room_words(crystal, actuator, turn)
             )
         }
+        _ if row.first.crystal != row.second.crystal => {
+            "turn one of the two crystals to make them touch".into()
+        }
         _ => "no turn within 30 deg makes them touch".into(),
     };
     format!("  {both}: the rings {how}, gap {} deg; {touch}.\n", degrees(contact.gap))
@@ -402,7 +405,9 @@ fn reflections(setup: &Setup) -> String {
     for crystal in &setup.crystals {
         let r = crystal.reflection();
         let (x, y) = (-r.x / r.z * setup.screen.mm(), -r.y / r.z * setup.screen.mm());
-        if x.hypot(y) > 0.5 {
+        if x.hypot(y) <= 0.5 {
+            out.push_str("  The entrance face reflects pump light straight back into the laser.\n");
+        } else {
             out.push_str(&format!(
                 "  The entrance face reflects pump light back: x {} mm, y {} mm at {} m towards the laser.\n",
                 signed(x, 1),

@@ -1,12 +1,13 @@
 //! What the numbers of an answer mean: data sets, angles, signs, in a line or two; and the usual cautions.
 
+use crate::frame::Reversal;
 use crate::job::Setup;
-use crate::matching::Actuator;
+use crate::matching::{Actuator, brightness};
 use crate::material::{DataSet, Optic};
 use crate::optics::Crystal;
 use crate::quantity::{Angle, Wavelength};
 
-use super::angles::rounded;
+use super::angles::{fixed, rounded};
 
 /// Lines for people, ids for scripts.
 #[derive(Debug, Clone, Default)]
@@ -44,7 +45,29 @@ impl Conventions {
         }
     }
 
+    /// Warns where a crystal's phi gives far fewer pairs than the best phi of its cut would.
+    pub fn warn_of_dim_phi(&mut self, setup: &Setup) {
+        for crystal in &setup.crystals {
+            let Some(brightness) = brightness(crystal, setup.photons(), setup.interaction) else { continue };
+            // pairs go as d_eff squared
+            if brightness.own < 0.5 * brightness.best {
+                self.warnings.push(format!(
+                    "few pairs: {} at phi {} deg has |d_eff| {} pm/V; at phi {} deg the same theta has {} pm/V",
+                    crystal.material.id,
+                    rounded(crystal.cut.phi.degrees(), 3),
+                    fixed(brightness.own, 3),
+                    rounded(brightness.best_phi.degrees(), 3),
+                    fixed(brightness.best, 3)
+                ));
+            }
+        }
+    }
+
     fn add_warnings(&mut self, setup: &Setup) {
+        let unread = unread_keys(setup);
+        if !unread.is_empty() {
+            self.warnings.push(format!("not used by this command: {}", unread.join(", ")));
+        }
         let Some(pump) = setup.pump else { return };
         for crystal in &setup.crystals {
             let signals = setup.signals.for_pump(pump);
@@ -98,12 +121,48 @@ fn dataset_line(id: &str, crystal: &Crystal) -> String {
 fn angles_line(setup: &Setup) -> String {
     let uniaxial = setup.crystals.iter().all(|c| c.material.file.optic == Optic::Uniaxial);
     let z = if uniaxial { "the optic axis Z" } else { "the dielectric axis Z" };
-    format!(
-        "theta is the angle between face normal and {z}, phi the normal's azimuth from X; positive tilt increases theta, \
-         positive cross tilt phi. At roll 0 Z leans towards +x, on the left of who looks along the beam; h is the angle \
-         towards +x, v upwards, outside the crystal unless called inside; mm on a screen at {} m.",
+    let mut line = format!(
+        "theta is the angle between face normal and {z}, phi the normal's azimuth from X; positive tilt increases the \
+         angle between pump and Z inside, positive cross tilt the pump's azimuth. At roll 0 Z leans towards +x, on the \
+         left of who looks along the beam; h is the angle towards +x, v upwards, outside the crystal unless called \
+         inside; mm on a screen at {} m.",
         rounded(setup.screen.si(), 3)
-    )
+    );
+    if setup.crystals.iter().any(|c| c.cut.theta.degrees() > 90.0) {
+        line.push_str(" With theta above 90 deg it is the upstream end of Z that leans towards +x, the downstream end to -x.");
+    }
+    for crystal in &setup.crystals {
+        line.push_str(match crystal.reversal {
+            Reversal::None => "",
+            Reversal::AboutBeam => {
+                " Turned about the beam Z leans to -x and positive tilt brings it nearer to the pump."
+            }
+            Reversal::AboutVertical => " Turned about the vertical Z leans as before.",
+            Reversal::AboutHorizontal => {
+                " Turned about the horizontal Z leans to -x and positive tilt brings it nearer to the pump."
+            }
+        });
+    }
+    line
+}
+
+/// Keys that were given and that no command reads yet.
+fn unread_keys(setup: &Setup) -> Vec<&'static str> {
+    let written = &setup.written;
+    let pump = written.pump.as_ref().map(|p| p.get_ref().clone()).unwrap_or_default();
+    let given = [
+        ("pump.waist", pump.waist.is_some()),
+        ("pump.power", pump.power.is_some()),
+        ("pump.linewidth", pump.linewidth.is_some()),
+        ("pump.pulse", pump.pulse.is_some()),
+        ("pump.spectrum", pump.spectrum.is_some()),
+        ("pump.polarization", pump.polarization.is_some()),
+        ("collection", !written.collection.is_empty()),
+        ("filter", !written.filter.is_empty()),
+        ("compensator", !written.compensator.is_empty()),
+        ("sweep", written.sweep.is_some()),
+    ];
+    given.into_iter().filter(|(_, given)| *given).map(|(key, _)| key).collect()
 }
 
 fn caution(pump: Wavelength) -> String {

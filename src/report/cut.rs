@@ -248,7 +248,9 @@ pub fn ranking(setup: &Setup, target: Target, attempts: &[Attempt]) -> String {
     ];
     let mut out = format!("{}\n\n{}", heading(setup, target), grid(&header, &rows));
     out.push('\n');
-    for status in [Status::NoPhaseMatching, Status::NoNonlinearity, Status::OutOfRange] {
+    for status in
+        [Status::NoPhaseMatching, Status::NoNonlinearity, Status::OutOfRange, Status::Opaque, Status::Invalid]
+    {
         let fails = |a: &&Attempt| match &a.outcome {
             Ok(all) => status == Status::NoNonlinearity && all.iter().all(|s| s.status == status),
             Err((why, _)) => *why == status,
@@ -318,11 +320,18 @@ fn sought(s: &CutSolution, find: Find) -> f64 {
 #[must_use]
 pub fn no_solution(
     setup: &Setup,
+    find: Find,
     target: Target,
     shortfall: Option<Shortfall>,
     alternatives: &[String],
 ) -> String {
-    let mut text = format!("no cut gives {} in {}", target_words(target), setup.interaction);
+    let what = match find {
+        Find::Theta | Find::Phi => "cut",
+        Find::Poling => "poling period from 0.5 um up",
+        Find::Temperature => "temperature from -50 degC to 300 degC",
+        Find::Pump => "pump from half to twice this one",
+    };
+    let mut text = format!("no {what} gives {} in {}", target_words(target), setup.interaction);
     match (shortfall, target) {
         (Some(s), Target::Collinear) => text.push_str(&format!(
             "; the nearest collinear mismatch is {} rad/mm at theta {} deg, phi {} deg",

@@ -1,9 +1,8 @@
 //! Report `index`: what each wave sees.
 
 use crate::matching::Status;
-use crate::material::{MaterialError, Optic, Reach};
-use crate::optics::{Along, Crystal, along_axes, along_direction};
-use crate::quantity::Wavelength;
+use crate::material::{MaterialError, Reach};
+use crate::optics::{Crystal, IndexRow, index_rows};
 
 use super::angles::{fixed, grid, or_dash, rounded};
 use super::spread;
@@ -23,77 +22,6 @@ pub const COLUMNS: [Column; 10] = [
     column("dn_dt_per_k", "1/K", "temperature derivative of the phase index; empty where not known"),
 ];
 
-/// One wave at one wavelength.
-#[derive(Debug, Clone)]
-pub struct IndexRow {
-    material: String,
-    dataset: String,
-    wavelength: Wavelength,
-    temperature_degc: f64,
-    polarization: String,
-    along: Option<Along>,
-    dn_dt: Option<f64>,
-    extrapolated: bool,
-    status: Status,
-}
-
-/// The waves of a crystal at one wavelength: along its face normal where `directed`, else along the principal axes.
-///
-/// # Errors
-/// A wavelength or temperature outside the data set's range.
-pub fn rows(
-    crystal: &Crystal,
-    wavelength: Wavelength,
-    directed: bool,
-) -> Result<Vec<IndexRow>, MaterialError> {
-    let principal = crystal.principal(wavelength)?;
-    let waves: Vec<(String, Along)> = if directed {
-        let [_, _, normal] = crystal.cut.axes();
-        along_direction(&principal, normal.0).into_iter().map(|(p, along)| (p.to_string(), along)).collect()
-    } else {
-        let axes = along_axes(&principal);
-        match principal.optic {
-            Optic::Uniaxial => vec![("o".into(), axes[0]), ("e".into(), axes[2])],
-            Optic::Biaxial => {
-                ["x", "y", "z"].iter().zip(axes).map(|(n, along)| ((*n).into(), along)).collect()
-            }
-        }
-    };
-    let slopes: [Option<f64>; 3] =
-        std::array::from_fn(|axis| crystal.set().thermo_slope(axis, wavelength, crystal.temperature));
-    Ok(waves
-        .into_iter()
-        .map(|(polarization, along)| IndexRow {
-            material: crystal.material.id.clone(),
-            dataset: crystal.set().id.clone(),
-            wavelength,
-            temperature_degc: crystal.temperature.degc(),
-            polarization,
-            dn_dt: along.thermo_slope(&principal, slopes),
-            extrapolated: crystal.extrapolates(wavelength),
-            status: if along.on_optic_axis { Status::OpticAxis } else { Status::Ok },
-            along: Some(along),
-        })
-        .collect())
-}
-
-/// A row for a data set that does not cover the wavelength, where several are asked.
-#[must_use]
-pub fn out_of_range(crystal: &Crystal, wavelength: Wavelength) -> IndexRow {
-    debug_assert_eq!(crystal.reach, Reach::Within);
-    IndexRow {
-        material: crystal.material.id.clone(),
-        dataset: crystal.set().id.clone(),
-        wavelength,
-        temperature_degc: crystal.temperature.degc(),
-        polarization: String::new(),
-        along: None,
-        dn_dt: None,
-        extrapolated: false,
-        status: Status::OutOfRange,
-    }
-}
-
 /// The line about the other data sets: the index of the first row's wave there.
 #[must_use]
 pub fn spread_line(crystal: &Crystal, own: &[IndexRow], directed: bool) -> String {
@@ -102,7 +30,7 @@ pub fn spread_line(crystal: &Crystal, own: &[IndexRow], directed: bool) -> Strin
         .filter(|index| *index != crystal.dataset)
         .map(|index| {
             let other = Crystal { reach: Reach::Within, ..crystal.with_dataset(index) };
-            let answer = rows(&other, first.wavelength, directed);
+            let answer = index_rows(&other, first.wavelength, directed);
             let n = answer.map(|all| all.first().and_then(|row| row.along.as_ref()).map(|a| a.n));
             (other.set().id.clone(), n.map_err(|e| spread::reason(&e)))
         })
@@ -122,7 +50,7 @@ pub fn table(rows: &[IndexRow]) -> Table {
             row.material.as_str().into(),
             row.dataset.as_str().into(),
             row.wavelength.nm().into(),
-            row.temperature_degc.into(),
+            row.temperature.degc().into(),
             polarization.into(),
             along.map(|a| a.n).into(),
             along.map(|a| a.group_index).into(),
@@ -130,7 +58,7 @@ pub fn table(rows: &[IndexRow]) -> Table {
             along.map_or(Cell::Empty, |a| Cell::degrees(a.walkoff.to_degrees())),
             Cell::from(row.dn_dt),
         ];
-        table.push(cells, row.extrapolated, row.status);
+        table.push(cells, row.extrapolated, status(row));
     }
     table
 }
@@ -157,7 +85,7 @@ pub fn text(rows: &[IndexRow]) -> String {
             vec![
                 format!("{}:{}", row.material, row.dataset),
                 rounded(row.wavelength.nm(), 3),
-                rounded(row.temperature_degc, 2),
+                rounded(row.temperature.degc(), 2),
                 row.polarization.clone(),
                 or_dash(along.map(|a| a.n), 6),
                 or_dash(along.map(|a| a.group_index), 6),
@@ -165,12 +93,21 @@ pub fn text(rows: &[IndexRow]) -> String {
                 or_dash(along.map(|a| a.walkoff.to_degrees()), 3),
                 row.dn_dt.map_or_else(|| "-".into(), |d| fixed(d * 1e6, 2)),
                 if row.extrapolated {
-                    format!("{} (extrapolated)", row.status)
+                    format!("{} (extrapolated)", status(row))
                 } else {
-                    row.status.to_string()
+                    status(row).to_string()
                 },
             ]
         })
         .collect();
     grid(&header, &cells)
+}
+
+fn status(row: &IndexRow) -> Status {
+    match (&row.fault, &row.along) {
+        (Some(MaterialError::NoIndex { .. }), _) => Status::Opaque,
+        (Some(_), _) => Status::OutOfRange,
+        (None, Some(along)) if along.on_optic_axis => Status::OpticAxis,
+        (None, _) => Status::Ok,
+    }
 }

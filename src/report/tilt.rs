@@ -11,7 +11,6 @@ use super::conventions::room_words;
 use super::cut::target_words;
 use super::spread;
 use super::table::{Cell, Column, Table, column};
-use crate::matching::Status;
 
 /// Columns, without the two that end every table.
 pub const COLUMNS: [Column; 11] = [
@@ -39,7 +38,6 @@ pub fn table(setup: &Setup, actuator: Actuator, turns: &[Turn]) -> Table {
         let reading = stage.and_then(|s| s.reading(to.tilt));
         let measure = &turn.measure;
         let wavelengths = [turn.photons.pump, turn.photons.signal, turn.photons.idler];
-        let status = if measure.touching { Status::Touching } else { Status::Ok };
         table.push(
             vec![
                 (index + 1).into(),
@@ -55,7 +53,7 @@ pub fn table(setup: &Setup, actuator: Actuator, turns: &[Turn]) -> Table {
                 change.and_then(|c| stage.and_then(|s| s.turns(c))).into(),
             ],
             wavelengths.iter().any(|w| turn.crystal.extrapolates(*w)),
-            status,
+            turn.status,
         );
     }
     match actuator {
@@ -107,6 +105,7 @@ pub fn text(setup: &Setup, target: Target, actuator: Actuator, chosen: bool, tur
     );
     let header = [
         "solution",
+        "process",
         name(actuator),
         "turn",
         "theta inside",
@@ -132,6 +131,7 @@ fn cells(setup: &Setup, actuator: Actuator, index: usize, turn: &Turn) -> Vec<St
     let measure = &turn.measure;
     vec![
         (index + 1).to_string(),
+        turn.process.to_string(),
         setting(actuator, turn),
         change.map_or_else(|| "-".into(), |c| signed(c.degrees(), 3)),
         fixed(turn.theta_inside.to_degrees(), 3),

@@ -2,8 +2,7 @@
 
 use crate::frame::Direction;
 use crate::job::Setup;
-use crate::matching::{Emission, Opinion, Pairing, Roles, Status};
-use crate::material::tensor::is_centrosymmetric;
+use crate::matching::{Emission, Opinion, Twin};
 
 use super::angles::{fixed, grid, rounded, signed};
 use super::spread;
@@ -24,9 +23,6 @@ pub const COLUMNS: [Column; 11] = [
     column("phase_matching_factor", "", "sinc^2(Delta_k L/2)"),
 ];
 
-/// One process: the waves of the pair, if they exist.
-pub type Twin = (Roles, Option<Pairing>);
-
 /// One row per process.
 #[must_use]
 pub fn table(setup: &Setup, emission: &Emission, photon: Direction, twins: &[Twin]) -> Table {
@@ -34,8 +30,7 @@ pub fn table(setup: &Setup, emission: &Emission, photon: Direction, twins: &[Twi
     let extrapolated = [emission.photons.pump, emission.photons.signal, emission.photons.idler]
         .iter()
         .any(|w| setup.crystals[0].extrapolates(*w));
-    for (roles, pairing) in twins {
-        let process = emission.process(*roles);
+    for Twin { process, pairing, status, .. } in twins {
         let partner = pairing.as_ref().and_then(|p| p.idler_outside);
         let cells = vec![
             process.to_string().into(),
@@ -50,31 +45,16 @@ pub fn table(setup: &Setup, emission: &Emission, photon: Direction, twins: &[Twi
             pairing.as_ref().map(|p| p.mismatch * 1e-3).into(),
             Cell::from(pairing.as_ref().map(|p| p.phase_matching_factor(emission.length))),
         ];
-        table.push(cells, extrapolated, status(setup, emission, pairing.as_ref()));
+        table.push(cells, extrapolated, *status);
     }
     table
-}
-
-fn status(setup: &Setup, emission: &Emission, pairing: Option<&Pairing>) -> Status {
-    let material = &setup.crystals[0].material;
-    match pairing {
-        None => Status::TotalReflection,
-        Some(p) if p.idler_outside.is_none() => Status::TotalReflection,
-        Some(p) if p.on_optic_axis() => Status::OpticAxis,
-        Some(p) => match &material.tensor {
-            Some(tensor) if p.d_eff(emission, tensor) < 1e-6 * tensor.largest() => Status::NoNonlinearity,
-            None if is_centrosymmetric(material.file.point_group.get_ref()) => Status::NoNonlinearity,
-            _ => Status::Ok,
-        },
-    }
 }
 
 /// The line about the other data sets: how well the first process is matched there. Where the partner goes does not
 /// depend on the indices at all.
 #[must_use]
 pub fn spread_line(own: &[Twin], length: f64, opinions: &[Opinion<Option<f64>>]) -> String {
-    let first =
-        own.first().and_then(|(_, pairing)| pairing.as_ref()).map(|p| p.phase_matching_factor(length));
+    let first = own.first().and_then(|t| t.pairing.as_ref()).map(|p| p.phase_matching_factor(length));
     spread::line("sinc^2 of the first process", first, &spread::numbers(opinions, |value| *value), 3)
 }
 
@@ -103,8 +83,7 @@ pub fn text(setup: &Setup, emission: &Emission, photon: Direction, twins: &[Twin
     ];
     let rows: Vec<Vec<String>> = twins
         .iter()
-        .map(|(roles, pairing)| {
-            let process = emission.process(*roles);
+        .map(|Twin { process, pairing, .. }| {
             let mut cells = vec![process.to_string(), process.signal.to_string(), process.idler.to_string()];
             match pairing.as_ref().and_then(|p| p.idler_outside.map(|d| (p, d))) {
                 Some((p, d)) => {
