@@ -52,6 +52,9 @@ pub(crate) struct Stationary {
     pub value: f64,
     /// Geometric mean of the two curvatures along q, m.
     pub curvature: f64,
+    /// Whether the slopes vanish there; where a sheet has a peak that is not smooth (a fast one on an optic axis) this
+    /// is only the lowest point that was reached.
+    pub smooth: bool,
 }
 
 impl Mismatch {
@@ -152,7 +155,7 @@ impl Mismatch {
         self.signal.is_convex() && self.idler.is_convex()
     }
 
-    /// The stationary point reached by damped Newton steps from `start`; `None` if they leave the domain.
+    /// The lowest point reached by damped Newton steps from `start`; `None` if they leave the domain.
     pub(crate) fn stationary(&self, start: Tangential) -> Option<Stationary> {
         const STEPS: usize = 100;
         let mut q = start;
@@ -203,11 +206,9 @@ impl Mismatch {
 
     fn found(&self, q: Tangential, here: &Sample) -> Option<Stationary> {
         let [a, b, c] = self.hessian(q)?;
-        (here.slope[0].hypot(here.slope[1]) < 1e-7).then(|| Stationary {
-            q,
-            value: here.value,
-            curvature: (a * c - b * b).abs().sqrt(),
-        })
+        let curvature = (a * c - b * b).abs().sqrt();
+        let smooth = here.slope[0].hypot(here.slope[1]) < 1e-7;
+        Some(Stationary { q, value: here.value, curvature, smooth })
     }
 
     /// Second derivatives of Delta_k with respect to q: uu, uv, vv.
@@ -223,6 +224,11 @@ impl Mismatch {
     pub(crate) fn along_pump(&self) -> Tangential {
         let share = self.k0_signal / (self.k0_signal + self.k0_idler);
         Tangential { u: share * self.q_pump.u, v: share * self.q_pump.v }
+    }
+
+    /// Below this Delta_k is zero to rounding error, rad/m.
+    pub(crate) fn rounding(&self) -> f64 {
+        1e-14 * (self.k0_signal + self.k0_idler)
     }
 
     pub(crate) fn k0_signal(&self) -> f64 {

@@ -200,14 +200,18 @@ fn seeds(mismatch: &Mismatch) -> Result<Vec<Stationary>, RingFault> {
     let central = mismatch.stationary(mismatch.along_pump());
     if mismatch.is_convex() {
         return match central {
-            Some(seed) if seed.value < 0.0 => Ok(vec![seed]),
-            Some(seed) => Err(RingFault { status: Status::NoPhaseMatching, shortfall: Some(seed.value) }),
-            None => Err(RingFault::new(Status::NotConverged)),
+            Some(seed) if seed.value < mismatch.rounding() => Ok(vec![seed]),
+            Some(seed) if seed.smooth => {
+                Err(RingFault { status: Status::NoPhaseMatching, shortfall: Some(seed.value) })
+            }
+            Some(_) | None => Err(RingFault::new(Status::NotConverged)),
         };
     }
     let mut seeds: Vec<Stationary> = Vec::new();
     for start in lowest_of_each_region(mismatch) {
-        let Some(seed) = mismatch.stationary(start).filter(|s| s.value < 0.0) else { continue };
+        let Some(seed) = mismatch.stationary(start).filter(|s| s.value < mismatch.rounding()) else {
+            continue;
+        };
         let apart = |other: &Stationary| {
             (other.q.u - seed.q.u).hypot(other.q.v - seed.q.v) > 1e-6 * mismatch.k0_signal()
         };
@@ -215,7 +219,7 @@ fn seeds(mismatch: &Mismatch) -> Result<Vec<Stationary>, RingFault> {
             seeds.push(seed);
         }
     }
-    if let Some(seed) = central.filter(|s| s.value < 0.0 && seeds.is_empty()) {
+    if let Some(seed) = central.filter(|s| s.value < mismatch.rounding() && seeds.is_empty()) {
         seeds.push(seed);
     }
     if seeds.is_empty() {
@@ -267,11 +271,14 @@ fn lowest_of_each_region(mismatch: &Mismatch) -> Vec<Tangential> {
 }
 
 impl Curve {
-    /// The curve about a seed, traced from there.
+    /// The curve about a seed, traced from there; a point where the mismatch is zero at the seed itself.
     fn about(mismatch: &Mismatch, seed: &Stationary, count: usize) -> Result<Self, RingFault> {
         let Some(start) = mismatch.direction(seed.q) else {
             return Err(RingFault::new(Status::TotalReflection));
         };
+        if seed.value.abs() <= mismatch.rounding() {
+            return Ok(Self { frame: Meridians::about(start.lab().0), samples: [0.0; SAMPLES], count });
+        }
         // Delta_k ~ Delta_0 + curvature q^2/2 gives the first radius
         let radius = (-2.0 * seed.value / seed.curvature).sqrt() / mismatch.k0_signal();
         let mut curve = Self { frame: Meridians::about(start.lab().0), samples: [radius; SAMPLES], count };
@@ -288,6 +295,9 @@ impl Curve {
     /// Traces again about the axis of the cone that fits best, until the axis stays.
     fn centred(mut self, mismatch: &Mismatch) -> Result<Self, RingFault> {
         const PASSES: usize = 20;
+        if self.is_point() {
+            return Ok(self);
+        }
         for _ in 0..PASSES {
             let axis = axis_of(|j| self.vector(j), &self.frame.axis);
             if axis.cross(&self.frame.axis).norm() < 1e-9_f64.to_radians() {
@@ -302,6 +312,10 @@ impl Curve {
             self.trace(mismatch)?;
         }
         Err(RingFault::new(Status::NotConverged))
+    }
+
+    fn is_point(&self) -> bool {
+        self.samples[0] == 0.0
     }
 
     /// Polar angles at all azimuths; those there are guesses on entry.
@@ -399,7 +413,7 @@ impl Ring {
     /// Fits the cone and looks at the details.
     fn fit(curve: Curve, mismatch: &Mismatch, length: f64) -> Result<Self, RingFault> {
         let curve = curve.centred(mismatch)?.within_region()?;
-        let (least, largest) = extremes(mismatch, &curve);
+        let (least, largest) = if curve.is_point() { (0.0, 0.0) } else { extremes(mismatch, &curve) };
         let point = |j: usize| curve.vector(j);
         let inside = |j: usize| mismatch.inside(curve.direction(j)).map_or(Vector3::z(), |k| k.normalize());
         let internal_axis = axis_of(inside, &Vector3::z());
@@ -409,7 +423,7 @@ impl Ring {
             half_angle: cone_angle(point, &curve.frame.axis),
             least,
             largest,
-            internal_half_angle: cone_angle(inside, &internal_axis),
+            internal_half_angle: if curve.is_point() { 0.0 } else { cone_angle(inside, &internal_axis) },
             thickness: thickness(mismatch, &curve, length),
             status: if partners_leave { Status::Ok } else { Status::TotalReflection },
             curve,
