@@ -161,9 +161,11 @@ fn answered(setup: &Setup, asked: &Design, attempts: &[Attempt]) -> Setup {
     let solutions = attempts.iter().filter_map(|a| a.outcome.as_ref().ok()).flatten();
     match solutions.max_by(|a, b| a.d_eff.unwrap_or(0.0).total_cmp(&b.d_eff.unwrap_or(0.0))) {
         Some(best) => {
+            setup.forget_typed();
             setup.crystals = vec![best.crystal.clone()];
             setup.pump = Some(best.photons.pump);
             setup.cut = vec![GivenCut { theta: true, phi: true, target: None }];
+            setup.interaction_given = true;
             setup.interaction = match asked.interaction {
                 Interaction::Any => Interaction::Explicit(best.process),
                 named => named,

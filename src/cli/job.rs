@@ -8,7 +8,7 @@ use twincone::job::setup::{Needs, SetupError};
 use twincone::job::{Document, template};
 
 use super::failure::Failure;
-use super::options::{ExperimentArgs, catalogue, read_text};
+use super::options::{ExperimentArgs, catalogue, name_of, read_text};
 use super::output::{Outcome, OutputArgs};
 
 /// Options of `job`.
@@ -59,8 +59,8 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
             };
             if missing {
                 let one = said.emission.as_ref().and_then(|e| e.get_ref().kind.as_ref());
-                let cone = key.contains("cut")
-                    && one.is_some_and(|kind| matches!(kind.get_ref().as_str(), "I" | "1"));
+                let cone =
+                    key.contains("cut") && one.is_some_and(|kind| matches!(&**kind.get_ref(), "I" | "1"));
                 document.set("the default", if cone { "crystal.cut.half-angle" } else { key }, value);
             }
         }
@@ -77,10 +77,17 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
 }
 
 fn check(file: &PathBuf, output: &OutputArgs) -> Result<Outcome, Failure> {
-    let name = file.display().to_string();
+    let name = name_of(file);
     let document = Document::from_file(&name, &read_text(file)?);
     let setup = resolve(&document, &catalogue(output, &document)?, Needs::ALL)?;
-    let mut text = format!("{name}: a valid job\n  pump {}, {}\n", setup.pump(), setup.interaction);
+    let points = if setup.written.sweep.is_some() { "" } else { ", 1 point" };
+    let mut text = format!(
+        "{name}: a valid job{points}
+  pump {}, {}
+",
+        setup.pump(),
+        setup.interaction
+    );
     for crystal in &setup.crystals {
         text.push_str(&format!(
             "  crystal {}: {}:{}, theta {:.3} deg, phi {} deg, {}, tilt {}, cross tilt {}, roll {}\n",

@@ -80,7 +80,7 @@ pub fn parse() -> Result<Typed, ExitCode> {
 /// What a person probably meant, where clap cannot know.
 fn hint(error: &clap::Error) -> Option<String> {
     let stray = matches!(error.kind(), ErrorKind::UnknownArgument | ErrorKind::InvalidSubcommand);
-    let asked_for_process = std::env::args().any(|a| a == "--process");
+    let asked_for_process = std::env::args().any(|a| a.starts_with("--process"));
     let invalid = error.get(ContextKind::InvalidArg).map(ToString::to_string);
     let arrow = invalid.is_some_and(|a| matches!(a.trim_matches('\''), "-" | "+" | "->" | "e" | "o"));
     (stray && asked_for_process && arrow).then(|| {

@@ -68,7 +68,7 @@ pub struct ExperimentArgs {
     #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
     linewidth: Option<String>,
     /// Pump pulse duration, FWHM
-    #[arg(long, value_name = "TIME", allow_hyphen_values = true)]
+    #[arg(long, value_name = "TIME", allow_hyphen_values = true, conflicts_with = "linewidth")]
     pulse: Option<String>,
     /// Angle of the pump's field from +x towards +y [default: matched to the crystals]
     #[arg(long, value_name = "ANGLE", allow_hyphen_values = true)]
@@ -92,7 +92,7 @@ pub struct ExperimentArgs {
     #[arg(long, value_name = "SIZE", allow_hyphen_values = true)]
     iris: Option<String>,
     /// Fibre: 1/e^2 mode radius at the crystal
-    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
+    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true, conflicts_with = "iris")]
     fibre: Option<String>,
     /// Filter width, FWHM
     #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
@@ -317,6 +317,6 @@ pub fn read_text(path: &PathBuf) -> Result<String, Failure> {
     std::fs::read_to_string(path).map_err(|e| Failure::file("read", &shown, &e))
 }
 
-fn name_of(path: &std::path::Path) -> String {
+pub fn name_of(path: &std::path::Path) -> String {
     if path.as_os_str() == "-" { "standard input".into() } else { path.display().to_string() }
 }

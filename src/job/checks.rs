@@ -1,26 +1,23 @@
 //! Values that no command reads yet: a mistake in them is found all the same.
 
-use super::description::Description;
+use std::str::FromStr;
+
+use super::description::{Description, Text};
 use super::resolve::Reader;
 use super::setup::SetupError;
-use crate::quantity::{Angle, Duration, Frequency, Length, Power};
+use crate::quantity::{Angle, Duration, Frequency, Length, Power, QuantityError};
 
 /// Reads the values that no command uses yet, so that a mistake in them is found at once.
 pub(super) fn check_unused(reader: &Reader<'_>, d: &Description) -> Result<(), SetupError> {
     if let Some(pump) = &d.pump {
         let pump = pump.get_ref();
         reader.positive(pump.waist.as_ref(), "the waist")?;
-        reader.maybe::<Power>(pump.power.as_ref())?;
-        reader.maybe::<Duration>(pump.pulse.as_ref())?;
+        positive::<Power>(reader, pump.power.as_ref(), "the power", Power::si)?;
+        positive::<Duration>(reader, pump.pulse.as_ref(), "the pulse", Duration::si)?;
         check_polarization(reader, d)?;
         if let Some(text) = &pump.linewidth {
-            let as_length = text.get_ref().parse::<Length>().map(|_| ());
-            as_length.or_else(|_| text.get_ref().parse::<Frequency>().map(|_| ())).map_err(|_| {
-                reader.fault(
-                    text,
-                    &format!("`{}` is no linewidth; write one such as `0.1 nm` or `200 GHz`", text.get_ref()),
-                )
-            })?;
+            let size = either::<Length, Frequency>(text, Length::si, Frequency::si);
+            check(reader, text, size, "the linewidth", "a linewidth such as `0.1 nm` or `200 GHz`")?;
         }
     }
     let arms = [("a", ()), ("b", ()), ("both", ())];
@@ -29,10 +26,9 @@ pub(super) fn check_unused(reader: &Reader<'_>, d: &Description) -> Result<(), S
             reader.one_of(arm, &arms)?;
         }
         if let Some(iris) = &collection.iris {
-            let as_angle = iris.get_ref().parse::<Angle>().map(|_| ());
-            as_angle.or_else(|_| iris.get_ref().parse::<Length>().map(|_| ())).map_err(|_| {
-                reader.fault(iris, &format!("`{}` is no iris; write its full angle, `0.2 deg`, or its diameter at the screen, `3 mm`", iris.get_ref()))
-            })?;
+            let size = either::<Angle, Length>(iris, Angle::si, Length::si);
+            let kinds = "an iris: its full angle, `0.2 deg`, or its diameter at the screen, `3 mm`";
+            check(reader, iris, size, "the iris", kinds)?;
         }
         reader.positive(collection.fibre.as_ref(), "the fibre's mode radius")?;
         if let Some(direction) = &collection.direction {
@@ -61,6 +57,37 @@ pub(super) fn check_unused(reader: &Reader<'_>, d: &Description) -> Result<(), S
         reader.turn(compensator.tilt.as_ref(), "the compensator's tilt")?;
     }
     Ok(())
+}
+
+/// A quantity of either kind in SI; `None` where the text is neither.
+fn either<A: FromStr, B: FromStr>(text: &Text, a: fn(A) -> f64, b: fn(B) -> f64) -> Option<f64> {
+    text.get_ref().parse::<A>().map(a).or_else(|_| text.get_ref().parse::<B>().map(b)).ok()
+}
+
+fn check(
+    reader: &Reader<'_>,
+    text: &Text,
+    size: Option<f64>,
+    what: &str,
+    kinds: &str,
+) -> Result<(), SetupError> {
+    match size {
+        None => Err(reader.fault(text, &format!("`{}` is not {kinds}", text.get_ref()))),
+        Some(size) if size <= 0.0 => {
+            Err(reader.fault(text, &format!("{what} must be positive, not {}", text.get_ref())))
+        }
+        Some(_) => Ok(()),
+    }
+}
+
+fn positive<T: FromStr<Err = QuantityError>>(
+    reader: &Reader<'_>,
+    text: Option<&Text>,
+    what: &str,
+    si: fn(T) -> f64,
+) -> Result<(), SetupError> {
+    let Some(text) = text else { return Ok(()) };
+    check(reader, text, Some(si(reader.read::<T>(text)?)), what, what)
 }
 
 /// `"matched"`, or a table of `angle` and `phase`.

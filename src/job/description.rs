@@ -2,11 +2,62 @@
 //!
 //! Meaning, defaults and limits are in [`super::setup`], which turns this into SI.
 
+use std::fmt;
+use std::ops::Deref;
+
+use serde::de::{Deserializer, Error, Visitor};
 use serde::{Deserialize, Serialize};
 use toml::Spanned;
 
 /// A text and its place.
-pub type Text = Spanned<String>;
+pub type Text = Spanned<Written>;
+
+/// A value as it was written. A bare number is kept, so that what it lacks can be said where its meaning is known.
+#[derive(Debug, Clone, PartialEq, Eq, Serialize)]
+#[serde(transparent)]
+pub struct Written(String);
+
+impl Deref for Written {
+    type Target = str;
+
+    fn deref(&self) -> &str {
+        &self.0
+    }
+}
+
+impl fmt::Display for Written {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        f.pad(&self.0)
+    }
+}
+
+impl<'de> Deserialize<'de> for Written {
+    fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
+        deserializer.deserialize_any(WrittenVisitor)
+    }
+}
+
+struct WrittenVisitor;
+
+impl Visitor<'_> for WrittenVisitor {
+    type Value = Written;
+
+    fn expecting(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        f.write_str("a string")
+    }
+
+    fn visit_str<E: Error>(self, text: &str) -> Result<Written, E> {
+        Ok(Written(text.into()))
+    }
+
+    fn visit_i64<E: Error>(self, number: i64) -> Result<Written, E> {
+        Ok(Written(number.to_string()))
+    }
+
+    fn visit_f64<E: Error>(self, number: f64) -> Result<Written, E> {
+        Ok(Written(number.to_string()))
+    }
+}
 
 /// A whole job.
 #[derive(Debug, Clone, Default, Deserialize, Serialize)]

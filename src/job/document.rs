@@ -272,7 +272,9 @@ fn merge_into_list<'a>(
     let names: Vec<Option<String>> = items.iter().map(name_of).collect();
     for (part, value) in new {
         let text = part.get_ref().to_string();
-        let chosen = chosen_items(&text, &names, key).map_err(|message| (span.clone(), message))?;
+        let names_item = value.get_ref().is_table() && text != "cut";
+        let chosen =
+            chosen_items(&text, &names, key, names_item).map_err(|message| (span.clone(), message))?;
         match chosen {
             Some(indices) => {
                 for index in indices {
@@ -293,7 +295,12 @@ fn name_of(item: &Spanned<DeValue<'_>>) -> Option<String> {
 }
 
 /// Which items a part of a key path names; `None` where it is a key of the only item.
-fn chosen_items(text: &str, names: &[Option<String>], key: &str) -> Result<Option<Vec<usize>>, String> {
+fn chosen_items(
+    text: &str,
+    names: &[Option<String>],
+    key: &str,
+    names_item: bool,
+) -> Result<Option<Vec<usize>>, String> {
     let count = names.len();
     if text == "*" {
         return Ok(Some((0..count).collect()));
@@ -308,6 +315,12 @@ fn chosen_items(text: &str, names: &[Option<String>], key: &str) -> Result<Optio
     }
     if count == 1 {
         return Ok(None);
+    }
+    if names_item {
+        let known: Vec<&str> = names.iter().flatten().map(String::as_str).collect();
+        let named =
+            if known.is_empty() { String::new() } else { format!(" or by name: {}", known.join(", ")) };
+        return Err(format!("there is no {key} `{text}`; they are numbered 1 to {count}{named}"));
     }
     let numbered = |(i, name): (usize, &Option<String>)| match name {
         Some(name) => format!("{key}.{name}.{text}"),

@@ -75,7 +75,7 @@ impl Reader<'_> {
     }
 
     pub(super) fn one_of<T: Copy>(&self, text: &Text, choices: &[(&str, T)]) -> Result<T, SetupError> {
-        let found = choices.iter().find(|(name, _)| name == text.get_ref());
+        let found = choices.iter().find(|(name, _)| *name == &**text.get_ref());
         found.map(|(_, value)| *value).ok_or_else(|| {
             // other spellings of a choice are accepted but not advertised
             let advertised = choices.iter().filter(|(name, _)| !matches!(*name, "ii" | "i" | "2" | "1"));
@@ -219,7 +219,10 @@ fn signals(
                 format!("{wavelength} is so near the pump, {pump}, that its partner is no light any more");
             return Err(reader.fault(text, &message));
         }
-        all.push(if emission.idler.is_some() { partner } else { wavelength });
+        let signal = if emission.idler.is_some() { partner } else { wavelength };
+        if all.iter().all(|other: &Wavelength| (other.si() / signal.si() - 1.0).abs() > 1e-9) {
+            all.push(signal);
+        }
     }
     Ok(if all.is_empty() { Signals::Degenerate } else { Signals::At(all) })
 }
@@ -254,12 +257,13 @@ fn crystal(
             .or(c.material.as_ref())
             .map_or(e.clone().into(), |t| reader.fault(t, &e.to_string()))
     })?;
-    crystal.name = c.name.as_ref().map_or((index + 1).to_string(), |n| n.get_ref().clone());
-    if let Some(temperature) = reader.maybe::<Temperature>(c.temperature.as_ref())? {
-        if temperature.degc() < -273.15 {
-            let text = c.temperature.as_ref().unwrap_or_else(|| unreachable!("it was read"));
+    crystal.name = c.name.as_ref().map_or((index + 1).to_string(), |n| n.get_ref().to_string());
+    for text in c.temperature.iter().chain(&c.reference_temperature) {
+        if reader.read::<Temperature>(text)?.degc() < -273.15 {
             return Err(reader.fault(text, "a temperature cannot lie below absolute zero"));
         }
+    }
+    if let Some(temperature) = reader.maybe::<Temperature>(c.temperature.as_ref())? {
         crystal.temperature = temperature;
     }
     if let Some(reference) = reader.maybe(c.reference_temperature.as_ref())? {
@@ -312,7 +316,7 @@ fn material(
     };
     let (id, set) = match text.get_ref().split_once(':') {
         Some((id, set)) => (id, Some(set.to_string())),
-        None => (text.get_ref().as_str(), None),
+        None => (&**text.get_ref(), None),
     };
     let material = catalogue.get(id).map_err(|e| reader.fault(text, &e.to_string()))?;
     let dataset = match (&c.dataset, set) {
@@ -321,7 +325,7 @@ fn material(
                 reader.fault(text, "the data set is named twice; write it in `dataset` or after the colon")
             );
         }
-        (Some(set), None) => Some(set.get_ref().clone()),
+        (Some(set), None) => Some(set.get_ref().to_string()),
         (None, set) => set,
     };
     Ok((Arc::new(material), dataset))

@@ -147,6 +147,17 @@ impl Setup {
         self.signals.for_pump(self.pump())
     }
 
+    /// Lets the values of this setup stand for what was typed of cut, poling, temperature, pump and process.
+    pub fn forget_typed(&mut self) {
+        for crystal in &mut self.written.crystal {
+            let crystal = crystal.get_mut();
+            (crystal.cut, crystal.poling, crystal.temperature) = (None, None, None);
+        }
+        if let Some(pump) = &mut self.written.pump {
+            pump.get_mut().wavelength = None;
+        }
+    }
+
     /// The same experiment for each signal wavelength on its own.
     #[must_use]
     pub fn one_per_signal(&self) -> Vec<Self> {

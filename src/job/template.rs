@@ -2,7 +2,7 @@
 
 use std::fmt::Write as _;
 
-use super::description::{Description, Text};
+use super::description::{Cut, Description, Text};
 use super::setup::{GivenCut, Setup, Signals};
 use crate::frame::Reversal;
 use crate::matching::{Interaction, Target};
@@ -16,7 +16,9 @@ pub fn template(setup: &Setup) -> String {
     let o = &mut out;
     line(o, "title", &quoted(setup.title.as_deref().unwrap_or("untitled")), "what you call it");
     section(o, "[pump]");
-    let pump = setup.pump.map_or_else(|| "405 nm".into(), |p| p.to_string());
+    let typed = setup.written.pump.as_ref().and_then(|p| p.get_ref().wavelength.as_ref());
+    let pump = typed.map(|text| text.get_ref().to_string()).or(setup.pump.map(|p| p.to_string()));
+    let pump = pump.unwrap_or_else(|| "405 nm".into());
     line(o, "wavelength", &quoted(&pump), "vacuum; \"405 nm air\" converts from standard air");
     pump_section(o, setup);
     for (index, crystal) in setup.crystals.iter().enumerate() {
@@ -24,7 +26,9 @@ pub fn template(setup: &Setup) -> String {
     }
     emission_section(o, setup);
     section(o, "[screen]");
-    line(o, "distance", &quoted(&setup.screen.to_string()), "from the crystal, across the pump");
+    let typed = setup.written.screen.as_ref().and_then(|s| s.distance.as_ref());
+    let distance = typed.map_or(setup.screen.to_string(), |text| text.get_ref().to_string());
+    line(o, "distance", &quoted(&distance), "from the crystal, across the pump");
     section(o, "[stage]");
     stage_section(o, setup);
     other_sections(o, setup);
@@ -100,7 +104,7 @@ fn crystal_section(o: &mut String, setup: &Setup, index: usize, crystal: &Crysta
         line(o, "name", &quoted(&crystal.name), "");
     }
     // a material file is named by its path, which the id does not tell
-    let typed = written.material.as_ref().map(|m| m.get_ref().as_str()).filter(|m| m.contains(".toml"));
+    let typed = written.material.as_ref().map(|m| &**m.get_ref()).filter(|m| m.contains(".toml"));
     let typed =
         typed.map(|m| m.split_once(".toml:").map_or(m.to_string(), |(stem, _)| format!("{stem}.toml")));
     line(
@@ -110,9 +114,18 @@ fn crystal_section(o: &mut String, setup: &Setup, index: usize, crystal: &Crysta
         "`twincone materials` lists them",
     );
     line(o, "dataset", &quoted(&crystal.set().id), "whose refractive indices");
-    line(o, "cut", &cut(crystal, given), "theta: face normal to Z; phi: azimuth of the normal from X");
-    line(o, "length", &quoted(&crystal.length.to_string()), "along the face normal");
-    line(o, "temperature", &quoted(&crystal.temperature.to_string()), "");
+    let why = "theta: face normal to Z; phi: azimuth of the normal from X";
+    match given.theta || given.target.is_some() {
+        true => line(o, "cut", &cut(crystal, given, written.cut.as_ref().map(|c| c.get_ref())), why),
+        false => comment(o, "cut = { theta = \"42 deg\", phi = \"0 deg\" }", why),
+    }
+    // as typed where it was typed, so that it reads back to the last bit
+    let typed = |text: &Option<Text>, value: String| {
+        quoted(&text.as_ref().map_or(value, |text| text.get_ref().to_string()))
+    };
+    let length = typed(&written.length, crystal.length.to_string());
+    line(o, "length", &length, "along the face normal");
+    line(o, "temperature", &typed(&written.temperature, crystal.temperature.to_string()), "");
     if let Some(reference) = &written.reference_temperature {
         line(
             o,
@@ -125,11 +138,15 @@ fn crystal_section(o: &mut String, setup: &Setup, index: usize, crystal: &Crysta
         line(o, "gap_before", &quoted(gap.get_ref()), "air before the crystal");
     }
     let turn = &crystal.orientation;
-    line(o, "tilt", &quoted(&turn.tilt.to_string()), "positive increases theta");
-    line(o, "cross_tilt", &quoted(&turn.cross_tilt.to_string()), "positive increases phi");
-    line(o, "roll", &quoted(&turn.roll.to_string()), "90 deg lets Z lean up instead of towards +x");
+    line(o, "tilt", &typed(&written.tilt, turn.tilt.to_string()), "positive increases theta");
+    line(o, "cross_tilt", &typed(&written.cross_tilt, turn.cross_tilt.to_string()), "positive increases phi");
+    let roll = typed(&written.roll, turn.roll.to_string());
+    line(o, "roll", &roll, "90 deg lets Z lean up instead of towards +x");
     match crystal.poling {
-        Some(period) => line(o, "poling", &quoted(&format!("{} um", period.um())), "period along the normal"),
+        Some(period) => {
+            let poling = typed(&written.poling, format!("{} um", period.um()));
+            line(o, "poling", &poling, "period along the normal");
+        }
         None => comment(o, "poling = \"10 um\"", "period along the normal"),
     }
     match crystal.reversal {
@@ -146,7 +163,10 @@ fn crystal_section(o: &mut String, setup: &Setup, index: usize, crystal: &Crysta
     }
 }
 
-fn cut(crystal: &Crystal, given: GivenCut) -> String {
+fn cut(crystal: &Crystal, given: GivenCut, written: Option<&Cut>) -> String {
+    if let Some(cut) = written.filter(|cut| cut.is_decided() && given != GivenCut::default()) {
+        return as_typed(cut, crystal, given);
+    }
     let phi = if given.phi { format!(", phi = \"{}\"", crystal.cut.phi) } else { String::new() };
     let degrees = |angle: f64| crate::quantity::Angle::radians(angle);
     match given.target {
@@ -161,14 +181,28 @@ fn cut(crystal: &Crystal, given: GivenCut) -> String {
     }
 }
 
+/// The cut in the words it was typed in; phi that was chosen is added to a typed theta.
+fn as_typed(cut: &Cut, crystal: &Crystal, given: GivenCut) -> String {
+    let mut cut = toml::Value::try_from(cut).expect("texts and flags are TOML");
+    if let (Some(table), true, false) = (cut.as_table_mut(), given.theta, given.phi) {
+        table.insert("phi".into(), toml::Value::String(crystal.cut.phi.to_string()));
+    }
+    let keys = cut.as_table().into_iter().flatten().map(|(key, value)| format!("{key} = {value}"));
+    format!("{{ {} }}", keys.collect::<Vec<_>>().join(", "))
+}
+
 fn emission_section(o: &mut String, setup: &Setup) {
     section(o, "[emission]");
+    let why = "0, I or II; or process = \"e -> o + e\"";
+    // a default that depends on the question stays open
+    let mut kind = |name: &str| match setup.interaction_given {
+        true => line(o, "type", &quoted(name), why),
+        false => comment(o, &format!("type = \"{name}\""), why),
+    };
     match setup.interaction {
-        Interaction::Zero => line(o, "type", "\"0\"", "0, I or II; or process = \"e -> o + e\""),
-        Interaction::One => line(o, "type", "\"I\"", "0, I or II; or process = \"e -> o + e\""),
-        Interaction::Two | Interaction::Any => {
-            line(o, "type", "\"II\"", "0, I or II; or process = \"e -> o + e\"")
-        }
+        Interaction::Zero => kind("0"),
+        Interaction::One => kind("I"),
+        Interaction::Two | Interaction::Any => kind("II"),
         Interaction::Explicit(process) => {
             line(o, "process", &quoted(&process.to_string()), "or type = \"II\"")
         }
