@@ -6,28 +6,44 @@ use std::fmt;
 use std::ops::Deref;
 
 use serde::de::{Deserializer, Error, Visitor};
-use serde::{Deserialize, Serialize};
+use serde::{Deserialize, Serialize, Serializer};
 use toml::Spanned;
 
 /// A text and its place.
 pub type Text = Spanned<Written>;
 
 /// A value as it was written. A bare number is kept, so that what it lacks can be said where its meaning is known.
-#[derive(Debug, Clone, PartialEq, Eq, Serialize)]
-#[serde(transparent)]
-pub struct Written(String);
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct Written {
+    text: String,
+    bare: bool,
+}
+
+impl Written {
+    /// Whether a number stood there without quotes.
+    #[must_use]
+    pub fn is_bare(&self) -> bool {
+        self.bare
+    }
+}
+
+impl Serialize for Written {
+    fn serialize<S: Serializer>(&self, serializer: S) -> Result<S::Ok, S::Error> {
+        serializer.serialize_str(&self.text)
+    }
+}
 
 impl Deref for Written {
     type Target = str;
 
     fn deref(&self) -> &str {
-        &self.0
+        &self.text
     }
 }
 
 impl fmt::Display for Written {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        f.pad(&self.0)
+        f.pad(&self.text)
     }
 }
 
@@ -47,15 +63,15 @@ impl Visitor<'_> for WrittenVisitor {
     }
 
     fn visit_str<E: Error>(self, text: &str) -> Result<Written, E> {
-        Ok(Written(text.into()))
+        Ok(Written { text: text.into(), bare: false })
     }
 
     fn visit_i64<E: Error>(self, number: i64) -> Result<Written, E> {
-        Ok(Written(number.to_string()))
+        Ok(Written { text: number.to_string(), bare: true })
     }
 
     fn visit_f64<E: Error>(self, number: f64) -> Result<Written, E> {
-        Ok(Written(number.to_string()))
+        Ok(Written { text: number.to_string(), bare: true })
     }
 }
 

@@ -344,7 +344,7 @@ fn normalise(tree: &mut DeTable<'_>) {
     }
     if let Some(DeValue::Table(emission)) = tree.get_mut("emission").map(Spanned::get_mut)
         && let Some(signal) = emission.get_mut("signal")
-        && signal.get_ref().is_str()
+        && !signal.get_ref().is_array()
     {
         wrap(signal);
     }

@@ -27,7 +27,15 @@ impl Reader<'_> {
     }
 
     pub(super) fn read<T: FromStr<Err = QuantityError>>(&self, text: &Text) -> Result<T, SetupError> {
-        text.get_ref().parse().map_err(|e: QuantityError| self.fault(text, &e.to_string()))
+        text.get_ref().parse().map_err(|error: QuantityError| {
+            let message = match &error {
+                QuantityError::NoUnit { text: number, kind, units, first } if text.get_ref().is_bare() => {
+                    format!("`{number}` has no unit; {kind} needs one of {units}: write \"{number} {first}\", in quotes")
+                }
+                other => other.to_string(),
+            };
+            self.fault(text, &message)
+        })
     }
 
     pub(super) fn maybe<T: FromStr<Err = QuantityError>>(

@@ -158,6 +158,16 @@ impl Setup {
         }
     }
 
+    /// Keeps of what was typed only the keys that this setup does not hold.
+    pub fn forget_all_typed(&mut self) {
+        self.forget_typed();
+        self.written.screen = None;
+        for crystal in &mut self.written.crystal {
+            let crystal = crystal.get_mut();
+            (crystal.length, crystal.tilt, crystal.cross_tilt, crystal.roll) = (None, None, None, None);
+        }
+    }
+
     /// The same experiment for each signal wavelength on its own.
     #[must_use]
     pub fn one_per_signal(&self) -> Vec<Self> {

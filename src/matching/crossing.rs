@@ -96,8 +96,20 @@ pub fn meet(first: Traced<'_>, other: &Mismatch) -> Vec<(Crossing, Meeting)> {
         return up.map(|point| (point, Meeting::Coincide)).into_iter().collect();
     }
     let mut found = Found::default();
+    let count = first.curve.count();
+    // by symmetry rings often touch right at a sample, whose sign and slope then mean nothing
+    let touches = |j: usize| {
+        let (before, after) = (&samples[(j + count - 1) % count], &samples[(j + 1) % count]);
+        samples[j].off().abs() < CONTACT
+            && before.value.is_sign_negative() == after.value.is_sign_negative()
+            && before.off().abs().min(after.off().abs()) > CONTACT
+    };
     for (j, pair) in samples.windows(2).enumerate() {
-        found.between(first, other, j, [pair[0], pair[1]]);
+        if touches(j) {
+            found.touched.push(first.curve.azimuth(j));
+        } else if !touches((j + 1) % count) {
+            found.between(first, other, j, [pair[0], pair[1]]);
+        }
     }
     found.merge_grazing(first, other);
     let crossed = found.crossed.into_iter().map(|phi| (phi, Meeting::Cross));

@@ -48,7 +48,7 @@ impl Answer {
 #[must_use]
 pub fn resolved_job(setup: &crate::job::Setup) -> serde_json::Value {
     let mut solved = setup.clone();
-    solved.forget_typed();
+    solved.forget_all_typed();
     solved.interaction_given = true;
     solved.cut.iter_mut().filter(|cut| cut.theta || cut.target.is_some()).for_each(|cut| cut.target = None);
     let text = crate::job::template(&solved);

@@ -1,0 +1,18 @@
+//! The program as a user runs it: exit status, standard output and standard error together. One module per command,
+//! then what all commands share.
+
+mod run;
+mod table;
+
+mod completions;
+mod cones;
+mod cut;
+mod index;
+mod job;
+mod materials;
+mod tilt;
+mod twin;
+
+mod bad_input;
+mod output;
+mod robustness;
