@@ -223,12 +223,12 @@ fn section(o: &mut String, name: &str) {
 
 fn line(o: &mut String, key: &str, value: &str, why: &str) {
     let written = format!("{key} = {value}");
-    let _ = if why.is_empty() { writeln!(o, "{written}") } else { writeln!(o, "{written:<44}# {why}") };
+    let _ = if why.is_empty() { writeln!(o, "{written}") } else { writeln!(o, "{written:<43} # {why}") };
 }
 
 fn comment(o: &mut String, written: &str, why: &str) {
     let written = format!("# {written}");
-    let _ = if why.is_empty() { writeln!(o, "{written}") } else { writeln!(o, "{written:<44}# {why}") };
+    let _ = if why.is_empty() { writeln!(o, "{written}") } else { writeln!(o, "{written:<43} # {why}") };
 }
 
 fn quoted(text: &str) -> String {

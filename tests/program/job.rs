@@ -207,9 +207,9 @@ fn faults_of_a_job_file_are_told_with_their_place() {
 #[test]
 fn a_number_without_quotes_is_told_how_to_write_it() {
     for (right, bare, phrases) in [
-        ("\"405 nm\"", "405", ["standard input:2:14: `405` has no unit", "`405 nm`"]),
-        ("\"42.4 deg\"", "42.4", ["standard input:6:17: `42.4` has no unit", "`42.4 deg`"]),
-        ("\"bbo\"", "\"bbo\"\nlength = 2", ["standard input:6:10: `2` has no unit", "mm"]),
+        ("\"405 nm\"", "405", ["standard input:2:14: `405` has no unit", "\"405 nm\""]),
+        ("\"42.4 deg\"", "42.4", ["standard input:6:17: `42.4` has no unit", "\"42.4 deg\""]),
+        ("\"bbo\"", "\"bbo\"\nlength = 2", ["standard input:6:10: `2` has no unit", "\"2 mm\""]),
     ] {
         assert_says(&cones(&ONE.replacen(right, bare, 1), "").refusal(2), &phrases);
     }
@@ -221,7 +221,7 @@ fn a_number_without_quotes_is_told_how_to_write_it() {
 #[test]
 fn a_signal_without_quotes_is_told_how_to_write_it() {
     let job = ONE.replacen("[crystal]", "[emission]\nsignal = 810\n[crystal]", 1);
-    assert_says(&cones(&job, "").refusal(2), &["standard input:5:10: `810` has no unit", "`810 nm`"]);
+    assert_says(&cones(&job, "").refusal(2), &["standard input:5:10: `810` has no unit", "\"810 nm\""]);
 }
 
 #[test]
