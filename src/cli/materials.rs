@@ -45,11 +45,13 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     match &args.action {
         None | Some(Action::List) => {
             let all: Result<Vec<Material>, _> = catalogue.ids().map(|id| catalogue.get(id)).collect();
-            answer(&all?, text, output)
+            let hint =
+                "Ranges are those of the data sets; where numbers come from: `twincone materials show ID`.";
+            answer(&all?, text, &[hint], output)
         }
         Some(Action::Show { id }) => {
             super::options::add_file(&mut catalogue, id)?;
-            answer(&[catalogue.get(id)?], |all| detail(&all[0]), output)
+            answer(&[catalogue.get(id)?], |all| detail(&all[0]), &[], output)
         }
         Some(Action::Check { file }) => check(file),
         Some(Action::Template) => Ok(Outcome::plain(TEMPLATE.into())),
@@ -59,12 +61,11 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
 fn answer(
     all: &[Material],
     words: impl Fn(&[Material]) -> String,
+    lines: &[&str],
     output: &OutputArgs,
 ) -> Result<Outcome, Failure> {
     let datasets = all.iter().flat_map(|m| m.sets().iter().map(|s| format!("{}:{}", m.id, s.id))).collect();
-    let lines = vec![
-        "Ranges are those of the data sets; where numbers come from: `twincone materials show ID`.".into(),
-    ];
+    let lines = lines.iter().map(ToString::to_string).collect();
     let answer = Answer {
         command: "materials",
         tables: vec![table(all)],

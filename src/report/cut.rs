@@ -1,7 +1,9 @@
 //! Report `cut`: which cut to order.
 
+use crate::frame::Dielectric;
 use crate::job::Setup;
 use crate::matching::{CutSolution, Find, Opinion, Plane, Shortfall, Status, Target};
+use crate::material::Optic;
 use crate::optics::Crystal;
 
 use super::angles::{fixed, grid, or_dash, prose, rounded};
@@ -171,6 +173,12 @@ fn solution_text(s: &CutSolution, find: Find) -> String {
     let poled =
         if crystal.poling.is_some() { " (of the bulk: a first-order grating leaves 2/pi of it)" } else { "" };
     detail("|d_eff|", s.d_eff.map_or_else(|| "not known".into(), |d| format!("{} pm/V{poled}", fixed(d, 3))));
+    if let (Some(p), Optic::Biaxial) = (&s.pairing, crystal.material.file.optic) {
+        // fast and slow change places with the plane: the field says which light is meant
+        let placement = crystal.placement();
+        let fields = [&p.pump, &p.signal, &p.idler].map(|w| along(placement.to_dielectric(w.field)));
+        detail("electric fields", format!("pump {}, signal {}, idler {}", fields[0], fields[1], fields[2]));
+    }
     if let Some(p) = &s.pairing {
         let walkoff = [&p.pump, &p.signal, &p.idler].map(|w| fixed(w.walkoff().to_degrees(), 2));
         detail(
@@ -212,6 +220,18 @@ fn solution_text(s: &CutSolution, find: Find) -> String {
         detail("", format!("{text}: there this cut is phi {} deg", rounded(phi.degrees(), 3)));
     }
     out
+}
+
+/// A field's direction by the dielectric axis it lies along, or its components.
+fn along(field: Dielectric) -> String {
+    let axes = ["X", "Y", "Z"];
+    match field.0.iter().position(|component| component.abs() > 0.9999) {
+        Some(axis) => format!("along {}", axes[axis]),
+        None => {
+            let [x, y, z] = [field.0.x, field.0.y, field.0.z].map(|c| rounded(c, 2));
+            format!("({x}, {y}, {z})")
+        }
+    }
 }
 
 /// For people, many materials: what can do it, best first, and in a word why the others cannot.
