@@ -48,8 +48,10 @@ pub struct Ring {
     /// Half angle of the cone that fits the photon's wave vectors inside the crystal, radians.
     pub internal_half_angle: f64,
     /// Mean radial distance between the half-maximum points of sinc^2 at the crystal's length, radians; `None` where
-    /// the inside is filled.
+    /// the inside is filled, or where a half-maximum point is beyond reach.
     pub thickness: Option<f64>,
+    /// Whether sinc^2 stays above one half all the way to the axis.
+    pub filled: bool,
     /// `Ok`, or `TotalReflection` where some partners cannot leave the crystal.
     pub status: Status,
 }
@@ -414,6 +416,9 @@ impl Ring {
     fn fit(curve: Curve, mismatch: &Mismatch, length: f64) -> Result<Self, RingFault> {
         let curve = curve.centred(mismatch)?.within_region()?;
         let (least, largest) = if curve.is_point() { (0.0, 0.0) } else { extremes(mismatch, &curve) };
+        // half of the maximum is not passed on the way in: Delta_k stays above it at the axis
+        let half_width = 2.0 * HALF_MAXIMUM / length;
+        let filled = mismatch.towards(curve.frame.axis).is_none_or(|at| at.value >= -half_width);
         let point = |j: usize| curve.vector(j);
         let inside = |j: usize| mismatch.inside(curve.direction(j)).map_or(Vector3::z(), |k| k.normalize());
         let internal_axis = axis_of(inside, &Vector3::z());
@@ -424,7 +429,8 @@ impl Ring {
             least,
             largest,
             internal_half_angle: if curve.is_point() { 0.0 } else { cone_angle(inside, &internal_axis) },
-            thickness: thickness(mismatch, &curve, length),
+            thickness: (!filled).then(|| thickness(mismatch, &curve, half_width)).flatten(),
+            filled,
             status: if partners_leave { Status::Ok } else { Status::TotalReflection },
             curve,
         })
@@ -503,17 +509,16 @@ fn extremes(mismatch: &Mismatch, curve: &Curve) -> (f64, f64) {
     (least, largest)
 }
 
-/// Mean radial width between Delta_k L/2 = -1.39 and +1.39; `None` where Delta_k stays above the first inside.
-fn thickness(mismatch: &Mismatch, curve: &Curve, length: f64) -> Option<f64> {
+/// Mean radial width between Delta_k L/2 = -1.39 and +1.39; `None` where one of them cannot be reached.
+fn thickness(mismatch: &Mismatch, curve: &Curve, half_width: f64) -> Option<f64> {
     let Curve { frame, samples, .. } = curve;
-    let half_width = 2.0 * HALF_MAXIMUM / length;
-    if mismatch.towards(frame.axis)?.value >= -half_width {
-        return None;
-    }
     let mut sum = 0.0;
     for (j, psi) in samples.iter().enumerate() {
         let meridian = frame.meridian(azimuth(j));
-        let edge = |level| match mismatch.meet(&meridian, level, *psi) {
+        let (sin, cos) = psi.sin_cos();
+        let gradient = mismatch.towards(frame.point(*psi, azimuth(j)))?.gradient;
+        let slope = gradient.dot(&(meridian.outward * cos - meridian.axis * sin));
+        let edge = |level: f64| match mismatch.meet(&meridian, level, psi + level / slope) {
             Hit::At(psi) => Some(psi),
             Hit::Face(_) | Hit::Lost => None,
         };

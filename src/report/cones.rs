@@ -230,7 +230,8 @@ fn ring_cells(setup: &Setup, row: &RingRow) -> Vec<String> {
                 degrees(ring.half_angle),
                 degrees(ring.least),
                 degrees(ring.largest),
-                ring.thickness.map_or_else(|| "filled".into(), degrees),
+                ring.thickness
+                    .map_or_else(|| if ring.filled { "filled".into() } else { "-".into() }, degrees),
                 degrees(ring.internal_half_angle),
                 signed(centre.x * mm, 2),
                 signed(centre.y * mm, 2),
