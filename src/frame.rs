@@ -1,10 +1,10 @@
 //! Lab, mount and dielectric frames, and the turns between them.
 //!
-//! - *Lab*: right-handed, z along the pump in air, x horizontal, y vertical up; +x is on the left of a person who
-//!   looks along the beam.
-//! - *Mount* (u, v, w): fixed to the crystal, w the face normal downstream, u the projection of the dielectric Z
-//!   axis on the face, v = w x u.
-//! - *Dielectric* (X, Y, Z): the principal axes of the permittivity; Z is the optic axis of a uniaxial crystal.
+//! - *Lab*: z is the pump's direction in air, y points up, and x completes a right-handed set: standing behind the laser
+//!   one has +x on the left.
+//! - *Mount* (u, v, w): turns with the crystal. w leaves the exit face at right angles, u points where Z leans, v is
+//!   w x u.
+//! - *Dielectric* (X, Y, Z): the axes in which the permittivity is diagonal; in uniaxial crystals Z is the optic axis.
 //!
 //! A vector carries its frame in its type; only [`Cut`] and [`Orientation`] change frames.
 
@@ -97,7 +97,8 @@ impl Direction {
     /// Angle about the pump in degrees, from +x towards +y.
     #[must_use]
     pub fn azimuth_deg(self) -> f64 {
-        self.0.y.atan2(self.0.x).to_degrees()
+        // along the pump there is no azimuth
+        if self.0.xy().norm() < 1e-12 { 0.0 } else { self.0.y.atan2(self.0.x).to_degrees() }
     }
 
     /// Angle to another direction in radians, accurate for small and large angles.

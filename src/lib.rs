@@ -3,9 +3,10 @@
 //! `twincone` computes spontaneous parametric down-conversion in birefringent crystals from wave optics: exact
 //! dispersion surfaces of uniaxial and biaxial crystals, exact refraction at tilted plane faces, no small-angle formula.
 //!
-//! Data flows one way: what was typed ([`job::description`]) becomes a validated setup in SI ([`job::setup`]), the
-//! physics ([`optics`], [`matching`]) works on that, and [`report`] turns results into rows and rows into text, CSV or
-//! JSON. The library never prints, exits or reads the environment; the commands, in the program's `cli`, never compute.
+//! From input to output there is one direction: a description with its places ([`job::description`]) is resolved to SI
+//! ([`job::setup`]), [`optics`] and [`matching`] answer, [`report`] lays the answer out as rows and writes those as text,
+//! CSV or JSON. Nothing in here touches a terminal, the process or its environment; that is left to the program, whose
+//! commands in turn contain no physics.
 //!
 //! | module | subject |
 //! |---|---|

@@ -4,7 +4,7 @@ use clap::{Args as ClapArgs, Command};
 use clap_complete::Shell;
 
 use super::failure::Failure;
-use super::output::Outcome;
+use super::output::{Outcome, OutputArgs};
 
 /// Options of `completions`.
 #[derive(Debug, ClapArgs)]
@@ -18,8 +18,9 @@ pub struct Args {
 ///
 /// # Errors
 /// None in practice: the text goes to memory.
-pub fn run(args: &Args, mut command: Command) -> Result<Outcome, Failure> {
+pub fn run(args: &Args, mut command: Command, output: &OutputArgs) -> Result<Outcome, Failure> {
     let mut script = Vec::new();
     clap_complete::generate(args.shell, &mut command, "twincone", &mut script);
-    String::from_utf8(script).map(Outcome::plain).map_err(|e| Failure { status: 4, message: e.to_string() })
+    let script = String::from_utf8(script).map_err(|e| Failure { status: 4, message: e.to_string() })?;
+    output.plain(script)
 }

@@ -5,7 +5,7 @@ use twincone::job::setup::{GivenCut, Needs, Setup};
 use twincone::job::target_angle;
 use twincone::matching::{
     ConesError, CutSolution, Design, Find, Interaction, Opinion, Status, Target, alternatives, design,
-    opinions, shortfall,
+    opinions, shortfall, unmatched,
 };
 use twincone::material::{MaterialError, Optic, tensor::is_centrosymmetric};
 use twincone::optics::Crystal;
@@ -112,6 +112,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let setups: Vec<Setup> = listed.iter().flat_map(Setup::one_per_signal).collect();
     let mut attempts = Vec::new();
     let mut spreads = Vec::new();
+    let mut alone = Vec::new();
     let find = args.find.find();
     for setup in &setups {
         let question = question(args, setup)?;
@@ -127,10 +128,17 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
             let answers: Vec<_> = others.iter().map(|o| o.clone().map(|(_, found)| found)).collect();
             spreads.extend(spread_lines(find, found, &answers).into_iter().map(|line| format!("{id}{line}")));
         }
+        if several && others.is_empty() && own.outcome.is_ok() {
+            alone.push(setup.crystals[0].material.id.clone());
+        }
         attempts.push(own);
         if args.all_datasets {
             attempts.extend(others.into_iter().map(|o| other_attempt(&question.crystal, o)));
         }
+    }
+    if !alone.is_empty() {
+        spreads
+            .push(format!("{}: no other data set, so nothing says how sure the cut is.", alone.join(", ")));
     }
     let asked = question(args, &setups[0])?;
     let answered = answered(&setups[0], &asked, &attempts);
@@ -158,8 +166,9 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
 /// The job that the answer amounts to: the brightest solution, or the target where there is none.
 fn answered(setup: &Setup, asked: &Design, attempts: &[Attempt]) -> Setup {
     let mut setup = setup.clone();
-    let solutions = attempts.iter().filter_map(|a| a.outcome.as_ref().ok()).flatten();
-    match solutions.max_by(|a, b| a.d_eff.unwrap_or(0.0).total_cmp(&b.d_eff.unwrap_or(0.0))) {
+    // of the data set asked for; the others are opinions
+    let own = attempts.first().and_then(|a| a.outcome.as_ref().ok());
+    match own.into_iter().flatten().max_by(|a, b| a.d_eff.unwrap_or(0.0).total_cmp(&b.d_eff.unwrap_or(0.0))) {
         Some(best) => {
             setup.forget_typed();
             setup.crystals = vec![best.crystal.clone()];
@@ -180,6 +189,9 @@ fn answered(setup: &Setup, asked: &Design, attempts: &[Attempt]) -> Setup {
 fn describe(setups: &[Setup], attempts: &[Attempt], several: bool) -> Conventions {
     let mut first = Conventions::of(&setups[0]);
     if !several {
+        for attempt in attempts.iter().skip(1).filter(|a| a.outcome.is_ok()) {
+            first.datasets.push(format!("{}:{}", attempt.crystal.material.id, attempt.crystal.set().id));
+        }
         return first;
     }
     let mut named = Conventions::default();
@@ -245,7 +257,7 @@ fn attempt(setup: &Setup, question: &Design, several: bool) -> Result<Attempt, F
     let crystal = question.crystal.clone();
     if several && is_centrosymmetric(crystal.material.file.point_group.get_ref()) {
         let why = "the crystal has a centre of symmetry and gives no pairs".into();
-        return Ok(Attempt { crystal, outcome: Err((Status::NoNonlinearity, why)) });
+        return Ok(Attempt { crystal, outcome: Err((Status::NoNonlinearity, why)), unmatched: Vec::new() });
     }
     let outcome = match design(question) {
         Ok(found) if !found.is_empty() => Ok(found),
@@ -257,7 +269,9 @@ fn attempt(setup: &Setup, question: &Design, several: bool) -> Result<Attempt, F
         Err(ConesError::Description(text)) if several => Err((Status::Invalid, text)),
         Err(error) => return Err(error.into()),
     };
-    Ok(Attempt { crystal, outcome })
+    let found = outcome.as_deref().unwrap_or_default();
+    let unmatched = unmatched(question, found).unwrap_or_default();
+    Ok(Attempt { crystal, outcome, unmatched })
 }
 
 fn status_of(error: &MaterialError) -> Status {
@@ -277,13 +291,21 @@ type Told = Opinion<(Crystal, Vec<CutSolution>)>;
 
 fn other_attempt(own: &Crystal, told: Told) -> Attempt {
     match told.answer {
-        Ok((crystal, found)) if !found.is_empty() => Attempt { crystal, outcome: Ok(found) },
-        Ok((crystal, _)) => {
-            Attempt { crystal, outcome: Err((Status::NoPhaseMatching, "no phase matching".into())) }
+        Ok((crystal, found)) if !found.is_empty() => {
+            Attempt { crystal, outcome: Ok(found), unmatched: Vec::new() }
         }
+        Ok((crystal, _)) => Attempt {
+            crystal,
+            outcome: Err((Status::NoPhaseMatching, "no phase matching".into())),
+            unmatched: Vec::new(),
+        },
         Err(error) => {
             let index = own.material.sets().iter().position(|s| s.id == told.dataset).unwrap_or(own.dataset);
-            Attempt { crystal: own.with_dataset(index), outcome: Err((status_of(&error), error.to_string())) }
+            Attempt {
+                crystal: own.with_dataset(index),
+                outcome: Err((status_of(&error), error.to_string())),
+                unmatched: Vec::new(),
+            }
         }
     }
 }

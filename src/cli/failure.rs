@@ -8,7 +8,8 @@ use twincone::material::MaterialError;
 /// A message of one sentence and an exit status.
 #[derive(Debug)]
 pub struct Failure {
-    /// 1 no solution, 2 bad usage or job file, 3 outside a data set's validity, 4 file or output trouble.
+    /// 1: there is no solution; 2: command line or job are wrong; 3: the data do not reach that far; 4: reading or
+    /// writing failed.
     pub status: u8,
     /// What is wrong, where, and what to do.
     pub message: String,

@@ -1,4 +1,4 @@
-//! `job`: the complete commented job for the options given, or a check of one.
+//! `job`: writes out a job file with comments, or checks one.
 
 use std::path::PathBuf;
 
@@ -73,14 +73,20 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         other => other?,
     };
     args.experiment.write_job(&setup)?;
-    Ok(Outcome::plain(template(&setup)))
+    output.plain(template(&setup))
 }
 
 fn check(file: &PathBuf, output: &OutputArgs) -> Result<Outcome, Failure> {
     let name = name_of(file);
     let document = Document::from_file(&name, &read_text(file)?);
-    let setup = resolve(&document, &catalogue(output, &document)?, Needs::ALL)?;
-    let points = if setup.written.sweep.is_some() { "" } else { ", 1 point" };
+    let named = |failure: Failure| match failure.message.starts_with(&name) {
+        true => failure,
+        false => Failure { message: format!("{name}: {}", failure.message), ..failure },
+    };
+    let setup =
+        resolve(&document, &catalogue(output, &document)?, Needs::ALL).map_err(|e| named(e.into()))?;
+    let points =
+        if setup.written.sweep.is_some() { "; its [sweep] is not read by this version" } else { ", 1 point" };
     let mut text = format!(
         "{name}: a valid job{points}
   pump {}, {}
@@ -104,5 +110,5 @@ fn check(file: &PathBuf, output: &OutputArgs) -> Result<Outcome, Failure> {
     }
     let signals: Vec<String> = setup.signals().iter().map(|w| format!("{w:.3}")).collect();
     text.push_str(&format!("  signal {}\n", signals.join(", ")));
-    Ok(Outcome::plain(text))
+    output.plain(text)
 }

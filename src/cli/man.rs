@@ -4,13 +4,13 @@ use clap::Command;
 use clap_mangen::Man;
 
 use super::failure::Failure;
-use super::output::Outcome;
+use super::output::{Outcome, OutputArgs};
 
 /// The page in roff: the program, then each command.
 ///
 /// # Errors
 /// None in practice: the text goes to memory.
-pub fn run(mut command: Command) -> Result<Outcome, Failure> {
+pub fn run(mut command: Command, output: &OutputArgs) -> Result<Outcome, Failure> {
     command.build();
     let mut page = Vec::new();
     let failed = |e: std::io::Error| Failure { status: 4, message: format!("cannot write the page: {e}") };
@@ -23,5 +23,6 @@ pub fn run(mut command: Command) -> Result<Outcome, Failure> {
         man.render_description_section(&mut page).map_err(failed)?;
         man.render_options_section(&mut page).map_err(failed)?;
     }
-    String::from_utf8(page).map(Outcome::plain).map_err(|e| Failure { status: 4, message: e.to_string() })
+    let page = String::from_utf8(page).map_err(|e| Failure { status: 4, message: e.to_string() })?;
+    output.plain(page)
 }

@@ -4,8 +4,8 @@ use std::path::PathBuf;
 
 use clap::{Args as ClapArgs, Subcommand};
 use twincone::material::{Catalogue, Material, TEMPLATE};
-use twincone::report::materials::{detail, table, text};
-use twincone::report::{Answer, Conventions};
+use twincone::report::materials::{detail, sets_table, table, tensor_and_notes, text};
+use twincone::report::{Answer, Conventions, Table};
 
 use super::failure::Failure;
 use super::options::{catalogue, read_text};
@@ -47,20 +47,26 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
             let all: Result<Vec<Material>, _> = catalogue.ids().map(|id| catalogue.get(id)).collect();
             let hint =
                 "Ranges are those of the data sets; where numbers come from: `twincone materials show ID`.";
-            answer(&all?, text, &[hint], output)
+            answer(&all?, text, Vec::new(), &[hint], output)
         }
         Some(Action::Show { id }) => {
             super::options::add_file(&mut catalogue, id)?;
-            answer(&[catalogue.get(id)?], |all| detail(&all[0]), &[], output)
+            // a data set after the colon changes nothing: all are shown
+            let id = if id.contains(".toml") { id.as_str() } else { id.split(':').next().unwrap_or(id) };
+            let material = catalogue.get(id)?;
+            let [tensor, notes] = tensor_and_notes(&material);
+            let tables = vec![sets_table(&material), tensor, notes];
+            answer(&[material], |all| detail(&all[0]), tables, &[], output)
         }
-        Some(Action::Check { file }) => check(file),
-        Some(Action::Template) => Ok(Outcome::plain(TEMPLATE.into())),
+        Some(Action::Check { file }) => check(file, output),
+        Some(Action::Template) => output.plain(TEMPLATE.into()),
     }
 }
 
 fn answer(
     all: &[Material],
     words: impl Fn(&[Material]) -> String,
+    more: Vec<Table>,
     lines: &[&str],
     output: &OutputArgs,
 ) -> Result<Outcome, Failure> {
@@ -68,7 +74,7 @@ fn answer(
     let lines = lines.iter().map(ToString::to_string).collect();
     let answer = Answer {
         command: "materials",
-        tables: vec![table(all)],
+        tables: std::iter::once(table(all)).chain(more).collect(),
         text: words(all),
         conventions: Conventions { lines, datasets, warnings: Vec::new() },
         job: serde_json::Value::Null,
@@ -77,15 +83,11 @@ fn answer(
     output.outcome(&answer, None)
 }
 
-fn check(file: &PathBuf) -> Result<Outcome, Failure> {
+fn check(file: &PathBuf, output: &OutputArgs) -> Result<Outcome, Failure> {
     let name = file.display().to_string();
     let mut catalogue = Catalogue::default();
     let material = catalogue.add_or_replace(&name, &read_text(file)?)?;
     material.examine().map_err(|why| Failure::usage(format!("{name}: {why}")))?;
     let sets: Vec<&str> = material.sets().iter().map(|s| s.id.as_str()).collect();
-    Ok(Outcome::plain(format!(
-        "{name}: a valid material, {} with data sets {}\n",
-        material.id,
-        sets.join(", ")
-    )))
+    output.plain(format!("{name}: a valid material, {} with data sets {}\n", material.id, sets.join(", ")))
 }

@@ -1,4 +1,4 @@
-//! The command line: one file per command. Commands read options, call the library and hand its answer on.
+//! The command line, a file for each command: options in, a question to the library, its answer out.
 
 mod completions;
 mod cones;
@@ -36,24 +36,24 @@ const LONG: &str = "Which crystal to order, how to tilt it and where the photon 
 down-conversion in birefringent crystals, from wave optics, with refraction at tilted faces treated exactly.";
 
 const AFTER: &str = "Quantities carry a unit: 405nm, 0.5deg, \"2 mm\", 22degC. Angles are outside the crystal unless called inside.
-Exit status: 0 an answer; 1 no solution; 2 bad usage or job file; 3 outside a data set's validity; 4 file trouble.
+Exit status: 0 answered; 1 there is no solution; 2 the command line or job is wrong; 3 the data do not reach that far; 4 reading or writing failed.
 Violet and ultraviolet lasers harm eyes and skin: local rules and the laser safety officer decide how they are used.";
 
 #[derive(Debug, Subcommand)]
 enum Command {
-    /// What is known about which crystal, from which paper, in which range
+    /// List and show crystals with the sources of their numbers; check your own
     Materials(materials::Args),
-    /// Indices, dispersion and walk-off of each wave
+    /// Refractive and group index, dispersion and walk-off of each wave
     Index(Box<index::Args>),
-    /// Which cut do I order?
+    /// Solve for the cut (or period, temperature, pump) that gives a wanted emission
     Cut(Box<cut::Args>),
-    /// Where does the light go? Rings and their crossings
+    /// Trace the rings and find their crossings for the crystals as they stand
     Cones(Box<cones::Args>),
-    /// How far do I turn?
+    /// Find the settings of the mount that reach a target
     Tilt(Box<tilt::Args>),
-    /// A photon goes this way: where is its partner?
+    /// Follow a photon's partner
     Twin(Box<twin::Args>),
-    /// The complete commented job file for the options given, or a check of one
+    /// Write out a commented job file, or check one
     Job(Box<job::Args>),
     /// Shell completions
     Completions(completions::Args),
@@ -102,7 +102,7 @@ pub fn run(typed: &Typed) -> Result<output::Outcome, Failure> {
         Command::Tilt(args) => tilt::run(args, out),
         Command::Twin(args) => twin::run(args, out),
         Command::Job(args) => job::run(args, out),
-        Command::Completions(args) => completions::run(args, Typed::command()),
-        Command::Man => man::run(Typed::command()),
+        Command::Completions(args) => completions::run(args, Typed::command(), out),
+        Command::Man => man::run(Typed::command(), out),
     }
 }

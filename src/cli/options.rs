@@ -1,4 +1,4 @@
-//! Options that describe the experiment, the same in every command: each overrides one key of the job.
+//! The options that all commands share: most stand for a key of the job.
 
 use std::io::Read;
 use std::path::PathBuf;
@@ -152,6 +152,7 @@ impl ExperimentArgs {
         }
         for (option, key, value) in self.overrides() {
             if let Some(value) = value {
+                let key = if value == "matched" { key.trim_end_matches(".angle") } else { key };
                 document.set(option, key, value);
             }
         }

@@ -16,7 +16,7 @@ pub struct OutputArgs {
     /// text for people; csv and json for scripts [default: by the extension of --output, else text]
     #[arg(short, long, global = true, value_enum)]
     pub format: Option<Format>,
-    /// Write to this file, whole or not at all
+    /// Write to this file, whole or not at all; - for standard output
     #[arg(short, long, global = true, value_name = "FILE")]
     pub output: Option<PathBuf>,
     /// No warnings on standard error
@@ -63,20 +63,28 @@ pub struct Outcome {
     solved: bool,
 }
 
-impl Outcome {
-    /// A text that has no other form.
-    pub fn plain(text: String) -> Self {
-        Self { text, warnings: Vec::new(), solved: true }
-    }
-}
-
 impl OutputArgs {
+    /// A text that has no other form.
+    ///
+    /// # Errors
+    /// csv or json asked for.
+    pub fn plain(&self, text: String) -> Result<Outcome, Failure> {
+        match self.format {
+            Some(Format::Csv | Format::Json) => {
+                Err(Failure::usage("this answer is a text; leave --format out"))
+            }
+            _ => Ok(Outcome { text, warnings: Vec::new(), solved: true }),
+        }
+    }
+
     /// The form asked for by --format or by the extension of --output.
     ///
     /// # Errors
     /// Text asked into a .csv file and the like, or an extension that says nothing.
     pub fn form(&self) -> Result<Format, Failure> {
-        let Some(path) = &self.output else { return Ok(self.format.unwrap_or(Format::Text)) };
+        let Some(path) = self.output.as_ref().filter(|path| path.as_os_str() != "-") else {
+            return Ok(self.format.unwrap_or(Format::Text));
+        };
         let extension = path.extension().and_then(|e| e.to_str()).map(str::to_ascii_lowercase);
         let implied = match extension.as_deref() {
             Some("csv") => Some(Format::Csv),
@@ -155,9 +163,9 @@ pub fn finish(outcome: Result<Outcome, Failure>, args: &OutputArgs) -> ExitCode 
             outcome.warnings.iter().for_each(|w| args.tell("warning", "33", w));
         }
         match &args.output {
-            Some(path) => write_whole(path, outcome.text.as_bytes())
+            Some(path) if path.as_os_str() != "-" => write_whole(path, outcome.text.as_bytes())
                 .map_err(|e| Failure::file("write", &path.display().to_string(), &e))?,
-            None => to_stdout(outcome.text.as_bytes())
+            _ => to_stdout(outcome.text.as_bytes())
                 .map_err(|e| Failure::file("write to", "standard output", &e))?,
         }
         Ok(outcome.solved)

@@ -1,6 +1,7 @@
 //! `tilt`: how far do I turn?
 
 use clap::{Args as ClapArgs, ValueEnum};
+use twincone::job::choose_phi;
 use twincone::job::setup::Needs;
 use twincone::matching::{Actuator, Interaction, Target, Tuned, Tuning, opinions, shortage, tune};
 use twincone::report::tilt::{spread_line, table, text};
@@ -59,11 +60,12 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let target = target.ok_or_else(|| {
         Failure::usage("no target: pass --crossing, --separation, --half-angle, --collinear, --beamlike or --touching, for example --crossing 3deg")
     })?;
-    let crystal = setup.only_crystal("tilt").map_err(Failure::usage)?.clone();
     let photons = setup.only_photons("tilt").map_err(Failure::usage)?;
     if let (false, Target::HalfAngle(_)) = (setup.interaction_given, target) {
         setup.interaction = Interaction::One;
+        choose_phi(&mut setup, 0);
     }
+    let crystal = setup.only_crystal("tilt").map_err(Failure::usage)?.clone();
     let question = Tuning {
         crystal: crystal.clone(),
         photons,
@@ -73,9 +75,6 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         actuator: args.by.map(By::actuator),
     };
     let Tuned { actuator, turns, now } = tune(&question)?;
-    if turns.is_empty() {
-        return Err(Failure { status: 1, message: shortage(target, actuator, &now) });
-    }
     let others = opinions(&crystal, &photons, |other| {
         let again = Tuning { crystal: other.clone(), actuator: Some(actuator), ..question.clone() };
         tune(&again).map(|tuned| tuned.turns).unwrap_or_default()
@@ -83,13 +82,17 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let mut conventions = Conventions::of(&setup);
     conventions.warn_of_dim_phi(&setup);
     conventions.lines.insert(0, spread_line(actuator, &turns, &others));
+    let words = match turns.is_empty() {
+        true => format!("{}\n", shortage(target, actuator, &now)),
+        false => text(&setup, target, actuator, args.by.is_none(), &turns),
+    };
     let answer = Answer {
         command: "tilt",
         tables: vec![table(&setup, actuator, &turns)],
-        text: text(&setup, target, actuator, args.by.is_none(), &turns),
+        text: words,
         conventions,
         job: resolved_job(&setup),
-        solved: true,
+        solved: !turns.is_empty(),
     };
     output.outcome(&answer, None)
 }

@@ -10,5 +10,6 @@ mod template;
 
 pub use document::{Document, JobError};
 pub use resolve::{resolve, resolve_description, target_angle};
+pub use settle::choose_phi;
 pub use setup::Setup;
 pub use template::template;

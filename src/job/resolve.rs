@@ -140,6 +140,11 @@ pub fn resolve_description(
     }
     for (index, written) in description.crystal.iter().enumerate() {
         let (crystal, cut) = crystal(&reader, description, written, index, catalogue)?;
+        if let (Some(name), true) =
+            (&written.get_ref().name, setup.crystals.iter().any(|c| c.name == crystal.name))
+        {
+            return Err(reader.fault(name, "another crystal has this name; keys could not tell them apart"));
+        }
         setup.crystals.push(crystal);
         setup.cut.push(cut);
     }

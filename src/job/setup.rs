@@ -1,4 +1,4 @@
-//! A validated experiment in SI, with no option left open: all that the physics ever sees.
+//! An experiment as the physics knows it: SI numbers, every default decided.
 
 use super::description::Description;
 use super::document::JobError;

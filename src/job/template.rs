@@ -18,8 +18,11 @@ pub fn template(setup: &Setup) -> String {
     section(o, "[pump]");
     let typed = setup.written.pump.as_ref().and_then(|p| p.get_ref().wavelength.as_ref());
     let pump = typed.map(|text| text.get_ref().to_string()).or(setup.pump.map(|p| p.to_string()));
-    let pump = pump.unwrap_or_else(|| "405 nm".into());
-    line(o, "wavelength", &quoted(&pump), "vacuum; \"405 nm air\" converts from standard air");
+    let why = "vacuum; \"405 nm air\" converts from standard air";
+    match pump {
+        Some(pump) => line(o, "wavelength", &quoted(&pump), why),
+        None => comment(o, "wavelength = \"405 nm\"", why),
+    }
     pump_section(o, setup);
     for (index, crystal) in setup.crystals.iter().enumerate() {
         crystal_section(o, setup, index, crystal);
@@ -165,7 +168,7 @@ fn crystal_section(o: &mut String, setup: &Setup, index: usize, crystal: &Crysta
 
 fn cut(crystal: &Crystal, given: GivenCut, written: Option<&Cut>) -> String {
     if let Some(cut) = written.filter(|cut| cut.is_decided() && given != GivenCut::default()) {
-        return as_typed(cut, crystal, given);
+        return as_typed(cut);
     }
     let phi = if given.phi { format!(", phi = \"{}\"", crystal.cut.phi) } else { String::new() };
     let degrees = |angle: f64| crate::quantity::Angle::radians(angle);
@@ -181,12 +184,9 @@ fn cut(crystal: &Crystal, given: GivenCut, written: Option<&Cut>) -> String {
     }
 }
 
-/// The cut in the words it was typed in; phi that was chosen is added to a typed theta.
-fn as_typed(cut: &Cut, crystal: &Crystal, given: GivenCut) -> String {
-    let mut cut = toml::Value::try_from(cut).expect("texts and flags are TOML");
-    if let (Some(table), true, false) = (cut.as_table_mut(), given.theta, given.phi) {
-        table.insert("phi".into(), toml::Value::String(crystal.cut.phi.to_string()));
-    }
+/// The cut in the words it was typed in; an azimuth that was chosen stays open.
+fn as_typed(cut: &Cut) -> String {
+    let cut = toml::Value::try_from(cut).expect("texts and flags are TOML");
     let keys = cut.as_table().into_iter().flatten().map(|(key, value)| format!("{key} = {value}"));
     format!("{{ {} }}", keys.collect::<Vec<_>>().join(", "))
 }

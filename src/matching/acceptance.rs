@@ -14,13 +14,13 @@ use crate::quantity::{Angle, Temperature, Wavelength};
 /// Full widths; `None` where the half-maximum points are not within reach.
 #[derive(Debug, Clone, Copy, Default, PartialEq)]
 pub struct Acceptance {
-    /// Crystal turned about v, emission directions fixed relative to the pump; radians, outside.
+    /// Turn of the crystal about v while pump and photons keep their directions; radians, outside.
     pub pump_angle: Option<f64>,
-    /// Signal and idler keep their frequency ratio, directions fixed; m.
+    /// Pump wavelength, with the photons' frequencies scaled alike and their directions kept; m.
     pub pump_wavelength: Option<f64>,
-    /// Pump and the signal's external direction fixed, the idler follows; m.
+    /// Signal wavelength at a given pump and signal direction; the idler adapts; m.
     pub signal: Option<f64>,
-    /// Everything else fixed; K.
+    /// Temperature alone; K.
     pub temperature: Option<f64>,
 }
 

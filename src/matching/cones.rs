@@ -61,7 +61,7 @@ pub struct RingRow {
     pub status: Status,
 }
 
-/// One way a pair can have been made.
+/// A possible origin of a pair: crystal and process.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct HistoryName {
     /// Index of the crystal, from 0.
@@ -414,7 +414,7 @@ fn missing_row(
     }
 }
 
-/// Larger v first where they differ by more than 1e-6 deg, else larger h.
+/// Upper crossings first; those at one height (to 1e-6 deg) by falling h.
 fn order(meetings: &mut [(Crossing, Status)]) {
     meetings.sort_by(|(a, _), (b, _)| b.direction.v_deg().total_cmp(&a.direction.v_deg()));
     let level = |pair: &[(Crossing, Status)]| {

@@ -36,7 +36,7 @@ pub enum GapKind {
 /// Least distance between two rings.
 #[derive(Debug, Clone, Copy)]
 pub struct Contact {
-    /// Least angle between a point of one and a point of the other, radians.
+    /// Angle between the two nearest points, radians.
     pub gap: f64,
     /// Which way they miss.
     pub kind: GapKind,

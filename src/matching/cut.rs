@@ -193,6 +193,22 @@ pub fn design(design: &Design) -> Result<Vec<CutSolution>, ConesError> {
     Ok(found)
 }
 
+/// The processes of a design that none of its solutions is of; nothing where every assignment or the brightest was
+/// looked for.
+///
+/// # Errors
+/// As [`design`].
+pub fn unmatched(design: &Design, found: &[CutSolution]) -> Result<Vec<Process>, ConesError> {
+    if matches!(design.interaction, Interaction::Any | Interaction::Zero) {
+        return Ok(Vec::new());
+    }
+    let crystal = Crystal { orientation: Orientation::default(), ..design.crystal.clone() };
+    let emission = Emission::of(&crystal, design.photons)?;
+    let wanted = wanted_roles(design, &emission)?;
+    let missing = wanted.into_iter().filter(|roles| found.iter().all(|s| s.roles != *roles));
+    Ok(missing.map(|roles| emission.process(roles)).collect())
+}
+
 /// Assignments to solve for: one of each two that are the same pair with the photons exchanged.
 fn wanted_roles(design: &Design, emission: &Emission) -> Result<Vec<Roles>, ConesError> {
     let mut roles = emission.roles(design.interaction).map_err(ConesError::Description)?;

@@ -19,7 +19,7 @@ pub use cones::{Cones, ConesError, CrossingRow, HistoryName, Landing, RingRow, W
 pub use crossing::{Contact, Crossing, GapKind, Meeting, Miss, Traced, meet, miss};
 pub use cut::{
     Brightness, CutSolution, Design, Find, Plane, Shortfall, alternatives, best_phi, brightness, design,
-    shortfall,
+    shortfall, unmatched,
 };
 pub use emission::{Emission, Media, Photons, Triplet};
 pub use interaction::{Interaction, Process, ProcessError, Roles};

@@ -9,6 +9,8 @@ use crate::optics::Crystal;
 pub struct Opinion<T> {
     /// Id of the data set.
     pub dataset: String,
+    /// Whether it was used outside its range.
+    pub extrapolated: bool,
     /// Its answer, or why it cannot serve these wavelengths.
     pub answer: Result<T, MaterialError>,
 }
@@ -16,11 +18,12 @@ pub struct Opinion<T> {
 impl<T> Opinion<T> {
     /// The same opinion about something that follows from it.
     pub fn map<U>(self, f: impl FnOnce(T) -> U) -> Opinion<U> {
-        Opinion { dataset: self.dataset, answer: self.answer.map(f) }
+        Opinion { dataset: self.dataset, extrapolated: self.extrapolated, answer: self.answer.map(f) }
     }
 }
 
-/// Asks every other data set of the crystal's material that covers the wavelengths.
+/// Asks every other data set of the crystal's material that covers the wavelengths, or all where the crystal may
+/// extrapolate.
 pub fn opinions<T>(
     crystal: &Crystal,
     photons: &Photons,
@@ -28,9 +31,10 @@ pub fn opinions<T>(
 ) -> Vec<Opinion<T>> {
     let sets = crystal.material.sets().iter().enumerate().filter(|(index, _)| *index != crystal.dataset);
     sets.map(|(index, set)| {
-        let other = Crystal { reach: crate::material::Reach::Within, ..crystal.with_dataset(index) };
+        let other = crystal.with_dataset(index);
+        let all = [photons.pump, photons.signal, photons.idler];
         let answer = Triplet::new(&other, photons).map(|_| ask(&other));
-        Opinion { dataset: set.id.clone(), answer }
+        Opinion { dataset: set.id.clone(), extrapolated: all.iter().any(|w| other.extrapolates(*w)), answer }
     })
     .collect()
 }

@@ -1,4 +1,4 @@
-//! What the numbers of an answer mean: data sets, angles, signs, in a line or two; and the usual cautions.
+//! What the numbers of an answer mean: data sets, angles, signs; and cautions about the laser.
 
 use crate::frame::Reversal;
 use crate::job::Setup;

@@ -2,7 +2,7 @@
 
 use crate::frame::Dielectric;
 use crate::job::Setup;
-use crate::matching::{CutSolution, Find, Opinion, Plane, Shortfall, Status, Target};
+use crate::matching::{CutSolution, Find, Opinion, Plane, Process, Shortfall, Status, Target};
 use crate::material::Optic;
 use crate::optics::Crystal;
 
@@ -42,6 +42,8 @@ pub struct Attempt {
     pub crystal: Crystal,
     /// Solutions, or the status that says why there is none and a sentence about it.
     pub outcome: Result<Vec<CutSolution>, (Status, String)>,
+    /// Processes that were asked for and have no solution.
+    pub unmatched: Vec<Process>,
 }
 
 /// Rows of all attempts: solutions first, as they come or by falling |d_eff|, then those that have none.
@@ -53,8 +55,12 @@ pub fn table(setup: &Setup, attempts: &[Attempt], by_rank: bool) -> Table {
         table.push(row(s), s.extrapolated, s.status);
     }
     for attempt in attempts {
-        if let Err((status, _)) = &attempt.outcome {
-            table.push(unsolved(setup, &attempt.crystal), false, *status);
+        let status = attempt.outcome.as_ref().map_or_else(|(status, _)| *status, |_| Status::NoPhaseMatching);
+        for process in &attempt.unmatched {
+            table.push(unsolved(setup, &attempt.crystal, Some(*process)), false, status);
+        }
+        if attempt.outcome.is_err() && attempt.unmatched.is_empty() {
+            table.push(unsolved(setup, &attempt.crystal, None), false, status);
         }
     }
     table
@@ -90,12 +96,12 @@ fn row(s: &CutSolution) -> Vec<Cell> {
     ]
 }
 
-fn unsolved(setup: &Setup, crystal: &Crystal) -> Vec<Cell> {
+fn unsolved(setup: &Setup, crystal: &Crystal, process: Option<Process>) -> Vec<Cell> {
     let photons = setup.photons();
     let mut cells = vec![
         crystal.material.id.as_str().into(),
         crystal.set().id.as_str().into(),
-        Cell::Empty,
+        process.map_or(Cell::Empty, |p| p.to_string().into()),
         photons.pump.nm().into(),
         photons.signal.nm().into(),
         photons.idler.nm().into(),
@@ -145,7 +151,17 @@ pub fn text(setup: &Setup, target: Target, find: Find, attempts: &[Attempt]) -> 
     out.push('\n');
     for attempt in attempts {
         match &attempt.outcome {
-            Ok(solutions) => solutions.iter().for_each(|s| out.push_str(&prose(&solution_text(s, find)))),
+            Ok(solutions) => {
+                solutions.iter().for_each(|s| out.push_str(&prose(&solution_text(s, find))));
+                for process in &attempt.unmatched {
+                    out.push_str(&format!(
+                        "
+{}: no solution for {process}
+",
+                        attempt.crystal.material.id
+                    ));
+                }
+            }
             Err((_, why)) => out.push_str(&prose(&format!("\n{}: {why}\n", attempt.crystal.material.id))),
         }
     }
@@ -268,11 +284,25 @@ pub fn ranking(setup: &Setup, target: Target, attempts: &[Attempt]) -> String {
     ];
     let mut out = format!("{}\n\n{}", heading(setup, target), grid(&header, &rows));
     out.push('\n');
+    let dark = ranked(attempts).into_iter().filter(|s| s.status == Status::NoNonlinearity);
+    let named: Vec<String> = dark
+        .map(|s| {
+            format!(
+                "{}{}",
+                s.crystal.material.id,
+                s.plane.name().map_or(String::new(), |p| format!(" ({p})"))
+            )
+        })
+        .collect();
+    if !named.is_empty() {
+        let line = format!("phase matched but forbidden by symmetry: {}\n", named.join(", "));
+        out.push_str(&prose(&line));
+    }
     for status in
         [Status::NoPhaseMatching, Status::NoNonlinearity, Status::OutOfRange, Status::Opaque, Status::Invalid]
     {
         let fails = |a: &&Attempt| match &a.outcome {
-            Ok(all) => status == Status::NoNonlinearity && all.iter().all(|s| s.status == status),
+            Ok(_) => false,
             Err((why, _)) => *why == status,
         };
         let ids: Vec<&str> = attempts.iter().filter(fails).map(|a| a.crystal.material.id.as_str()).collect();

@@ -1,7 +1,7 @@
 //! Report `index`: what each wave sees.
 
 use crate::matching::Status;
-use crate::material::{MaterialError, Reach};
+use crate::material::MaterialError;
 use crate::optics::{Crystal, IndexRow, index_rows};
 
 use super::angles::{fixed, grid, or_dash, rounded};
@@ -29,7 +29,7 @@ pub fn spread_line(crystal: &Crystal, own: &[IndexRow], directed: bool) -> Strin
     let opinions: Vec<(String, Result<Option<f64>, String>)> = (0..crystal.material.sets().len())
         .filter(|index| *index != crystal.dataset)
         .map(|index| {
-            let other = Crystal { reach: Reach::Within, ..crystal.with_dataset(index) };
+            let other = crystal.with_dataset(index);
             let answer = index_rows(&other, first.wavelength, directed);
             let n = answer.map(|all| all.first().and_then(|row| row.along.as_ref()).map(|a| a.n));
             (other.set().id.clone(), n.map_err(|e| spread::reason(&e)))

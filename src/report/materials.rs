@@ -1,4 +1,4 @@
-//! Report `materials`: what is known about which crystal, from which paper, in which range.
+//! Report `materials`: the catalogue and the sources of its numbers.
 
 use crate::matching::Status;
 use crate::material::{Material, Optic};
@@ -77,6 +77,81 @@ pub fn text(materials: &[Material]) -> String {
         })
         .collect();
     grid(&header, &rows)
+}
+
+/// One row per data set, with sources.
+#[must_use]
+pub fn sets_table(m: &Material) -> Table {
+    let columns = [
+        column("dataset", "", "id"),
+        column("citation", "", "publication"),
+        column("known", "", "how its numbers are known"),
+        column("seen_in", "", "where they were seen"),
+        column("from_nm", "nm", "shortest wavelength"),
+        column("to_nm", "nm", "longest wavelength"),
+        column("temperature_degc", "degC", "where the indices hold; empty where the source does not say"),
+        column("relative_to", "", "absolute, air, or not stated"),
+        column("thermo_optic", "", "source of the thermo-optic terms; empty where there are none"),
+        column("meets", "", "published numbers it meets that did not come from its coefficients"),
+        column("warning", "", "what to know before using it"),
+        column("remark", "", "what else is known"),
+    ];
+    let mut table = Table::new("sets", &columns);
+    for set in m.sets() {
+        let file = &set.file;
+        let meets: Vec<String> =
+            file.independent.iter().map(|i| format!("{} ({}; {})", i.what, i.known, i.source)).collect();
+        let thermo = match &file.thermo {
+            Some(t) => Some(format!("{} ({})", t.get_ref().source, t.get_ref().known)),
+            None => set.has_thermo_optics().then(|| "part of the formula".into()),
+        };
+        let cells = vec![
+            set.id.as_str().into(),
+            file.citation.as_str().into(),
+            file.known.to_string().into(),
+            file.seen_in.as_deref().into(),
+            set.from.nm().into(),
+            set.to.nm().into(),
+            file.temperature.as_ref().map(|_| set.temperature.degc()).into(),
+            file.medium.to_string().into(),
+            thermo.as_deref().into(),
+            meets.join("; ").into(),
+            file.warning.as_deref().into(),
+            file.remark.as_deref().into(),
+        ];
+        table.push(cells, false, Status::Ok);
+    }
+    table
+}
+
+/// One row per published element of the nonlinear tensor, and one per note.
+#[must_use]
+pub fn tensor_and_notes(m: &Material) -> [Table; 2] {
+    let columns = [
+        column("element", "", "contracted name, in the tensor's own axes"),
+        column("pm_per_v", "pm/V", "value"),
+        column("known", "", "how it is known"),
+        column("source", "", "publication"),
+    ];
+    let mut tensor = Table::new("tensor", &columns);
+    if let Some(n) = &m.file.nonlinearity {
+        let n = n.get_ref();
+        for (element, value) in &n.elements_pm_per_v {
+            let known = n.known.to_string();
+            let cells =
+                vec![element.as_str().into(), (*value).into(), known.into(), n.source.as_str().into()];
+            tensor.push(cells, false, Status::Ok);
+        }
+    }
+    let columns =
+        [column("note", "", "text"), column("known", "", "how it is known"), column("source", "", "where")];
+    let mut notes = Table::new("notes", &columns);
+    for note in &m.file.note {
+        let cells =
+            vec![note.text.as_str().into(), note.known.to_string().into(), note.source.as_str().into()];
+        notes.push(cells, false, Status::Ok);
+    }
+    [tensor, notes]
 }
 
 /// For people: everything about one crystal, with sources.

@@ -48,7 +48,11 @@ pub(super) fn numbers<T>(
     opinions: &[Opinion<T>],
     number: impl Fn(&T) -> Option<f64>,
 ) -> Vec<(String, Result<Option<f64>, String>)> {
-    opinions.iter().map(|o| (o.dataset.clone(), o.answer.as_ref().map(&number).map_err(reason))).collect()
+    let name = |o: &Opinion<T>| match o.extrapolated && o.answer.is_ok() {
+        true => format!("{} (extrapolated)", o.dataset),
+        false => o.dataset.clone(),
+    };
+    opinions.iter().map(|o| (name(o), o.answer.as_ref().map(&number).map_err(reason))).collect()
 }
 
 pub(super) fn reason(error: &crate::material::MaterialError) -> String {

@@ -2,7 +2,7 @@
 
 use crate::frame::full_circle_deg;
 use crate::job::Setup;
-use crate::matching::{Actuator, Opinion, Target, Turn};
+use crate::matching::{Actuator, Opinion, Status, Target, Turn};
 use crate::optics::Crystal;
 use crate::quantity::Angle;
 
@@ -56,13 +56,21 @@ pub fn table(setup: &Setup, actuator: Actuator, turns: &[Turn]) -> Table {
             turn.status,
         );
     }
+    if turns.is_empty() {
+        let mut blank = vec![Cell::Empty; COLUMNS.len()];
+        let now = &setup.crystals[0].orientation;
+        (blank[1], blank[2]) = (now.tilt.degrees().into(), now.cross_tilt.degrees().into());
+        table.push(blank, false, Status::NoPhaseMatching);
+    }
     match actuator {
         Actuator::Temperature => {
-            let values = turns.iter().map(|t| Cell::from(t.crystal.temperature.degc())).collect();
+            let values = turns.iter().map(|t| Cell::from(t.crystal.temperature.degc()));
+            let values = values.chain([Cell::Empty]).collect();
             table.lead(column("crystal_temperature_degc", "degC", "setting of the temperature"), values);
         }
         Actuator::Pump => {
-            let values = turns.iter().map(|t| Cell::from(t.photons.pump.nm())).collect();
+            let values = turns.iter().map(|t| Cell::from(t.photons.pump.nm()));
+            let values = values.chain([Cell::Empty]).collect();
             table.lead(column("pump_wavelength_nm", "nm", "setting of the pump"), values);
         }
         Actuator::Tilt | Actuator::CrossTilt => {}

@@ -57,7 +57,11 @@ fn help_names_every_command_and_every_exit_status() {
     assert_says(&help, &COMMANDS);
     assert_says(
         &help,
-        &["Exit status: 0 an answer; 1 no solution; 2 bad usage", "4 file", "Quantities carry a unit"],
+        &[
+            "Exit status: 0 answered; 1 there is no solution; 2 the command line",
+            "4 reading",
+            "Quantities carry a unit",
+        ],
     );
     for command in COMMANDS {
         let help = twincone(&format!("{command} --help")).answer();

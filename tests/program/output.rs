@@ -62,7 +62,7 @@ fn a_run_that_fails_leaves_the_file_as_it_was() {
     for (line, status) in [
         ("cones -m bbo -p 150nm --theta 42deg -o rows.csv", 3),
         ("cones -m bbo -p 405 --theta 42deg -o rows.csv", 2),
-        ("tilt -m bbo -p 405nm --theta 10deg --crossing 3deg -o rows.csv", 1),
+        ("cones -m bbo -p 405nm --cut crossing=59deg -o rows.csv", 1),
         ("cones -j nowhere.toml -o rows.csv", 4),
     ] {
         twincone_in(folder.path(), line).refusal(status);

@@ -88,6 +88,13 @@ impl Run {
         self.stdout
     }
 
+    /// What a single question without a solution is answered with: on standard output, for scripts and people alike.
+    #[track_caller]
+    pub fn no_solution(self) -> String {
+        assert_eq!((self.status, self.stderr.as_str()), (1, ""), "{self:#?}");
+        self.stdout
+    }
+
     /// What a run that failed with this status said; it wrote no results.
     #[track_caller]
     pub fn refusal(self, status: i32) -> String {

@@ -181,14 +181,14 @@ fn the_half_angle_of_a_collinear_cut() {
 
 #[test]
 fn no_turn_is_told_with_what_there_is_now_and_what_else_to_try() {
-    let refusal = twincone(&format!("tilt {BBO} --crossing 3deg --by temperature")).refusal(1);
+    let told = twincone(&format!("tilt {BBO} --crossing 3deg --by temperature")).no_solution();
     assert_says(
-        &refusal,
+        &told,
         &["no temperature from -50 degC to 300 degC", "the crossing is 2.703 deg now", "--by"],
     );
     let far = BBO.replace("42.4deg", "10deg");
     assert_says(
-        &twincone(&format!("tilt {far} --crossing 3deg")).refusal(1),
+        &twincone(&format!("tilt {far} --crossing 3deg")).no_solution(),
         &["within 30 deg", "--by", "twincone cut"],
     );
 }
