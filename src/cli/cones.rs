@@ -2,7 +2,7 @@
 
 use clap::{Args as ClapArgs, ValueEnum};
 use twincone::job::setup::{Needs, Setup};
-use twincone::matching::{Cones, Want, cones, opening_turn, opinions};
+use twincone::matching::{Cones, Status, Want, cones, opening_turn, opinions};
 use twincone::optics::Crystal;
 use twincone::quantity::Angle;
 use twincone::report::cones::{Advice, crossings_table, rings_table, spread_lines, text};
@@ -41,8 +41,8 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         .rings
         .iter()
         .map(|row| {
-            let turn =
-                row.ring.is_err().then(|| opening_turn(&setup.crystals[row.crystal], row.photons, row.roles));
+            let turn = (row.status == Status::NoPhaseMatching)
+                .then(|| opening_turn(&setup.crystals[row.crystal], row.photons, row.roles));
             turn.and_then(|t| t.ok().flatten()).map(|(actuator, change)| (actuator, Angle::radians(change)))
         })
         .collect();
@@ -52,7 +52,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     });
     let mut conventions = Conventions::of(&setup);
     conventions.warn_of_dim_phi(&setup);
-    conventions.lines.splice(0..0, spread_lines(&found, &others));
+    conventions.lines.splice(0..0, spread_lines(&setup, &found, &others));
     let answer = Answer {
         command: "cones",
         tables: vec![rings_table(&setup, &found), crossings_table(&setup, &found)],

@@ -4,8 +4,8 @@
 use super::emission::{Emission, Photons, Triplet};
 use super::interaction::Roles;
 use super::partner::HALF_MAXIMUM;
+use super::rig::retuned;
 use super::root::bracketed;
-use super::tuning::retuned;
 use crate::frame::Direction;
 use crate::material::Reach;
 use crate::optics::Crystal;

@@ -10,13 +10,13 @@ use super::cones::ConesError;
 use super::emission::{Emission, Photons, Triplet};
 use super::interaction::{Interaction, Process, Roles};
 use super::partner::Pairing;
+use super::rig::{Knob, Rig};
 use super::root::{Root, Scan, roots};
 use super::target::Target;
-use super::tuning::retuned;
 use crate::frame::{Cut, Dielectric, Direction, Orientation, Reversal};
 use crate::material::{Optic, tensor::Tensor, tensor::is_centrosymmetric};
 use crate::optics::Crystal;
-use crate::quantity::{Angle, Length, Temperature, Wavelength};
+use crate::quantity::{Angle, Wavelength};
 
 /// What is sought.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -117,49 +117,41 @@ pub struct Shortfall {
 /// One line along which a setting is sought.
 struct Line<'a> {
     design: &'a Design,
-    crystal: Crystal,
-    triplet: Triplet,
-    find: Find,
+    rig: Rig,
     plane: Plane,
 }
 
 impl Line<'_> {
-    fn at(&self, x: f64) -> Option<(Crystal, Photons, Emission)> {
-        let mut crystal = self.crystal.clone();
-        let mut photons = self.design.photons;
-        match self.find {
-            Find::Theta => crystal.cut.theta = Angle::radians(x),
-            Find::Phi => crystal.cut.phi = Angle::radians(x),
-            Find::Poling => crystal.poling = (x > 0.0).then(|| Length::metres(1.0 / x)),
-            Find::Temperature => crystal.temperature = Temperature::celsius(x),
-            Find::Pump => photons = retuned(&photons, Wavelength::metres(x), self.design.fixed_signal)?,
-        }
-        let emission = match self.find {
-            Find::Theta | Find::Phi | Find::Poling => Emission::new(&crystal, photons, &self.triplet),
-            Find::Temperature | Find::Pump => Emission::of(&crystal, photons).ok()?,
-        };
-        Some((crystal, photons, emission))
-    }
-
     fn scan(&self) -> Scan {
         let pump = self.design.photons.pump.si();
-        match self.find {
+        match self.rig.knob {
             // rings change slowly with the cut and cost more than a collinear mismatch
-            Find::Theta | Find::Phi => {
+            Knob::Theta | Knob::Phi => {
                 let intervals = if self.design.target == Target::Collinear { 180 } else { 90 };
                 Scan { from: 0.0, to: FRAC_PI_2, intervals }
             }
-            // x is the inverse period
-            Find::Poling => Scan { from: 0.0, to: 1.0 / 0.5e-6, intervals: 800 },
-            Find::Temperature => Scan { from: -50.0, to: 300.0, intervals: 175 },
-            Find::Pump => Scan { from: 0.5 * pump, to: 2.0 * pump, intervals: 450 },
+            // the shortest period sought is 0.5 um
+            Knob::InversePeriod => Scan { from: 0.0, to: 1.0 / 0.5e-6, intervals: 800 },
+            Knob::Temperature => Scan { from: -50.0, to: 300.0, intervals: 175 },
+            Knob::Pump => Scan { from: 0.5 * pump, to: 2.0 * pump, intervals: 450 },
+            Knob::Tilt | Knob::CrossTilt => unreachable!("a cut is sought at normal incidence"),
         }
     }
 
     fn roots(&self, roles: Roles) -> Vec<Root> {
-        let mut residual =
-            |x: f64| self.at(x).and_then(|(_, _, emission)| self.design.target.residual(&emission, roles));
-        roots(&mut residual, self.scan())
+        roots(&mut self.rig.along(|emission| self.design.target.residual(emission, roles)), self.scan())
+    }
+}
+
+impl Find {
+    fn knob(self) -> Knob {
+        match self {
+            Self::Theta => Knob::Theta,
+            Self::Phi => Knob::Phi,
+            Self::Poling => Knob::InversePeriod,
+            Self::Temperature => Knob::Temperature,
+            Self::Pump => Knob::Pump,
+        }
     }
 }
 
@@ -234,12 +226,10 @@ fn wanted_roles(design: &Design, emission: &Emission) -> Result<Vec<Roles>, Cone
 }
 
 fn lines<'a>(design: &'a Design, crystal: &Crystal, triplet: Triplet) -> Vec<Line<'a>> {
-    let line = |find: Find, cut: Cut, plane: Plane| Line {
-        design,
-        crystal: Crystal { cut, ..crystal.clone() },
-        triplet,
-        find,
-        plane,
+    let line = |find: Find, cut: Cut, plane: Plane| {
+        let crystal = Crystal { cut, ..crystal.clone() };
+        let (photons, fixed_signal) = (design.photons, design.fixed_signal);
+        Line { design, rig: Rig { crystal, photons, fixed_signal, triplet, knob: find.knob() }, plane }
     };
     let (zero, right) = (Angle::default(), Angle::radians(FRAC_PI_2));
     let biaxial = crystal.material.file.optic == Optic::Biaxial;
@@ -266,10 +256,10 @@ fn plane_of(crystal: &Crystal, find: Find) -> Plane {
 
 /// The solution at a root; also its mirror image theta -> 180 deg - theta where the point group makes them differ.
 fn solution(line: &Line<'_>, roles: Roles, root: Root) -> Vec<CutSolution> {
-    let Some((mut crystal, photons, emission)) = line.at(root.x) else { return Vec::new() };
+    let Some((mut crystal, photons, emission)) = line.rig.at(root.x) else { return Vec::new() };
     let uniaxial = crystal.material.file.optic == Optic::Uniaxial;
     if uniaxial
-        && line.find != Find::Phi
+        && line.rig.knob != Knob::Phi
         && !line.design.phi_given
         && let Some(tensor) = &crystal.material.tensor
     {
@@ -277,7 +267,7 @@ fn solution(line: &Line<'_>, roles: Roles, root: Root) -> Vec<CutSolution> {
     }
     let here = describe(line, roles, root, crystal.clone(), photons);
     let mut all = vec![here];
-    if line.find == Find::Theta && !uniaxial {
+    if line.rig.knob == Knob::Theta && !uniaxial {
         crystal.cut.theta = Angle::radians(PI - crystal.cut.theta.si());
         let mirrored = describe(line, roles, root, crystal, photons);
         let largest = mirrored.crystal.material.tensor.as_ref().map_or(1.0, Tensor::largest);
@@ -327,7 +317,7 @@ fn describe(line: &Line<'_>, roles: Roles, root: Root, crystal: Crystal, photons
 }
 
 fn roles_in_words(line: &Line<'_>, roles: Roles) -> Process {
-    Emission::new(&line.crystal, line.design.photons, &line.triplet).process(roles)
+    Emission::new(&line.rig.crystal, line.rig.photons, &line.rig.triplet).process(roles)
 }
 
 /// The azimuth of largest |d_eff| of a collinear pair in a uniaxial crystal; the smallest in [0, 360 deg) of those that
@@ -421,7 +411,7 @@ pub fn shortfall(design: &Design) -> Result<Option<Shortfall>, ConesError> {
         let scan = line.scan();
         for n in 0..=scan.intervals {
             let x = scan.from + (scan.to - scan.from) * n as f64 / scan.intervals as f64;
-            let Some((there, _, emission)) = line.at(x) else { continue };
+            let Some((there, _, emission)) = line.rig.at(x) else { continue };
             for roles in &wanted {
                 let Some(value) = Target::Collinear.residual(&emission, *roles) else { continue };
                 if nearest.is_none_or(|best| value.abs() < best.mismatch) {

@@ -8,6 +8,7 @@ mod emission;
 mod interaction;
 mod mismatch;
 mod partner;
+mod rig;
 mod ring;
 mod root;
 mod spread;

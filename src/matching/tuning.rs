@@ -4,12 +4,13 @@ use super::Status;
 use super::cones::ConesError;
 use super::emission::{Emission, Photons, Triplet};
 use super::interaction::{Interaction, Process, Roles};
+use super::rig::{Knob, Rig};
 use super::root::{Scan, roots};
 use super::target::{Measure, Target, touching_reach};
 use crate::frame::Direction;
 use crate::material::MaterialError;
 use crate::optics::Crystal;
-use crate::quantity::{Angle, Temperature, Wavelength};
+use crate::quantity::Wavelength;
 
 /// What is changed.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -50,86 +51,68 @@ const TURN_RANGE: f64 = 30.0 * std::f64::consts::PI / 180.0;
 /// Sampling interval of a turn, radians.
 const TURN_STEP: f64 = 0.25 * std::f64::consts::PI / 180.0;
 
-/// The crystal and photons of a search, with indices looked up only where they change.
-struct Bench<'a> {
-    crystal: &'a Crystal,
-    photons: Photons,
-    /// A signal wavelength that stays when the pump changes; else both photons keep their frequency ratio.
-    fixed_signal: Option<Wavelength>,
-    triplet: Triplet,
-    actuator: Actuator,
+impl Actuator {
+    fn knob(self) -> Knob {
+        match self {
+            Self::Tilt => Knob::Tilt,
+            Self::CrossTilt => Knob::CrossTilt,
+            Self::Temperature => Knob::Temperature,
+            Self::Pump => Knob::Pump,
+        }
+    }
+
+    /// The setting as it is now, in the unit of the knob.
+    fn now(self, crystal: &Crystal, photons: &Photons) -> f64 {
+        match self {
+            Self::Tilt => crystal.orientation.tilt.si(),
+            Self::CrossTilt => crystal.orientation.cross_tilt.si(),
+            Self::Temperature => crystal.temperature.degc(),
+            Self::Pump => photons.pump.si(),
+        }
+    }
 }
 
-impl Bench<'_> {
-    fn at(&self, setting: f64) -> Option<(Crystal, Photons, Emission)> {
-        let mut crystal = self.crystal.clone();
-        let mut photons = self.photons;
-        match self.actuator {
-            Actuator::Tilt => crystal.orientation.tilt = Angle::radians(setting),
-            Actuator::CrossTilt => crystal.orientation.cross_tilt = Angle::radians(setting),
-            Actuator::Temperature => crystal.temperature = Temperature::celsius(setting),
-            Actuator::Pump => {
-                photons = retuned(&self.photons, Wavelength::metres(setting), self.fixed_signal)?
-            }
-        }
-        let emission = match self.actuator {
-            Actuator::Tilt | Actuator::CrossTilt => Emission::new(&crystal, photons, &self.triplet),
-            Actuator::Temperature | Actuator::Pump => Emission::of(&crystal, photons).ok()?,
-        };
-        Some((crystal, photons, emission))
+/// A rig whose knob is an actuator, and where that stands now.
+struct Bench {
+    rig: Rig,
+    actuator: Actuator,
+    now: f64,
+}
+
+impl Bench {
+    fn new(crystal: &Crystal, photons: Photons, triplet: Triplet, actuator: Actuator) -> Self {
+        let now = actuator.now(crystal, &photons);
+        let rig =
+            Rig { crystal: crystal.clone(), photons, fixed_signal: None, triplet, knob: actuator.knob() };
+        Self { rig, actuator, now }
     }
 
     fn scan(&self) -> Scan {
         match self.actuator {
             Actuator::Tilt | Actuator::CrossTilt => {
-                let now = self.now();
                 let intervals = (2.0 * TURN_RANGE / TURN_STEP).round() as usize;
-                Scan { from: now - TURN_RANGE, to: now + TURN_RANGE, intervals }
+                Scan { from: self.now - TURN_RANGE, to: self.now + TURN_RANGE, intervals }
             }
             Actuator::Temperature => Scan { from: -50.0, to: 300.0, intervals: 175 },
-            Actuator::Pump => {
-                let now = self.photons.pump.si();
-                Scan { from: 0.8 * now, to: 1.25 * now, intervals: 225 }
-            }
-        }
-    }
-
-    fn now(&self) -> f64 {
-        match self.actuator {
-            Actuator::Tilt => self.crystal.orientation.tilt.si(),
-            Actuator::CrossTilt => self.crystal.orientation.cross_tilt.si(),
-            Actuator::Temperature => self.crystal.temperature.degc(),
-            Actuator::Pump => self.photons.pump.si(),
+            Actuator::Pump => Scan { from: 0.8 * self.now, to: 1.25 * self.now, intervals: 225 },
         }
     }
 
     /// Settings of all roots, nearest to the present one first.
     fn settings(&self, target: Target, roles: Roles) -> Vec<f64> {
-        let find = |f: &mut dyn FnMut(&Emission) -> Option<f64>| {
-            roots(&mut |x| self.at(x).and_then(|(_, _, emission)| f(&emission)), self.scan())
-        };
         let mut found = match target {
-            Target::Touching => {
-                let mut all = find(&mut |e| touching_reach(e, roles).map(|r| r[0]));
-                all.extend(find(&mut |e| touching_reach(e, roles).map(|r| r[1])));
-                all
-            }
-            _ => find(&mut |e| target.residual(e, roles)),
+            Target::Touching => [0, 1]
+                .into_iter()
+                .flat_map(|which| {
+                    let mut reach = self.rig.along(move |e| touching_reach(e, roles).map(|r| r[which]));
+                    roots(&mut reach, self.scan())
+                })
+                .collect(),
+            _ => roots(&mut self.rig.along(|e| target.residual(e, roles)), self.scan()),
         };
-        let now = self.now();
-        found.sort_by(|a, b| (a.x - now).abs().total_cmp(&(b.x - now).abs()));
+        found.sort_by(|a, b| (a.x - self.now).abs().total_cmp(&(b.x - self.now).abs()));
         found.into_iter().map(|root| root.x).collect()
     }
-}
-
-/// The photons when the pump changes: the signal stays if fixed, else the frequency ratio stays.
-pub(super) fn retuned(
-    photons: &Photons,
-    pump: Wavelength,
-    fixed_signal: Option<Wavelength>,
-) -> Option<Photons> {
-    let share = photons.pump.si() / photons.signal.si();
-    Photons::new(pump, fixed_signal.unwrap_or(Wavelength::metres(pump.si() / share)))
 }
 
 /// The question of [`tune`].
@@ -170,11 +153,12 @@ pub fn tune(question: &Tuning) -> Result<Tuned, ConesError> {
     let emission = Emission::new(crystal, *photons, &triplet);
     let processes = processes(&emission, question)?;
     let actuator = actuator.unwrap_or_else(|| tuning_turn(crystal, *photons, &triplet, processes[0]));
-    let bench = Bench { crystal, photons: *photons, fixed_signal: *fixed_signal, triplet, actuator };
+    let mut bench = Bench::new(crystal, *photons, triplet, actuator);
+    bench.rig.fixed_signal = *fixed_signal;
     let mut turns = Vec::new();
     for roles in &processes {
         turns.extend(bench.settings(*target, *roles).into_iter().filter_map(|setting| {
-            let (crystal, photons, emission) = bench.at(setting)?;
+            let (crystal, photons, emission) = bench.rig.at(setting)?;
             let (theta_inside, phi_inside) = emission.pump_inside(*roles)?;
             let measure = Measure::of(&emission, *roles);
             let process = emission.process(*roles);
@@ -188,7 +172,7 @@ pub fn tune(question: &Tuning) -> Result<Tuned, ConesError> {
             Some(Turn { setting, process, crystal, photons, theta_inside, phi_inside, measure, status })
         }));
     }
-    let now = bench.now();
+    let now = bench.now;
     turns.sort_by(|a, b| (a.setting - now).abs().total_cmp(&(b.setting - now).abs()));
     Ok(Tuned { actuator, turns, now: Measure::of(&emission, processes[0]) })
 }
@@ -226,9 +210,9 @@ pub fn nearest_touch(
     roles: Roles,
     actuator: Actuator,
 ) -> Option<f64> {
-    let bench = Bench { crystal, photons, fixed_signal: None, triplet, actuator };
-    let reach = |x: f64| bench.at(x).and_then(|(_, _, emission)| touching_reach(&emission, roles));
-    let now = bench.now();
+    let bench = Bench::new(crystal, photons, triplet, actuator);
+    let reach = bench.rig.along(|emission| touching_reach(emission, roles));
+    let now = bench.now;
     let here = reach(now);
     let mut before = [here, here];
     let mut at = [now, now];
@@ -267,9 +251,9 @@ pub fn opening_turn(
 ) -> Result<Option<(Actuator, f64)>, MaterialError> {
     let triplet = Triplet::new(crystal, &photons)?;
     let actuator = tuning_turn(crystal, photons, &triplet, roles);
-    let bench = Bench { crystal, photons, fixed_signal: None, triplet, actuator };
+    let bench = Bench::new(crystal, photons, triplet, actuator);
     let nearest = bench.settings(Target::Beamlike, roles).first().copied();
-    Ok(nearest.map(|setting| (actuator, setting - bench.now())))
+    Ok(nearest.map(|setting| (actuator, setting - bench.now)))
 }
 
 /// The turn with the larger first-order effect on the mismatch of a pair along the pump: tilt, but in XY-plane cuts.
@@ -277,13 +261,13 @@ pub fn opening_turn(
 pub fn tuning_turn(crystal: &Crystal, photons: Photons, triplet: &Triplet, roles: Roles) -> Actuator {
     const STEP: f64 = 1e-3;
     let effect = |actuator: Actuator| {
-        let bench = Bench { crystal, photons, fixed_signal: None, triplet: *triplet, actuator };
+        let bench = Bench::new(crystal, photons, *triplet, actuator);
         let value = |setting: f64| {
-            let (_, _, emission) = bench.at(setting)?;
+            let (_, _, emission) = bench.rig.at(setting)?;
             let mismatch = emission.mismatch(roles)?;
             mismatch.at(mismatch.tangential(Direction::forward())).map(|s| s.value)
         };
-        let now = bench.now();
+        let now = bench.now;
         value(now + STEP).zip(value(now - STEP)).map_or(0.0, |(up, down)| (up - down).abs())
     };
     let (tilt, cross) = (effect(Actuator::Tilt), effect(Actuator::CrossTilt));

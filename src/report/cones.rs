@@ -245,7 +245,7 @@ fn ring_cells(setup: &Setup, row: &RingRow) -> Vec<String> {
 
 /// On which side a ring lies and how its light is polarized; or what to do where there is none.
 fn ring_words(setup: &Setup, row: &RingRow, advice: Advice) -> String {
-    let name = format!("{} ring ({} nm)", row.polarization, rounded(row.wavelength.nm(), 2));
+    let name = ring_name(setup, row);
     match &row.ring {
         Ok(ring) => {
             let (h, v) = (ring.axis.h_deg(), ring.axis.v_deg());
@@ -403,14 +403,18 @@ fn missing_words(setup: &Setup, row: &CrossingRow, both: &str) -> String {
 
 fn reflections(setup: &Setup) -> String {
     let mut out = String::new();
-    for crystal in &setup.crystals {
+    for (index, crystal) in setup.crystals.iter().enumerate() {
+        let face = match setup.crystals.len() {
+            1 => "The entrance face".into(),
+            _ => format!("The entrance face of crystal {}", index + 1),
+        };
         let r = crystal.reflection();
         let (x, y) = (-r.x / r.z * setup.screen.mm(), -r.y / r.z * setup.screen.mm());
         if x.hypot(y) <= 0.5 {
-            out.push_str("  The entrance face reflects pump light straight back into the laser.\n");
+            out.push_str(&format!("  {face} reflects pump light straight back into the laser.\n"));
         } else {
             out.push_str(&format!(
-                "  The entrance face reflects pump light back: x {} mm, y {} mm at {} m towards the laser.\n",
+                "  {face} reflects pump light back: x {} mm, y {} mm at {} m towards the laser.\n",
                 signed(x, 1),
                 signed(y, 1),
                 rounded(setup.screen.si(), 3)
@@ -422,38 +426,35 @@ fn reflections(setup: &Setup) -> String {
 
 /// The lines about the other data sets: half angle of each ring, and the crossings.
 #[must_use]
-pub fn spread_lines(own: &Cones, opinions: &[Opinion<Option<Cones>>]) -> Vec<String> {
-    let half_angle = |cones: &Cones, n: usize| {
-        cones.rings.get(n).and_then(|r| r.ring.as_ref().ok()).map(|r| r.half_angle.to_degrees())
-    };
+pub fn spread_lines(setup: &Setup, own: &Cones, opinions: &[Opinion<Option<Cones>>]) -> Vec<String> {
     let crossing = |cones: &Cones| {
         let polar =
             cones.crossings.iter().filter_map(|c| c.crossing.as_ref()).map(|c| c.direction.polar_deg());
         polar.reduce(f64::max)
     };
-    let mut lines: Vec<String> = own
-        .rings
-        .iter()
-        .enumerate()
-        .map(|(n, row)| {
-            let what = format!(
-                "the half angle of the {} ring ({} nm) in deg",
-                row.polarization,
-                rounded(row.wavelength.nm(), 1)
-            );
-            spread::line(
-                &what,
-                half_angle(own, n),
-                &spread::numbers(opinions, |c| c.as_ref().and_then(|c| half_angle(c, n))),
-                3,
-            )
-        })
-        .collect();
+    let mut lines = Vec::new();
     if !own.crossings.is_empty() {
         let numbers = spread::numbers(opinions, |c| c.as_ref().and_then(crossing));
-        lines
-            .insert(0, spread::line("the crossings' angle from the pump in deg", crossing(own), &numbers, 3));
-        lines.truncate(3);
+        lines.push(spread::line("the crossings' angle from the pump in deg", crossing(own), &numbers, 3));
+    }
+    for row in &own.rings {
+        // the ring that corresponds: same crystal, process, photon and wavelength
+        let half_angle = |cones: &Cones| {
+            let alike =
+                |r: &&RingRow| (r.crystal, r.process, r.photon) == (row.crystal, row.process, row.photon);
+            let ring = cones.rings.iter().find(alike)?.ring.as_ref().ok()?;
+            Some(ring.half_angle.to_degrees())
+        };
+        let numbers = spread::numbers(opinions, |c| c.as_ref().and_then(half_angle));
+        let what = format!("the half angle of the {} in deg", ring_name(setup, row));
+        lines.push(spread::line(&what, half_angle(own), &numbers, 3));
     }
     lines
+}
+
+/// "o ring (810 nm)", with the crystal's number where there are several.
+fn ring_name(setup: &Setup, row: &RingRow) -> String {
+    let of =
+        if setup.crystals.len() > 1 { format!(" of crystal {}", row.crystal + 1) } else { String::new() };
+    format!("{} ring{of} ({} nm)", row.polarization, rounded(row.wavelength.nm(), 2))
 }
