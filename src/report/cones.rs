@@ -440,8 +440,8 @@ pub fn spread_lines(setup: &Setup, own: &Cones, opinions: &[Opinion<Option<Cones
     for row in &own.rings {
         // the ring that corresponds: same crystal, process, photon and wavelength
         let half_angle = |cones: &Cones| {
-            let alike =
-                |r: &&RingRow| (r.crystal, r.process, r.photon) == (row.crystal, row.process, row.photon);
+            let key = |r: &RingRow| (r.crystal, r.process, r.photon, r.wavelength);
+            let alike = |r: &&RingRow| key(r) == key(row);
             let ring = cones.rings.iter().find(alike)?.ring.as_ref().ok()?;
             Some(ring.half_angle.to_degrees())
         };
