@@ -17,6 +17,7 @@
 //! | [`matching`] | phase matching: cuts, rings, crossings, turns |
 //! | [`job`] | the description of an experiment |
 //! | [`report`] | rows to text, CSV, JSON |
+//! | [`sweep`] | a report at every point of a grid of settings |
 
 pub mod frame;
 pub mod job;
@@ -26,3 +27,4 @@ pub mod optics;
 pub(crate) mod places;
 pub mod quantity;
 pub mod report;
+pub mod sweep;

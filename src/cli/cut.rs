@@ -4,12 +4,10 @@ use clap::{Args as ClapArgs, ValueEnum};
 use twincone::job::setup::{GivenCut, Needs, Setup};
 use twincone::job::target_angle;
 use twincone::matching::{
-    ConesError, CutSolution, Design, Find, Interaction, Opinion, Status, Target, alternatives, design,
-    opinions, shortfall, unmatched,
+    CutSolution, Design, Find, Interaction, Opinion, Status, Target, alternatives, design, opinions,
+    shortfall,
 };
-use twincone::material::{MaterialError, Optic, tensor::is_centrosymmetric};
 use twincone::optics::Crystal;
-use twincone::quantity::Angle;
 use twincone::report::cut::{Attempt, no_solution, ranking, spread_lines, table, text};
 use twincone::report::{Answer, Conventions, resolved_job};
 
@@ -57,7 +55,7 @@ pub struct TargetArgs {
 }
 
 #[derive(Debug, Clone, Copy, ValueEnum)]
-enum Sought {
+pub enum Sought {
     /// Angle between face normal and Z; in biaxial crystals in all principal planes
     Theta,
     /// Azimuth of the face normal
@@ -91,6 +89,17 @@ impl TargetArgs {
 }
 
 impl Sought {
+    /// As a job names it.
+    pub fn name(self) -> &'static str {
+        match self {
+            Self::Theta => "theta",
+            Self::Phi => "phi",
+            Self::Poling => "poling",
+            Self::Temperature => "temperature",
+            Self::Pump => "pump",
+        }
+    }
+
     fn find(self) -> Find {
         match self {
             Self::Theta => Find::Theta,
@@ -206,28 +215,8 @@ fn describe(setups: &[Setup], attempts: &[Attempt], several: bool) -> Convention
 
 fn question(args: &Args, setup: &Setup) -> Result<Design, Failure> {
     let given: GivenCut = setup.cut[0];
-    let find = args.find.find();
-    let target = args.target.target()?.or(given.target).unwrap_or(Target::Collinear);
-    let mut crystal = setup.crystals[0].clone();
-    match find {
-        Find::Theta => {}
-        // XY-plane cuts; poled crystals are cut across X or Y unless told
-        Find::Phi | Find::Poling if !given.theta => crystal.cut.theta = Angle::from_degrees(90.0),
-        _ if !given.theta => {
-            return Err(Failure::usage(
-                "this searches at a given cut: pass --theta (and --phi), for example --theta 90deg --phi 0deg",
-            ));
-        }
-        _ => {}
-    }
-    let biaxial = crystal.material.file.optic == Optic::Biaxial;
-    if biaxial && given.theta && !given.phi && matches!(find, Find::Poling | Find::Temperature | Find::Pump) {
-        return Err(Failure::usage(format!(
-            "no phi: {} is biaxial, so its cut needs both angles; pass --phi, for example --phi 0deg",
-            crystal.material.id
-        )));
-    }
-    if given.target.is_some() && args.target.target()?.is_some() && args.experiment.names_target() {
+    let (target, find) = (args.target.target()?, args.find.find());
+    if given.target.is_some() && target.is_some() && args.experiment.names_target() {
         return Err(Failure::usage("the target is named twice: leave out --cut, or the other one"));
     }
     if find == Find::Theta && given.theta && args.experiment.names_theta() {
@@ -235,49 +224,24 @@ fn question(args: &Args, setup: &Setup) -> Result<Design, Failure> {
             "--theta is what is sought; leave it out, or ask for --find poling, temperature or pump",
         ));
     }
-    let interaction = match (setup.interaction_given, target, find) {
-        (true, ..) => setup.interaction,
-        (false, Target::HalfAngle(_), _) => Interaction::One,
-        (false, Target::Collinear, Find::Poling) => Interaction::Any,
-        _ => setup.interaction,
-    };
-    Ok(Design {
-        crystal,
-        photons: setup.photons(),
-        fixed_signal: setup.signals.fixed(),
-        interaction,
-        target,
-        find,
-        phi_given: given.phi,
-    })
+    Ok(setup.design(target, find)?)
 }
 
 /// Solves; a failure is an answer where several materials compete, else an error.
 fn attempt(setup: &Setup, question: &Design, several: bool) -> Result<Attempt, Failure> {
-    let crystal = question.crystal.clone();
-    if several && is_centrosymmetric(crystal.material.file.point_group.get_ref()) {
-        let why = "the crystal has a centre of symmetry and gives no pairs".into();
-        return Ok(Attempt { crystal, outcome: Err((Status::NoNonlinearity, why)), unmatched: Vec::new() });
-    }
-    let outcome = match design(question) {
-        Ok(found) if !found.is_empty() => Ok(found),
-        Ok(_) => {
-            let why = if several { String::new() } else { why_none(setup, question)? };
-            Err((Status::NoPhaseMatching, why))
-        }
-        Err(ConesError::Material(error)) if several => Err((status_of(&error), error.to_string())),
-        Err(ConesError::Description(text)) if several => Err((Status::Invalid, text)),
-        Err(error) => return Err(error.into()),
+    let failed = |status: Status, why: String| Attempt {
+        crystal: question.crystal.clone(),
+        outcome: Err((status, why)),
+        unmatched: Vec::new(),
     };
-    let found = outcome.as_deref().unwrap_or_default();
-    let unmatched = unmatched(question, found).unwrap_or_default();
-    Ok(Attempt { crystal, outcome, unmatched })
-}
-
-fn status_of(error: &MaterialError) -> Status {
-    match error {
-        MaterialError::NoIndex { .. } => Status::Opaque,
-        _ => Status::OutOfRange,
+    match Attempt::of(question) {
+        Ok(Attempt { outcome: Err((Status::NoPhaseMatching, _)), unmatched, crystal }) if !several => {
+            let outcome = Err((Status::NoPhaseMatching, why_none(setup, question)?));
+            Ok(Attempt { crystal, outcome, unmatched })
+        }
+        Ok(answer) => Ok(answer),
+        Err(error) if several => Ok(failed(Status::from(&error), error.to_string())),
+        Err(error) => Err(error.into()),
     }
 }
 
@@ -303,7 +267,7 @@ fn other_attempt(own: &Crystal, told: Told) -> Attempt {
             let index = own.material.sets().iter().position(|s| s.id == told.dataset).unwrap_or(own.dataset);
             Attempt {
                 crystal: own.with_dataset(index),
-                outcome: Err((status_of(&error), error.to_string())),
+                outcome: Err((Status::from(&error), error.to_string())),
                 unmatched: Vec::new(),
             }
         }

@@ -76,7 +76,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     output.plain(template(&setup))
 }
 
-fn check(file: &PathBuf, output: &OutputArgs) -> Result<Outcome, Failure> {
+fn check(file: &std::path::Path, output: &OutputArgs) -> Result<Outcome, Failure> {
     let name = name_of(file);
     let document = Document::from_file(&name, &read_text(file)?);
     let named = |failure: Failure| match failure.message.starts_with(&name) {

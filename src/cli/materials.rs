@@ -83,7 +83,7 @@ fn answer(
     output.outcome(&answer, None)
 }
 
-fn check(file: &PathBuf, output: &OutputArgs) -> Result<Outcome, Failure> {
+fn check(file: &std::path::Path, output: &OutputArgs) -> Result<Outcome, Failure> {
     let name = file.display().to_string();
     let mut catalogue = Catalogue::default();
     let material = catalogue.add_or_replace(&name, &read_text(file)?)?;

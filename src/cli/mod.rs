@@ -6,10 +6,14 @@ mod cut;
 mod failure;
 mod index;
 mod job;
+mod join;
 mod man;
 mod materials;
 mod options;
 mod output;
+mod progress;
+mod run;
+mod sweep_file;
 mod tilt;
 mod twin;
 
@@ -53,6 +57,10 @@ enum Command {
     Tilt(Box<tilt::Args>),
     /// Follow a photon's partner
     Twin(Box<twin::Args>),
+    /// Write one report at every point of a grid of settings, as CSV
+    Run(Box<run::Args>),
+    /// Join the parts of a sweep that was shared out
+    Join(join::Args),
     /// Write out a commented job file, or check one
     Job(Box<job::Args>),
     /// Shell completions
@@ -101,6 +109,8 @@ pub fn run(typed: &Typed) -> Result<output::Outcome, Failure> {
         Command::Cones(args) => cones::run(args, out),
         Command::Tilt(args) => tilt::run(args, out),
         Command::Twin(args) => twin::run(args, out),
+        Command::Run(args) => run::run(args, out),
+        Command::Join(args) => join::run(args, out),
         Command::Job(args) => job::run(args, out),
         Command::Completions(args) => completions::run(args, Typed::command(), out),
         Command::Man => man::run(Typed::command(), out),

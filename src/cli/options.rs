@@ -1,7 +1,7 @@
 //! The options that all commands share: most stand for a key of the job.
 
 use std::io::Read;
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 
 use clap::Args;
 use twincone::job::resolve;
@@ -143,7 +143,15 @@ impl ExperimentArgs {
     /// # Errors
     /// A job file that cannot be read, or options that do not fit together.
     pub fn document(&self) -> Result<Document, Failure> {
-        let mut document = match &self.job {
+        self.document_of(None)
+    }
+
+    /// As [`Self::document`], where the job file may have been named without --job.
+    ///
+    /// # Errors
+    /// A job file that cannot be read, or options that do not fit together.
+    pub fn document_of(&self, job: Option<&Path>) -> Result<Document, Failure> {
+        let mut document = match job.or(self.job.as_deref()) {
             Some(path) => Document::from_file(&name_of(path), &read_text(path)?),
             None => Document::default(),
         };
@@ -285,10 +293,8 @@ pub fn catalogue(output: &OutputArgs, document: &Document) -> Result<Catalogue, 
             catalogue.add(&file.display().to_string(), &read_text(&file)?)?;
         }
     }
-    for crystal in document.describe()?.crystal {
-        if let Some(material) = &crystal.get_ref().material {
-            add_file(&mut catalogue, material.get_ref())?;
-        }
+    for material in document.describe()?.materials() {
+        add_file(&mut catalogue, material)?;
     }
     Ok(catalogue)
 }
@@ -300,7 +306,7 @@ pub fn catalogue(output: &OutputArgs, document: &Document) -> Result<Catalogue, 
 pub fn add_file(catalogue: &mut Catalogue, material: &str) -> Result<(), Failure> {
     let path = material.split_once(".toml").map(|(stem, _)| format!("{stem}.toml"));
     let Some(path) = path else { return Ok(()) };
-    catalogue.add_or_replace(&path, &read_text(&PathBuf::from(&path))?)?;
+    catalogue.add_or_replace(&path, &read_text(Path::new(&path))?)?;
     Ok(())
 }
 
@@ -308,7 +314,7 @@ pub fn add_file(catalogue: &mut Catalogue, material: &str) -> Result<(), Failure
 ///
 /// # Errors
 /// A file that cannot be read.
-pub fn read_text(path: &PathBuf) -> Result<String, Failure> {
+pub fn read_text(path: &Path) -> Result<String, Failure> {
     let shown = name_of(path);
     if path.as_os_str() == "-" {
         let mut text = String::new();

@@ -58,12 +58,25 @@ pub enum Colour {
 /// What a command hands on.
 #[derive(Debug)]
 pub struct Outcome {
-    text: String,
+    /// `None` where the command has written its answer itself.
+    text: Option<String>,
     warnings: Vec<String>,
     solved: bool,
 }
 
+impl Outcome {
+    /// Of a command that has written its answer itself.
+    pub fn written() -> Self {
+        Self { text: None, warnings: Vec::new(), solved: true }
+    }
+}
+
 impl OutputArgs {
+    /// A warning on standard error.
+    pub fn warn(&self, message: &str) {
+        self.tell("warning", "33", message);
+    }
+
     /// A text that has no other form.
     ///
     /// # Errors
@@ -73,7 +86,7 @@ impl OutputArgs {
             Some(Format::Csv | Format::Json) => {
                 Err(Failure::usage("this answer is a text; leave --format out"))
             }
-            _ => Ok(Outcome { text, warnings: Vec::new(), solved: true }),
+            _ => Ok(Outcome { text: Some(text), warnings: Vec::new(), solved: true }),
         }
     }
 
@@ -119,10 +132,9 @@ impl OutputArgs {
                 let chosen = chosen
                     .ok_or_else(|| Failure::usage("this answer has no table; use --format text or json"))?;
                 csv(chosen)
-                    .map_err(|e| Failure { status: 4, message: format!("cannot write the table: {e}") })?
             }
         };
-        Ok(Outcome { text, warnings: answer.conventions.warnings.clone(), solved: answer.solved })
+        Ok(Outcome { text: Some(text), warnings: answer.conventions.warnings.clone(), solved: answer.solved })
     }
 
     fn colours_stderr(&self) -> bool {
@@ -160,13 +172,15 @@ pub fn to_stderr(text: &str) {
 pub fn finish(outcome: Result<Outcome, Failure>, args: &OutputArgs) -> ExitCode {
     let written = outcome.and_then(|outcome| {
         if !args.quiet {
-            outcome.warnings.iter().for_each(|w| args.tell("warning", "33", w));
+            outcome.warnings.iter().for_each(|w| args.warn(w));
         }
-        match &args.output {
-            Some(path) if path.as_os_str() != "-" => write_whole(path, outcome.text.as_bytes())
+        match (&outcome.text, &args.output) {
+            (None, _) => {}
+            (Some(text), Some(path)) if path.as_os_str() != "-" => write_whole(path, text.as_bytes())
                 .map_err(|e| Failure::file("write", &path.display().to_string(), &e))?,
-            _ => to_stdout(outcome.text.as_bytes())
-                .map_err(|e| Failure::file("write to", "standard output", &e))?,
+            (Some(text), _) => {
+                to_stdout(text.as_bytes()).map_err(|e| Failure::file("write to", "standard output", &e))?;
+            }
         }
         Ok(outcome.solved)
     });

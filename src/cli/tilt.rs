@@ -1,9 +1,8 @@
 //! `tilt`: how far do I turn?
 
 use clap::{Args as ClapArgs, ValueEnum};
-use twincone::job::choose_phi;
 use twincone::job::setup::Needs;
-use twincone::matching::{Actuator, Interaction, Target, Tuned, Tuning, opinions, shortage, tune};
+use twincone::matching::{Actuator, Target, Tuned, Tuning, opinions, shortage, tune};
 use twincone::report::tilt::{spread_line, table, text};
 use twincone::report::{Answer, Conventions, resolved_job};
 
@@ -28,7 +27,7 @@ pub struct Args {
 }
 
 #[derive(Debug, Clone, Copy, ValueEnum)]
-enum By {
+pub enum By {
     /// The turn that increases theta
     Tilt,
     /// The turn that increases phi
@@ -40,6 +39,16 @@ enum By {
 }
 
 impl By {
+    /// As a job names it.
+    pub fn name(self) -> &'static str {
+        match self {
+            Self::Tilt => "tilt",
+            Self::CrossTilt => "cross-tilt",
+            Self::Temperature => "temperature",
+            Self::Pump => "pump",
+        }
+    }
+
     fn actuator(self) -> Actuator {
         match self {
             Self::Tilt => Actuator::Tilt,
@@ -60,22 +69,9 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let target = target.ok_or_else(|| {
         Failure::usage("no target: pass --crossing, --separation, --half-angle, --collinear, --beamlike or --touching, for example --crossing 3deg")
     })?;
-    let photons = setup.only_photons("tilt").map_err(Failure::usage)?;
-    if let (false, Target::HalfAngle(_)) = (setup.interaction_given, target) {
-        setup.interaction = Interaction::One;
-        choose_phi(&mut setup, 0);
-    }
-    let crystal = setup.only_crystal("tilt").map_err(Failure::usage)?.clone();
-    let question = Tuning {
-        crystal: crystal.clone(),
-        photons,
-        fixed_signal: setup.signals.fixed(),
-        interaction: setup.interaction,
-        target,
-        actuator: args.by.map(By::actuator),
-    };
+    let question = setup.tuning(target, args.by.map(By::actuator))?;
     let Tuned { actuator, turns, now } = tune(&question)?;
-    let others = opinions(&crystal, &photons, |other| {
+    let others = opinions(&question.crystal, &question.photons, |other| {
         let again = Tuning { crystal: other.clone(), actuator: Some(actuator), ..question.clone() };
         tune(&again).map(|tuned| tuned.turns).unwrap_or_default()
     });

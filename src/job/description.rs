@@ -66,6 +66,10 @@ impl Visitor<'_> for WrittenVisitor {
         Ok(Written { text: text.into(), bare: false })
     }
 
+    fn visit_bool<E: Error>(self, flag: bool) -> Result<Written, E> {
+        Ok(Written { text: flag.to_string(), bare: true })
+    }
+
     fn visit_i64<E: Error>(self, number: i64) -> Result<Written, E> {
         Ok(Written { text: number.to_string(), bare: true })
     }
@@ -112,6 +116,21 @@ pub struct Description {
     /// What is swept.
     #[serde(skip_serializing_if = "Option::is_none")]
     pub sweep: Option<Sweep>,
+}
+
+impl Description {
+    /// All materials that are named, in crystals and in the axes of a sweep.
+    #[must_use]
+    pub fn materials(&self) -> Vec<&str> {
+        let crystals = self.crystal.iter().filter_map(|c| c.get_ref().material.as_ref());
+        let compensators = self.compensator.iter().filter_map(|c| c.material.as_ref());
+        let axes = self.sweep.iter().flat_map(|s| &s.axes).map(Spanned::get_ref);
+        let axes = axes.flat_map(|a| std::iter::once(a).chain(a.together.iter().map(Spanned::get_ref)));
+        let of_materials =
+            |a: &&Axis| a.key.as_ref().is_some_and(|k| k.get_ref().trim().ends_with(".material"));
+        let swept = axes.filter(of_materials).flat_map(|a| &a.values);
+        crystals.chain(compensators).chain(swept).map(|text| &**text.get_ref()).collect()
+    }
 }
 
 /// `[pump]`
@@ -319,6 +338,52 @@ pub struct Compensator {
 pub struct Sweep {
     #[serde(skip_serializing_if = "Option::is_none")]
     pub report: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub target: Option<Spanned<Wanted>>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub by: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub find: Option<Text>,
     #[serde(default, skip_serializing_if = "Vec::is_empty")]
-    pub axes: Vec<toml::Value>,
+    pub axes: Vec<Spanned<Axis>>,
+}
+
+/// `target = { crossing = "3 deg" }`: what the reports `cut` and `tilt` look for.
+#[derive(Debug, Clone, Default, Deserialize, Serialize)]
+#[serde(deny_unknown_fields, rename_all = "kebab-case")]
+#[allow(missing_docs, reason = "one field per key, explained where it is read")]
+pub struct Wanted {
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub crossing: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub half_angle: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub separation: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub collinear: Option<bool>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub beamlike: Option<bool>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub touching: Option<bool>,
+}
+
+/// One axis: a range, a list, or several axes that run together.
+#[derive(Debug, Clone, Default, Deserialize, Serialize)]
+#[serde(deny_unknown_fields)]
+#[allow(missing_docs, reason = "one field per key, explained where it is read")]
+pub struct Axis {
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub key: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub from: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub to: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub points: Option<Spanned<u64>>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub step: Option<Text>,
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    pub values: Vec<Text>,
+    #[serde(default, skip_serializing_if = "Vec::is_empty")]
+    pub together: Vec<Spanned<Axis>>,
 }

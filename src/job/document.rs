@@ -11,6 +11,7 @@ use toml::Spanned;
 use toml::de::{DeArray, DeTable, DeValue};
 
 use super::description::Description;
+use super::keys::LISTS;
 use crate::places::{plain_message, point_at};
 
 /// A description that cannot be used. The text points at the place and says what to do.
@@ -329,9 +330,6 @@ fn chosen_items(
     let list: Vec<String> = names.iter().enumerate().map(numbered).collect();
     Err(format!("there are {count}: say which with --set {}=..., or {key}.*.{text} for all", list.join(", ")))
 }
-
-/// Sections that may be written once as a table or several times as a list of tables.
-const LISTS: [&str; 4] = ["crystal", "compensator", "filter", "collection"];
 
 /// One table becomes a list of one; one signal becomes a list of one.
 fn normalise(tree: &mut DeTable<'_>) {

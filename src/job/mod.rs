@@ -1,15 +1,22 @@
 //! The description of an experiment: what was typed, kept with its places, becomes a validated [`Setup`] in SI.
 
+pub mod axes;
 mod checks;
 pub mod description;
 mod document;
+mod handle;
+pub mod keys;
+mod limits;
+pub mod plan;
+mod question;
 mod resolve;
 mod settle;
 pub mod setup;
 mod template;
 
 pub use document::{Document, JobError};
+pub use handle::Handle;
+pub use plan::Plan;
 pub use resolve::{resolve, resolve_description, target_angle};
-pub use settle::choose_phi;
 pub use setup::Setup;
 pub use template::template;

@@ -8,7 +8,7 @@ use toml::Spanned;
 use super::checks::check_unused;
 use super::description::{self, Description, Text};
 use super::document::{Document, JobError};
-use super::settle::settle_cut;
+use super::limits;
 use super::setup::{GivenCut, Needs, Setup, SetupError, Signals, Stage};
 use crate::frame::{Cut, Orientation, Reversal};
 use crate::matching::{Interaction, Process, ProcessError, Target};
@@ -48,24 +48,22 @@ impl Reader<'_> {
     pub(super) fn positive(&self, text: Option<&Text>, what: &str) -> Result<Option<Length>, SetupError> {
         let length = self.maybe::<Length>(text)?;
         match (text, length) {
-            (Some(text), Some(length)) if length.si() <= 0.0 => {
-                Err(self.fault(text, &format!("{what} must be positive, not {}", text.get_ref())))
+            (Some(text), Some(length)) => {
+                self.within(text, limits::positive(length, what))?;
+                Ok(Some(length))
             }
-            _ => Ok(length),
+            _ => Ok(None),
         }
+    }
+
+    /// A limit that a value at this place breaks.
+    pub(super) fn within<T>(&self, place: &Spanned<T>, limit: limits::Limit) -> Result<(), SetupError> {
+        limit.map_err(|why| self.fault(place, &why))
     }
 
     pub(super) fn wavelength(&self, text: &Text, what: &str) -> Result<Wavelength, SetupError> {
         let wavelength: Wavelength = self.read(text)?;
-        if wavelength.si() <= 0.0 {
-            return Err(self.fault(text, &format!("{what} must be positive, not {}", text.get_ref())));
-        }
-        // far outside any crystal's transparency; also keeps wavenumbers finite
-        if !(1e-8..=1e-2).contains(&wavelength.si()) {
-            let message =
-                format!("{what}, {}, is not a wavelength of light: look at the unit", text.get_ref());
-            return Err(self.fault(text, &message));
-        }
+        self.within(text, limits::wavelength(wavelength, what))?;
         Ok(wavelength)
     }
 
@@ -73,12 +71,7 @@ impl Reader<'_> {
     pub(super) fn turn(&self, text: Option<&Text>, what: &str) -> Result<Angle, SetupError> {
         let Some(text) = text else { return Ok(Angle::default()) };
         let angle: Angle = self.read(text)?;
-        if angle.degrees().abs() > 80.0 {
-            let message = format!(
-                "{what} must lie within -80 deg to 80 deg, not {angle}: the beam would miss the face"
-            );
-            return Err(self.fault(text, &message));
-        }
+        self.within(text, limits::turn(angle, what))?;
         Ok(angle)
     }
 
@@ -148,9 +141,7 @@ pub fn resolve_description(
         setup.crystals.push(crystal);
         setup.cut.push(cut);
     }
-    for index in 0..setup.crystals.len() {
-        settle_cut(&mut setup, index, needs)?;
-    }
+    setup.settle(needs)?;
     Ok(setup)
 }
 
@@ -221,17 +212,8 @@ fn signals(
         }
         let wavelength = reader.wavelength(text, "the signal wavelength")?;
         let Some(pump) = pump else { continue };
-        let Some(partner) = wavelength.partner(pump) else {
-            return Err(reader.fault(
-                text,
-                &format!("{wavelength} is not longer than the pump, {pump}: a photon of a pair has less energy than the pump"),
-            ));
-        };
-        if partner.si() > 1e-2 {
-            let message =
-                format!("{wavelength} is so near the pump, {pump}, that its partner is no light any more");
-            return Err(reader.fault(text, &message));
-        }
+        reader.within(text, limits::photon(wavelength, pump))?;
+        let Some(partner) = wavelength.partner(pump) else { continue };
         let signal = if emission.idler.is_some() { partner } else { wavelength };
         if all.iter().all(|other: &Wavelength| (other.si() / signal.si() - 1.0).abs() > 1e-9) {
             all.push(signal);
@@ -272,9 +254,7 @@ fn crystal(
     })?;
     crystal.name = c.name.as_ref().map_or((index + 1).to_string(), |n| n.get_ref().to_string());
     for text in c.temperature.iter().chain(&c.reference_temperature) {
-        if reader.read::<Temperature>(text)?.degc() < -273.15 {
-            return Err(reader.fault(text, "a temperature cannot lie below absolute zero"));
-        }
+        reader.within(text, limits::temperature(reader.read(text)?))?;
     }
     if let Some(temperature) = reader.maybe::<Temperature>(c.temperature.as_ref())? {
         crystal.temperature = temperature;
@@ -299,11 +279,7 @@ fn crystal(
         about_x: reader.turn(mount.and_then(|m| m.about_x.as_ref()), "the mount's turn")?,
         about_y: reader.turn(mount.and_then(|m| m.about_y.as_ref()), "the mount's turn")?,
     };
-    if (crystal.orientation.rotation() * nalgebra::Vector3::z()).z < 80f64.to_radians().cos() {
-        let message = "tilt, cross tilt and the mount's turns together put the face more than 80 deg off the beam; \
-                       make them smaller";
-        return Err(reader.fault(written, message));
-    }
+    reader.within(written, limits::facing(&crystal.orientation))?;
     if let Some(text) = &c.reversed {
         crystal.reversal = reader.one_of(
             text,
@@ -352,10 +328,8 @@ fn given_cut(
     let Some(written) = &c.cut else { return Ok(GivenCut::default()) };
     let cut = written.get_ref();
     let theta = reader.maybe::<Angle>(cut.theta.as_ref())?;
-    if let (Some(text), Some(theta)) = (&cut.theta, theta)
-        && !(0.0..=180.0).contains(&theta.degrees())
-    {
-        return Err(reader.fault(text, &format!("theta must lie within 0 deg to 180 deg, not {theta}")));
+    if let (Some(text), Some(theta)) = (&cut.theta, theta) {
+        reader.within(text, limits::theta(theta))?;
     }
     let angle =
         |text: &Text, most: f64| target_angle(text.get_ref(), most).map_err(|why| reader.fault(text, &why));
@@ -389,8 +363,5 @@ fn given_cut(
 /// What is wrong with it.
 pub fn target_angle(text: &str, most: f64) -> Result<f64, String> {
     let angle: Angle = text.parse().map_err(|e: QuantityError| e.to_string())?;
-    let allowed = angle.degrees() > 0.0 && angle.degrees() < most;
-    allowed
-        .then_some(angle.si())
-        .ok_or_else(|| format!("the angle must lie between 0 deg and {most} deg, not {angle}"))
+    limits::target(angle, most).map(|()| angle.si())
 }

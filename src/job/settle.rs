@@ -64,7 +64,7 @@ pub(super) fn settle_cut(setup: &mut Setup, index: usize, needs: Needs) -> Resul
 }
 
 /// Gives a uniaxial crystal whose phi was left open the phi of largest |d_eff|; its geometry does not depend on it.
-pub fn choose_phi(setup: &mut Setup, index: usize) {
+pub(super) fn choose_phi(setup: &mut Setup, index: usize) {
     let given = setup.cut[index];
     let crystal = &setup.crystals[index];
     let (Some(_), false, Some(tensor)) = (setup.pump, given.phi, crystal.material.tensor.clone()) else {

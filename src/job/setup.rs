@@ -2,6 +2,7 @@
 
 use super::description::Description;
 use super::document::JobError;
+use super::settle::settle_cut;
 use crate::matching::{Interaction, Photons, Target};
 use crate::material::MaterialError;
 use crate::optics::Crystal;
@@ -139,6 +140,15 @@ impl Setup {
     #[must_use]
     pub fn pump(&self) -> Wavelength {
         self.pump.expect("resolve() with Needs::pump gives a pump")
+    }
+
+    /// Solves the cuts that were given as targets, and chooses what was left open; to be called again when pump, photons,
+    /// temperature or cut have changed.
+    ///
+    /// # Errors
+    /// A cut that is missing or does not exist.
+    pub fn settle(&mut self, needs: Needs) -> Result<(), SetupError> {
+        (0..self.crystals.len()).try_for_each(|index| settle_cut(self, index, needs))
     }
 
     /// Signal wavelengths for the pump.

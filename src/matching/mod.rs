@@ -34,6 +34,8 @@ pub use tuning::{Actuator, Tuned, Tuning, Turn, nearest_touch, opening_turn, sho
 
 use std::fmt;
 
+use crate::material::MaterialError;
+
 /// What a row says about itself instead of a number that does not exist.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Hash)]
 pub enum Status {
@@ -65,9 +67,11 @@ pub enum Status {
     NotConverged,
 }
 
-impl fmt::Display for Status {
-    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        f.pad(match self {
+impl Status {
+    /// As it stands in tables.
+    #[must_use]
+    pub fn name(self) -> &'static str {
+        match self {
             Self::Ok => "ok",
             Self::Touching => "touching",
             Self::Coincident => "coincident",
@@ -81,6 +85,35 @@ impl fmt::Display for Status {
             Self::OpticAxis => "optic_axis",
             Self::Invalid => "invalid",
             Self::NotConverged => "not_converged",
-        })
+        }
+    }
+}
+
+impl fmt::Display for Status {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        f.pad(self.name())
+    }
+}
+
+impl From<&MaterialError> for Status {
+    fn from(error: &MaterialError) -> Self {
+        match error {
+            MaterialError::NoIndex { .. } => Self::Opaque,
+            MaterialError::Unknown { .. } | MaterialError::UnknownDataset { .. } | MaterialError::File(_) => {
+                Self::Invalid
+            }
+            MaterialError::OutOfRange { .. }
+            | MaterialError::NoThermoOptics { .. }
+            | MaterialError::TemperatureOutOfRange { .. } => Self::OutOfRange,
+        }
+    }
+}
+
+impl From<&ConesError> for Status {
+    fn from(error: &ConesError) -> Self {
+        match error {
+            ConesError::Material(error) => error.into(),
+            ConesError::Description(_) => Self::Invalid,
+        }
     }
 }

@@ -6,12 +6,12 @@ use crate::matching::{
     Actuator, Cones, CrossingRow, GapKind, HistoryName, Landing, Opinion, RingRow, Status,
     phase_matching_factor,
 };
-use crate::quantity::Angle;
+use crate::quantity::{Angle, Length};
 
 use super::angles::{degrees, fixed, grid, or_dash, prose, rounded, signed};
 use super::conventions::room_words;
 use super::spread;
-use super::table::{Cell, Column, Table, column};
+use super::table::{Column, Rows, Table, column};
 
 /// Columns of the rings, without the two that end every table.
 pub const RINGS: [Column; 16] = [
@@ -69,37 +69,36 @@ pub const CROSSINGS: [Column; 24] = [
 #[must_use]
 pub fn rings_table(setup: &Setup, cones: &Cones) -> Table {
     let mut table = Table::new("rings", &RINGS);
-    for row in &cones.rings {
-        let mut cells = vec![
-            (row.crystal + 1).into(),
-            row.process.to_string().into(),
-            landing(row.photon).into(),
-            row.wavelength.nm().into(),
-            row.polarization.to_string().into(),
-            row.field_azimuth.into(),
-        ];
-        match &row.ring {
-            Ok(ring) => {
-                let (centre, radius) = ring.circle();
-                let mm = setup.screen.mm();
-                cells.extend([
-                    Cell::degrees(ring.axis.h_deg()),
-                    Cell::degrees(ring.axis.v_deg()),
-                    ring.half_angle.to_degrees().into(),
-                    ring.least.to_degrees().into(),
-                    ring.largest.to_degrees().into(),
-                    ring.thickness.map(f64::to_degrees).into(),
-                    ring.internal_half_angle.to_degrees().into(),
-                    Cell::degrees(centre.x * mm),
-                    Cell::degrees(centre.y * mm),
-                    (radius * mm).into(),
-                ]);
-            }
-            Err(_) => cells.resize(RINGS.len(), Cell::Empty),
-        }
-        table.push(cells, row.extrapolated, row.status);
-    }
+    cones.rings.iter().for_each(|row| ring_row(row, setup.screen, &mut table));
     table
+}
+
+/// A row of [`RINGS`].
+pub fn ring_row(row: &RingRow, screen: Length, out: &mut impl Rows) {
+    out.count(row.crystal + 1);
+    out.words(row.process);
+    out.words(landing(row.photon));
+    out.number(row.wavelength.nm());
+    out.words(row.polarization);
+    out.maybe(row.field_azimuth);
+    match &row.ring {
+        Ok(ring) => {
+            let (centre, radius) = ring.circle();
+            let mm = screen.mm();
+            out.clean(ring.axis.h_deg());
+            out.clean(ring.axis.v_deg());
+            out.number(ring.half_angle.to_degrees());
+            out.number(ring.least.to_degrees());
+            out.number(ring.largest.to_degrees());
+            out.maybe(ring.thickness.map(f64::to_degrees));
+            out.number(ring.internal_half_angle.to_degrees());
+            out.clean(centre.x * mm);
+            out.clean(centre.y * mm);
+            out.number(radius * mm);
+        }
+        Err(_) => out.blank(10),
+    }
+    out.end(row.extrapolated, row.status);
 }
 
 fn landing(photon: Landing) -> &'static str {
@@ -113,34 +112,43 @@ fn landing(photon: Landing) -> &'static str {
 #[must_use]
 pub fn crossings_table(setup: &Setup, cones: &Cones) -> Table {
     let mut table = Table::new("crossings", &CROSSINGS);
-    for row in &cones.crossings {
-        let mut cells = vec![
-            row.pair.map_or(Cell::Empty, Cell::from),
-            (row.first.crystal + 1).into(),
-            row.first.process.to_string().into(),
-            (row.second.crystal + 1).into(),
-            row.second.process.to_string().into(),
-            row.a_wavelength.nm().into(),
-            row.b_wavelength.nm().into(),
-        ];
-        let a = row.crossing.as_ref().map(|c| c.direction);
-        let b = row.crossing.as_ref().and_then(|c| c.partner);
-        cells.extend(place(setup, a));
-        cells.extend(place(setup, b));
-        cells.push(a.zip(b).map(|(a, b)| a.angle_to(b).to_degrees()).into());
-        cells.push(row.crossing.as_ref().map(|c| c.angle.to_degrees()).into());
-        cells.push(row.contact.map(|c| c.gap.to_degrees()).into());
-        cells.push(row.contact.map(|c| c.kind.name()).into());
-        cells.push(row.tilt_to_touch.map(|t| Angle::radians(t).degrees()).into());
-        table.push(cells, row.extrapolated, row.status);
-    }
+    cones.crossings.iter().for_each(|row| crossing_row(row, setup.screen, &mut table));
     table
 }
 
-fn place(setup: &Setup, direction: Option<Direction>) -> [Cell; 6] {
-    let Some(d) = direction else { return std::array::from_fn(|_| Cell::Empty) };
-    let (x, y) = d.on_screen_mm(setup.screen);
-    [d.h_deg(), d.v_deg(), d.polar_deg(), d.azimuth_deg(), x, y].map(Cell::degrees)
+/// A row of [`CROSSINGS`].
+pub fn crossing_row(row: &CrossingRow, screen: Length, out: &mut impl Rows) {
+    match row.pair {
+        Some(number) => out.count(number),
+        None => out.empty(),
+    }
+    for history in [row.first, row.second] {
+        out.count(history.crystal + 1);
+        out.words(history.process);
+    }
+    out.number(row.a_wavelength.nm());
+    out.number(row.b_wavelength.nm());
+    let a = row.crossing.as_ref().map(|c| c.direction);
+    let b = row.crossing.as_ref().and_then(|c| c.partner);
+    place(a, screen, out);
+    place(b, screen, out);
+    out.maybe(a.zip(b).map(|(a, b)| a.angle_to(b).to_degrees()));
+    out.maybe(row.crossing.as_ref().map(|c| c.angle.to_degrees()));
+    out.maybe(row.contact.map(|c| c.gap.to_degrees()));
+    match row.contact {
+        Some(contact) => out.words(contact.kind.name()),
+        None => out.empty(),
+    }
+    out.maybe(row.tilt_to_touch.map(|t| Angle::radians(t).degrees()));
+    out.end(row.extrapolated, row.status);
+}
+
+fn place(direction: Option<Direction>, screen: Length, out: &mut impl Rows) {
+    let Some(d) = direction else { return out.blank(6) };
+    let (x, y) = d.on_screen_mm(screen);
+    [d.h_deg(), d.v_deg(), d.polar_deg(), d.azimuth_deg(), x, y]
+        .into_iter()
+        .for_each(|value| out.clean(value));
 }
 
 /// A turn that begins to give light, for each ring that has none.

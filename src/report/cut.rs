@@ -2,13 +2,17 @@
 
 use crate::frame::Dielectric;
 use crate::job::Setup;
-use crate::matching::{CutSolution, Find, Opinion, Plane, Process, Shortfall, Status, Target};
+use crate::matching::{
+    ConesError, CutSolution, Design, Find, Opinion, Plane, Process, Shortfall, Status, Target, design,
+    unmatched,
+};
 use crate::material::Optic;
+use crate::material::tensor::is_centrosymmetric;
 use crate::optics::Crystal;
 
 use super::angles::{fixed, grid, or_dash, prose, rounded};
 use super::spread;
-use super::table::{Cell, Column, Table, column};
+use super::table::{Cell, Column, Rows, Table, column};
 
 /// Columns, without the two that end every table.
 pub const COLUMNS: [Column; 21] = [
@@ -46,24 +50,53 @@ pub struct Attempt {
     pub unmatched: Vec<Process>,
 }
 
-/// Rows of all attempts: solutions first, as they come or by falling |d_eff|, then those that have none.
+impl Attempt {
+    /// Solves. That there is no solution is an answer.
+    ///
+    /// # Errors
+    /// A wavelength or temperature outside the data set's range; an interaction that does not fit the crystal.
+    pub fn of(question: &Design) -> Result<Self, ConesError> {
+        let crystal = question.crystal.clone();
+        let none = |status: Status, why: &str| Self {
+            crystal: crystal.clone(),
+            outcome: Err((status, why.into())),
+            unmatched: Vec::new(),
+        };
+        if is_centrosymmetric(crystal.material.file.point_group.get_ref()) {
+            let why = "the crystal has a centre of symmetry and gives no pairs";
+            return Ok(none(Status::NoNonlinearity, why));
+        }
+        let found = design(question)?;
+        let unmatched = unmatched(question, &found).unwrap_or_default();
+        let outcome =
+            if found.is_empty() { Err((Status::NoPhaseMatching, String::new())) } else { Ok(found) };
+        Ok(Self { crystal, outcome, unmatched })
+    }
+}
+
+/// Rows of all attempts as a table.
 #[must_use]
 pub fn table(setup: &Setup, attempts: &[Attempt], by_rank: bool) -> Table {
     let mut table = Table::new("cut", &COLUMNS);
+    rows(setup, attempts, by_rank, &mut table);
+    table
+}
+
+/// Rows of all attempts: solutions first, as they come or by falling |d_eff|, then those that have none.
+pub fn rows(setup: &Setup, attempts: &[Attempt], by_rank: bool, out: &mut impl Rows) {
     let solved = attempts.iter().filter_map(|a| a.outcome.as_ref().ok()).flatten();
     for s in if by_rank { ranked(attempts) } else { solved.collect() } {
-        table.push(row(s), s.extrapolated, s.status);
+        out.push(&row(s), s.extrapolated, s.status);
     }
     for attempt in attempts {
         let status = attempt.outcome.as_ref().map_or_else(|(status, _)| *status, |_| Status::NoPhaseMatching);
         for process in &attempt.unmatched {
-            table.push(unsolved(setup, &attempt.crystal, Some(*process)), false, status);
+            out.push(&unsolved(setup, &attempt.crystal, Some(*process)), false, status);
         }
         if attempt.outcome.is_err() && attempt.unmatched.is_empty() {
-            table.push(unsolved(setup, &attempt.crystal, None), false, status);
+            out.push(&unsolved(setup, &attempt.crystal, None), false, status);
         }
     }
-    table
 }
 
 fn row(s: &CutSolution) -> Vec<Cell> {

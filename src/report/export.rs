@@ -1,38 +1,154 @@
 //! Tables as CSV and JSON.
 
+use std::fmt::{Display, Write as _};
+
 use serde_json::{Map, Value, json};
 
-use super::table::{Cell, Table};
+use super::table::{Cell, Rows, Table};
 use super::{Answer, Conventions};
+use crate::matching::Status;
 
-/// One header line, no comment lines, numbers that read back exactly, empty cells for what does not exist.
+/// Rows of CSV, written as they come: numbers that read back exactly, nothing for what does not exist, no comments.
 ///
-/// # Errors
-/// None in practice: the text goes to memory.
-pub fn csv(table: &Table) -> Result<String, csv::Error> {
-    let mut writer = csv::WriterBuilder::new().from_writer(Vec::new());
-    writer.write_record(table.columns.iter().map(|c| c.name))?;
+/// Every row begins with the same fields until [`Lines::lead`] changes them.
+pub struct Lines {
+    rows: Records,
+    digits: zmij::Buffer,
+    text: String,
+    status: Status,
+}
+
+/// Writing to memory cannot fail.
+const MEMORY: &str = "memory takes every field";
+
+/// Rows whose first fields repeat.
+struct Records {
+    writer: csv::Writer<Vec<u8>>,
+    lead: csv::ByteRecord,
+    begun: bool,
+}
+
+impl Records {
+    fn field(&mut self, field: &[u8]) {
+        if !self.begun {
+            self.begun = true;
+            for field in &self.lead {
+                self.writer.write_field(field).expect(MEMORY);
+            }
+        }
+        self.writer.write_field(field).expect(MEMORY);
+    }
+
+    fn end(&mut self) {
+        self.writer.write_record(None::<&[u8]>).expect(MEMORY);
+        self.begun = false;
+    }
+}
+
+impl Default for Lines {
+    fn default() -> Self {
+        let writer = csv::WriterBuilder::new().flexible(true).from_writer(Vec::new());
+        let rows = Records { writer, lead: csv::ByteRecord::new(), begun: false };
+        Self { rows, digits: zmij::Buffer::new(), text: String::new(), status: Status::Ok }
+    }
+}
+
+impl Lines {
+    /// The names of columns, as a row.
+    pub fn header<'c>(&mut self, columns: impl IntoIterator<Item = &'c str>) {
+        self.rows.writer.write_record(columns).expect(MEMORY);
+    }
+
+    /// Every row begins with these values from now on.
+    pub fn lead<'c>(&mut self, values: impl IntoIterator<Item = Lead<'c>>) {
+        self.rows.lead.clear();
+        self.status = Status::Ok;
+        for value in values {
+            match value {
+                Lead::Number(value) => {
+                    self.rows.lead.push_field(digits(&mut self.digits, value).as_bytes());
+                }
+                Lead::Text(text) => self.rows.lead.push_field(text.as_bytes()),
+            }
+        }
+    }
+
+    /// The first status but `ok` of the rows since the last [`Lines::lead`].
+    #[must_use]
+    pub fn status(&self) -> Status {
+        self.status
+    }
+
+    /// The bytes so far, which are taken out.
+    #[must_use]
+    pub fn take(&mut self) -> Vec<u8> {
+        std::mem::take(self).rows.writer.into_inner().expect(MEMORY)
+    }
+}
+
+/// A value that rows begin with.
+#[derive(Debug, Clone, Copy)]
+pub enum Lead<'a> {
+    /// Finite.
+    Number(f64),
+    /// Words.
+    Text(&'a str),
+}
+
+impl Rows for Lines {
+    fn number(&mut self, value: f64) {
+        if value.is_finite() {
+            self.rows.field(digits(&mut self.digits, value).as_bytes());
+        } else {
+            self.empty();
+        }
+    }
+
+    fn count(&mut self, value: usize) {
+        self.words(value);
+    }
+
+    fn words(&mut self, text: impl Display) {
+        self.text.clear();
+        // a String takes every character
+        let _ = write!(self.text, "{text}");
+        self.rows.field(self.text.as_bytes());
+    }
+
+    fn flag(&mut self, flag: bool) {
+        self.rows.field(if flag { b"true" } else { b"false" });
+    }
+
+    fn empty(&mut self) {
+        self.rows.field(b"");
+    }
+
+    fn end(&mut self, extrapolated: bool, status: Status) {
+        self.flag(extrapolated);
+        self.rows.field(status.name().as_bytes());
+        self.rows.end();
+        if self.status == Status::Ok {
+            self.status = status;
+        }
+    }
+}
+
+/// The shortest digits that read back as the same double, with an exponent where plain digits would be long; -0 is 0.
+fn digits(buffer: &mut zmij::Buffer, value: f64) -> &str {
+    let text = buffer.format_finite(value + 0.0);
+    text.strip_suffix(".0").unwrap_or(text)
+}
+
+/// One header line, then the rows.
+#[must_use]
+pub fn csv(table: &Table) -> String {
+    let mut lines = Lines::default();
+    lines.header(table.columns.iter().map(|c| c.name));
     for row in &table.rows {
-        writer.write_record(row.iter().map(field))?;
+        row.iter().for_each(|cell| lines.cell(cell));
+        lines.rows.end();
     }
-    let bytes = writer.into_inner().map_err(|e| e.into_error())?;
-    Ok(String::from_utf8(bytes).expect("every field is UTF-8"))
-}
-
-fn field(cell: &Cell) -> String {
-    match cell {
-        Cell::Empty => String::new(),
-        Cell::Number(value) => number(*value),
-        Cell::Integer(value) => value.to_string(),
-        Cell::Text(text) => text.clone(),
-        Cell::Flag(flag) => flag.to_string(),
-    }
-}
-
-/// The shortest text that reads back as the same double; exponents where plain digits would be long.
-fn number(value: f64) -> String {
-    let size = value.abs();
-    if value != 0.0 && !(1e-5..1e16).contains(&size) { format!("{value:e}") } else { value.to_string() }
+    String::from_utf8(lines.take()).expect("every field is UTF-8")
 }
 
 /// One object: version, command, job, conventions, datasets, warnings, and each table as a list of rows.
@@ -79,9 +195,12 @@ mod tests {
     #[test]
     fn numbers_read_back_exactly() {
         for value in [0.1, 1.0 / 3.0, 1e-9, 6.02e23, -2.5, 405.0, 1e-5, 123_456_789.123_456_7] {
-            assert_eq!(number(value).parse::<f64>(), Ok(value));
+            assert_eq!(digits(&mut zmij::Buffer::new(), value).parse::<f64>(), Ok(value));
         }
-        assert_eq!(number(405.0), "405");
-        assert_eq!(number(1e-9), "1e-9");
+        for (value, text) in
+            [(405.0, "405"), (1e-9, "1e-9"), (-0.0, "0"), (0.001, "0.001"), (-2.5e-7, "-2.5e-7")]
+        {
+            assert_eq!(digits(&mut zmij::Buffer::new(), value), text);
+        }
     }
 }

@@ -6,7 +6,7 @@ use crate::optics::{Crystal, IndexRow, index_rows};
 
 use super::angles::{fixed, grid, or_dash, rounded};
 use super::spread;
-use super::table::{Cell, Column, Table, column};
+use super::table::{Cell, Column, Rows, Table, column};
 
 /// Columns, without the two that end every table.
 pub const COLUMNS: [Column; 10] = [
@@ -58,7 +58,7 @@ pub fn table(rows: &[IndexRow]) -> Table {
             along.map_or(Cell::Empty, |a| Cell::degrees(a.walkoff.to_degrees())),
             Cell::from(row.dn_dt),
         ];
-        table.push(cells, row.extrapolated, status(row));
+        table.push(&cells, row.extrapolated, status(row));
     }
     table
 }

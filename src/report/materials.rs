@@ -5,7 +5,7 @@ use crate::material::{Material, Optic};
 use crate::quantity::Wavelength;
 
 use super::angles::{grid, rounded};
-use super::table::{Column, Table, column};
+use super::table::{Column, Rows, Table, column};
 
 /// Columns, without the two that end every table.
 pub const COLUMNS: [Column; 9] = [
@@ -42,7 +42,7 @@ pub fn table(materials: &[Material]) -> Table {
             sets.join(" ").into(),
             m.tensor.as_ref().map(|t| t.largest()).into(),
         ];
-        table.push(cells, false, Status::Ok);
+        table.push(&cells, false, Status::Ok);
     }
     table
 }
@@ -119,7 +119,7 @@ pub fn sets_table(m: &Material) -> Table {
             file.warning.as_deref().into(),
             file.remark.as_deref().into(),
         ];
-        table.push(cells, false, Status::Ok);
+        table.push(&cells, false, Status::Ok);
     }
     table
 }
@@ -140,7 +140,7 @@ pub fn tensor_and_notes(m: &Material) -> [Table; 2] {
             let known = n.known.to_string();
             let cells =
                 vec![element.as_str().into(), (*value).into(), known.into(), n.source.as_str().into()];
-            tensor.push(cells, false, Status::Ok);
+            tensor.push(&cells, false, Status::Ok);
         }
     }
     let columns =
@@ -149,7 +149,7 @@ pub fn tensor_and_notes(m: &Material) -> [Table; 2] {
     for note in &m.file.note {
         let cells =
             vec![note.text.as_str().into(), note.known.to_string().into(), note.source.as_str().into()];
-        notes.push(cells, false, Status::Ok);
+        notes.push(&cells, false, Status::Ok);
     }
     [tensor, notes]
 }

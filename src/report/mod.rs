@@ -13,8 +13,8 @@ pub mod tilt;
 pub mod twin;
 
 pub use conventions::{Conventions, room_words};
-pub use export::{csv, json};
-pub use table::{Cell, Column, Table};
+pub use export::{Lead, Lines, csv, json};
+pub use table::{Cell, Column, Rows, Table};
 
 /// What a command found, in every form it can be written in.
 #[derive(Debug, Clone)]

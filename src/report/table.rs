@@ -1,5 +1,7 @@
 //! Tables: one list of columns (name, unit, meaning) gives the header, the documentation and the JSON keys.
 
+use std::fmt::Display;
+
 use crate::matching::Status;
 
 /// One column.
@@ -97,6 +99,58 @@ impl From<Status> for Cell {
     }
 }
 
+/// Takes rows value by value. A [`Table`] keeps them; [`Lines`](super::Lines) writes them as CSV at once, so that a
+/// sweep needs no memory for its rows.
+pub trait Rows {
+    /// A finite number; anything else does not exist.
+    fn number(&mut self, value: f64);
+    /// A count.
+    fn count(&mut self, value: usize);
+    /// A text.
+    fn words(&mut self, text: impl Display);
+    /// true or false.
+    fn flag(&mut self, flag: bool);
+    /// A value that does not exist.
+    fn empty(&mut self);
+    /// The last two values of a row.
+    fn end(&mut self, extrapolated: bool, status: Status);
+
+    /// A number that may not exist.
+    fn maybe(&mut self, value: Option<f64>) {
+        match value {
+            Some(value) => self.number(value),
+            None => self.empty(),
+        }
+    }
+
+    /// An angle in degrees, or a length, without the rounding noise of one that is zero by symmetry.
+    fn clean(&mut self, value: f64) {
+        self.number(if value.abs() < 1e-12 { 0.0 } else { value });
+    }
+
+    /// Several values that do not exist.
+    fn blank(&mut self, count: usize) {
+        (0..count).for_each(|_| self.empty());
+    }
+
+    /// A whole row: the values of its columns, then the last two.
+    fn push(&mut self, values: &[Cell], extrapolated: bool, status: Status) {
+        values.iter().for_each(|cell| self.cell(cell));
+        self.end(extrapolated, status);
+    }
+
+    /// A value that is kept as a cell.
+    fn cell(&mut self, cell: &Cell) {
+        match cell {
+            Cell::Empty => self.empty(),
+            Cell::Number(value) => self.number(*value),
+            Cell::Integer(value) => self.words(value),
+            Cell::Text(text) => self.words(text),
+            Cell::Flag(flag) => self.flag(*flag),
+        }
+    }
+}
+
 /// Rows under columns.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Table {
@@ -106,6 +160,8 @@ pub struct Table {
     pub columns: Vec<Column>,
     /// Each as long as `columns`.
     pub rows: Vec<Vec<Cell>>,
+    /// The row that is being put together.
+    open: Vec<Cell>,
 }
 
 impl Table {
@@ -113,27 +169,42 @@ impl Table {
     #[must_use]
     pub fn new(name: &'static str, columns: &[Column]) -> Self {
         let columns = columns.iter().copied().chain([EXTRAPOLATED, STATUS]).collect();
-        Self { name, columns, rows: Vec::new() }
+        Self { name, columns, rows: Vec::new(), open: Vec::new() }
+    }
+}
+
+impl Rows for Table {
+    fn number(&mut self, value: f64) {
+        self.open.push(value.into());
     }
 
-    /// Adds a row: the values of the columns, then `extrapolated` and `status`.
-    ///
+    fn count(&mut self, value: usize) {
+        self.open.push(value.into());
+    }
+
+    fn words(&mut self, text: impl Display) {
+        self.open.push(text.to_string().into());
+    }
+
+    fn flag(&mut self, flag: bool) {
+        self.open.push(flag.into());
+    }
+
+    fn empty(&mut self) {
+        self.open.push(Cell::Empty);
+    }
+
+    fn cell(&mut self, cell: &Cell) {
+        self.open.push(cell.clone());
+    }
+
     /// # Panics
-    /// If there are more or fewer values than columns.
-    pub fn push(&mut self, values: Vec<Cell>, extrapolated: bool, status: Status) {
-        let mut row = values;
-        row.push(extrapolated.into());
-        row.push(status.into());
-        assert_eq!(row.len(), self.columns.len(), "a row of {} has one value per column", self.name);
-        self.rows.push(row);
-    }
-
-    /// Puts a column in front; `values` has one cell per row.
-    pub fn lead(&mut self, column: Column, values: Vec<Cell>) {
-        self.columns.insert(0, column);
-        for (row, value) in self.rows.iter_mut().zip(values) {
-            row.insert(0, value);
-        }
+    /// If the row has more or fewer values than the table has columns.
+    fn end(&mut self, extrapolated: bool, status: Status) {
+        self.flag(extrapolated);
+        self.words(status);
+        assert_eq!(self.open.len(), self.columns.len(), "a row of {} has one value per column", self.name);
+        self.rows.push(std::mem::take(&mut self.open));
     }
 }
 

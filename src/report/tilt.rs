@@ -10,7 +10,7 @@ use super::angles::{fixed, grid, or_dash, prose, rounded, signed};
 use super::conventions::room_words;
 use super::cut::target_words;
 use super::spread;
-use super::table::{Cell, Column, Table, column};
+use super::table::{Cell, Column, Rows, Table, column};
 
 /// Columns, without the two that end every table.
 pub const COLUMNS: [Column; 11] = [
@@ -27,55 +27,69 @@ pub const COLUMNS: [Column; 11] = [
     column("stage_turns", "", "turns of the tilt's screw from now, positive where the reading rises"),
 ];
 
-/// Rows of all solutions; with temperature or pump as the actuator its column leads.
+/// Columns where a given actuator is set: that of temperature or pump leads.
+#[must_use]
+pub fn columns(actuator: Option<Actuator>) -> Vec<Column> {
+    let lead = match actuator {
+        Some(Actuator::Temperature) => {
+            Some(column("crystal_temperature_degc", "degC", "setting of the temperature"))
+        }
+        Some(Actuator::Pump) => Some(column("pump_wavelength_nm", "nm", "setting of the pump")),
+        Some(Actuator::Tilt | Actuator::CrossTilt) | None => None,
+    };
+    lead.into_iter().chain(COLUMNS).collect()
+}
+
+/// Rows of all solutions as a table.
 #[must_use]
 pub fn table(setup: &Setup, actuator: Actuator, turns: &[Turn]) -> Table {
-    let mut table = Table::new("tilt", &COLUMNS);
+    let mut table = Table::new("tilt", &columns(Some(actuator)));
+    rows(setup, actuator, turns, &mut table);
+    table
+}
+
+/// A row for each solution, or one that says that there is none.
+pub fn rows(setup: &Setup, actuator: Actuator, turns: &[Turn], out: &mut impl Rows) {
     for (index, turn) in turns.iter().enumerate() {
-        let to = &turn.crystal.orientation;
-        let change = change(&setup.crystals[0], actuator, turn);
-        let stage = setup.stage.as_ref().filter(|_| actuator == Actuator::Tilt);
-        let reading = stage.and_then(|s| s.reading(to.tilt));
-        let measure = &turn.measure;
+        match actuator {
+            Actuator::Temperature => out.number(turn.crystal.temperature.degc()),
+            Actuator::Pump => out.number(turn.photons.pump.nm()),
+            Actuator::Tilt | Actuator::CrossTilt => {}
+        }
         let wavelengths = [turn.photons.pump, turn.photons.signal, turn.photons.idler];
-        table.push(
-            vec![
-                (index + 1).into(),
-                to.tilt.degrees().into(),
-                to.cross_tilt.degrees().into(),
-                change.map(Angle::degrees).into(),
-                turn.theta_inside.to_degrees().into(),
-                full_circle_deg(turn.phi_inside).into(),
-                measure.half_angle.map(f64::to_degrees).into(),
-                measure.crossing.map(f64::to_degrees).into(),
-                measure.separation.map(f64::to_degrees).into(),
-                reading.map(Angle::degrees).into(),
-                change.and_then(|c| stage.and_then(|s| s.turns(c))).into(),
-            ],
-            wavelengths.iter().any(|w| turn.crystal.extrapolates(*w)),
-            turn.status,
-        );
+        let extrapolated = wavelengths.iter().any(|w| turn.crystal.extrapolates(*w));
+        out.push(&row(setup, actuator, index, turn), extrapolated, turn.status);
     }
     if turns.is_empty() {
-        let mut blank = vec![Cell::Empty; COLUMNS.len()];
         let now = &setup.crystals[0].orientation;
+        if matches!(actuator, Actuator::Temperature | Actuator::Pump) {
+            out.empty();
+        }
+        let mut blank = vec![Cell::Empty; COLUMNS.len()];
         (blank[1], blank[2]) = (now.tilt.degrees().into(), now.cross_tilt.degrees().into());
-        table.push(blank, false, Status::NoPhaseMatching);
+        out.push(&blank, false, Status::NoPhaseMatching);
     }
-    match actuator {
-        Actuator::Temperature => {
-            let values = turns.iter().map(|t| Cell::from(t.crystal.temperature.degc()));
-            let values = values.chain([Cell::Empty]).collect();
-            table.lead(column("crystal_temperature_degc", "degC", "setting of the temperature"), values);
-        }
-        Actuator::Pump => {
-            let values = turns.iter().map(|t| Cell::from(t.photons.pump.nm()));
-            let values = values.chain([Cell::Empty]).collect();
-            table.lead(column("pump_wavelength_nm", "nm", "setting of the pump"), values);
-        }
-        Actuator::Tilt | Actuator::CrossTilt => {}
-    }
-    table
+}
+
+fn row(setup: &Setup, actuator: Actuator, index: usize, turn: &Turn) -> [Cell; COLUMNS.len()] {
+    let to = &turn.crystal.orientation;
+    let change = change(&setup.crystals[0], actuator, turn);
+    let stage = setup.stage.as_ref().filter(|_| actuator == Actuator::Tilt);
+    let reading = stage.and_then(|s| s.reading(to.tilt));
+    let measure = &turn.measure;
+    [
+        (index + 1).into(),
+        to.tilt.degrees().into(),
+        to.cross_tilt.degrees().into(),
+        change.map(Angle::degrees).into(),
+        turn.theta_inside.to_degrees().into(),
+        full_circle_deg(turn.phi_inside).into(),
+        measure.half_angle.map(f64::to_degrees).into(),
+        measure.crossing.map(f64::to_degrees).into(),
+        measure.separation.map(f64::to_degrees).into(),
+        reading.map(Angle::degrees).into(),
+        change.and_then(|c| stage.and_then(|s| s.turns(c))).into(),
+    ]
 }
 
 /// Change of the turn from where the mount stands; `None` where something else is set.

@@ -6,7 +6,7 @@ use crate::matching::{Emission, Opinion, Twin};
 
 use super::angles::{fixed, grid, rounded, signed};
 use super::spread;
-use super::table::{Cell, Column, Table, column};
+use super::table::{Cell, Column, Rows, Table, column};
 
 /// Columns, without the two that end every table.
 pub const COLUMNS: [Column; 11] = [
@@ -45,7 +45,7 @@ pub fn table(setup: &Setup, emission: &Emission, photon: Direction, twins: &[Twi
             pairing.as_ref().map(|p| p.mismatch * 1e-3).into(),
             Cell::from(pairing.as_ref().map(|p| p.phase_matching_factor(emission.length))),
         ];
-        table.push(cells, extrapolated, *status);
+        table.push(&cells, extrapolated, *status);
     }
     table
 }

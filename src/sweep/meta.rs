@@ -1,0 +1,126 @@
+//! What stands beside the rows of a sweep: which program made them, from which job, with which data, and what they mean.
+
+use std::path::{Path, PathBuf};
+
+use serde::Serialize;
+
+use super::Sweep;
+use crate::job::JobError;
+use crate::job::description::Description;
+
+/// Which part of how many, from 1.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub struct Slice {
+    /// This one, from 1.
+    pub part: u64,
+    /// Of so many.
+    pub of: u64,
+}
+
+impl Slice {
+    /// The whole sweep.
+    pub const WHOLE: Self = Self { part: 1, of: 1 };
+
+    /// Points of this part, of `count` in all: parts are contiguous and differ by at most one point.
+    #[must_use]
+    pub fn points(self, count: u64) -> std::ops::Range<u64> {
+        let border = |n: u64| (u128::from(count) * u128::from(n) / u128::from(self.of)) as u64;
+        border(self.part - 1)..border(self.part)
+    }
+
+    /// Name of the file that holds this part of `rows`: `rows.csv` itself, or `rows.003-of-040.csv`.
+    #[must_use]
+    pub fn file(self, rows: &Path) -> PathBuf {
+        if self.of == 1 {
+            return rows.into();
+        }
+        let width = self.of.to_string().len();
+        rows.with_extension(format!("{:0width$}-of-{}.csv", self.part, self.of))
+    }
+}
+
+#[derive(Serialize)]
+struct Meta<'a> {
+    version: &'static str,
+    report: &'static str,
+    points: u64,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    part: Option<Part>,
+    dataset: Vec<Source>,
+    column: Vec<ColumnMeta<'a>>,
+    job: &'a Description,
+}
+
+#[derive(Serialize)]
+struct Part {
+    number: u64,
+    of: u64,
+    first_point: u64,
+    end_point: u64,
+}
+
+#[derive(Serialize, PartialEq)]
+struct Source {
+    id: String,
+    citation: String,
+    known: String,
+    range: String,
+    temperature: String,
+}
+
+#[derive(Serialize)]
+struct ColumnMeta<'a> {
+    name: &'a str,
+    #[serde(skip_serializing_if = "str::is_empty")]
+    unit: &'a str,
+    meaning: &'a str,
+}
+
+/// The text of the file beside the rows of a slice: the same for the same job and version.
+///
+/// # Errors
+/// A job that cannot be read, which [`Sweep::new`] would have refused.
+pub fn meta(sweep: &Sweep<'_>, slice: Slice) -> Result<String, JobError> {
+    let points = slice.points(sweep.count());
+    let part = (slice.of > 1).then_some(Part {
+        number: slice.part,
+        of: slice.of,
+        first_point: points.start,
+        end_point: points.end,
+    });
+    let meta = Meta {
+        version: env!("CARGO_PKG_VERSION"),
+        report: sweep.report().name(),
+        points: sweep.count(),
+        part,
+        dataset: sources(sweep),
+        column: sweep
+            .columns()
+            .iter()
+            .map(|c| ColumnMeta { name: &c.name, unit: c.unit, meaning: c.meaning })
+            .collect(),
+        job: &sweep.setups.document().describe()?,
+    };
+    Ok(toml::to_string(&meta).expect("texts, numbers and tables are TOML"))
+}
+
+/// The data sets of all combinations of words, once each.
+fn sources(sweep: &Sweep<'_>) -> Vec<Source> {
+    let mut all = Vec::new();
+    for setup in sweep.setups.some_bases(&sweep.plan) {
+        for crystal in &setup.crystals {
+            let set = crystal.set();
+            let source = Source {
+                id: format!("{}:{}", crystal.material.id, set.id),
+                citation: set.file.citation.clone(),
+                known: set.file.known.to_string(),
+                range: format!("{} to {}", set.from, set.to),
+                temperature: set.temperature.to_string(),
+            };
+            if !all.contains(&source) {
+                all.push(source);
+            }
+        }
+    }
+    all
+}
