@@ -287,6 +287,11 @@ macro_rules! quantity {
             pub fn $show(self) -> f64 {
                 tidy(self.0 * $factor)
             }
+
+            /// The units it is read in, the most usual one first.
+            pub fn units() -> impl Iterator<Item = &'static str> {
+                $kind.units.iter().map(|unit| unit.name)
+            }
         }
 
         impl FromStr for $name {
@@ -361,6 +366,11 @@ impl Wavelength {
     #[must_use]
     pub fn from_nm(value: f64) -> Self {
         Self(value * 1e-9)
+    }
+
+    /// The units it is read in, the most usual one first.
+    pub fn units() -> impl Iterator<Item = &'static str> {
+        WAVELENGTH.units.iter().map(|unit| unit.name)
     }
 
     /// In metres.

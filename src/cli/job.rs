@@ -1,11 +1,14 @@
 //! `job`: writes out a job file with comments, or checks one.
 
 use std::path::PathBuf;
+use std::sync::atomic::AtomicBool;
+use std::time::{Duration, Instant};
 
 use clap::{Args as ClapArgs, Subcommand};
-use twincone::job::resolve;
-use twincone::job::setup::{Needs, SetupError};
-use twincone::job::{Document, template};
+use twincone::job::setup::{Needs, Setup, SetupError};
+use twincone::job::{Document, resolve, template};
+use twincone::material::Catalogue;
+use twincone::sweep::Sweep;
 
 use super::failure::Failure;
 use super::options::{ExperimentArgs, catalogue, name_of, read_text};
@@ -83,17 +86,13 @@ fn check(file: &std::path::Path, output: &OutputArgs) -> Result<Outcome, Failure
         true => failure,
         false => Failure { message: format!("{name}: {}", failure.message), ..failure },
     };
-    let setup =
-        resolve(&document, &catalogue(output, &document)?, Needs::ALL).map_err(|e| named(e.into()))?;
-    let points =
-        if setup.written.sweep.is_some() { "; its [sweep] is not read by this version" } else { ", 1 point" };
-    let mut text = format!(
-        "{name}: a valid job{points}
-  pump {}, {}
-",
-        setup.pump(),
-        setup.interaction
-    );
+    let catalogue = catalogue(output, &document)?;
+    let setup = described(&document, &catalogue).map_err(&named)?;
+    let sweep = match &setup.written.sweep {
+        Some(_) => sweep(&document, &catalogue, output).map_err(named)?,
+        None => "; without a [sweep] it is 1 point\n".into(),
+    };
+    let mut text = format!("{name}: a valid job{sweep}  pump {}, {}\n", setup.pump(), setup.interaction);
     for crystal in &setup.crystals {
         text.push_str(&format!(
             "  crystal {}: {}:{}, theta {:.3} deg, phi {} deg, {}, tilt {}, cross tilt {}, roll {}\n",
@@ -111,4 +110,52 @@ fn check(file: &std::path::Path, output: &OutputArgs) -> Result<Outcome, Failure
     let signals: Vec<String> = setup.signals().iter().map(|w| format!("{w:.3}")).collect();
     text.push_str(&format!("  signal {}\n", signals.join(", ")));
     output.plain(text)
+}
+
+/// The experiment; of a sweep, whose axes may hold what the job leaves open, that of some point.
+fn described(document: &Document, catalogue: &Catalogue) -> Result<Setup, Failure> {
+    if document.describe()?.sweep.is_some()
+        && let Some(setup) = Sweep::new(document, catalogue)?.first_setup()
+    {
+        return Ok(setup);
+    }
+    Ok(resolve(document, catalogue, Needs::ALL)?)
+}
+
+/// Points, rows and time of a sweep, from a few points that are tried.
+fn sweep(document: &Document, catalogue: &Catalogue, output: &OutputArgs) -> Result<String, Failure> {
+    const TRIED: u64 = 64;
+    const PATIENCE: Duration = Duration::from_millis(500);
+    let sweep = Sweep::new(document, catalogue)?;
+    let count = sweep.count();
+    let mut worker = sweep.worker();
+    let never = AtomicBool::new(false);
+    let started = Instant::now();
+    let (mut tried, mut rows) = (0, 0);
+    while tried < TRIED.min(count) && started.elapsed() < PATIENCE {
+        let point = (u128::from(count) * u128::from(tried) / u128::from(TRIED.min(count))) as u64;
+        let piece = worker.piece(point..point + 1, &never).unwrap_or_default();
+        rows += piece.bytes.iter().filter(|b| **b == b'\n').count() as u64;
+        tried += 1;
+    }
+    let threads = output
+        .threads
+        .map_or_else(|| std::thread::available_parallelism().map_or(1, usize::from), usize::from);
+    let seconds = started.elapsed().as_secs_f64() / tried as f64 * count as f64 / threads as f64;
+    let about = if tried < count { "about " } else { "" };
+    let rows = (rows as f64 / tried as f64 * count as f64).round();
+    Ok(format!(
+        "; report {}: {count} points, {about}{rows} rows, about {} on {threads} threads\n",
+        sweep.report().name(),
+        duration(seconds)
+    ))
+}
+
+fn duration(seconds: f64) -> String {
+    match seconds {
+        s if s < 1.0 => "a second".into(),
+        s if s < 120.0 => format!("{s:.0} s"),
+        s if s < 7200.0 => format!("{:.0} min", s / 60.0),
+        s => format!("{:.0} h", s / 3600.0),
+    }
 }

@@ -13,6 +13,7 @@ mod options;
 mod output;
 mod progress;
 mod run;
+mod schema;
 mod sweep_file;
 mod tilt;
 mod twin;
@@ -63,6 +64,8 @@ enum Command {
     Join(join::Args),
     /// Write out a commented job file, or check one
     Job(Box<job::Args>),
+    /// The JSON Schema of the job file, for editors
+    Schema,
     /// Shell completions
     Completions(completions::Args),
     /// The man page
@@ -112,6 +115,7 @@ pub fn run(typed: &Typed) -> Result<output::Outcome, Failure> {
         Command::Run(args) => run::run(args, out),
         Command::Join(args) => join::run(args, out),
         Command::Job(args) => job::run(args, out),
+        Command::Schema => schema::run(out),
         Command::Completions(args) => completions::run(args, Typed::command(), out),
         Command::Man => man::run(Typed::command(), out),
     }

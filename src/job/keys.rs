@@ -243,6 +243,22 @@ impl Holds {
         }
     }
 
+    /// The units that its quantities are read in; none for words.
+    #[must_use]
+    pub fn units(self) -> Vec<&'static str> {
+        match self {
+            Self::Angle => Angle::units().collect(),
+            Self::Length(_) => Length::units().collect(),
+            Self::Wavelength => Wavelength::units().collect(),
+            Self::Temperature => Temperature::units().collect(),
+            Self::Duration => Duration::units().collect(),
+            Self::Power => Power::units().collect(),
+            Self::Linewidth => Length::units().chain(Frequency::units()).collect(),
+            Self::Iris => Angle::units().chain(Length::units()).collect(),
+            Self::Word(_) | Self::Flag => Vec::new(),
+        }
+    }
+
     /// Whether values are numbers.
     #[must_use]
     pub fn is_quantity(self) -> bool {

@@ -160,7 +160,6 @@ fn unread_keys(setup: &Setup) -> Vec<&'static str> {
         ("collection", !written.collection.is_empty()),
         ("filter", !written.filter.is_empty()),
         ("compensator", !written.compensator.is_empty()),
-        ("sweep", written.sweep.is_some()),
     ];
     given.into_iter().filter(|(_, given)| *given).map(|(key, _)| key).collect()
 }

@@ -10,9 +10,11 @@ mod cut;
 mod index;
 mod job;
 mod materials;
+mod sweep;
 mod tilt;
 mod twin;
 
 mod bad_input;
+mod interrupted;
 mod output;
 mod robustness;

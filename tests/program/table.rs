@@ -12,7 +12,9 @@ pub struct Table {
 }
 
 /// Columns that hold words.
-const WORDS: [&str; 17] = [
+const WORDS: [&str; 19] = [
+    "crystal_material",
+    "crystal_dataset",
     "material",
     "dataset",
     "process",
