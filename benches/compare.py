@@ -1,0 +1,113 @@
+#!/usr/bin/env python3
+"""Sweeps the same tilts with twincone and with NumPy, one after the other, and says how many times faster one is.
+
+    cargo build --release
+    python3 benches/compare.py                       # a million tilts here, 50000 of them with NumPy
+    python3 benches/compare.py --points 20000 --numpy-points 20000
+
+twincone is timed as a whole process from start to exit; NumPy from its first tilt to its last byte, without the start of
+the interpreter and the imports. Both write their tables. For `both`, twincone runs twice and NumPy does one after the
+other. Before any number is printed the two tables are compared, a few thousand rows spread over the whole sweep.
+"""
+
+import argparse
+import csv
+import json
+import os
+import platform
+import subprocess
+import sys
+import tempfile
+import time
+from pathlib import Path
+
+HERE = Path(__file__).resolve().parent
+PROGRAM = HERE.parent / "target" / "release" / ("twincone.exe" if os.name == "nt" else "twincone")
+JOB = HERE / "million_tilts.toml"
+NUMPY = HERE / "rings_numpy.py"
+REPORTS = ["rings", "crossings"]
+COMPARED = 2000
+
+
+def run(command):
+    """Runs to the end; what it said goes with it where it fails."""
+    done = subprocess.run([str(word) for word in command], capture_output=True, text=True)
+    if done.returncode != 0:
+        raise SystemExit(f"{' '.join(map(str, command))}\nexit status {done.returncode}\n{done.stdout}{done.stderr}")
+    return done.stdout
+
+
+def program(options, report, out):
+    """Seconds from start to exit."""
+    axis = f"crystal.tilt=-1deg..4deg/{options.points}"
+    command = [options.program, "run", JOB, "--report", report, "--axis", axis, "-o", out]
+    start = time.perf_counter()
+    run([*command, "--threads", options.threads, "--quiet"])
+    return time.perf_counter() - start
+
+
+def numpy(points, report, out):
+    """Seconds as the script measures them."""
+    answer = run([sys.executable, NUMPY, "--points", points, "--report", report, "--out", out])
+    return json.loads(answer)["seconds"]
+
+
+def agree(table, points, folder):
+    """Compares rows spread over a table of the program with NumPy's; how far they are apart at most, deg."""
+    every = max(1, points // COMPARED)
+    thinned = folder / "thinned.csv"
+    last = -1
+    with open(table, newline="", encoding="utf-8") as rows, open(thinned, "w", newline="", encoding="utf-8") as few:
+        reader, writer = csv.reader(rows), csv.writer(few, lineterminator="\n")
+        writer.writerow(next(reader))
+        for row in reader:
+            last = int(row[0])
+            if last % every == 0:
+                writer.writerow(row)
+    if last != points - 1:
+        raise SystemExit(f"{table}: ends at point {last}, {points - 1} expected")
+    return json.loads(run([sys.executable, NUMPY, "--check", thinned]))["largest_difference"]["deg"]
+
+
+def main():
+    parser = argparse.ArgumentParser(description="Speed of twincone and of NumPy on the same sweep.")
+    parser.add_argument("--points", type=int, default=1_000_000, help="tilts for twincone")
+    parser.add_argument("--numpy-points", type=int, default=50_000, help="tilts for NumPy, over the same range")
+    parser.add_argument("--threads", type=int, default=2)
+    parser.add_argument("--program", type=Path, default=PROGRAM)
+    parser.add_argument("--json", action="store_true", help="for scripts")
+    options = parser.parse_args()
+    if not options.program.exists():
+        raise SystemExit(f"{options.program}: not there; `cargo build --release` makes it")
+
+    seconds, difference = {}, {}
+    with tempfile.TemporaryDirectory() as name:
+        folder = Path(name)
+        for report in REPORTS:
+            ours, theirs = folder / f"{report}.csv", folder / f"{report}-numpy.csv"
+            here = program(options, report, ours)
+            there = numpy(options.numpy_points, report, theirs)
+            difference[report] = agree(ours, options.points, folder)
+            seconds[report] = (here / options.points, there / options.numpy_points)
+            ours.unlink()
+    seconds["both"] = tuple(sum(seconds[report][i] for report in REPORTS) for i in (0, 1))
+
+    rates = {
+        report: {"twincone_per_s": 1 / here, "numpy_per_s": 1 / there, "ratio": there / here}
+        for report, (here, there) in seconds.items()
+    }
+    if options.json:
+        threads = {"threads": options.threads, "numpy_processes": 1, "points": options.points}
+        print(json.dumps({**threads, "numpy_points": options.numpy_points, "largest_difference_deg": difference, **rates}))
+        return
+    print(f"{options.points} tilts on {options.threads} threads; NumPy: {options.numpy_points} in one process")
+    print(f"{platform.processor() or platform.machine()}, {os.cpu_count()} cores, Python {platform.python_version()}")
+    apart = ", ".join(f"{report} {degrees:.1e} deg" for report, degrees in difference.items())
+    print(f"largest difference between the two: {apart}")
+    print(f"{'report':<10} {'twincone/s':>12} {'NumPy/s':>12} {'ratio':>8}")
+    for report, rate in rates.items():
+        print(f"{report:<10} {rate['twincone_per_s']:>12.0f} {rate['numpy_per_s']:>12.0f} {rate['ratio']:>8.1f}")
+
+
+if __name__ == "__main__":
+    main()
