@@ -5,9 +5,9 @@
     python3 benches/compare.py                       # a million tilts here, 50000 of them with NumPy
     python3 benches/compare.py --points 20000 --numpy-points 20000
 
-twincone is timed as a whole process from start to exit; NumPy from its first tilt to its last byte, without the start of
-the interpreter and the imports. Both write their tables. For `both`, twincone runs twice and NumPy does one after the
-other. Before any number is printed the two tables are compared, a few thousand rows spread over the whole sweep.
+twincone is timed as a whole process from start to exit; NumPy from its first tilt to its last byte, without the start
+of the interpreter and the imports. Both write their tables. For `both`, the times of the two reports are added up. Before
+any number is printed the tables are compared, a few thousand rows spread over the whole sweep.
 """
 
 import argparse
@@ -97,8 +97,9 @@ def main():
         for report, (here, there) in seconds.items()
     }
     if options.json:
-        threads = {"threads": options.threads, "numpy_processes": 1, "points": options.points}
-        print(json.dumps({**threads, "numpy_points": options.numpy_points, "largest_difference_deg": difference, **rates}))
+        points = {"points": options.points, "numpy_points": options.numpy_points}
+        workers = {"threads": options.threads, "numpy_processes": 1}
+        print(json.dumps({**points, **workers, "largest_difference_deg": difference, **rates}))
         return
     print(f"{options.points} tilts on {options.threads} threads; NumPy: {options.numpy_points} in one process")
     print(f"{platform.processor() or platform.machine()}, {os.cpu_count()} cores, Python {platform.python_version()}")

@@ -431,7 +431,8 @@ def crossing(mount):
         step_u = (one * two_v - two * one_v) / determinant
         step_v = (two * one_u - one * two_u) / determinant
         u, v = u - step_u, v - step_v
-        if max(np.abs(step_u).max(), np.abs(step_v).max()) < 1e-9:
+        # the gradients, for the angle, are those before the step
+        if max(np.abs(step_u).max(), np.abs(step_v).max()) < 1e-13:
             break
 
     def direction(u, v):
