@@ -6,7 +6,7 @@
     python3 benches/compare.py --points 20000 --numpy-points 20000
 
 twincone is timed as a whole process from start to exit; NumPy from its first tilt to its last byte, without the start
-of the interpreter and the imports. Both write their tables. For `both`, the times of the two reports are added up. Before
+of the interpreter and the imports. Both write their tables. For `both`, the times of the two reports are added. Before
 any number is printed the tables are compared, a few thousand rows spread over the whole sweep.
 """
 
