@@ -30,7 +30,8 @@ fn main() -> Result<(), Box<dyn Error>> {
             target: Target::Crossing(3f64.to_radians()),
             actuator: Some(Actuator::Tilt),
         })?;
-        let degrees = |radians: Option<f64>| radians.map_or(String::new(), |a| format!("{:.3}", a.to_degrees()));
+        let degrees =
+            |radians: Option<f64>| radians.map_or(String::new(), |a| format!("{:.3}", a.to_degrees()));
         // of several turns the first is the nearest to where the mount stands
         let turn = tuned.turns.first().map(|turn| turn.setting);
         println!("{},{},{}", set.id, degrees(tuned.now.crossing), degrees(turn));
