@@ -249,6 +249,9 @@ const RIVALS: [(&str, &[&str], &[&str]); 8] = [
 const CUT_TARGETS: [&str; 5] = ["crossing", "half-angle", "separation", "collinear", "beamlike"];
 
 fn drop_rivals(old: &mut DeTable<'_>, new: &DeTable<'_>, section: &str) {
+    if section == "crystal" && new.contains_key("dataset") {
+        drop_set_of_material(old);
+    }
     for (of, chosen, dropped) in RIVALS {
         if of == section && chosen.iter().any(|key| new.contains_key(*key)) {
             for key in dropped {
@@ -256,6 +259,17 @@ fn drop_rivals(old: &mut DeTable<'_>, new: &DeTable<'_>, section: &str) {
             }
         }
     }
+}
+
+/// A new data set drops the one that was named after the material's colon.
+fn drop_set_of_material(crystal: &mut DeTable<'_>) {
+    let Some(material) = crystal.get_mut("material") else { return };
+    let Some(text) = material.get_ref().as_str() else { return };
+    // a path may hold colons of its own
+    let path = text.find(".toml").map_or(0, |at| at + ".toml".len());
+    let Some(colon) = text[path..].find(':') else { return };
+    let bare = text[..path + colon].to_string();
+    *material.get_mut() = DeValue::String(bare.into());
 }
 
 fn is_tables(items: &DeArray<'_>) -> bool {
