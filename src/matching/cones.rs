@@ -2,10 +2,11 @@
 
 use super::Status;
 use super::crossing::{Contact, Crossing, GapKind, Meeting, Miss, Traced, meet, miss};
+use super::curve::{Curve, RingFault, curves};
 use super::emission::{Emission, Photons, Triplet};
 use super::interaction::{Interaction, Process, Roles};
 use super::mismatch::Mismatch;
-use super::ring::{Curve, Ring, RingFault, curves, rings};
+use super::ring::{Ring, rings};
 use super::tuning::{Actuator, nearest_touch, tuning_turn};
 use crate::frame::Direction;
 use crate::material::MaterialError;

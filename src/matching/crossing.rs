@@ -5,8 +5,8 @@ use std::f64::consts::{FRAC_PI_2, TAU};
 
 use nalgebra::{Matrix2, Vector2, Vector3};
 
+use super::curve::{Curve, SAMPLES};
 use super::mismatch::Mismatch;
-use super::ring::{Curve, SAMPLES};
 use super::root::bracketed;
 use crate::frame::{Direction, Lab};
 
@@ -170,7 +170,7 @@ fn sample(first: Traced<'_>, other: &Mismatch) -> Option<[Along; SAMPLES + 1]> {
     let mut samples = [Along { value: 0.0, slope: 0.0, scale: 1.0 }; SAMPLES + 1];
     let count = first.curve.count();
     for (j, slot) in samples.iter_mut().enumerate().take(count) {
-        let (d, tangent) = first.curve.sample(first.mismatch, j)?;
+        let (d, tangent) = first.curve.sample(j);
         *slot = Along::at(other, d, tangent)?;
     }
     samples[count] = samples[0];

@@ -10,4 +10,5 @@ pub use along::{Along, along_axes, along_direction};
 pub use crystal::Crystal;
 pub use index::{IndexRow, index_rows, missing};
 pub use medium::{Medium, Polarization, Wave};
+pub(crate) use surface::Quadric;
 pub use surface::{Curvature, Normal, Sheet, Surface};
