@@ -1,26 +1,19 @@
 //! Closed curves of phase-matched directions, traced about an axis inside them by azimuth: on each meridian the polar
 //! angle psi where Delta_k = 0.
 //!
-//! A meridian is followed by t = tan(psi/2), in which directions are rational. One Newton step is taken on all
-//! meridians at a time until none moves; what does not settle is searched for inside a bracket, from the neighbour.
+//! One Newton step is taken on all meridians at a time until none moves; what does not settle is searched for inside a
+//! bracket, from the neighbour.
 
 use std::f64::consts::TAU;
-use std::sync::LazyLock;
 
 use nalgebra::Vector3;
 
 use super::Status;
 use super::count;
+use super::meridian::{FEW_SAMPLES, Hit, Meridians, SAMPLES, azimuths, cos_sin, polar, settle};
 use super::mismatch::{Field, Mismatch, Stationary};
 use super::seed::seeds;
 use crate::frame::{Direction, Lab, Tangential};
-
-/// Samples on a ring, equally spaced in azimuth about its axis.
-pub const SAMPLES: usize = 72;
-
-/// Samples on a convex curve where a ring is not known yet, or is only asked where another meets it: between them slopes
-/// at both ends tell whether the other ring comes and goes.
-pub(super) const FEW_SAMPLES: usize = SAMPLES / 3;
 
 /// Cosine of the search region's half angle about the pump, 60 deg.
 pub(super) const REGION: f64 = 0.5;
@@ -53,198 +46,6 @@ pub struct Curve {
     /// (d psi/d phi)/sin psi there: the tangent of the angle between the curve and a circle about the axis.
     turns: [f64; SAMPLES],
     count: usize,
-}
-
-/// Cosines and sines of equally spaced azimuths.
-struct Azimuths<const N: usize> {
-    cos: [f64; N],
-    sin: [f64; N],
-}
-
-impl<const N: usize> Azimuths<N> {
-    fn new() -> Self {
-        let azimuth = |j: usize| TAU * j as f64 / N as f64;
-        Self {
-            cos: std::array::from_fn(|j| azimuth(j).cos()),
-            sin: std::array::from_fn(|j| azimuth(j).sin()),
-        }
-    }
-}
-
-static ALL: LazyLock<Azimuths<SAMPLES>> = LazyLock::new(Azimuths::new);
-static FEW: LazyLock<Azimuths<FEW_SAMPLES>> = LazyLock::new(Azimuths::new);
-
-/// Cosines and sines of `count` azimuths, [`SAMPLES`] or [`FEW_SAMPLES`].
-fn azimuths(count: usize) -> (&'static [f64], &'static [f64]) {
-    if count == SAMPLES { (&ALL.cos, &ALL.sin) } else { (&FEW.cos, &FEW.sin) }
-}
-
-/// Axis and two directions across it: polar coordinates (psi, phi) of directions.
-#[derive(Debug, Clone, Copy)]
-pub(super) struct Meridians {
-    pub axis: Vector3<f64>,
-    pub across: [Vector3<f64>; 2],
-}
-
-impl Meridians {
-    /// Azimuth 0 lies towards lab +x as seen from the axis, 90 deg towards +y.
-    fn about(axis: Vector3<f64>) -> Self {
-        let first = (Vector3::x() - axis * axis.x).normalize();
-        Self { axis, across: [first, axis.cross(&first)] }
-    }
-
-    /// As the face of a crystal sees them.
-    fn on_face(&self, mismatch: &Mismatch) -> Fan {
-        let [first, second] = &self.across;
-        Fan {
-            axis: mismatch.on_face(&self.axis),
-            across: [mismatch.on_face(first), mismatch.on_face(second)],
-        }
-    }
-
-    fn point(&self, t: f64, (cos, sin): (f64, f64)) -> Vector3<f64> {
-        let (along, out) = polar(t);
-        self.axis * along + (self.across[0] * cos + self.across[1] * sin) * out
-    }
-}
-
-/// cos psi and sin psi of t = tan(psi/2).
-#[inline(always)]
-fn polar(t: f64) -> (f64, f64) {
-    let w = 2.0 / (1.0 + t * t);
-    (w - 1.0, t * w)
-}
-
-/// Meridians on a face: tangential wave vectors of the signal (rad/m) and the component along the normal.
-#[derive(Debug, Clone, Copy)]
-struct Fan {
-    axis: Vector3<f64>,
-    across: [Vector3<f64>; 2],
-}
-
-/// A place on a meridian.
-struct Place {
-    q: Tangential,
-    /// dq/dpsi
-    out: Tangential,
-    /// dq/dphi divided by sin psi
-    round: Tangential,
-    sin: f64,
-    /// Component of the direction along the exit normal.
-    forward: f64,
-}
-
-impl Fan {
-    #[inline(always)]
-    fn place(&self, t: f64, (cos, sin): (f64, f64)) -> Place {
-        let ([a, b], axis) = (&self.across, &self.axis);
-        let (along, out) = polar(t);
-        // the direction across the axis, towards the azimuth
-        let (u, v, w) = (a.x * cos + b.x * sin, a.y * cos + b.y * sin, a.z * cos + b.z * sin);
-        Place {
-            q: Tangential { u: axis.x * along + u * out, v: axis.y * along + v * out },
-            out: Tangential { u: u * along - axis.x * out, v: v * along - axis.y * out },
-            round: Tangential { u: b.x * cos - a.x * sin, v: b.y * cos - a.y * sin },
-            sin: out,
-            forward: axis.z * along + w * out,
-        }
-    }
-
-    /// One step towards Delta_k = `level` on each meridian, where Delta_k = `middle` on the axis. Steps are relative,
-    /// and not a number where the way out does not lead upwards.
-    #[inline(always)]
-    fn step(&self, field: &impl Field, [level, middle]: [f64; 2], curve: Advance<'_>) {
-        let count = curve.t.len();
-        let (cos, sin) = azimuths(count);
-        let (cos, sin, turns, steps) =
-            (&cos[..count], &sin[..count], &mut curve.turns[..count], &mut curve.steps[..count]);
-        for j in 0..count {
-            let t = curve.t[j];
-            let place = self.place(t, (cos[j], sin[j]));
-            let here = field.sample(place.q);
-            let rise = here.slope[0] * place.out.u + here.slope[1] * place.out.v;
-            let swing = here.slope[0] * place.round.u + here.slope[1] * place.round.v;
-            // t f' = sin psi df/dpsi
-            let inverse = 1.0 / (rise * place.sin);
-            // Newton with the bend of the parabola through the value on the axis, t -> t - (f/f')(1 + f f''/(2 f'^2)):
-            // with y = f/(t f') and y_0 = (f(0) - f)/(t f'),  f f''/(2 f'^2) = y (1 + y_0)
-            let y = (here.value - level) * inverse;
-            let y0 = (middle - here.value) * inverse;
-            let step = y * (1.0 + y * (1.0 + y0));
-            let upwards = rise > 0.0 && place.forward > 0.0;
-            steps[j] = if upwards { step } else { f64::NAN };
-            curve.t[j] = t - t * step;
-            // Delta_k stays: psi' = -(dDelta_k/dphi)/(dDelta_k/dpsi)
-            turns[j] = -swing * place.sin * inverse;
-        }
-        count::add(count);
-    }
-}
-
-/// What [`Fan::step`] moves.
-struct Advance<'a> {
-    t: &'a mut [f64],
-    turns: &'a mut [f64],
-    steps: &'a mut [f64],
-}
-
-/// Where a meridian meets Delta_k = level.
-#[derive(Debug, Clone, Copy)]
-enum Hit {
-    At {
-        t: f64,
-        turn: f64,
-    },
-    /// At this t the exit face, or the angle at which the partner is evanescent, comes first.
-    Face(f64),
-    Lost,
-}
-
-impl Mismatch {
-    /// Where a meridian meets Delta_k = `level`, from a guess; Delta_k must be below it at psi = 0.
-    fn meet(&self, fan: &Fan, azimuth: (f64, f64), level: f64, guess: f64) -> Hit {
-        const STEPS: usize = 80;
-        let (mut low, mut high) = (0.0, f64::INFINITY);
-        let mut t = if guess.is_finite() && guess > 0.0 { guess } else { 1e-3 };
-        let (mut blocked, mut turn) = (false, 0.0);
-        for _ in 0..STEPS {
-            let place = fan.place(t, azimuth);
-            let mut next = f64::NAN;
-            match (place.forward > 0.0).then(|| self.at(place.q)).flatten() {
-                Some(here) => {
-                    let value = here.value - level;
-                    if value >= 0.0 {
-                        (high, blocked) = (t, false);
-                    } else {
-                        low = t;
-                    }
-                    let rise = here.slope[0] * place.out.u + here.slope[1] * place.out.v;
-                    turn = -(here.slope[0] * place.round.u + here.slope[1] * place.round.v) / rise;
-                    // dpsi/dt = sin psi/t
-                    next = t - value * t / (rise * place.sin);
-                    // Newton squares the relative error: after a step this small the next would be below rounding
-                    if (next - t).abs() <= 1e-8 * t {
-                        return Hit::At { t: next, turn };
-                    }
-                }
-                None => (high, blocked) = (t, true),
-            }
-            if !(next > low && next < high) {
-                next = if high.is_finite() { 0.5 * (low + high) } else { 2.0 * t };
-            }
-            if (next - t).abs() <= 2.0 * f64::EPSILON * t {
-                return if blocked { Hit::Face(high) } else { Hit::At { t: next, turn } };
-            }
-            t = next;
-        }
-        if blocked {
-            Hit::Face(high)
-        } else if high - low < 1e-9 {
-            Hit::At { t, turn }
-        } else {
-            Hit::Lost
-        }
-    }
 }
 
 /// The curves of all rings, each traced about the direction where its mismatch is least: all that crossings need.
@@ -460,6 +261,22 @@ impl Curve {
         }
     }
 
+    /// Direction at an azimuth, by interpolation between samples.
+    pub(super) fn between_samples(&self, phi: f64) -> Vector3<f64> {
+        self.frame.point(self.between(phi), cos_sin(phi))
+    }
+
+    /// Azimuth of a direction about the axis, in [0, 2 pi), and the sine of its angle to the axis.
+    pub(super) fn azimuth_of(&self, d: &Vector3<f64>) -> (f64, f64) {
+        let [x, y] = self.frame.across.map(|across| across.dot(d));
+        (y.atan2(x).rem_euclid(TAU), x.hypot(y))
+    }
+
+    /// Sine of the first sample's angle to the axis.
+    pub(super) fn size(&self) -> f64 {
+        polar(self.samples[0]).1
+    }
+
     /// tan(psi/2) at an azimuth between samples, by interpolation.
     fn between(&self, phi: f64) -> f64 {
         let place = (phi / TAU).rem_euclid(1.0) * self.count as f64;
@@ -480,10 +297,37 @@ impl Curve {
         Some((self.frame.point(t, cos_sin(phi)), self.tangent(t, turn, cos_sin(phi))))
     }
 
-    /// Point and tangent at a sample.
-    pub(super) fn sample(&self, j: usize) -> (Vector3<f64>, Vector3<f64>) {
-        let j = j % self.count;
-        (self.vector(j), self.tangent(self.samples[j], self.turns[j], self.azimuth_cos_sin(j)))
+    /// What another mismatch is at the samples.
+    pub(super) fn survey(&self, other: &Mismatch) -> [Along; SAMPLES] {
+        let mut all = [Along::default(); SAMPLES];
+        match other.quadrics() {
+            Some(quadrics) => self.look(&quadrics, other, &mut all),
+            None => self.look(other, other, &mut all),
+        }
+        all
+    }
+
+    #[inline(always)]
+    fn look(&self, field: &impl Field, other: &Mismatch, all: &mut [Along; SAMPLES]) {
+        let fan = self.frame.on_face(other);
+        let (cos, sin) = azimuths(self.count);
+        let square = other.k0_signal() * other.k0_signal();
+        for (j, slot) in all[..self.count].iter_mut().enumerate() {
+            let place = fan.place(self.samples[j], (cos[j], sin[j]));
+            let here = field.sample(place.q);
+            let [gu, gv] = here.slope;
+            let swing = gu * place.round.u + gv * place.round.v;
+            let rise = gu * place.out.u + gv * place.out.v;
+            // the gradient k0 (g_u u + g_v v) less its part along the direction, d.gradient = g.q
+            let inward = gu * place.q.u + gv * place.q.v;
+            let across = square * (gu * gu + gv * gv) - inward * inward;
+            *slot = Along {
+                value: if place.forward > 0.0 { here.value } else { f64::NAN },
+                slope: (swing + self.turns[j] * rise) * place.sin,
+                scale: across.sqrt(),
+            };
+        }
+        count::add(self.count);
     }
 
     /// d point/d phi = sin psi (round + turn d point/d psi).
@@ -529,6 +373,24 @@ impl Curve {
     }
 }
 
+/// Another mismatch along a curve.
+#[derive(Debug, Clone, Copy, Default)]
+pub(super) struct Along {
+    /// Delta_k of the other process, rad/m: negative inside the other ring.
+    pub value: f64,
+    /// Its change per radian of azimuth.
+    pub slope: f64,
+    /// Size of its gradient, rad/m per radian of direction: near the other ring, value/scale is the angle off it.
+    pub scale: f64,
+}
+
+impl Along {
+    /// Angle off the other ring, where that is near.
+    pub fn off(&self) -> f64 {
+        self.value / self.scale.max(f64::MIN_POSITIVE)
+    }
+}
+
 /// Where meridians meet another level than a curve's.
 pub(super) struct Level {
     t: [f64; SAMPLES],
@@ -542,47 +404,8 @@ impl Level {
     }
 }
 
-/// Steps on all meridians until none moves by more than `tolerance`; false where that does not come about at once.
-fn settle(
-    mismatch: &Mismatch,
-    fan: &Fan,
-    level: f64,
-    t: &mut [f64],
-    turns: &mut [f64],
-    tolerance: f64,
-) -> bool {
-    const STEPS: usize = 8;
-    // relative steps that need a bracket
-    const TOO_FAR: f64 = 0.5;
-    let axis = Tangential { u: fan.axis.x, v: fan.axis.y };
-    let Some(middle) = mismatch.at(axis).map(|at| at.value) else { return false };
-    let mut steps = [0.0; SAMPLES];
-    let steps = &mut steps[..t.len()];
-    for _ in 0..STEPS {
-        let advance = Advance { t: &mut *t, turns: &mut *turns, steps: &mut *steps };
-        match mismatch.quadrics() {
-            Some(quadrics) => fan.step(&quadrics, [level, middle], advance),
-            None => fan.step(mismatch, [level, middle], advance),
-        }
-        // written so that what is not a number is neither
-        let within = |limit: f64| steps.iter().all(|step| step.abs() <= limit);
-        if within(tolerance) {
-            return t.iter().all(|t| *t > 0.0);
-        }
-        if !within(TOO_FAR) {
-            return false;
-        }
-    }
-    false
-}
-
 /// Cubic through values and slopes [f, f'] at both ends of a step, at a share of it.
-fn cubic([[a, da], [b, db]]: [[f64; 2]; 2], step: f64, x: f64) -> f64 {
+pub(super) fn cubic([[a, da], [b, db]]: [[f64; 2]; 2], step: f64, x: f64) -> f64 {
     let y = 1.0 - x;
     a * y * y * (1.0 + 2.0 * x) + b * x * x * (1.0 + 2.0 * y) + step * x * y * (da * y - db * x)
-}
-
-fn cos_sin(phi: f64) -> (f64, f64) {
-    let (sin, cos) = phi.sin_cos();
-    (cos, sin)
 }

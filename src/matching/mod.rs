@@ -9,6 +9,7 @@ mod cut;
 mod emission;
 mod fit;
 mod interaction;
+mod meridian;
 mod mismatch;
 mod partner;
 mod rig;
@@ -24,13 +25,14 @@ pub use cones::{Cones, ConesError, CrossingRow, HistoryName, Landing, RingRow, W
 #[cfg(feature = "count")]
 pub use count::evaluations;
 pub use crossing::{Contact, Crossing, GapKind, Meeting, Miss, Traced, meet, miss};
-pub use curve::{Curve, RingFault, SAMPLES, curves};
+pub use curve::{Curve, RingFault, curves};
 pub use cut::{
     Brightness, CutSolution, Design, Find, Plane, Shortfall, alternatives, best_phi, brightness, design,
     shortfall, unmatched,
 };
 pub use emission::{Emission, Media, Photons, Triplet};
 pub use interaction::{Interaction, Process, ProcessError, Roles};
+pub use meridian::SAMPLES;
 pub use mismatch::{Mismatch, Sample};
 pub use partner::{Pairing, Twin, phase_matching_factor, twins};
 pub use ring::{Ring, half_angle, rings};

@@ -9,8 +9,9 @@ use std::f64::consts::TAU;
 use nalgebra::{Vector2, Vector3};
 
 use super::Status;
-use super::curve::{Curve, FEW_SAMPLES, FINE, ROUGH, RingFault, SAMPLES, all};
+use super::curve::{Curve, FINE, ROUGH, RingFault, all};
 use super::fit;
+use super::meridian::{FEW_SAMPLES, SAMPLES};
 use super::mismatch::Mismatch;
 use super::partner::HALF_MAXIMUM;
 use super::seed::seeds;
