@@ -151,37 +151,43 @@ impl Curve {
         let Meridians { axis: old, across: [first, second] } = &self.frame;
         self.frame = Meridians::about((first * axis.x + second * axis.y + old * axis.z).normalize());
         let (cos, sin) = azimuths(self.count);
-        for j in 0..self.count {
+        for (j, t) in self.samples[..self.count].iter_mut().enumerate() {
             // the old axis as seen from the new one: along the meridian, and across it
             let along = -(axis.x * cos[j] + axis.y * sin[j]);
             let across = axis.x * sin[j] - axis.y * cos[j];
-            let t = self.samples[j];
-            let (_, radius) = polar(t);
-            // the point seen here was seen at phi - across/radius, and sqrt(radius^2 - across^2) away
-            let turned = t * (1.0 - self.turns[j] * across / radius);
-            self.samples[j] = turned + (along - 0.5 * across * across / radius) * t / radius;
+            // 1/sin psi and dt/dpsi
+            let rate = 0.5 * (1.0 + *t * *t);
+            let inverse = rate / *t;
+            // the point seen here was seen at phi - across/sin psi, and sqrt(sin^2 psi - across^2) away
+            let turned = *t * (1.0 - self.turns[j] * across * inverse);
+            *t = turned + (along - 0.5 * across * across * inverse) * rate;
         }
         self.trace(mismatch, tolerance)
     }
 
-    /// Three samples for each one, by cubic interpolation, then traced.
+    /// Three samples for each one, by interpolation, then traced.
     pub(super) fn refined(&mut self, mismatch: &Mismatch) -> Result<(), RingFault> {
-        const STEP: f64 = TAU / FEW_SAMPLES as f64;
-        let (few, turns) = (self.samples, self.turns);
+        // Lagrange's weights of eight neighbours at a third of the way between the fourth and the fifth; those at two
+        // thirds are the same from behind
+        const WEIGHTS: [f64; 8] = weights(1.0 / 3.0);
+        let few = self.samples;
+        let around = |j: usize, k: usize| few[(j + FEW_SAMPLES + k - 3) % FEW_SAMPLES];
         self.count = SAMPLES;
         for j in 0..FEW_SAMPLES {
-            let next = (j + 1) % FEW_SAMPLES;
-            let ends = [[few[j], few[j] * turns[j]], [few[next], few[next] * turns[next]]];
             self.samples[3 * j] = few[j];
-            self.samples[3 * j + 1] = cubic(ends, STEP, 1.0 / 3.0);
-            self.samples[3 * j + 2] = cubic(ends, STEP, 2.0 / 3.0);
+            self.samples[3 * j + 1] = (0..8).map(|k| WEIGHTS[k] * around(j, k)).sum();
+            self.samples[3 * j + 2] = (0..8).map(|k| WEIGHTS[7 - k] * around(j, k)).sum();
         }
         self.trace(mismatch, FINE)
     }
 
     /// The curve, if all of it lies in the search region.
     pub(super) fn within_region(self) -> Result<Self, RingFault> {
-        let outside = (0..self.count).any(|j| self.vector(j).z < REGION);
+        // cos(theta + psi), with the axis at theta and the largest psi, bounds them all
+        let (along, out) = polar(self.half_tangents().iter().copied().fold(0.0, f64::max));
+        let axis = &self.frame.axis;
+        let far = axis.z * along - axis.x.hypot(axis.y) * out < REGION;
+        let outside = far && (0..self.count).any(|j| self.vector(j).z < REGION);
         if outside { Err(RingFault::new(Status::OpenRing)) } else { Ok(self) }
     }
 
@@ -402,6 +408,23 @@ impl Level {
     pub fn half_tangents(&self) -> &[f64] {
         &self.t[..self.count]
     }
+}
+
+/// Weights of values at -3, -2, ... 4 in the polynomial through them, at x.
+const fn weights(x: f64) -> [f64; 8] {
+    let mut all = [1.0; 8];
+    let mut k = 0;
+    while k < 8 {
+        let mut m = 0;
+        while m < 8 {
+            if m != k {
+                all[k] *= (x - (m as f64 - 3.0)) / (k as f64 - m as f64);
+            }
+            m += 1;
+        }
+        k += 1;
+    }
+    all
 }
 
 /// Cubic through values and slopes [f, f'] at both ends of a step, at a share of it.

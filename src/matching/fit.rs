@@ -2,75 +2,48 @@
 
 use nalgebra::{Matrix3, SymmetricEigen, Vector2, Vector3};
 
-/// Normal of the plane that fits points best, on the side of `towards`: smallest eigenvector of their covariance.
-pub(super) fn normal(
-    points: impl Iterator<Item = Vector3<f64>> + Clone,
-    towards: &Vector3<f64>,
-) -> Vector3<f64> {
-    let mut count = 0.0;
-    let mut mean = Vector3::zeros();
-    for point in points.clone() {
-        count += 1.0;
-        mean += point;
+/// Normal of the plane that fits points best, on the side of `towards`: smallest eigenvector of their covariance. The
+/// points should lie about the origin, or differences lose digits.
+pub(super) fn normal(points: impl Iterator<Item = Vector3<f64>>, towards: &Vector3<f64>) -> Vector3<f64> {
+    let (mut n, mut x, mut y, mut z) = (0.0, 0.0, 0.0, 0.0);
+    let (mut xx, mut xy, mut xz, mut yy, mut yz, mut zz) = (0.0, 0.0, 0.0, 0.0, 0.0, 0.0);
+    for d in points {
+        n += 1.0;
+        (x, y, z) = (x + d.x, y + d.y, z + d.z);
+        (xx, xy, xz) = (xx + d.x * d.x, xy + d.x * d.y, xz + d.x * d.z);
+        (yy, yz, zz) = (yy + d.y * d.y, yz + d.y * d.z, zz + d.z * d.z);
     }
-    mean /= count;
-    let mut c = Covariance::default();
-    points.for_each(|point| c.add(&(point - mean)));
-    c.smallest(towards)
+    // sum of (d - mean)(d - mean)^T
+    let (mx, my, mz) = (x / n, y / n, z / n);
+    let (xx, xy, xz) = (xx - x * mx, xy - x * my, xz - x * mz);
+    let (yy, yz, zz) = (yy - y * my, yz - y * mz, zz - z * mz);
+    smallest(&Matrix3::new(xx, xy, xz, xy, yy, yz, xz, yz, zz), towards)
 }
 
-/// Sum of x x^T.
-#[derive(Default)]
-struct Covariance {
-    xx: f64,
-    xy: f64,
-    xz: f64,
-    yy: f64,
-    yz: f64,
-    zz: f64,
-}
-
-impl Covariance {
-    #[inline]
-    fn add(&mut self, d: &Vector3<f64>) {
-        self.xx += d.x * d.x;
-        self.xy += d.x * d.y;
-        self.xz += d.x * d.z;
-        self.yy += d.y * d.y;
-        self.yz += d.y * d.z;
-        self.zz += d.z * d.z;
-    }
-
-    /// The smallest eigenvector is the largest of the adjugate, whose eigenvalues are products of two: where points lie
-    /// near a plane its powers converge at once.
-    fn smallest(&self, towards: &Vector3<f64>) -> Vector3<f64> {
-        const STEPS: usize = 30;
-        let Self { xx, xy, xz, yy, yz, zz } = *self;
-        let adjugate = Matrix3::new(
-            yy * zz - yz * yz,
-            xz * yz - xy * zz,
-            xy * yz - xz * yy,
-            xz * yz - xy * zz,
-            xx * zz - xz * xz,
-            xy * xz - xx * yz,
-            xy * yz - xz * yy,
-            xy * xz - xx * yz,
-            xx * yy - xy * xy,
-        );
-        let mut axis = *towards;
-        for _ in 0..STEPS {
-            let Some(next) = (adjugate * axis).try_normalize(0.0) else { break };
-            let moved = (next - axis).norm_squared();
-            axis = next;
-            if moved <= 1e-32 {
-                return axis;
-            }
+/// The eigenvector of the smallest eigenvalue is that of the largest of the adjugate, whose eigenvalues are products of
+/// two: where points lie near a plane its powers converge at once.
+fn smallest(matrix: &Matrix3<f64>, towards: &Vector3<f64>) -> Vector3<f64> {
+    const STEPS: usize = 20;
+    let column = |i: usize| matrix.fixed_view::<3, 1>(0, i).into_owned();
+    let [a, b, c] = [0, 1, 2].map(column);
+    let adjugate = Matrix3::from_columns(&[b.cross(&c), c.cross(&a), a.cross(&b)]);
+    let mut axis = *towards;
+    for _ in 0..STEPS {
+        let next = adjugate * (adjugate * axis);
+        let size = next.norm();
+        if size == 0.0 {
+            break;
         }
-        let matrix = Matrix3::new(xx, xy, xz, xy, yy, yz, xz, yz, zz);
-        let eigen = SymmetricEigen::new(matrix);
-        let axis = eigen.eigenvectors.column(eigen.eigenvalues.imin()).normalize();
-        if axis.dot(towards) < 0.0 { -axis } else { axis }
+        let next = next / size;
+        let moved = (next - axis).norm_squared();
+        axis = next;
+        if moved <= 1e-32 {
+            return axis;
+        }
     }
+    let eigen = SymmetricEigen::new(*matrix);
+    let axis = eigen.eigenvectors.column(eigen.eigenvalues.imin()).normalize();
+    if axis.dot(towards) < 0.0 { -axis } else { axis }
 }
 
 /// Circle with the least sum of squared distances to the points, by Newton; few of them give the start.

@@ -66,18 +66,26 @@ fn centred(mut curve: Curve, mismatch: &Mismatch) -> Result<Curve, RingFault> {
     if curve.is_point() {
         return Ok(curve);
     }
+    let mut before = f64::INFINITY;
     for _ in 0..PASSES {
         let few = curve.count() == FEW_SAMPLES;
-        let axis = local_axis(&curve);
+        let mut axis = local_axis(&curve);
         let moved = axis.x.hypot(axis.y);
         // with a margin, so that more samples do not move it again
         if few && moved < 0.1 * STAYS {
             curve.refined(mismatch)?;
-        } else if !few && moved < STAYS {
-            return Ok(curve);
-        } else {
-            curve.recentred(mismatch, &axis, if few { ROUGH } else { FINE })?;
+            continue;
         }
+        if !few && moved < STAYS {
+            return Ok(curve);
+        }
+        // moves shrink by one factor: sum of the geometric series, 1 + r + r^2 + ...
+        let shrink = moved / before;
+        if shrink < 0.1 {
+            axis += Vector3::new(axis.x, axis.y, 0.0) * (shrink / (1.0 - shrink));
+        }
+        curve.recentred(mismatch, &axis, if few { ROUGH } else { FINE })?;
+        before = moved;
     }
     Err(RingFault::new(Status::NotConverged))
 }
@@ -158,8 +166,8 @@ fn internal_half_angle(mismatch: &Mismatch, curve: &Curve, stride: usize) -> f64
         count += 1;
     }
     let inside = &inside[..count];
-    let mean = inside.iter().sum::<Vector3<f64>>().normalize();
-    let axis = fit::normal(inside.iter().copied(), &mean);
+    let mean = inside.iter().sum::<Vector3<f64>>() / count as f64;
+    let axis = fit::normal(inside.iter().map(|k| k - mean), &mean.normalize());
     // 1 - cos alpha = mean |d - a|^2/2
     let versine = inside.iter().map(|d| (d - axis).norm_squared()).sum::<f64>() / (2 * count) as f64;
     2.0 * (0.5 * versine).sqrt().asin()
