@@ -21,7 +21,7 @@ mod target;
 mod tuning;
 
 pub use acceptance::{Acceptance, acceptances};
-pub use cones::{Cones, ConesError, CrossingRow, HistoryName, Landing, RingRow, Want, cones};
+pub use cones::{Cones, ConesError, CrossingRow, HistoryName, Landing, RingRow, Want, cones, cones_with};
 #[cfg(feature = "count")]
 pub use count::evaluations;
 pub use crossing::{Contact, Crossing, GapKind, Meeting, Miss, Traced, meet, miss};

@@ -143,15 +143,13 @@ impl Ring {
 
 /// Every how many samples means over the azimuth need: where all three thirds of them have one mean, any will do.
 fn stride(curve: &Curve) -> usize {
-    const THIRD: f64 = FEW_SAMPLES as f64;
     let mut sums = [0.0; 3];
     for three in curve.half_tangents().chunks_exact(3) {
         (0..3).for_each(|k| sums[k] += three[k] * three[k]);
     }
     let [a, b, c] = sums;
     let spread = a.max(b).max(c) - a.min(b).min(c);
-    // THIRD roundings
-    if spread <= THIRD * f64::EPSILON * a { 3 } else { 1 }
+    if spread <= 1e-13 * a { 3 } else { 1 }
 }
 
 /// Half angle of the cone that fits the wave vectors inside, radians.
