@@ -71,7 +71,7 @@ pub fn meet(first: Traced<'_>, other: &Mismatch) -> Vec<(Crossing, Meeting)> {
     if samples.iter().any(|s| s.value.is_nan()) {
         return Vec::new();
     }
-    if samples.iter().all(|s| s.off().abs() < CONTACT) {
+    if samples.iter().all(|s| s.within(CONTACT)) {
         let up = crossing(first, other, FRAC_PI_2);
         return up.map(|point| (point, Meeting::Coincide)).into_iter().collect();
     }
@@ -79,9 +79,10 @@ pub fn meet(first: Traced<'_>, other: &Mismatch) -> Vec<(Crossing, Meeting)> {
     // by symmetry rings often touch right at a sample, whose sign and slope then mean nothing
     let touches = |j: usize| {
         let (before, after) = (&samples[(j + count - 1) % count], &samples[(j + 1) % count]);
-        samples[j].off().abs() < CONTACT
+        samples[j].within(CONTACT)
             && before.value.is_sign_negative() == after.value.is_sign_negative()
-            && before.off().abs().min(after.off().abs()) > CONTACT
+            && !before.within(CONTACT)
+            && !after.within(CONTACT)
     };
     for j in 0..count {
         let next = (j + 1) % count;
@@ -177,7 +178,7 @@ impl Found {
         let slope = |phi: f64| along(first, other, phi).map(|s| s.slope);
         let Some(turning) = bracketed(slope, a, b, here.slope) else { return };
         let Some(nearest) = along(first, other, turning) else { return };
-        if nearest.off().abs() < CONTACT {
+        if nearest.within(CONTACT) {
             self.touched.push(turning);
         } else if nearest.value.is_sign_negative() != here.value.is_sign_negative() {
             self.crossed.extend(crossing_in(first, other, [a, turning], [here, nearest]));
@@ -194,7 +195,7 @@ impl Found {
             let (a, b) = (self.crossed[i].phi, self.crossed[next].phi);
             let middle = if b >= a { 0.5 * (a + b) } else { 0.5 * (a + b + TAU) };
             let near = (b - a).rem_euclid(TAU) < step;
-            if near && along(first, other, middle).is_some_and(|s| s.off().abs() < CONTACT) {
+            if near && along(first, other, middle).is_some_and(|s| s.within(CONTACT)) {
                 self.crossed.retain(|met| met.phi != a && met.phi != b);
                 self.touched.push(middle);
             } else {
@@ -241,11 +242,7 @@ fn crossing_in(
     [here, there]: [Along; 2],
 ) -> Option<Met> {
     let value = |phi: f64| along(first, other, phi).map(|s| s.value);
-    let end = || {
-        let (phi, off) =
-            if here.off().abs() < there.off().abs() { (a, here.off()) } else { (b, there.off()) };
-        (off.abs() < CONTACT).then_some(phi)
-    };
+    let end = || here.within(CONTACT).then_some(a).or(there.within(CONTACT).then_some(b));
     let phi = bracketed(value, a, b, here.value).or_else(end)?;
     Some(Met { phi, crossing: crossing(first, other, phi)? })
 }

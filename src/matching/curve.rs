@@ -391,9 +391,9 @@ pub(super) struct Along {
 }
 
 impl Along {
-    /// Angle off the other ring, where that is near.
-    pub fn off(&self) -> f64 {
-        self.value / self.scale.max(f64::MIN_POSITIVE)
+    /// Whether the other ring is nearer than an angle (radians).
+    pub fn within(&self, angle: f64) -> bool {
+        self.value.abs() < angle * self.scale
     }
 }
 

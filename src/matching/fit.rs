@@ -17,31 +17,37 @@ pub(super) fn normal(points: impl Iterator<Item = Vector3<f64>>, towards: &Vecto
     let (mx, my, mz) = (x / n, y / n, z / n);
     let (xx, xy, xz) = (xx - x * mx, xy - x * my, xz - x * mz);
     let (yy, yz, zz) = (yy - y * my, yz - y * mz, zz - z * mz);
-    smallest(&Matrix3::new(xx, xy, xz, xy, yy, yz, xz, yz, zz), towards)
+    smallest([xx, xy, xz, yy, yz, zz], towards)
 }
 
-/// The eigenvector of the smallest eigenvalue is that of the largest of the adjugate, whose eigenvalues are products of
+/// Eigenvector of the smallest eigenvalue of a symmetric matrix. It is that of the largest one of the adjugate, whose eigenvalues are products of
 /// two: where points lie near a plane its powers converge at once.
-fn smallest(matrix: &Matrix3<f64>, towards: &Vector3<f64>) -> Vector3<f64> {
+fn smallest([xx, xy, xz, yy, yz, zz]: [f64; 6], towards: &Vector3<f64>) -> Vector3<f64> {
     const STEPS: usize = 20;
-    let column = |i: usize| matrix.fixed_view::<3, 1>(0, i).into_owned();
-    let [a, b, c] = [0, 1, 2].map(column);
-    let adjugate = Matrix3::from_columns(&[b.cross(&c), c.cross(&a), a.cross(&b)]);
+    let (axx, axy, axz) = (yy * zz - yz * yz, xz * yz - xy * zz, xy * yz - xz * yy);
+    let (ayy, ayz, azz) = (xx * zz - xz * xz, xy * xz - xx * yz, xx * yy - xy * xy);
+    let adjugate = |v: Vector3<f64>| {
+        Vector3::new(
+            axx * v.x + axy * v.y + axz * v.z,
+            axy * v.x + ayy * v.y + ayz * v.z,
+            axz * v.x + ayz * v.y + azz * v.z,
+        )
+    };
     let mut axis = *towards;
     for _ in 0..STEPS {
-        let next = adjugate * (adjugate * axis);
-        let size = next.norm();
-        if size == 0.0 {
+        let next = adjugate(adjugate(axis));
+        let square = next.norm_squared();
+        if square == 0.0 {
             break;
         }
-        let next = next / size;
+        let next = next * (1.0 / square.sqrt());
         let moved = (next - axis).norm_squared();
         axis = next;
-        if moved <= 1e-32 {
+        if moved <= 1e-30 {
             return axis;
         }
     }
-    let eigen = SymmetricEigen::new(*matrix);
+    let eigen = SymmetricEigen::new(Matrix3::new(xx, xy, xz, xy, yy, yz, xz, yz, zz));
     let axis = eigen.eigenvectors.column(eigen.eigenvalues.imin()).normalize();
     if axis.dot(towards) < 0.0 { -axis } else { axis }
 }
@@ -71,8 +77,8 @@ fn improve<'a, I: Iterator<Item = &'a Vector2<f64>>>(
         let (mut xx, mut xy, mut yy, mut x, mut y, mut n) = (0.0, 0.0, 0.0, 0.0, 0.0, 0.0);
         for p in points() {
             let from = p - *centre;
-            let distance = from.norm();
-            let inverse = 1.0 / distance.max(f64::MIN_POSITIVE);
+            let distance = from.norm().max(f64::MIN_POSITIVE);
+            let inverse = 1.0 / distance;
             let (ex, ey) = (from.x * inverse, from.y * inverse);
             let (residual, bend) = (distance - *radius, *radius * inverse);
             right += Vector3::new(ex, ey, 1.0) * residual;

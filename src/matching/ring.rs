@@ -71,16 +71,16 @@ fn centred(mut curve: Curve, mismatch: &Mismatch) -> Result<Curve, RingFault> {
         let few = curve.count() == FEW_SAMPLES;
         let mut axis = local_axis(&curve);
         let moved = axis.x.hypot(axis.y);
-        // with a margin, so that more samples do not move it again
-        if few && moved < 0.1 * STAYS {
-            curve.refined(mismatch)?;
-            continue;
-        }
+        let shrink = moved / before;
         if !few && moved < STAYS {
             return Ok(curve);
         }
+        // with a margin, so that more samples do not move it again; where rounding moves it there is none
+        if few && (moved < 1e-3 * STAYS || moved < STAYS && shrink > 0.1) {
+            curve.refined(mismatch)?;
+            continue;
+        }
         // moves shrink by one factor: sum of the geometric series, 1 + r + r^2 + ...
-        let shrink = moved / before;
         if shrink < 0.1 {
             axis += Vector3::new(axis.x, axis.y, 0.0) * (shrink / (1.0 - shrink));
         }
@@ -135,7 +135,8 @@ impl Ring {
     pub fn circle(&self) -> (Vector2<f64>, f64) {
         let points: [Vector2<f64>; SAMPLES] = std::array::from_fn(|j| {
             let d = self.curve.vector(j);
-            Vector2::new(d.x / d.z, d.y / d.z)
+            let scale = 1.0 / d.z;
+            Vector2::new(d.x * scale, d.y * scale)
         });
         fit::circle(&points)
     }
