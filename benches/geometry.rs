@@ -74,17 +74,58 @@ fn matching(c: &mut Criterion) {
     let emission = Emission::of(&crossed(), photons()).expect("indices");
     let [first, second] = histories(&emission);
     c.bench_function("ring", |b| b.iter(|| rings(black_box(&first), emission.length)));
+    c.bench_function("ring and circle", |b| b.iter(|| ring_and_circle(black_box(&first), emission.length)));
     let curve = curves(&first).expect("a ring").swap_remove(0);
     let traced = Traced { mismatch: &first, curve: &curve };
     c.bench_function("meeting of two rings", |b| b.iter(|| meet(black_box(traced), &second)));
+    c.bench_function("crossing, uniaxial", |b| b.iter(|| crossing(black_box(&first), &second)));
+    let lbo = Emission::of(&biaxial(), photons()).expect("indices");
+    let [first, second] = histories(&lbo);
+    c.bench_function("ring and circle, biaxial", |b| {
+        b.iter(|| ring_and_circle(black_box(&first), lbo.length))
+    });
+    c.bench_function("crossing, biaxial", |b| b.iter(|| crossing(black_box(&first), &second)));
 }
+
+fn ring_and_circle(mismatch: &Mismatch, length: f64) -> Option<(Vec<Ring>, f64)> {
+    let rings = rings(mismatch, length).ok()?;
+    let (_, radius) = rings[0].circle();
+    Some((rings, radius))
+}
+
+/// Everything from two mismatches to where their rings meet.
+fn crossing(first: &Mismatch, second: &Mismatch) -> usize {
+    let (Ok(ones), Ok(_)) = (curves(first), curves(second)) else { return 0 };
+    ones.iter().map(|curve| meet(Traced { mismatch: first, curve }, second).len()).sum()
+}
+
+/// Mismatches worked out for one ring and for one crossing.
+#[cfg(feature = "count")]
+fn count(_: &mut Criterion) {
+    for (kind, crystal) in [("uniaxial", crossed()), ("biaxial", biaxial())] {
+        let emission = Emission::of(&crystal, photons()).expect("indices");
+        let [first, second] = histories(&emission);
+        let counted = |work: &dyn Fn()| {
+            let before = evaluations();
+            work();
+            evaluations() - before
+        };
+        let ring = counted(&|| drop(ring_and_circle(&first, emission.length)));
+        let met = counted(&|| assert!(crossing(&first, &second) < 9));
+        println!("{kind}: {ring} mismatches for a ring, {met} for a crossing");
+    }
+}
+
+#[cfg(not(feature = "count"))]
+fn count(_: &mut Criterion) {}
 
 fn answers(c: &mut Criterion) {
     let Photons { pump, signal, .. } = photons();
     let crystals = [crossed()];
-    c.bench_function("cones", |b| {
-        b.iter(|| cones(black_box(&crystals), pump, &[signal], Interaction::Two, Want::Both))
-    });
+    for want in [Want::Rings, Want::Crossings, Want::Both] {
+        let ask = |crystals: &[Crystal]| cones(crystals, pump, &[signal], Interaction::Two, want);
+        c.bench_function(&format!("cones, {want:?}"), |b| b.iter(|| ask(black_box(&crystals))));
+    }
     let question = Design {
         crystal: crossed(),
         photons: photons(),
@@ -134,5 +175,5 @@ fn short() -> Criterion {
         .without_plots()
 }
 
-criterion_group! { name = all; config = short(); targets = waves, matching, answers, process }
+criterion_group! { name = all; config = short(); targets = waves, matching, count, answers, process }
 criterion_main!(all);

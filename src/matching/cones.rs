@@ -2,14 +2,15 @@
 
 use super::Status;
 use super::crossing::{Contact, Crossing, GapKind, Meeting, Miss, Traced, meet, miss};
+use super::curve::{Curve, RingFault, curves};
 use super::emission::{Emission, Photons, Triplet};
 use super::interaction::{Interaction, Process, Roles};
 use super::mismatch::Mismatch;
-use super::ring::{Curve, Ring, RingFault, curves, rings};
+use super::ring::{Ring, rings};
 use super::tuning::{Actuator, nearest_touch, tuning_turn};
 use crate::frame::Direction;
 use crate::material::MaterialError;
-use crate::optics::{Crystal, Polarization};
+use crate::optics::{Crystal, Indices, Polarization};
 use crate::quantity::Wavelength;
 
 use thiserror::Error;
@@ -145,6 +146,21 @@ pub fn cones(
     interaction: Interaction,
     want: Want,
 ) -> Result<Cones, ConesError> {
+    cones_with(&mut Indices::default(), crystals, pump, signals, interaction, want)
+}
+
+/// [`cones`] with indices that may be remembered from other settings of the same crystals.
+///
+/// # Errors
+/// As [`cones`].
+pub fn cones_with(
+    indices: &mut Indices,
+    crystals: &[Crystal],
+    pump: Wavelength,
+    signals: &[Wavelength],
+    interaction: Interaction,
+    want: Want,
+) -> Result<Cones, ConesError> {
     let mut found = Cones::default();
     for signal in signals {
         let photons = Photons::new(pump, *signal).ok_or_else(|| {
@@ -153,7 +169,7 @@ pub fn cones(
         let sources: Result<Vec<Source<'_>>, MaterialError> = crystals
             .iter()
             .enumerate()
-            .map(|(index, crystal)| Source::new(index, crystal, photons))
+            .map(|(index, crystal)| Source::new(indices, index, crystal, photons))
             .collect();
         let sources = sources?;
         let mut histories = Vec::new();
@@ -175,8 +191,13 @@ pub fn cones(
 }
 
 impl<'a> Source<'a> {
-    fn new(index: usize, crystal: &'a Crystal, photons: Photons) -> Result<Self, MaterialError> {
-        let triplet = Triplet::new(crystal, &photons)?;
+    fn new(
+        indices: &mut Indices,
+        index: usize,
+        crystal: &'a Crystal,
+        photons: Photons,
+    ) -> Result<Self, MaterialError> {
+        let triplet = Triplet::remembered(indices, crystal, &photons)?;
         let emission = Emission::new(crystal, photons, &triplet);
         let extrapolated =
             [photons.pump, photons.signal, photons.idler].iter().any(|w| crystal.extrapolates(*w));
@@ -401,8 +422,9 @@ fn missing_row(
     }
     let Source { crystal, emission, triplet, .. } = first.source;
     let turn = tuning_turn(crystal, emission.photons, triplet, first.roles);
-    let one_crystal = first.name.crystal == second.name.crystal;
-    let touch = (one_crystal && nearest.is_some())
+    // touching is sought between a process and the one with the photons exchanged
+    let exchanged = first.name.crystal == second.name.crystal && first.roles.exchanged() == second.roles;
+    let touch = (exchanged && nearest.is_some())
         .then(|| nearest_touch(crystal, emission.photons, *triplet, first.roles, turn))
         .flatten();
     let status = if nearest.is_some() { Status::Apart } else { Status::NotConverged };

@@ -5,8 +5,8 @@ use std::f64::consts::{FRAC_PI_2, TAU};
 
 use nalgebra::{Matrix2, Vector2, Vector3};
 
+use super::curve::{Along, Curve, cubic};
 use super::mismatch::Mismatch;
-use super::ring::{Curve, SAMPLES};
 use super::root::bracketed;
 use crate::frame::{Direction, Lab};
 
@@ -62,59 +62,41 @@ pub struct Traced<'a> {
     pub curve: &'a Curve,
 }
 
-/// The other ring's mismatch along a ring.
-#[derive(Debug, Clone, Copy)]
-struct Along {
-    /// Delta_k of the other process, rad/m: negative inside the other ring.
-    value: f64,
-    /// Its change per radian of azimuth.
-    slope: f64,
-    /// Size of its gradient, rad/m per radian of direction: near the other ring, value/scale is the angle off it.
-    scale: f64,
-}
-
-impl Along {
-    fn at(other: &Mismatch, d: Vector3<f64>, tangent: Vector3<f64>) -> Option<Self> {
-        let there = other.towards(d)?;
-        let across = there.gradient - d * there.gradient.dot(&d);
-        let scale = across.norm().max(f64::MIN_POSITIVE);
-        Some(Self { value: there.value, slope: there.gradient.dot(&tangent), scale })
-    }
-
-    fn off(&self) -> f64 {
-        self.value / self.scale
-    }
-}
-
 /// Finds where a ring meets that of another process, for a photon of one wavelength: nothing where they miss each other.
 #[must_use]
 pub fn meet(first: Traced<'_>, other: &Mismatch) -> Vec<(Crossing, Meeting)> {
-    let Some(samples) = sample(first, other) else { return Vec::new() };
-    let samples = &samples[..=first.curve.count()];
-    if samples.iter().all(|s| s.off().abs() < CONTACT) {
+    let count = first.curve.count();
+    let samples = first.curve.survey(other);
+    let samples = &samples[..count];
+    if samples.iter().any(|s| s.value.is_nan()) {
+        return Vec::new();
+    }
+    if samples.iter().all(|s| s.within(CONTACT)) {
         let up = crossing(first, other, FRAC_PI_2);
         return up.map(|point| (point, Meeting::Coincide)).into_iter().collect();
     }
     let mut found = Found::default();
-    let count = first.curve.count();
     // by symmetry rings often touch right at a sample, whose sign and slope then mean nothing
     let touches = |j: usize| {
         let (before, after) = (&samples[(j + count - 1) % count], &samples[(j + 1) % count]);
-        samples[j].off().abs() < CONTACT
+        samples[j].within(CONTACT)
             && before.value.is_sign_negative() == after.value.is_sign_negative()
-            && before.off().abs().min(after.off().abs()) > CONTACT
+            && !before.within(CONTACT)
+            && !after.within(CONTACT)
     };
-    for (j, pair) in samples.windows(2).enumerate() {
+    for j in 0..count {
+        let next = (j + 1) % count;
         if touches(j) {
             found.touched.push(first.curve.azimuth(j));
-        } else if !touches((j + 1) % count) {
-            found.between(first, other, j, [pair[0], pair[1]]);
+        } else if !touches(next) {
+            found.between(first, other, j, [samples[j], samples[next]]);
         }
     }
     found.merge_grazing(first, other);
-    let crossed = found.crossed.into_iter().map(|phi| (phi, Meeting::Cross));
-    let touched = found.touched.into_iter().map(|phi| (phi, Meeting::Touch));
-    crossed.chain(touched).filter_map(|(phi, how)| Some((crossing(first, other, phi)?, how))).collect()
+    let crossed = found.crossed.into_iter().map(|met| (met.crossing, Meeting::Cross));
+    let touched =
+        found.touched.into_iter().filter_map(|phi| Some((crossing(first, other, phi)?, Meeting::Touch)));
+    crossed.chain(touched).collect()
 }
 
 /// How two rings that do not cross lie to each other: they touch after all, or miss.
@@ -136,28 +118,37 @@ pub enum Miss {
     By(Contact),
 }
 
-/// Azimuths at which the other ring is met.
+/// Where the other ring is met: crossings, and azimuths of contacts.
 #[derive(Default)]
 struct Found {
-    crossed: Vec<f64>,
+    crossed: Vec<Met>,
     touched: Vec<f64>,
+}
+
+/// A crossing and its azimuth on the first ring.
+struct Met {
+    phi: f64,
+    crossing: Crossing,
 }
 
 /// Least and largest Delta_k of the other process along a ring, rad/m: a tangency from outside is a zero of the first,
 /// from inside a zero of the second (or of the first, where the other ring is the inner one).
 #[must_use]
 pub fn reach(first: Traced<'_>, other: &Mismatch) -> Option<[f64; 2]> {
-    let samples = sample(first, other)?;
-    let samples = &samples[..=first.curve.count()];
+    let count = first.curve.count();
+    let samples = first.curve.survey(other);
     let mut reach = [f64::INFINITY, f64::NEG_INFINITY];
-    for (j, pair) in samples.windows(2).enumerate() {
-        let mut stretch = |value: f64| reach = [reach[0].min(value), reach[1].max(value)];
-        stretch(pair[0].value);
-        if pair[0].slope.is_sign_negative() != pair[1].slope.is_sign_negative() {
+    let mut stretch = |value: f64| reach = [reach[0].min(value), reach[1].max(value)];
+    for j in 0..count {
+        let (here, there) = (samples[j], samples[(j + 1) % count]);
+        if here.value.is_nan() {
+            return None;
+        }
+        stretch(here.value);
+        if here.slope.is_sign_negative() != there.slope.is_sign_negative() {
             let slope = |phi: f64| along(first, other, phi).map(|s| s.slope);
-            if let Some(phi) =
-                bracketed(slope, first.curve.azimuth(j), first.curve.azimuth(j + 1), pair[0].slope)
-            {
+            let (a, b) = interval(first.curve, j);
+            if let Some(phi) = bracketed(slope, a, b, here.slope) {
                 stretch(along(first, other, phi)?.value);
             }
         }
@@ -165,25 +156,18 @@ pub fn reach(first: Traced<'_>, other: &Mismatch) -> Option<[f64; 2]> {
     Some(reach)
 }
 
-/// At the samples of a curve, and once more at the first one.
-fn sample(first: Traced<'_>, other: &Mismatch) -> Option<[Along; SAMPLES + 1]> {
-    let mut samples = [Along { value: 0.0, slope: 0.0, scale: 1.0 }; SAMPLES + 1];
-    let count = first.curve.count();
-    for (j, slot) in samples.iter_mut().enumerate().take(count) {
-        let (d, tangent) = first.curve.sample(first.mismatch, j)?;
-        *slot = Along::at(other, d, tangent)?;
-    }
-    samples[count] = samples[0];
-    Some(samples)
+/// Azimuths of sample j and the next.
+fn interval(curve: &Curve, j: usize) -> (f64, f64) {
+    (curve.azimuth(j), curve.azimuth(j + 1))
 }
 
 impl Found {
     /// Crossings between samples j and j + 1, by sign change or around an extremum of equal sign that reaches zero.
     fn between(&mut self, first: Traced<'_>, other: &Mismatch, j: usize, [here, there]: [Along; 2]) {
-        let (a, b) = (first.curve.azimuth(j), first.curve.azimuth(j + 1));
-        let value = |phi: f64| along(first, other, phi).map(|s| s.value);
+        let (a, b) = interval(first.curve, j);
         if here.value.is_sign_negative() != there.value.is_sign_negative() {
-            self.crossed.extend(bracketed(value, a, b, here.value));
+            let met = crossing_at_once(first, other, [a, b], [here, there]);
+            self.crossed.extend(met.or_else(|| crossing_in(first, other, [a, b], [here, there])));
             return;
         }
         // towards zero at a, away from it at b
@@ -194,11 +178,11 @@ impl Found {
         let slope = |phi: f64| along(first, other, phi).map(|s| s.slope);
         let Some(turning) = bracketed(slope, a, b, here.slope) else { return };
         let Some(nearest) = along(first, other, turning) else { return };
-        if nearest.off().abs() < CONTACT {
+        if nearest.within(CONTACT) {
             self.touched.push(turning);
         } else if nearest.value.is_sign_negative() != here.value.is_sign_negative() {
-            self.crossed.extend(bracketed(value, a, turning, here.value));
-            self.crossed.extend(bracketed(value, b, turning, there.value));
+            self.crossed.extend(crossing_in(first, other, [a, turning], [here, nearest]));
+            self.crossed.extend(crossing_in(first, other, [turning, b], [nearest, there]));
         }
     }
 
@@ -208,11 +192,11 @@ impl Found {
         let mut i = 0;
         while i < self.crossed.len() && self.crossed.len() > 1 {
             let next = (i + 1) % self.crossed.len();
-            let (a, b) = (self.crossed[i], self.crossed[next]);
+            let (a, b) = (self.crossed[i].phi, self.crossed[next].phi);
             let middle = if b >= a { 0.5 * (a + b) } else { 0.5 * (a + b + TAU) };
             let near = (b - a).rem_euclid(TAU) < step;
-            if near && along(first, other, middle).is_some_and(|s| s.off().abs() < CONTACT) {
-                self.crossed.retain(|phi| *phi != a && *phi != b);
+            if near && along(first, other, middle).is_some_and(|s| s.within(CONTACT)) {
+                self.crossed.retain(|met| met.phi != a && met.phi != b);
                 self.touched.push(middle);
             } else {
                 i += 1;
@@ -232,36 +216,103 @@ fn comes_near(here: Along, there: Along, step: f64) -> bool {
 
 fn along(first: Traced<'_>, other: &Mismatch, phi: f64) -> Option<Along> {
     let (d, tangent) = first.curve.point_and_tangent(first.mismatch, phi)?;
-    Along::at(other, d, tangent)
+    let there = other.towards(d)?;
+    let across = there.gradient - d * there.gradient.dot(&d);
+    Some(Along { value: there.value, slope: there.gradient.dot(&tangent), scale: across.norm() })
 }
 
-/// The crossing near an azimuth of the first ring, polished by Newton in both equations.
-fn crossing(first: Traced<'_>, other: &Mismatch, phi: f64) -> Option<Crossing> {
-    let mut d = first.curve.at(first.mismatch, phi)?.lab().0;
-    for _ in 0..4 {
-        let (one, two) = (first.mismatch.towards(d)?, other.towards(d)?);
-        let e1 = d.cross(&Vector3::x()).normalize();
-        let e2 = d.cross(&e1);
-        let jacobian = Matrix2::new(
-            one.gradient.dot(&e1),
-            one.gradient.dot(&e2),
-            two.gradient.dot(&e1),
-            two.gradient.dot(&e2),
-        );
-        // curves that touch leave the second equation to the first
-        let size = jacobian.row(0).norm() * jacobian.row(1).norm();
-        if jacobian.determinant().abs() < 1e-6 * size {
-            break;
-        }
-        let step = jacobian.try_inverse()? * Vector2::new(-one.value, -two.value);
-        d = (d + e1 * step.x + e2 * step.y).normalize();
+/// The crossing between azimuths at which the other mismatch has opposite signs, straight from where its cubic is zero;
+/// `None` where that leads elsewhere.
+fn crossing_at_once(first: Traced<'_>, other: &Mismatch, [a, b]: [f64; 2], ends: [Along; 2]) -> Option<Met> {
+    const MARGIN: f64 = 1e-9;
+    let start = a + (b - a) * zero_of_cubic(ends, b - a);
+    let from = first.curve.between_samples(start);
+    let pair = polished(first, other, from)?;
+    let (phi, turned) = first.curve.azimuth_of(&pair.d);
+    let phi = if phi < a - MARGIN { phi + TAU } else { phi };
+    let inside = phi >= a - MARGIN && phi <= b + MARGIN && (pair.d - from).norm() < turned * (b - a);
+    inside.then(|| Met { phi, crossing: pair.crossing(first) })
+}
+
+/// The same by a search inside the bracket. Where rounding decides the sign at an end, that end is the crossing.
+fn crossing_in(
+    first: Traced<'_>,
+    other: &Mismatch,
+    [a, b]: [f64; 2],
+    [here, there]: [Along; 2],
+) -> Option<Met> {
+    let value = |phi: f64| along(first, other, phi).map(|s| s.value);
+    let end = || here.within(CONTACT).then_some(a).or(there.within(CONTACT).then_some(b));
+    let phi = bracketed(value, a, b, here.value).or_else(end)?;
+    Some(Met { phi, crossing: crossing(first, other, phi)? })
+}
+
+/// Share of a step at which the cubic through values of opposite signs and slopes at its ends is zero, roughly.
+fn zero_of_cubic([here, there]: [Along; 2], step: f64) -> f64 {
+    let ends = [[here.value, here.slope], [there.value, there.slope]];
+    let secant = |x: f64, y: f64, fx: f64, fy: f64| (x - fx * (y - x) / (fy - fx)).clamp(0.0, 1.0);
+    let first = secant(0.0, 1.0, here.value, there.value);
+    let value = cubic(ends, step, first);
+    // the line from there to the end of the other sign
+    if value.is_sign_negative() == here.value.is_sign_negative() {
+        secant(first, 1.0, value, there.value)
+    } else {
+        secant(0.0, first, here.value, value)
     }
-    let direction = Direction::new(Lab(d));
-    Some(Crossing {
-        direction,
-        partner: first.mismatch.partner(direction),
-        angle: screen_angle(d, first.mismatch.towards(d)?.gradient, other.towards(d)?.gradient),
-    })
+}
+
+/// A direction matched by both processes, with the gradients of their mismatches.
+struct Matched {
+    d: Vector3<f64>,
+    gradients: [Vector3<f64>; 2],
+}
+
+impl Matched {
+    fn crossing(&self, first: Traced<'_>) -> Crossing {
+        let direction = Direction::new(Lab(self.d));
+        Crossing {
+            direction,
+            partner: first.mismatch.partner(direction),
+            angle: screen_angle(self.d, self.gradients[0], self.gradients[1]),
+        }
+    }
+}
+
+/// Newton in both equations; `None` where it does not settle, or where the curves hardly cross.
+fn polished(first: Traced<'_>, other: &Mismatch, from: Vector3<f64>) -> Option<Matched> {
+    const STEPS: usize = 8;
+    let mut d = from;
+    for _ in 0..STEPS {
+        let (one, two) = (first.mismatch.towards(d)?, other.towards(d)?);
+        let gradients = [one.gradient, two.gradient];
+        let step = step_to_both(d, gradients, [one.value, two.value])?;
+        d = (d + step).normalize();
+        // what is left is the square of this
+        if step.norm_squared() <= 1e-26 {
+            return Some(Matched { d, gradients });
+        }
+    }
+    None
+}
+
+/// The change of a direction that takes both mismatches to zero; `None` where the curves are all but parallel.
+fn step_to_both(d: Vector3<f64>, [g1, g2]: [Vector3<f64>; 2], [f1, f2]: [f64; 2]) -> Option<Vector3<f64>> {
+    // g1.x = -f1, g2.x = -f2, d.x = 0:  x = -(f1 (g2 x d) + f2 (d x g1)) / (g1.(g2 x d))
+    let (across1, across2) = (d.cross(&g1), g2.cross(&d));
+    let determinant = g1.dot(&across2);
+    let parallel = determinant * determinant < 1e-12 * across1.norm_squared() * across2.norm_squared();
+    (!parallel).then(|| (across2 * f1 + across1 * f2) / -determinant)
+}
+
+/// The crossing near an azimuth of the first ring; curves that touch leave the second equation to the first.
+fn crossing(first: Traced<'_>, other: &Mismatch, phi: f64) -> Option<Crossing> {
+    let Lab(d) = first.curve.at(first.mismatch, phi)?.lab();
+    let matched =
+        polished(first, other, d).filter(|m| (m.d - d).norm() < 1e-3 * first.curve.size()).or_else(|| {
+            let gradients = [first.mismatch.towards(d)?.gradient, other.towards(d)?.gradient];
+            Some(Matched { d, gradients })
+        })?;
+    Some(matched.crossing(first))
 }
 
 /// Angle on the screen between two curves through d with the given gradients, 0 to pi/2.

@@ -7,7 +7,7 @@ use super::mismatch::Mismatch;
 use super::partner::Pairing;
 use crate::frame::{Direction, Lab, Orientation, Placement};
 use crate::material::{MaterialError, Principal, tensor::is_centrosymmetric};
-use crate::optics::{Crystal, Medium};
+use crate::optics::{Crystal, Indices, Medium};
 use crate::quantity::Wavelength;
 
 /// Wavelengths of one process; energy is conserved by construction.
@@ -58,8 +58,28 @@ impl Triplet {
     /// # Errors
     /// A wavelength or temperature outside the data set's range.
     pub fn new(crystal: &Crystal, photons: &Photons) -> Result<Self, MaterialError> {
-        let look_up = |name: &'static str, wavelength: Wavelength| {
-            crystal.principal(wavelength).map_err(|error| match error {
+        Self::by(crystal, photons, |wavelength| crystal.principal(wavelength))
+    }
+
+    /// The same from indices that may be remembered.
+    ///
+    /// # Errors
+    /// A wavelength or temperature outside the data set's range.
+    pub fn remembered(
+        indices: &mut Indices,
+        crystal: &Crystal,
+        photons: &Photons,
+    ) -> Result<Self, MaterialError> {
+        Self::by(crystal, photons, |wavelength| indices.principal(crystal, wavelength))
+    }
+
+    fn by(
+        crystal: &Crystal,
+        photons: &Photons,
+        mut principal: impl FnMut(Wavelength) -> Result<Principal, MaterialError>,
+    ) -> Result<Self, MaterialError> {
+        let mut look_up = |name: &'static str, wavelength: Wavelength| {
+            principal(wavelength).map_err(|error| match error {
                 MaterialError::OutOfRange { wavelength, from, to, material, dataset, .. } => {
                     let all = [photons.pump, photons.signal, photons.idler];
                     let remedy = crystal.material.sets_that_cover(&all);
@@ -116,7 +136,7 @@ pub struct Emission {
     /// 2 pi / period of the domains at the crystal's temperature, rad/m; 0 without poling.
     pub grating: f64,
     /// The media of the crystal at normal incidence, where the sign of the grating's term is decided.
-    upright: Option<(Placement, Media)>,
+    upright: Option<Box<(Placement, Media)>>,
     /// Length along the normal, m.
     pub length: f64,
 }
@@ -128,7 +148,7 @@ impl Emission {
         let placement = crystal.placement();
         let at_normal_incidence = || {
             let upright = Placement::new(crystal.cut, crystal.reversal, &Orientation::default());
-            (upright, triplet.media(&upright))
+            Box::new((upright, triplet.media(&upright)))
         };
         Self {
             upright: crystal.poling.map(|_| at_normal_incidence()),
@@ -207,7 +227,7 @@ impl Emission {
     /// the crystal's tilt. `None` without poling.
     #[must_use]
     pub fn grating_sign(&self, roles: Roles) -> Option<f64> {
-        let (placement, media) = self.upright.as_ref()?;
+        let (placement, media) = self.upright.as_deref()?;
         let bare = Mismatch::new(media, roles, placement, 0.0)?;
         bare.at(bare.along_pump()).map(|at| at.value.signum())
     }
@@ -221,8 +241,15 @@ impl Emission {
     /// The same pairs seen from the idler.
     #[must_use]
     pub fn exchanged(&self) -> Self {
-        let upright = self.upright.map(|(placement, media)| (placement, media.exchanged()));
-        Self { photons: self.photons.exchanged(), media: self.media.exchanged(), upright, ..self.clone() }
+        let upright = self.upright.as_deref();
+        Self {
+            photons: self.photons.exchanged(),
+            placement: self.placement,
+            media: self.media.exchanged(),
+            grating: self.grating,
+            upright: upright.map(|(placement, media)| Box::new((*placement, media.exchanged()))),
+            length: self.length,
+        }
     }
 
     /// Whether symmetry forbids a pair whose signal leaves towards `signal`; `None` where the tensor is not known.

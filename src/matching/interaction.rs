@@ -67,7 +67,10 @@ fn polarization(text: &str) -> Option<Polarization> {
 
 impl fmt::Display for Process {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        f.pad(&format!("{} -> {} + {}", self.pump, self.signal, self.idler))
+        if f.width().is_none() && f.precision().is_none() {
+            return write!(f, "{} -> {} + {}", self.pump, self.signal, self.idler);
+        }
+        f.pad(&format!("{self}"))
     }
 }
 

@@ -6,17 +6,18 @@
 
 use nalgebra::Vector3;
 
+use super::count;
 use super::emission::Media;
 use super::interaction::Roles;
 use crate::frame::{Direction, Lab, Mount, Placement, Tangential};
-use crate::optics::Surface;
+use crate::optics::{Normal, Quadric, Surface};
 
 /// Phase mismatch of one process in one crystal; signal and idler by role.
 #[derive(Debug, Clone, Copy)]
 pub struct Mismatch {
     q_pump: Tangential,
-    k_pump: f64,
-    grating: f64,
+    /// k_wp - K, rad/m.
+    available: f64,
     signal: Surface,
     idler: Surface,
     k0_signal: f64,
@@ -50,11 +51,48 @@ pub(crate) struct Stationary {
     pub q: Tangential,
     /// Delta_k there, rad/m.
     pub value: f64,
-    /// Geometric mean of the two curvatures along q, m.
-    pub curvature: f64,
+    /// Second derivatives along q_u and q_v, m: uu, uv, vv.
+    pub hessian: [f64; 3],
     /// Whether the slopes vanish there; where a sheet has a peak that is not smooth (a fast one on an optic axis) this
     /// is only the lowest point that was reached.
     pub smooth: bool,
+}
+
+/// A mismatch as loops over many wave vectors want it: without branches, not a number where a photon is evanescent.
+pub(crate) trait Field {
+    fn sample(&self, q: Tangential) -> Sample;
+}
+
+/// The mismatch of two quadrics.
+#[derive(Debug, Clone, Copy)]
+pub(crate) struct Quadrics {
+    q_pump: Tangential,
+    available: f64,
+    signal: Quadric,
+    idler: Quadric,
+}
+
+impl Field for Quadrics {
+    #[inline(always)]
+    fn sample(&self, q: Tangential) -> Sample {
+        difference(self.available, &self.signal.normal(q), &self.idler.normal(self.q_pump - q))
+    }
+}
+
+impl Field for Mismatch {
+    fn sample(&self, q: Tangential) -> Sample {
+        let nowhere = Sample { value: f64::NAN, slope: [f64::NAN; 2] };
+        self.solve(q).unwrap_or(nowhere)
+    }
+}
+
+/// Delta_k = k_wp - K - k_ws - k_wi and its slopes.
+#[inline(always)]
+fn difference(available: f64, signal: &Normal, idler: &Normal) -> Sample {
+    Sample {
+        value: available - signal.k_w - idler.k_w,
+        slope: [idler.slope[0] - signal.slope[0], idler.slope[1] - signal.slope[1]],
+    }
 }
 
 impl Mismatch {
@@ -71,8 +109,7 @@ impl Mismatch {
         let face = placement.face_axes();
         Some(Self {
             q_pump,
-            k_pump: media.pump.surface(roles.pump).normal(q_pump)?.k_w,
-            grating,
+            available: media.pump.surface(roles.pump).normal(q_pump)?.k_w - grating,
             signal: *media.signal.surface(roles.signal),
             idler: *media.idler.surface(roles.idler),
             k0_signal: media.signal.k0(),
@@ -104,12 +141,43 @@ impl Mismatch {
     #[inline]
     #[must_use]
     pub fn at(&self, q: Tangential) -> Option<Sample> {
-        let signal = self.signal.normal(q)?;
-        let idler = self.idler.normal(self.q_pump - q)?;
-        Some(Sample {
-            value: self.k_pump - signal.k_w - idler.k_w - self.grating,
-            slope: [idler.slope[0] - signal.slope[0], idler.slope[1] - signal.slope[1]],
-        })
+        count::add(1);
+        self.solve(q)
+    }
+
+    #[inline]
+    fn solve(&self, q: Tangential) -> Option<Sample> {
+        match self.quadrics() {
+            Some(quadrics) => {
+                let sample = quadrics.sample(q);
+                (sample.slope[0].is_finite() && sample.slope[1].is_finite()).then_some(sample)
+            }
+            None => {
+                let signal = self.signal.normal(q)?;
+                let idler = self.idler.normal(self.q_pump - q)?;
+                Some(difference(self.available, &signal, &idler))
+            }
+        }
+    }
+
+    /// The same for a crystal whose sheets are quadrics.
+    #[inline]
+    pub(super) fn quadrics(&self) -> Option<Quadrics> {
+        let (signal, idler) = (*self.signal.as_quadric()?, *self.idler.as_quadric()?);
+        Some(Quadrics { q_pump: self.q_pump, available: self.available, signal, idler })
+    }
+
+    /// Components of a lab vector along u and v in units of the signal's wavenumber, rad/m, and along the normal.
+    pub(super) fn on_face(&self, vector: &Vector3<f64>) -> Vector3<f64> {
+        let [u, v] = &self.face;
+        Vector3::new(self.k0_signal * vector.dot(u), self.k0_signal * vector.dot(v), vector.dot(&self.normal))
+    }
+
+    /// Whether the idler of a signal with this tangential wave vector can leave the crystal.
+    #[inline]
+    pub(super) fn idler_leaves(&self, q: Tangential) -> bool {
+        let idler = self.q_pump - q;
+        idler.u * idler.u + idler.v * idler.v < self.k0_idler * self.k0_idler
     }
 
     /// Mismatch towards a unit direction in the lab; `None` behind the exit face and where the idler is evanescent.
@@ -144,8 +212,7 @@ impl Mismatch {
     }
 
     /// The signal's wave vector inside the crystal, mount frame, rad/m.
-    pub(crate) fn inside(&self, direction: Direction) -> Option<Vector3<f64>> {
-        let q = self.tangential(direction);
+    pub(crate) fn inside(&self, q: Tangential) -> Option<Vector3<f64>> {
         Some(Vector3::new(q.u, q.v, self.signal.normal(q)?.k_w))
     }
 
@@ -159,9 +226,9 @@ impl Mismatch {
     pub(crate) fn stationary(&self, start: Tangential) -> Option<Stationary> {
         const STEPS: usize = 100;
         let mut q = start;
-        let mut here = self.at(q)?;
+        let (mut here, mut hessian) = self.bent(q)?;
         for _ in 0..STEPS {
-            let [a, b, c] = self.hessian(q)?;
+            let [a, b, c] = hessian;
             let determinant = a * c - b * b;
             let [gu, gv] = here.slope;
             let (mut du, mut dv) = if determinant > 0.0 {
@@ -171,53 +238,53 @@ impl Mismatch {
                 (-gu * size, -gv * size)
             };
             let limit = 0.3 * self.k0_signal;
-            let size = du.hypot(dv);
+            let mut size = (du * du + dv * dv).sqrt();
             if size > limit {
                 (du, dv) = (du * limit / size, dv * limit / size);
+                size = limit;
             }
-            let next = self.descend(q, &here, [du, dv]);
-            let Some((moved, sample)) = next else {
-                return self.found(q, &here);
-            };
-            (q, here) = (moved, sample);
-            if du.hypot(dv) <= 1e-13 * self.k0_signal {
+            let Some(moved) = self.descend(q, &here, [du, dv]) else { break };
+            (q, here, hessian) = moved;
+            // Newton squares the error in units of k0: below this the next step would be rounding
+            if size <= 1e-9 * self.k0_signal && determinant > 0.0 {
                 break;
             }
         }
-        self.found(q, &here)
+        let smooth = here.slope[0].hypot(here.slope[1]) < 1e-7;
+        Some(Stationary { q, value: here.value, hessian, smooth })
     }
 
     /// Halves a step until the slope along it does not grow and the point lies in the domain.
-    fn descend(&self, q: Tangential, here: &Sample, step: [f64; 2]) -> Option<(Tangential, Sample)> {
-        let before = here.slope[0].hypot(here.slope[1]);
+    fn descend(
+        &self,
+        q: Tangential,
+        here: &Sample,
+        step: [f64; 2],
+    ) -> Option<(Tangential, Sample, [f64; 3])> {
+        let steep = |sample: &Sample| sample.slope[0].powi(2) + sample.slope[1].powi(2);
+        let before = steep(here);
         let mut scale = 1.0;
         for _ in 0..40 {
             let moved = Tangential { u: q.u + scale * step[0], v: q.v + scale * step[1] };
-            if let Some(sample) = self.at(moved) {
-                let lower = sample.value < here.value;
-                if sample.slope[0].hypot(sample.slope[1]) < before || lower {
-                    return Some((moved, sample));
-                }
+            if let Some((sample, hessian)) = self.bent(moved)
+                && (steep(&sample) < before || sample.value < here.value)
+            {
+                return Some((moved, sample, hessian));
             }
             scale *= 0.5;
         }
         None
     }
 
-    fn found(&self, q: Tangential, here: &Sample) -> Option<Stationary> {
-        let [a, b, c] = self.hessian(q)?;
-        let curvature = (a * c - b * b).abs().sqrt();
-        let smooth = here.slope[0].hypot(here.slope[1]) < 1e-7;
-        Some(Stationary { q, value: here.value, curvature, smooth })
-    }
-
-    /// Second derivatives of Delta_k with respect to q: uu, uv, vv.
-    fn hessian(&self, q: Tangential) -> Option<[f64; 3]> {
+    /// Mismatch and its second derivatives with respect to q: uu, uv, vv.
+    fn bent(&self, q: Tangential) -> Option<(Sample, [f64; 3])> {
+        count::add(1);
         let other = self.q_pump - q;
         let (signal, idler) = (self.signal.normal(q)?, self.idler.normal(other)?);
         let s = self.signal.curvature(q, &signal);
         let i = self.idler.curvature(other, &idler);
-        Some([-s.uu - i.uu, -s.uv - i.uv, -s.vv - i.vv])
+        let hessian = [-s.uu - i.uu, -s.uv - i.uv, -s.vv - i.vv];
+        Some((difference(self.available, &signal, &idler), hessian))
     }
 
     /// Tangential wave vector of a signal that travels with the pump: a start for [`Self::stationary`].

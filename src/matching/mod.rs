@@ -2,31 +2,40 @@
 
 mod acceptance;
 mod cones;
+mod count;
 mod crossing;
+mod curve;
 mod cut;
 mod emission;
+mod fit;
 mod interaction;
+mod meridian;
 mod mismatch;
 mod partner;
 mod rig;
 mod ring;
 mod root;
+mod seed;
 mod spread;
 mod target;
 mod tuning;
 
 pub use acceptance::{Acceptance, acceptances};
-pub use cones::{Cones, ConesError, CrossingRow, HistoryName, Landing, RingRow, Want, cones};
+pub use cones::{Cones, ConesError, CrossingRow, HistoryName, Landing, RingRow, Want, cones, cones_with};
+#[cfg(feature = "count")]
+pub use count::evaluations;
 pub use crossing::{Contact, Crossing, GapKind, Meeting, Miss, Traced, meet, miss};
+pub use curve::{Curve, RingFault, curves};
 pub use cut::{
     Brightness, CutSolution, Design, Find, Plane, Shortfall, alternatives, best_phi, brightness, design,
     shortfall, unmatched,
 };
 pub use emission::{Emission, Media, Photons, Triplet};
 pub use interaction::{Interaction, Process, ProcessError, Roles};
+pub use meridian::SAMPLES;
 pub use mismatch::{Mismatch, Sample};
 pub use partner::{Pairing, Twin, phase_matching_factor, twins};
-pub use ring::{Curve, Ring, RingFault, SAMPLES, curves, half_angle, rings};
+pub use ring::{Ring, half_angle, rings};
 pub use root::{Root, Scan, roots};
 pub use spread::{Opinion, opinions};
 pub use target::{Measure, Target};

@@ -1,10 +1,11 @@
 //! What a cut or a turn is to bring about, as a number that is zero when it does.
 
 use super::crossing::{Crossing, Meeting, Traced, meet, reach};
+use super::curve::{Curve, curves};
 use super::emission::Emission;
 use super::interaction::Roles;
 use super::mismatch::Mismatch;
-use super::ring::{Curve, curves, half_angle};
+use super::ring::half_angle;
 use crate::frame::Direction;
 
 /// The wanted emission. Angles in radians, outside the crystal.

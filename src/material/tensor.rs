@@ -94,15 +94,10 @@ impl Tensor {
     /// d_eff = sum d_ijk p_i s_j t_k in pm/V for unit electric fields of pump, signal and idler.
     #[must_use]
     pub fn contract(&self, pump: Dielectric, signal: Dielectric, idler: Dielectric) -> f64 {
-        let mut sum = 0.0;
-        for (i, plane) in self.elements.iter().enumerate() {
-            for (j, row) in plane.iter().enumerate() {
-                for (k, d) in row.iter().enumerate() {
-                    sum += d * pump.0[i] * signal.0[j] * idler.0[k];
-                }
-            }
-        }
-        sum
+        let t = idler.0;
+        let along = |row: &[f64; 3]| row[0] * t.x + row[1] * t.y + row[2] * t.z;
+        let plane = |rows: &[[f64; 3]; 3]| (0..3).map(|j| signal.0[j] * along(&rows[j])).sum::<f64>();
+        (0..3).map(|i| pump.0[i] * plane(&self.elements[i])).sum()
     }
 
     /// Largest element by size, pm/V.

@@ -197,8 +197,8 @@ fn uniaxial(
     k0: f64,
 ) -> ([Vector3<f64>; 2], Surface, Surface) {
     let a = axes.column(2).into_owned();
-    let o = Surface::quadric(Matrix3::identity() * eta.x, k0);
-    let e = Surface::quadric(Matrix3::identity() * eta.z + a * a.transpose() * (eta.x - eta.z), k0);
+    let o = Surface::quadric(&(Matrix3::identity() * eta.x), k0);
+    let e = Surface::quadric(&(Matrix3::identity() * eta.z + a * a.transpose() * (eta.x - eta.z)), k0);
     // the order of sheets in `displacement` follows from the sign of the pair: r = p where o is fast, r = -p where slow
     match ordinary {
         Sheet::Fast => ([a, a], o, e),

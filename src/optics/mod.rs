@@ -3,11 +3,14 @@
 mod along;
 mod crystal;
 mod index;
+mod indices;
 mod medium;
 mod surface;
 
 pub use along::{Along, along_axes, along_direction};
 pub use crystal::Crystal;
 pub use index::{IndexRow, index_rows, missing};
+pub use indices::Indices;
 pub use medium::{Medium, Polarization, Wave};
+pub(crate) use surface::Quadric;
 pub use surface::{Curvature, Normal, Sheet, Surface};

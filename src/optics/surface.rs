@@ -46,21 +46,32 @@ pub struct Curvature {
 
 /// One sheet of the dispersion surface in the mount frame.
 #[derive(Debug, Clone, Copy)]
-pub struct Surface {
-    k0_squared: f64,
-    shape: Shape,
-}
+pub struct Surface(Shape);
 
 #[derive(Debug, Clone, Copy)]
 enum Shape {
-    /// G = k.M k
-    Quadric(Matrix3<f64>),
+    Quadric(Quadric),
     Branch(Branch),
+}
+
+/// An ellipsoid k.M k = k0^2, solved for its upper half: with everything divided by M_ww,
+///
+/// k_w = sqrt(D) - b,   b = b_u q_u + b_v q_v,   D = k0^2/M_ww - q.Q q.
+#[derive(Debug, Clone, Copy)]
+pub(crate) struct Quadric {
+    ww: f64,
+    /// k0^2/M_ww.
+    top: f64,
+    /// M_uw/M_ww and M_vw/M_ww.
+    lean: [f64; 2],
+    /// Q_ij = M_ij/M_ww - b_i b_j: uu, uv, vv.
+    bowl: [f64; 3],
 }
 
 /// One sheet of a biaxial crystal.
 #[derive(Debug, Clone, Copy)]
 struct Branch {
+    k0_squared: f64,
     /// (alpha + gamma)/2 and (alpha - gamma)/2.
     mean: f64,
     half: f64,
@@ -72,16 +83,10 @@ struct Branch {
     convex: bool,
 }
 
-/// G and its gradient at one k.
-struct Local {
-    value: f64,
-    gradient: Vector3<f64>,
-}
-
 impl Surface {
     /// The ellipsoid k.M k = k0^2.
-    pub(super) fn quadric(matrix: Matrix3<f64>, k0: f64) -> Self {
-        Self { k0_squared: k0 * k0, shape: Shape::Quadric(matrix) }
+    pub(super) fn quadric(matrix: &Matrix3<f64>, k0: f64) -> Self {
+        Self(Shape::Quadric(Quadric::new(matrix, k0)))
     }
 
     /// One sheet of a biaxial crystal with optic axes in the mount frame.
@@ -95,10 +100,7 @@ impl Surface {
         let sign = if sheet == Sheet::Fast { 1.0 } else { -1.0 };
         let convex = sheet == Sheet::Fast || !dimple_in_reach(alpha, gamma, &optic_axes);
         let (mean, half) = (0.5 * (alpha + gamma), 0.5 * (alpha - gamma));
-        Self {
-            k0_squared: k0 * k0,
-            shape: Shape::Branch(Branch { mean, half, gamma, optic_axes, sign, convex }),
-        }
+        Self(Shape::Branch(Branch { k0_squared: k0 * k0, mean, half, gamma, optic_axes, sign, convex }))
     }
 
     /// Whether k_w is a concave function of q for every wave that can leave the face, as it is on every sheet but the
@@ -106,9 +108,18 @@ impl Surface {
     /// is one closed convex curve.
     #[must_use]
     pub fn is_convex(&self) -> bool {
-        match &self.shape {
+        match &self.0 {
             Shape::Quadric(_) => true,
             Shape::Branch(branch) => branch.convex,
+        }
+    }
+
+    /// The sheet as a quadric, if it is one.
+    #[inline]
+    pub(crate) fn as_quadric(&self) -> Option<&Quadric> {
+        match &self.0 {
+            Shape::Quadric(quadric) => Some(quadric),
+            Shape::Branch(_) => None,
         }
     }
 
@@ -116,48 +127,75 @@ impl Surface {
     #[inline]
     #[must_use]
     pub fn normal(&self, q: Tangential) -> Option<Normal> {
-        match &self.shape {
-            Shape::Quadric(m) => {
-                // M_ww k_w^2 + 2 b k_w + c = k0^2, the larger root; dG/dk_w /2 = sqrt(discriminant)
-                let b = m[(0, 2)] * q.u + m[(1, 2)] * q.v;
-                let c = m[(0, 0)] * q.u * q.u + 2.0 * m[(0, 1)] * q.u * q.v + m[(1, 1)] * q.v * q.v;
-                let discriminant = b * b - m[(2, 2)] * (c - self.k0_squared);
-                if discriminant.is_nan() || discriminant <= 0.0 {
-                    return None;
-                }
-                let flow = discriminant.sqrt();
-                let k_w = (flow - b) / m[(2, 2)];
-                let along = |row: usize| m[(row, 0)] * q.u + m[(row, 1)] * q.v + m[(row, 2)] * k_w;
-                Some(Normal { k_w, slope: [-along(0) / flow, -along(1) / flow] })
+        match &self.0 {
+            Shape::Quadric(quadric) => {
+                let normal = quadric.normal(q);
+                (normal.k_w.is_finite() && normal.slope[0].is_finite()).then_some(normal)
             }
-            Shape::Branch(branch) => branch.normal(q, self.k0_squared),
+            Shape::Branch(branch) => branch.normal(q),
         }
     }
 
     /// Second derivatives of k_w where `normal` was found at `q`.
+    #[inline]
     #[must_use]
     pub fn curvature(&self, q: Tangential, normal: &Normal) -> Curvature {
-        let k = Vector3::new(q.u, q.v, normal.k_w);
-        // G(q, k_w(q)) = k0^2 twice differentiated, with H half the Hessian of G and g half its gradient:
-        // k_ij = -(H_ij + H_iw k_j + H_jw k_i + H_ww k_i k_j) / g_w
-        let (h, flow) = match &self.shape {
-            Shape::Quadric(m) => (*m, (m * k).z),
-            Shape::Branch(branch) => (branch.half_hessian(k), 0.5 * branch.local(k).gradient.z),
-        };
-        let s = normal.slope;
-        let second = |i: usize, j: usize| {
-            -(h[(i, j)] + h[(i, 2)] * s[j] + h[(j, 2)] * s[i] + h[(2, 2)] * s[i] * s[j]) / flow
-        };
-        Curvature { uu: second(0, 0), uv: second(0, 1), vv: second(1, 1) }
+        match &self.0 {
+            Shape::Quadric(quadric) => quadric.curvature(q, normal),
+            Shape::Branch(branch) => branch.curvature(q, normal),
+        }
     }
 
     /// Half the gradient of G at wave vector `k` (mount frame): its direction is that of the energy flow.
     #[must_use]
     pub fn flow(&self, k: Vector3<f64>) -> Vector3<f64> {
-        match &self.shape {
-            Shape::Quadric(m) => m * k,
-            Shape::Branch(branch) => 0.5 * branch.local(k).gradient,
+        match &self.0 {
+            Shape::Quadric(quadric) => quadric.flow(k),
+            Shape::Branch(branch) => 0.5 * branch.gradient(k),
         }
+    }
+}
+
+impl Quadric {
+    fn new(m: &Matrix3<f64>, k0: f64) -> Self {
+        let ww = m[(2, 2)];
+        let lean = [m[(0, 2)] / ww, m[(1, 2)] / ww];
+        let bowl = |i: usize, j: usize| m[(i, j)] / ww - lean[i] * lean[j];
+        Self { ww, top: k0 * k0 / ww, lean, bowl: [bowl(0, 0), bowl(0, 1), bowl(1, 1)] }
+    }
+
+    /// k_w and its slopes; not a number where the wave is evanescent.
+    #[inline(always)]
+    pub(crate) fn normal(&self, q: Tangential) -> Normal {
+        let ([lean_u, lean_v], [uu, uv, vv]) = (self.lean, self.bowl);
+        // half the gradient of q.Q q
+        let (u, v) = (uu * q.u + uv * q.v, uv * q.u + vv * q.v);
+        let root = (self.top - (u * q.u + v * q.v)).sqrt();
+        // d k_w/d q_i = -(Q q)_i/sqrt(D) - b_i
+        let inverse = 1.0 / root;
+        Normal {
+            k_w: root - (lean_u * q.u + lean_v * q.v),
+            slope: [-u * inverse - lean_u, -v * inverse - lean_v],
+        }
+    }
+
+    #[inline]
+    fn curvature(&self, q: Tangential, normal: &Normal) -> Curvature {
+        let ([lean_u, lean_v], [uu, uv, vv]) = (self.lean, self.bowl);
+        let root = normal.k_w + lean_u * q.u + lean_v * q.v;
+        // k_ij = -(Q_ij + s_i s_j)/sqrt(D) with s = grad sqrt(D)
+        let (u, v) = (normal.slope[0] + lean_u, normal.slope[1] + lean_v);
+        Curvature { uu: -(uu + u * u) / root, uv: -(uv + u * v) / root, vv: -(vv + v * v) / root }
+    }
+
+    /// M k.
+    fn flow(&self, k: Vector3<f64>) -> Vector3<f64> {
+        let ([lean_u, lean_v], [uu, uv, vv]) = (self.lean, self.bowl);
+        // (M k)_w = M_ww (k_w + b),   (M k)_i = M_ww (Q q)_i + b_i (M k)_w
+        let w = self.ww * (k.z + lean_u * k.x + lean_v * k.y);
+        let u = self.ww * (uu * k.x + uv * k.y) + lean_u * w;
+        let v = self.ww * (uv * k.x + vv * k.y) + lean_v * w;
+        Vector3::new(u, v, w)
     }
 }
 
@@ -181,7 +219,8 @@ fn dimple_in_reach(alpha: f64, gamma: f64, optic_axes: &[Vector3<f64>; 2]) -> bo
 const ON_AXIS: f64 = 1e-12;
 
 impl Branch {
-    fn local(&self, k: Vector3<f64>) -> Local {
+    /// Gradient of G.
+    fn gradient(&self, k: Vector3<f64>) -> Vector3<f64> {
         let [p, r] = &self.optic_axes;
         let (kp, kr) = (k.dot(p), k.dot(r));
         let (across_p, across_r) = (k - p * kp, k - r * kr);
@@ -190,9 +229,8 @@ impl Branch {
         let towards = |across: Vector3<f64>, length: f64| {
             if length > ON_AXIS * size { across / length } else { Vector3::zeros() }
         };
-        let value = self.mean * size * size + self.half * (kp * kr + self.sign * a * b);
         let twist = p * kr + r * kp + (towards(across_p, a) * b + towards(across_r, b) * a) * self.sign;
-        Local { value, gradient: k * (2.0 * self.mean) + twist * self.half }
+        k * (2.0 * self.mean) + twist * self.half
     }
 
     fn half_hessian(&self, k: Vector3<f64>) -> Matrix3<f64> {
@@ -213,32 +251,72 @@ impl Branch {
         Matrix3::identity() * self.mean + twist * (0.5 * self.half)
     }
 
+    fn curvature(&self, q: Tangential, normal: &Normal) -> Curvature {
+        let k = Vector3::new(q.u, q.v, normal.k_w);
+        // G(q, k_w(q)) = k0^2 twice differentiated, with H half the Hessian of G and g half its gradient:
+        // k_ij = -(H_ij + H_iw k_j + H_jw k_i + H_ww k_i k_j) / g_w
+        let (h, flow) = (self.half_hessian(k), 0.5 * self.gradient(k).z);
+        let s = normal.slope;
+        let second = |i: usize, j: usize| {
+            -(h[(i, j)] + h[(i, 2)] * s[j] + h[(j, 2)] * s[i] + h[(2, 2)] * s[i] * s[j]) / flow
+        };
+        Curvature { uu: second(0, 0), uv: second(0, 1), vv: second(1, 1) }
+    }
+
     /// Newton on G(q, k_w) = k0^2 from the sphere of the largest index, which lies outside both sheets.
-    fn normal(&self, q: Tangential, k0_squared: f64) -> Option<Normal> {
+    fn normal(&self, q: Tangential) -> Option<Normal> {
         const STEPS: usize = 60;
-        let outer = k0_squared / self.gamma - q.u * q.u - q.v * q.v;
+        let outer = self.k0_squared / self.gamma - q.u * q.u - q.v * q.v;
         if outer.is_nan() || outer <= 0.0 {
             return None;
         }
-        let mut k = Vector3::new(q.u, q.v, outer.sqrt());
+        let mut k_w = outer.sqrt();
+        let mut before: f64 = 0.0;
         for _ in 0..STEPS {
-            let here = self.local(k);
-            if here.gradient.z <= 0.0 {
+            let [excess, slope] = self.upwards(q, k_w);
+            if slope <= 0.0 {
                 return None;
             }
-            let step = (here.value - k0_squared) / here.gradient.z;
-            k.z -= step;
-            if k.z <= 0.0 {
+            let step = excess / slope;
+            k_w -= step;
+            if k_w <= 0.0 {
                 return None;
             }
-            if step.abs() <= 4.0 * f64::EPSILON * k.z {
-                let g = self.local(k).gradient;
-                return Some(Normal { k_w: k.z, slope: [-g.x / g.z, -g.y / g.z] });
+            // errors that square leave step (step/before)^2 to the next step
+            let (size, shrink) = (step.abs(), step / before);
+            if size <= 4.0 * f64::EPSILON * k_w || size * shrink * shrink <= 0.1 * f64::EPSILON * k_w {
+                return Some(self.found(q, k_w));
             }
+            before = step;
         }
         // rounding can keep the last step just above the bound: accept what Newton settled on
-        let g = self.local(k).gradient;
-        let settled = (self.local(k).value - k0_squared).abs() <= 1e-13 * k0_squared;
-        settled.then(|| Normal { k_w: k.z, slope: [-g.x / g.z, -g.y / g.z] })
+        let settled = self.upwards(q, k_w)[0].abs() <= 1e-13 * self.k0_squared;
+        settled.then(|| self.found(q, k_w))
+    }
+
+    fn found(&self, q: Tangential, k_w: f64) -> Normal {
+        let g = self.gradient(Vector3::new(q.u, q.v, k_w));
+        Normal { k_w, slope: [-g.x / g.z, -g.y / g.z] }
+    }
+
+    /// G - k0^2 and dG/dk_w on the way up at fixed q.
+    #[inline]
+    fn upwards(&self, q: Tangential, k_w: f64) -> [f64; 2] {
+        let k = Vector3::new(q.u, q.v, k_w);
+        // |k x a|^2 and half its derivative, (k x a).(w x a)
+        let across = |a: &Vector3<f64>| {
+            let (x, y, z) = (k.y * a.z - k.z * a.y, k.z * a.x - k.x * a.z, k.x * a.y - k.y * a.x);
+            [x * x + y * y + z * z, y * a.x - x * a.y]
+        };
+        let [p, r] = &self.optic_axes;
+        let (kp, kr) = (k.dot(p), k.dot(r));
+        let ([aa, aw], [bb, bw]) = (across(p), across(r));
+        let size = k.norm_squared();
+        let ab = (aa * bb).sqrt();
+        // d(ab)/dk_w = (aw bb + bw aa)/(ab); on an optic axis the sheets touch and have no slope of their own
+        let twist = if ab > ON_AXIS * size { (aw * bb + bw * aa) / ab } else { 0.0 };
+        let value = self.mean * size + self.half * (kp * kr + self.sign * ab);
+        let slope = 2.0 * self.mean * k_w + self.half * (p.z * kr + r.z * kp + self.sign * twist);
+        [value - self.k0_squared, slope]
     }
 }
