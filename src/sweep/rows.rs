@@ -3,7 +3,8 @@
 use super::Fault;
 use crate::job::Setup;
 use crate::job::plan::{Report, Search};
-use crate::matching::{Status, Target, Want, cones, tune};
+use crate::matching::{Cones, Status, Target, Want, cones_with, tune};
+use crate::optics::Indices;
 use crate::report::{Column, Lines, Rows as _, cones as report, cut, tilt};
 
 /// Columns of a report, without the two that end every table.
@@ -26,12 +27,13 @@ pub(super) fn write(
     report: Report,
     setup: &mut Setup,
     search: &Search,
+    indices: &mut Indices,
     out: &mut Lines,
 ) -> Result<(), Fault> {
     match report {
         Report::Cut => write_cut(setup, search, out),
-        Report::Rings => write_rings(setup, out),
-        Report::Crossings => write_crossings(setup, out),
+        Report::Rings => write_rings(setup, indices, out),
+        Report::Crossings => write_crossings(setup, indices, out),
         Report::Tilt => write_tilt(setup, search, out),
     }
 }
@@ -42,14 +44,19 @@ pub(super) fn write_blank(columns: usize, status: Status, out: &mut Lines) {
     out.end(false, status);
 }
 
-fn write_rings(setup: &Setup, out: &mut Lines) -> Result<(), Fault> {
-    let found = cones(&setup.crystals, setup.pump(), &setup.signals(), setup.interaction, Want::Rings)?;
+fn find(setup: &Setup, indices: &mut Indices, want: Want) -> Result<Cones, Fault> {
+    let Setup { crystals, interaction, .. } = setup;
+    Ok(cones_with(indices, crystals, setup.pump(), &setup.signals(), *interaction, want)?)
+}
+
+fn write_rings(setup: &Setup, indices: &mut Indices, out: &mut Lines) -> Result<(), Fault> {
+    let found = find(setup, indices, Want::Rings)?;
     found.rings.iter().for_each(|row| report::ring_row(row, setup.screen, out));
     Ok(())
 }
 
-fn write_crossings(setup: &Setup, out: &mut Lines) -> Result<(), Fault> {
-    let found = cones(&setup.crystals, setup.pump(), &setup.signals(), setup.interaction, Want::Crossings)?;
+fn write_crossings(setup: &Setup, indices: &mut Indices, out: &mut Lines) -> Result<(), Fault> {
+    let found = find(setup, indices, Want::Crossings)?;
     if found.crossings.is_empty() {
         return Err(Fault::invalid("no two rings have opposite polarization, so none can cross"));
     }

@@ -8,6 +8,7 @@ use super::{Fault, Sweep, rows};
 use crate::job::Setup;
 use crate::job::axes::Value;
 use crate::matching::Status;
+use crate::optics::Indices;
 use crate::report::{Lead, Lines};
 
 /// Lines of neighbouring points.
@@ -56,13 +57,14 @@ pub struct Worker<'a> {
     sweep: &'a Sweep<'a>,
     lines: Lines,
     ready: Vec<(u64, Setup)>,
+    indices: Indices,
 }
 
 impl<'a> Sweep<'a> {
     /// For one thread.
     #[must_use]
     pub fn worker(&'a self) -> Worker<'a> {
-        Worker { sweep: self, lines: Lines::default(), ready: Vec::new() }
+        Worker { sweep: self, lines: Lines::default(), ready: Vec::new(), indices: Indices::default() }
     }
 
     /// The header line.
@@ -120,6 +122,6 @@ impl Worker<'_> {
         let setup = &mut self.ready[at].1;
         let mut search = plan.search;
         setups.set(plan, point, setup, &mut search)?;
-        rows::write(plan.report, setup, &search, &mut self.lines)
+        rows::write(plan.report, setup, &search, &mut self.indices, &mut self.lines)
     }
 }
