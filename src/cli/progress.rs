@@ -1,8 +1,9 @@
 //! How far a sweep has come, on a terminal.
 
+use std::fmt;
 use std::io::{self, IsTerminal};
 
-use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
+use indicatif::{ProgressBar, ProgressDrawTarget, ProgressState, ProgressStyle};
 
 /// Shows points, rate and time left on standard error, if that is a terminal and messages are wanted.
 pub struct Progress(ProgressBar);
@@ -13,8 +14,12 @@ impl Progress {
         let shown = io::stderr().is_terminal() && !quiet;
         let target = if shown { ProgressDrawTarget::stderr_with_hz(5) } else { ProgressDrawTarget::hidden() };
         let bar = ProgressBar::with_draw_target(Some(points), target).with_position(done);
-        let look = "{wide_bar} {human_pos} of {human_len} points, {per_sec}, {eta} left";
-        bar.set_style(ProgressStyle::with_template(look).expect("a template of known keys"));
+        let look = "{wide_bar} {pos} of {len} points, {rate}, {eta} left";
+        let style = ProgressStyle::with_template(look).expect("a template of known keys");
+        bar.set_style(style.with_key("rate", |state: &ProgressState, out: &mut dyn fmt::Write| {
+            // a bar that cannot be drawn is no reason to stop
+            let _ = write!(out, "{:.0}/s", state.per_sec());
+        }));
         bar.reset_eta();
         Self(bar)
     }
