@@ -290,7 +290,9 @@ impl Curve {
         let next = (j + 1) % self.count;
         let (a, b) = (self.samples[j], self.samples[next]);
         let step = TAU / self.count as f64;
-        cubic([[a, a * self.turns[j]], [b, b * self.turns[next]]], step, share)
+        // near both, should the curve jump between them
+        let guess = cubic([[a, a * self.turns[j]], [b, b * self.turns[next]]], step, share);
+        guess.max(0.9 * a.min(b)).min(1.1 * a.max(b))
     }
 
     /// Point and tangent (d point/d phi) at an azimuth about the axis.
