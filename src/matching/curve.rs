@@ -173,8 +173,8 @@ impl Curve {
         let few = self.samples;
         let around = |j: usize, k: usize| few[(j + FEW_SAMPLES + k - 3) % FEW_SAMPLES];
         self.count = SAMPLES;
-        for j in 0..FEW_SAMPLES {
-            self.samples[3 * j] = few[j];
+        for (j, t) in few[..FEW_SAMPLES].iter().enumerate() {
+            self.samples[3 * j] = *t;
             self.samples[3 * j + 1] = (0..8).map(|k| WEIGHTS[k] * around(j, k)).sum();
             self.samples[3 * j + 2] = (0..8).map(|k| WEIGHTS[7 - k] * around(j, k)).sum();
         }

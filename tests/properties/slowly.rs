@@ -135,7 +135,11 @@ fn no_crossing_is_lost() {
             }
         }
         // what is found besides are pairs of crossings between two of the many samples
-        prop_assert!(met.len() >= count && (met.len() - count) % 2 == 0, "{} for {count}", met.len());
+        prop_assert!(
+            met.len() >= count && (met.len() - count).is_multiple_of(2),
+            "{} for {count}",
+            met.len()
+        );
         for crossing in &met {
             for mismatch in [&first, &second] {
                 let off = value(mismatch, crossing.direction).expect("a pair").abs();
