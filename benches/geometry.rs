@@ -9,7 +9,7 @@ use criterion::{Criterion, criterion_group, criterion_main};
 use twincone::frame::Tangential;
 use twincone::matching::*;
 use twincone::material::Catalogue;
-use twincone::optics::{Crystal, Medium, Sheet};
+use twincone::optics::{Crystal, Indices, Medium, Sheet};
 use twincone::quantity::{Angle, Length, Wavelength};
 
 fn crystal(material: &str, theta: f64, phi: f64) -> Crystal {
@@ -123,7 +123,10 @@ fn answers(c: &mut Criterion) {
     let Photons { pump, signal, .. } = photons();
     let crystals = [crossed()];
     for want in [Want::Rings, Want::Crossings, Want::Both] {
-        let ask = |crystals: &[Crystal]| cones(crystals, pump, &[signal], Interaction::Two, want);
+        let mut indices = Indices::default();
+        let mut ask = |crystals: &[Crystal]| {
+            cones_with(&mut indices, crystals, pump, &[signal], Interaction::Two, want)
+        };
         c.bench_function(&format!("cones, {want:?}"), |b| b.iter(|| ask(black_box(&crystals))));
     }
     let question = Design {

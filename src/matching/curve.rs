@@ -173,8 +173,8 @@ impl Curve {
         let few = self.samples;
         let around = |j: usize, k: usize| few[(j + FEW_SAMPLES + k - 3) % FEW_SAMPLES];
         self.count = SAMPLES;
-        for j in 0..FEW_SAMPLES {
-            self.samples[3 * j] = few[j];
+        for (j, t) in few[..FEW_SAMPLES].iter().enumerate() {
+            self.samples[3 * j] = *t;
             self.samples[3 * j + 1] = (0..8).map(|k| WEIGHTS[k] * around(j, k)).sum();
             self.samples[3 * j + 2] = (0..8).map(|k| WEIGHTS[7 - k] * around(j, k)).sum();
         }
@@ -290,7 +290,9 @@ impl Curve {
         let next = (j + 1) % self.count;
         let (a, b) = (self.samples[j], self.samples[next]);
         let step = TAU / self.count as f64;
-        cubic([[a, a * self.turns[j]], [b, b * self.turns[next]]], step, share)
+        // near both, should the curve jump between them
+        let guess = cubic([[a, a * self.turns[j]], [b, b * self.turns[next]]], step, share);
+        guess.max(0.9 * a.min(b)).min(1.1 * a.max(b))
     }
 
     /// Point and tangent (d point/d phi) at an azimuth about the axis.

@@ -67,10 +67,11 @@ fn polarization(text: &str) -> Option<Polarization> {
 
 impl fmt::Display for Process {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        if f.width().is_none() && f.precision().is_none() {
-            return write!(f, "{} -> {} + {}", self.pump, self.signal, self.idler);
+        let Self { pump, signal, idler } = self;
+        match (f.width(), f.precision()) {
+            (None, None) => write!(f, "{pump} -> {signal} + {idler}"),
+            _ => f.pad(&format!("{pump} -> {signal} + {idler}")),
         }
-        f.pad(&format!("{self}"))
     }
 }
 

@@ -8,5 +8,6 @@ mod crossings;
 mod crystals;
 mod rings;
 mod round_trips;
+mod slowly;
 mod symmetries;
 mod waves;
