@@ -146,14 +146,39 @@ pub fn reach(first: Traced<'_>, other: &Mismatch) -> Option<[f64; 2]> {
         }
         stretch(here.value);
         if here.slope.is_sign_negative() != there.slope.is_sign_negative() {
-            let slope = |phi: f64| along(first, other, phi).map(|s| s.slope);
-            let (a, b) = interval(first.curve, j);
-            if let Some(phi) = bracketed(slope, a, b, here.slope) {
-                stretch(along(first, other, phi)?.value);
-            }
+            stretch(turning(first, other, interval(first.curve, j), [here.slope, there.slope])?);
         }
     }
     Some(reach)
+}
+
+/// The stationary value between two azimuths at which the slopes have opposite signs: by the line through the slopes of
+/// a bracket that shrinks. An azimuth off by e costs the value e squared.
+fn turning(
+    first: Traced<'_>,
+    other: &Mismatch,
+    (mut a, mut b): (f64, f64),
+    [mut at_a, mut at_b]: [f64; 2],
+) -> Option<f64> {
+    const STEPS: usize = 12;
+    let near = 1e-8 * (b - a);
+    let mut last = f64::NAN;
+    for _ in 0..STEPS {
+        let phi = (a - at_a * (b - a) / (at_b - at_a)).clamp(a, b);
+        let here = along(first, other, phi)?;
+        let still = (phi - last).abs() <= near || (phi - a).min(b - phi) <= near;
+        last = phi;
+        if still {
+            return Some(here.value);
+        }
+        // the end that stays counts half, so that it does not stay for ever
+        if here.slope.is_sign_negative() == at_a.is_sign_negative() {
+            (a, at_a, at_b) = (phi, here.slope, 0.5 * at_b);
+        } else {
+            (b, at_b, at_a) = (phi, here.slope, 0.5 * at_a);
+        }
+    }
+    along(first, other, last).map(|there| there.value)
 }
 
 /// Azimuths of sample j and the next.
