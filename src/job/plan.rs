@@ -1,9 +1,9 @@
 //! What a sweep is to write: its report, its axes, and what the searches of some reports look for.
 
 use super::axes::Grid;
-use super::description::{Description, Sweep, Text, Wanted};
+use super::description::{Description, Sweep, Text};
 use super::document::{Document, JobError};
-use super::resolve::target_angle;
+use super::resolve::targets;
 use crate::matching::{Actuator, Find, Target};
 use crate::places::nearest;
 
@@ -107,7 +107,14 @@ fn search(document: &Document, sweep: &Sweep) -> Result<Search, JobError> {
     ];
     let target = match &sweep.target {
         Some(written) => {
-            let mut all = targets(document, written.get_ref())?;
+            let wanted = written.get_ref();
+            let angles = [&wanted.crossing, &wanted.half_angle, &wanted.separation].map(Option::as_ref);
+            let flags = [
+                (wanted.collinear, Target::Collinear),
+                (wanted.beamlike, Target::Beamlike),
+                (wanted.touching, Target::Touching),
+            ];
+            let mut all = targets(document, angles, &flags)?;
             if all.len() != 1 {
                 return Err(
                     document.fault(written.span(), "give one target, such as { crossing = \"3 deg\" }")
@@ -122,29 +129,6 @@ fn search(document: &Document, sweep: &Sweep) -> Result<Search, JobError> {
         by: sweep.by.as_ref().map(|text| choice(document, text, &actuators)).transpose()?,
         find: sweep.find.as_ref().map_or(Ok(Find::Theta), |text| choice(document, text, &finds))?,
     })
-}
-
-fn targets(document: &Document, wanted: &Wanted) -> Result<Vec<Target>, JobError> {
-    let angle = |text: &Text, most: f64| {
-        target_angle(text.get_ref(), most).map_err(|why| document.fault(text.span(), &why))
-    };
-    let mut all = Vec::new();
-    if let Some(text) = &wanted.crossing {
-        all.push(Target::Crossing(angle(text, 60.0)?));
-    }
-    if let Some(text) = &wanted.half_angle {
-        all.push(Target::HalfAngle(angle(text, 60.0)?));
-    }
-    if let Some(text) = &wanted.separation {
-        all.push(Target::Separation(angle(text, 120.0)?));
-    }
-    let flags = [
-        (wanted.collinear, Target::Collinear),
-        (wanted.beamlike, Target::Beamlike),
-        (wanted.touching, Target::Touching),
-    ];
-    all.extend(flags.into_iter().filter(|(flag, _)| *flag == Some(true)).map(|(_, target)| target));
-    Ok(all)
 }
 
 fn choice<T: Copy>(document: &Document, text: &Text, choices: &[(&str, T)]) -> Result<T, JobError> {

@@ -331,30 +331,36 @@ fn given_cut(
     if let (Some(text), Some(theta)) = (&cut.theta, theta) {
         reader.within(text, limits::theta(theta))?;
     }
-    let angle =
-        |text: &Text, most: f64| target_angle(text.get_ref(), most).map_err(|why| reader.fault(text, &why));
-    let mut targets = Vec::new();
-    if let Some(text) = &cut.crossing {
-        targets.push(Target::Crossing(angle(text, 60.0)?));
-    }
-    if let Some(text) = &cut.half_angle {
-        targets.push(Target::HalfAngle(angle(text, 60.0)?));
-    }
-    if let Some(text) = &cut.separation {
-        targets.push(Target::Separation(angle(text, 120.0)?));
-    }
-    if cut.collinear == Some(true) {
-        targets.push(Target::Collinear);
-    }
-    if cut.beamlike == Some(true) {
-        targets.push(Target::Beamlike);
-    }
+    let angles = [&cut.crossing, &cut.half_angle, &cut.separation].map(Option::as_ref);
+    let flags = [(cut.collinear, Target::Collinear), (cut.beamlike, Target::Beamlike)];
+    let targets = targets(reader.document, angles, &flags)?;
     if targets.len() + usize::from(theta.is_some()) > 1 {
         return Err(reader.fault(written, "give theta or one target for the cut, not both"));
     }
     let phi = reader.maybe::<Angle>(cut.phi.as_ref())?;
     crystal.cut = Cut { theta: theta.unwrap_or_default(), phi: phi.unwrap_or_default() };
     Ok(GivenCut { theta: theta.is_some(), phi: phi.is_some(), target: targets.first().copied() })
+}
+
+/// The targets that are named: a crossing, half angle or separation, and what is said by a flag.
+pub(super) fn targets(
+    document: &Document,
+    [crossing, half_angle, separation]: [Option<&Text>; 3],
+    flags: &[(Option<bool>, Target)],
+) -> Result<Vec<Target>, JobError> {
+    let by_angle: [(_, fn(f64) -> Target, f64); 3] = [
+        (crossing, Target::Crossing, 60.0),
+        (half_angle, Target::HalfAngle, 60.0),
+        (separation, Target::Separation, 120.0),
+    ];
+    let mut all = Vec::new();
+    for (text, target, most) in by_angle {
+        let Some(text) = text else { continue };
+        let angle = target_angle(text.get_ref(), most).map_err(|why| document.fault(text.span(), &why))?;
+        all.push(target(angle));
+    }
+    all.extend(flags.iter().filter(|(flag, _)| *flag == Some(true)).map(|(_, target)| *target));
+    Ok(all)
 }
 
 /// An angle that a target may have, in radians: above 0 and below `most` degrees.
