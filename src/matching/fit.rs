@@ -20,8 +20,8 @@ pub(super) fn normal(points: impl Iterator<Item = Vector3<f64>>, towards: &Vecto
     smallest([xx, xy, xz, yy, yz, zz], towards)
 }
 
-/// Eigenvector of the smallest eigenvalue of a symmetric matrix. It is that of the largest one of the adjugate, whose eigenvalues are products of
-/// two: where points lie near a plane its powers converge at once.
+/// Eigenvector of the smallest eigenvalue of a symmetric matrix (xx, xy, xz, yy, yz, zz). It is that of the largest one
+/// of the adjugate, whose eigenvalues are products of two: where points lie near a plane its powers converge at once.
 fn smallest([xx, xy, xz, yy, yz, zz]: [f64; 6], towards: &Vector3<f64>) -> Vector3<f64> {
     const STEPS: usize = 20;
     let (axx, axy, axz) = (yy * zz - yz * yz, xz * yz - xy * zz, xy * yz - xz * yy);
@@ -72,7 +72,6 @@ fn improve<'a, I: Iterator<Item = &'a Vector2<f64>>>(
     for _ in 0..50 {
         // with e = (p - c)/|p - c| and r = |p - c| - R:  gradient -sum r (e, 1);
         // Hessian sum [(1 - R/|p - c|) I + R/|p - c| e e^T, e; e^T, 1]
-        let mut hessian = Matrix3::zeros();
         let mut right = Vector3::zeros();
         let (mut xx, mut xy, mut yy, mut x, mut y, mut n) = (0.0, 0.0, 0.0, 0.0, 0.0, 0.0);
         for p in points() {
@@ -89,7 +88,7 @@ fn improve<'a, I: Iterator<Item = &'a Vector2<f64>>>(
             y += ey;
             n += 1.0;
         }
-        hessian.copy_from(&Matrix3::new(xx, xy, x, xy, yy, y, x, y, n));
+        let hessian = Matrix3::new(xx, xy, x, xy, yy, y, x, y, n);
         let Some(step) = hessian.cholesky().map(|c| c.solve(&right)) else { break };
         *centre += Vector2::new(step.x, step.y);
         *radius += step.z;

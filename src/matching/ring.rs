@@ -150,7 +150,7 @@ fn stride(curve: &Curve) -> usize {
     }
     let [a, b, c] = sums;
     let spread = a.max(b).max(c) - a.min(b).min(c);
-    if spread <= 1e-13 * a { 3 } else { 1 }
+    if spread <= 1e-12 * a { 3 } else { 1 }
 }
 
 /// Half angle of the cone that fits the wave vectors inside, radians.

@@ -220,16 +220,17 @@ const ON_AXIS: f64 = 1e-12;
 
 impl Branch {
     /// Gradient of G.
+    #[inline]
     fn gradient(&self, k: Vector3<f64>) -> Vector3<f64> {
         let [p, r] = &self.optic_axes;
         let (kp, kr) = (k.dot(p), k.dot(r));
         let (across_p, across_r) = (k - p * kp, k - r * kr);
-        let (a, b) = (across_p.norm(), across_r.norm());
-        let size = k.norm();
-        let towards = |across: Vector3<f64>, length: f64| {
-            if length > ON_AXIS * size { across / length } else { Vector3::zeros() }
-        };
-        let twist = p * kr + r * kp + (towards(across_p, a) * b + towards(across_r, b) * a) * self.sign;
+        let (aa, bb) = (across_p.norm_squared(), across_r.norm_squared());
+        let ab = (aa * bb).sqrt();
+        // grad |k x p| |k x r| = ab (across_p/a^2 + across_r/b^2); a vector on its axis has no direction of its own
+        let on_axis = ON_AXIS * ON_AXIS * k.norm_squared();
+        let share = |square: f64| if square > on_axis { self.sign * ab / square } else { 0.0 };
+        let twist = p * kr + r * kp + across_p * share(aa) + across_r * share(bb);
         k * (2.0 * self.mean) + twist * self.half
     }
 
