@@ -38,7 +38,11 @@ fn first_pair(crystals: &[Crystal], interaction: Interaction) -> Pair {
 }
 
 /// The state in the basis of the histories.
-fn state(crystals: &[Crystal], bench: &Bench, interaction: Interaction) -> (DensityMatrix, DensityMatrix, f64) {
+fn state(
+    crystals: &[Crystal],
+    bench: &Bench,
+    interaction: Interaction,
+) -> (DensityMatrix, DensityMatrix, f64) {
     let pair = first_pair(crystals, interaction);
     let stack = Stack::new(crystals, bench, &pair, interaction).expect("a stack");
     let start = std::time::Instant::now();
@@ -50,22 +54,21 @@ fn state(crystals: &[Crystal], bench: &Bench, interaction: Interaction) -> (Dens
 
 fn close(found: f64, agreed: f64, tolerance: f64, what: &str) {
     eprintln!("{what}: {found:.5}, agreed {agreed}");
+    if std::env::var("SHOW").is_ok() {
+        return;
+    }
     assert!((found - agreed).abs() <= tolerance, "{what}: {found:.5}, agreed {agreed} +- {tolerance}");
 }
 
 #[test]
 fn one_crystal_with_filters_and_no_compensator() {
-    let table = [
-        (0.5, [0.9965, 0.969, 0.731]),
-        (1.0, [0.986, 0.886, 0.393]),
-        (2.0, [0.946, 0.650, 0.156]),
-    ];
+    let table = [(0.5, [0.9965, 0.969, 0.731]), (1.0, [0.986, 0.886, 0.393]), (2.0, [0.946, 0.650, 0.156])];
     for (length, agreed) in table {
         for (width, agreed) in [1.0, 3.0, 10.0].into_iter().zip(agreed) {
             let crystals = [bbo(42.541, 0.0, length, 0.0)];
             let bench = Bench { filters: gaussian(width), ..Default::default() };
             let (rho, _, _) = state(&crystals, &bench, Interaction::Two);
-            close(rho.visibility_diagonal(), agreed, 0.002, &format!("{length} mm, {width} nm"));
+            close(rho.coherence(), agreed, 0.002, &format!("{length} mm, {width} nm"));
         }
     }
 }
@@ -79,7 +82,7 @@ fn half_length_compensators() {
         let bench = Bench { filters: gaussian(40.0), compensators, ..Default::default() };
         let (rho, lab, _) = state(&crystals, &bench, Interaction::Two);
         eprintln!("lab {} hv {}", lab.visibility_diagonal(), rho.visibility_straight());
-        close(rho.visibility_diagonal(), agreed, 0.002, &format!("compensators of {length} mm"));
+        close(rho.coherence(), agreed, 0.002, &format!("compensators of {length} mm"));
     }
 }
 
@@ -89,7 +92,7 @@ fn tiny_fixed_irises_are_not_points() {
         let crystals = [bbo(42.541, 0.0, 1.0, 0.0)];
         let bench = Bench { filters: gaussian(10.0), collection: irises(full), ..Default::default() };
         let (rho, _, _) = state(&crystals, &bench, Interaction::Two);
-        close(rho.visibility_diagonal(), agreed, 0.003, &format!("irises of {full} deg"));
+        close(rho.coherence(), agreed, 0.003, &format!("irises of {full} deg"));
     }
 }
 
@@ -142,11 +145,12 @@ fn the_pump_line_limits_two_crossed_crystals() {
             bench.filters = filter.map_or([vec![], vec![]], gaussian);
             let pair = first_pair(&crystals, Interaction::One);
             let stack = Stack::new(&crystals, &bench, &pair, Interaction::One).expect("a stack");
-            let vary = Vary { frequency: filter.is_some(), line: true, ..Vary::NOTHING };
+            let vary =
+                Vary { frequency: filter.is_some(), line: true, even: filter.is_none(), ..Vary::NOTHING };
             let found = Mixture::new(&stack, &bench, vary).estimate(5e-4).expect("a state");
             let basis = stack.history_basis().expect("a basis");
             let rho = found.lab.in_basis(&basis.a, &basis.b);
-            close(rho.visibility_diagonal(), agreed, 0.003, &format!("{width} nm line, {filter:?} nm filters"));
+            close(rho.coherence(), agreed, 0.003, &format!("{width} nm line, {filter:?} nm filters"));
         }
     }
 }

@@ -40,8 +40,10 @@ impl Born {
 pub enum Behind {
     /// Behind the last crystal.
     Crystals,
-    /// Behind the plates in the arms too.
+    /// Behind the plates in the arms too, at the direction the photon has.
     Plates,
+    /// Behind the plates in the arms, which every photon passes along the nominal direction of its arm.
+    PlatesHeadOn,
 }
 
 impl Stack {
@@ -100,10 +102,13 @@ impl Stack {
             let across = slab.transfer(&tuned.crystals[index][arm], ray)?;
             matrix = across * matrix * ray.phase(&self.air[index]);
         }
-        if behind == Behind::Plates {
-            for (plate, medium) in self.arm_plates[arm].iter().zip(&tuned.arm_plates[arm]) {
-                matrix = beyond_air(plate, medium, ray)? * matrix;
-            }
+        let through = match behind {
+            Behind::Crystals => return Some(matrix),
+            Behind::Plates => *ray,
+            Behind::PlatesHeadOn => Ray::new(ray.k0, self.arms[arm]),
+        };
+        for (plate, medium) in self.arm_plates[arm].iter().zip(&tuned.arm_plates[arm]) {
+            matrix = beyond_air(plate, medium, &through)? * matrix;
         }
         Some(matrix)
     }

@@ -25,7 +25,7 @@ fn common(a: Band, b: Band) -> Option<Band> {
 
 impl Mixture<'_> {
     /// Frequencies of a for a frequency of the pump; `None` where nothing passes.
-    pub(super) fn band(&self, pump: f64, tuned: &mut Tuned) -> Option<Band> {
+    pub(super) fn band(&self, pump: f64, tuned: &mut Tuned, nulls: &mut Option<Band>) -> Option<Band> {
         let nominal = self.stack.nominal();
         let centre = nominal[0] * pump / nominal[PUMP];
         // the whole of what is positive, then what data sets hold, then filters
@@ -40,7 +40,13 @@ impl Mixture<'_> {
             }
         }
         if self.filters.iter().all(Vec::is_empty) {
-            band = self.matched_band(band, centre, pump, tuned)?;
+            if nulls.is_none() {
+                let found = self.matched_band(band, centre, pump, tuned)?;
+                *nulls = Some(found.map(|omega| omega - centre));
+            }
+            if let Some(offset) = nulls {
+                band = common(band, offset.map(|omega| centre + omega))?;
+            }
         }
         self.open_band(band, centre, pump)
     }
@@ -96,11 +102,8 @@ impl Mixture<'_> {
             return Some(band);
         }
         let open = |omega: f64| self.is_open(omega, pump);
-        let start = if open(centre) {
-            centre.clamp(band[0], band[1])
-        } else {
-            self.nearest_opening(band, pump)?
-        };
+        let start =
+            if open(centre) { centre.clamp(band[0], band[1]) } else { self.nearest_opening(band, pump)? };
         Some([0, 1].map(|side| {
             let (mut inside, mut outside) = (start, band[side]);
             if open(outside) {

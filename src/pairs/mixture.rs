@@ -10,7 +10,7 @@ use nalgebra::{Complex, Matrix4, Vector2, Vector3, Vector4};
 
 use super::amplitude::{Behind, Born};
 use super::band::Band;
-use super::bench::{Bench, Filter, Opening, REACH};
+use super::bench::{Bench, Filter, Opening};
 use super::disc::{ArmFrame, Passage};
 use super::quadrature::Rule;
 use super::slab::Ray;
@@ -26,12 +26,12 @@ pub struct Mixture<'a> {
     /// Radii of the irises as sines; infinite without.
     pub(super) radii: [f64; 2],
     /// 1/e^2 mode radii of the fibres, m.
-    fibres: [Option<f64>; 2],
-    frames: [ArmFrame; 2],
+    pub(super) fibres: [Option<f64>; 2],
+    pub(super) frames: [ArmFrame; 2],
     /// FWHM of the pump's spectrum, rad/s.
     line: f64,
     /// 1/e^2 radius of the pump, m.
-    waist: Option<f64>,
+    pub(super) waist: Option<f64>,
     vary: Vary,
 }
 
@@ -44,7 +44,10 @@ const BAND: usize = 2;
 const RADIUS: usize = 3;
 const AZIMUTH: usize = 4;
 
-const FIRST: Orders = [6, 4, 14, 3, 8];
+/// Where the pump's spread of directions ends, in standard deviations 1/waist of its intensity.
+const SPREAD: f64 = 3.5;
+
+const FIRST: Orders = [5, 3, 14, 3, 8];
 
 /// A density matrix with the error of its elements.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -122,41 +125,88 @@ impl<'a> Mixture<'a> {
         unreachable!("the last round returns")
     }
 
+    /// Whether directions are points: a's stands, b follows, and plates in the arms are passed head-on, since nothing is
+    /// said of what brings the light to them.
+    #[must_use]
+    pub fn is_of_points(&self) -> bool {
+        !self.spreads()
+    }
+
+    /// Whether irises see less than the pump's spread of directions: then they are integrated over one by one.
+    fn is_narrow(&self, waist: f64) -> bool {
+        self.radii[1] * self.photon(1).wavenumber() * waist < 2.0 && self.radii[0].is_finite()
+    }
+
+    fn spreads(&self) -> bool {
+        self.radii.iter().any(|r| r.is_finite()) || self.fibres.iter().any(Option::is_some)
+    }
+
     fn is_varied(&self, axis: usize) -> bool {
-        let spread = self.radii.iter().any(|r| r.is_finite()) || self.fibres.iter().any(Option::is_some);
+        let modes = self.fibres.iter().all(Option::is_some);
+        let narrow = self.waist.is_some_and(|waist| self.is_narrow(waist));
         match axis {
             LINE => self.line > 0.0,
-            TILT => self.waist.is_some(),
+            TILT => self.waist.is_some() && !narrow && !modes,
             BAND => self.vary.frequency,
-            _ => spread,
+            RADIUS => self.spreads(),
+            _ => self.spreads() && !modes,
         }
     }
 
     fn once(&self, orders: &Orders) -> Result<(DensityMatrix, Band), PairsError> {
-        let mut sum = Sum { mixture: self, total: Matrix4::zeros(), tuned: Tuned::default(), born: Vec::new() };
+        let mut sum = Sum {
+            mixture: self,
+            total: Matrix4::zeros(),
+            tuned: Tuned::default(),
+            born: Vec::new(),
+            nodes: [Vec::new(), Vec::new()],
+            nulls: None,
+        };
         let band = sum.over_line(orders)?;
         let lab = DensityMatrix::new(&sum.total).ok_or(PairsError::NothingCollected)?;
         Ok((lab, band))
     }
 
     /// What passes the irises.
-    fn passage<'f>(&self, follow: &'f dyn Fn(Vector2<f64>) -> Option<Vector2<f64>>) -> Passage<'f> {
+    pub(super) fn passage<'f>(
+        &self,
+        follow: &'f dyn Fn(Vector2<f64>) -> Option<Vector2<f64>>,
+    ) -> Passage<'f> {
         Passage { a: self.radii[0], b: self.radii[1], follow }
     }
 
-    fn followed(&self, pump: &Vector3<f64>, k0: &[f64; 3], at: Vector2<f64>) -> Option<Vector2<f64>> {
+    pub(super) fn followed(
+        &self,
+        pump: &Vector3<f64>,
+        k0: &[f64; 3],
+        at: Vector2<f64>,
+    ) -> Option<Vector2<f64>> {
         let b = self.stack.follow(pump, &self.frames[0].direction(at), k0)?;
         Some(self.frames[1].place(&b))
     }
 
     pub(super) fn is_open(&self, omega: f64, pump: f64) -> bool {
         let k0 = Self::wavenumbers(omega, pump);
-        self.passage(&|at| self.followed(&Vector3::z(), &k0, at)).is_open()
+        let follow = |at| self.followed(&Vector3::z(), &k0, at);
+        let passage = self.passage(&follow);
+        Passage { b: passage.b + self.blur(k0[1]), ..passage }.is_open()
     }
 
     pub(super) fn miss(&self, omega: f64, pump: f64) -> Option<f64> {
         let k0 = Self::wavenumbers(omega, pump);
-        self.passage(&|at| self.followed(&Vector3::z(), &k0, at)).miss()
+        let follow = |at| self.followed(&Vector3::z(), &k0, at);
+        let passage = self.passage(&follow);
+        Passage { b: passage.b + self.blur(k0[1]), ..passage }.miss()
+    }
+
+    /// How far the pump's spread of directions can move b, as a sine.
+    fn blur(&self, k0: f64) -> f64 {
+        self.waist.map_or(0.0, |waist| SPREAD / (waist * k0))
+    }
+
+    /// What a fibre takes of a direction where the other arm has none: |u|^2 of its mode.
+    fn seen(&self, arm: usize, k0: f64, at: Vector2<f64>) -> f64 {
+        self.fibres[arm].map_or(1.0, |w| (-0.5 * (k0 * w).powi(2) * at.norm_squared()).exp())
     }
 
     fn transmission(&self, omega: f64, pump: f64) -> f64 {
@@ -173,11 +223,15 @@ fn raised(order: usize) -> usize {
 }
 
 /// The sum while it is built.
-struct Sum<'a, 'b> {
-    mixture: &'b Mixture<'a>,
-    total: Matrix4<Amplitude>,
-    tuned: Tuned,
+pub(super) struct Sum<'a, 'b> {
+    pub(super) mixture: &'b Mixture<'a>,
+    pub(super) total: Matrix4<Amplitude>,
+    pub(super) tuned: Tuned,
     born: Vec<Born>,
+    /// Directions and weights, kept for their room.
+    nodes: [Vec<(Vector2<f64>, f64)>; 2],
+    /// Band of phase matching about the pump's centre, once it is known.
+    nulls: Option<Band>,
 }
 
 impl Sum<'_, '_> {
@@ -188,11 +242,11 @@ impl Sum<'_, '_> {
         if mixture.line == 0.0 {
             return self.over_band(centre, 1.0, orders)?.ok_or(PairsError::NothingCollected);
         }
-        for [x, weight] in Rule::legendre(orders[LINE]).on([-REACH, REACH]) {
-            // Gaussian of intensity, x in FWHM
-            let weight = weight * (-4.0 * LN_2 * x * x).exp();
-            let band = self.over_band(centre + x * mixture.line, weight, orders)?;
-            if middle.is_none() || x.abs() < 1.0 {
+        // a Gaussian of intensity, exp(-4 ln 2 x^2) with x in FWHM
+        let scale = 0.5 / LN_2.sqrt();
+        for [x, weight] in Rule::hermite(orders[LINE]).0 {
+            let band = self.over_band(centre + x * scale * mixture.line, weight, orders)?;
+            if middle.is_none() || x.abs() < 0.5 {
                 middle = band.or(middle);
             }
         }
@@ -207,7 +261,7 @@ impl Sum<'_, '_> {
             self.over_directions(omega, pump, weight, orders)?;
             return Ok(Some([omega, omega]));
         }
-        let Some(band) = mixture.band(pump, &mut self.tuned) else { return Ok(None) };
+        let Some(band) = mixture.band(pump, &mut self.tuned, &mut self.nulls) else { return Ok(None) };
         // the middle is a kink of what two equal irises let through
         let centre = mixture.stack.nominal()[0] * pump / mixture.stack.nominal()[PUMP];
         let rule = Rule::legendre(orders[BAND]);
@@ -233,52 +287,107 @@ impl Sum<'_, '_> {
     ) -> Result<(), PairsError> {
         self.mixture.stack.tune(&mut self.tuned, omega, pump)?;
         let mixture = self.mixture;
+        if let [Some(a), Some(b)] = mixture.fibres {
+            self.over_modes([a, b], weight, orders[RADIUS]);
+            return Ok(());
+        }
         let Some(waist) = mixture.waist else {
             self.over_discs(&Vector3::z(), weight, orders);
             return Ok(());
         };
-        // |A_p(q)|^2 = exp(-q^2 w^2/2), out to 3 standard deviations 1/w
-        let rule = Rule::legendre(orders[TILT]);
-        let k0 = self.tuned.k0[PUMP];
-        for [x, wx] in rule.on([-3.5, 3.5]) {
-            for [y, wy] in rule.on([-3.5, 3.5]) {
-                let gauss = (-0.5 * (x * x + y * y)).exp();
-                let (sx, sy) = (x / (waist * k0), y / (waist * k0));
-                let direction = Vector3::new(sx, sy, (1.0 - sx * sx - sy * sy).max(0.0).sqrt());
-                self.over_discs(&direction, weight * wx * wy * gauss, orders);
+        if mixture.is_narrow(waist) {
+            self.over_both_discs(waist, weight, orders);
+            return Ok(());
+        }
+        // |A_p(q)|^2 = exp(-q^2 w^2/2)
+        let rule = Rule::hermite(orders[TILT]);
+        let scale = std::f64::consts::SQRT_2 / (waist * self.tuned.k0[PUMP]);
+        for [x, wx] in &rule.0 {
+            for [y, wy] in &rule.0 {
+                self.over_discs(&tilted(x * scale, y * scale), weight * wx * wy, orders);
             }
         }
         Ok(())
     }
 
+    /// Both photons within the discs that are common to irises and one fibre's field of view.
     fn over_discs(&mut self, pump: &Vector3<f64>, weight: f64, orders: &Orders) {
         let mixture = self.mixture;
-        if mixture.radii.iter().all(|r| !r.is_finite()) {
-            let a = mixture.stack.arms[0];
-            if let Some(field) = self.field(pump, &a) {
-                self.total += field * field.adjoint() * Complex::from(weight);
-            }
+        if !mixture.spreads() {
+            self.add(pump, &mixture.stack.arms[0], weight);
             return;
         }
         let k0 = self.tuned.k0;
         let follow = |at| mixture.followed(pump, &k0, at);
-        let mut nodes = Vec::new();
-        mixture.passage(&follow).nodes(&Rule::legendre(orders[RADIUS]), orders[AZIMUTH], &mut nodes);
-        for (at, share) in nodes {
-            let a = mixture.frames[0].direction(at);
-            if let Some(field) = self.field(pump, &a) {
-                self.total += field * field.adjoint() * Complex::from(weight * share);
+        let passage = mixture.passage(&follow);
+        // a fibre alone is a Gaussian window on directions, 4 e-folds wide
+        let view = |arm: usize| mixture.fibres[arm].map_or(f64::INFINITY, |w| 4.0 / (k0[arm] * w));
+        let passage = Passage { a: passage.a.min(view(0)), b: passage.b.min(view(1)), ..passage };
+        let mut nodes = std::mem::take(&mut self.nodes[0]);
+        passage.nodes(&Rule::legendre(orders[RADIUS]), orders[AZIMUTH], &mut nodes);
+        for (at, share) in &nodes {
+            let seen = mixture.seen(0, k0[0], *at) * follow(*at).map_or(0.0, |at| mixture.seen(1, k0[1], at));
+            self.add(pump, &mixture.frames[0].direction(*at), weight * share * seen);
+        }
+        self.nodes[0] = nodes;
+    }
+
+    /// Directions of a and b one by one, weighed with the pump that each pair needs.
+    fn over_both_discs(&mut self, waist: f64, weight: f64, orders: &Orders) {
+        let mixture = self.mixture;
+        let k0 = self.tuned.k0;
+        let mut nodes = std::mem::take(&mut self.nodes);
+        let rule = Rule::legendre(orders[RADIUS]);
+        for (arm, nodes) in nodes.iter_mut().enumerate() {
+            let passage = Passage { a: mixture.radii[arm], b: f64::INFINITY, follow: &|at| Some(at) };
+            passage.nodes(&rule, orders[AZIMUTH], nodes);
+        }
+        for (at_a, share_a) in &nodes[0] {
+            let a = mixture.frames[0].direction(*at_a);
+            for (at_b, share_b) in &nodes[1] {
+                let b = mixture.frames[1].direction(*at_b);
+                let q = (a * k0[0] + b * k0[1]).xy();
+                let gauss = (-0.5 * q.norm_squared() * waist * waist).exp();
+                let field = self.pair_field(&a, &b);
+                self.add_field(field, weight * share_a * share_b * gauss);
             }
+        }
+        self.nodes = nodes;
+    }
+
+    fn add(&mut self, pump: &Vector3<f64>, a: &Vector3<f64>, weight: f64) {
+        let field = self.field(pump, a);
+        self.add_field(field, weight);
+    }
+
+    fn add_field(&mut self, field: Option<Vector4<Amplitude>>, weight: f64) {
+        if let Some(field) = field {
+            self.total += field * field.adjoint() * Complex::from(weight);
         }
     }
 
     /// The two-photon field towards a direction of a, in HH, HV, VH, VV.
-    fn field(&mut self, pump: &Vector3<f64>, a: &Vector3<f64>) -> Option<Vector4<Amplitude>> {
-        let stack = self.mixture.stack;
-        let k0 = self.tuned.k0;
-        let a = Ray::new(k0[0], *a);
-        let b = Ray::new(k0[1], stack.follow(pump, &a.d, &k0)?);
-        stack.born(&self.tuned, &a, &b, Behind::Plates, &mut self.born)?;
-        Some(self.born.iter().fold(Vector4::zeros(), |sum, pair| sum + pair.field()))
+    pub(super) fn field(&mut self, pump: &Vector3<f64>, a: &Vector3<f64>) -> Option<Vector4<Amplitude>> {
+        let b = self.mixture.stack.follow(pump, a, &self.tuned.k0)?;
+        self.pair_field(a, &b)
     }
+
+    /// The pairs of all histories that [`Self::field`] looked at last.
+    pub(super) fn last_born(&self) -> &[Born] {
+        &self.born
+    }
+
+    fn pair_field(&mut self, a: &Vector3<f64>, b: &Vector3<f64>) -> Option<Vector4<Amplitude>> {
+        let k0 = self.tuned.k0;
+        let (a, b) = (Ray::new(k0[0], *a), Ray::new(k0[1], *b));
+        let behind = if self.mixture.is_of_points() { Behind::PlatesHeadOn } else { Behind::Plates };
+        self.mixture.stack.born(&self.tuned, &a, &b, behind, &mut self.born)?;
+        let field = self.born.iter().fold(Vector4::zeros(), |sum, pair| sum + pair.field());
+        Some(if self.mixture.vary.even { field.try_normalize(0.0)? } else { field })
+    }
+}
+
+/// The unit vector with these components along x and y.
+pub(super) fn tilted(x: f64, y: f64) -> Vector3<f64> {
+    Vector3::new(x, y, (1.0 - x * x - y * y).max(0.0).sqrt())
 }

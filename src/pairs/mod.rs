@@ -10,6 +10,7 @@ mod band;
 mod basis;
 mod bench;
 mod disc;
+mod fibre;
 mod mixture;
 mod quadrature;
 mod slab;
@@ -17,9 +18,7 @@ mod stack;
 mod state;
 
 pub use basis::HistoryBasis;
-pub use bench::{
-    Bench, Collection, Compensator, Filter, Line, Opening, Place, PumpPolarization, Shape,
-};
+pub use bench::{Bench, Collection, Compensator, Filter, Line, Opening, Place, PumpPolarization, Shape};
 pub use mixture::{Estimate, Mixture};
 pub use quadrature::Rule;
 pub use stack::Stack;
@@ -90,13 +89,17 @@ pub struct Vary {
     pub line: bool,
     /// Whether filters stand at the photons' nominal wavelengths whatever their own centre.
     pub recentred: bool,
+    /// Whether every sample counts alike, however bright its pairs are.
+    pub even: bool,
 }
 
 impl Vary {
     /// Everything, as it is.
-    pub const ALL: Self = Self { frequency: true, direction: true, line: true, recentred: false };
+    pub const ALL: Self =
+        Self { frequency: true, direction: true, line: true, recentred: false, even: false };
     /// Nothing at all.
-    pub const NOTHING: Self = Self { frequency: false, direction: false, line: false, recentred: false };
+    pub const NOTHING: Self =
+        Self { frequency: false, direction: false, line: false, recentred: false, even: false };
 }
 
 /// Why there is no state.
@@ -117,7 +120,9 @@ pub enum PairsError {
         material: String,
     },
     /// The histories of the pair are not among those of the interaction.
-    #[error("the two histories do not exist in these crystals with this interaction; look at `twincone cones`")]
+    #[error(
+        "the two histories do not exist in these crystals with this interaction; look at `twincone cones`"
+    )]
     NoHistories,
     /// Filters and irises leave nothing.
     #[error(

@@ -1,5 +1,7 @@
 //! Nodes and weights.
 
+use nalgebra::{DMatrix, SymmetricEigen};
+
 /// Nodes in (-1, 1) and weights of Gauss-Legendre quadrature.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Rule(pub Vec<[f64; 2]>);
@@ -26,6 +28,19 @@ impl Rule {
             [x, 2.0 / ((1.0 - x * x) * slope * slope)]
         };
         Self((0..n).map(node).collect())
+    }
+
+    /// Gauss-Hermite: sum of w f(x) for the integral of exp(-x^2) f(x) over all x, exact for polynomials of degree 2 n - 1.
+    ///
+    /// Nodes are the eigenvalues of the Jacobi matrix of the recurrence, weights follow from the first components of its
+    /// eigenvectors (G. H. Golub, J. H. Welsch, Math. Comp. 23, 221 (1969), from memory).
+    #[must_use]
+    pub fn hermite(n: usize) -> Self {
+        let beside =
+            |i: usize, j: usize| if i.abs_diff(j) == 1 { (0.5 * i.max(j) as f64).sqrt() } else { 0.0 };
+        let eigen = SymmetricEigen::new(DMatrix::from_fn(n, n, beside));
+        let weight = |j: usize| std::f64::consts::PI.sqrt() * eigen.eigenvectors[(0, j)].powi(2);
+        Self((0..n).map(|j| [eigen.eigenvalues[j], weight(j)]).collect())
     }
 
     /// Nodes and weights on an interval.
@@ -57,6 +72,18 @@ mod tests {
             for power in [0, 2 * n - 2] {
                 let sum: f64 = rule.on([0.0, 2.0]).map(|[x, w]| w * (x / 2.0).powi(power as i32)).sum();
                 assert_relative_eq!(sum, 2.0 / (power as f64 + 1.0), max_relative = 1e-12);
+            }
+        }
+    }
+
+    #[test]
+    fn moments_of_a_gaussian_are_exact() {
+        for n in [1, 3, 8, 21] {
+            let sum = |power: i32| -> f64 { Rule::hermite(n).0.iter().map(|[x, w]| w * x.powi(power)).sum() };
+            let root_pi = std::f64::consts::PI.sqrt();
+            assert_relative_eq!(sum(0), root_pi, max_relative = 1e-12);
+            if n > 1 {
+                assert_relative_eq!(sum(2), 0.5 * root_pi, max_relative = 1e-12);
             }
         }
     }

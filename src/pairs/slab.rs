@@ -140,9 +140,4 @@ impl Modes {
         let diagonal = Matrix2::from_diagonal(&Vector2::new(fast, slow));
         Some(self.fields.map(Complex::from) * diagonal * inverse)
     }
-
-    /// Components of a transverse field along the two modes.
-    pub fn components(&self, field: &Vector2<Amplitude>) -> Option<Vector2<Amplitude>> {
-        Some(self.fields.try_inverse()?.map(Complex::from) * field)
-    }
 }

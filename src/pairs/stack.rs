@@ -27,18 +27,20 @@ pub struct History {
 /// Crystals and plates, with the two arms.
 #[derive(Debug, Clone)]
 pub struct Stack {
+    /// Photon a as signal, b as idler.
     pub photons: Photons,
     /// In pump order, with the material's tensor.
-    pub crystals: Vec<(Slab, Tensor)>,
+    pub(super) crystals: Vec<(Slab, Tensor)>,
     /// From where a wave straight across a crystal leaves it to where the beam enters the next, through air, m; after the
     /// last one back to the middle of the stack as it appears from outside.
-    pub air: Vec<Vector3<f64>>,
+    pub(super) air: Vec<Vector3<f64>>,
     /// Before the crystals.
-    pub pump_plates: Vec<Slab>,
+    pub(super) pump_plates: Vec<Slab>,
     /// In arm a and b.
-    pub arm_plates: [Vec<Slab>; 2],
+    pub(super) arm_plates: [Vec<Slab>; 2],
     /// Nominal directions of a and b.
     pub arms: [Vector3<f64>; 2],
+    /// All that take part.
     pub histories: Vec<History>,
     /// Indices in `histories` of the two that meet here.
     pub named: [usize; 2],
@@ -169,7 +171,8 @@ impl Stack {
         let mut rows = Vec::with_capacity(self.crystals.len());
         for (index, _) in self.crystals.iter().enumerate() {
             let Some(history) = self.histories.iter().find(|h| h.crystal == index) else { continue };
-            let row = self.pump_row(&tuned, index, history.roles.pump, &pump).ok_or(PairsError::NoHistories)?;
+            let row =
+                self.pump_row(&tuned, index, history.roles.pump, &pump).ok_or(PairsError::NoHistories)?;
             rows.push(row);
         }
         let linear = |angle: f64| Vector2::new(angle.cos(), angle.sin()).map(Complex::from);
@@ -197,7 +200,13 @@ impl Stack {
     }
 
     /// Amplitude of the wave that pumps a crystal, as a row to be multiplied with the polarization before everything.
-    pub fn pump_row(&self, tuned: &Tuned, crystal: usize, sheet: Sheet, ray: &Ray) -> Option<Vector2<Amplitude>> {
+    pub fn pump_row(
+        &self,
+        tuned: &Tuned,
+        crystal: usize,
+        sheet: Sheet,
+        ray: &Ray,
+    ) -> Option<Vector2<Amplitude>> {
         let mut matrix = Matrix2::identity();
         for (plate, medium) in self.pump_plates.iter().zip(&tuned.pump_plates) {
             matrix = plate.transfer(medium, ray)? * matrix;
@@ -206,7 +215,8 @@ impl Stack {
             let across = slab.transfer(&tuned.crystals[index][PUMP], ray)?;
             matrix = across * matrix * ray.phase(&self.air[index]);
         }
-        let inverse = self.crystals[crystal].0.modes(&tuned.crystals[crystal][PUMP], ray)?.fields.try_inverse()?;
+        let inverse =
+            self.crystals[crystal].0.modes(&tuned.crystals[crystal][PUMP], ray)?.fields.try_inverse()?;
         let row = inverse.row(usize::from(sheet == Sheet::Slow)).map(Complex::from);
         Some((row * matrix).transpose())
     }

@@ -67,6 +67,14 @@ impl DensityMatrix {
         2.0 * (self.0[(0, 3)] + self.0[(1, 2)].conj()).norm()
     }
 
+    /// 2 |rho_(00,11)| / (rho_(00,00) + rho_(11,11)): in the basis of two histories, of which one makes 00 and the other
+    /// 11, the contrast between diagonal polarizers of the pairs that are still in one of these.
+    #[must_use]
+    pub fn coherence(&self) -> f64 {
+        let both = self.0[(0, 0)].re + self.0[(3, 3)].re;
+        if both > 0.0 { 2.0 * self.0[(0, 3)].norm() / both } else { 0.0 }
+    }
+
     /// tr rho^2.
     #[must_use]
     pub fn purity(&self) -> f64 {
@@ -95,7 +103,8 @@ impl DensityMatrix {
     /// <B|rho|B> = (rho_(00,00) + rho_(11,11))/2 + |rho_(00,11)| at the phase arg rho_(11,00), and so with 01 and 10.
     #[must_use]
     pub fn nearest_bell(&self) -> Nearest {
-        let overlap = |i: usize, j: usize| 0.5 * (self.0[(i, i)].re + self.0[(j, j)].re) + self.0[(i, j)].norm();
+        let overlap =
+            |i: usize, j: usize| 0.5 * (self.0[(i, i)].re + self.0[(j, j)].re) + self.0[(i, j)].norm();
         let (same, opposite) = (overlap(0, 3), overlap(1, 2));
         let alike = same >= opposite;
         let (i, j) = if alike { (0, 3) } else { (1, 2) };
