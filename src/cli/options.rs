@@ -285,10 +285,10 @@ pub fn catalogue(output: &OutputArgs, document: &Document) -> Result<Catalogue, 
             catalogue.add(&file.display().to_string(), &read_text(&file)?)?;
         }
     }
-    for crystal in document.describe()?.crystal {
-        if let Some(material) = &crystal.get_ref().material {
-            add_file(&mut catalogue, material.get_ref())?;
-        }
+    let description = document.describe()?;
+    let crystals = description.crystal.iter().filter_map(|c| c.get_ref().material.as_ref());
+    for material in crystals.chain(description.compensator.iter().filter_map(|c| c.material.as_ref())) {
+        add_file(&mut catalogue, material.get_ref())?;
     }
     Ok(catalogue)
 }

@@ -9,23 +9,27 @@ mod amplitude;
 mod band;
 mod basis;
 mod bench;
+mod budget;
 mod disc;
 mod fibre;
 mod mixture;
 mod quadrature;
 mod slab;
+mod solve;
 mod stack;
 mod state;
 
 pub use basis::HistoryBasis;
 pub use bench::{Bench, Collection, Compensator, Filter, Line, Opening, Place, PumpPolarization, Shape};
+pub use budget::{Cause, Loss};
 pub use mixture::{Estimate, Mixture};
 pub use quadrature::Rule;
+pub use solve::{Question, State};
 pub use stack::Stack;
 pub use state::{Amplitude, DensityMatrix, Nearest};
 
 use crate::frame::Direction;
-use crate::matching::{CrossingRow, HistoryName, Photons, Status};
+use crate::matching::{ConesError, CrossingRow, HistoryName, Photons, Status};
 use crate::material::MaterialError;
 use crate::quantity::Wavelength;
 
@@ -119,6 +123,16 @@ pub enum PairsError {
         /// Of the crystal.
         material: String,
     },
+    /// No pair of this number.
+    #[error("{}", no_pair(*number, *count, *status))]
+    NoPair {
+        /// Asked for.
+        number: usize,
+        /// How many there are.
+        count: usize,
+        /// Of the first two histories, where there is none.
+        status: Status,
+    },
     /// The histories of the pair are not among those of the interaction.
     #[error(
         "the two histories do not exist in these crystals with this interaction; look at `twincone cones`"
@@ -132,4 +146,28 @@ pub enum PairsError {
     /// Both histories have amplitude zero, or are not orthogonal.
     #[error("the two histories leave the same polarization in an arm: there is nothing to entangle")]
     Alike,
+}
+
+impl From<ConesError> for PairsError {
+    fn from(error: ConesError) -> Self {
+        match error {
+            ConesError::Material(error) => Self::Material(error),
+            ConesError::Description(text) => Self::Description(text),
+        }
+    }
+}
+
+fn no_pair(number: usize, count: usize, status: Status) -> String {
+    match (count, status) {
+        (0, Status::Apart) => {
+            "the rings miss each other, so there is no direction to collect both histories in; `twincone tilt` says how \
+             far to turn, or fix the directions with collection.direction"
+                .into()
+        }
+        (0, status) => {
+            format!("there is no pair of directions with two histories ({status}); look at `twincone cones`")
+        }
+        (1, _) => format!("there is no pair {number}: the rings cross in one pair of directions, number 1"),
+        _ => format!("there is no pair {number}: pairs are numbered 1 to {count}"),
+    }
 }

@@ -8,6 +8,7 @@ mod export;
 pub mod index;
 pub mod materials;
 mod spread;
+pub mod state;
 pub mod table;
 pub mod tilt;
 pub mod twin;
