@@ -2,7 +2,8 @@
 //!
 //! Frequencies and directions add incoherently for points and irises; a fibre mode adds amplitudes over directions. A
 //! spread of the pump's frequency adds incoherently whether it is a linewidth or that of a pulse, because each set of
-//! photon frequencies comes from one pump frequency. Weights are in d omega, transmissions of filters in wavelength.
+//! photon frequencies comes from one pump frequency. Weights are in d omega and, within irises, in d^2 q; transmissions of
+//! filters in wavelength.
 
 use std::f64::consts::LN_2;
 
@@ -47,6 +48,9 @@ const AZIMUTH: usize = 4;
 /// Where the pump's spread of directions ends, in standard deviations 1/waist of its intensity.
 const SPREAD: f64 = 3.5;
 
+/// The error that is told is this many times what refining changes.
+const SAFETY: f64 = 2.0;
+
 const FIRST: Orders = [5, 3, 14, 3, 8];
 
 /// A density matrix with the error of its elements.
@@ -54,8 +58,8 @@ const FIRST: Orders = [5, 3, 14, 3, 8];
 pub struct Estimate {
     /// In H and V of each arm: HH, HV, VH, VV.
     pub lab: DensityMatrix,
-    /// Twice the largest change of an element when the quadratures are refined one by one, added up: the error of a
-    /// visibility.
+    /// Four times the largest change of an element when the quadratures are refined one by one, added up: twice the change
+    /// of a visibility.
     pub error: f64,
     /// Frequencies of a that were integrated over at the pump's centre, rad/s.
     pub band: Band,
@@ -95,6 +99,8 @@ impl<'a> Mixture<'a> {
     /// Indices that are not to be had; nothing passes filters and irises.
     pub fn estimate(&self, wanted: f64) -> Result<Estimate, PairsError> {
         const ROUNDS: usize = 14;
+        // some seconds; the error that is left is told
+        const MOST_SAMPLES: usize = 1_000_000;
         let mut orders = FIRST;
         let mut best = self.once(&orders)?;
         for round in 0..ROUNDS {
@@ -108,15 +114,15 @@ impl<'a> Mixture<'a> {
                 let mut trial = orders;
                 trial[axis] = raised(orders[axis]);
                 let refined = self.once(&trial)?;
-                let change = 2.0 * (refined.0.0 - best.0.0).camax();
+                let change = SAFETY * 2.0 * (refined.lab.0 - best.lab.0).camax();
                 error += change;
                 if change > 0.15 * wanted {
                     next[axis] = trial[axis];
                     finest = refined;
                 }
             }
-            if error <= wanted || next == orders || round + 1 == ROUNDS {
-                return Ok(Estimate { lab: finest.0, error, band: finest.1 });
+            if error <= wanted || next == orders || round + 1 == ROUNDS || finest.samples > MOST_SAMPLES {
+                return Ok(Estimate { lab: finest.lab, error, band: finest.band });
             }
             let changed = next.iter().zip(&orders).filter(|(a, b)| a != b).count();
             best = if changed == 1 { finest } else { self.once(&next)? };
@@ -153,7 +159,7 @@ impl<'a> Mixture<'a> {
         }
     }
 
-    fn once(&self, orders: &Orders) -> Result<(DensityMatrix, Band), PairsError> {
+    fn once(&self, orders: &Orders) -> Result<Once, PairsError> {
         let mut sum = Sum {
             mixture: self,
             total: Matrix4::zeros(),
@@ -161,10 +167,11 @@ impl<'a> Mixture<'a> {
             born: Vec::new(),
             nodes: [Vec::new(), Vec::new()],
             nulls: None,
+            samples: 0,
         };
         let band = sum.over_line(orders)?;
         let lab = DensityMatrix::new(&sum.total).ok_or(PairsError::NothingCollected)?;
-        Ok((lab, band))
+        Ok(Once { lab, band, samples: sum.samples })
     }
 
     /// What passes the irises.
@@ -232,6 +239,15 @@ pub(super) struct Sum<'a, 'b> {
     nodes: [Vec<(Vector2<f64>, f64)>; 2],
     /// Band of phase matching about the pump's centre, once it is known.
     nulls: Option<Band>,
+    samples: usize,
+}
+
+/// One pass of all quadratures.
+#[derive(Clone, Copy)]
+struct Once {
+    lab: DensityMatrix,
+    band: Band,
+    samples: usize,
 }
 
 impl Sum<'_, '_> {
@@ -327,7 +343,7 @@ impl Sum<'_, '_> {
         passage.nodes(&Rule::legendre(orders[RADIUS]), orders[AZIMUTH], &mut nodes);
         for (at, share) in &nodes {
             let seen = mixture.seen(0, k0[0], *at) * follow(*at).map_or(0.0, |at| mixture.seen(1, k0[1], at));
-            self.add(pump, &mixture.frames[0].direction(*at), weight * share * seen);
+            self.add(pump, &mixture.frames[0].direction(*at), weight * share * seen * k0[0] * k0[0]);
         }
         self.nodes[0] = nodes;
     }
@@ -349,7 +365,7 @@ impl Sum<'_, '_> {
                 let q = (a * k0[0] + b * k0[1]).xy();
                 let gauss = (-0.5 * q.norm_squared() * waist * waist).exp();
                 let field = self.pair_field(&a, &b);
-                self.add_field(field, weight * share_a * share_b * gauss);
+                self.add_field(field, weight * share_a * share_b * gauss * (k0[0] * k0[1]).powi(2));
             }
         }
         self.nodes = nodes;
@@ -380,6 +396,7 @@ impl Sum<'_, '_> {
     fn pair_field(&mut self, a: &Vector3<f64>, b: &Vector3<f64>) -> Option<Vector4<Amplitude>> {
         let k0 = self.tuned.k0;
         let (a, b) = (Ray::new(k0[0], *a), Ray::new(k0[1], *b));
+        self.samples += 1;
         let behind = if self.mixture.is_of_points() { Behind::PlatesHeadOn } else { Behind::Plates };
         self.mixture.stack.born(&self.tuned, &a, &b, behind, &mut self.born)?;
         let field = self.born.iter().fold(Vector4::zeros(), |sum, pair| sum + pair.field());
