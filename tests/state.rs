@@ -45,18 +45,12 @@ fn state(
 ) -> (DensityMatrix, DensityMatrix, f64) {
     let pair = first_pair(crystals, interaction);
     let stack = Stack::new(crystals, bench, &pair, interaction).expect("a stack");
-    let start = std::time::Instant::now();
     let found = Mixture::new(&stack, bench, Vary::ALL).estimate(5e-4).expect("a state");
-    eprintln!("{:?} error {:e}", start.elapsed(), found.error);
     let basis = stack.history_basis().expect("a basis");
     (found.lab.in_basis(&basis.a, &basis.b), found.lab, found.error)
 }
 
 fn close(found: f64, agreed: f64, tolerance: f64, what: &str) {
-    eprintln!("{what}: {found:.5}, agreed {agreed}");
-    if std::env::var("SHOW").is_ok() {
-        return;
-    }
     assert!((found - agreed).abs() <= tolerance, "{what}: {found:.5}, agreed {agreed} +- {tolerance}");
 }
 
@@ -80,8 +74,7 @@ fn half_length_compensators() {
         let plate = bbo(42.541, 0.0, length, 90.0);
         let compensators = vec![Compensator { place: Place::Both, plate }];
         let bench = Bench { filters: gaussian(40.0), compensators, ..Default::default() };
-        let (rho, lab, _) = state(&crystals, &bench, Interaction::Two);
-        eprintln!("lab {} hv {}", lab.visibility_diagonal(), rho.visibility_straight());
+        let (rho, _, _) = state(&crystals, &bench, Interaction::Two);
         close(rho.coherence(), agreed, 0.002, &format!("compensators of {length} mm"));
     }
 }
@@ -130,11 +123,130 @@ fn the_phase_of_two_crossed_crystals_changes_with_direction() {
     close(slope(0.1, 0.0), -6.3, 0.06, "across it, with 0.1 mm of air");
 }
 
+/// Group delays at normal incidence: photons of the first crystal pass the second as e, its pump the first as o.
+#[test]
+fn pairs_of_the_first_crystal_arrive_earlier() {
+    use twincone::optics::{Polarization, along_direction};
+    let crystal = bbo(29.237, 90.0, 1.0, 0.0);
+    let theta = 29.237f64.to_radians();
+    let direction = nalgebra::Vector3::new(0.0, theta.sin(), theta.cos());
+    let group = |nm: f64, polarization: Polarization| {
+        let principal = crystal.principal(Wavelength::from_nm(nm)).expect("within range");
+        let waves = along_direction(&principal, direction);
+        waves.iter().find(|(p, _)| *p == polarization).expect("o and e").1.group_index
+    };
+    let offset = (group(810.0, Polarization::Extraordinary) - group(405.0, Polarization::Ordinary)) * 1e-3
+        / twincone::quantity::SPEED_OF_LIGHT;
+    close(offset * 1e15, -421.0, 1.0, "offset, fs per mm");
+    for (width, agreed) in [(0.1, 0.995), (0.3, 0.954), (0.6, 0.827), (1.0, 0.590)] {
+        // V = exp(-(pi dnu tau)^2/(4 ln 2)) for a Gaussian line of FWHM dnu
+        let dnu = twincone::quantity::SPEED_OF_LIGHT * width * 1e-9 / (PUMP_NM * 1e-9_f64).powi(2);
+        let closed = (-(std::f64::consts::PI * dnu * 0.5 * offset).powi(2) / (4.0 * 2f64.ln())).exp();
+        close(closed, agreed, 0.003, &format!("{width} nm line, closed form"));
+    }
+}
+
+/// phi 0, degenerate, no compensator: the amplitudes of HV and VH are equal to 1 % and in phase.
+#[test]
+fn both_histories_of_one_crystal_are_equal_at_the_crossing() {
+    let crystals = [bbo(42.541, 0.0, 1.0, 0.0)];
+    let pair = first_pair(&crystals, Interaction::Two);
+    let bench = Bench::default();
+    let stack = Stack::new(&crystals, &bench, &pair, Interaction::Two).expect("a stack");
+    let lab = Mixture::new(&stack, &bench, Vary::NOTHING).estimate(1e-4).expect("a state").lab;
+    let ratio = (lab.0[(1, 1)].re / lab.0[(2, 2)].re).sqrt();
+    close(ratio, 1.0, 0.01, "ratio of amplitudes");
+    let nearest = lab.nearest_bell();
+    assert!(!nearest.alike);
+    close(nearest.phase.to_degrees(), 0.0, 0.5, "phase");
+}
+
+/// The o field stands 1.97 deg off vertical, one way in each arm: V' = V cos^2(2d) + sin^2(2d).
+#[test]
+fn the_lab_basis_is_turned_against_that_of_the_crystal() {
+    let crystals = [bbo(42.541, 0.0, 2.0, 0.0)];
+    let bench = Bench { filters: gaussian(3.0), ..Default::default() };
+    let (rho, lab, _) = state(&crystals, &bench, Interaction::Two);
+    let (s, c) = (2.0 * 1.97f64.to_radians()).sin_cos();
+    let expected = rho.coherence() * c * c + s * s;
+    close(lab.visibility_diagonal(), expected, 0.0005, "lab, diagonal");
+}
+
+fn question<'a>(
+    crystals: &'a [Crystal],
+    bench: &'a Bench,
+    kind: Interaction,
+    signals: &'a [Wavelength],
+) -> Question<'a> {
+    Question {
+        crystals,
+        pump: Wavelength::from_nm(PUMP_NM),
+        signals,
+        interaction: kind,
+        bench,
+        number: 1,
+        wanted: 1e-3,
+    }
+}
+
+#[test]
+fn designed_plates_beat_the_half_length_rule_and_no_thickness_beats_them() {
+    let signals = [Wavelength::from_nm(2.0 * PUMP_NM)];
+    for (length, width, iris) in
+        [(2.0, 40.0, None), (1.0, 10.0, None), (2.0, 10.0, Some(0.1)), (0.5, 3.0, Some(0.4))]
+    {
+        let crystals = [bbo(42.541, 0.0, length, 0.0)];
+        let mut bench = Bench { filters: gaussian(width), ..Default::default() };
+        bench.collection = iris.map_or(bench.collection, irises);
+        let question = question(&crystals, &bench, Interaction::Two, &signals);
+        let found = compensate(&question, &crystals).expect("plates").proposals.remove(0);
+        let rule = half_length(&question).expect("a state").expect("one crystal");
+        let what = format!("{length} mm, {width} nm, {iris:?}");
+        assert!(found.after > rule.after - 1e-3, "{what}: {} against {}", found.after, rule.after);
+        assert!(found.after > found.before, "{what}");
+        no_thickness_is_better(&question, &found, &what);
+    }
+    let (crystals, mut bench) = two_crystals(0.0);
+    bench.filters = gaussian(10.0);
+    bench.collection = irises(0.4);
+    bench.line = Line::Width(Length::metres(0.5e-9));
+    let question = question(&crystals, &bench, Interaction::One, &signals);
+    let found = compensate(&question, &crystals[..1]).expect("plates").proposals.remove(0);
+    assert!(found.plates.iter().any(|designed| designed.plate.place == Place::Pump));
+    assert!(found.after > 0.99, "{} from {}", found.after, found.before);
+    no_thickness_is_better(&question, &found, "two crystals");
+}
+
+/// All thicknesses scaled and each alone, from half to twice.
+fn no_thickness_is_better(question: &Question<'_>, found: &Proposal, what: &str) {
+    let plates: Vec<Compensator> = found.plates.iter().map(|designed| designed.plate.clone()).collect();
+    for alone in (0..plates.len()).map(Some).chain([None]) {
+        for j in 0..=24 {
+            let factor = 0.5 * 4f64.powf(f64::from(j) / 24.0);
+            let mut changed = plates.clone();
+            for (index, plate) in changed.iter_mut().enumerate() {
+                if alone.is_none_or(|only| only == index) {
+                    plate.plate.length = Length::metres(plate.plate.length.si() * factor);
+                }
+            }
+            let bench = Bench { compensators: changed, ..question.bench.clone() };
+            let state = Question { bench: &bench, ..*question }.state().expect("a state");
+            let visibility = state.histories.coherence();
+            assert!(
+                visibility < found.after + 3e-3,
+                "{what}: {visibility} at {factor} against {}",
+                found.after
+            );
+        }
+    }
+}
+
 #[test]
 fn the_pump_line_limits_two_crossed_crystals() {
     let widths = [0.1, 0.3, 0.6, 1.0];
     let table = [
-        (None, [0.995, 0.954, 0.827, 0.590]),
+        // in the pair's own directions the offset is 0.7 % longer than at normal incidence, whose closed form gives 0.590
+        (None, [0.995, 0.954, 0.827, 0.586]),
         (Some(10.0), [0.993, 0.952, 0.830, 0.618]),
         (Some(1.0), [0.995, 0.972, 0.952, 0.943]),
     ];

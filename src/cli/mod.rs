@@ -1,5 +1,6 @@
 //! The command line, a file for each command: options in, a question to the library, its answer out.
 
+mod compensate;
 mod completions;
 mod cones;
 mod cut;
@@ -56,6 +57,8 @@ enum Command {
     Twin(Box<twin::Args>),
     /// The entangled state that filters, irises and compensators leave, and what spoils it
     State(Box<state::Args>),
+    /// Design the plates that make the two histories alike
+    Compensate(Box<compensate::Args>),
     /// Write out a commented job file, or check one
     Job(Box<job::Args>),
     /// Shell completions
@@ -105,6 +108,7 @@ pub fn run(typed: &Typed) -> Result<output::Outcome, Failure> {
         Command::Tilt(args) => tilt::run(args, out),
         Command::Twin(args) => twin::run(args, out),
         Command::State(args) => state::run(args, out),
+        Command::Compensate(args) => compensate::run(args, out),
         Command::Job(args) => job::run(args, out),
         Command::Completions(args) => completions::run(args, Typed::command(), out),
         Command::Man => man::run(Typed::command(), out),

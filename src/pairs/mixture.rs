@@ -160,18 +160,27 @@ impl<'a> Mixture<'a> {
     }
 
     fn once(&self, orders: &Orders) -> Result<Once, PairsError> {
-        let mut sum = Sum {
-            mixture: self,
-            total: Matrix4::zeros(),
-            tuned: Tuned::default(),
-            born: Vec::new(),
-            nodes: [Vec::new(), Vec::new()],
-            nulls: None,
-            samples: 0,
-        };
+        let mut sum = Sum::new(self);
         let band = sum.over_line(orders)?;
         let lab = DensityMatrix::new(&sum.total).ok_or(PairsError::NothingCollected)?;
         Ok(Once { lab, band, samples: sum.samples })
+    }
+
+    /// Pairs that stand for the mixture: some hundreds.
+    pub(super) fn samples(&self) -> Result<Vec<Sample>, PairsError> {
+        let mut sum = Sum { record: Some(Vec::new()), ..Sum::new(self) };
+        sum.over_line(&[6, 3, 24, 3, 8])?;
+        sum.record.filter(|all| !all.is_empty()).ok_or(PairsError::NothingCollected)
+    }
+
+    /// The pair that is off the nominal one by so much: frequency of a (rad/s), direction of a (sines along H and V),
+    /// frequency of the pump (rad/s).
+    pub(super) fn probe(&self, [omega, x, y, pump]: [f64; 4]) -> Result<Sample, PairsError> {
+        let nominal = self.stack.nominal();
+        let mut sum = Sum { record: Some(Vec::new()), ..Sum::new(self) };
+        self.stack.tune(&mut sum.tuned, nominal[0] + omega, nominal[PUMP] + pump)?;
+        sum.add(&Vector3::z(), &self.frames[0].direction(Vector2::new(x, y)), 1.0);
+        sum.record.and_then(|all| all.first().copied()).ok_or(PairsError::NothingCollected)
     }
 
     /// What passes the irises.
@@ -240,6 +249,20 @@ pub(super) struct Sum<'a, 'b> {
     /// Band of phase matching about the pump's centre, once it is known.
     nulls: Option<Band>,
     samples: usize,
+    /// Where each sample is kept, if it is wanted.
+    record: Option<Vec<Sample>>,
+}
+
+/// One pair of the mixture.
+#[derive(Debug, Clone, Copy)]
+pub(super) struct Sample {
+    /// Vacuum wavenumbers of a, b and the pump, rad/m.
+    pub k0: [f64; 3],
+    /// Of a and b.
+    pub directions: [Vector3<f64>; 2],
+    /// As the two histories make it.
+    pub born: [Born; 2],
+    pub weight: f64,
 }
 
 /// One pass of all quadratures.
@@ -248,6 +271,21 @@ struct Once {
     lab: DensityMatrix,
     band: Band,
     samples: usize,
+}
+
+impl<'a, 'b> Sum<'a, 'b> {
+    fn new(mixture: &'b Mixture<'a>) -> Self {
+        Self {
+            mixture,
+            total: Matrix4::zeros(),
+            tuned: Tuned::default(),
+            born: Vec::new(),
+            nodes: [Vec::new(), Vec::new()],
+            nulls: None,
+            samples: 0,
+            record: None,
+        }
+    }
 }
 
 impl Sum<'_, '_> {
@@ -364,21 +402,24 @@ impl Sum<'_, '_> {
                 let b = mixture.frames[1].direction(*at_b);
                 let q = (a * k0[0] + b * k0[1]).xy();
                 let gauss = (-0.5 * q.norm_squared() * waist * waist).exp();
-                let field = self.pair_field(&a, &b);
-                self.add_field(field, weight * share_a * share_b * gauss * (k0[0] * k0[1]).powi(2));
+                self.add_pair(&a, &b, weight * share_a * share_b * gauss * (k0[0] * k0[1]).powi(2));
             }
         }
         self.nodes = nodes;
     }
 
     fn add(&mut self, pump: &Vector3<f64>, a: &Vector3<f64>, weight: f64) {
-        let field = self.field(pump, a);
-        self.add_field(field, weight);
+        if let Some(b) = self.mixture.stack.follow(pump, a, &self.tuned.k0) {
+            self.add_pair(a, &b, weight);
+        }
     }
 
-    fn add_field(&mut self, field: Option<Vector4<Amplitude>>, weight: f64) {
-        if let Some(field) = field {
-            self.total += field * field.adjoint() * Complex::from(weight);
+    fn add_pair(&mut self, a: &Vector3<f64>, b: &Vector3<f64>, weight: f64) {
+        let Some(field) = self.pair_field(a, b) else { return };
+        self.total += field * field.adjoint() * Complex::from(weight);
+        if let Some(samples) = &mut self.record {
+            let born = self.mixture.stack.named.map(|index| self.born[index]);
+            samples.push(Sample { k0: self.tuned.k0, directions: [*a, *b], born, weight });
         }
     }
 

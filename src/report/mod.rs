@@ -1,6 +1,7 @@
 //! Results as rows, and rows as text, CSV and JSON.
 
 mod angles;
+pub mod compensate;
 pub mod cones;
 mod conventions;
 pub mod cut;
