@@ -49,7 +49,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         wanted: args.precision,
     };
     let answers = compensate(&question, &materials)?;
-    let rule = half_length(&question)?;
+    let rules = half_length(&question)?;
     let mut conventions = Conventions::of_pairs(&setup);
     for proposal in &answers.proposals {
         proposal.plates.iter().for_each(|designed| conventions.add_dataset(&designed.plate.plate));
@@ -57,7 +57,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let answer = Answer {
         command: "compensate",
         tables: vec![table(&answers)],
-        text: text(&answers, rule.as_ref()),
+        text: text(&answers, &rules),
         conventions,
         job: resolved_job(&setup),
         solved: !answers.proposals.is_empty(),

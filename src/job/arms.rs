@@ -228,7 +228,7 @@ fn compensator(
     if let Some(cut) = &written.cut {
         plate.cut = self::cut(reader, cut, plate.cut)?;
     }
-    Ok(Compensator { place, plate })
+    Ok(Compensator { place, plate, half_wave: written.half_wave.unwrap_or(false) })
 }
 
 fn plate(

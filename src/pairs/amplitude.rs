@@ -117,7 +117,13 @@ impl Stack {
 /// A plate's matrix without the phase of the air it displaces.
 fn beyond_air(plate: &Slab, medium: &Medium, ray: &Ray) -> Option<Matrix2<Amplitude>> {
     let air = ray.phase(&(plate.normal() * plate.length)).conj();
-    Some(plate.transfer(medium, ray)? * air)
+    let matrix = plate.transfer(medium, ray)? * air;
+    // a half-wave plate at 45 deg exchanges H and V
+    Some(if plate.exchanged {
+        Matrix2::new(matrix[(1, 1)], matrix[(1, 0)], matrix[(0, 1)], matrix[(0, 0)])
+    } else {
+        matrix
+    })
 }
 
 /// sin(x)/x.

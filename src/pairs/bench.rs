@@ -176,4 +176,15 @@ pub struct Compensator {
     pub place: Place,
     /// Material, cut, length and turns.
     pub plate: Crystal,
+    /// Whether the plate stands between two half-wave plates at 45 deg, which exchange H and V before it and back behind
+    /// it (the second one is as good as calling H what was V). In the pump they do nothing.
+    pub half_wave: bool,
+}
+
+impl Compensator {
+    /// A plate by itself.
+    #[must_use]
+    pub fn new(place: Place, plate: Crystal) -> Self {
+        Self { place, plate, half_wave: false }
+    }
 }

@@ -123,19 +123,25 @@ pub struct Answers {
     pub useless: Vec<(String, String)>,
 }
 
-/// The rule for one crystal: its own cut and half its length in both arms, rolled by a quarter turn. `None` for several.
+/// The rules for one crystal: its own cut and half its length in both arms, rolled by a quarter turn; and as the source
+/// stands, behind half-wave plates at 45 deg, which mends the spatial phase too. Nothing for several crystals.
 ///
 /// # Errors
 /// As [`Question::state`].
-pub fn half_length(question: &Question<'_>) -> Result<Option<Proposal>, PairsError> {
-    let [crystal] = question.crystals else { return Ok(None) };
+pub fn half_length(question: &Question<'_>) -> Result<Vec<Proposal>, PairsError> {
+    let [crystal] = question.crystals else { return Ok(Vec::new()) };
     let task = Task::new(question)?;
     let before = task.judge(&[])?;
-    let mut plate = as_plate(crystal);
-    plate.length = Length::metres(0.5 * crystal.length.si());
-    plate.orientation.roll = Angle::from_degrees(crystal.orientation.roll.degrees() + 90.0);
-    let plates = [Place::A, Place::B].map(|place| Compensator { place, plate: plate.clone() });
-    task.propose(plates.to_vec(), &before).map(Some)
+    let mut all = Vec::with_capacity(2);
+    for half_wave in [false, true] {
+        let mut plate = as_plate(crystal);
+        plate.length = Length::metres(0.5 * crystal.length.si());
+        let turn = if half_wave { 0.0 } else { 90.0 };
+        plate.orientation.roll = Angle::from_degrees(crystal.orientation.roll.degrees() + turn);
+        let plates = [Place::A, Place::B].map(|place| Compensator { place, plate: plate.clone(), half_wave });
+        all.push(task.propose(plates.to_vec(), &before)?);
+    }
+    Ok(all)
 }
 
 /// A crystal's material and cut, upright and unpoled.
@@ -175,7 +181,7 @@ impl<'q, 'a> Task<'q, 'a> {
 
     fn compensator(&self, candidate: &Candidate, length: f64) -> Compensator {
         let plate = Crystal { length: Length::metres(length), ..candidate.plate.clone() };
-        Compensator { place: self.sites[candidate.site].place, plate }
+        Compensator::new(self.sites[candidate.site].place, plate)
     }
 
     fn propose(&self, plates: Vec<Compensator>, before: &State) -> Result<Proposal, PairsError> {

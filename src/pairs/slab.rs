@@ -15,9 +15,11 @@ pub struct Slab {
     /// Columns u, v, w in the lab.
     pub mount: Matrix3<f64>,
     /// Columns X, Y, Z in the mount frame.
-    axes: Matrix3<f64>,
+    pub axes: Matrix3<f64>,
     /// Along w, m.
     pub length: f64,
+    /// Whether H and V are exchanged before and behind it.
+    pub exchanged: bool,
 }
 
 /// A plane wave outside: its transverse basis is H = lab x made perpendicular to the direction, V = direction x H.
@@ -70,6 +72,7 @@ impl Slab {
             mount: frame * rotation.matrix(),
             axes: placement.dielectric_axes(),
             length: crystal.hot_length().si(),
+            exchanged: false,
         }
     }
 

@@ -95,7 +95,7 @@ impl Stack {
             .map(|(w, d)| Ray::new(w.wavenumber(), d));
         let plates = |arm: usize| -> Vec<Slab> {
             let own = bench.compensators.iter().filter(|c| c.place.is_in(arm));
-            own.map(|c| Slab::in_arm(&c.plate, &rays[arm])).collect()
+            own.map(|c| Slab { exchanged: c.half_wave, ..Slab::in_arm(&c.plate, &rays[arm]) }).collect()
         };
         let in_pump = bench.compensators.iter().filter(|c| c.place == Place::Pump);
         let mut stack = Self {

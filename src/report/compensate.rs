@@ -54,9 +54,9 @@ pub fn table(answers: &Answers) -> Table {
     table
 }
 
-/// For people; `rule` is the half-length rule, where there is one.
+/// For people; `rules` are those of half the length, where there are any.
 #[must_use]
-pub fn text(answers: &Answers, rule: Option<&Proposal>) -> String {
+pub fn text(answers: &Answers, rules: &[Proposal]) -> String {
     let mut out = String::new();
     for proposal in &answers.proposals {
         out.push_str(&prose(&proposal_words(proposal)));
@@ -67,10 +67,12 @@ pub fn text(answers: &Answers, rule: Option<&Proposal>) -> String {
     for (id, why) in &answers.useless {
         out.push_str(&prose(&format!("{id}: {why}.")));
     }
-    if let Some(rule) = rule {
+    if let [rolled, flipped] = rules {
         out.push_str(&prose(&format!(
-            "For comparison, the source's own cut at half its length in both arms, rolled by a quarter turn: visibility {}.",
-            fixed(rule.after, 4)
+            "For comparison, the source's own cut at half its length in both arms: visibility {} rolled by a quarter turn; \
+             {} as the source stands, behind half-wave plates at 45 deg (half_wave = true).",
+            fixed(rolled.after, 4),
+            fixed(flipped.after, 4)
         )));
     }
     out.push_str(&prose(

@@ -67,9 +67,9 @@ fn sources() -> Vec<Source> {
         PumpPolarization::Given { angle: Angle::from_degrees(30.0), phase: Angle::from_degrees(25.0) };
     let plate = |length, roll| bbo(50.0, 0.0, length, roll);
     let compensators = vec![
-        Compensator { place: Place::A, plate: plate(0.4, 70.0) },
-        Compensator { place: Place::B, plate: plate(0.3, 110.0) },
-        Compensator { place: Place::Pump, plate: plate(0.2, 20.0) },
+        Compensator::new(Place::A, plate(0.4, 70.0)),
+        Compensator::new(Place::B, plate(0.3, 110.0)),
+        Compensator::new(Place::Pump, plate(0.2, 20.0)),
     ];
     let base = Bench { filters: filters(4.0), polarization, compensators, ..Default::default() };
     let line = Line::Width(Length::metres(0.3e-9));
