@@ -142,8 +142,8 @@ impl Stack {
             Ok(())
         };
         fill(&mut tuned.pump_plates, &self.pump_plates, waves[PUMP])?;
-        for arm in 0..2 {
-            fill(&mut tuned.arm_plates[arm], &self.arm_plates[arm], waves[arm])?;
+        for ((media, plates), wave) in tuned.arm_plates.iter_mut().zip(&self.arm_plates).zip(waves) {
+            fill(media, plates, wave)?;
         }
         Ok(())
     }

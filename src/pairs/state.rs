@@ -51,17 +51,17 @@ impl DensityMatrix {
         Self(Matrix4::from_fn(|i, j| self.0[(order[i], order[j])]))
     }
 
-    /// |<sz sz>|: contrast of coincidences between polarizers along the basis.
+    /// `|<sz sz>|`: contrast of coincidences between polarizers along the basis.
     #[must_use]
     pub fn visibility_straight(&self) -> f64 {
         let p = |i: usize| self.0[(i, i)].re;
         (p(0) - p(1) - p(2) + p(3)).abs()
     }
 
-    /// Largest |<sx sx>| over a phase given to the second basis state of arm b: contrast between diagonal polarizers once
+    /// Largest `|<sx sx>|` over a phase given to the second basis state of arm b: contrast between diagonal polarizers once
     /// the phase has been set.
     ///
-    /// With that phase f, <sx sx> = 2 Re[e^(i f) (rho_(00,11) + rho_(01,10)*)] up to the sign of f.
+    /// With that phase f, `<sx sx> = 2 Re[e^(i f) (rho_(00,11) + rho_(01,10)*)]` up to the sign of f.
     #[must_use]
     pub fn visibility_diagonal(&self) -> f64 {
         2.0 * (self.0[(0, 3)] + self.0[(1, 2)].conj()).norm()
@@ -100,7 +100,7 @@ impl DensityMatrix {
 
     /// Bell state of free phase with the largest overlap.
     ///
-    /// <B|rho|B> = (rho_(00,00) + rho_(11,11))/2 + |rho_(00,11)| at the phase arg rho_(11,00), and so with 01 and 10.
+    /// `<B|rho|B> = (rho_(00,00) + rho_(11,11))/2 + |rho_(00,11)|` at the phase arg rho_(11,00), and so with 01 and 10.
     #[must_use]
     pub fn nearest_bell(&self) -> Nearest {
         let overlap =

@@ -12,7 +12,7 @@ pub struct Table {
 }
 
 /// Columns that hold words.
-const WORDS: [&str; 17] = [
+const WORDS: [&str; 19] = [
     "material",
     "dataset",
     "process",
@@ -28,6 +28,8 @@ const WORDS: [&str; 17] = [
     "optic_sign",
     "default_dataset",
     "datasets",
+    "basis",
+    "arm",
     "status",
     "extrapolated",
 ];
