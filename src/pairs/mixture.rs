@@ -13,11 +13,12 @@ use super::amplitude::{Behind, Born};
 use super::band::Band;
 use super::bench::{Bench, Filter, Opening};
 use super::disc::{ArmFrame, Passage};
+use super::plate::Point;
 use super::quadrature::Rule;
 use super::slab::Ray;
 use super::stack::{PUMP, Stack, Tuned, wavelength};
 use super::state::{Amplitude, DensityMatrix};
-use super::{PairsError, Vary};
+use super::{HistoryBasis, PairsError, Vary};
 
 /// What is integrated over, made ready.
 #[derive(Debug, Clone)]
@@ -181,6 +182,16 @@ impl<'a> Mixture<'a> {
         self.stack.tune(&mut sum.tuned, nominal[0] + omega, nominal[PUMP] + pump)?;
         sum.add(&Vector3::z(), &self.frames[0].direction(Vector2::new(x, y)), 1.0);
         sum.record.and_then(|all| all.first().copied()).ok_or(PairsError::NothingCollected)
+    }
+
+    /// Phase of the first history minus that of the second behind everything, radians within (-pi, pi], for a pair that is
+    /// off the nominal one: frequency of a (rad/s), direction of a (sines along H and V of the arm), frequency of the pump
+    /// (rad/s).
+    ///
+    /// # Errors
+    /// Indices that are not to be had; such a pair cannot leave.
+    pub fn relative_phase(&self, basis: &HistoryBasis, off: [f64; 4]) -> Result<f64, PairsError> {
+        Ok(Point::new(&self.probe(off)?, basis).value.arg())
     }
 
     /// What passes the irises.

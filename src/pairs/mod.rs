@@ -170,6 +170,9 @@ fn no_pair(number: usize, count: usize, status: Status) -> String {
         (0, status) => {
             format!("there is no pair of directions with two histories ({status}); look at `twincone cones`")
         }
+        (count, status) if number <= count => {
+            format!("pair {number} has no state ({status}); look at `twincone cones`")
+        }
         (1, _) => format!("there is no pair {number}: the rings cross in one pair of directions, number 1"),
         _ => format!("there is no pair {number}: pairs are numbered 1 to {count}"),
     }

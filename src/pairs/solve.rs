@@ -72,14 +72,13 @@ impl Question<'_> {
             let row = found.crossings.first().ok_or(PairsError::NoHistories)?;
             return Ok((None, self.fixed_pair(row, fixed)?, row.clone()));
         }
-        let pairs: Vec<(&CrossingRow, Pair)> =
-            found.crossings.iter().filter_map(|row| Some((row, Pair::at(row, self.pump)?))).collect();
-        match pairs.get(self.number.wrapping_sub(1)) {
-            Some((row, pair)) => Ok((Some(self.number), *pair, (*row).clone())),
+        let row = found.crossings.iter().find(|row| row.pair == Some(self.number));
+        match row.and_then(|row| Some((row, Pair::at(row, self.pump)?))) {
+            Some((row, pair)) => Ok((Some(self.number), pair, row.clone())),
             None => Err(PairsError::NoPair {
                 number: self.number,
-                count: pairs.len(),
-                status: found.crossings.first().map_or(Status::NoPhaseMatching, |row| row.status),
+                count: found.crossings.iter().filter(|row| row.pair.is_some()).count(),
+                status: row.or(found.crossings.first()).map_or(Status::NoPhaseMatching, |row| row.status),
             }),
         }
     }

@@ -225,7 +225,14 @@ fn refined_quadratures_stay_within_the_printed_error() {
 
 #[test]
 fn a_crystal_sliced_in_two_makes_the_same_pairs() {
-    for source in sources() {
+    let tilted = |source: &Source| {
+        let mut crystals = source.crystals.clone();
+        crystals.iter_mut().for_each(|crystal| crystal.orientation.tilt = Angle::from_degrees(0.4));
+        Source::new(crystals, source.interaction, source.bench.clone())
+    };
+    let upright = sources();
+    let tilted: Vec<Source> = upright.iter().take(1).map(tilted).collect();
+    for source in upright.into_iter().chain(tilted) {
         let mut sliced = source.clone();
         let first = &source.crystals[0];
         let part =
