@@ -51,6 +51,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let answers = compensate(&question, &materials)?;
     let rules = half_length(&question)?;
     let mut conventions = Conventions::of_pairs(&setup);
+    conventions.warn_of_dim_phi(&setup);
     for proposal in &answers.proposals {
         proposal.plates.iter().for_each(|designed| conventions.add_dataset(&designed.plate.plate));
     }

@@ -66,11 +66,13 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         Some(Choice::Lab) => &[Basis::Lab],
         None => &[Basis::Histories, Basis::Lab],
     };
+    let mut conventions = Conventions::of_pairs(&setup);
+    conventions.warn_of_dim_phi(&setup);
     let answer = Answer {
         command: "state",
         tables: tables(&state, &budget, bases),
         text: text(&setup, &state, &budget, bases),
-        conventions: Conventions::of_pairs(&setup),
+        conventions,
         job: resolved_job(&setup),
         solved: true,
     };
