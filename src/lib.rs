@@ -15,6 +15,7 @@
 //! | [`material`] | dispersion, nonlinear tensors, the catalogue, user files |
 //! | [`optics`] | waves at a tangential wave vector |
 //! | [`matching`] | phase matching: cuts, rings, crossings, turns |
+//! | [`pairs`] | amplitudes, the entangled state, compensation |
 //! | [`job`] | the description of an experiment |
 //! | [`report`] | rows to text, CSV, JSON |
 //! | [`sweep`] | a report at every point of a grid of settings |
@@ -24,6 +25,7 @@ pub mod job;
 pub mod matching;
 pub mod material;
 pub mod optics;
+pub mod pairs;
 pub(crate) mod places;
 pub mod quantity;
 pub mod report;

@@ -4,6 +4,7 @@ use twincone::job::JobError;
 use twincone::job::setup::SetupError;
 use twincone::matching::ConesError;
 use twincone::material::MaterialError;
+use twincone::pairs::PairsError;
 
 /// A message of one sentence and an exit status.
 #[derive(Debug)]
@@ -64,5 +65,17 @@ impl From<ConesError> for Failure {
             ConesError::Material(error) => error.into(),
             ConesError::Description(message) => Self::usage(message),
         }
+    }
+}
+
+impl From<PairsError> for Failure {
+    fn from(error: PairsError) -> Self {
+        let status = match error {
+            PairsError::Material(error) => return error.into(),
+            PairsError::Description(_) => 2,
+            PairsError::NoTensor { .. } => 3,
+            _ => 1,
+        };
+        Self { status, message: error.to_string() }
     }
 }

@@ -1,5 +1,6 @@
 //! The command line, a file for each command: options in, a question to the library, its answer out.
 
+mod compensate;
 mod completions;
 mod cones;
 mod cut;
@@ -14,6 +15,7 @@ mod output;
 mod progress;
 mod run;
 mod schema;
+mod state;
 mod sweep_file;
 mod tilt;
 mod twin;
@@ -62,6 +64,10 @@ enum Command {
     Run(Box<run::Args>),
     /// Join the parts of a sweep that was shared out
     Join(join::Args),
+    /// The entangled state that filters, irises and compensators leave, and what spoils it
+    State(Box<state::Args>),
+    /// Design the plates that make the two histories alike
+    Compensate(Box<compensate::Args>),
     /// Write out a commented job file, or check one
     Job(Box<job::Args>),
     /// The JSON Schema of the job file, for editors
@@ -114,6 +120,8 @@ pub fn run(typed: &Typed) -> Result<output::Outcome, Failure> {
         Command::Twin(args) => twin::run(args, out),
         Command::Run(args) => run::run(args, out),
         Command::Join(args) => join::run(args, out),
+        Command::State(args) => state::run(args, out),
+        Command::Compensate(args) => compensate::run(args, out),
         Command::Job(args) => job::run(args, out),
         Command::Schema => schema::run(out),
         Command::Completions(args) => completions::run(args, Typed::command(), out),

@@ -329,6 +329,8 @@ pub struct Compensator {
     pub roll: Option<Text>,
     #[serde(skip_serializing_if = "Option::is_none")]
     pub tilt: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub half_wave: Option<bool>,
 }
 
 /// `[sweep]`

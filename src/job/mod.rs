@@ -1,5 +1,6 @@
 //! The description of an experiment: what was typed, kept with its places, becomes a validated [`Setup`] in SI.
 
+mod arms;
 pub mod axes;
 mod checks;
 pub mod description;

@@ -5,6 +5,7 @@ use std::sync::Arc;
 
 use toml::Spanned;
 
+use super::arms;
 use super::checks::check_unused;
 use super::description::{self, Description, Text};
 use super::document::{Document, JobError};
@@ -107,6 +108,10 @@ pub fn resolve_description(
 ) -> Result<Setup, SetupError> {
     let reader = Reader { document };
     check_unused(&reader, description)?;
+    let screen = reader
+        .positive(description.screen.as_ref().and_then(|s| s.distance.as_ref()), "the screen distance")?
+        .unwrap_or(Length::metres(1.0));
+    let bench = arms::bench(&reader, description, screen)?;
     let pump = pump_wavelength(&reader, description, needs)?;
     let (signals, interaction, interaction_given) = emission(&reader, description, pump)?;
     let mut setup = Setup {
@@ -117,9 +122,9 @@ pub fn resolve_description(
         interaction,
         interaction_given,
         signals,
-        screen: reader
-            .positive(description.screen.as_ref().and_then(|s| s.distance.as_ref()), "the screen distance")?
-            .unwrap_or(Length::metres(1.0)),
+        screen,
+        bench,
+        unread: arms::unread(description),
         stage: stage(&reader, description)?,
         length_given: description.crystal.iter().all(|c| c.get_ref().length.is_some()),
         written: description.clone(),
@@ -142,6 +147,7 @@ pub fn resolve_description(
         setup.cut.push(cut);
     }
     setup.settle(needs)?;
+    setup.bench.compensators = arms::compensators(&reader, description, &setup.crystals, catalogue)?;
     Ok(setup)
 }
 
@@ -265,8 +271,6 @@ fn crystal(
     crystal.length =
         reader.positive(c.length.as_ref(), "the crystal length")?.unwrap_or(Length::metres(1e-3));
     crystal.poling = reader.positive(c.poling.as_ref(), "the poling period")?;
-    reader
-        .positive(c.gap_before.as_ref().filter(|g| !g.get_ref().trim_start().starts_with('0')), "the gap")?;
     crystal.expands = c.thermal_expansion.unwrap_or(true);
     if c.extrapolate == Some(true) {
         crystal.reach = Reach::Extrapolate;
@@ -295,7 +299,7 @@ fn crystal(
 }
 
 /// `bbo`, `bbo:kato-1986`, or `./mine.toml`.
-fn material(
+pub(super) fn material(
     reader: &Reader<'_>,
     c: &description::Crystal,
     catalogue: &Catalogue,

@@ -6,6 +6,7 @@ use super::settle::settle_cut;
 use crate::matching::{Interaction, Photons, Target};
 use crate::material::MaterialError;
 use crate::optics::Crystal;
+use crate::pairs::Bench;
 use crate::quantity::{Angle, Length, Wavelength};
 
 use thiserror::Error;
@@ -57,6 +58,10 @@ pub struct Setup {
     pub signals: Signals,
     /// Of the screen from the crystal.
     pub screen: Length,
+    /// What pump and pairs meet beside the crystals.
+    pub bench: Bench,
+    /// Keys that are written and not understood by this version; a result that depends on them must not be given.
+    pub unread: Vec<&'static str>,
     /// The mount's scale.
     pub stage: Option<Stage>,
     /// Whether the length was given.

@@ -33,6 +33,18 @@ impl Conventions {
         all
     }
 
+    /// For an experiment whose pairs are collected: plates count too, and more of the job is used.
+    #[must_use]
+    pub fn of_pairs(setup: &Setup) -> Self {
+        let mut all = Self::of(setup);
+        all.warnings.retain(|warning| !warning.starts_with(UNUSED));
+        if unread_keys(setup).contains(&"pump.power") {
+            all.warnings.insert(0, format!("{UNUSED}: pump.power"));
+        }
+        setup.bench.compensators.iter().for_each(|c| all.add_dataset(&c.plate));
+        all
+    }
+
     /// Adds the line about a crystal's data set, once.
     pub fn add_dataset(&mut self, crystal: &Crystal) {
         let id = format!("{}:{}", crystal.material.id, crystal.set().id);
@@ -66,7 +78,7 @@ impl Conventions {
     fn add_warnings(&mut self, setup: &Setup) {
         let unread = unread_keys(setup);
         if !unread.is_empty() {
-            self.warnings.push(format!("not used by this command: {}", unread.join(", ")));
+            self.warnings.push(format!("{UNUSED}: {}", unread.join(", ")));
         }
         let Some(pump) = setup.pump else { return };
         for crystal in &setup.crystals {
@@ -146,7 +158,10 @@ fn angles_line(setup: &Setup) -> String {
     line
 }
 
-/// Keys that were given and that no command reads yet.
+/// How the warning about keys without effect begins.
+const UNUSED: &str = "not used by this command";
+
+/// Keys that were given and that only some commands read.
 fn unread_keys(setup: &Setup) -> Vec<&'static str> {
     let written = &setup.written;
     let pump = written.pump.as_ref().map(|p| p.get_ref().clone()).unwrap_or_default();

@@ -1,6 +1,7 @@
 //! Results as rows, and rows as text, CSV and JSON.
 
 mod angles;
+pub mod compensate;
 pub mod cones;
 mod conventions;
 pub mod cut;
@@ -8,6 +9,7 @@ mod export;
 pub mod index;
 pub mod materials;
 mod spread;
+pub mod state;
 pub mod table;
 pub mod tilt;
 pub mod twin;

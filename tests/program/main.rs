@@ -10,6 +10,7 @@ mod cut;
 mod index;
 mod job;
 mod materials;
+mod state;
 mod sweep;
 mod tilt;
 mod twin;

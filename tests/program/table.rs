@@ -12,7 +12,7 @@ pub struct Table {
 }
 
 /// Columns that hold words.
-const WORDS: [&str; 19] = [
+const WORDS: [&str; 21] = [
     "crystal_material",
     "crystal_dataset",
     "material",
@@ -30,6 +30,8 @@ const WORDS: [&str; 19] = [
     "optic_sign",
     "default_dataset",
     "datasets",
+    "basis",
+    "arm",
     "status",
     "extrapolated",
 ];

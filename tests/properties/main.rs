@@ -6,6 +6,7 @@
 mod conservation;
 mod crossings;
 mod crystals;
+mod pairs;
 mod rings;
 mod round_trips;
 mod slowly;

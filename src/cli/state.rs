@@ -1,0 +1,100 @@
+//! `state`: which entangled state comes out?
+
+use clap::Args as ClapArgs;
+use twincone::job::setup::{Needs, Setup};
+use twincone::pairs::Question;
+use twincone::report::state::{Basis, tables, text};
+use twincone::report::{Answer, Conventions, resolved_job};
+
+use super::failure::Failure;
+use super::options::ExperimentArgs;
+use super::output::{Outcome, OutputArgs};
+
+/// Options of `state`.
+#[derive(Debug, ClapArgs)]
+pub struct Args {
+    /// Which pair of crossings, as `cones` numbers them
+    #[arg(long, value_name = "N", default_value = "1", value_parser = clap::value_parser!(u16).range(1..))]
+    pair: u16,
+    /// oe: the two histories; lab: H and V of each arm [default: both]
+    #[arg(long, value_enum)]
+    basis: Option<Choice>,
+    /// Error of a visibility to go for: less takes longer
+    #[arg(long, value_name = "ERROR", default_value = "1e-3", value_parser = precision)]
+    precision: f64,
+    #[command(flatten)]
+    experiment: ExperimentArgs,
+}
+
+#[derive(Debug, Clone, Copy, clap::ValueEnum)]
+enum Choice {
+    /// The two histories
+    Oe,
+    /// H and V of each arm
+    Lab,
+}
+
+/// An error between 1e-9 and 0.1.
+pub fn precision(text: &str) -> Result<f64, String> {
+    match text.parse::<f64>() {
+        Ok(value) if (1e-9..=0.1).contains(&value) => Ok(value),
+        _ => Err("write a number from 1e-9 to 0.1, such as 1e-4".into()),
+    }
+}
+
+/// State and budget.
+///
+/// # Errors
+/// What is missing, wrong or outside a data set's range; no pair, or none that passes.
+pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
+    let setup = args.experiment.setup(output, Needs::ALL)?;
+    demand_bench(&setup, "state")?;
+    let signals = setup.signals();
+    let question = Question {
+        crystals: &setup.crystals,
+        pump: setup.pump(),
+        signals: &signals,
+        interaction: setup.interaction,
+        bench: &setup.bench,
+        number: usize::from(args.pair),
+        wanted: args.precision,
+    };
+    let state = question.state()?;
+    let budget = question.budget(&state)?;
+    let bases: &[Basis] = match args.basis {
+        Some(Choice::Oe) => &[Basis::Histories],
+        Some(Choice::Lab) => &[Basis::Lab],
+        None => &[Basis::Histories, Basis::Lab],
+    };
+    let mut conventions = Conventions::of_pairs(&setup);
+    conventions.warn_of_dim_phi(&setup);
+    let answer = Answer {
+        command: "state",
+        tables: tables(&state, &budget, bases),
+        text: text(&setup, &state, &budget, bases),
+        conventions,
+        job: resolved_job(&setup),
+        solved: true,
+    };
+    output.outcome(&answer, Some("state"))
+}
+
+/// A length for every crystal, and nothing that this version would leave out silently.
+///
+/// # Errors
+/// What is missing, or not understood.
+pub fn demand_bench(setup: &Setup, command: &str) -> Result<(), Failure> {
+    if !setup.length_given {
+        return Err(Failure::usage(format!(
+            "no length: `{command}` needs that of every crystal; pass --length, for example --length 2mm, or write \
+             crystal.length in the job file"
+        )));
+    }
+    match setup.unread.as_slice() {
+        [] => Ok(()),
+        keys => Err(Failure::usage(format!(
+            "{} is not read by this version; give a width instead (pump.linewidth, filter.width)",
+            keys.join(" and ")
+        ))),
+    }
+}
