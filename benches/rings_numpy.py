@@ -333,24 +333,26 @@ def extremes(meridians, s, turns):
 
 
 def circle(x, y):
-    """Centre and radius of the circle with the least sum of squared distances: Gauss-Newton from the mean."""
+    """Centre and radius of the circle with the least sum of squared distances, by Newton from the mean."""
     cx, cy = x.mean(axis=1, keepdims=True), y.mean(axis=1, keepdims=True)
-    for _ in range(50):
+    for _ in range(20):
         ex, ey = x - cx, y - cy
         distance = np.sqrt(ex * ex + ey * ey)
         ex /= distance
         ey /= distance
         # residual distance - radius; the radius is eliminated, its best value is the mean distance
         ax, ay, radius = (a.mean(axis=1, keepdims=True) for a in (ex, ey, distance))
-        pairs = (ex, ex), (ex, ey), (ex, distance), (ey, distance)
-        xx, xy, bx, by = (np.einsum("ij,ij->i", a, b)[:, None] / x.shape[1] for a, b in pairs)
-        xx, xy, yy = xx - ax * ax, xy - ax * ay, 1.0 - xx - ay * ay
+        bend_x, bend_y = ex / distance, ey / distance
+        pairs = (ey, bend_y), (ex, bend_y), (ex, bend_x), (ex, distance), (ey, distance)
+        xx, xy, yy, bx, by = (np.einsum("ij,ij->i", a, b)[:, None] / x.shape[1] for a, b in pairs)
+        xx, xy, yy = 1.0 - radius * xx - ax * ax, radius * xy - ax * ay, 1.0 - radius * yy - ay * ay
         bx, by = bx - ax * radius, by - ay * radius
         determinant = xx * yy - xy * xy
         step_x, step_y = (yy * bx - xy * by) / determinant, (xx * by - xy * bx) / determinant
         cx, cy = cx + step_x, cy + step_y
         radius = radius - ax * step_x - ay * step_y
-        if max(np.abs(step_x).max(), np.abs(step_y).max()) < 1e-12:
+        # what is left is the square of this
+        if max(np.abs(step_x).max(), np.abs(step_y).max()) < 1e-7:
             return cx, cy, radius
     raise SystemExit("not converged")
 
