@@ -9,8 +9,8 @@ and mounted in any way, any wavelengths and any o and e for pump, signal and idl
     python3 benches/rings_numpy.py --check rows.csv      # rows of the program, compared one by one
     python3 benches/rings_numpy.py --roll 30 --cross-tilt 2 --check rows.csv
 
-Arrays are tilts by azimuths, in blocks that fit the cache; all derivatives are exact. It is for tilts at which the rings
-are there, are not filled and, for crossings, cross twice: it stops at others. One process.
+Arrays are tilts by azimuths, in blocks that fit the cache; all derivatives are exact. It is for tilts at which the
+rings are there, are not filled and, for crossings, cross twice: it stops at others. One process.
 """
 
 import argparse
@@ -76,6 +76,11 @@ class Sheet:
         along_u /= root
         along_v /= root
         return root, along_u, along_v
+
+    def bend(self, u, v):
+        """Minus the second derivatives of k_w: uu, uv, vv."""
+        root, along_u, along_v = self.root(u, v)
+        return np.stack([self.uu + along_u**2, self.uv + along_u * along_v, self.vv + along_v**2]) / root
 
     def k_w(self, u, v):
         return self.root(u, v)[0] - self.lean[0] * u - self.lean[1] * v
@@ -152,27 +157,18 @@ class Mismatch:
         own_v += self.lean[1]
         return value, own_u, own_v
 
-    def curvatures(self, u, v):
-        """Second derivatives uu, uv, vv."""
-        total = np.zeros((3, *u.shape))
-        for sheet, u, v in ((self.own, u, v), (self.twin, self.pump_u - u, self.pump_v - v)):
-            root, along_u, along_v = sheet.root(u, v)
-            uu, uv, vv = sheet.uu + along_u**2, sheet.uv + along_u * along_v, sheet.vv + along_v**2
-            total += np.stack([uu, uv, vv]) / root
-        return total
-
     def lowest(self):
         """Where Delta_k is least, by Newton from the photon's share of the pump; its value and second derivatives."""
         share = self.own.k0 / (self.own.k0 + self.twin.k0)
         u, v = share * self.pump_u, share * self.pump_v
         for _ in range(20):
-            _, along_u, along_v = self.at(u, v)
-            uu, uv, vv = self.curvatures(u, v)
+            value, along_u, along_v = self.at(u, v)
+            uu, uv, vv = self.own.bend(u, v) + self.twin.bend(self.pump_u - u, self.pump_v - v)
             determinant = uu * vv - uv * uv
-            step_u, step_v = (vv * along_u - uv * along_v) / determinant, (uu * along_v - uv * along_u) / determinant
-            u, v = u - step_u, v - step_v
+            step_u, step_v = (uv * along_v - vv * along_u) / determinant, (uv * along_u - uu * along_v) / determinant
             if max(np.abs(step_u).max(), np.abs(step_v).max()) < 1e-6 * self.own.k0:
-                return u, v, self.at(u, v)[0], self.curvatures(u, v)
+                return u, v, value, (uu, uv, vv)
+            u, v = u + step_u, v + step_v
         raise SystemExit("not converged")
 
     def direction(self, u, v):
