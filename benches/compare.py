@@ -1,13 +1,14 @@
 #!/usr/bin/env python3
-"""Sweeps the same tilts with twincone and with NumPy, one after the other, and says how many times faster one is.
+"""Sweeps the same tilts with twincone and with NumPy and says how many times faster one is.
 
-    cargo build --release
-    python3 benches/compare.py                       # a million tilts here, 50000 of them with NumPy
-    python3 benches/compare.py --points 20000 --numpy-points 20000
+    cargo build --release --locked
+    python3 benches/compare.py                       # a million tilts here, 20000 of them with NumPy
+    python3 benches/compare.py --points 20000 --numpy-points 5000 --runs 1
 
 twincone is timed as a whole process from start to exit; NumPy from its first tilt to its last byte, without the start
-of the interpreter and the imports. Both write their tables. For `both`, the times of the two reports are added. Before
-any number is printed the tables are compared, a few thousand rows spread over the whole sweep.
+of the interpreter and the imports. Both write their tables. They take turns, three times each, and the best time of
+each counts. For `both`, the times of the two reports are added. Before any number is printed the tables are compared, a
+few thousand rows spread over the whole sweep.
 """
 
 import argparse
@@ -72,11 +73,13 @@ def agree(table, points, folder):
 def main():
     parser = argparse.ArgumentParser(description="Speed of twincone and of NumPy on the same sweep.")
     parser.add_argument("--points", type=int, default=1_000_000, help="tilts for twincone")
-    parser.add_argument("--numpy-points", type=int, default=50_000, help="tilts for NumPy, over the same range")
+    parser.add_argument("--numpy-points", type=int, default=20_000, help="tilts for NumPy, over the same range")
     parser.add_argument("--threads", type=int, default=2)
+    parser.add_argument("--runs", type=int, default=3, help="of each, of which the best counts")
     parser.add_argument("--program", type=Path, default=PROGRAM)
     parser.add_argument("--json", action="store_true", help="for scripts")
     options = parser.parse_args()
+    options.program = options.program.resolve()
     if not options.program.exists():
         raise SystemExit(f"{options.program}: not there; `cargo build --release` makes it")
 
@@ -85,10 +88,13 @@ def main():
         folder = Path(name)
         for report in REPORTS:
             ours, theirs = folder / f"{report}.csv", folder / f"{report}-numpy.csv"
-            here = program(options, report, ours)
-            there = numpy(options.numpy_points, report, theirs)
+            here, there = [], []
+            for _ in range(options.runs):
+                ours.unlink(missing_ok=True)
+                here.append(program(options, report, ours))
+                there.append(numpy(options.numpy_points, report, theirs))
             difference[report] = agree(ours, options.points, folder)
-            seconds[report] = (here / options.points, there / options.numpy_points)
+            seconds[report] = (min(here) / options.points, min(there) / options.numpy_points)
             ours.unlink()
     seconds["both"] = tuple(sum(seconds[report][i] for report in REPORTS) for i in (0, 1))
 
@@ -98,10 +104,11 @@ def main():
     }
     if options.json:
         points = {"points": options.points, "numpy_points": options.numpy_points}
-        workers = {"threads": options.threads, "numpy_processes": 1}
+        workers = {"threads": options.threads, "numpy_processes": 1, "runs": options.runs}
         print(json.dumps({**points, **workers, "largest_difference_deg": difference, **rates}))
         return
     print(f"{options.points} tilts on {options.threads} threads; NumPy: {options.numpy_points} in one process")
+    print(f"best of {options.runs} runs of each, which took turns")
     print(f"{platform.processor() or platform.machine()}, {os.cpu_count()} cores, Python {platform.python_version()}")
     apart = ", ".join(f"{report} {degrees:.1e} deg" for report, degrees in difference.items())
     print(f"largest difference between the two: {apart}")

@@ -1,46 +1,36 @@
 #!/usr/bin/env python3
-"""Rings and crossings of a crossed-cone crystal against its tilt, with NumPy.
+"""Rings and crossings of a uniaxial crystal against its tilt, with NumPy.
 
-What a careful person would write for this one crystal without twincone, and what `compare.py` measures it against:
-BBO (kato-1986) at 20 degC, 405 nm to 810 nm twice, type II, theta 42.541 deg, phi 0 deg, 2 mm, screen at 1 m. The
-columns and their meaning are those of `twincone run --report rings` and `--report crossings`.
+What a careful person would write without twincone, and what `compare.py` measures it against: any uniaxial crystal, cut
+and mounted in any way, any wavelengths and any o and e for pump, signal and idler. Without options it is the crystal of
+`million_tilts.toml`. The columns and their meaning are those of `twincone run --report rings` and `--report crossings`.
 
     python3 benches/rings_numpy.py --points 20000 --report rings --out rings.csv
-    python3 benches/rings_numpy.py --check rows.csv        # rows of the program, compared one by one
+    python3 benches/rings_numpy.py --check rows.csv      # rows of the program, compared one by one
+    python3 benches/rings_numpy.py --roll 30 --cross-tilt 2 --check rows.csv
 
-Everything is specialised for speed: Z and the pump lie in the horizontal plane, so both sheets have closed forms with
-few terms; wave vectors are in units of the photon's vacuum wavenumber; the meridian's unknown is the sine of the polar
-angle, so that no trigonometric function is called inside Newton's method. The mirror symmetry of the rings is not used:
-each of the 72 samples is solved for. Blocks of tilts are as large as the cache likes. One process.
+Arrays are tilts by azimuths, in blocks that fit the cache; all derivatives are exact. It is for tilts at which the
+rings are there, are not filled and, for crossings, cross twice: it stops at others. One process.
 """
 
 import argparse
-import contextlib
 import csv
-import ctypes
 import json
 import sys
 import time
 
 import numpy as np
 
-# glibc hands freed arrays of this size back to the system and faults them in again at every use: tell it to keep them
-with contextlib.suppress(AttributeError, OSError, TypeError):
-    M_TRIM_THRESHOLD, M_TOP_PAD, M_MMAP_THRESHOLD = -1, -2, -3
-    for parameter in (M_TRIM_THRESHOLD, M_TOP_PAD, M_MMAP_THRESHOLD):
-        ctypes.CDLL(None).mallopt(parameter, 1 << 26)
-
-PUMP_UM = 0.405
-THETA = np.radians(42.541)
-LENGTH_UM = 2000.0
-SCREEN_MM = 1000.0
 SAMPLES = 72
-COARSE = 24
 TILTS_DEG = (-1.0, 4.0)
-BLOCK = {"rings": 256, "crossings": 2048}
+BLOCK = 128
 
 AXIS_STAYS = np.radians(1e-9)
 HALF_MAXIMUM = 1.3915573782515102  # sinc^2 is one half
+ROUGH, FINE = 1e-3, 1e-7  # last relative step of Newton's method; what is left is about its square
+
+PHI = 2.0 * np.pi * np.arange(SAMPLES) / SAMPLES
+COS_PHI, SIN_PHI = np.cos(PHI)[None, :], np.sin(PHI)[None, :]
 
 RINGS = (
     "point,crystal_tilt_deg,crystal,process,photon,wavelength_nm,polarization,field_azimuth_deg,axis_h_deg,axis_v_deg,"
@@ -54,7 +44,7 @@ CROSSINGS = (
 ).split(",")
 
 
-def impermittivity(um):
+def bbo(um):
     """1/n_o^2 and 1/n_e^2; K. Kato, IEEE J. Quantum Electron. 22, 1013 (1986)."""
     x = um * um
     o = 2.7359 + 0.01878 / (x - 0.01822) - 0.01354 * x
@@ -62,178 +52,219 @@ def impermittivity(um):
     return 1.0 / o, 1.0 / e
 
 
-class Ellipsoid:
-    """The e sheet k.M k = k0^2 of a crystal whose Z lies in the plane of u and w, at vacuum wavenumber k0.
+class Sheet:
+    """k.M k = k0^2 in the mount's frame: k_w = sqrt(top - q.Q q) - lean.q, where Q and lean follow from M."""
 
-    k_w = sqrt(zero - uu q_u^2 - vv q_v^2) - lean q_u
-    """
+    def __init__(self, eta, polarization, optic_axis, k0):
+        self.eta, self.polarization, self.optic_axis, self.k0 = eta, polarization, optic_axis, k0
+        o, e = eta
+        m = o * np.eye(3) if polarization == "o" else e * np.eye(3) + (o - e) * np.outer(optic_axis, optic_axis)
+        self.top = k0 * k0 / m[2, 2]
+        self.lean = m[:2, 2] / m[2, 2]
+        bowl = m[:2, :2] / m[2, 2] - np.outer(self.lean, self.lean)
+        self.uu, self.uv, self.vv = bowl[0, 0], bowl[0, 1], bowl[1, 1]
 
-    def __init__(self, um, k0):
-        o, e = impermittivity(um)
-        s, c = np.sin(THETA), np.cos(THETA)
-        m_ww = e + (o - e) * c * c
-        self.lean = (o - e) * s * c / m_ww
-        self.uu = o * e / m_ww**2
-        self.vv = e / m_ww
-        self.zero = k0 * k0 / m_ww
+    def root(self, u, v):
+        """The root in k_w and minus its derivatives."""
+        along_u, along_v = self.uu * u, self.uv * u
+        along_u += self.uv * v
+        along_v += self.vv * v
+        root = along_u * u
+        root += along_v * v
+        np.subtract(self.top, root, out=root)
+        np.sqrt(root, out=root)
+        along_u /= root
+        along_v /= root
+        return root, along_u, along_v
 
+    def bend(self, u, v):
+        """Minus the second derivatives of k_w: uu, uv, vv."""
+        root, along_u, along_v = self.root(u, v)
+        return np.stack([self.uu + along_u**2, self.uv + along_u * along_v, self.vv + along_v**2]) / root
 
-PUMP = Ellipsoid(PUMP_UM, 2.0)
-PHOTON = Ellipsoid(2 * PUMP_UM, 1.0)
-SPHERE = 1.0 / impermittivity(2 * PUMP_UM)[0]
+    def k_w(self, u, v):
+        return self.root(u, v)[0] - self.lean[0] * u - self.lean[1] * v
 
-
-class Mount:
-    """A block of tilts: where the pump goes in the crystal, and the lab's frame seen from the mount.
-
-    u = (cos t, 0, -sin t), v = (0, 1, 0), w = (sin t, 0, cos t) in the lab.
-    """
-
-    def __init__(self, tilt):
-        self.sin, self.cos = np.sin(tilt), np.cos(tilt)
-        self.pump = -2.0 * self.sin  # q_u of the pump; its q_v is zero
-        flow = np.sqrt(PUMP.zero - PUMP.uu * self.pump**2)
-        self.k_pump = flow - PUMP.lean * self.pump
-
-    def lab(self, u, v, w):
-        return u * self.cos + w * self.sin, v, w * self.cos - u * self.sin
-
-    def columns(self):
-        """For arrays of tilts by azimuths."""
-        other = object.__new__(Mount)
-        for name, value in vars(self).items():
-            setattr(other, name, value[:, None])
-        return other
-
-
-def mismatch(mount, u, v, photon):
-    """Delta_k and its gradient at the tangential wave vector (u, v) of a photon of this polarization (e or o)."""
-    twin_u = mount.pump - u
-    e_u, o_u = (u, twin_u) if photon == "e" else (twin_u, u)
-    vv = v * v
-    flow_o = o_u * o_u
-    flow_o += vv
-    np.subtract(SPHERE, flow_o, out=flow_o)
-    np.sqrt(flow_o, out=flow_o)
-    vv *= PHOTON.vv
-    flow_e = e_u * e_u
-    flow_e *= PHOTON.uu
-    flow_e += vv
-    np.subtract(PHOTON.zero, flow_e, out=flow_e)
-    np.sqrt(flow_e, out=flow_e)
-    value = e_u * PHOTON.lean
-    value -= flow_e
-    value -= flow_o
-    value += mount.k_pump
-    np.divide(1.0, flow_e, out=flow_e)
-    np.divide(1.0, flow_o, out=flow_o)
-    along_u = e_u * flow_e
-    along_u *= PHOTON.uu
-    along_u += PHOTON.lean
-    along_u -= o_u * flow_o
-    if photon == "o":
-        np.negative(along_u, out=along_u)
-    along_v = flow_e
-    along_v *= PHOTON.vv
-    along_v += flow_o
-    along_v *= v
-    return value, along_u, along_v
+    def field(self, k):
+        """Electric field of the wave vector k (mount, first index), of any length."""
+        axis, (o, e) = self.optic_axis, self.eta
+        across = np.stack([k[i - 2] * axis[i - 1] - k[i - 1] * axis[i - 2] for i in range(3)])
+        if self.polarization == "o":
+            return across
+        displacement = np.cross(across, k, axis=0)
+        return o * displacement + (e - o) * np.tensordot(axis, displacement, 1) * axis[:, None, None]
 
 
-def curvatures(mount, u, photon):
-    """Second derivatives of Delta_k, uu and vv, at v = 0 (uv vanishes there)."""
-    twin_u = mount.pump - u
-    e_u, o_u = (u, twin_u) if photon == "e" else (twin_u, u)
-    flow_e = np.sqrt(PHOTON.zero - PHOTON.uu * e_u * e_u)
-    flow_o = np.sqrt(SPHERE - o_u * o_u)
-    return PHOTON.uu * PHOTON.zero / flow_e**3 + SPHERE / flow_o**3, PHOTON.vv / flow_e + 1.0 / flow_o
+class Setup:
+    """The crystal, the light and how they meet, but for the tilt; angles in degrees, lengths in um."""
+
+    def __init__(self, options, eta=bbo):
+        self.cross_tilt, self.roll = options.cross_tilt, options.roll
+        self.length, self.screen_mm = options.length_mm * 1e3, options.screen_mm
+        theta, phi = np.radians([options.theta, options.phi])
+        w = np.array([np.sin(theta) * np.cos(phi), np.sin(theta) * np.sin(phi), np.cos(theta)])
+        u = np.array([-np.cos(theta) * np.cos(phi), -np.cos(theta) * np.sin(phi), np.sin(theta)])
+        optic_axis = np.array([u[2], np.cross(w, u)[2], w[2]])
+        pump, signal = options.pump_nm * 1e-3, options.signal_nm * 1e-3
+        um = {"pump": pump, "signal": signal, "idler": 1.0 / (1.0 / pump - 1.0 / signal)}
+        self.nm = {photon: length * 1e3 for photon, length in um.items()}
+        self.degenerate = abs(um["signal"] / um["idler"] - 1.0) < 1e-9
+        self.sheets = {
+            photon: {p: Sheet(eta(length), p, optic_axis, 2.0 * np.pi / length) for p in "oe"}
+            for photon, length in um.items()
+        }
+        self.processes = options.processes.split(",")
+
+    def rotations(self, tilt_deg):
+        """Mount to lab, as [lab, mount, tilt, 1]: Rz(roll) Ry(tilt) Rx(-cross tilt)."""
+        tilt, x, z = np.radians(tilt_deg), np.radians(-self.cross_tilt), np.radians(self.roll)
+        c, s, zero, one = np.cos(tilt), np.sin(tilt), np.zeros_like(tilt), np.ones_like(tilt)
+        about_y = np.array([[c, zero, s], [zero, one, zero], [-s, zero, c]])
+        about_x = np.array([[1.0, 0.0, 0.0], [0.0, np.cos(x), -np.sin(x)], [0.0, np.sin(x), np.cos(x)]])
+        about_z = np.array([[np.cos(z), -np.sin(z), 0.0], [np.sin(z), np.cos(z), 0.0], [0.0, 0.0, 1.0]])
+        return np.einsum("ij,jkn,kl->iln", about_z, about_y, about_x)[..., None]
 
 
-def middle(mount, photon):
-    """q_u, Delta_k and its curvatures where Delta_k is least; by symmetry q_v is zero."""
-    u = 0.5 * mount.pump
-    for _ in range(20):
-        step = mismatch(mount, u, np.zeros_like(u), photon)[1] / curvatures(mount, u, photon)[0]
-        u = u - step
-        if np.abs(step).max() < 1e-9:
-            break
-    return u, mismatch(mount, u, np.zeros_like(u), photon)[0], curvatures(mount, u, photon)
+def words(process):
+    return "{} -> {} + {}".format(*process)
+
+
+class Mismatch:
+    """Delta_k of a process such as eeo at a block of tilts, over the tangential wave vector of one of its photons."""
+
+    def __init__(self, setup, rotation, process, photon="signal"):
+        pump, signal, idler = process
+        sheets = setup.sheets["pump"][pump], setup.sheets["signal"][signal], setup.sheets["idler"][idler]
+        pump, own, twin = sheets if photon == "signal" else (sheets[0], sheets[2], sheets[1])
+        self.rotation, self.own, self.twin = rotation, own, twin
+        self.pump_u, self.pump_v = pump.k0 * rotation[2, 0], pump.k0 * rotation[2, 1]
+        self.lean = own.lean - twin.lean
+        self.offset = pump.k_w(self.pump_u, self.pump_v)
+        self.offset = self.offset + twin.lean[0] * self.pump_u + twin.lean[1] * self.pump_v
+
+    def at(self, u, v):
+        """Delta_k and its gradient."""
+        own, own_u, own_v = self.own.root(u, v)
+        twin, twin_u, twin_v = self.twin.root(self.pump_u - u, self.pump_v - v)
+        own += twin
+        value = self.lean[0] * u
+        value += self.lean[1] * v
+        value += self.offset
+        value -= own
+        own_u -= twin_u
+        own_u += self.lean[0]
+        own_v -= twin_v
+        own_v += self.lean[1]
+        return value, own_u, own_v
+
+    def lowest(self):
+        """Where Delta_k is least, by Newton from the photon's share of the pump; its value and second derivatives."""
+        share = self.own.k0 / (self.own.k0 + self.twin.k0)
+        u, v = share * self.pump_u, share * self.pump_v
+        for _ in range(20):
+            value, along_u, along_v = self.at(u, v)
+            uu, uv, vv = self.own.bend(u, v) + self.twin.bend(self.pump_u - u, self.pump_v - v)
+            determinant = uu * vv - uv * uv
+            step_u, step_v = (uv * along_v - vv * along_u) / determinant, (uv * along_u - uu * along_v) / determinant
+            if max(np.abs(step_u).max(), np.abs(step_v).max()) < 1e-6 * self.own.k0:
+                return u, v, value, (uu, uv, vv)
+            u, v = u + step_u, v + step_v
+        raise SystemExit("not converged")
+
+    def direction(self, u, v):
+        """Outside in the lab, of the photon with this tangential wave vector."""
+        return outside(self.rotation, self.own.k0, u, v)
+
+
+def outside(rotation, k0, u, v):
+    u, v = u / k0, v / k0
+    return to_lab(rotation, u, v, np.sqrt(1.0 - u * u - v * v))
+
+
+def to_lab(rotation, u, v, w):
+    return rotation[:, 0] * u + rotation[:, 1] * v + rotation[:, 2] * w
 
 
 class Meridians:
-    """Directions about an axis a (lab) by azimuth, 0 towards +x: their components along u and v of the mount."""
+    """Directions about an axis (lab) by azimuth: wave vectors q = A cos psi + B sin psi."""
 
-    def __init__(self, mount, axis, cos_phi, sin_phi):
-        x, y, z = axis
-        first = 1.0 / np.sqrt(1.0 - x * x)
-        self.first = np.stack([(1.0 - x * x) * first, -x * y * first, -x * z * first])
-        self.second = np.stack([np.zeros_like(x), z * first, -y * first])  # a x first
-        self.axis = axis
-        self.cos_phi, self.sin_phi = cos_phi, sin_phi
-        self.turn(mount)
+    def __init__(self, mismatch, axis, cos_phi, sin_phi):
+        self.mismatch, self.axis, self.cos_phi, self.sin_phi = mismatch, axis, cos_phi, sin_phi
+        first = -axis[0] * axis
+        first[0] += 1.0
+        self.first = first / np.sqrt((first * first).sum(axis=0))
+        self.second = np.cross(axis, self.first, axis=0)
+        k0, rotation = mismatch.own.k0, mismatch.rotation
+        on = [[k0 * (rotation[:, j] * a).sum(axis=0) for a in (axis, self.first, self.second)] for j in (0, 1)]
+        (self.axis_u, first_u, second_u), (self.axis_v, first_v, second_v) = on
+        self.out_u, self.out_v = self.outward(first_u, second_u), self.outward(first_v, second_v)
+        self.parts = first_u, second_u, first_v, second_v
 
-    def turn(self, mount):
-        def u(a):
-            return (a[0] * mount.cos - a[2] * mount.sin)[:, None]
+    def outward(self, first, second):
+        along = first * self.cos_phi
+        along += second * self.sin_phi
+        return along
 
-        self.axis_u, self.axis_v = u(self.axis), self.axis[1][:, None]
-        self.out_u = u(self.first) * self.cos_phi + u(self.second) * self.sin_phi
-        self.out_v = self.first[1][:, None] * self.cos_phi + self.second[1][:, None] * self.sin_phi
+    def sideways(self):
+        """B turned by 90 deg: its derivative with respect to the azimuth."""
+        first_u, second_u, first_v, second_v = self.parts
+        return second_u * self.cos_phi - first_u * self.sin_phi, second_v * self.cos_phi - first_v * self.sin_phi
 
-    def outward(self, vector):
-        """Component of a lab vector (one for each tilt) along the outward direction of each azimuth."""
-        first, second = (self.first * vector).sum(0)[:, None], (self.second * vector).sum(0)[:, None]
-        return first * self.cos_phi + second * self.sin_phi
+    def tangential(self, s, c):
+        u, v = self.out_u * s, self.out_v * s
+        u += self.axis_u * c
+        v += self.axis_v * c
+        return u, v
 
-    def lab(self, s):
-        c = np.sqrt(1.0 - s * s)
+    def lab(self, s, c):
         x, y = s * self.cos_phi, s * self.sin_phi
-        return [
-            self.axis[i][:, None] * c + self.first[i][:, None] * x + self.second[i][:, None] * y for i in range(3)
-        ]
+        return [self.axis[i] * c + self.first[i] * x + self.second[i] * y for i in range(3)]
+
+    def at(self, s):
+        """Delta_k, its change with psi, and its gradient at sin psi = s; cos psi as well."""
+        c = s * s
+        np.subtract(1.0, c, out=c)
+        np.sqrt(c, out=c)
+        value, along_u, along_v = self.mismatch.at(*self.tangential(s, c))
+        slope, change = self.out_u * c, self.out_v * c
+        slope -= self.axis_u * s
+        change -= self.axis_v * s
+        slope *= along_u
+        change *= along_v
+        slope += change
+        return value, slope, c, along_u, along_v
+
+    def solve(self, s, level=0.0, tolerance=FINE):
+        """sin psi where Delta_k = level, by Newton."""
+        for _ in range(20):
+            step, slope, c, _, _ = self.at(s)
+            if level:
+                step -= level
+            step /= slope
+            step *= c  # d sin psi = cos psi d psi
+            s = s - step
+            if max(step.max(), -step.min()) < tolerance * s.min():
+                return s
+        raise SystemExit("not converged")
 
 
-def along(mount, meridians, s, photon):
-    """Delta_k and its change with the polar angle psi, at sin psi = s; cos psi and the gradient as well."""
-    c = s * s
-    np.subtract(1.0, c, out=c)
-    np.sqrt(c, out=c)
-    m = meridians
-
-    def component(axis, out):
-        at, change = out * s, out * c
-        at += axis * c
-        change -= axis * s
-        return at, change
-
-    (u, d_u), (v, d_v) = component(m.axis_u, m.out_u), component(m.axis_v, m.out_v)
-    value, along_u, along_v = mismatch(mount, u, v, photon)
-    d_u *= along_u
-    d_v *= along_v
-    d_u += d_v
-    return value, d_u, c, along_u, along_v
+def trace(mismatch, tolerance):
+    """A ring about where Delta_k is least; near there Delta_k is quadratic in the radius."""
+    u, v, least, (uu, uv, vv) = mismatch.lowest()
+    if not (least < 0.0).all():
+        raise SystemExit("no ring at some tilt")
+    meridians = Meridians(mismatch, mismatch.direction(u, v), COS_PHI, SIN_PHI)
+    out_u, out_v = meridians.out_u, meridians.out_v
+    curvature = uu * out_u**2 + 2.0 * uv * out_u * out_v + vv * out_v**2
+    return meridians, meridians.solve(np.sqrt(-2.0 * least / curvature), tolerance=tolerance)
 
 
-def solve(mount, meridians, s, photon, level=0.0, tolerance=1e-7):
-    """sin psi where Delta_k = level. After a step below the tolerance the next one would be below rounding."""
-    for _ in range(20):
-        step, slope, c, _, _ = along(mount, meridians, s, photon)
-        if level:
-            step -= level
-        step /= slope
-        step *= c  # d sin psi = cos psi d psi
-        s = s - step
-        if max(step.max(), -step.min()) < tolerance * s.min():
-            return s
-    raise SystemExit("not converged")
-
-
-def tilted_plane(xx, xy, yy, xz, yz, zz):
-    """Slopes (alpha, beta) over x and y of the plane that fits points best, from their covariances.
-
-    (-alpha, -beta, 1) is the eigenvector with the smallest eigenvalue, by inverse iteration, which converges at once
-    since that eigenvalue is small.
-    """
+def plane(x, y, z):
+    """Slopes over x and y of the plane that fits points best; (-alpha, -beta, 1) is the eigenvector of their covariance
+    with the smallest eigenvalue, here by inverse iteration, which converges at once since that eigenvalue is small."""
+    x, y, z = (a - a.mean(axis=1, keepdims=True) for a in (x, y, z))
+    pairs = (x, x), (x, y), (y, y), (x, z), (y, z), (z, z)
+    xx, xy, yy, xz, yz, zz = (np.einsum("ij,ij->i", a, b)[:, None] for a, b in pairs)
     least = 0.0
     for _ in range(4):
         a, b = xx - least, yy - least
@@ -243,272 +274,249 @@ def tilted_plane(xx, xy, yy, xz, yz, zz):
     return alpha, beta
 
 
-def plane_about(meridians, s, c):
-    """The plane through the samples of a ring, over the two directions across its axis; sums over azimuth as products
-    with cosines and sines."""
-    n = s.shape[1]
-    cos_phi, sin_phi = meridians.cos_phi[0], meridians.sin_phi[0]
-    first = np.stack([cos_phi, sin_phi], axis=1) / n
-    second = np.stack([cos_phi * cos_phi, cos_phi * sin_phi, sin_phi * sin_phi], axis=1) / n
-    height = c - 1.0
-    (x, y), (xx, xy, yy) = (s @ first).T, ((s * s) @ second).T
-    (xz, yz), z, zz = ((s * height) @ first).T, height.mean(axis=1), np.einsum("ij,ij->i", height, height) / n
-    return tilted_plane(xx - x * x, xy - x * y, yy - y * y, xz - x * z, yz - y * z, zz - z * z)
-
-
-def plane_through(x, y, z):
-    """The plane through any points."""
-    x, y, z = (a - a.mean(axis=1, keepdims=True) for a in (x, y, z))
-    pairs = (x, x), (x, y), (y, y), (x, z), (y, z), (z, z)
-    return tilted_plane(*(np.einsum("ij,ij->i", a, b) / a.shape[1] for a, b in pairs))
-
-
-def centred(mount, columns, meridians, s, photon):
+def centred(meridians, s):
     """Samples taken again about the axis of the cone that fits best, until the axis stays."""
-    cos_phi, sin_phi = meridians.cos_phi, meridians.sin_phi
+    before = np.inf
     for _ in range(20):
         c = np.sqrt(1.0 - s * s)
-        alpha, beta = plane_about(meridians, s, c)
-        if np.hypot(alpha, beta).max() < AXIS_STAYS:
+        x, y = s * meridians.cos_phi, s * meridians.sin_phi
+        alpha, beta = plane(x, y, s * s / (-1.0 - c))
+        moved = np.hypot(alpha, beta).max()
+        if moved < AXIS_STAYS:
             return meridians, s
         axis = meridians.axis - alpha * meridians.first - beta * meridians.second
-        axis = axis / np.sqrt((axis * axis).sum(0))
+        axis /= np.sqrt((axis * axis).sum(axis=0))
+        again = Meridians(meridians.mismatch, axis, meridians.cos_phi, meridians.sin_phi)
         shift = meridians.axis - axis
-        meridians = Meridians(mount, axis, cos_phi, sin_phi)
-        s = solve(columns, meridians, s + c * meridians.outward(shift), photon)
+        towards = again.outward((again.first * shift).sum(axis=0), (again.second * shift).sum(axis=0))
+        meridians, s = again, again.solve(s + c * towards, tolerance=ROUGH if moved > 1e-6 else FINE)
     raise SystemExit("not converged")
 
 
-def radius_slope(s, slope, along_u, along_v, d_phi_u, d_phi_v):
-    """d psi/d phi along the ring, where Delta_k stays zero; d_phi is the outward direction turned by 90 deg."""
-    return -s * (along_u * d_phi_u + along_v * d_phi_v) / slope
+def turning(meridians, s, slope, along_u, along_v):
+    """d psi/d phi along the ring, where Delta_k stays zero."""
+    side_u, side_v = meridians.sideways()
+    side_u *= along_u
+    side_v *= along_v
+    side_u += side_v
+    side_u *= s
+    side_u /= slope
+    return np.negative(side_u, out=side_u)
 
 
-def extremes(mount, meridians, psi, slopes, photon):
-    """Least and largest stationary value of psi(phi): from the samples next to them to where the slope vanishes."""
-    rows = np.arange(len(psi))[:, None]
-    j = np.stack([psi.argmin(axis=1), psi.argmax(axis=1)], axis=1)
-    step = 2.0 * np.pi / SAMPLES
-    before, here, after = (slopes[rows, (j + k) % SAMPLES] for k in (-1, 0, 1))
-    phi, value, bend = j * step, psi[rows, j], (after - before) / (2.0 * step)
-    columns = mount.columns()
-    for _ in range(2):
-        move = -here / bend
+def extremes(meridians, s, turns):
+    """Least and largest stationary value of psi(phi): every one between samples where the slope psi' changes sign."""
+    spacing = 2.0 * np.pi / SAMPLES
+    after = np.roll(turns, -1, axis=1)
+    change = (turns < 0.0) != (after < 0.0)
+    # all tilts have as many places as the one with the most: a tilt with fewer has some of its samples among them
+    j = np.argsort(~change, axis=1, kind="stable")[:, : change.sum(axis=1).max()]
+    here, after, change, s = (np.take_along_axis(a, j, axis=1) for a in (turns, after, change, s))
+    phi, value, bend = PHI[j], np.arcsin(s), np.where(change, (after - here) / spacing, np.inf)
+    for _ in range(20):
+        # psi' is nearly linear: up to where it vanishes psi grows by half of psi' times the move
+        move = np.clip(-here / bend, -spacing, spacing)
+        gain = 0.5 * here * move
+        if np.abs(gain).max() < 1e-13:
+            value += gain
+            return value.min(axis=1, keepdims=True), value.max(axis=1, keepdims=True)
         phi = phi + move
-        local = Meridians(mount, meridians.axis, np.cos(phi), np.sin(phi))
-        s = solve(columns, local, np.sin(value + 0.5 * here * move), photon)
-        value = np.arcsin(s)
-        _, slope, _, along_u, along_v = along(columns, local, s, photon)
-        turned = Meridians(mount, meridians.axis, -np.sin(phi), np.cos(phi))
-        here = radius_slope(s, slope, along_u, along_v, turned.out_u, turned.out_v)
-    return value[:, 0], value[:, 1]
+        local = Meridians(meridians.mismatch, meridians.axis, np.cos(phi), np.sin(phi))
+        s = local.solve(np.sin(value + gain))
+        _, slope, _, along_u, along_v = local.at(s)
+        value, here = np.arcsin(s), turning(local, s, slope, along_u, along_v)
+    raise SystemExit("not converged")
 
 
 def circle(x, y):
-    """Centre and radius of the circle with the least sum of squared distances: Gauss-Newton from the mean."""
-    n = x.shape[1]
-    cx, cy = x.mean(axis=1), y.mean(axis=1)
-    for _ in range(50):
-        ex, ey = x - cx[:, None], y - cy[:, None]
-        distance = ex * ex
-        distance += ey * ey
-        np.sqrt(distance, out=distance)
+    """Centre and radius of the circle with the least sum of squared distances, by Newton from the mean."""
+    cx, cy = x.mean(axis=1, keepdims=True), y.mean(axis=1, keepdims=True)
+    for _ in range(20):
+        ex, ey = x - cx, y - cy
+        distance = np.sqrt(ex * ex + ey * ey)
         ex /= distance
         ey /= distance
         # residual distance - radius; the radius is eliminated, its best value is the mean distance
-        ax, ay, radius = ex.mean(axis=1), ey.mean(axis=1), distance.mean(axis=1)
-        xx, xy, bx, by = (
-            np.einsum("ij,ij->i", a, b) / n for a, b in ((ex, ex), (ex, ey), (ex, distance), (ey, distance))
-        )
-        xx, xy, yy = xx - ax * ax, xy - ax * ay, 1.0 - xx - ay * ay
+        ax, ay, radius = (a.mean(axis=1, keepdims=True) for a in (ex, ey, distance))
+        bend_x, bend_y = ex / distance, ey / distance
+        pairs = (ey, bend_y), (ex, bend_y), (ex, bend_x), (ex, distance), (ey, distance)
+        xx, xy, yy, bx, by = (np.einsum("ij,ij->i", a, b)[:, None] / x.shape[1] for a, b in pairs)
+        xx, xy, yy = 1.0 - radius * xx - ax * ax, radius * xy - ax * ay, 1.0 - radius * yy - ay * ay
         bx, by = bx - ax * radius, by - ay * radius
         determinant = xx * yy - xy * xy
         step_x, step_y = (yy * bx - xy * by) / determinant, (xx * by - xy * bx) / determinant
         cx, cy = cx + step_x, cy + step_y
-        radius -= ax * step_x + ay * step_y
-        if max(np.abs(step_x).max(), np.abs(step_y).max()) < 1e-12:
-            break
-    return cx, cy, radius
-
-
-def cone_angle(squared_distance):
-    """From |d - a|^2 of the samples: 1 - cos alpha is half their mean, accurate for narrow cones."""
-    return 2.0 * np.arcsin(0.5 * np.sqrt(squared_distance.mean(axis=1)))
+        radius = radius - ax * step_x - ay * step_y
+        # what is left is the square of this
+        if max(np.abs(step_x).max(), np.abs(step_y).max()) < 1e-7:
+            return cx, cy, radius
+    raise SystemExit("not converged")
 
 
 def internal_half_angle(u, v, w):
-    """Half angle of the cone that fits the unit vectors along (u, v, w) best."""
+    """Half angle of the cone that fits the wave vectors (u, v, w) best."""
     size = np.sqrt(u * u + v * v + w * w)
     u, v, w = u / size, v / size, w / size
-    alpha, beta = plane_through(u, v, w)
+    alpha, beta = plane(u, v, w)
     length = np.sqrt(1.0 + alpha**2 + beta**2)
-    a, b, c = (-alpha / length)[:, None], (-beta / length)[:, None], (1.0 / length)[:, None]
-    return cone_angle((u - a) ** 2 + (v - b) ** 2 + (w - c) ** 2)
+    # 1 - cos = |d - a|^2/2
+    squared = (u + alpha / length) ** 2 + (v + beta / length) ** 2 + (w - 1.0 / length) ** 2
+    return 2.0 * np.arcsin(0.5 * np.sqrt(squared.mean(axis=1, keepdims=True)))
 
 
-PHI = 2.0 * np.pi * np.arange(SAMPLES) / SAMPLES
-COS_PHI, SIN_PHI = np.cos(PHI)[None, :], np.sin(PHI)[None, :]
+def field_azimuth_deg(meridians):
+    """Of the photon at the ring's axis, outside."""
+    mismatch, axis = meridians.mismatch, meridians.axis
+    u, v = meridians.axis_u, meridians.axis_v
+    field = to_lab(mismatch.rotation, *mismatch.own.field(np.stack([u, v, mismatch.own.k_w(u, v)])))
+    field = field - axis * (axis * field).sum(axis=0)
+    azimuth = np.degrees(np.arctan2(field[1], field[0])) % 180.0
+    return np.where(np.abs(azimuth - 90.0) > 90.0 - 1e-9, 0.0, azimuth)
 
 
-def first_trace(mount, columns, photon, cos_phi, sin_phi, tolerance):
-    """The ring about the direction where Delta_k is least, from the ellipse that its curvatures describe."""
-    u, least, (bend_u, bend_v) = middle(mount, photon)
-    if not (least < 0.0).all():
-        raise SystemExit("some tilt gives no ring: this script is for tilts that do")
-    axis = np.stack(mount.lab(u, np.zeros_like(u), np.sqrt(1.0 - u * u)))
-    meridians = Meridians(mount, axis, cos_phi, sin_phi)
-    curvature = bend_u[:, None] * meridians.out_u**2 + bend_v[:, None] * meridians.out_v**2
-    return meridians, solve(columns, meridians, np.sqrt(-2.0 * least[:, None] / curvature), photon, 0.0, tolerance)
-
-
-def ring(mount, photon):
-    """One ring at each tilt of a block: the numbers of its row, in the order of the columns."""
-    columns = mount.columns()
-    # samples that will be taken again need only be good enough for an axis
-    meridians, s = first_trace(mount, columns, photon, COS_PHI, SIN_PHI, 1e-4)
-    meridians, s = centred(mount, columns, meridians, s, photon)
-
-    _, slope, c, along_u, along_v = along(columns, meridians, s, photon)
-    psi = np.arcsin(s)
-    half_angle = cone_angle(s * s + (1.0 - c) ** 2)
-    turned = Meridians(mount, meridians.axis, -SIN_PHI, COS_PHI)
-    slopes = radius_slope(s, slope, along_u, along_v, turned.out_u, turned.out_v)
-    least, largest = extremes(mount, meridians, psi, slopes, photon)
+def ring(setup, mismatch):
+    """One ring at each tilt of a block: the numbers of its row, and whether all partners leave the crystal."""
+    meridians, s = centred(*trace(mismatch, ROUGH))
+    _, slope, c, along_u, along_v = meridians.at(s)
+    least, largest = extremes(meridians, s, turning(meridians, s, slope, along_u, along_v))
 
     # Delta_k L/2 = +-1.39, first as if Delta_k were quadratic in psi
-    level = 2.0 * HALF_MAXIMUM / (LENGTH_UM * 2.0 * np.pi / (2.0 * PUMP_UM))
-    slope_s = slope / c
-    outer = solve(columns, meridians, np.sqrt(s * s + 2.0 * s * level / slope_s), photon, level)
-    inner = solve(columns, meridians, np.sqrt(s * s - 2.0 * s * level / slope_s), photon, -level)
-    thickness = (np.arcsin(outer) - np.arcsin(inner)).mean(axis=1)
+    level = 2.0 * HALF_MAXIMUM / setup.length
+    if not (meridians.mismatch.at(meridians.axis_u, meridians.axis_v)[0] < -level).all():
+        raise SystemExit("a filled ring at some tilt")
+    part = (2.0 * level) * s * c / slope
+    inner, outer = (meridians.solve(np.sqrt(s * s + sign * part), sign * level) for sign in (-1.0, 1.0))
+    thickness = (np.arcsin(outer) - np.arcsin(inner)).mean(axis=1, keepdims=True)
 
-    u, v = meridians.axis_u * c + meridians.out_u * s, meridians.axis_v * c + meridians.out_v * s
-    if photon == "e":
-        w = np.sqrt(PHOTON.zero - PHOTON.uu * u * u - PHOTON.vv * v * v) - PHOTON.lean * u
-    else:
-        w = np.sqrt(SPHERE - u * u - v * v)
-    x, y, z = meridians.lab(s)
+    u, v = meridians.tangential(s, c)
+    x, y, z = meridians.lab(s, c)
     centre_x, centre_y, radius = circle(x / z, y / z)
     ax, ay, az = meridians.axis
-    return [
-        np.degrees(np.arctan2(ax, az)),
-        np.degrees(np.arctan2(ay, az)),
-        np.degrees(half_angle),
-        np.degrees(least),
-        np.degrees(largest),
-        np.degrees(thickness),
-        np.degrees(internal_half_angle(u, v, w)),
-        centre_x * SCREEN_MM,
-        centre_y * SCREEN_MM,
-        radius * SCREEN_MM,
-    ]
+    half_angle = 2.0 * np.arcsin(np.sqrt(0.5 * (s * s / (1.0 + c)).mean(axis=1, keepdims=True)))
+    internal = internal_half_angle(u, v, mismatch.own.k_w(u, v))
+    angles = [np.arctan2(ax, az), np.arctan2(ay, az), half_angle, least, largest, thickness, internal]
+    lengths = [centre_x * setup.screen_mm, centre_y * setup.screen_mm, radius * setup.screen_mm]
+    numbers = [field_azimuth_deg(meridians), *map(np.degrees, angles), *lengths]
+    twin_u, twin_v = mismatch.pump_u - u, mismatch.pump_v - v
+    leave = (twin_u * twin_u + twin_v * twin_v < mismatch.twin.k0**2).all(axis=1)
+    return np.concatenate(numbers, axis=1), leave
 
 
-def crossing(mount):
-    """The crossings at each tilt of a block: the numbers of their row, in the order of the columns."""
-    columns = mount.columns()
-    phi = 2.0 * np.pi * np.arange(COARSE) / COARSE
-    meridians, s = first_trace(mount, columns, "e", np.cos(phi)[None, :], np.sin(phi)[None, :], 1e-2)
+def place(direction, screen_mm):
+    x, y, z = direction
+    angles = np.arctan2(x, z), np.arctan2(y, z), np.arctan2(np.hypot(x, y), z), np.arctan2(y, x)
+    return [*map(np.degrees, angles), x / z * screen_mm, y / z * screen_mm]
 
-    # sign changes of the other ring's mismatch along this ring: two of them, one above the pump and one below
-    other = along(columns, meridians, s, "o")[0]
-    change = (other < 0.0) != (np.roll(other, -1, axis=1) < 0.0)
-    if not (change.sum(axis=1) == 2).all() or not (change[:, : COARSE // 2].sum(axis=1) == 1).all():
-        raise SystemExit("some tilt has no two crossings: this script is for tilts that do")
-    rows = np.arange(len(other))
-    j = change.argmax(axis=1)
-    k = (j + 1) % COARSE
-    share = other[rows, j] / (other[rows, j] - other[rows, k])
 
-    def between(axis, out):
-        at = axis * np.sqrt(1.0 - s * s) + out * s
-        return at[rows, j] * (1.0 - share) + at[rows, k] * share
+def sign_changes(value):
+    """The two places along a ring, from 0 to 72, where a value at its samples changes sign."""
+    after = np.roll(value, -1, axis=1)
+    change = (value < 0.0) != (after < 0.0)
+    if not (change.sum(axis=1) == 2).all():
+        raise SystemExit("no two crossings at some tilt")
+    j = np.nonzero(change)[1].reshape(-1, 2)
+    here, there = (np.take_along_axis(a, j, axis=1) for a in (value, after))
+    return j, here / (here - there)
 
-    u, v = between(meridians.axis_u, meridians.out_u), between(meridians.axis_v, meridians.out_v)
+
+def crossings(setup, one, two):
+    """Both crossings at each tilt of a block, [tilt, number, crossing], in the order of the table."""
+    (first, s), (second, s_second) = trace(one, FINE), trace(two, FINE)
+    u, v = first.tangential(s, np.sqrt(1.0 - s * s))
+    j, share = sign_changes(two.at(u, v)[0])
+    sign_changes(one.at(*second.tangential(s_second, np.sqrt(1.0 - s_second * s_second)))[0])
+    u, v = (
+        np.take_along_axis(q, j, axis=1) * (1.0 - share) + np.take_along_axis(q, (j + 1) % SAMPLES, axis=1) * share
+        for q in (u, v)
+    )
     for _ in range(20):
-        (one, one_u, one_v), (two, two_u, two_v) = (mismatch(mount, u, v, photon) for photon in "eo")
-        determinant = one_u * two_v - one_v * two_u
-        step_u = (one * two_v - two * one_v) / determinant
-        step_v = (two * one_u - one * two_u) / determinant
+        (value_1, u_1, v_1), (value_2, u_2, v_2) = one.at(u, v), two.at(u, v)
+        determinant = u_1 * v_2 - v_1 * u_2
+        step_u, step_v = (value_1 * v_2 - value_2 * v_1) / determinant, (value_2 * u_1 - value_1 * u_2) / determinant
         u, v = u - step_u, v - step_v
         # the gradients, for the angle, are those before the step
-        if max(np.abs(step_u).max(), np.abs(step_v).max()) < 1e-13:
+        if max(np.abs(step_u).max(), np.abs(step_v).max()) < 1e-13 * one.own.k0:
             break
+    else:
+        raise SystemExit("not converged")
 
-    def direction(u, v):
-        return mount.lab(u, v, np.sqrt(1.0 - u * u - v * v))
-
-    def place(x, y, z):
-        across = np.hypot(x, y)
-        angles = np.arctan2(x, z), np.arctan2(y, z), np.arctan2(across, z), np.arctan2(y, x)
-        return [np.degrees(angle) for angle in angles] + [x / z * SCREEN_MM, y / z * SCREEN_MM]
-
-    a, b = direction(u, v), direction(mount.pump - u, -v)
-    w = np.sqrt(1.0 - u * u - v * v)
+    a = one.direction(u, v)
+    b = outside(one.rotation, one.twin.k0, one.pump_u - u, one.pump_v - v)
+    if not np.isfinite(b).all():
+        raise SystemExit("total reflection at some tilt")
 
     def tangent(along_u, along_v):
         """On the screen, of the curve through a that stands on this gradient."""
-        x, y, z = mount.lab(-along_v, along_u, (along_v * u - along_u * v) / w)
+        x, y, z = np.cross(a, to_lab(one.rotation, along_u, along_v, 0.0), axis=0)
         return x - a[0] * z / a[2], y - a[1] * z / a[2]
 
-    (x1, y1), (x2, y2) = tangent(one_u, one_v), tangent(two_u, two_v)
-    apart = np.arctan2(
-        np.sqrt(
-            (a[1] * b[2] - a[2] * b[1]) ** 2 + (a[2] * b[0] - a[0] * b[2]) ** 2 + (a[0] * b[1] - a[1] * b[0]) ** 2
-        ),
-        a[0] * b[0] + a[1] * b[1] + a[2] * b[2],
-    )
-    angle = np.arctan2(np.abs(x1 * y2 - y1 * x2), np.abs(x1 * x2 + y1 * y2))
-    return place(*a) + place(*b) + [np.degrees(apart), np.degrees(angle)]
+    (x_1, y_1), (x_2, y_2) = tangent(u_1, v_1), tangent(u_2, v_2)
+    across = np.cross(a, b, axis=0)
+    apart = np.arctan2(np.sqrt((across * across).sum(axis=0)), (a * b).sum(axis=0))
+    angle = np.arctan2(np.abs(x_1 * y_2 - y_1 * x_2), np.abs(x_1 * x_2 + y_1 * y_2))
+    places = place(a, setup.screen_mm) + place(b, setup.screen_mm)
+    numbers = np.stack([*places, np.degrees(apart), np.degrees(angle)], axis=1)
+    # upper first; at one height the one further to +x
+    h, v = numbers[:, 0], numbers[:, 1]
+    level = np.abs(v[:, 0] - v[:, 1]) <= 1e-6
+    swap = np.where(level, h[:, 0] < h[:, 1], v[:, 0] < v[:, 1])
+    numbers[swap] = numbers[swap, :, ::-1]
+    return numbers
 
 
-def ring_rows(first, tilt_deg):
-    """Rows of a block of tilts, both rings of a tilt one after the other."""
-    mount = Mount(np.radians(tilt_deg))
-    rings = [np.stack(ring(mount, photon)).tolist() for photon in "eo"]
-    points, tilts = range(first, first + len(tilt_deg)), tilt_deg.tolist()
-    return [row for both in zip(zip(points, tilts, *rings[0]), zip(points, tilts, *rings[1])) for row in both]
+def ring_rows(setup, rotation):
+    """For each row of a tilt: what its line says before the numbers, the numbers, and the statuses."""
+    kinds, seen = [], set()
+    for process in setup.processes:
+        for photon, own, twin in (("signal", *process[1:]), ("idler", process[2], process[1])):
+            key = own, twin, setup.degenerate or photon
+            if key not in seen:
+                seen.add(key)
+                numbers, leave = ring(setup, Mismatch(setup, rotation, process, photon))
+                before = f"1,{words(process)},{photon},{setup.nm[photon]!r},{own}"
+                kinds.append((before, numbers, ["false,ok" if one else "false,total_reflection" for one in leave]))
+    return kinds
 
 
-def crossing_rows(first, tilt_deg):
-    """Rows of a block of tilts."""
-    numbers = np.stack(crossing(Mount(np.radians(tilt_deg)))).tolist()
-    return list(zip(range(first, first + len(tilt_deg)), tilt_deg.tolist(), *numbers))
+def crossing_rows(setup, rotation):
+    """The same for crossings; of degenerate photons the second is the first with a and b exchanged."""
+    one, two = setup.processes
+    numbers = crossings(setup, Mismatch(setup, rotation, one), Mismatch(setup, rotation, two))
+    names = f"1,{words(one)},1,{words(two)},{setup.nm['signal']!r},{setup.nm['idler']!r}"
+    after = [",,,false,ok"] * len(numbers)
+    return [(f"{i + 1},{names}", numbers[..., i], after) for i in range(1 if setup.degenerate else 2)]
 
 
-def line(before, numbers, after):
-    """A row's format; %r writes the shortest number that reads back exactly."""
-    return ",".join(["%d,%r", before, *["%r"] * numbers, after]) + "\n"
+REPORTS = {"rings": (RINGS, ring_rows), "crossings": (CROSSINGS, crossing_rows)}
 
 
-RING_LINES = [
-    line("1,e -> e + o,signal,810,e,0", 10, "false,ok"),
-    line("1,e -> e + o,idler,810,o,90", 10, "false,ok"),
-]
-CROSSING_LINES = [line("1,1,e -> e + o,1,e -> o + e,810,810", 14, ",,,false,ok")]
-REPORTS = {"rings": (RINGS, ring_rows, RING_LINES), "crossings": (CROSSINGS, crossing_rows, CROSSING_LINES)}
+def lines(setup, report, tilts):
+    """The table of a report, block by block."""
+    header, rows = REPORTS[report]
+    yield [",".join(header) + "\n"]
+    for first in range(0, len(tilts), BLOCK):
+        tilt_deg = tilts[first : first + BLOCK]
+        kinds = []
+        for before, numbers, after in rows(setup, setup.rotations(tilt_deg)):
+            # %r writes the shortest number that reads back exactly
+            form = ",".join(["%d,%r", before, *["%r"] * numbers.shape[1], "%s"]) + "\n"
+            points = range(first, first + len(tilt_deg))
+            kinds.append([form % row for row in zip(points, tilt_deg.tolist(), *numbers.T.tolist(), after)])
+        yield [line for point in zip(*kinds) for line in point]
 
 
-def lines(report, first, tilt_deg):
-    """The rows of a block as lines of the table."""
-    _, rows, formats = REPORTS[report]
-    return [formats[i % len(formats)] % row for i, row in enumerate(rows(first, tilt_deg))]
-
-
-def sweep(report, points, path):
+def sweep(setup, report, points, path):
     """Writes the table of a report and says how fast."""
-    block = BLOCK[report]
     tilts = np.linspace(*TILTS_DEG, points)
     start = time.perf_counter()
     with open(path, "w", encoding="utf-8") as file:
-        file.write(",".join(REPORTS[report][0]) + "\n")
-        for first in range(0, points, block):
-            file.writelines(lines(report, first, tilts[first : first + block]))
+        for block in lines(setup, report, tilts):
+            file.writelines(block)
     seconds = time.perf_counter() - start
     return {"report": report, "points": points, "seconds": seconds, "points_per_second": points / seconds}
 
 
-def check(path):
+def check(setup, path):
     """Compares rows of the program with this script's at the same tilts."""
     with open(path, newline="", encoding="utf-8") as file:
         theirs = list(csv.DictReader(file))
@@ -519,9 +527,7 @@ def check(path):
     if list(theirs[0]) != header:
         raise SystemExit(f"{path}: the columns are not those of a sweep of {report} over crystal.tilt")
     tilts = np.array(list(dict.fromkeys(float(row["crystal_tilt_deg"]) for row in theirs)))
-    block = BLOCK[report]
-    blocks = (lines(report, first, tilts[first : first + block]) for first in range(0, len(tilts), block))
-    ours = list(csv.DictReader([",".join(header), *(line for block in blocks for line in block)]))
+    ours = list(csv.DictReader(line for block in lines(setup, report, tilts) for line in block))
     if len(ours) != len(theirs):
         raise SystemExit(f"{path}: {len(theirs)} rows, {len(ours)} expected")
     worst = {}
@@ -540,18 +546,25 @@ def check(path):
 
 
 def main():
-    parser = argparse.ArgumentParser(description="Rings and crossings of a tilted crossed-cone crystal, with NumPy.")
+    parser = argparse.ArgumentParser(description="Rings and crossings of a tilted uniaxial crystal, with NumPy.")
     parser.add_argument("--points", type=int, default=20000, help="tilts from -1 deg to 4 deg")
     parser.add_argument("--report", choices=["rings", "crossings", "both"], default="rings")
     parser.add_argument("--out", default="rows.csv", help="the table; with both, crossings go to FILE.crossings.csv")
     parser.add_argument("--check", metavar="FILE", help="compare with a table of the program instead")
+    numbers = {"theta": 42.541, "phi": 0.0, "cross-tilt": 0.0, "roll": 0.0}
+    lengths = {"pump-nm": 405.0, "signal-nm": 810.0, "length-mm": 2.0, "screen-mm": 1000.0}
+    for name, default in (numbers | lengths).items():
+        parser.add_argument("--" + name, type=float, default=default, help=f"{default:g}" + " deg" * (name in numbers))
+    parser.add_argument("--processes", default="eeo,eoe", help="pump, signal, idler: eeo,eoe; crossings are of two")
     options = parser.parse_args()
+    setup = Setup(options)
     if options.check:
-        check(options.check)
+        check(setup, options.check)
         return
     for report in ["rings", "crossings"] if options.report == "both" else [options.report]:
         both = options.report == "both" and report == "crossings"
-        print(json.dumps(sweep(report, options.points, options.out + ".crossings.csv" if both else options.out)))
+        path = options.out + ".crossings.csv" if both else options.out
+        print(json.dumps(sweep(setup, report, options.points, path)))
         sys.stdout.flush()
 
 
