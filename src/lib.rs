@@ -16,6 +16,7 @@
 //! | [`optics`] | waves at a tangential wave vector |
 //! | [`matching`] | phase matching: cuts, rings, crossings, turns |
 //! | [`job`] | the description of an experiment |
+//! | [`picture`] | what a screen or camera shows |
 //! | [`report`] | rows to text, CSV, JSON |
 
 pub mod frame;
@@ -23,6 +24,7 @@ pub mod job;
 pub mod matching;
 pub mod material;
 pub mod optics;
+pub mod picture;
 pub(crate) mod places;
 pub mod quantity;
 pub mod report;
