@@ -21,12 +21,16 @@
 //! half a radian across one; as sinc^2 has no Fourier component beyond exp(2i phase), the picture's sum does not depend
 //! on the grid. Rows are independent, so any number of threads gives the same numbers.
 
+use std::f64::consts::PI;
+
+use fearless_simd::{Level, dispatch};
 use rayon::prelude::*;
 
 use super::glow::{Glow, GlowError, Sampling, Wave, glows};
 use super::light::Light;
 use super::sensor::Sensor;
-use super::sinc::sinc_squared;
+use super::sinc::{fused, sinc_squared};
+use crate::frame::Tangential;
 use crate::job::Setup;
 
 /// An exposure that is ready to be taken.
@@ -40,6 +44,7 @@ pub struct Exposure {
     fineness: usize,
     /// Samples between two exact values.
     stride: usize,
+    level: Level,
 }
 
 /// What the sensor has counted.
@@ -54,7 +59,7 @@ pub struct Picture {
 /// Phase across one sample, rad.
 const SAMPLE: f64 = 0.5;
 /// Rows of pixels that are worked on together.
-const BLOCK: usize = 16;
+const BLOCK: usize = 32;
 /// Beyond this phase sinc^2 is below 10^-7 and is left out.
 const DARK: f64 = 3200.0;
 
@@ -70,8 +75,14 @@ impl Exposure {
             weight * g.strength.largest()
         };
         let unit = glows.iter().map(brightest).fold(0.0, f64::max);
-        let mut new =
-            Self { sensor, unit: if unit > 0.0 { unit } else { 1.0 }, fineness: 1, stride: 64, glows };
+        let mut new = Self {
+            sensor,
+            unit: if unit > 0.0 { unit } else { 1.0 },
+            fineness: 1,
+            stride: 64,
+            level: Level::new(),
+            glows,
+        };
         new.fineness = new.fineness();
         while new.stride > 4 && !new.interpolates() {
             new.stride /= 2;
@@ -105,18 +116,16 @@ impl Exposure {
     /// Whether cubics over the present stride are right to 2e-6 rad halfway between exact values, where there is light.
     fn interpolates(&self) -> bool {
         let half = 0.5 * self.stride as f64 * self.pitch();
+        let scale = self.sensor.optics.scale().si();
+        let right = |glow: &Glow, wave: &Wave, x: f64, y: f64| {
+            let nodes = [x - half, x, x + half].map(|x| Place::at(glow, x, y, scale).node(glow, wave));
+            let [Some(a), Some(exact), Some(b)] = nodes else { return true };
+            let middle = 0.5 * (a.phase + b.phase) + 0.25 * half * (a.slope - b.slope);
+            (middle - exact.phase).abs() < 2e-6
+        };
         self.glows.iter().all(|glow| {
-            let ends = [glow.waves.first(), glow.waves.last()];
-            ends.into_iter().flatten().all(|wave| {
-                let scale = self.sensor.optics.scale().si();
-                glow.lit(&self.sensor, wave).into_iter().step_by(7).all(|(x, y)| {
-                    let row = Row::new(glow, wave, y, scale);
-                    let (Some(a), Some(b)) = (row.node(x - half), row.node(x + half)) else { return true };
-                    let Some(exact) = row.node(x) else { return true };
-                    let h = 2.0 * half;
-                    let middle = 0.5 * (a.phase + b.phase) + 0.125 * h * (a.slope - b.slope);
-                    (middle - exact.phase).abs() < 2e-6
-                })
+            [glow.waves.first(), glow.waves.last()].into_iter().flatten().all(|wave| {
+                glow.lit(&self.sensor, wave).into_iter().step_by(7).all(|(x, y)| right(glow, wave, x, y))
             })
         })
     }
@@ -165,10 +174,14 @@ impl Exposure {
         let step = right * pitch;
         let scale = self.sensor.optics.scale().si();
         line.fill(0.0);
+        let row = Row { left, step, stride: self.stride, level: self.level };
+        let places = line.len().div_ceil(self.stride) + 1;
         for glow in &self.glows {
             scratch.fill(0.0);
+            let at = |n: usize| Place::at(glow, left + step * (n * self.stride) as f64, y, scale);
+            let places: Vec<Place> = (0..places).map(at).collect();
             for wave in &glow.waves {
-                Row::new(glow, wave, y, scale).add(left, step, self.stride, scratch);
+                row.add(glow, wave, &places, scratch);
             }
             for (j, (sum, value)) in line.iter_mut().zip(scratch.iter()).enumerate() {
                 if *value != 0.0 {
@@ -188,15 +201,13 @@ fn mean(lines: &[Vec<f32>; 3], j: usize) -> f32 {
     here + (around - 4.0 * here) * (1.0 / 24.0)
 }
 
-/// One wave along a horizontal line of the sensor.
-struct Row<'a> {
-    wave: &'a Wave,
-    half_length: f64,
-    /// u.x and y u.y + scale u.z, then the same of v.
-    along: [f64; 2],
-    fixed: [f64; 2],
-    /// y^2 + scale^2
-    off2: f64,
+/// A place on the sensor: the direction's components along u and v and their slopes along x.
+#[derive(Clone, Copy)]
+struct Place {
+    d: [f64; 2],
+    slope: [f64; 2],
+    y: f64,
+    scale: f64,
 }
 
 /// Phase and its slope along x.
@@ -206,71 +217,99 @@ struct Node {
     slope: f64,
 }
 
-impl<'a> Row<'a> {
-    fn new(glow: &Glow, wave: &'a Wave, y: f64, scale: f64) -> Self {
-        let [u, v, _] = &glow.axes;
-        Self {
-            wave,
-            half_length: glow.half_length,
-            along: [u.x, v.x],
-            fixed: [y * u.y + scale * u.z, y * v.y + scale * v.z],
-            off2: y * y + scale * scale,
-        }
+impl Place {
+    fn at(glow: &Glow, x: f64, y: f64, scale: f64) -> Self {
+        let inverse = 1.0 / (x * x + y * y + scale * scale).sqrt();
+        // d.u = (x u.x + y u.y + scale u.z)/r and its slope u.x/r - (d.u) x/r^2
+        let along = |u: &nalgebra::Vector3<f64>| (x * u.x + y * u.y + scale * u.z) * inverse;
+        let d = [along(&glow.axes[0]), along(&glow.axes[1])];
+        let slope = [0, 1].map(|i| (glow.axes[i].x - d[i] * x * inverse) * inverse);
+        Self { d, slope, y, scale }
     }
 
-    /// Exact phase at x; `None` where a photon is evanescent.
-    fn node(&self, x: f64) -> Option<Node> {
-        let inverse = 1.0 / (x * x + self.off2).sqrt();
-        let (k, turn) = (self.wave.k0 * inverse, x * inverse * inverse);
-        // q = k0 (x u.x + ...)/r and dq/dx = k0 u.x/r - q x/r^2
-        let q = [0, 1].map(|i| k * (x * self.along[i] + self.fixed[i]));
-        let dq = [0, 1].map(|i| k * self.along[i] - q[i] * turn);
-        let sample = self.wave.mismatch.at(crate::frame::Tangential { u: q[0], v: q[1] })?;
-        let slope = sample.slope[0] * dq[0] + sample.slope[1] * dq[1];
-        Some(Node { phase: sample.value * self.half_length, slope: slope * self.half_length })
+    /// Exact phase; `None` where a photon is evanescent.
+    #[inline]
+    fn node(&self, glow: &Glow, wave: &Wave) -> Option<Node> {
+        let sample = wave.mismatch.at(Tangential { u: wave.k0 * self.d[0], v: wave.k0 * self.d[1] })?;
+        let slope = wave.k0 * (sample.slope[0] * self.slope[0] + sample.slope[1] * self.slope[1]);
+        Some(Node { phase: sample.value * glow.half_length, slope: slope * glow.half_length })
     }
+}
 
-    /// Adds weight sinc^2 at x = left + j step.
-    fn add(&self, left: f64, step: f64, stride: usize, line: &mut [f32]) {
-        let weight = self.wave.weight as f32;
-        let span = step * stride as f64;
-        let mut before = self.node(left);
-        for (n, part) in line.chunks_mut(stride).enumerate() {
-            let x = left + span * n as f64;
-            let after = self.node(x + span);
+/// A horizontal line of samples at x = left + j step.
+struct Row {
+    left: f64,
+    step: f64,
+    /// Samples between two exact values.
+    stride: usize,
+    level: Level,
+}
+
+impl Row {
+    /// Adds weight sinc^2; `places` are `stride` samples apart.
+    fn add(&self, glow: &Glow, wave: &Wave, places: &[Place], line: &mut [f32]) {
+        let span = self.step * self.stride as f64;
+        let mut before = places[0].node(glow, wave);
+        for (n, (part, place)) in line.chunks_mut(self.stride).zip(&places[1..]).enumerate() {
+            let after = place.node(glow, wave);
             match (before, after) {
                 (Some(a), Some(b)) => {
                     if a.phase.abs().min(b.phase.abs()) < DARK || a.phase * b.phase < 0.0 {
-                        add_cubic(a, b, span, weight, stride, part);
+                        self.add_cubic(a, b, wave.weight as f32, part);
                     }
                 }
-                _ => self.add_singly(x, step, weight, part),
+                _ => self.add_singly(glow, wave, (self.left + span * n as f64, place), part),
             }
             before = after;
         }
     }
 
-    /// Near the border beyond which there is no wave: each sample for itself.
-    fn add_singly(&self, x: f64, step: f64, weight: f32, part: &mut [f32]) {
+    /// Near the border beyond which there is no wave: each sample for itself, from x on.
+    fn add_singly(&self, glow: &Glow, wave: &Wave, (x, place): (f64, &Place), part: &mut [f32]) {
         for (j, sum) in part.iter_mut().enumerate() {
-            if let Some(node) = self.node(x + step * j as f64).filter(|n| n.phase.abs() < DARK) {
-                *sum += weight * sinc_squared(node.phase as f32);
+            let place = Place::at(glow, x + self.step * j as f64, place.y, place.scale);
+            if let Some(node) = place.node(glow, wave).filter(|n| n.phase.abs() < DARK) {
+                *sum += wave.weight as f32 * sinc_squared::<false>((node.phase / PI) as f32);
             }
+        }
+    }
+
+    /// Adds weight sinc^2 of the cubic through two nodes.
+    #[inline]
+    fn add_cubic(&self, a: Node, b: Node, weight: f32, part: &mut [f32]) {
+        let span = self.step * self.stride as f64;
+        let (sa, sb, rise) = (a.slope * span, b.slope * span, b.phase - a.phase);
+        // in half turns, in powers of the place between the nodes
+        let cubic =
+            [a.phase, sa, 3.0 * rise - 2.0 * sa - sb, sa + sb - 2.0 * rise].map(|c| (c * (1.0 / PI)) as f32);
+        let inverse = 1.0 / self.stride as f32;
+        if matches!(self.level, Level::Avx2(_)) {
+            dispatch!(self.level, _simd => add_all::<true>(cubic, inverse, weight, part));
+        } else {
+            dispatch!(self.level, _simd => add_all::<false>(cubic, inverse, weight, part));
         }
     }
 }
 
-/// Adds weight sinc^2 of the cubic through two nodes a distance `span` apart.
-fn add_cubic(a: Node, b: Node, span: f64, weight: f32, stride: usize, part: &mut [f32]) {
-    let (sa, sb, rise) = (a.slope * span, b.slope * span, b.phase - a.phase);
-    let c0 = a.phase as f32;
-    let c1 = sa as f32;
-    let c2 = (3.0 * rise - 2.0 * sa - sb) as f32;
-    let c3 = (sa + sb - 2.0 * rise) as f32;
-    let inverse = 1.0 / stride as f32;
-    for (j, sum) in part.iter_mut().enumerate() {
+/// The loop of [`Row::add_cubic`], for the compiler to evaluate side by side: a 32-bit count and whole groups of sixteen.
+#[inline(always)]
+fn add_all<const FUSED: bool>(cubic: [f32; 4], inverse: f32, weight: f32, part: &mut [f32]) {
+    let add = |j: i32, sum: &mut f32| {
         let t = j as f32 * inverse;
-        *sum += weight * sinc_squared(((c3 * t + c2) * t + c1) * t + c0);
+        let phase =
+            fused::<FUSED>(fused::<FUSED>(fused::<FUSED>(cubic[3], t, cubic[2]), t, cubic[1]), t, cubic[0]);
+        *sum = fused::<FUSED>(weight, sinc_squared::<FUSED>(phase), *sum);
+    };
+    let (groups, rest) = part.as_chunks_mut::<16>();
+    let mut first = 0;
+    for group in groups {
+        for (lane, sum) in group.iter_mut().enumerate() {
+            add(first + lane as i32, sum);
+        }
+        first += 16;
+    }
+    for (lane, sum) in rest.iter_mut().enumerate() {
+        add(first + lane as i32, sum);
     }
 }
 
