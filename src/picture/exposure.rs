@@ -16,7 +16,7 @@
 //! linewidth and what is reflected within the crystal are left out.
 //!
 //! Along a row of pixels Delta_k L/2 is interpolated by cubics through exact values and slopes, checked when the
-//! exposure is prepared to 2e-6 rad; sinc^2 is evaluated in single precision to 3e-7. The mean over a pixel is
+//! exposure is prepared to 5e-6 rad; sinc^2 is evaluated in single precision to 3e-7. The mean over a pixel is
 //! f + h^2/24 (f_xx + f_yy) from neighbouring samples, with several samples per pixel where the phase changes by more than
 //! half a radian across one; as sinc^2 has no Fourier component beyond exp(2i phase), the picture's sum does not depend
 //! on the grid. Rows are independent, so any number of threads gives the same numbers.
@@ -62,6 +62,10 @@ const SAMPLE: f64 = 0.5;
 const BLOCK: usize = 32;
 /// Beyond this phase sinc^2 is below 10^-7 and is left out.
 const DARK: f64 = 3200.0;
+
+/// Below this width of a sample, in units of the distance, |d_eff|^2 and solid angle are linear over eight samples to
+/// 10^-6: cos^4 falls by 2 (8 h)^2/8 of itself.
+const FLAT: f64 = 3e-4;
 
 impl Exposure {
     /// Looks up indices and decides how finely to sample.
@@ -113,7 +117,7 @@ impl Exposure {
         ((most * pitch / SAMPLE).ceil() as usize).clamp(1, 32)
     }
 
-    /// Whether cubics over the present stride are right to 2e-6 rad halfway between exact values, where there is light.
+    /// Whether cubics over the present stride are right to 5e-6 rad halfway between exact values, where there is light.
     fn interpolates(&self) -> bool {
         let half = 0.5 * self.stride as f64 * self.pitch();
         let scale = self.sensor.optics.scale().si();
@@ -121,7 +125,7 @@ impl Exposure {
             let nodes = [x - half, x, x + half].map(|x| Place::at(glow, x, y, scale).node(glow, wave));
             let [Some(a), Some(exact), Some(b)] = nodes else { return true };
             let middle = 0.5 * (a.phase + b.phase) + 0.25 * half * (a.slope - b.slope);
-            (middle - exact.phase).abs() < 2e-6
+            (middle - exact.phase).abs() < 5e-6
         };
         self.glows.iter().all(|glow| {
             [glow.waves.first(), glow.waves.last()].into_iter().flatten().all(|wave| {
@@ -174,22 +178,36 @@ impl Exposure {
         let step = right * pitch;
         let scale = self.sensor.optics.scale().si();
         line.fill(0.0);
-        let row = Row { left, step, stride: self.stride, level: self.level };
+        let between: Vec<f32> = (0..self.stride).map(|j| j as f32 / self.stride as f32).collect();
+        let row = Row { left, step, stride: self.stride, places: &between, level: self.level };
+        let mut cubics = Vec::new();
         let places = line.len().div_ceil(self.stride) + 1;
         for glow in &self.glows {
             scratch.fill(0.0);
             let at = |n: usize| Place::at(glow, left + step * (n * self.stride) as f64, y, scale);
             let places: Vec<Place> = (0..places).map(at).collect();
             for wave in &glow.waves {
-                row.add(glow, wave, &places, scratch);
+                row.add(glow, wave, &places, &mut cubics, scratch);
             }
-            for (j, (sum, value)) in line.iter_mut().zip(scratch.iter()).enumerate() {
-                if *value != 0.0 {
-                    let x = left + step * j as f64;
-                    *sum += value * (glow.strength.at(x, y) * glow.geometry(x, y, scale) / self.unit) as f32;
-                }
-            }
+            let factor = |j: usize| {
+                let x = left + step * j as f64;
+                (glow.strength.at(x, y) * glow.geometry(x, y, scale) / self.unit) as f32
+            };
+            weigh(line, scratch, factor, if pitch < FLAT * scale { 8 } else { 1 });
         }
+    }
+}
+
+/// Adds `values` times a factor that is taken as linear over `reach` samples.
+fn weigh(line: &mut [f32], values: &[f32], factor: impl Fn(usize) -> f32, reach: usize) {
+    let mut here = factor(0);
+    for (n, (sums, values)) in line.chunks_mut(reach).zip(values.chunks(reach)).enumerate() {
+        let next = factor((n + 1) * reach);
+        let rise = (next - here) / reach as f32;
+        for (j, (sum, value)) in sums.iter_mut().zip(values).enumerate() {
+            *sum += value * (here + rise * j as f32);
+        }
+        here = next;
     }
 }
 
@@ -237,30 +255,39 @@ impl Place {
 }
 
 /// A horizontal line of samples at x = left + j step.
-struct Row {
+struct Row<'a> {
     left: f64,
     step: f64,
     /// Samples between two exact values.
     stride: usize,
+    /// j / stride for each of them.
+    places: &'a [f32],
     level: Level,
 }
 
-impl Row {
+impl Row<'_> {
     /// Adds weight sinc^2; `places` are `stride` samples apart.
-    fn add(&self, glow: &Glow, wave: &Wave, places: &[Place], line: &mut [f32]) {
+    fn add(&self, glow: &Glow, wave: &Wave, places: &[Place], cubics: &mut Vec<Cubic>, line: &mut [f32]) {
         let span = self.step * self.stride as f64;
+        cubics.clear();
         let mut before = places[0].node(glow, wave);
-        for (n, (part, place)) in line.chunks_mut(self.stride).zip(&places[1..]).enumerate() {
+        for (n, place) in places[1..].iter().enumerate() {
             let after = place.node(glow, wave);
-            match (before, after) {
-                (Some(a), Some(b)) => {
-                    if a.phase.abs().min(b.phase.abs()) < DARK || a.phase * b.phase < 0.0 {
-                        self.add_cubic(a, b, wave.weight as f32, part);
-                    }
+            cubics.push(match (before, after) {
+                (Some(a), Some(b)) => cubic(a, b, span),
+                _ => {
+                    let part = line.chunks_mut(self.stride).nth(n).unwrap_or_default();
+                    self.add_singly(glow, wave, (self.left + span * n as f64, place), part);
+                    None
                 }
-                _ => self.add_singly(glow, wave, (self.left + span * n as f64, place), part),
-            }
+            });
             before = after;
+        }
+        let weight = wave.weight as f32;
+        if matches!(self.level, Level::Avx2(_)) {
+            dispatch!(self.level, _simd => add_all::<true>(cubics, self.places, weight, line));
+        } else {
+            dispatch!(self.level, _simd => add_all::<false>(cubics, self.places, weight, line));
         }
     }
 
@@ -273,43 +300,41 @@ impl Row {
             }
         }
     }
-
-    /// Adds weight sinc^2 of the cubic through two nodes.
-    #[inline]
-    fn add_cubic(&self, a: Node, b: Node, weight: f32, part: &mut [f32]) {
-        let span = self.step * self.stride as f64;
-        let (sa, sb, rise) = (a.slope * span, b.slope * span, b.phase - a.phase);
-        // in half turns, in powers of the place between the nodes
-        let cubic =
-            [a.phase, sa, 3.0 * rise - 2.0 * sa - sb, sa + sb - 2.0 * rise].map(|c| (c * (1.0 / PI)) as f32);
-        let inverse = 1.0 / self.stride as f32;
-        if matches!(self.level, Level::Avx2(_)) {
-            dispatch!(self.level, _simd => add_all::<true>(cubic, inverse, weight, part));
-        } else {
-            dispatch!(self.level, _simd => add_all::<false>(cubic, inverse, weight, part));
-        }
-    }
 }
 
-/// The loop of [`Row::add_cubic`], for the compiler to evaluate side by side: a 32-bit count and whole groups of sixteen.
+/// Delta_k L/2 in half turns between two nodes, in powers of the place between them; `None` where nothing is to be added.
+type Cubic = Option<[f32; 4]>;
+
+/// The cubic through two nodes `span` apart.
+#[inline]
+fn cubic(a: Node, b: Node, span: f64) -> Cubic {
+    let dark = a.phase.abs().min(b.phase.abs()) > DARK && a.phase * b.phase > 0.0;
+    let (sa, sb, rise) = (a.slope * span, b.slope * span, b.phase - a.phase);
+    let powers = [a.phase, sa, 3.0 * rise - 2.0 * sa - sb, sa + sb - 2.0 * rise];
+    (!dark).then(|| powers.map(|c| (c * (1.0 / PI)) as f32))
+}
+
+/// Adds weight sinc^2 to a whole line, `places` (from 0 to below 1) for each cubic: the loop that the compiler evaluates
+/// side by side.
 #[inline(always)]
-fn add_all<const FUSED: bool>(cubic: [f32; 4], inverse: f32, weight: f32, part: &mut [f32]) {
-    let add = |j: i32, sum: &mut f32| {
-        let t = j as f32 * inverse;
-        let phase =
-            fused::<FUSED>(fused::<FUSED>(fused::<FUSED>(cubic[3], t, cubic[2]), t, cubic[1]), t, cubic[0]);
-        *sum = fused::<FUSED>(weight, sinc_squared::<FUSED>(phase), *sum);
-    };
-    let (groups, rest) = part.as_chunks_mut::<16>();
-    let mut first = 0;
-    for group in groups {
-        for (lane, sum) in group.iter_mut().enumerate() {
-            add(first + lane as i32, sum);
+fn add_all<const FUSED: bool>(cubics: &[Cubic], places: &[f32], weight: f32, line: &mut [f32]) {
+    for (part, cubic) in line.chunks_mut(places.len()).zip(cubics) {
+        let Some([c0, c1, c2, c3]) = *cubic else { continue };
+        let add = |t: f32, sum: &mut f32| {
+            let phase = fused::<FUSED>(fused::<FUSED>(fused::<FUSED>(c3, t, c2), t, c1), t, c0);
+            *sum = fused::<FUSED>(weight, sinc_squared::<FUSED>(phase), *sum);
+        };
+        let (groups, rest) = part.as_chunks_mut::<16>();
+        let (group_places, _) = places.as_chunks::<16>();
+        for (group, places) in groups.iter_mut().zip(group_places) {
+            for (sum, t) in group.iter_mut().zip(places) {
+                add(*t, sum);
+            }
         }
-        first += 16;
-    }
-    for (lane, sum) in rest.iter_mut().enumerate() {
-        add(first + lane as i32, sum);
+        let done = 16 * groups.len();
+        for (sum, t) in rest.iter_mut().zip(&places[done..]) {
+            add(*t, sum);
+        }
     }
 }
 
