@@ -10,6 +10,7 @@ mod man;
 mod materials;
 mod options;
 mod output;
+mod picture;
 mod tilt;
 mod twin;
 
@@ -53,6 +54,8 @@ enum Command {
     Tilt(Box<tilt::Args>),
     /// Follow a photon's partner
     Twin(Box<twin::Args>),
+    /// Draw what a camera sees, the crystal in its mount, or curves
+    Picture(Box<picture::Args>),
     /// Write out a commented job file, or check one
     Job(Box<job::Args>),
     /// Shell completions
@@ -101,6 +104,7 @@ pub fn run(typed: &Typed) -> Result<output::Outcome, Failure> {
         Command::Cones(args) => cones::run(args, out),
         Command::Tilt(args) => tilt::run(args, out),
         Command::Twin(args) => twin::run(args, out),
+        Command::Picture(args) => picture::run(args, out),
         Command::Job(args) => job::run(args, out),
         Command::Completions(args) => completions::run(args, Typed::command(), out),
         Command::Man => man::run(Typed::command(), out),

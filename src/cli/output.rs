@@ -42,6 +42,12 @@ pub enum Format {
     Csv,
     /// Everything for scripts
     Json,
+    /// Pixels (`picture`)
+    Png,
+    /// A drawing (`picture`)
+    Svg,
+    /// A page (`sheet`)
+    Html,
 }
 
 /// When to colour.
@@ -59,21 +65,28 @@ pub enum Colour {
 #[derive(Debug)]
 pub struct Outcome {
     text: String,
+    /// What stands for the text where it is none.
+    bytes: Option<Vec<u8>>,
     warnings: Vec<String>,
     solved: bool,
 }
 
 impl OutputArgs {
+    /// A file in the form that was asked for, with warnings.
+    pub fn file(bytes: Vec<u8>, warnings: Vec<String>) -> Outcome {
+        Outcome { text: String::new(), bytes: Some(bytes), warnings, solved: true }
+    }
+
     /// A text that has no other form.
     ///
     /// # Errors
     /// csv or json asked for.
     pub fn plain(&self, text: String) -> Result<Outcome, Failure> {
         match self.format {
-            Some(Format::Csv | Format::Json) => {
+            Some(form) if form != Format::Text => {
                 Err(Failure::usage("this answer is a text; leave --format out"))
             }
-            _ => Ok(Outcome { text, warnings: Vec::new(), solved: true }),
+            _ => Ok(Outcome { text, bytes: None, warnings: Vec::new(), solved: true }),
         }
     }
 
@@ -89,6 +102,9 @@ impl OutputArgs {
         let implied = match extension.as_deref() {
             Some("csv") => Some(Format::Csv),
             Some("json") => Some(Format::Json),
+            Some("png") => Some(Format::Png),
+            Some("svg") => Some(Format::Svg),
+            Some("html" | "htm") => Some(Format::Html),
             Some("txt" | "text" | "md") => Some(Format::Text),
             _ => None,
         };
@@ -114,6 +130,11 @@ impl OutputArgs {
         let text = match self.form()? {
             Format::Text => answer.to_text(),
             Format::Json => json(answer),
+            Format::Png | Format::Svg | Format::Html => {
+                return Err(Failure::usage(
+                    "this answer has the formats text, csv and json; `picture` draws, `sheet` writes pages",
+                ));
+            }
             Format::Csv => {
                 let chosen = answer.tables.iter().find(|t| table.is_none_or(|name| t.name == name));
                 let chosen = chosen
@@ -122,7 +143,12 @@ impl OutputArgs {
                     .map_err(|e| Failure { status: 4, message: format!("cannot write the table: {e}") })?
             }
         };
-        Ok(Outcome { text, warnings: answer.conventions.warnings.clone(), solved: answer.solved })
+        Ok(Outcome {
+            text,
+            bytes: None,
+            warnings: answer.conventions.warnings.clone(),
+            solved: answer.solved,
+        })
     }
 
     fn colours_stderr(&self) -> bool {
@@ -148,6 +174,9 @@ fn word(format: Format) -> &'static str {
         Format::Text => "text",
         Format::Csv => "csv",
         Format::Json => "json",
+        Format::Png => "png",
+        Format::Svg => "svg",
+        Format::Html => "html",
     }
 }
 
@@ -162,11 +191,11 @@ pub fn finish(outcome: Result<Outcome, Failure>, args: &OutputArgs) -> ExitCode 
         if !args.quiet {
             outcome.warnings.iter().for_each(|w| args.tell("warning", "33", w));
         }
+        let bytes = outcome.bytes.as_deref().unwrap_or(outcome.text.as_bytes());
         match &args.output {
-            Some(path) if path.as_os_str() != "-" => write_whole(path, outcome.text.as_bytes())
+            Some(path) if path.as_os_str() != "-" => write_whole(path, bytes)
                 .map_err(|e| Failure::file("write", &path.display().to_string(), &e))?,
-            _ => to_stdout(outcome.text.as_bytes())
-                .map_err(|e| Failure::file("write to", "standard output", &e))?,
+            _ => to_stdout(bytes).map_err(|e| Failure::file("write to", "standard output", &e))?,
         }
         Ok(outcome.solved)
     });

@@ -1,6 +1,7 @@
 //! Where a pixel is: a square sensor across the pump, on a screen or behind a lens.
 
 use crate::frame::{Direction, Lab};
+use crate::matching::{Cones, RingRow};
 use crate::quantity::Length;
 
 use nalgebra::Vector3;
@@ -68,6 +69,22 @@ pub struct Sensor {
 }
 
 impl Sensor {
+    /// Width of a field about the pump that holds all rings with a margin; 12 deg where there is none.
+    #[must_use]
+    pub fn field_for(cones: &Cones, optics: Optics) -> Length {
+        let reach = |row: &RingRow| {
+            let ring = row.ring.as_ref().ok()?;
+            let (centre, radius) = ring.circle();
+            Some(centre.x.abs().max(centre.y.abs()) + radius + ring.thickness.unwrap_or(0.01))
+        };
+        let most = cones.rings.iter().filter_map(reach).fold(0.0, f64::max);
+        let half = if most > 0.0 { 1.12 * most } else { 6f64.to_radians().tan() };
+        // rounded up to two digits
+        let field = 2.0 * half * optics.scale().si();
+        let digit = 10f64.powf(field.log10().floor() - 1.0);
+        Length::metres((field / digit).ceil() * digit)
+    }
+
     /// Width of a pixel, m.
     #[must_use]
     pub fn pitch(&self) -> f64 {
