@@ -11,6 +11,7 @@ mod materials;
 mod options;
 mod output;
 mod picture;
+mod sheet;
 mod tilt;
 mod twin;
 
@@ -56,6 +57,8 @@ enum Command {
     Twin(Box<twin::Args>),
     /// Draw what a camera sees, the crystal in its mount, or curves
     Picture(Box<picture::Args>),
+    /// Write the order sheet for the maker or the bench sheet for the table
+    Sheet(Box<sheet::Args>),
     /// Write out a commented job file, or check one
     Job(Box<job::Args>),
     /// Shell completions
@@ -105,6 +108,7 @@ pub fn run(typed: &Typed) -> Result<output::Outcome, Failure> {
         Command::Tilt(args) => tilt::run(args, out),
         Command::Twin(args) => twin::run(args, out),
         Command::Picture(args) => picture::run(args, out),
+        Command::Sheet(args) => sheet::run(args, out),
         Command::Job(args) => job::run(args, out),
         Command::Completions(args) => completions::run(args, Typed::command(), out),
         Command::Man => man::run(Typed::command(), out),

@@ -7,6 +7,7 @@ pub mod cut;
 mod export;
 pub mod index;
 pub mod materials;
+pub mod sheet;
 mod spread;
 pub mod table;
 pub mod tilt;

@@ -1,0 +1,509 @@
+//! The bench sheet: alignment in order, each step with the number to set or to see.
+
+use super::facts::{
+    Facts, Watched, azimuth, deg, field_words, mm, nm, plain_deg, ring_name, rings, side_words,
+};
+use super::page::{Block, Page};
+use super::safety::{class, limits};
+use super::trouble::trouble;
+use crate::frame::{Direction, Lab, Mount};
+use crate::job::Setup;
+use crate::matching::{Actuator, ConesError, CrossingRow, Emission, Photons, RingRow};
+use crate::optics::Crystal;
+use crate::picture::{Backdrop, Optics, Seen, Sensor};
+use crate::quantity::{Angle, Length, Wavelength};
+use crate::report::angles::{fixed, rounded, signed};
+use crate::report::room_words;
+
+/// The sheet.
+///
+/// # Errors
+/// Indices that are not to be had.
+pub fn bench(setup: &Setup) -> Result<Page, ConesError> {
+    let facts = Facts::of(setup)?;
+    let name = setup.title.as_deref().unwrap_or("pair source");
+    let mut page = Page { title: format!("Bench sheet: {name}"), ..Page::default() };
+    safety(&mut page, &facts);
+    page.heading("Frame");
+    page.text(format!(
+        "x is horizontal and positive to the left of who stands behind the laser and looks along the beam, y is up; both \
+         count from where the undeviated pump hits. The screen stands across the beam at {} from the crystal. Angles are \
+         outside the crystal. Indices: {}.",
+        setup.screen,
+        setup.crystals.iter().map(Facts::id).collect::<Vec<_>>().join(", ")
+    ));
+    figures(&mut page, &facts);
+    page.heading("Pump and crystal");
+    pump_steps(&mut page, &facts);
+    for (index, crystal) in setup.crystals.iter().enumerate() {
+        crystal_steps(&mut page, &facts, index, crystal);
+    }
+    page.heading("Rings");
+    ring_steps(&mut page, &facts)?;
+    page.heading("Arms");
+    arm_steps(&mut page, &facts);
+    trouble(&mut page, &facts)?;
+    Ok(page)
+}
+
+fn safety(page: &mut Page, facts: &Facts<'_>) {
+    let pump = facts.photons.pump;
+    page.heading("Laser safety");
+    let standard = "IEC 60825-1:2014, for a continuous collimated beam all of which enters the standard's aperture; limits \
+                    from memory, to be checked in the standard";
+    let class_text = match (facts.power(), limits(pump)) {
+        (Some(power), Some(_)) => format!(
+            "A pump of {} mW at {} is class {} ({standard}).",
+            rounded(power.mw(), 4),
+            nm(pump),
+            class(pump, power.si()).map_or("-", super::safety::Class::name)
+        ),
+        (None, Some(limits)) => {
+            let mut told: Vec<String> = Vec::new();
+            for (class, limit) in limits {
+                if class != super::safety::Class::Two || (400.0..=700.0).contains(&pump.nm()) {
+                    told.push(format!("class {} to {} mW", class.name(), rounded(limit * 1e3, 4)));
+                }
+            }
+            format!("No power is given. At {}: {}, class 4 above ({standard}).", nm(pump), told.join(", "))
+        }
+        (_, None) => format!(
+            "{} is outside the range whose limits are known here (315 nm to 4000 nm): ask the laser safety officer.",
+            nm(pump)
+        ),
+    };
+    let sight = match pump.nm() {
+        n if n < 380.0 => "The pump is invisible.",
+        n if n < 430.0 => "The pump looks far dimmer than it is: its brightness is no guide.",
+        n if n > 700.0 => "The pump is invisible or nearly so.",
+        _ => "",
+    };
+    page.blocks.push(Block::Warning(format!(
+        "{class_text} {sight} Local rules and the local laser safety officer decide, not this sheet."
+    )));
+    let mut lines = Vec::new();
+    for (index, crystal) in facts.setup.crystals.iter().enumerate() {
+        let (x, y) = reflection(crystal, facts.setup.screen);
+        let face = if facts.setup.crystals.len() > 1 {
+            format!("crystal {}", index + 1)
+        } else {
+            "the crystal".into()
+        };
+        lines.push(format!(
+            "The entrance face of {face} sends pump light back: {} and {} at {} towards the laser. Block it there; it moves when you tilt.",
+            mm(x, 1),
+            mm(y, 1),
+            facts.setup.screen
+        ));
+    }
+    lines
+        .push("Dump the transmitted pump behind the crystal. Filters, plates and irises reflect too.".into());
+    lines.push("Enclose the beam; keep it below eye level; take off watches and rings; align at the least power that shows it.".into());
+    lines.push(format!(
+        "Goggles rated for {} do not stop an alignment laser at {}: two wavelengths, two ratings.",
+        nm(pump),
+        nm(facts.photons.signal)
+    ));
+    lines.push(
+        "The dark widens the pupil: work in dim light of a colour that filters and detectors do not pass."
+            .into(),
+    );
+    page.blocks.push(Block::List(lines));
+}
+
+/// Where the entrance face's reflection hits a card at `distance` back towards the laser, mm.
+pub(super) fn reflection(crystal: &Crystal, distance: Length) -> (f64, f64) {
+    let r = crystal.reflection();
+    (-r.x / r.z * distance.mm() + 0.0, -r.y / r.z * distance.mm() + 0.0)
+}
+
+fn figures(page: &mut Page, facts: &Facts<'_>) {
+    let setup = facts.setup;
+    page.blocks.push(Block::Figure(
+        crate::picture::side(setup, &facts.cones),
+        "twincone picture --view side".into(),
+    ));
+    let optics = Optics::Screen(setup.screen);
+    let field = Sensor::field_for(&facts.cones, optics);
+    let sensor = Sensor { optics, field, pixels: 240, seen: Seen::default() };
+    let exposure = crate::picture::Light::of(setup).ok().and_then(|light| {
+        crate::picture::Exposure::new(setup, &light, sensor, crate::picture::Sampling { wavelengths: None })
+            .ok()
+    });
+    let Some(image) = exposure.and_then(|e| e.take().png(crate::picture::Depth::Eight, false).ok()) else {
+        return;
+    };
+    let backdrop = Backdrop { png: &image, size: (240, 240), pump: (120.0, 120.0) };
+    let notes = ["Dark is bright. Seen from downstream: +x right, +y up.".to_string()];
+    let figure = crate::picture::camera(setup, &facts.cones, &sensor, backdrop, &notes);
+    page.blocks.push(Block::Figure(figure, "twincone picture --view camera".into()));
+}
+
+fn pump_steps(page: &mut Page, facts: &Facts<'_>) {
+    page.step(
+        format!(
+            "Level the pump: the beam keeps its height from the crystal to the screen at {}.",
+            facts.setup.screen
+        ),
+        vec!["Mark where it hits: that is x = 0, y = 0.".into()],
+    );
+    let fields: Vec<String> = facts
+        .setup
+        .crystals
+        .iter()
+        .filter_map(|crystal| {
+            let pairing = facts.pairing(crystal, Direction::forward())?;
+            let Lab(field) = crystal.placement().to_lab(pairing.pump.field);
+            Some(field_words(azimuth(field)))
+        })
+        .collect();
+    let mut distinct = fields.clone();
+    distinct.dedup();
+    match distinct.as_slice() {
+        [] => {}
+        [only] => page.step(
+            format!("Set the pump's polarization: {only}."),
+            vec!["Check with a polarizer before the crystal: it passes most there and least a quarter turn from there.".into()],
+        ),
+        _ => page.step(
+            "Set the pump's polarization between those of the crystals.".to_string(),
+            fields.iter().enumerate().map(|(n, f)| format!("crystal {}: {f}", n + 1)).collect(),
+        ),
+    }
+    page.step(
+        format!("Measure the pump's wavelength: these numbers are for {}.", nm(facts.photons.pump)),
+        vec!["A nanometre moves the rings by what the last table of this sheet says.".into()],
+    );
+}
+
+fn crystal_steps(page: &mut Page, facts: &Facts<'_>, index: usize, crystal: &Crystal) {
+    let which =
+        if facts.setup.crystals.len() > 1 { format!("crystal {}", index + 1) } else { "the crystal".into() };
+    let placement = crystal.placement();
+    let z = placement.to_lab(Mount(placement.dielectric_axes().column(2).into_owned())).0;
+    let lean = if z.z < 0.0 { -z } else { z };
+    page.step(
+        format!(
+            "Mount {which} ({}, {} long), roll {} deg.",
+            Facts::id(crystal),
+            crystal.length,
+            signed(crystal.orientation.roll.degrees(), 1)
+        ),
+        vec![
+            format!(
+                "The end of Z that points downstream leans to the {} of who looks along the beam.",
+                side_words(nalgebra::Vector3::new(lean.x, lean.y, 0.0))
+            ),
+            "Roll right: between crossed polarizers and without tilt, the pump is extinguished.".into(),
+        ],
+    );
+    let stage = facts.setup.stage.filter(|_| index == 0);
+    let zero = stage.and_then(|s| s.zero);
+    page.step(
+        format!("Turn {which} until the reflection of its face goes back into the laser: tilt zero."),
+        vec![match zero {
+            Some(zero) => format!("Stage reading there: {} deg. If yours differs, correct [stage] zero in the job and print again.", fixed(zero.degrees(), 3)),
+            None => "Write the reading down: ________ deg. With `zero` under [stage] in the job this sheet prints the readings to set.".into(),
+        }],
+    );
+    let tilt = crystal.orientation.tilt;
+    let cross = crystal.orientation.cross_tilt;
+    let mut see = vec![format!("In words: {}.", room_words(crystal, Actuator::Tilt, tilt))];
+    if let Some(stage) = stage {
+        if let Some(reading) = stage.reading(tilt) {
+            see.push(format!("Stage reading to set: {} deg.", fixed(reading.degrees(), 3)));
+        }
+        if let Some(turns) = stage.turns(tilt) {
+            see.push(format!("Screw: {} turns, positive where the reading rises.", signed(turns, 2)));
+        }
+    }
+    if cross.si() != 0.0 {
+        see.push(format!(
+            "Cross tilt {}: {}.",
+            deg(cross.si(), 3),
+            room_words(crystal, Actuator::CrossTilt, cross)
+        ));
+    }
+    page.step(format!("Tilt {which} by {} from there.", deg(tilt.si(), 3)), see);
+    let places = [0.1, 0.2, 0.3, 0.5, 1.0].map(Length::metres);
+    let rows = places
+        .into_iter()
+        .map(|distance| {
+            let (x, y) = reflection(crystal, distance);
+            vec![distance.to_string(), mm(x, 2), mm(y, 2)]
+        })
+        .collect();
+    page.text(format!(
+        "Where the reflection of {which} lands at that tilt, on a card beside the incoming pump:"
+    ));
+    page.table(&["card before the crystal", "x", "y"], rows);
+}
+
+fn ring_steps(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesError> {
+    let setup = facts.setup;
+    let filter = filter_words(facts);
+    page.step(
+        format!("Put the filter in: {filter}."),
+        vec!["A long-pass filter that stops the pump comes first.".into()],
+    );
+    page.step(
+        format!("Find the rings on a camera or with a detector that is moved across at {}.", setup.screen),
+        facts.cones.rings.iter().map(|row| ring_words(setup, row)).collect(),
+    );
+    let ring_row = |row: &RingRow| {
+        let ring = row.ring.as_ref().ok()?;
+        let (c, r) = ring.circle();
+        let (x, y, r) = (c.x * setup.screen.mm(), c.y * setup.screen.mm(), r * setup.screen.mm());
+        let thick = ring
+            .thickness
+            .map_or("filled".into(), |t| format!("{} mm", fixed(t.tan() * setup.screen.mm(), 1)));
+        let edge = |a: f64, b: f64| format!("{} to {}", signed(a, 1), signed(b, 1));
+        Some(vec![
+            ring_name(setup, row),
+            format!("x {}, y {}", signed(x, 1), signed(y, 1)),
+            fixed(r, 1),
+            edge(x - r, x + r),
+            edge(y - r, y + r),
+            thick,
+        ])
+    };
+    let rows = facts.cones.rings.iter().filter_map(ring_row).collect();
+    page.table(
+        &["ring", "centre in mm", "radius in mm", "x from, to in mm", "y from, to in mm", "thickness (FWHM)"],
+        rows,
+    );
+    page.step(
+        "Tell the rings apart with a polarizer before the camera.",
+        facts
+            .cones
+            .rings
+            .iter()
+            .filter_map(|row| {
+                let a = row.field_azimuth?;
+                let across = (a + 90.0).rem_euclid(180.0);
+                Some(format!(
+                    "{} stays with the polarizer's axis at {} deg from +x towards +y and goes at {} deg.",
+                    ring_name(setup, row),
+                    fixed(a, 1),
+                    fixed(across, 1)
+                ))
+            })
+            .collect(),
+    );
+    tilt_table(page, facts)
+}
+
+/// Side and polarization of a ring, or that there is none.
+fn ring_words(setup: &Setup, row: &RingRow) -> String {
+    let name = ring_name(setup, row);
+    match &row.ring {
+        Err(_) => format!("{name}: no ring at this setting ({}).", row.status),
+        Ok(ring) => {
+            let (c, r) = ring.circle();
+            if c.norm() < 0.01 * r {
+                format!("{name}: centred on the pump.")
+            } else {
+                let side = side_words(nalgebra::Vector3::new(c.x, c.y, 0.0));
+                format!("{name}: off the pump to the {side} of who looks along the beam.")
+            }
+        }
+    }
+}
+
+fn filter_words(facts: &Facts<'_>) -> String {
+    let light = crate::picture::Light::of(facts.setup).unwrap_or_default();
+    let photons = facts.photons;
+    let one = |filter: Option<crate::picture::Filter>, nominal: Wavelength| match filter {
+        Some(f) => format!(
+            "{} nm wide (FWHM) at {}",
+            rounded(f.width.si() * 1e9, 3),
+            nm(f.centre.unwrap_or(nominal))
+        ),
+        None => format!("centred at {} (no width is given in the job)", nm(nominal)),
+    };
+    if photons.degenerate() {
+        one(light.signal, photons.signal)
+    } else {
+        format!(
+            "{}, and for the partner {}",
+            one(light.signal, photons.signal),
+            one(light.idler, photons.idler)
+        )
+    }
+}
+
+/// Rings against tilt: what to compare a measured ring with.
+fn tilt_table(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesError> {
+    let setup = facts.setup;
+    let now = setup.crystals[0].orientation.tilt.degrees();
+    let stage = setup.stage;
+    let mut header = vec!["tilt of crystal 1".to_string()];
+    if stage.is_some_and(|s| s.zero.is_some()) {
+        header.push("stage reading".into());
+    }
+    header.extend(facts.cones.rings.iter().map(|r| format!("{}: radius in mm", ring_name(setup, r))));
+    let mut rows = Vec::new();
+    for step in -4..=4 {
+        let tilt = Angle::from_degrees(now + 0.25 * f64::from(step));
+        let mut crystals = setup.crystals.clone();
+        crystals[0].orientation.tilt = tilt;
+        let found = rings(setup, &crystals)?;
+        let mut row = vec![deg(tilt.si(), 2)];
+        if let Some(reading) = stage.and_then(|s| s.reading(tilt)) {
+            row.push(format!("{} deg", fixed(reading.degrees(), 2)));
+        }
+        row.extend(found.rings.iter().map(|r| match &r.ring {
+            Ok(ring) => fixed(ring.circle().1 * setup.screen.mm(), 1),
+            Err(_) => "none".into(),
+        }));
+        rows.push(row);
+    }
+    page.text("Rings against tilt: a ring that fits another line tells by how much tilt, cut or wavelength are off.");
+    page.blocks.push(Block::Table(header, rows));
+    Ok(())
+}
+
+fn arm_steps(page: &mut Page, facts: &Facts<'_>) {
+    let setup = facts.setup;
+    let crossings: Vec<&CrossingRow> =
+        facts.cones.crossings.iter().filter(|r| r.crossing.is_some()).collect();
+    let mut rows = Vec::new();
+    let mut angles = Vec::new();
+    for row in &crossings {
+        let Some(crossing) = &row.crossing else { continue };
+        let number = row.pair.map_or(String::new(), |n| n.to_string());
+        for (name, direction, wavelength) in
+            [("A", Some(crossing.direction), row.a_wavelength), ("B", crossing.partner, row.b_wavelength)]
+        {
+            let Some(d) = direction else { continue };
+            let label = format!("{name}{number} ({})", nm(wavelength));
+            angles.push(arm_angles(&label, d));
+            rows.extend(arm_places(&label, d, setup.screen));
+        }
+    }
+    if crossings.is_empty() {
+        let Some((label, d, partner)) = ring_pair(facts) else {
+            page.text("There is no ring here, so there is nowhere to put an arm. Turn the crystal first.");
+            return;
+        };
+        page.text(
+            "No two rings cross here: the arms go to opposite points of the ring. This is one such pair.",
+        );
+        for (name, d) in [("A", d), ("B", partner)] {
+            angles.push(arm_angles(&format!("{name} ({label})"), d));
+            rows.extend(arm_places(&format!("{name} ({label})"), d, setup.screen));
+        }
+    }
+    page.step("Set the arms to these angles from the pump, with the pivot under the crystal.", Vec::new());
+    page.table(
+        &["arm", "h (to +x)", "v (up)", "from the pump", "about the pump, from +x towards +y"],
+        angles,
+    );
+    page.step("Check with a ruler: places on a plane across the pump.", Vec::new());
+    page.table(&["arm", "plane at", "x in mm", "y in mm", "from the pump in mm"], rows);
+    iris_step(page, facts);
+    seeds(page, facts);
+    page.step(
+        "Look for coincidences: delay equal, irises open, then close them.",
+        vec!["Move one arm in steps of a third of the ring's thickness; the partner's place is in the table of twins.".into()],
+    );
+}
+
+fn arm_angles(label: &str, d: Direction) -> Vec<String> {
+    let turned = |v: f64| format!("{} deg", signed(v, 3));
+    vec![
+        label.into(),
+        turned(d.h_deg()),
+        turned(d.v_deg()),
+        format!("{} deg", fixed(d.polar_deg(), 3)),
+        format!("{} deg", fixed(d.azimuth_deg().rem_euclid(360.0), 2)),
+    ]
+}
+
+fn arm_places(label: &str, d: Direction, screen: Length) -> Vec<Vec<String>> {
+    let mut planes = vec![Length::metres(0.25), Length::metres(0.5), Length::metres(1.0)];
+    if planes.iter().all(|p| (p.si() - screen.si()).abs() > 1e-9) {
+        planes.push(screen);
+    }
+    planes
+        .into_iter()
+        .map(|plane| {
+            let (x, y) = d.on_screen_mm(plane);
+            vec![label.into(), plane.to_string(), signed(x, 2), signed(y, 2), fixed(x.hypot(y), 2)]
+        })
+        .collect()
+}
+
+/// A photon straight up from the first ring's axis, and its partner.
+pub(super) fn ring_pair(facts: &Facts<'_>) -> Option<(String, Direction, Direction)> {
+    let row = facts.cones.rings.iter().find(|r| r.ring.is_ok())?;
+    let ring = row.ring.as_ref().ok()?;
+    let d = ring.curve.direction(crate::matching::SAMPLES / 4);
+    let crystal = &facts.setup.crystals[row.crystal];
+    let partner = Emission::of(crystal, row.photons).ok()?.pairing(row.roles, d)?.idler_outside?;
+    Some((nm(row.wavelength), d, partner))
+}
+
+fn iris_step(page: &mut Page, facts: &Facts<'_>) {
+    let at = |full: f64, distance: Length| 2.0 * distance.mm() * (0.5 * full).tan();
+    let (full, why) = match facts.iris() {
+        Some(full) => (full, "as the job says"),
+        None => {
+            let thin = facts
+                .cones
+                .rings
+                .iter()
+                .filter_map(|r| r.ring.as_ref().ok()?.thickness)
+                .fold(f64::INFINITY, f64::min);
+            if !thin.is_finite() {
+                return;
+            }
+            (thin, "as wide as the ring is thick, since the job gives no iris")
+        }
+    };
+    let rows = [0.25, 0.5, 1.0]
+        .map(Length::metres)
+        .map(|d| vec![d.to_string(), format!("{} mm", fixed(at(full, d), 2))]);
+    page.step(
+        format!("Set the irises: full angle {} seen from the crystal, {why}.", plain_deg(full, 3)),
+        Vec::new(),
+    );
+    page.table(&["iris at", "diameter"], rows.into());
+}
+
+/// Where a seed laser at A shows its partner.
+fn seeds(page: &mut Page, facts: &Facts<'_>) {
+    let crossing = facts.cones.crossings.iter().find_map(|c| c.crossing.as_ref());
+    let Some(direction) = crossing.map(|c| c.direction).or_else(|| ring_pair(facts).map(|p| p.1)) else {
+        return;
+    };
+    let crystal = &facts.setup.crystals[0];
+    let Some(roles) = facts.roles(crystal) else { return };
+    let mut rows = Vec::new();
+    for off in [-10.0, -5.0, 0.0, 5.0, 10.0] {
+        let seed = Wavelength::from_nm(facts.photons.signal.nm() + off);
+        let row = Photons::new(facts.photons.pump, seed).and_then(|photons| {
+            let pairing = Emission::of(crystal, photons).ok()?.pairing(roles, direction)?;
+            let partner = pairing.idler_outside?;
+            let (x, y) = partner.on_screen_mm(facts.setup.screen);
+            let factor = pairing.phase_matching_factor(crystal.hot_length().si());
+            Some(vec![nm(seed), nm(photons.idler), signed(x, 2), signed(y, 2), fixed(factor, 2)])
+        });
+        rows.extend(row);
+    }
+    page.step(
+        "If a laser near the signal's wavelength is at hand, send it through the crystal to A: its partner lights up here.",
+        vec![format!(
+            "Seed at h {} deg, v {} deg; places on the screen at {}.",
+            signed(direction.h_deg(), 3),
+            signed(direction.v_deg(), 3),
+            facts.setup.screen
+        )],
+    );
+    page.table(&["seed", "partner", "partner x in mm", "partner y in mm", "sinc^2"], rows);
+}
+
+/// The angle that both sheets watch, for the first crystal.
+pub(super) fn watched(facts: &Facts<'_>) -> Option<Watched> {
+    facts.watched(&facts.setup.crystals[0])
+}
