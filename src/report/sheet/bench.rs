@@ -214,7 +214,8 @@ fn crystal_steps(page: &mut Page, facts: &Facts<'_>, index: usize, crystal: &Cry
             see.push(format!("Stage reading to set: {} deg.", fixed(reading.degrees(), 3)));
         }
         if let Some(turns) = stage.turns(tilt) {
-            see.push(format!("Screw: {} turns, positive where the reading rises.", signed(turns, 2)));
+            let sense = if turns < 0.0 { "falls" } else { "rises" };
+            see.push(format!("Screw: {} turns, so that the reading {sense}.", fixed(turns.abs(), 2)));
         }
     }
     if cross.si() != 0.0 {
@@ -272,8 +273,13 @@ fn ring_steps(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesError> {
         &["ring", "centre in mm", "radius in mm", "x from, to in mm", "y from, to in mm", "thickness (FWHM)"],
         rows,
     );
+    let mixed = facts.cones.rings.windows(2).any(|r| r[0].polarization != r[1].polarization);
     page.step(
-        "Tell the rings apart with a polarizer before the camera.",
+        if mixed {
+            "Tell the rings apart with a polarizer before the camera."
+        } else {
+            "Check the polarization with a polarizer before the camera."
+        },
         facts
             .cones
             .rings
@@ -403,10 +409,26 @@ fn arm_steps(page: &mut Page, facts: &Facts<'_>) {
     page.table(&["arm", "plane at", "x in mm", "y in mm", "from the pump in mm"], rows);
     iris_step(page, facts);
     seeds(page, facts);
+    let screen = setup.screen;
+    let step =
+        iris(facts).map(|(full, _)| format!("{} mm at {screen}", fixed(screen.mm() * (0.5 * full).tan(), 1)));
     page.step(
-        "Look for coincidences: delay equal, irises open, then close them.",
-        vec!["Move one arm in steps of a third of the ring's thickness; the partner's place is in the table of twins.".into()],
+        "Look for coincidences: irises open first, window wide, delays of both arms equal.",
+        vec![format!(
+            "If there are none, leave A and move B over a grid about its place in steps of half an iris{}.",
+            step.map_or(String::new(), |s| format!(": {s}"))
+        )],
     );
+}
+
+/// Full angle of the irises, and why: the job's, or as wide as the thinnest ring.
+fn iris(facts: &Facts<'_>) -> Option<(f64, &'static str)> {
+    if let Some(full) = facts.iris() {
+        return Some((full, "as the job says"));
+    }
+    let thick = facts.cones.rings.iter().filter_map(|r| r.ring.as_ref().ok()?.thickness);
+    let thin = thick.fold(f64::INFINITY, f64::min);
+    thin.is_finite().then_some((thin, "as wide as the ring is thick, since the job gives no iris"))
 }
 
 fn arm_angles(label: &str, d: Direction) -> Vec<String> {
@@ -446,21 +468,7 @@ pub(super) fn ring_pair(facts: &Facts<'_>) -> Option<(String, Direction, Directi
 
 fn iris_step(page: &mut Page, facts: &Facts<'_>) {
     let at = |full: f64, distance: Length| 2.0 * distance.mm() * (0.5 * full).tan();
-    let (full, why) = match facts.iris() {
-        Some(full) => (full, "as the job says"),
-        None => {
-            let thin = facts
-                .cones
-                .rings
-                .iter()
-                .filter_map(|r| r.ring.as_ref().ok()?.thickness)
-                .fold(f64::INFINITY, f64::min);
-            if !thin.is_finite() {
-                return;
-            }
-            (thin, "as wide as the ring is thick, since the job gives no iris")
-        }
-    };
+    let Some((full, why)) = iris(facts) else { return };
     let rows = [0.25, 0.5, 1.0]
         .map(Length::metres)
         .map(|d| vec![d.to_string(), format!("{} mm", fixed(at(full, d), 2))]);

@@ -200,7 +200,9 @@ fn costs(facts: &Facts<'_>, crystal: &Crystal) -> Vec<Vec<String>> {
         changed.cut.phi = Angle::radians(crystal.cut.phi.si() + f64::to_radians(off));
         let angle = watched.of(&facts.measure(&changed, facts.photons));
         let repair = facts.repair(&changed, watched);
-        rows.push(cost(facts, format!("phi {off:+} deg"), watched.angle, angle, repair));
+        let rate = relative_rate(facts, crystal, &changed)
+            .map_or(String::new(), |r| format!(" (pair rate x {})", fixed(r, 3)));
+        rows.push(cost(facts, format!("phi {off:+} deg{rate}"), watched.angle, angle, repair));
     }
     for off in [1.0, -1.0] {
         let pump = Wavelength::from_nm(facts.photons.pump.nm() + off);
@@ -216,6 +218,17 @@ fn costs(facts: &Facts<'_>, crystal: &Crystal) -> Vec<Vec<String>> {
         ));
     }
     rows
+}
+
+/// |d_eff|^2 of a changed crystal over that of the planned one.
+fn relative_rate(facts: &Facts<'_>, planned: &Crystal, changed: &Crystal) -> Option<f64> {
+    let tensor = planned.material.tensor.as_ref()?;
+    let direction = signal_direction(facts, planned);
+    let d_eff = |crystal: &Crystal| {
+        let emission = crate::matching::Emission::of(crystal, facts.photons).ok()?;
+        Some(facts.pairing(crystal, direction)?.d_eff(&emission, tensor))
+    };
+    Some((d_eff(changed)? / d_eff(planned)?).powi(2)).filter(|r| r.is_finite())
 }
 
 fn cost(

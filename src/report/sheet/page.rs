@@ -80,7 +80,10 @@ impl Page {
                     bullets(&mut out, see, "   ");
                 }
                 Block::Table(header, rows) => {
-                    let line = |cells: &[String]| format!("| {} |\n", cells.join(" | ").replace("->", "→"));
+                    let cell = |text: &String| text.replace('|', "\\|");
+                    let line = |cells: &[String]| {
+                        format!("| {} |\n", cells.iter().map(cell).collect::<Vec<_>>().join(" | "))
+                    };
                     out.push_str(&line(header));
                     out.push_str(&format!("|{}\n", "---|".repeat(header.len())));
                     rows.iter().for_each(|row| out.push_str(&line(row)));
