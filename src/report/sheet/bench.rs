@@ -147,27 +147,30 @@ fn pump_steps(page: &mut Page, facts: &Facts<'_>) {
         ),
         vec!["Mark where it hits: that is x = 0, y = 0.".into()],
     );
-    let fields: Vec<String> = facts
-        .setup
-        .crystals
-        .iter()
-        .filter_map(|crystal| {
-            let pairing = facts.pairing(crystal, Direction::forward())?;
-            let Lab(field) = crystal.placement().to_lab(pairing.pump.field);
-            Some(field_words(azimuth(field)))
-        })
-        .collect();
-    let mut distinct = fields.clone();
-    distinct.dedup();
-    match distinct.as_slice() {
+    let field = |crystal: &Crystal| {
+        let pairing = facts.pairing(crystal, Direction::forward())?;
+        let Lab(field) = crystal.placement().to_lab(pairing.pump.field);
+        Some(azimuth(field))
+    };
+    let fields: Vec<f64> = facts.setup.crystals.iter().filter_map(field).collect();
+    let alike = fields.windows(2).all(|f| (f[0] - f[1]).abs() < 0.05);
+    match fields.as_slice() {
         [] => {}
-        [only] => page.step(
-            format!("Set the pump's polarization: {only}."),
+        [first, ..] if alike => page.step(
+            format!("Set the pump's polarization: {}.", field_words(*first)),
             vec!["Check with a polarizer before the crystal: it passes most there and least a quarter turn from there.".into()],
         ),
-        _ => page.step(
+        [first, second] => page.step(
+            format!("Set the pump's polarization: {}.", field_words(0.5 * (first + second))),
+            vec![format!(
+                "Both crystals then take the same share: crystal 1 needs {}, crystal 2 {}.",
+                field_words(*first),
+                field_words(*second)
+            )],
+        ),
+        all => page.step(
             "Set the pump's polarization between those of the crystals.".to_string(),
-            fields.iter().enumerate().map(|(n, f)| format!("crystal {}: {f}", n + 1)).collect(),
+            all.iter().enumerate().map(|(n, f)| format!("crystal {}: {}", n + 1, field_words(*f))).collect(),
         ),
     }
     page.step(
@@ -191,7 +194,7 @@ fn crystal_steps(page: &mut Page, facts: &Facts<'_>, index: usize, crystal: &Cry
         ),
         vec![
             format!(
-                "The end of Z that points downstream leans to the {} of who looks along the beam.",
+                "The end of Z that points downstream leans {}, looking along the beam.",
                 side_words(nalgebra::Vector3::new(lean.x, lean.y, 0.0))
             ),
             "Roll right: between crossed polarizers and without tilt, the pump is extinguished.".into(),
@@ -273,7 +276,11 @@ fn ring_steps(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesError> {
         &["ring", "centre in mm", "radius in mm", "x from, to in mm", "y from, to in mm", "thickness (FWHM)"],
         rows,
     );
-    let mixed = facts.cones.rings.windows(2).any(|r| r[0].polarization != r[1].polarization);
+    let differ = |a: &RingRow, b: &RingRow| {
+        let off = a.field_azimuth.zip(b.field_azimuth).map(|(a, b)| (a - b).abs());
+        off.is_some_and(|off| (1.0..179.0).contains(&off))
+    };
+    let mixed = facts.cones.rings.windows(2).any(|r| differ(&r[0], &r[1]));
     page.step(
         if mixed {
             "Tell the rings apart with a polarizer before the camera."
@@ -310,7 +317,7 @@ fn ring_words(setup: &Setup, row: &RingRow) -> String {
                 format!("{name}: centred on the pump.")
             } else {
                 let side = side_words(nalgebra::Vector3::new(c.x, c.y, 0.0));
-                format!("{name}: off the pump to the {side} of who looks along the beam.")
+                format!("{name}: off the pump, {side}, looking along the beam.")
             }
         }
     }

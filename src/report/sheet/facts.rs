@@ -157,16 +157,16 @@ pub(super) fn field_words(azimuth: f64) -> String {
     format!("{word}{} deg from +x towards +y", fixed(azimuth, 1))
 }
 
-/// Towards which side a direction across the beam points, for somebody who looks along the beam.
+/// Towards which side a direction across the beam points: "to the left (+x)", for somebody who looks along the beam.
 pub(super) fn side_words(v: Vector3<f64>) -> String {
-    let left = v.x.abs() > 0.02 * v.norm();
-    let up = v.y.abs() > 0.02 * v.norm();
-    let across = if v.x > 0.0 { "left (+x)" } else { "right (-x)" };
+    let sideways = v.x.abs() > 0.02 * v.norm();
+    let upright = v.y.abs() > 0.02 * v.norm();
+    let across = if v.x > 0.0 { "to the left (+x)" } else { "to the right (-x)" };
     let along = if v.y > 0.0 { "up (+y)" } else { "down (-y)" };
-    match (left, up) {
+    match (sideways, upright) {
         (true, true) => format!("{across} and {along}"),
         (true, false) => across.into(),
         (false, true) => along.into(),
-        (false, false) => "neither side".into(),
+        (false, false) => "to neither side".into(),
     }
 }

@@ -414,7 +414,7 @@ fn mark(crystal: &Crystal) -> Vec<String> {
         "Say which face is the input, and to which side the end of Z that points to the output leans.".into(),
     ];
     lines.push(format!(
-        "As this job mounts it at roll 0, that end leans to the {} of who looks along the beam.",
+        "As this job mounts it at roll 0, that end leans {}, looking along the beam.",
         side_words(nalgebra::Vector3::new(lean.x, lean.y, 0.0))
     ));
     lines
