@@ -116,7 +116,7 @@ fn as_svg(drawing: &Drawing, form: Format, warnings: Vec<String>) -> Result<Outc
 /// What to know before trusting the picture. Filter and waist are used here, so that they are not missed.
 fn warnings(setup: &Setup) -> Vec<String> {
     let mut conventions = Conventions::of(setup);
-    conventions.warnings.retain(|w| !w.starts_with("not used"));
+    conventions.uses(&["pump.waist", "filter"]);
     conventions.warnings
 }
 

@@ -48,7 +48,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     };
     let mut conventions = Conventions::of(&setup);
     conventions.warn_of_dim_phi(&setup);
-    conventions.warnings.retain(|w| !w.starts_with("not used"));
+    conventions.uses(&["pump.waist", "pump.power", "filter", "collection"]);
     finish(&mut page, &setup, &conventions.lines, args.date.as_deref());
     let text = match form {
         Format::Text => page.markdown(),

@@ -10,6 +10,7 @@ use super::drawing::{Anchor, BLUE, Drawing, Extent, GREY, INK, ORANGE, Pen, nice
 use crate::frame::{Cut, Orientation};
 use crate::job::Setup;
 use crate::matching::{Emission, Interaction, Photons, Process, Scan, Status, Target, Triplet, roots};
+use crate::material::Optic;
 use crate::optics::Crystal;
 use crate::quantity::{Angle, Wavelength, tidy};
 
@@ -48,7 +49,9 @@ impl Curves {
     pub fn of(setup: &Setup) -> Result<Self, String> {
         let crystal = setup.only_crystal("picture --view cut")?.clone();
         let crystal = Crystal { orientation: Orientation::default(), ..crystal };
-        let two = matches!(setup.interaction, Interaction::Two);
+        // the crossings of biaxial crystals cost too much for a curve that nobody asked for
+        let two =
+            matches!(setup.interaction, Interaction::Two) && crystal.material.file.optic == Optic::Uniaxial;
         let three = 3f64.to_radians();
         let wanted = setup.cut.first().and_then(|c| c.target).filter(|t| *t != Target::Collinear);
         let open = wanted.unwrap_or(if two { Target::Crossing(three) } else { Target::HalfAngle(three) });

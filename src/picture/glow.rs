@@ -250,7 +250,9 @@ impl Source<'_> {
         let mut all: Vec<(Crystal, f64)> = Vec::new();
         for (y, wy) in line(ny) {
             for (x, wx) in line(nx) {
-                all.push((turned(x * deviation, y * deviation), wx * wy));
+                if x.hypot(y) <= REACH {
+                    all.push((turned(x * deviation, y * deviation), wx * wy));
+                }
             }
         }
         let sum: f64 = all.iter().map(|(_, share)| share).sum();

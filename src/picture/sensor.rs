@@ -75,7 +75,7 @@ impl Sensor {
         let reach = |row: &RingRow| {
             let ring = row.ring.as_ref().ok()?;
             let (centre, radius) = ring.circle();
-            Some(centre.x.abs().max(centre.y.abs()) + radius + ring.thickness.unwrap_or(0.01))
+            Some(centre.x.abs().max(centre.y.abs()) + radius + ring.thickness.unwrap_or(0.03))
         };
         let most = cones.rings.iter().filter_map(reach).fold(0.0, f64::max);
         let half = if most > 0.0 { 1.12 * most } else { 6f64.to_radians().tan() };

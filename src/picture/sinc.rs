@@ -18,7 +18,7 @@ pub(super) fn sinc_squared<const FUSED: bool>(t: f32) -> f32 {
     let f = t - ((t + ROUND) - ROUND);
     let z = f * f;
     let mut r = -0.340_093_94;
-    for c in [1.322_251_4, -3.049_916_3, 4.329_170_2, -3.289_865_5, 1.0] {
+    for c in [1.322_251_4, -3.049_916_3, 4.329_17, -3.289_865_5, 1.0] {
         r = fused::<FUSED>(r, z, c);
     }
     r * (z + TINY) / fused::<FUSED>(t, t, TINY)

@@ -1,14 +1,13 @@
 //! The bench sheet: alignment in order, each step with the number to set or to see.
 
-use super::facts::{
-    Facts, Watched, azimuth, deg, field_words, mm, nm, plain_deg, ring_name, rings, side_words,
-};
+use super::arms::arm_steps;
+use super::caution::safety;
+use super::facts::{Facts, Watched, azimuth, deg, field_words, mm, nm, ring_name, rings, side_words};
 use super::page::{Block, Page};
-use super::safety::{class, limits};
 use super::trouble::trouble;
 use crate::frame::{Direction, Lab, Mount};
 use crate::job::Setup;
-use crate::matching::{Actuator, ConesError, CrossingRow, Emission, Photons, RingRow};
+use crate::matching::{Actuator, ConesError, RingRow};
 use crate::optics::Crystal;
 use crate::picture::{Backdrop, Optics, Seen, Sensor};
 use crate::quantity::{Angle, Length, Wavelength};
@@ -44,71 +43,6 @@ pub fn bench(setup: &Setup) -> Result<Page, ConesError> {
     arm_steps(&mut page, &facts);
     trouble(&mut page, &facts)?;
     Ok(page)
-}
-
-fn safety(page: &mut Page, facts: &Facts<'_>) {
-    let pump = facts.photons.pump;
-    page.heading("Laser safety");
-    let standard = "IEC 60825-1:2014, for a continuous collimated beam all of which enters the standard's aperture; limits \
-                    from memory, to be checked in the standard";
-    let class_text = match (facts.power(), limits(pump)) {
-        (Some(power), Some(_)) => format!(
-            "A pump of {} mW at {} is class {} ({standard}).",
-            rounded(power.mw(), 4),
-            nm(pump),
-            class(pump, power.si()).map_or("-", super::safety::Class::name)
-        ),
-        (None, Some(limits)) => {
-            let mut told: Vec<String> = Vec::new();
-            for (class, limit) in limits {
-                if class != super::safety::Class::Two || (400.0..=700.0).contains(&pump.nm()) {
-                    told.push(format!("class {} to {} mW", class.name(), rounded(limit * 1e3, 4)));
-                }
-            }
-            format!("No power is given. At {}: {}, class 4 above ({standard}).", nm(pump), told.join(", "))
-        }
-        (_, None) => format!(
-            "{} is outside the range whose limits are known here (315 nm to 4000 nm): ask the laser safety officer.",
-            nm(pump)
-        ),
-    };
-    let sight = match pump.nm() {
-        n if n < 380.0 => "The pump is invisible.",
-        n if n < 430.0 => "The pump looks far dimmer than it is: its brightness is no guide.",
-        n if n > 700.0 => "The pump is invisible or nearly so.",
-        _ => "",
-    };
-    page.blocks.push(Block::Warning(format!(
-        "{class_text} {sight} Local rules and the local laser safety officer decide, not this sheet."
-    )));
-    let mut lines = Vec::new();
-    for (index, crystal) in facts.setup.crystals.iter().enumerate() {
-        let (x, y) = reflection(crystal, facts.setup.screen);
-        let face = if facts.setup.crystals.len() > 1 {
-            format!("crystal {}", index + 1)
-        } else {
-            "the crystal".into()
-        };
-        lines.push(format!(
-            "The entrance face of {face} sends pump light back: {} and {} at {} towards the laser. Block it there; it moves when you tilt.",
-            mm(x, 1),
-            mm(y, 1),
-            facts.setup.screen
-        ));
-    }
-    lines
-        .push("Dump the transmitted pump behind the crystal. Filters, plates and irises reflect too.".into());
-    lines.push("Enclose the beam; keep it below eye level; take off watches and rings; align at the least power that shows it.".into());
-    lines.push(format!(
-        "Goggles rated for {} do not stop an alignment laser at {}: two wavelengths, two ratings.",
-        nm(pump),
-        nm(facts.photons.signal)
-    ));
-    lines.push(
-        "The dark widens the pupil: work in dim light of a colour that filters and detectors do not pass."
-            .into(),
-    );
-    page.blocks.push(Block::List(lines));
 }
 
 /// Where the entrance face's reflection hits a card at `distance` back towards the laser, mm.
@@ -374,148 +308,6 @@ fn tilt_table(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesError> {
     page.text("Rings against tilt: a ring that fits another line tells by how much tilt, cut or wavelength are off.");
     page.blocks.push(Block::Table(header, rows));
     Ok(())
-}
-
-fn arm_steps(page: &mut Page, facts: &Facts<'_>) {
-    let setup = facts.setup;
-    let crossings: Vec<&CrossingRow> =
-        facts.cones.crossings.iter().filter(|r| r.crossing.is_some()).collect();
-    let mut rows = Vec::new();
-    let mut angles = Vec::new();
-    for row in &crossings {
-        let Some(crossing) = &row.crossing else { continue };
-        let number = row.pair.map_or(String::new(), |n| n.to_string());
-        for (name, direction, wavelength) in
-            [("A", Some(crossing.direction), row.a_wavelength), ("B", crossing.partner, row.b_wavelength)]
-        {
-            let Some(d) = direction else { continue };
-            let label = format!("{name}{number} ({})", nm(wavelength));
-            angles.push(arm_angles(&label, d));
-            rows.extend(arm_places(&label, d, setup.screen));
-        }
-    }
-    if crossings.is_empty() {
-        let Some((label, d, partner)) = ring_pair(facts) else {
-            page.text("There is no ring here, so there is nowhere to put an arm. Turn the crystal first.");
-            return;
-        };
-        page.text(
-            "No two rings cross here: the arms go to opposite points of the ring. This is one such pair.",
-        );
-        for (name, d) in [("A", d), ("B", partner)] {
-            angles.push(arm_angles(&format!("{name} ({label})"), d));
-            rows.extend(arm_places(&format!("{name} ({label})"), d, setup.screen));
-        }
-    }
-    page.step("Set the arms to these angles from the pump, with the pivot under the crystal.", Vec::new());
-    page.table(
-        &["arm", "h (to +x)", "v (up)", "from the pump", "about the pump, from +x towards +y"],
-        angles,
-    );
-    page.step("Check with a ruler: places on a plane across the pump.", Vec::new());
-    page.table(&["arm", "plane at", "x in mm", "y in mm", "from the pump in mm"], rows);
-    iris_step(page, facts);
-    seeds(page, facts);
-    let screen = setup.screen;
-    let step =
-        iris(facts).map(|(full, _)| format!("{} mm at {screen}", fixed(screen.mm() * (0.5 * full).tan(), 1)));
-    page.step(
-        "Look for coincidences: irises open first, window wide, delays of both arms equal.",
-        vec![format!(
-            "If there are none, leave A and move B over a grid about its place in steps of half an iris{}.",
-            step.map_or(String::new(), |s| format!(": {s}"))
-        )],
-    );
-}
-
-/// Full angle of the irises, and why: the job's, or as wide as the thinnest ring.
-fn iris(facts: &Facts<'_>) -> Option<(f64, &'static str)> {
-    if let Some(full) = facts.iris() {
-        return Some((full, "as the job says"));
-    }
-    let thick = facts.cones.rings.iter().filter_map(|r| r.ring.as_ref().ok()?.thickness);
-    let thin = thick.fold(f64::INFINITY, f64::min);
-    thin.is_finite().then_some((thin, "as wide as the ring is thick, since the job gives no iris"))
-}
-
-fn arm_angles(label: &str, d: Direction) -> Vec<String> {
-    let turned = |v: f64| format!("{} deg", signed(v, 3));
-    vec![
-        label.into(),
-        turned(d.h_deg()),
-        turned(d.v_deg()),
-        format!("{} deg", fixed(d.polar_deg(), 3)),
-        format!("{} deg", fixed(d.azimuth_deg().rem_euclid(360.0), 2)),
-    ]
-}
-
-fn arm_places(label: &str, d: Direction, screen: Length) -> Vec<Vec<String>> {
-    let mut planes = vec![Length::metres(0.25), Length::metres(0.5), Length::metres(1.0)];
-    if planes.iter().all(|p| (p.si() - screen.si()).abs() > 1e-9) {
-        planes.push(screen);
-    }
-    planes
-        .into_iter()
-        .map(|plane| {
-            let (x, y) = d.on_screen_mm(plane);
-            vec![label.into(), plane.to_string(), signed(x, 2), signed(y, 2), fixed(x.hypot(y), 2)]
-        })
-        .collect()
-}
-
-/// A photon straight up from the first ring's axis, and its partner.
-pub(super) fn ring_pair(facts: &Facts<'_>) -> Option<(String, Direction, Direction)> {
-    let row = facts.cones.rings.iter().find(|r| r.ring.is_ok())?;
-    let ring = row.ring.as_ref().ok()?;
-    let d = ring.curve.direction(crate::matching::SAMPLES / 4);
-    let crystal = &facts.setup.crystals[row.crystal];
-    let partner = Emission::of(crystal, row.photons).ok()?.pairing(row.roles, d)?.idler_outside?;
-    Some((nm(row.wavelength), d, partner))
-}
-
-fn iris_step(page: &mut Page, facts: &Facts<'_>) {
-    let at = |full: f64, distance: Length| 2.0 * distance.mm() * (0.5 * full).tan();
-    let Some((full, why)) = iris(facts) else { return };
-    let rows = [0.25, 0.5, 1.0]
-        .map(Length::metres)
-        .map(|d| vec![d.to_string(), format!("{} mm", fixed(at(full, d), 2))]);
-    page.step(
-        format!("Set the irises: full angle {} seen from the crystal, {why}.", plain_deg(full, 3)),
-        Vec::new(),
-    );
-    page.table(&["iris at", "diameter"], rows.into());
-}
-
-/// Where a seed laser at A shows its partner.
-fn seeds(page: &mut Page, facts: &Facts<'_>) {
-    let crossing = facts.cones.crossings.iter().find_map(|c| c.crossing.as_ref());
-    let Some(direction) = crossing.map(|c| c.direction).or_else(|| ring_pair(facts).map(|p| p.1)) else {
-        return;
-    };
-    let crystal = &facts.setup.crystals[0];
-    let Some(roles) = facts.roles(crystal) else { return };
-    let mut rows = Vec::new();
-    for off in [-10.0, -5.0, 0.0, 5.0, 10.0] {
-        let seed = Wavelength::from_nm(facts.photons.signal.nm() + off);
-        let row = Photons::new(facts.photons.pump, seed).and_then(|photons| {
-            let pairing = Emission::of(crystal, photons).ok()?.pairing(roles, direction)?;
-            let partner = pairing.idler_outside?;
-            let (x, y) = partner.on_screen_mm(facts.setup.screen);
-            let factor = pairing.phase_matching_factor(crystal.hot_length().si());
-            Some(vec![nm(seed), nm(photons.idler), signed(x, 2), signed(y, 2), fixed(factor, 2)])
-        });
-        rows.extend(row);
-    }
-    page.step(
-        "If a laser near the signal's wavelength is at hand, send it through the crystal to A: its partner lights up here.",
-        vec![format!(
-            "Seed at h {} deg, v {} deg; places on the screen at {}.",
-            signed(direction.h_deg(), 3),
-            signed(direction.v_deg(), 3),
-            facts.setup.screen
-        )],
-    );
-    page.table(&["seed", "partner", "partner x in mm", "partner y in mm", "sinc^2"], rows);
 }
 
 /// The angle that both sheets watch, for the first crystal.

@@ -1,6 +1,8 @@
 //! Sheets on paper: what a maker of crystals must know, and what is set at the bench.
 
+mod arms;
 mod bench;
+mod caution;
 mod facts;
 mod order;
 mod page;
