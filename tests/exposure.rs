@@ -4,7 +4,7 @@ use std::f64::consts::TAU;
 
 use twincone::job::setup::{Needs, Setup};
 use twincone::job::{Document, resolve};
-use twincone::matching::{Cones, Want, cones};
+use twincone::matching::{Cones, Emission, Roles, Want, cones};
 use twincone::material::Catalogue;
 use twincone::picture::{Exposure, Light, Optics, Picture, Sampling, Seen, Sensor};
 use twincone::quantity::Length;
@@ -220,6 +220,51 @@ fn a_focused_pump_blurs_and_keeps_the_total() {
     assert!(focused.brightest() < 0.9 * plane.brightest());
     // light moves across the border of the field and |d_eff| and the solid angle change a little along the way
     assert!((focused.total() / plane.total() - 1.0).abs() < 0.01, "{} {}", focused.total(), plane.total());
+}
+
+/// Pixels against the sum that the documentation states, written out in double precision: phase, |d_eff|^2, solid angle.
+#[test]
+fn pixels_hold_the_stated_sum() {
+    let setup = setup(CROSSED);
+    let sensor = sensor(300.0, 600);
+    let picture = take(&setup, sensor);
+    let crystal = &setup.crystals[0];
+    let emission = Emission::of(crystal, setup.photons()).expect("indices");
+    let tensor = crystal.material.tensor.as_ref().expect("a tensor");
+    let roles = emission.wanted(crystal, setup.interaction).expect("two processes");
+    let normal = crystal.orientation.rotation() * nalgebra::Vector3::z();
+    let stated = |x: f64, y: f64| {
+        let direction = sensor.direction(x, y);
+        let d = direction.lab().0;
+        let of = |roles: &Roles| {
+            let pairing = emission.pairing(*roles, direction).expect("waves");
+            pairing.d_eff(&emission, tensor).powi(2) * pairing.phase_matching_factor(emission.length)
+        };
+        roles.iter().map(of).sum::<f64>() * d.dot(&normal) * d.z.powi(3)
+    };
+    let step = sensor.pitch();
+    let mut ratios = Vec::new();
+    for row in (3..600).step_by(13) {
+        for column in (5..600).step_by(17) {
+            let (x, y) = sensor.place(f64::from(column) + 0.5, f64::from(row) + 0.5);
+            // mean over the pixel by Gauss's two points in each direction
+            let g = step / 12f64.sqrt();
+            let mean =
+                [(g, g), (g, -g), (-g, g), (-g, -g)].iter().map(|o| stated(x + o.0, y + o.1)).sum::<f64>()
+                    / 4.0;
+            ratios.push((f64::from(picture.values[row as usize * 600 + column as usize]), mean));
+        }
+    }
+    let (mut top, mut scale) = (0.0, 0.0);
+    for (pixel, mean) in &ratios {
+        if *mean > top {
+            (top, scale) = (*mean, pixel / mean);
+        }
+    }
+    for (pixel, mean) in ratios {
+        // |d_eff|^2 is interpolated on a grid of 17 x 17 places
+        assert!((pixel / scale - mean).abs() < 2e-4 * top, "{pixel} {mean} {top}");
+    }
 }
 
 /// The same numbers on any number of threads.
