@@ -17,6 +17,7 @@
 //! | [`matching`] | phase matching: cuts, rings, crossings, turns |
 //! | [`pairs`] | amplitudes, the entangled state, compensation |
 //! | [`job`] | the description of an experiment |
+//! | [`picture`] | what a screen or camera shows |
 //! | [`report`] | rows to text, CSV, JSON |
 //! | [`sweep`] | a report at every point of a grid of settings |
 
@@ -26,6 +27,7 @@ pub mod matching;
 pub mod material;
 pub mod optics;
 pub mod pairs;
+pub mod picture;
 pub(crate) mod places;
 pub mod quantity;
 pub mod report;

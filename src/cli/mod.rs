@@ -12,9 +12,11 @@ mod man;
 mod materials;
 mod options;
 mod output;
+mod picture;
 mod progress;
 mod run;
 mod schema;
+mod sheet;
 mod state;
 mod sweep_file;
 mod tilt;
@@ -68,6 +70,10 @@ enum Command {
     State(Box<state::Args>),
     /// Design the plates that make the two histories alike
     Compensate(Box<compensate::Args>),
+    /// Draw what a camera sees, the crystal in its mount, or curves
+    Picture(Box<picture::Args>),
+    /// Write the order sheet for the maker or the bench sheet for the table
+    Sheet(Box<sheet::Args>),
     /// Write out a commented job file, or check one
     Job(Box<job::Args>),
     /// The JSON Schema of the job file, for editors
@@ -122,6 +128,8 @@ pub fn run(typed: &Typed) -> Result<output::Outcome, Failure> {
         Command::Join(args) => join::run(args, out),
         Command::State(args) => state::run(args, out),
         Command::Compensate(args) => compensate::run(args, out),
+        Command::Picture(args) => picture::run(args, out),
+        Command::Sheet(args) => sheet::run(args, out),
         Command::Job(args) => job::run(args, out),
         Command::Schema => schema::run(out),
         Command::Completions(args) => completions::run(args, Typed::command(), out),

@@ -42,6 +42,12 @@ pub enum Format {
     Csv,
     /// Everything for scripts
     Json,
+    /// Pixels (`picture`)
+    Png,
+    /// A drawing (`picture`)
+    Svg,
+    /// A page (`sheet`)
+    Html,
 }
 
 /// When to colour.
@@ -59,7 +65,7 @@ pub enum Colour {
 #[derive(Debug)]
 pub struct Outcome {
     /// `None` where the command has written its answer itself.
-    text: Option<String>,
+    answer: Option<Vec<u8>>,
     warnings: Vec<String>,
     solved: bool,
 }
@@ -67,7 +73,7 @@ pub struct Outcome {
 impl Outcome {
     /// Of a command that has written its answer itself.
     pub fn written() -> Self {
-        Self { text: None, warnings: Vec::new(), solved: true }
+        Self { answer: None, warnings: Vec::new(), solved: true }
     }
 }
 
@@ -77,16 +83,21 @@ impl OutputArgs {
         self.tell("warning", "33", message);
     }
 
+    /// A file in the form that was asked for, with warnings.
+    pub fn file(bytes: Vec<u8>, warnings: Vec<String>) -> Outcome {
+        Outcome { answer: Some(bytes), warnings, solved: true }
+    }
+
     /// A text that has no other form.
     ///
     /// # Errors
     /// csv or json asked for.
     pub fn plain(&self, text: String) -> Result<Outcome, Failure> {
         match self.format {
-            Some(Format::Csv | Format::Json) => {
+            Some(form) if form != Format::Text => {
                 Err(Failure::usage("this answer is a text; leave --format out"))
             }
-            _ => Ok(Outcome { text: Some(text), warnings: Vec::new(), solved: true }),
+            _ => Ok(Outcome { answer: Some(text.into_bytes()), warnings: Vec::new(), solved: true }),
         }
     }
 
@@ -102,6 +113,9 @@ impl OutputArgs {
         let implied = match extension.as_deref() {
             Some("csv") => Some(Format::Csv),
             Some("json") => Some(Format::Json),
+            Some("png") => Some(Format::Png),
+            Some("svg") => Some(Format::Svg),
+            Some("html" | "htm") => Some(Format::Html),
             Some("txt" | "text" | "md") => Some(Format::Text),
             _ => None,
         };
@@ -127,6 +141,11 @@ impl OutputArgs {
         let text = match self.form()? {
             Format::Text => answer.to_text(),
             Format::Json => json(answer),
+            Format::Png | Format::Svg | Format::Html => {
+                return Err(Failure::usage(
+                    "this answer has the formats text, csv and json; `picture` draws, `sheet` writes pages",
+                ));
+            }
             Format::Csv => {
                 let chosen = answer.tables.iter().find(|t| table.is_none_or(|name| t.name == name));
                 let chosen = chosen
@@ -134,7 +153,8 @@ impl OutputArgs {
                 csv(chosen)
             }
         };
-        Ok(Outcome { text: Some(text), warnings: answer.conventions.warnings.clone(), solved: answer.solved })
+        let warnings = answer.conventions.warnings.clone();
+        Ok(Outcome { answer: Some(text.into_bytes()), warnings, solved: answer.solved })
     }
 
     fn colours_stderr(&self) -> bool {
@@ -160,6 +180,9 @@ fn word(format: Format) -> &'static str {
         Format::Text => "text",
         Format::Csv => "csv",
         Format::Json => "json",
+        Format::Png => "png",
+        Format::Svg => "svg",
+        Format::Html => "html",
     }
 }
 
@@ -174,12 +197,12 @@ pub fn finish(outcome: Result<Outcome, Failure>, args: &OutputArgs) -> ExitCode 
         if !args.quiet {
             outcome.warnings.iter().for_each(|w| args.warn(w));
         }
-        match (&outcome.text, &args.output) {
+        match (&outcome.answer, &args.output) {
             (None, _) => {}
-            (Some(text), Some(path)) if path.as_os_str() != "-" => write_whole(path, text.as_bytes())
+            (Some(bytes), Some(path)) if path.as_os_str() != "-" => write_whole(path, bytes)
                 .map_err(|e| Failure::file("write", &path.display().to_string(), &e))?,
-            (Some(text), _) => {
-                to_stdout(text.as_bytes()).map_err(|e| Failure::file("write to", "standard output", &e))?;
+            (Some(bytes), _) => {
+                to_stdout(bytes).map_err(|e| Failure::file("write to", "standard output", &e))?;
             }
         }
         Ok(outcome.solved)

@@ -330,7 +330,7 @@ fn axis(text: &str) -> Result<String, Failure> {
 impl OutputArgs {
     /// The file that rows of a sweep go to; `None` for standard output.
     fn sweep_target(&self) -> Result<Option<&PathBuf>, Failure> {
-        if matches!(self.format, Some(Format::Text | Format::Json)) {
+        if self.format.is_some_and(|form| form != Format::Csv) {
             return Err(Failure::usage("a sweep is written as csv; leave --format out"));
         }
         let Some(path) = self.output.as_ref().filter(|path| path.as_os_str() != "-") else { return Ok(None) };

@@ -75,6 +75,18 @@ impl Conventions {
         }
     }
 
+    /// Takes keys that a command does use out of the warning about unused ones.
+    pub fn uses(&mut self, keys: &[&str]) {
+        const HEAD: &str = "not used by this command: ";
+        self.warnings.retain_mut(|warning| {
+            let Some(list) = warning.strip_prefix(HEAD) else { return true };
+            let left: Vec<&str> = list.split(", ").filter(|key| !keys.contains(key)).collect();
+            let any = !left.is_empty();
+            *warning = format!("{HEAD}{}", left.join(", "));
+            any
+        });
+    }
+
     fn add_warnings(&mut self, setup: &Setup) {
         let unread = unread_keys(setup);
         if !unread.is_empty() {

@@ -8,6 +8,7 @@ pub mod cut;
 mod export;
 pub mod index;
 pub mod materials;
+pub mod sheet;
 mod spread;
 pub mod state;
 pub mod table;

@@ -10,6 +10,8 @@ mod cut;
 mod index;
 mod job;
 mod materials;
+mod picture;
+mod sheet;
 mod state;
 mod sweep;
 mod tilt;

@@ -1,0 +1,26 @@
+//! Pictures: what a screen or camera shows, the crystal in its mount, rings over a turn, cuts over wavelength.
+
+mod camera;
+mod cut_curve;
+mod drawing;
+mod exposure;
+mod files;
+mod geometry;
+mod glow;
+mod light;
+mod notes;
+mod ring_sweep;
+mod sensor;
+mod sinc;
+
+pub use camera::{Backdrop, camera};
+pub use cut_curve::{Curves, CutPoint, cut_curve};
+pub use drawing::{Anchor, Drawing, Extent, Pen, escaped};
+pub use exposure::{Exposure, Picture};
+pub use files::{Depth, png_size};
+pub use geometry::{front, side};
+pub use glow::{GlowError, Sampling};
+pub use light::{Filter, Light, Shape};
+pub use notes::notes;
+pub use ring_sweep::{Axis, parse_axis, ring_sweep};
+pub use sensor::{Optics, Seen, Sensor};

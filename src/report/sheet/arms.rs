@@ -1,0 +1,151 @@
+//! Where arms, irises and a seed laser go.
+
+use super::facts::{Facts, nm, plain_deg};
+use super::page::Page;
+use crate::frame::Direction;
+use crate::matching::{CrossingRow, Emission, Photons};
+use crate::quantity::{Length, Wavelength};
+use crate::report::angles::{fixed, signed};
+
+/// The steps of the bench sheet about the arms.
+pub(super) fn arm_steps(page: &mut Page, facts: &Facts<'_>) {
+    let setup = facts.setup;
+    let crossings: Vec<&CrossingRow> =
+        facts.cones.crossings.iter().filter(|r| r.crossing.is_some()).collect();
+    let mut rows = Vec::new();
+    let mut angles = Vec::new();
+    for row in &crossings {
+        let Some(crossing) = &row.crossing else { continue };
+        let number = row.pair.map_or(String::new(), |n| n.to_string());
+        for (name, direction, wavelength) in
+            [("A", Some(crossing.direction), row.a_wavelength), ("B", crossing.partner, row.b_wavelength)]
+        {
+            let Some(d) = direction else { continue };
+            let label = format!("{name}{number} ({})", nm(wavelength));
+            angles.push(arm_angles(&label, d));
+            rows.extend(arm_places(&label, d, setup.screen));
+        }
+    }
+    if crossings.is_empty() {
+        let Some((label, d, partner)) = ring_pair(facts) else {
+            page.text("There is no ring here, so there is nowhere to put an arm. Turn the crystal first.");
+            return;
+        };
+        page.text(
+            "No two rings cross here: the arms go to opposite points of the ring. This is one such pair.",
+        );
+        for (name, d) in [("A", d), ("B", partner)] {
+            angles.push(arm_angles(&format!("{name} ({label})"), d));
+            rows.extend(arm_places(&format!("{name} ({label})"), d, setup.screen));
+        }
+    }
+    page.step("Set the arms to these angles from the pump, with the pivot under the crystal.", Vec::new());
+    page.table(
+        &["arm", "h (to +x)", "v (up)", "from the pump", "about the pump, from +x towards +y"],
+        angles,
+    );
+    page.step("Check with a ruler: places on a plane across the pump.", Vec::new());
+    page.table(&["arm", "plane at", "x in mm", "y in mm", "from the pump in mm"], rows);
+    iris_step(page, facts);
+    seeds(page, facts);
+    let screen = setup.screen;
+    let step =
+        iris(facts).map(|(full, _)| format!("{} mm at {screen}", fixed(screen.mm() * (0.5 * full).tan(), 1)));
+    page.step(
+        "Look for coincidences: irises open first, window wide, delays of both arms equal.",
+        vec![format!(
+            "If there are none, leave A and move B over a grid about its place in steps of half an iris{}.",
+            step.map_or(String::new(), |s| format!(": {s}"))
+        )],
+    );
+}
+
+/// Full angle of the irises, and why: the job's, or as wide as the thinnest ring.
+fn iris(facts: &Facts<'_>) -> Option<(f64, &'static str)> {
+    if let Some(full) = facts.iris() {
+        return Some((full, "as the job says"));
+    }
+    let thick = facts.cones.rings.iter().filter_map(|r| r.ring.as_ref().ok()?.thickness);
+    let thin = thick.fold(f64::INFINITY, f64::min);
+    thin.is_finite().then_some((thin, "as wide as the ring is thick, since the job gives no iris"))
+}
+
+fn arm_angles(label: &str, d: Direction) -> Vec<String> {
+    let turned = |v: f64| format!("{} deg", signed(v, 3));
+    vec![
+        label.into(),
+        turned(d.h_deg()),
+        turned(d.v_deg()),
+        format!("{} deg", fixed(d.polar_deg(), 3)),
+        format!("{} deg", fixed(d.azimuth_deg().rem_euclid(360.0), 2)),
+    ]
+}
+
+fn arm_places(label: &str, d: Direction, screen: Length) -> Vec<Vec<String>> {
+    let mut planes = vec![Length::metres(0.25), Length::metres(0.5), Length::metres(1.0)];
+    if planes.iter().all(|p| (p.si() - screen.si()).abs() > 1e-9) {
+        planes.push(screen);
+    }
+    planes
+        .into_iter()
+        .map(|plane| {
+            let (x, y) = d.on_screen_mm(plane);
+            vec![label.into(), plane.to_string(), signed(x, 2), signed(y, 2), fixed(x.hypot(y), 2)]
+        })
+        .collect()
+}
+
+/// A photon straight up from the first ring's axis, and its partner.
+pub(super) fn ring_pair(facts: &Facts<'_>) -> Option<(String, Direction, Direction)> {
+    let row = facts.cones.rings.iter().find(|r| r.ring.is_ok())?;
+    let ring = row.ring.as_ref().ok()?;
+    let d = ring.curve.direction(crate::matching::SAMPLES / 4);
+    let crystal = &facts.setup.crystals[row.crystal];
+    let partner = Emission::of(crystal, row.photons).ok()?.pairing(row.roles, d)?.idler_outside?;
+    Some((nm(row.wavelength), d, partner))
+}
+
+fn iris_step(page: &mut Page, facts: &Facts<'_>) {
+    let at = |full: f64, distance: Length| 2.0 * distance.mm() * (0.5 * full).tan();
+    let Some((full, why)) = iris(facts) else { return };
+    let rows = [0.25, 0.5, 1.0]
+        .map(Length::metres)
+        .map(|d| vec![d.to_string(), format!("{} mm", fixed(at(full, d), 2))]);
+    page.step(
+        format!("Set the irises: full angle {} seen from the crystal, {why}.", plain_deg(full, 3)),
+        Vec::new(),
+    );
+    page.table(&["iris at", "diameter"], rows.into());
+}
+
+/// Where a seed laser at A shows its partner.
+fn seeds(page: &mut Page, facts: &Facts<'_>) {
+    let crossing = facts.cones.crossings.iter().find_map(|c| c.crossing.as_ref());
+    let Some(direction) = crossing.map(|c| c.direction).or_else(|| ring_pair(facts).map(|p| p.1)) else {
+        return;
+    };
+    let crystal = &facts.setup.crystals[0];
+    let Some(roles) = facts.roles(crystal) else { return };
+    let mut rows = Vec::new();
+    for off in [-10.0, -5.0, 0.0, 5.0, 10.0] {
+        let seed = Wavelength::from_nm(facts.photons.signal.nm() + off);
+        let row = Photons::new(facts.photons.pump, seed).and_then(|photons| {
+            let pairing = Emission::of(crystal, photons).ok()?.pairing(roles, direction)?;
+            let partner = pairing.idler_outside?;
+            let (x, y) = partner.on_screen_mm(facts.setup.screen);
+            let factor = pairing.phase_matching_factor(crystal.hot_length().si());
+            Some(vec![nm(seed), nm(photons.idler), signed(x, 2), signed(y, 2), fixed(factor, 2)])
+        });
+        rows.extend(row);
+    }
+    page.step(
+        "If a laser near the signal's wavelength is at hand, send it through the crystal to A: its partner lights up here.",
+        vec![format!(
+            "Seed at h {} deg, v {} deg; places on the screen at {}.",
+            signed(direction.h_deg(), 3),
+            signed(direction.v_deg(), 3),
+            facts.setup.screen
+        )],
+    );
+    page.table(&["seed", "partner", "partner x in mm", "partner y in mm", "sinc^2"], rows);
+}

@@ -1,0 +1,172 @@
+//! What both sheets ask of an experiment.
+
+use nalgebra::Vector3;
+
+use crate::frame::Direction;
+use crate::job::Setup;
+use crate::matching::{
+    Cones, ConesError, Emission, Measure, Pairing, Photons, RingRow, Roles, Target, Tuning, Want, cones, tune,
+};
+use crate::optics::Crystal;
+use crate::quantity::{Angle, Length, Power};
+use crate::report::angles::{fixed, rounded, signed};
+
+/// An experiment with its rings.
+pub(super) struct Facts<'a> {
+    pub setup: &'a Setup,
+    pub cones: Cones,
+    pub photons: Photons,
+}
+
+impl<'a> Facts<'a> {
+    pub fn of(setup: &'a Setup) -> Result<Self, ConesError> {
+        let cones = rings(setup, &setup.crystals)?;
+        Ok(Self { setup, cones, photons: setup.photons() })
+    }
+
+    pub fn roles(&self, crystal: &Crystal) -> Option<Roles> {
+        let emission = Emission::of(crystal, self.photons).ok()?;
+        emission.wanted(crystal, self.setup.interaction).ok()?.first().copied()
+    }
+
+    /// The waves of a pair whose signal leaves towards `signal`.
+    pub fn pairing(&self, crystal: &Crystal, signal: Direction) -> Option<Pairing> {
+        Emission::of(crystal, self.photons).ok()?.pairing(self.roles(crystal)?, signal)
+    }
+
+    pub fn measure(&self, crystal: &Crystal, photons: Photons) -> Measure {
+        let emission = Emission::of(crystal, photons).ok();
+        let roles = self.roles(crystal);
+        emission.zip(roles).map(|(e, r)| Measure::of(&e, r)).unwrap_or_default()
+    }
+
+    /// The angle that the sheet watches: of the crossings where there are some, else the ring's half angle.
+    pub fn watched(&self, crystal: &Crystal) -> Option<Watched> {
+        let now = self.measure(crystal, self.photons);
+        let crossing = now.crossing.filter(|_| !now.touching).map(|a| Watched { crossing: true, angle: a });
+        crossing.or(now.half_angle.map(|a| Watched { crossing: false, angle: a }))
+    }
+
+    /// The tuning turn that brings a changed crystal back to the watched angle: change in radians.
+    pub fn repair(&self, changed: &Crystal, watched: Watched) -> Option<f64> {
+        let question = Tuning {
+            crystal: changed.clone(),
+            photons: self.photons,
+            fixed_signal: self.setup.signals.fixed(),
+            interaction: self.setup.interaction,
+            target: watched.target(),
+            actuator: None,
+        };
+        let tuned = tune(&question).ok()?;
+        let turn = tuned.turns.first()?;
+        let now = match tuned.actuator {
+            crate::matching::Actuator::CrossTilt => changed.orientation.cross_tilt,
+            _ => changed.orientation.tilt,
+        };
+        Some(turn.setting - now.si())
+    }
+
+    pub fn power(&self) -> Option<Power> {
+        let pump = self.setup.written.pump.as_ref()?.get_ref();
+        pump.power.as_ref()?.get_ref().parse().ok()
+    }
+
+    pub fn waist(&self) -> Option<Length> {
+        let pump = self.setup.written.pump.as_ref()?.get_ref();
+        pump.waist.as_ref()?.get_ref().parse().ok()
+    }
+
+    /// Full angle of the iris seen from the crystal, radians.
+    pub fn iris(&self) -> Option<f64> {
+        let text = self.setup.written.collection.iter().find_map(|c| c.iris.as_ref())?.get_ref();
+        let angle = text.parse::<Angle>().ok().map(Angle::si);
+        angle.or_else(|| {
+            text.parse::<Length>().ok().map(|l| 2.0 * (0.5 * l.si() / self.setup.screen.si()).atan())
+        })
+    }
+
+    /// "bbo:kato-1986"
+    pub fn id(crystal: &Crystal) -> String {
+        format!("{}:{}", crystal.material.id, crystal.set().id)
+    }
+}
+
+/// The angle that is watched.
+#[derive(Debug, Clone, Copy)]
+pub(super) struct Watched {
+    pub crossing: bool,
+    pub angle: f64,
+}
+
+impl Watched {
+    pub fn target(self) -> Target {
+        if self.crossing { Target::Crossing(self.angle) } else { Target::HalfAngle(self.angle) }
+    }
+
+    pub fn of(self, measure: &Measure) -> Option<f64> {
+        if self.crossing { measure.crossing } else { measure.half_angle }
+    }
+
+    pub fn name(self) -> &'static str {
+        if self.crossing { "angle of the crossings from the pump" } else { "half angle of the ring" }
+    }
+}
+
+pub(super) fn rings(setup: &Setup, crystals: &[Crystal]) -> Result<Cones, ConesError> {
+    cones(crystals, setup.pump(), &setup.signals(), setup.interaction, Want::Both)
+}
+
+pub(super) fn nm(wavelength: crate::quantity::Wavelength) -> String {
+    format!("{} nm", rounded(wavelength.nm(), 3))
+}
+
+pub(super) fn deg(radians: f64, decimals: usize) -> String {
+    format!("{} deg", signed(radians.to_degrees(), decimals))
+}
+
+pub(super) fn plain_deg(radians: f64, decimals: usize) -> String {
+    format!("{} deg", fixed(radians.to_degrees(), decimals))
+}
+
+pub(super) fn mm(value: f64, decimals: usize) -> String {
+    format!("{} mm", signed(value, decimals))
+}
+
+/// "e 810 nm", with the crystal's number where there are several.
+pub(super) fn ring_name(setup: &Setup, row: &RingRow) -> String {
+    let of =
+        if setup.crystals.len() > 1 { format!(" of crystal {}", row.crystal + 1) } else { String::new() };
+    format!("{} {}{of}", row.polarization, nm(row.wavelength))
+}
+
+/// Azimuth of a field across the beam, degrees in [0, 180).
+pub(super) fn azimuth(field: Vector3<f64>) -> f64 {
+    let a = field.y.atan2(field.x).to_degrees().rem_euclid(180.0);
+    if (1e-6..180.0 - 1e-6).contains(&a) { a } else { 0.0 }
+}
+
+/// "horizontal (0.0 deg)"
+pub(super) fn field_words(azimuth: f64) -> String {
+    let word = if !(0.5..=179.5).contains(&azimuth) {
+        "horizontal, "
+    } else if (azimuth - 90.0).abs() < 0.5 {
+        "vertical, "
+    } else {
+        ""
+    };
+    format!("{word}{} deg from +x towards +y", fixed(azimuth, 1))
+}
+
+/// Towards which side a direction across the beam points: "to the left (+x)", for somebody who looks along the beam.
+pub(super) fn side_words(v: Vector3<f64>) -> String {
+    let sideways = v.x.abs() > 0.02 * v.norm();
+    let upright = v.y.abs() > 0.02 * v.norm();
+    let across = if v.x > 0.0 { "to the left (+x)" } else { "to the right (-x)" };
+    let along = if v.y > 0.0 { "up (+y)" } else { "down (-y)" };
+    match (sideways, upright) {
+        (true, true) => format!("{across} and {along}"),
+        (true, false) => across.into(),
+        (false, true) => along.into(),
+        (false, false) => "to neither side".into(),
+    }
+}

@@ -1,0 +1,143 @@
+//! `picture`: what is drawn, in which form, and how it is seen.
+
+use std::path::Path;
+
+use crate::run::{assert_says, twincone, twincone_in};
+use crate::table::Table;
+
+const CROSSED: &str = "picture -m bbo:kato-1986 --theta 42.54deg --phi 0deg --length 2mm -p 405nm";
+
+fn read(folder: &Path, name: &str) -> Vec<u8> {
+    std::fs::read(folder.join(name)).expect("a file")
+}
+
+/// Shades of an 8 or 16 bit grey PNG, 0 to 1, and its width.
+fn shades(bytes: &[u8]) -> (Vec<f64>, usize) {
+    let mut reader = png::Decoder::new(std::io::Cursor::new(bytes)).read_info().expect("a PNG");
+    let mut buffer = vec![0; reader.output_buffer_size().expect("a size")];
+    let info = reader.next_frame(&mut buffer).expect("an image");
+    assert_eq!(info.color_type, png::ColorType::Grayscale);
+    let values = match info.bit_depth {
+        png::BitDepth::Sixteen => {
+            buffer.chunks_exact(2).map(|b| f64::from(u16::from_be_bytes([b[0], b[1]])) / 65535.0).collect()
+        }
+        _ => buffer.iter().map(|b| f64::from(*b) / 255.0).collect(),
+    };
+    (values, info.width as usize)
+}
+
+#[test]
+fn png_and_csv_hold_the_same_picture() {
+    let folder = tempfile::tempdir().expect("a folder");
+    twincone_in(folder.path(), &format!("{CROSSED} --pixels 64 --size 300mm -o a.png")).answer();
+    twincone_in(folder.path(), &format!("{CROSSED} --pixels 64 --size 300mm --depth 8 -o b.png")).answer();
+    let csv = twincone(&format!("{CROSSED} --pixels 64 --size 300mm -f csv")).answer();
+    let table = Table::read(&csv);
+    table.assert_columns("x_mm, y_mm, intensity");
+    assert_eq!(table.len(), 64 * 64);
+    let values: Vec<f64> = (0..table.len()).map(|n| table.number(n, "intensity")).collect();
+    let top = values.iter().copied().fold(0.0, f64::max);
+    for (name, step) in [("a.png", 1.0 / 65535.0), ("b.png", 1.0 / 255.0)] {
+        let (shades, width) = shades(&read(folder.path(), name));
+        assert_eq!(width, 64);
+        // half a step of rounding
+        assert!(shades.iter().zip(&values).all(|(s, v)| (s - v / top).abs() <= 0.5001 * step), "{name}");
+    }
+    // the first pixel is the upper left one as seen from downstream: -x, +y
+    assert_eq!((table.number(0, "x_mm"), table.number(0, "y_mm")), (-147.65625, 147.65625));
+}
+
+#[test]
+fn turned_and_mirrored_pictures_are_the_same_pixels() {
+    let folder = tempfile::tempdir().expect("a folder");
+    let take = |options: &str| {
+        let line =
+            format!("{CROSSED} --tilt 0.5deg --roll 30deg --pixels 50 --size 300mm {options} -o x.png");
+        twincone_in(folder.path(), &line).answer();
+        shades(&read(folder.path(), "x.png")).0
+    };
+    let (plain, turned, mirrored) = (take(""), take("--view-turn 180"), take("--mirror"));
+    let near = |a: f64, b: f64| (a - b).abs() < 3e-5;
+    for row in 0..50 {
+        for column in 0..50 {
+            let value = plain[row * 50 + column];
+            assert!(near(value, turned[(49 - row) * 50 + 49 - column]), "{row} {column}");
+            assert!(near(value, mirrored[row * 50 + 49 - column]), "{row} {column}");
+        }
+    }
+}
+
+#[test]
+fn the_drawing_says_how_it_is_seen_and_names_rings_and_marks() {
+    let svg = twincone(&format!("{CROSSED} --tilt 0.4deg --pixels 32")).answer();
+    let texts = ["as a translucent screen shows it from downstream: +x right, +y up", ">A<", ">B<", ">pump<"];
+    assert_says(&svg, &texts);
+    assert_says(
+        &svg,
+        &["e 810 nm", "o 810 nm", "reflection of face", "h in deg", "x in mm on a screen at 1000 mm"],
+    );
+    let svg = twincone(&format!("{CROSSED} --pixels 32 --mirror --focal 100mm")).answer();
+    assert_says(&svg, &["mirrored", "+x left", "behind a lens of focal length 100 mm"]);
+}
+
+#[test]
+fn the_same_job_gives_the_same_bytes_on_any_number_of_threads() {
+    let line = format!("{CROSSED} --waist 60um --filter-width 5nm --pixels 48");
+    let one = twincone(&format!("{line} --threads 1")).answer();
+    assert_eq!(one, twincone(&format!("{line} --threads 3")).answer());
+}
+
+#[test]
+fn an_overlay_needs_a_scale_and_takes_a_recorded_frame() {
+    let folder = tempfile::tempdir().expect("a folder");
+    twincone_in(folder.path(), &format!("{CROSSED} --pixels 40 -o frame.png")).answer();
+    let line = format!("{CROSSED} --overlay frame.png --size 320mm --pump-at 20,21");
+    assert_says(&twincone_in(folder.path(), &line).answer(), &["image/png;base64", "e 810 nm"]);
+    let refused = twincone_in(folder.path(), &format!("{CROSSED} --overlay frame.png")).refusal(2);
+    assert_says(&refused, &["--overlay needs --size"]);
+    std::fs::write(folder.path().join("no.png"), "text").expect("a file");
+    let refused = twincone_in(folder.path(), &format!("{CROSSED} --overlay no.png --size 1mm")).refusal(2);
+    assert_says(&refused, &["no.png is no PNG"]);
+}
+
+#[test]
+fn geometry_is_drawn_with_its_signs() {
+    let side = twincone(&format!("{CROSSED} --view side --roll 90deg")).answer();
+    assert_says(
+        &side,
+        &["+y is up", "theta 42.540 deg", "more tilt", "tip the top of the mount towards the laser"],
+    );
+    let front = twincone(&format!("{CROSSED} --view front")).answer();
+    assert_says(&front, &["+x right, +y up", "tilt turns about this line", ">Z<", "pump E"]);
+    let sweep =
+        twincone(&format!("{CROSSED} --view ring-sweep --axis crystal.tilt=-0.5deg..1deg/4")).answer();
+    assert_says(&sweep, &["e at -0.5 deg", "o at +1 deg", "4 settings"]);
+    assert_says(
+        &twincone(&format!("{CROSSED} --view ring-sweep --axis crystal.tilt=1deg/4")).refusal(2),
+        &["no range"],
+    );
+}
+
+/// Published sets for 405 nm -> 810 nm, type II, collinear, in BBO: 41.793 (kato-1986), 41.421 (eimerl-1987) and
+/// 41.610 deg (tamosauskas-2018), computed independently.
+#[test]
+fn the_cut_curve_passes_through_known_cuts() {
+    let csv = twincone("picture --view cut -m bbo -p 405nm -f csv").answer();
+    for (set, theta) in [("kato-1986", 41.793), ("eimerl-1987", 41.421), ("tamosauskas-2018", 41.610)] {
+        let head = format!("810,{set},e -> e + o,collinear,");
+        let row = csv.lines().find_map(|line| line.strip_prefix(&head)).unwrap_or_else(|| panic!("{head}"));
+        let found: f64 = row.split(',').next().and_then(|t| t.parse().ok()).expect("theta");
+        assert!((found - theta).abs() < 0.002, "{set} {found}");
+    }
+    let svg = twincone("picture --view cut -m bbo -p 405nm").answer();
+    assert_says(&svg, &["collinear", "crossing at 3 deg", "from the lowest to the highest of all sets"]);
+}
+
+#[test]
+fn what_does_not_fit_is_refused_in_words() {
+    assert_says(&twincone(&format!("{CROSSED} -f json")).refusal(2), &["png, svg and csv"]);
+    assert_says(&twincone(&format!("{CROSSED} --view side -f csv")).refusal(2), &["drawing"]);
+    assert_says(&twincone(&format!("{CROSSED} --size 0mm")).refusal(2), &["--size"]);
+    assert_says(&twincone(&format!("{CROSSED} --size 5kg")).refusal(2), &["--size"]);
+    assert_says(&twincone("cones -m bbo --theta 42deg -p 405nm -f svg").refusal(2), &["`picture` draws"]);
+}
