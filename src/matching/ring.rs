@@ -76,7 +76,7 @@ fn centred(mut curve: Curve, mismatch: &Mismatch) -> Result<Curve, RingFault> {
             return Ok(curve);
         }
         // with a margin, so that more samples do not move it again; where rounding moves it there is none
-        if few && (moved < 1e-3 * STAYS || moved < STAYS && shrink > 0.1) {
+        if few && (moved < 1e-3 * STAYS || moved < STAYS && shrink > 0.5) {
             curve.refined(mismatch)?;
             continue;
         }
