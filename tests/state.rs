@@ -199,19 +199,27 @@ fn designed_plates_beat_the_half_length_rule_and_no_thickness_beats_them() {
         let mut bench = Bench { filters: gaussian(width), ..Default::default() };
         bench.collection = iris.map_or(bench.collection, irises);
         let question = question(&crystals, &bench, Interaction::Two, &signals);
-        let found = compensate(&question, &crystals).expect("plates").proposals.remove(0);
+        let found = compensate(&question, &crystals, false).expect("plates").proposals.remove(0);
         let rule = half_length(&question).expect("a state").remove(0);
         let what = format!("{length} mm, {width} nm, {iris:?}");
         assert!(found.after > rule.after - 1e-3, "{what}: {} against {}", found.after, rule.after);
         assert!(found.after > found.before, "{what}");
         no_thickness_is_better(&question, &found, &what);
+        let flipped = compensate(&question, &crystals, true).expect("plates").proposals.remove(0);
+        let rule = half_length(&question).expect("a state").remove(1);
+        assert!(
+            flipped.after > rule.after - 1e-3,
+            "{what}, flipped: {} against {}",
+            flipped.after,
+            rule.after
+        );
     }
     let (crystals, mut bench) = two_crystals(0.0);
     bench.filters = gaussian(10.0);
     bench.collection = irises(0.4);
     bench.line = Line::Width(Length::metres(0.5e-9));
     let question = question(&crystals, &bench, Interaction::One, &signals);
-    let found = compensate(&question, &crystals[..1]).expect("plates").proposals.remove(0);
+    let found = compensate(&question, &crystals[..1], false).expect("plates").proposals.remove(0);
     assert!(found.plates.iter().any(|designed| designed.plate.place == Place::Pump));
     assert!(found.after > 0.99, "{} from {}", found.after, found.before);
     no_thickness_is_better(&question, &found, "two crystals");

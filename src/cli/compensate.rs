@@ -20,6 +20,9 @@ pub struct Args {
     /// Material that plates may be made of, repeatable [default: that of the crystal, and quartz]
     #[arg(long, value_name = "ID[:DATASET]")]
     allow: Vec<String>,
+    /// Plates in the arms stand behind half-wave plates at 45 deg, which exchange H and V
+    #[arg(long)]
+    half_wave: bool,
     /// Which pair of crossings, as `cones` numbers them
     #[arg(long, value_name = "N", default_value = "1", value_parser = clap::value_parser!(u16).range(1..))]
     pair: u16,
@@ -48,7 +51,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         number: usize::from(args.pair),
         wanted: args.precision,
     };
-    let answers = compensate(&question, &materials)?;
+    let answers = compensate(&question, &materials, args.half_wave)?;
     let rules = half_length(&question)?;
     let mut conventions = Conventions::of_pairs(&setup);
     conventions.warn_of_dim_phi(&setup);

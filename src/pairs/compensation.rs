@@ -66,6 +66,7 @@ struct Task<'q, 'a> {
     slopes: Vector4<f64>,
     sites: Vec<Site>,
     head_on: bool,
+    half_wave: bool,
     nominal: [f64; 3],
 }
 
@@ -84,12 +85,17 @@ struct Combination {
     variance: f64,
 }
 
-/// The best plates of each material, best first; compensators that the bench has already are left out.
+/// The best plates of each material, best first; compensators that the bench has already are left out. `half_wave`: plates
+/// in the arms stand behind half-wave plates at 45 deg.
 ///
 /// # Errors
 /// As [`Question::state`].
-pub fn compensate(question: &Question<'_>, materials: &[Crystal]) -> Result<Answers, PairsError> {
-    let task = Task::new(question)?;
+pub fn compensate(
+    question: &Question<'_>,
+    materials: &[Crystal],
+    half_wave: bool,
+) -> Result<Answers, PairsError> {
+    let task = Task::new(question, half_wave)?;
     let before = task.judge(&[])?;
     let mut answers = Answers { proposals: Vec::new(), useless: Vec::new() };
     for material in materials {
@@ -130,7 +136,7 @@ pub struct Answers {
 /// As [`Question::state`].
 pub fn half_length(question: &Question<'_>) -> Result<Vec<Proposal>, PairsError> {
     let [crystal] = question.crystals else { return Ok(Vec::new()) };
-    let task = Task::new(question)?;
+    let task = Task::new(question, false)?;
     let before = task.judge(&[])?;
     let mut all = Vec::with_capacity(2);
     for half_wave in [false, true] {
@@ -150,7 +156,7 @@ fn as_plate(crystal: &Crystal) -> Crystal {
 }
 
 impl<'q, 'a> Task<'q, 'a> {
-    fn new(question: &'q Question<'a>) -> Result<Self, PairsError> {
+    fn new(question: &'q Question<'a>, half_wave: bool) -> Result<Self, PairsError> {
         let bare = Bench { compensators: Vec::new(), ..question.bench.clone() };
         let own = Question { bench: &bare, ..*question };
         let (_, pair, _) = own.pair()?;
@@ -159,7 +165,7 @@ impl<'q, 'a> Task<'q, 'a> {
         let seen = as_irises(&bare, &stack);
         let mixture = Mixture::new(&stack, &seen, Vary::ALL);
         let points: Vec<Point> = mixture.samples()?.iter().map(|sample| Point::new(sample, &basis)).collect();
-        let mut sites = vec![Site::in_arm(&stack, &basis, 0), Site::in_arm(&stack, &basis, 1)];
+        let mut sites: Vec<Site> = [0, 1].map(|arm| Site::in_arm(&stack, &basis, arm, half_wave)).to_vec();
         sites.extend(Site::in_pump(&stack)?);
         let nominal = stack.nominal();
         let steps = Vector4::new(1e-6 * nominal[0], 1e-6, 1e-6, 1e-6 * nominal[PUMP]);
@@ -170,7 +176,19 @@ impl<'q, 'a> Task<'q, 'a> {
         let covariance = covariance(&stack, &points);
         let head_on = mixture.is_of_points();
         drop(mixture);
-        Ok(Self { question, points, probes, steps, covariance, slopes, sites, head_on, nominal, bare })
+        Ok(Self {
+            question,
+            points,
+            probes,
+            steps,
+            covariance,
+            slopes,
+            sites,
+            head_on,
+            half_wave,
+            nominal,
+            bare,
+        })
     }
 
     /// The state that plates leave.
@@ -181,7 +199,8 @@ impl<'q, 'a> Task<'q, 'a> {
 
     fn compensator(&self, candidate: &Candidate, length: f64) -> Compensator {
         let plate = Crystal { length: Length::metres(length), ..candidate.plate.clone() };
-        Compensator::new(self.sites[candidate.site].place, plate)
+        let place = self.sites[candidate.site].place;
+        Compensator { place, plate, half_wave: self.half_wave && place != Place::Pump }
     }
 
     fn propose(&self, plates: Vec<Compensator>, before: &State) -> Result<Proposal, PairsError> {

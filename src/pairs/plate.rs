@@ -46,10 +46,11 @@ pub struct Site {
 }
 
 impl Site {
-    /// In arm 0 (a) or 1 (b).
-    pub fn in_arm(stack: &Stack, basis: &HistoryBasis, arm: usize) -> Self {
+    /// In arm 0 (a) or 1 (b), by itself or behind a half-wave plate that exchanges H and V.
+    pub fn in_arm(stack: &Stack, basis: &HistoryBasis, arm: usize, half_wave: bool) -> Self {
         let axes = if arm == 0 { &basis.a } else { &basis.b };
-        let field = |j: usize| Vector2::new(axes[(0, j)].re, axes[(1, j)].re);
+        let [h, v] = if half_wave { [1, 0] } else { [0, 1] };
+        let field = |j: usize| Vector2::new(axes[(h, j)].re, axes[(v, j)].re);
         let place = if arm == 0 { Place::A } else { Place::B };
         Self { place, fields: [field(0), field(1)], nominal: stack.arms[arm], wave: arm }
     }

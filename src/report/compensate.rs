@@ -70,7 +70,8 @@ pub fn text(answers: &Answers, rules: &[Proposal]) -> String {
     if let [rolled, flipped] = rules {
         out.push_str(&prose(&format!(
             "For comparison, the source's own cut at half its length in both arms: visibility {} rolled by a quarter turn; \
-             {} as the source stands, behind half-wave plates at 45 deg (half_wave = true).",
+             {} as the source stands, behind half-wave plates at 45 deg (half_wave = true; \
+             --half-wave designs plates for there).",
             fixed(rolled.after, 4),
             fixed(flipped.after, 4)
         )));
@@ -135,8 +136,9 @@ fn mounting(designed: &Designed) -> String {
         None => "more than 30 deg".into(),
     };
     format!(
-        "Plate {}: tilt it by {} for a phase of pi; {} brings both histories into phase, {} into opposite phase.",
+        "Plate {}{}: tilt it by {} for a phase of pi; {} brings both histories into phase, {} into opposite phase.",
         designed.plate.place,
+        if designed.plate.half_wave { " (behind a half-wave plate at 45 deg)" } else { "" },
         tilt(designed.tilt_for_pi),
         tilt(designed.tilt_to[0]),
         tilt(designed.tilt_to[1])
