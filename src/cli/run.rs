@@ -336,7 +336,7 @@ impl OutputArgs {
         let Some(path) = self.output.as_ref().filter(|path| path.as_os_str() != "-") else { return Ok(None) };
         match self.form()? {
             Format::Csv => Ok(Some(path)),
-            Format::Text | Format::Json => Err(Failure::usage(format!(
+            _ => Err(Failure::usage(format!(
                 "{}: a sweep is written as csv; name a .csv file",
                 path.display()
             ))),
