@@ -11,8 +11,9 @@ use twincone::job::setup::{Needs, SetupError};
 use twincone::job::{Document, Plan, Setup, resolve};
 use twincone::matching::{Target, Want, cones, tune};
 use twincone::material::Catalogue;
+use twincone::pairs::{Basis, compensate};
 use twincone::report::cones::{crossings_table, rings_table};
-use twincone::report::{Cell, Table, cut, tilt};
+use twincone::report::{Cell, Table, compensate, cut, state, tilt};
 
 fn jobs() -> Vec<PathBuf> {
     let folder = Path::new(env!("CARGO_MANIFEST_DIR")).join("examples");
@@ -88,6 +89,17 @@ fn direct(report: Report, mut setup: Setup, plan: &Plan) -> Table {
             let question = setup.tuning(plan.search.target.unwrap_or(Target::Collinear), plan.search.by);
             let tuned = tune(&question.expect("a question")).expect("an answer");
             tilt::table(&setup, tuned.actuator, &tuned.turns)
+        }
+        Report::State => {
+            let signals = setup.signals();
+            let state = setup.pairs(&signals, plan.search.pair, 1e-3).state().expect("a state");
+            state::tables(&state, &[], &Basis::ALL).swap_remove(0)
+        }
+        Report::Compensate => {
+            let plates = setup.plates(&Catalogue::default(), &[]).expect("materials");
+            let signals = setup.signals();
+            let answers = compensate(&setup.pairs(&signals, plan.search.pair, 1e-3), &plates, false);
+            compensate::table(&answers.expect("plates"))
         }
     }
 }

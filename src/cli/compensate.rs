@@ -1,18 +1,15 @@
 //! `compensate`: which plates, how thick, which way round?
 
-use std::sync::Arc;
-
 use clap::Args as ClapArgs;
-use twincone::job::setup::{Needs, Setup};
-use twincone::optics::Crystal;
-use twincone::pairs::{Question, compensate, half_length};
+use twincone::job::setup::Needs;
+use twincone::pairs::{compensate, half_length};
 use twincone::report::compensate::{table, text};
 use twincone::report::{Answer, Conventions, resolved_job};
 
 use super::failure::Failure;
 use super::options::{ExperimentArgs, add_file, catalogue};
 use super::output::{Outcome, OutputArgs};
-use super::state::{demand_bench, precision};
+use super::state::precision;
 
 /// Options of `compensate`.
 #[derive(Debug, ClapArgs)]
@@ -39,18 +36,12 @@ pub struct Args {
 /// What is missing, wrong or outside a data set's range; no pair, or none that passes.
 pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let setup = args.experiment.setup(output, Needs::ALL)?;
-    demand_bench(&setup, "compensate")?;
-    let materials = materials(args, output, &setup)?;
+    setup.demand_bench("compensate")?;
+    let mut catalogue = catalogue(output, &args.experiment.document()?)?;
+    args.allow.iter().try_for_each(|name| add_file(&mut catalogue, name))?;
+    let materials = setup.plates(&catalogue, &args.allow)?;
     let signals = setup.signals();
-    let question = Question {
-        crystals: &setup.crystals,
-        pump: setup.pump(),
-        signals: &signals,
-        interaction: setup.interaction,
-        bench: &setup.bench,
-        number: usize::from(args.pair),
-        wanted: args.precision,
-    };
+    let question = setup.pairs(&signals, usize::from(args.pair), args.precision);
     let answers = compensate(&question, &materials, args.half_wave)?;
     let rules = half_length(&question)?;
     let mut conventions = Conventions::of_pairs(&setup);
@@ -67,31 +58,4 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         solved: !answers.proposals.is_empty(),
     };
     output.outcome(&answer, None)
-}
-
-/// The allowed materials; a plate of the source's own takes its data set and temperature.
-fn materials(args: &Args, output: &OutputArgs, setup: &Setup) -> Result<Vec<Crystal>, Failure> {
-    let first = &setup.crystals[0];
-    let mut catalogue = catalogue(output, &args.experiment.document()?)?;
-    let mut all = Vec::new();
-    if args.allow.is_empty() {
-        all.push(first.clone());
-    }
-    let default = ["quartz".to_string()];
-    let named = if args.allow.is_empty() { &default[..] } else { &args.allow };
-    for name in named {
-        add_file(&mut catalogue, name)?;
-        let (id, set) = match name.split_once(':') {
-            Some((id, set)) => (id, Some(set)),
-            None => (name.as_str(), None),
-        };
-        if id == first.material.id && set.is_none() {
-            all.push(first.clone());
-            continue;
-        }
-        let mut plate = Crystal::new(Arc::new(catalogue.get(id)?), set)?;
-        plate.reach = first.reach;
-        all.push(plate);
-    }
-    Ok(all)
 }

@@ -17,6 +17,7 @@ use super::failure::Failure;
 use super::options::{ExperimentArgs, catalogue};
 use super::output::{Format, Outcome, OutputArgs};
 use super::progress::Progress;
+use super::state::Choice;
 use super::sweep_file::{Contents, Leftover, SweepFile};
 use super::tilt::By;
 
@@ -26,7 +27,7 @@ pub struct Args {
     /// Job file with a [sweep], or - for standard input
     #[arg(value_name = "JOB", conflicts_with = "job")]
     file: Option<PathBuf>,
-    /// Rows to write: cut, rings, crossings or tilt [default: the job's]
+    /// Rows to write: cut, rings, crossings, tilt, state or compensate [default: the job's]
     #[arg(long, value_name = "REPORT")]
     report: Option<String>,
     /// An axis, repeatable, the last one fastest: KEY=FROM..TO/POINTS, KEY=FROM..TO/STEP or KEY=A,B,C, for example
@@ -44,6 +45,15 @@ pub struct Args {
     /// Report cut: what to solve for
     #[arg(long, value_enum)]
     find: Option<Sought>,
+    /// Reports state and compensate: which pair of crossings
+    #[arg(long, value_name = "N", value_parser = clap::value_parser!(u16).range(1..))]
+    pair: Option<u16>,
+    /// Report state: oe or lab [default: both]
+    #[arg(long, value_enum)]
+    basis: Option<Choice>,
+    /// Report compensate: plates stand between half-wave plates at 45 deg
+    #[arg(long)]
+    half_wave: bool,
     /// Go on with an unfinished file; start where there is none
     #[arg(long, conflicts_with = "restart", requires = "output")]
     resume: bool,
@@ -299,6 +309,15 @@ impl Args {
         }
         if let Some(find) = self.find {
             document.set("--find", "sweep.find", find.name());
+        }
+        if let Some(pair) = self.pair {
+            document.set_raw("--pair", "sweep.pair", &pair.to_string());
+        }
+        if let Some(basis) = self.basis {
+            document.set("--basis", "sweep.basis", basis.name());
+        }
+        if self.half_wave {
+            document.set_raw("--half-wave", "sweep.half_wave", "true");
         }
         Ok(document)
     }

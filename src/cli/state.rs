@@ -1,9 +1,9 @@
 //! `state`: which entangled state comes out?
 
 use clap::Args as ClapArgs;
-use twincone::job::setup::{Needs, Setup};
-use twincone::pairs::Question;
-use twincone::report::state::{Basis, tables, text};
+use twincone::job::setup::Needs;
+use twincone::pairs::Basis;
+use twincone::report::state::{tables, text};
 use twincone::report::{Answer, Conventions, resolved_job};
 
 use super::failure::Failure;
@@ -27,11 +27,21 @@ pub struct Args {
 }
 
 #[derive(Debug, Clone, Copy, clap::ValueEnum)]
-enum Choice {
+pub enum Choice {
     /// The two histories
     Oe,
     /// H and V of each arm
     Lab,
+}
+
+impl Choice {
+    /// As a job names it.
+    pub fn name(self) -> &'static str {
+        match self {
+            Self::Oe => Basis::Histories.name(),
+            Self::Lab => Basis::Lab.name(),
+        }
+    }
 }
 
 /// An error between 1e-9 and 0.1.
@@ -48,23 +58,15 @@ pub fn precision(text: &str) -> Result<f64, String> {
 /// What is missing, wrong or outside a data set's range; no pair, or none that passes.
 pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let setup = args.experiment.setup(output, Needs::ALL)?;
-    demand_bench(&setup, "state")?;
+    setup.demand_bench("state")?;
     let signals = setup.signals();
-    let question = Question {
-        crystals: &setup.crystals,
-        pump: setup.pump(),
-        signals: &signals,
-        interaction: setup.interaction,
-        bench: &setup.bench,
-        number: usize::from(args.pair),
-        wanted: args.precision,
-    };
+    let question = setup.pairs(&signals, usize::from(args.pair), args.precision);
     let state = question.state()?;
     let budget = question.budget(&state)?;
     let bases: &[Basis] = match args.basis {
         Some(Choice::Oe) => &[Basis::Histories],
         Some(Choice::Lab) => &[Basis::Lab],
-        None => &[Basis::Histories, Basis::Lab],
+        None => &Basis::ALL,
     };
     let mut conventions = Conventions::of_pairs(&setup);
     conventions.warn_of_dim_phi(&setup);
@@ -77,24 +79,4 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         solved: true,
     };
     output.outcome(&answer, Some("state"))
-}
-
-/// A length for every crystal, and nothing that this version would leave out silently.
-///
-/// # Errors
-/// What is missing, or not understood.
-pub fn demand_bench(setup: &Setup, command: &str) -> Result<(), Failure> {
-    if !setup.length_given {
-        return Err(Failure::usage(format!(
-            "no length: `{command}` needs that of every crystal; pass --length, for example --length 2mm, or write \
-             crystal.length in the job file"
-        )));
-    }
-    match setup.unread.as_slice() {
-        [] => Ok(()),
-        keys => Err(Failure::usage(format!(
-            "{} is not read by this version; give a width instead (pump.linewidth, filter.width)",
-            keys.join(" and ")
-        ))),
-    }
 }

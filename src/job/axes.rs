@@ -42,7 +42,7 @@ pub struct Range {
 impl Range {
     fn new(from: f64, to: f64, count: u64) -> Self {
         // 14 digits of the larger end: 0.01 and not 0.010000000000000009
-        let digits = 13 - from.abs().max(to.abs()).log10().floor() as i32;
+        let digits = 13_i32.saturating_sub(from.abs().max(to.abs()).log10().floor() as i32);
         let scale = (0..=22).contains(&digits).then(|| 10f64.powi(digits));
         Self { from, to, count, scale }
     }

@@ -346,6 +346,12 @@ pub struct Sweep {
     pub by: Option<Text>,
     #[serde(skip_serializing_if = "Option::is_none")]
     pub find: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub pair: Option<Spanned<u64>>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub basis: Option<Text>,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub half_wave: Option<bool>,
     #[serde(default, skip_serializing_if = "Vec::is_empty")]
     pub axes: Vec<Spanned<Axis>>,
 }

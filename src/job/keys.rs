@@ -50,6 +50,8 @@ pub enum Holds {
     Word(&'static [&'static str]),
     /// true or false.
     Flag,
+    /// A whole number from 1.
+    Number,
 }
 
 /// One key.
@@ -154,7 +156,12 @@ pub const KEYS: &[Key] = &[
     key("compensator.length", Holds::Length(Unit::Mm), "length along the face normal"),
     key("compensator.roll", Holds::Angle, "turn about the arm"),
     key("compensator.tilt", Holds::Angle, "turn that increases theta"),
-    key("sweep.report", Holds::Word(&["cut", "rings", "crossings", "tilt"]), "which rows a sweep writes"),
+    key("compensator.half_wave", Holds::Flag, "whether the plate stands between half-wave plates at 45 deg"),
+    key(
+        "sweep.report",
+        Holds::Word(&["cut", "rings", "crossings", "tilt", "state", "compensate"]),
+        "which rows a sweep writes",
+    ),
     key(
         "sweep.target.crossing",
         Holds::Angle,
@@ -182,6 +189,17 @@ pub const KEYS: &[Key] = &[
         "sweep.find",
         Holds::Word(&["theta", "phi", "poling", "temperature", "pump"]),
         "what report cut solves for; theta where left out",
+    ),
+    key(
+        "sweep.pair",
+        Holds::Number,
+        "which pair of crossings reports state and compensate are about; the first where left out",
+    ),
+    key("sweep.basis", Holds::Word(&["oe", "lab"]), "basis of report state; both where left out"),
+    key(
+        "sweep.half_wave",
+        Holds::Flag,
+        "whether report compensate puts plates between half-wave plates at 45 deg",
     ),
 ];
 
@@ -239,7 +257,7 @@ impl Holds {
                 Ok(length) => Ok((length.mm(), Unit::Mm)),
                 Err(_) => Self::Angle.read(text),
             },
-            Self::Word(_) | Self::Flag => Err("the key holds words, not numbers".into()),
+            Self::Word(_) | Self::Flag | Self::Number => Err("the key holds no quantity".into()),
         }
     }
 
@@ -255,14 +273,14 @@ impl Holds {
             Self::Power => Power::units().collect(),
             Self::Linewidth => Length::units().chain(Frequency::units()).collect(),
             Self::Iris => Angle::units().chain(Length::units()).collect(),
-            Self::Word(_) | Self::Flag => Vec::new(),
+            Self::Word(_) | Self::Flag | Self::Number => Vec::new(),
         }
     }
 
     /// Whether values are numbers.
     #[must_use]
     pub fn is_quantity(self) -> bool {
-        !matches!(self, Self::Word(_) | Self::Flag)
+        !matches!(self, Self::Word(_) | Self::Flag | Self::Number)
     }
 }
 

@@ -5,6 +5,7 @@ use super::description::{Description, Sweep, Text};
 use super::document::{Document, JobError};
 use super::resolve::targets;
 use crate::matching::{Actuator, Find, Target};
+use crate::pairs::Basis;
 use crate::places::nearest;
 
 /// Which rows.
@@ -18,12 +19,22 @@ pub enum Report {
     Crossings,
     /// How far to turn.
     Tilt,
+    /// Which state comes out.
+    State,
+    /// Which plates.
+    Compensate,
 }
 
 impl Report {
     /// All of them, with their names.
-    pub const ALL: [(&'static str, Self); 4] =
-        [("cut", Self::Cut), ("rings", Self::Rings), ("crossings", Self::Crossings), ("tilt", Self::Tilt)];
+    pub const ALL: [(&'static str, Self); 6] = [
+        ("cut", Self::Cut),
+        ("rings", Self::Rings),
+        ("crossings", Self::Crossings),
+        ("tilt", Self::Tilt),
+        ("state", Self::State),
+        ("compensate", Self::Compensate),
+    ];
 
     /// As a job names it.
     #[must_use]
@@ -41,6 +52,12 @@ pub struct Search {
     pub by: Option<Actuator>,
     /// What `cut` solves for.
     pub find: Find,
+    /// Which pair of crossings `state` and `compensate` are about, from 1.
+    pub pair: usize,
+    /// Basis of `state`; `None` for both.
+    pub basis: Option<Basis>,
+    /// Whether `compensate` puts plates between half-wave plates.
+    pub half_wave: bool,
 }
 
 /// A sweep.
@@ -105,6 +122,7 @@ fn search(document: &Document, sweep: &Sweep) -> Result<Search, JobError> {
         ("temperature", Find::Temperature),
         ("pump", Find::Pump),
     ];
+    let bases = [("oe", Basis::Histories), ("lab", Basis::Lab)];
     let target = match &sweep.target {
         Some(written) => {
             let wanted = written.get_ref();
@@ -128,6 +146,13 @@ fn search(document: &Document, sweep: &Sweep) -> Result<Search, JobError> {
         target,
         by: sweep.by.as_ref().map(|text| choice(document, text, &actuators)).transpose()?,
         find: sweep.find.as_ref().map_or(Ok(Find::Theta), |text| choice(document, text, &finds))?,
+        pair: match &sweep.pair {
+            None => 1,
+            Some(number) if (1..=9999).contains(number.get_ref()) => *number.get_ref() as usize,
+            Some(number) => return Err(document.fault(number.span(), "pairs are numbered from 1")),
+        },
+        basis: sweep.basis.as_ref().map(|text| choice(document, text, &bases)).transpose()?,
+        half_wave: sweep.half_wave == Some(true),
     })
 }
 

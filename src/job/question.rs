@@ -4,8 +4,10 @@ use super::document::JobError;
 use super::settle::choose_phi;
 use super::setup::Setup;
 use crate::matching::{Actuator, Design, Find, Interaction, Target, Tuning};
-use crate::material::Optic;
-use crate::quantity::Angle;
+use crate::material::{Catalogue, MaterialError, Optic};
+use crate::optics::Crystal;
+use crate::pairs;
+use crate::quantity::{Angle, Wavelength};
 
 impl Setup {
     /// The cut that gives `target`, or what the cut was given as, or pairs along the pump.
@@ -75,5 +77,60 @@ impl Setup {
             target,
             actuator,
         })
+    }
+
+    /// What state a pair of crossings has; `signals` are those of this setup.
+    #[must_use]
+    pub fn pairs<'a>(&'a self, signals: &'a [Wavelength], number: usize, wanted: f64) -> pairs::Question<'a> {
+        pairs::Question {
+            crystals: &self.crystals,
+            pump: self.pump(),
+            signals,
+            interaction: self.interaction,
+            bench: &self.bench,
+            number,
+            wanted,
+        }
+    }
+
+    /// A length for every crystal, and nothing that this version would leave out silently.
+    ///
+    /// # Errors
+    /// What is missing, or not understood.
+    pub fn demand_bench(&self, command: &str) -> Result<(), JobError> {
+        if !self.length_given {
+            return Err(JobError(format!(
+                "no length: `{command}` needs that of every crystal; pass --length, for example --length 2mm, or write \
+                 crystal.length in the job file"
+            )));
+        }
+        match self.unread.as_slice() {
+            [] => Ok(()),
+            keys => Err(JobError(format!(
+                "{} is not read by this version; give a width instead (pump.linewidth, filter.width)",
+                keys.join(" and ")
+            ))),
+        }
+    }
+
+    /// What plates may be made of: `allow` by id, or the first crystal's own material and quartz. A plate of the first
+    /// crystal's material takes its data set and temperature.
+    ///
+    /// # Errors
+    /// A material or data set that is not known.
+    pub fn plates(&self, catalogue: &Catalogue, allow: &[String]) -> Result<Vec<Crystal>, MaterialError> {
+        let first = &self.crystals[0];
+        let own = first.material.id.as_str();
+        let default = [own.to_string(), "quartz".into()];
+        let named = if allow.is_empty() { &default[..] } else { allow };
+        let plate = |name: &String| {
+            let (id, set) = name.split_once(':').map_or((name.as_str(), None), |(id, set)| (id, Some(set)));
+            if id == own && set.is_none() {
+                return Ok(first.clone());
+            }
+            let plate = Crystal::new(catalogue.shared(id)?, set)?;
+            Ok(Crystal { reach: first.reach, ..plate })
+        };
+        named.iter().map(plate).collect()
     }
 }

@@ -311,7 +311,7 @@ pub(super) fn material(
         Some((id, set)) => (id, Some(set.to_string())),
         None => (&**text.get_ref(), None),
     };
-    let material = catalogue.get(id).map_err(|e| reader.fault(text, &e.to_string()))?;
+    let material = catalogue.shared(id).map_err(|e| reader.fault(text, &e.to_string()))?;
     let dataset = match (&c.dataset, set) {
         (Some(_), Some(_)) => {
             return Err(
@@ -321,7 +321,7 @@ pub(super) fn material(
         (Some(set), None) => Some(set.get_ref().to_string()),
         (None, set) => set,
     };
-    Ok((Arc::new(material), dataset))
+    Ok((material, dataset))
 }
 
 fn given_cut(

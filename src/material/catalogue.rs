@@ -1,5 +1,8 @@
 //! The crystals compiled into the program, and the user's own.
 
+use std::collections::HashMap;
+use std::sync::{Arc, Mutex, PoisonError};
+
 use super::file::File;
 use super::{Fault, Material, MaterialError};
 use crate::places::{nearest, plain_message, point_at};
@@ -66,6 +69,8 @@ pub const TEMPLATE: &str = include_str!("../../data/material-template.toml");
 #[derive(Debug, Default)]
 pub struct Catalogue {
     added: Vec<(String, Material)>,
+    /// Materials that were asked for, by the name they were asked by.
+    shared: Mutex<HashMap<String, Arc<Material>>>,
 }
 
 impl Catalogue {
@@ -97,6 +102,7 @@ impl Catalogue {
     pub fn add_or_replace(&mut self, name: &str, text: &str) -> Result<&Material, MaterialError> {
         let material = read(name, text)?;
         self.added.retain(|(other, _)| other != name);
+        self.shared.get_mut().unwrap_or_else(PoisonError::into_inner).clear();
         self.added.push((name.into(), material));
         Ok(&self.added[self.added.len() - 1].1)
     }
@@ -104,6 +110,21 @@ impl Catalogue {
     /// Ids of all materials, compiled-in ones first.
     pub fn ids(&self) -> impl Iterator<Item = &str> {
         BUILT_IN.iter().map(|(id, _)| *id).chain(self.added.iter().map(|(_, m)| m.id.as_str()))
+    }
+
+    /// As [`Self::get`], read once and shared from then on.
+    ///
+    /// # Errors
+    /// As [`Self::get`].
+    pub fn shared(&self, id: &str) -> Result<Arc<Material>, MaterialError> {
+        // a thread that panicked while it held the lock has left a map that is whole
+        let mut shared = self.shared.lock().unwrap_or_else(PoisonError::into_inner);
+        if let Some(material) = shared.get(id) {
+            return Ok(Arc::clone(material));
+        }
+        let material = Arc::new(self.get(id)?);
+        shared.insert(id.into(), Arc::clone(&material));
+        Ok(material)
     }
 
     /// One material, by id or by the name its file was added under. Only this file is read, so that a single answer does not wait for all of them.

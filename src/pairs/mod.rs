@@ -29,7 +29,7 @@ pub use mixture::{Estimate, Mixture};
 pub use quadrature::Rule;
 pub use solve::{Question, State};
 pub use stack::Stack;
-pub use state::{Amplitude, DensityMatrix, Nearest};
+pub use state::{Amplitude, Basis, DensityMatrix, Nearest};
 
 use crate::frame::Direction;
 use crate::matching::{ConesError, CrossingRow, HistoryName, Photons, Status};
@@ -156,6 +156,22 @@ impl From<ConesError> for PairsError {
         match error {
             ConesError::Material(error) => Self::Material(error),
             ConesError::Description(text) => Self::Description(text),
+        }
+    }
+}
+
+impl From<&PairsError> for Status {
+    fn from(error: &PairsError) -> Self {
+        match error {
+            PairsError::Material(error) => error.into(),
+            // of the histories that were looked at; that there are fewer pairs than the number is no status of theirs
+            PairsError::NoPair { count: 0, status, .. } => *status,
+            PairsError::NoPair { .. }
+            | PairsError::Description(_)
+            | PairsError::NoTensor { .. }
+            | PairsError::NoHistories
+            | PairsError::NothingCollected
+            | PairsError::Alike => Self::Invalid,
         }
     }
 }

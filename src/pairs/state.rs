@@ -2,6 +2,29 @@
 
 use nalgebra::{Complex, Matrix2, Matrix3, Matrix4, SymmetricEigen, Vector4};
 
+/// Which polarizations a state is written in.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Basis {
+    /// Those of the two histories.
+    Histories,
+    /// H and V of each arm.
+    Lab,
+}
+
+impl Basis {
+    /// Both.
+    pub const ALL: [Self; 2] = [Self::Histories, Self::Lab];
+
+    /// As options and tables name it.
+    #[must_use]
+    pub fn name(self) -> &'static str {
+        match self {
+            Self::Histories => "oe",
+            Self::Lab => "lab",
+        }
+    }
+}
+
 /// Complex amplitude.
 pub type Amplitude = Complex<f64>;
 

@@ -28,6 +28,12 @@ pub const COLUMNS: [Column; 11] = [
 #[must_use]
 pub fn table(answers: &Answers) -> Table {
     let mut table = Table::new("compensate", &COLUMNS);
+    rows(answers, &mut table);
+    table
+}
+
+/// The same as rows.
+pub fn rows(answers: &Answers, out: &mut impl Rows) {
     for proposal in &answers.proposals {
         for designed in &proposal.plates {
             let plate = &designed.plate.plate;
@@ -48,10 +54,9 @@ pub fn table(answers: &Answers) -> Table {
             ];
             cells.extend(numbers.map(Cell::from));
             let extrapolated = proposal.state.extrapolated;
-            table.push(&cells, extrapolated, Status::Ok);
+            out.push(&cells, extrapolated, Status::Ok);
         }
     }
-    table
 }
 
 /// For people; `rules` are those of half the length, where there are any.

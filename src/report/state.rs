@@ -5,7 +5,7 @@ use nalgebra::Matrix4;
 use super::angles::{fixed, grid, prose, rounded, signed};
 use super::table::{Cell, Column, Rows, Table, column};
 use crate::job::Setup;
-use crate::pairs::{Amplitude, DensityMatrix, Loss, Opening, State};
+use crate::pairs::{Amplitude, Basis, DensityMatrix, Loss, Opening, State};
 
 /// Columns, without the two that end every table.
 pub const COLUMNS: [Column; 16] = [
@@ -43,23 +43,14 @@ const LOSSES: [Column; 2] = [
     column("loss", "", "of the visibility between diagonal polarizers"),
 ];
 
-/// Which polarizations a state is written in.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub enum Basis {
-    /// Those of the two histories.
-    Histories,
-    /// H and V of each arm.
-    Lab,
+/// A basis as a report names it and takes it.
+trait InReport {
+    fn of(self, state: &State) -> &DensityMatrix;
+    fn kets(self, state: &State) -> [String; 4];
+    fn diagonal(self, state: &State) -> f64;
 }
 
-impl Basis {
-    fn name(self) -> &'static str {
-        match self {
-            Self::Histories => "oe",
-            Self::Lab => "lab",
-        }
-    }
-
+impl InReport for Basis {
     fn of(self, state: &State) -> &DensityMatrix {
         match self {
             Self::Histories => &state.histories,
@@ -105,9 +96,7 @@ fn polarizations(state: &State) -> [[String; 2]; 2] {
 pub fn tables(state: &State, budget: &[Loss], bases: &[Basis]) -> Vec<Table> {
     let mut rows = Table::new("state", &COLUMNS);
     let mut elements = Table::new("density_matrix", &ELEMENTS);
-    for basis in bases {
-        rows.push(&cells(state, *basis), state.extrapolated, state.status);
-    }
+    self::rows(state, bases, &mut rows);
     for basis in [Basis::Histories, Basis::Lab] {
         let kets = basis.kets(state);
         let rho: &Matrix4<Amplitude> = &basis.of(state).0;
@@ -129,6 +118,13 @@ pub fn tables(state: &State, budget: &[Loss], bases: &[Basis]) -> Vec<Table> {
         losses.push(&vec![cause.to_string().into(), (*loss).into()], state.extrapolated, state.status);
     }
     vec![rows, elements, losses]
+}
+
+/// A row for each basis.
+pub fn rows(state: &State, bases: &[Basis], out: &mut impl Rows) {
+    for basis in bases {
+        out.push(&cells(state, *basis), state.extrapolated, state.status);
+    }
 }
 
 fn cells(state: &State, basis: Basis) -> Vec<Cell> {

@@ -20,6 +20,7 @@ use crate::job::setup::SetupError;
 use crate::job::{Document, JobError, Setup};
 use crate::matching::{ConesError, Status};
 use crate::material::Catalogue;
+use crate::pairs::PairsError;
 use crate::report::table::{EXTRAPOLATED, STATUS};
 use setups::Setups;
 
@@ -63,6 +64,12 @@ impl From<JobError> for Fault {
 
 impl From<ConesError> for Fault {
     fn from(error: ConesError) -> Self {
+        Self { status: Status::from(&error), message: error.to_string() }
+    }
+}
+
+impl From<PairsError> for Fault {
+    fn from(error: PairsError) -> Self {
         Self { status: Status::from(&error), message: error.to_string() }
     }
 }

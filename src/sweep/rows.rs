@@ -3,9 +3,11 @@
 use super::Fault;
 use crate::job::Setup;
 use crate::job::plan::{Report, Search};
-use crate::matching::{Cones, Status, Target, Want, cones_with, tune};
+use crate::matching::{Cones, ConesError, Status, Target, Want, cones_with, tune};
+use crate::material::Catalogue;
 use crate::optics::Indices;
-use crate::report::{Column, Lines, Rows as _, cones as report, cut, tilt};
+use crate::pairs::{self, Basis};
+use crate::report::{Column, Lines, Rows as _, compensate, cones as report, cut, state, tilt};
 
 /// Columns of a report, without the two that end every table.
 pub(super) fn columns(report: Report, search: &Search) -> Vec<Column> {
@@ -14,6 +16,8 @@ pub(super) fn columns(report: Report, search: &Search) -> Vec<Column> {
         Report::Rings => report::RINGS.to_vec(),
         Report::Crossings => report::CROSSINGS.to_vec(),
         Report::Tilt => tilt::columns(search.by),
+        Report::State => state::COLUMNS.to_vec(),
+        Report::Compensate => compensate::COLUMNS.to_vec(),
     }
 }
 
@@ -27,6 +31,7 @@ pub(super) fn write(
     report: Report,
     setup: &mut Setup,
     search: &Search,
+    catalogue: &Catalogue,
     indices: &mut Indices,
     out: &mut Lines,
 ) -> Result<(), Fault> {
@@ -35,6 +40,8 @@ pub(super) fn write(
         Report::Rings => write_rings(setup, indices, out),
         Report::Crossings => write_crossings(setup, indices, out),
         Report::Tilt => write_tilt(setup, search, out),
+        Report::State => write_state(setup, search, out),
+        Report::Compensate => write_compensate(setup, search, catalogue, out),
     }
 }
 
@@ -73,5 +80,38 @@ fn write_cut(setup: &Setup, search: &Search, out: &mut Lines) -> Result<(), Faul
 fn write_tilt(setup: &mut Setup, search: &Search, out: &mut Lines) -> Result<(), Fault> {
     let tuned = tune(&setup.tuning(search.target.unwrap_or(Target::Collinear), search.by)?)?;
     tilt::rows(setup, tuned.actuator, &tuned.turns, out);
+    Ok(())
+}
+
+/// Error of a visibility that rows go for.
+const WANTED: f64 = 1e-3;
+
+fn write_state(setup: &Setup, search: &Search, out: &mut Lines) -> Result<(), Fault> {
+    setup.demand_bench("state")?;
+    let state = setup.pairs(&setup.signals(), search.pair, WANTED).state()?;
+    match search.basis {
+        Some(basis) => state::rows(&state, &[basis], out),
+        None => state::rows(&state, &Basis::ALL, out),
+    }
+    Ok(())
+}
+
+fn write_compensate(
+    setup: &Setup,
+    search: &Search,
+    catalogue: &Catalogue,
+    out: &mut Lines,
+) -> Result<(), Fault> {
+    setup.demand_bench("compensate")?;
+    let materials = setup.plates(catalogue, &[]).map_err(ConesError::from)?;
+    let answers =
+        pairs::compensate(&setup.pairs(&setup.signals(), search.pair, WANTED), &materials, search.half_wave)?;
+    if answers.proposals.is_empty() {
+        return Err(Fault {
+            status: Status::NotConverged,
+            message: "no plate of these materials helps".into(),
+        });
+    }
+    compensate::rows(&answers, out);
     Ok(())
 }

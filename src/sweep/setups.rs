@@ -13,7 +13,7 @@ use crate::material::Catalogue;
 use crate::quantity::Angle;
 
 /// Combinations of keys without a handle that are kept; of more, each point reads its own.
-const KEPT: u64 = 4096;
+const KEPT: u64 = 1024;
 
 /// How an axis acts on a setup.
 #[derive(Debug)]
@@ -168,6 +168,11 @@ impl<'a> Setups<'a> {
             }
         }
         Ok(())
+    }
+
+    /// Where materials are looked up.
+    pub fn catalogue(&self) -> &Catalogue {
+        self.catalogue
     }
 
     /// The job that is swept.

@@ -122,6 +122,6 @@ impl Worker<'_> {
         let setup = &mut self.ready[at].1;
         let mut search = plan.search;
         setups.set(plan, point, setup, &mut search)?;
-        rows::write(plan.report, setup, &search, &mut self.indices, &mut self.lines)
+        rows::write(plan.report, setup, &search, setups.catalogue(), &mut self.indices, &mut self.lines)
     }
 }

@@ -415,3 +415,46 @@ fn a_target_that_is_solved_again_at_every_point_is_pointed_out() {
     )
     .answer();
 }
+
+/// Contrast over filters, irises and plates: agreed states of a 2 mm crystal (computed twice, independently).
+#[test]
+fn report_state_sums_at_every_point() {
+    let filters = rows("--report state --basis oe --axis filter.*.width=1nm,3nm,10nm");
+    for (row, contrast) in [0.946, 0.650, 0.156].into_iter().enumerate() {
+        assert_abs_diff_eq!(filters.number(row, "visibility_diagonal"), contrast, epsilon = 0.002);
+    }
+    let both = rows("--filter-width 3nm --report state --axis crystal.length=0.5mm,1mm");
+    assert_eq!(both.column("basis"), ["oe", "lab", "oe", "lab"]);
+    assert_abs_diff_eq!(both.number(0, "visibility_diagonal"), 0.969, epsilon = 0.002);
+    assert_abs_diff_eq!(both.number(2, "visibility_diagonal"), 0.886, epsilon = 0.002);
+    let missed = rows("--filter-width 3nm --report state --axis crystal.tilt=-1.3deg,0deg");
+    assert_eq!(missed.column("status"), ["apart", "ok", "ok"]);
+    let job = format!(
+        "[pump]\nwavelength = \"405 nm\"\n[crystal]\nmaterial = \"bbo\"\ndataset = \"kato-1986\"\ncut = {{ theta = \"42.541 deg\", phi = \"0 deg\" }}\nlength = \"2 mm\"\n[[filter]]\nwidth = \"40 nm\"\n[[compensator]]\nlength = \"1 mm\"\nroll = \"90 deg\"\n[sweep]\nreport = \"state\"\nbasis = \"oe\"\naxes = [ {{ key = \"compensator.length\", values = [\"0.9 mm\", \"1 mm\"] }} ]\n"
+    );
+    let plates = Table::read(&twincone_with(&job, "run -").answer());
+    assert_eq!(plates.column("compensator_length_mm"), ["0.9", "1"]);
+    assert_abs_diff_eq!(plates.number(0, "visibility_diagonal"), 0.943, epsilon = 0.002);
+    assert_abs_diff_eq!(plates.number(1, "visibility_diagonal"), 0.981, epsilon = 0.002);
+    let refusal =
+        twincone("run -m bbo -p 405nm --theta 42.5deg --report state --axis crystal.tilt=0deg,1deg");
+    assert_says(&refusal.stdout, &["invalid"]);
+}
+
+#[test]
+fn report_compensate_designs_at_every_point() {
+    let table = rows("--filter-width 10nm --report compensate --axis crystal.length=1mm,2mm");
+    let of = |point: &str, arm: &str| {
+        (0..table.len()).find(|row| {
+            table.cell(*row, "point") == point
+                && table.cell(*row, "material") == "bbo"
+                && table.cell(*row, "arm") == arm
+        })
+    };
+    for (point, length) in [("0", 1.0), ("1", 2.0)] {
+        let row =
+            of(point, "both").or_else(|| of(point, "a")).expect("a plate of the crystal's own material");
+        assert_abs_diff_eq!(table.number(row, "length_mm"), 0.5 * length, epsilon = 0.1 * length);
+        assert!(table.number(row, "visibility_after") > table.number(row, "visibility_before"));
+    }
+}

@@ -12,7 +12,8 @@ pub struct Table {
 }
 
 /// Columns that hold words.
-const WORDS: [&str; 21] = [
+const WORDS: [&str; 22] = [
+    "crystal_process",
     "crystal_material",
     "crystal_dataset",
     "material",
