@@ -188,6 +188,8 @@ figure { margin: .8rem 0; }
 figure svg { max-width: 100%; height: auto; display: block; }
 pre { font-size: .8em; white-space: pre-wrap; border: 1px solid #777; padding: .5rem; }
 @media (max-width: 640px) {
+  figure { overflow-x: auto; }
+  figure svg { max-width: none; width: 640px; }
   thead { display: none; }
   tr { display: block; border: 1px solid #777; margin: .5rem 0; }
   td { display: block; border: 0; border-bottom: 1px solid #ddd; }
