@@ -102,13 +102,14 @@ pub fn camera(
         if let Ok(ring) = &row.ring {
             let points: Vec<_> =
                 (0..crate::matching::SAMPLES).map(|j| plot.towards(ring.curve.direction(j))).collect();
+            drawing.path(&points, pen("#ffffff", 3.2), true);
             drawing.path(&points, ring_pen(row.polarization, 1.4), true);
         }
     }
     drawing.unclip();
     marks(&mut drawing, &plot, setup, cones);
     for row in &cones.rings {
-        ring_label(&mut drawing, &plot, row);
+        ring_label(&mut drawing, &plot, row, setup.crystals.len());
     }
     for (n, line) in lines.iter().enumerate() {
         drawing.text((LEFT, below + 16.0 * n as f64), SIZE - 1.0, Anchor::Start, line);
@@ -222,7 +223,7 @@ fn marks(drawing: &mut Drawing, plot: &Plot, setup: &Setup, cones: &Cones) {
 }
 
 /// "e 810 nm" beside the point of the ring that lies farthest out and within the frame.
-fn ring_label(drawing: &mut Drawing, plot: &Plot, row: &RingRow) {
+fn ring_label(drawing: &mut Drawing, plot: &Plot, row: &RingRow, crystals: usize) {
     let Ok(ring) = &row.ring else { return };
     if row.status == Status::NoNonlinearity {
         return;
@@ -241,7 +242,8 @@ fn ring_label(drawing: &mut Drawing, plot: &Plot, row: &RingRow) {
     let outermost =
         points.filter(|d| inside(plot.towards(*d))).max_by(|a, b| reach(*a).total_cmp(&reach(*b)));
     let Some(point) = outermost else { return };
-    let text = format!("{} {:.1} nm", row.polarization, row.wavelength.nm());
+    let of = if crystals > 1 { format!(" of crystal {}", row.crystal + 1) } else { String::new() };
+    let text = format!("{} {:.1} nm{of}", row.polarization, row.wavelength.nm());
     // beyond the bright band
     let (x, y) = point.on_screen_mm(crate::quantity::Length::metres(1e-3));
     let (dx, dy) = (x - centre.x, y - centre.y);

@@ -238,7 +238,7 @@ impl Drawing {
     }
 
     /// A label near a point, at the first of many places about it that is free within `frame`; where none is, the one
-    /// that covers least. A thin line leads to labels that stand off.
+    /// that covers least. A thin line leads to labels that stand off; what lies under a label shines through faintly.
     pub fn label(&mut self, point: (f64, f64), size: f64, text: &str, colour: &'static str, frame: Extent) {
         let mut best: Option<(f64, (f64, f64), Anchor, f64)> = None;
         for ring in 0..12 {
@@ -270,6 +270,12 @@ impl Drawing {
         if away > 2.5 * size {
             self.line(point, (at.0, at.1 - 0.35 * size), pen(colour, 0.6));
         }
+        let b = box_of(at, size, anchor, text);
+        self.shape(
+            &[(b.left, b.top), (b.right, b.top), (b.right, b.bottom), (b.left, b.bottom)],
+            "#ffffff",
+            0.75,
+        );
         self.coloured_text(at, size, anchor, text, colour);
     }
 

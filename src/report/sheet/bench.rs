@@ -140,7 +140,7 @@ fn crystal_steps(page: &mut Page, facts: &Facts<'_>, index: usize, crystal: &Cry
         format!("Turn {which} until the reflection of its face goes back into the laser: tilt zero."),
         vec![match zero {
             Some(zero) => format!("Stage reading there: {} deg. If yours differs, correct [stage] zero in the job and print again.", fixed(zero.degrees(), 3)),
-            None => "Write the reading down: ________ deg. With `zero` under [stage] in the job this sheet prints the readings to set.".into(),
+            None => "Write the reading down: ________ deg. Print this sheet again with your reading, `--set stage.zero=3.2deg`, and it names the reading to set.".into(),
         }],
     );
     let tilt = crystal.orientation.tilt;

@@ -119,6 +119,15 @@ impl Page {
     }
 }
 
+/// A sentence in HTML; what stands between backticks is code.
+fn inline(text: &str) -> String {
+    let parts = text.split('`').map(escaped);
+    parts
+        .enumerate()
+        .map(|(n, part)| if n % 2 == 1 { format!("<code>{part}</code>") } else { part })
+        .collect()
+}
+
 fn bullets(out: &mut String, items: &[String], indent: &str) {
     for item in items {
         let _ = writeln!(out, "{indent}- {item}");
@@ -127,12 +136,12 @@ fn bullets(out: &mut String, items: &[String], indent: &str) {
 }
 
 fn block_html(out: &mut String, block: &Block, step: &mut usize) {
-    let items = |all: &[String]| all.iter().map(|i| format!("<li>{}</li>\n", escaped(i))).collect::<String>();
+    let items = |all: &[String]| all.iter().map(|i| format!("<li>{}</li>\n", inline(i))).collect::<String>();
     let _ = match block {
-        Block::Heading(text) => writeln!(out, "<h2>{}</h2>", escaped(text)),
-        Block::Text(text) => writeln!(out, "<p>{}</p>", escaped(text)),
+        Block::Heading(text) => writeln!(out, "<h2>{}</h2>", inline(text)),
+        Block::Text(text) => writeln!(out, "<p>{}</p>", inline(text)),
         Block::Warning(text) => {
-            writeln!(out, "<p class=\"caution\"><strong>Caution.</strong> {}</p>", escaped(text))
+            writeln!(out, "<p class=\"caution\"><strong>Caution.</strong> {}</p>", inline(text))
         }
         Block::List(all) => writeln!(out, "<ul>\n{}</ul>", items(all)),
         Block::Step(text, see) => {
@@ -141,7 +150,7 @@ fn block_html(out: &mut String, block: &Block, step: &mut usize) {
             writeln!(
                 out,
                 "<div class=\"step\"><span class=\"box\" aria-hidden=\"true\"></span><div><strong>{step}.</strong> {}{see}</div></div>",
-                escaped(text)
+                inline(text)
             )
         }
         Block::Table(header, rows) => writeln!(out, "{}", table_html(header, rows)),
@@ -188,6 +197,8 @@ figure { margin: .8rem 0; }
 figure svg { max-width: 100%; height: auto; display: block; }
 pre { font-size: .8em; white-space: pre-wrap; border: 1px solid #777; padding: .5rem; }
 @media (max-width: 640px) {
+  figure { overflow-x: auto; }
+  figure svg { max-width: none; width: 640px; }
   thead { display: none; }
   tr { display: block; border: 1px solid #777; margin: .5rem 0; }
   td { display: block; border: 0; border-bottom: 1px solid #ddd; }
