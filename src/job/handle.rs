@@ -109,7 +109,7 @@ impl Handle {
             }
             What::Screen => {
                 let distance = length(value, unit);
-                limits::positive(distance, "the screen distance")?;
+                limits::positive(distance, "the screen distance", &distance)?;
                 setup.screen = distance;
             }
             _ => {}
@@ -151,12 +151,12 @@ impl Handle {
             }
             What::Length => {
                 let length = length(value, unit);
-                limits::positive(length, "the crystal length")?;
+                limits::positive(length, "the crystal length", &length)?;
                 crystal.length = length;
             }
             What::Poling => {
                 let period = length(value, unit);
-                limits::positive(period, "the poling period")?;
+                limits::positive(period, "the poling period", &period)?;
                 crystal.poling = Some(period);
             }
             What::Temperature => {
@@ -183,8 +183,9 @@ fn signals_stand_alone(setup: &Setup) -> bool {
 
 fn wavelength(nm: f64, what: &str) -> Result<Wavelength, String> {
     let wavelength = metres(nm, Unit::Nm);
-    limits::wavelength(Wavelength::metres(wavelength), what)?;
-    Ok(Wavelength::metres(wavelength))
+    let wavelength = Wavelength::metres(wavelength);
+    limits::wavelength(wavelength, what, &wavelength)?;
+    Ok(wavelength)
 }
 
 fn length(value: f64, unit: Unit) -> Length {

@@ -1,5 +1,7 @@
 //! What numbers a description may hold: the same for values that are read from a file and for those a sweep sets.
 
+use std::fmt::Display;
+
 use nalgebra::Vector3;
 
 use crate::frame::Orientation;
@@ -15,15 +17,16 @@ fn all_right(fine: bool, otherwise: impl FnOnce() -> String) -> Limit {
     if fine { Ok(()) } else { Err(otherwise()) }
 }
 
-pub(super) fn positive(length: Length, what: &str) -> Limit {
-    all_right(length.si() > 0.0, || format!("{what} must be positive, not {length}"))
+/// `shown` is the value as it was typed.
+pub(super) fn positive(length: Length, what: &str, shown: &dyn Display) -> Limit {
+    all_right(length.si() > 0.0, || format!("{what} must be positive, not {shown}"))
 }
 
 /// Lengths far outside any crystal's transparency are slips of the unit; they would also make wavenumbers infinite.
-pub(super) fn wavelength(wavelength: Wavelength, what: &str) -> Limit {
-    all_right(wavelength.si() > 0.0, || format!("{what} must be positive, not {wavelength}"))?;
+pub(super) fn wavelength(wavelength: Wavelength, what: &str, shown: &dyn Display) -> Limit {
+    all_right(wavelength.si() > 0.0, || format!("{what} must be positive, not {shown}"))?;
     all_right((1e-8..=1e-2).contains(&wavelength.si()), || {
-        format!("{what}, {wavelength}, is not a wavelength of light: look at the unit")
+        format!("{what}, {shown}, is not a wavelength of light: look at the unit")
     })
 }
 

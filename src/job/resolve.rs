@@ -50,7 +50,7 @@ impl Reader<'_> {
         let length = self.maybe::<Length>(text)?;
         match (text, length) {
             (Some(text), Some(length)) => {
-                self.within(text, limits::positive(length, what))?;
+                self.within(text, limits::positive(length, what, text.get_ref()))?;
                 Ok(Some(length))
             }
             _ => Ok(None),
@@ -64,7 +64,7 @@ impl Reader<'_> {
 
     pub(super) fn wavelength(&self, text: &Text, what: &str) -> Result<Wavelength, SetupError> {
         let wavelength: Wavelength = self.read(text)?;
-        self.within(text, limits::wavelength(wavelength, what))?;
+        self.within(text, limits::wavelength(wavelength, what, text.get_ref()))?;
         Ok(wavelength)
     }
 
