@@ -254,6 +254,13 @@ pub fn tidy(x: f64) -> f64 {
     if x == 0.0 || !x.is_finite() {
         return if x == 0.0 { 0.0 } else { x };
     }
+    // most numbers have few decimals, and need no logarithm to be recognised
+    if (1e-3..1e6).contains(&x.abs()) {
+        let rounded = (x * 1e6).round() / 1e6;
+        if (rounded - x).abs() <= 4.0 * f64::EPSILON * x.abs() {
+            return rounded;
+        }
+    }
     let digits = 13 - x.abs().log10().floor() as i32;
     if !(-300..=22).contains(&digits) {
         return x;

@@ -252,6 +252,17 @@ impl Curve {
         (0..self.count).map(move |j| fan.place(self.samples[j], self.azimuth_cos_sin(j)).q)
     }
 
+    /// Whether every partner can leave the crystal.
+    pub(super) fn partners_leave(&self, mismatch: &Mismatch) -> bool {
+        // no tangential wave vector is further from the axis' own than k0 times the chord 2 sin(psi/2)
+        let widest = self.half_tangents().iter().copied().fold(0.0, f64::max);
+        let chord = 2.0 * widest / (1.0 + widest * widest).sqrt();
+        let axis = mismatch.on_face(&self.frame.axis);
+        let idler = mismatch.pump() - Tangential { u: axis.x, v: axis.y };
+        let far = idler.u.hypot(idler.v) + mismatch.k0_signal() * chord;
+        far < mismatch.k0_idler() || self.tangential(mismatch).all(|q| mismatch.idler_leaves(q))
+    }
+
     /// The point of the curve at an azimuth about its axis (radians); `mismatch` must be the one it was traced with.
     #[must_use]
     pub fn at(&self, mismatch: &Mismatch, phi: f64) -> Option<Direction> {

@@ -52,29 +52,23 @@ fn smallest([xx, xy, xz, yy, yz, zz]: [f64; 6], towards: &Vector3<f64>) -> Vecto
     if axis.dot(towards) < 0.0 { -axis } else { axis }
 }
 
-/// Circle with the least sum of squared distances to the points, by Newton; few of them give the start.
+/// Circle with the least sum of squared distances to the points, by Newton.
 pub(super) fn circle(points: &[Vector2<f64>]) -> (Vector2<f64>, f64) {
-    let third = || points.iter().step_by(3);
-    let count = third().count() as f64;
-    let mut centre = third().sum::<Vector2<f64>>() / count;
-    let mut radius = third().map(|p| (p - centre).norm()).sum::<f64>() / count;
-    improve(&mut centre, &mut radius, third);
-    improve(&mut centre, &mut radius, || points.iter());
+    let count = points.len() as f64;
+    let mut centre = points.iter().sum::<Vector2<f64>>() / count;
+    let mut radius = points.iter().map(|p| (p - centre).norm()).sum::<f64>() / count;
+    improve(&mut centre, &mut radius, points);
     (centre, radius)
 }
 
 /// Newton steps on sum (|p - c| - R)^2 until the circle stays.
-fn improve<'a, I: Iterator<Item = &'a Vector2<f64>>>(
-    centre: &mut Vector2<f64>,
-    radius: &mut f64,
-    points: impl Fn() -> I,
-) {
+fn improve(centre: &mut Vector2<f64>, radius: &mut f64, points: &[Vector2<f64>]) {
     for _ in 0..50 {
         // with e = (p - c)/|p - c| and r = |p - c| - R:  gradient -sum r (e, 1);
         // Hessian sum [(1 - R/|p - c|) I + R/|p - c| e e^T, e; e^T, 1]
         let mut right = Vector3::zeros();
         let (mut xx, mut xy, mut yy, mut x, mut y, mut n) = (0.0, 0.0, 0.0, 0.0, 0.0, 0.0);
-        for p in points() {
+        for p in points {
             let from = p - *centre;
             let distance = from.norm().max(f64::MIN_POSITIVE);
             let inverse = 1.0 / distance;

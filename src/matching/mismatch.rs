@@ -301,6 +301,10 @@ impl Mismatch {
     pub(crate) fn k0_signal(&self) -> f64 {
         self.k0_signal
     }
+
+    pub(super) fn k0_idler(&self) -> f64 {
+        self.k0_idler
+    }
 }
 
 /// External direction of a tangential wave vector, in the lab.

@@ -39,6 +39,8 @@ pub struct Ring {
     pub filled: bool,
     /// `Ok`, or `TotalReflection` where some partners cannot leave the crystal.
     pub status: Status,
+    /// Every how many samples means over the azimuth need.
+    stride: usize,
 }
 
 /// All rings of the signal of a process, for a crystal of `length` (m).
@@ -113,7 +115,7 @@ impl Ring {
         let half_width = 2.0 * HALF_MAXIMUM / length;
         let middle = mismatch.towards(curve.frame.axis).map(|at| at.value);
         let filled = middle.is_none_or(|value| value >= -half_width);
-        let partners_leave = curve.tangential(mismatch).all(|q| mismatch.idler_leaves(q));
+        let partners_leave = curve.partners_leave(mismatch);
         let stride = stride(&curve);
         Ok(Self {
             axis: Direction::new(Lab(curve.frame.axis)),
@@ -126,6 +128,7 @@ impl Ring {
                 .and_then(|middle| thickness(mismatch, &curve, [half_width, middle], stride)),
             filled,
             status: if partners_leave { Status::Ok } else { Status::TotalReflection },
+            stride,
             curve,
         })
     }
@@ -133,12 +136,13 @@ impl Ring {
     /// The circle that fits the ring best on a screen across the pump: centre and radius in units of the distance.
     #[must_use]
     pub fn circle(&self) -> (Vector2<f64>, f64) {
-        let points: [Vector2<f64>; SAMPLES] = std::array::from_fn(|j| {
-            let d = self.curve.vector(j);
-            let scale = 1.0 / d.z;
-            Vector2::new(d.x * scale, d.y * scale)
-        });
-        fit::circle(&points)
+        let mut points = [Vector2::zeros(); SAMPLES];
+        let points = &mut points[..SAMPLES / self.stride];
+        for (k, point) in points.iter_mut().enumerate() {
+            let d = self.curve.vector(k * self.stride);
+            *point = d.xy() / d.z;
+        }
+        fit::circle(points)
     }
 }
 

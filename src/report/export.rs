@@ -18,45 +18,69 @@ pub struct Lines {
     status: Status,
 }
 
-/// Writing to memory cannot fail.
-const MEMORY: &str = "memory takes every field";
-
-/// Rows whose first fields repeat.
+/// Rows whose first fields repeat; fields are quoted where commas, quotes or line breaks stand in them (RFC 4180).
+#[derive(Default)]
 struct Records {
-    writer: csv::Writer<Vec<u8>>,
-    lead: csv::ByteRecord,
+    bytes: Vec<u8>,
+    /// The first fields as they are written.
+    lead: Vec<u8>,
     begun: bool,
 }
 
 impl Records {
-    fn field(&mut self, field: &[u8]) {
-        if !self.begun {
+    /// Digits, or words that need no quotes.
+    fn plain(&mut self, field: &[u8]) {
+        self.next();
+        self.bytes.extend_from_slice(field);
+    }
+
+    fn words(&mut self, field: &str) {
+        self.next();
+        push_quoted(&mut self.bytes, field);
+    }
+
+    fn next(&mut self) {
+        if self.begun {
+            self.bytes.push(b',');
+        } else {
             self.begun = true;
-            for field in &self.lead {
-                self.writer.write_field(field).expect(MEMORY);
-            }
+            self.bytes.extend_from_slice(&self.lead);
         }
-        self.writer.write_field(field).expect(MEMORY);
     }
 
     fn end(&mut self) {
-        self.writer.write_record(None::<&[u8]>).expect(MEMORY);
+        self.bytes.push(b'\n');
         self.begun = false;
+    }
+}
+
+fn push_quoted(bytes: &mut Vec<u8>, field: &str) {
+    if field.bytes().any(|b| matches!(b, b',' | b'"' | b'\n' | b'\r')) {
+        bytes.push(b'"');
+        bytes.extend_from_slice(field.replace('"', "\"\"").as_bytes());
+        bytes.push(b'"');
+    } else {
+        bytes.extend_from_slice(field.as_bytes());
     }
 }
 
 impl Default for Lines {
     fn default() -> Self {
-        let writer = csv::WriterBuilder::new().flexible(true).from_writer(Vec::new());
-        let rows = Records { writer, lead: csv::ByteRecord::new(), begun: false };
-        Self { rows, digits: zmij::Buffer::new(), text: String::new(), status: Status::Ok }
+        Self {
+            rows: Records::default(),
+            digits: zmij::Buffer::new(),
+            text: String::new(),
+            status: Status::Ok,
+        }
     }
 }
 
 impl Lines {
     /// The names of columns, as a row.
     pub fn header<'c>(&mut self, columns: impl IntoIterator<Item = &'c str>) {
-        self.rows.writer.write_record(columns).expect(MEMORY);
+        self.rows.lead.clear();
+        columns.into_iter().for_each(|name| self.rows.words(name));
+        self.rows.end();
     }
 
     /// Every row begins with these values from now on.
@@ -66,10 +90,11 @@ impl Lines {
         for value in values {
             match value {
                 Lead::Number(value) => {
-                    self.rows.lead.push_field(digits(&mut self.digits, value).as_bytes());
+                    self.rows.lead.extend_from_slice(digits(&mut self.digits, value).as_bytes());
                 }
-                Lead::Text(text) => self.rows.lead.push_field(text.as_bytes()),
+                Lead::Text(text) => push_quoted(&mut self.rows.lead, text),
             }
+            self.rows.lead.push(b',');
         }
     }
 
@@ -82,7 +107,7 @@ impl Lines {
     /// The bytes so far, which are taken out.
     #[must_use]
     pub fn take(&mut self) -> Vec<u8> {
-        std::mem::take(self).rows.writer.into_inner().expect(MEMORY)
+        std::mem::take(&mut self.rows.bytes)
     }
 }
 
@@ -98,7 +123,7 @@ pub enum Lead<'a> {
 impl Rows for Lines {
     fn number(&mut self, value: f64) {
         if value.is_finite() {
-            self.rows.field(digits(&mut self.digits, value).as_bytes());
+            self.rows.plain(digits(&mut self.digits, value).as_bytes());
         } else {
             self.empty();
         }
@@ -112,20 +137,20 @@ impl Rows for Lines {
         self.text.clear();
         // a String takes every character
         let _ = write!(self.text, "{text}");
-        self.rows.field(self.text.as_bytes());
+        self.rows.words(&self.text);
     }
 
     fn flag(&mut self, flag: bool) {
-        self.rows.field(if flag { b"true" } else { b"false" });
+        self.rows.plain(if flag { b"true" } else { b"false" });
     }
 
     fn empty(&mut self) {
-        self.rows.field(b"");
+        self.rows.plain(b"");
     }
 
     fn end(&mut self, extrapolated: bool, status: Status) {
         self.flag(extrapolated);
-        self.rows.field(status.name().as_bytes());
+        self.rows.plain(status.name().as_bytes());
         self.rows.end();
         if self.status == Status::Ok {
             self.status = status;
@@ -191,6 +216,22 @@ fn value(cell: &Cell) -> Value {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    #[test]
+    fn words_are_quoted_where_they_must_be() {
+        let mut lines = Lines::default();
+        lines.lead([Lead::Number(3.0), Lead::Text("a,b")]);
+        for text in ["plain -> text", "with \"quotes\"", "two\nlines", ""] {
+            lines.words(text);
+        }
+        lines.end(false, Status::Ok);
+        let bytes = lines.take();
+        let mut reader = csv::ReaderBuilder::new().has_headers(false).from_reader(bytes.as_slice());
+        let row = reader.records().next().expect("a row").expect("CSV");
+        let fields: Vec<&str> = row.iter().collect();
+        let expected = ["3", "a,b", "plain -> text", "with \"quotes\"", "two\nlines", "", "false", "ok"];
+        assert_eq!(fields, expected);
+    }
 
     #[test]
     fn numbers_read_back_exactly() {
