@@ -335,7 +335,11 @@ fn crossing_rows(first: &History<'_>, second: &History<'_>, rows: &mut Vec<Cross
         rows.push(missing_row(first, second, (m1, ones), (m2, twos)));
         return;
     }
-    let dark = is_dark(first, ones.iter()) || is_dark(second, twos.iter());
+    // the same pairs with their photons renamed are as bright
+    let renamed = first.name.crystal == second.name.crystal
+        && first.source.emission.photons.degenerate()
+        && second.roles == first.roles.exchanged();
+    let dark = is_dark(first, ones.iter()) || !renamed && is_dark(second, twos.iter());
     let from = rows.len();
     let mut number = rows.iter().filter_map(|r| r.pair).max().unwrap_or(0);
     for (crossing, status) in points {
