@@ -2,6 +2,7 @@
 
 use std::fs::File;
 use std::io::{self, BufRead as _, BufReader, Read, Seek as _, SeekFrom};
+use std::ops::Range;
 use std::path::{Path, PathBuf};
 
 use clap::Args as ClapArgs;
@@ -14,7 +15,7 @@ use super::sweep_file::{Contents, Leftover, SweepFile, differences, meta_path, p
 /// Options of `join`.
 #[derive(Debug, ClapArgs)]
 pub struct Args {
-    /// The file to write, as it was named with --output: for rows.csv the parts rows.1-of-8.csv and so on are joined
+    /// The file to write, as it was named with --output: for rows.csv the parts rows.001-of-008.csv and so on are joined
     #[arg(value_name = "OUTPUT")]
     rows: PathBuf,
 }
@@ -51,6 +52,9 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     Ok(Outcome::written())
 }
 
+/// More parts are not looked for.
+pub const MOST_PARTS: u64 = 1_000_000;
+
 /// The parts of a file, in order: all of them, of one sharing-out.
 fn find(rows: &Path) -> Result<Vec<PathBuf>, Failure> {
     let dir = match rows.parent() {
@@ -65,8 +69,14 @@ fn find(rows: &Path) -> Result<Vec<PathBuf>, Failure> {
         let name = entry.file_name();
         let numbers = name.to_str().and_then(|n| n.strip_prefix(stem)?.strip_prefix('.'));
         let numbers = numbers.and_then(|n| n.strip_suffix(".unfinished").unwrap_or(n).strip_suffix(".csv"));
-        let of = numbers.and_then(|n| n.split_once("-of-")).and_then(|(_, of)| of.parse().ok());
-        if let Some(of) = of.filter(|of| !sharings.contains(of)) {
+        let numbers = numbers.and_then(|n| n.split_once("-of-"));
+        let numbers =
+            numbers.and_then(|(part, of)| Some((part.parse::<u64>().ok()?, of.parse::<u64>().ok()?)));
+        if let Some((part, of)) = numbers
+            && (1..=of).contains(&part)
+            && of <= MOST_PARTS
+            && !sharings.contains(&of)
+        {
             sharings.push(of);
         }
     }
@@ -127,6 +137,7 @@ impl Part {
             text.parse().map_err(|_| foreign(path, &format!("{} is damaged", beside.display())))?;
         let points = meta.get("points").and_then(toml::Value::as_integer).and_then(|n| u64::try_from(n).ok());
         let points = points
+            .filter(|count| *count > 0)
             .ok_or_else(|| foreign(path, "the file beside it does not say how many points there are"))?;
         let mut header = String::new();
         let file = File::open(path).map_err(|e| reading(path, &e))?;
@@ -150,8 +161,8 @@ impl Part {
             ));
         }
         let points = Slice { part, of }.points(self.points);
-        let ends = self.ends().map_err(|e| reading(&self.path, &e))?;
-        if ends != Some((points.start, points.end - 1)) {
+        let whole = self.holds(points.clone()).map_err(|e| reading(&self.path, &e))?;
+        if !whole {
             return Err(foreign(
                 &self.path,
                 &format!(
@@ -164,21 +175,24 @@ impl Part {
         Ok(())
     }
 
-    /// First and last point of the rows; `None` where the last row is not whole.
-    fn ends(&self) -> io::Result<Option<(u64, u64)>> {
-        const TAIL: u64 = 1 << 16;
-        let mut file = File::open(&self.path)?;
-        let length = file.metadata()?.len();
-        let mut head = vec![0; 64];
-        file.seek(SeekFrom::Start(self.header.len() as u64))?;
-        let read = file.read(&mut head)?;
-        let from = length.saturating_sub(TAIL);
-        file.seek(SeekFrom::Start(from))?;
-        let mut tail = Vec::new();
-        file.read_to_end(&mut tail)?;
-        let whole = tail.strip_suffix(b"\n");
-        let last = whole.map(|t| t.iter().rposition(|b| *b == b'\n').map_or(t, |at| &t[at + 1..]));
-        Ok(point_of(&head[..read]).zip(last.and_then(point_of)))
+    /// Whether the rows hold these points, all of them and in order, and the last row is whole.
+    fn holds(&self, points: Range<u64>) -> io::Result<bool> {
+        let mut rows = BufReader::with_capacity(1 << 20, File::open(&self.path)?);
+        let mut line = Vec::new();
+        rows.read_until(b'\n', &mut line)?;
+        let mut next = points.start;
+        loop {
+            line.clear();
+            if rows.read_until(b'\n', &mut line)? == 0 {
+                return Ok(next == points.end);
+            }
+            let point = point_of(&line).filter(|_| line.ends_with(b"\n"));
+            match point {
+                Some(point) if point == next => next += 1,
+                Some(point) if point + 1 == next && next > points.start => {}
+                _ => return Ok(false),
+            }
+        }
     }
 
     fn copy(&self, out: &mut SweepFile) -> Result<(), Failure> {

@@ -45,7 +45,7 @@ const LONG: &str = "Which crystal to order, how to tilt it and where the photon 
 down-conversion in birefringent crystals, from wave optics, with refraction at tilted faces treated exactly.";
 
 const AFTER: &str = "Quantities carry a unit: 405nm, 0.5deg, \"2 mm\", 22degC. Angles are outside the crystal unless called inside.
-Exit status: 0 answered; 1 there is no solution; 2 the command line or job is wrong; 3 the data do not reach that far; 4 reading or writing failed.
+Exit status: 0 answered; 1 there is no solution; 2 the command line or job is wrong; 3 the data do not reach that far; 4 reading or writing failed; 130 stopped by Ctrl-C.
 Violet and ultraviolet lasers harm eyes and skin: local rules and the laser safety officer decide how they are used.";
 
 #[derive(Debug, Subcommand)]

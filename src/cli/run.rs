@@ -10,10 +10,13 @@ use std::time::{Duration, Instant};
 use clap::Args as ClapArgs;
 use rayon::prelude::*;
 use twincone::job::Document;
+use twincone::job::plan::Report;
+use twincone::report::Conventions;
 use twincone::sweep::{Piece, Slice, Sweep, Tally, Worker, meta};
 
 use super::cut::{Sought, TargetArgs};
 use super::failure::Failure;
+use super::join::MOST_PARTS;
 use super::options::{ExperimentArgs, catalogue};
 use super::output::{Format, Outcome, OutputArgs};
 use super::progress::Progress;
@@ -81,7 +84,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let slice = args.part.as_deref().map_or(Ok(Slice::WHOLE), |text| part(text, sweep.count()))?;
     let target = output.sweep_target()?.map(|path| slice.file(path));
     if !output.quiet {
-        sweep.warnings().iter().for_each(|warning| output.warn(warning));
+        warnings(&sweep).iter().for_each(|warning| output.warn(warning));
     }
     let points = slice.points(sweep.count());
     let header = sweep.header();
@@ -103,11 +106,11 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     };
     let from = match &mut sink {
         Sink::File(file) => file.next,
-        Sink::Pipe(_) => {
-            sink.write(&header)?;
-            points.start
-        }
+        Sink::Pipe(_) => points.start,
     };
+    if matches!(sink, Sink::Pipe(_)) && sink.write(&header)? == Taken::Closed {
+        return Ok(Outcome::written());
+    }
     let left = from..points.end;
     let progress = Progress::new(points.end - points.start, from - points.start, output.quiet);
     let threads = rayon::ThreadPoolBuilder::new().num_threads(output.threads.map_or(0, usize::from));
@@ -121,8 +124,31 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     }
     if progress.is_shown() {
         super::output::to_stderr(&summary(&tally));
+    } else if let (Some(why), false) = (never(&tally), output.quiet) {
+        output.warn(&why);
     }
     Ok(Outcome::written())
+}
+
+/// What a person may not expect of the sweep, and of the crystals of its first point.
+fn warnings(sweep: &Sweep<'_>) -> Vec<String> {
+    let about_pairs = matches!(sweep.report(), Report::State | Report::Compensate);
+    let conventions = sweep.first_setup().map(|setup| match about_pairs {
+        true => Conventions::of_pairs(&setup),
+        false => Conventions::of(&setup),
+    });
+    let mut all = sweep.warnings();
+    // rows say for themselves which of them are extrapolated
+    let general = |warning: &String| !warning.starts_with("extrapolated");
+    all.extend(conventions.map(|c| c.warnings).unwrap_or_default().into_iter().filter(general));
+    all
+}
+
+/// Why, where no point can be.
+fn never(tally: &Tally) -> Option<String> {
+    let (point, why) = tally.first_fault.as_ref()?;
+    let all_invalid = tally.points.keys().all(|status| *status == "invalid");
+    all_invalid.then(|| format!("no point can be; the first, {point}: {why}"))
 }
 
 /// "1000 points: 990 ok, 10 apart".
@@ -174,6 +200,7 @@ fn listen() {
         if STOP.swap(true, Ordering::Relaxed) {
             std::process::exit(i32::from(STOPPED));
         }
+        super::output::to_stderr("stopping after the points under way; once more ends at once\n");
     });
 }
 
@@ -264,7 +291,7 @@ fn part(text: &str, points: u64) -> Result<Slice, Failure> {
         || Failure::usage(format!("--part {text}: write K/N, part K of N, with K from 1 to N, such as 3/40"));
     let (part, of) = text.split_once('/').ok_or_else(bad)?;
     let (part, of): (u64, u64) = (part.parse().map_err(|_| bad())?, of.parse().map_err(|_| bad())?);
-    if part == 0 || part > of || of > 1_000_000 {
+    if part == 0 || part > of || of > MOST_PARTS {
         return Err(bad());
     }
     if of > points {

@@ -63,6 +63,10 @@ impl SweepFile {
     /// Another run, leftovers of another job, or a file that cannot be written.
     pub fn open(target: &Path, contents: &Contents<'_>, leftover: Leftover) -> Result<Option<Self>, Failure> {
         let unfinished = unfinished_path(target);
+        if let Some(taken) = [target.to_path_buf(), meta_path(target)].iter().find(|path| path.is_dir()) {
+            let message = format!("cannot write {}: it is a folder; name another file", taken.display());
+            return Err(Failure { status: 4, message });
+        }
         if leftover == Leftover::Resume && !unfinished.exists() && target.exists() {
             settle_names(target).map_err(|e| file_trouble(target, &e))?;
             compare(target, contents.meta)?;
@@ -85,7 +89,7 @@ impl SweepFile {
                 Failure::usage(format!("{shown} does not hold rows of this sweep; begin anew with --restart"))
             })?;
         }
-        let begun = || -> io::Result<()> {
+        let mut begin = || -> io::Result<()> {
             file.set_len(keep)?;
             file.seek(SeekFrom::End(0))?;
             if keep == 0 {
@@ -94,8 +98,7 @@ impl SweepFile {
             }
             Ok(())
         };
-        let mut begun = begun;
-        begun().map_err(|e| file_trouble(&unfinished, &e))?;
+        begin().map_err(|e| file_trouble(&unfinished, &e))?;
         Ok(Some(Self { file, target: target.into(), next }))
     }
 
@@ -218,7 +221,7 @@ pub fn differences(old: &str, new: &str) -> String {
     if keys.len() > SHOWN {
         shown.push(format!("and {} more keys", keys.len() - SHOWN));
     }
-    if shown.is_empty() { "its columns or data sets differ".into() } else { shown.join("; ") }
+    if shown.is_empty() { "its data sets or material files differ".into() } else { shown.join("; ") }
 }
 
 fn flatten(path: &str, value: &toml::Value, out: &mut Vec<(String, String)>) {

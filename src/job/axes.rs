@@ -2,7 +2,7 @@
 
 use toml::Spanned;
 
-use super::description;
+use super::description::{self, Description};
 use super::document::{Document, JobError};
 use super::keys::{Holds, KeyPath, Unit};
 use crate::places::nearest;
@@ -162,18 +162,17 @@ impl Grid {
     ///
     /// # Errors
     /// What is wrong with an axis, with its place.
-    pub(super) fn read(
-        document: &Document,
-        written: &[Spanned<description::Axis>],
-    ) -> Result<Self, JobError> {
+    pub(super) fn read(document: &Document, description: &Description) -> Result<Self, JobError> {
+        let names: Vec<Option<&str>> =
+            description.crystal.iter().map(|c| c.get_ref().name.as_ref().map(|n| &**n.get_ref())).collect();
+        let written = description.sweep.as_ref().map_or(&[][..], |sweep| &sweep.axes);
         let mut grid = Self::default();
         let mut points: u64 = 1;
         for axis in written {
-            let dimension = dimension(document, axis)?;
+            let dimension = dimension(document, axis, &names)?;
             for new in &dimension.axes {
-                if grid.axes().any(|old| old.path.typed == new.path.typed) {
-                    let message = format!("`{}` is an axis twice; leave one out", new.path.typed);
-                    return Err(document.fault(axis.span(), &message));
+                if let Some(old) = grid.axes().find(|old| old.path.overrides(&new.path, &names)) {
+                    return Err(document.fault(axis.span(), &twice(old, new)));
                 }
             }
             // beyond this doubles no longer tell points apart, and no computer lives long enough
@@ -189,7 +188,19 @@ impl Grid {
     }
 }
 
-fn dimension(document: &Document, written: &Spanned<description::Axis>) -> Result<Dimension, JobError> {
+/// Two axes of which one undoes the other.
+fn twice(old: &Axis, new: &Axis) -> String {
+    match old.path.typed == new.path.typed {
+        true => format!("`{}` is an axis twice; leave one out", new.path.typed),
+        false => format!("`{}` and `{}` set the same thing; leave one out", old.path.typed, new.path.typed),
+    }
+}
+
+fn dimension(
+    document: &Document,
+    written: &Spanned<description::Axis>,
+    names: &[Option<&str>],
+) -> Result<Dimension, JobError> {
     let axis = written.get_ref();
     if axis.together.is_empty() {
         let axis = read_axis(document, written)?;
@@ -216,9 +227,8 @@ fn dimension(document: &Document, written: &Spanned<description::Axis>) -> Resul
             );
             return Err(document.fault(inner.span(), &message));
         }
-        if axes.iter().any(|old| old.path.typed == new.path.typed) {
-            let message = format!("`{}` is an axis twice; leave one out", new.path.typed);
-            return Err(document.fault(inner.span(), &message));
+        if let Some(old) = axes.iter().find(|old| old.path.overrides(&new.path, names)) {
+            return Err(document.fault(inner.span(), &twice(old, &new)));
         }
         axes.push(new);
     }
@@ -233,7 +243,7 @@ fn read_axis(document: &Document, written: &Spanned<description::Axis>) -> Resul
         return Err(fault("the axis has no key; write key = \"crystal.tilt\" or another key of the job"));
     };
     let path = KeyPath::find(key.get_ref()).map_err(|why| document.fault(key.span(), &why))?;
-    if path.key.path == "title" || path.key.path == "crystal.name" || path.key.path == "sweep.report" {
+    if !path.key.can_be_swept() {
         return Err(document.fault(key.span(), &format!("`{}` cannot be swept", path.typed)));
     }
     let reader = Reader { document, holds: path.key.holds };
@@ -283,6 +293,12 @@ impl Reader<'_> {
     /// One of the words that the key holds.
     fn word(&self, text: &description::Text) -> Result<String, JobError> {
         let word = text.get_ref().to_string();
+        // rows are lines
+        if word.chars().any(char::is_control) {
+            return Err(self
+                .document
+                .fault(text.span(), "a value of an axis stands on one line; take the line break out"));
+        }
         let known: &[&str] = match self.holds {
             Holds::Word(known) => known,
             _ => &["true", "false"],

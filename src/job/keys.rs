@@ -292,6 +292,36 @@ fn in_unit(length: Length, unit: Unit) -> f64 {
     }
 }
 
+impl Key {
+    /// Whether a sweep can run over it: not over names, nor over what lays out the sweep itself but for the angle that
+    /// a report looks for.
+    #[must_use]
+    pub fn can_be_swept(&self) -> bool {
+        match self.path {
+            "title" | "crystal.name" => false,
+            path => !path.starts_with("sweep.") || self.holds == Holds::Angle,
+        }
+    }
+
+    /// Keys that exclude one another have one group.
+    fn group(&self) -> &'static str {
+        match self.path {
+            "crystal.cut.theta"
+            | "crystal.cut.crossing"
+            | "crystal.cut.half-angle"
+            | "crystal.cut.separation"
+            | "crystal.cut.collinear"
+            | "crystal.cut.beamlike" => "crystal.cut",
+            "emission.type" | "emission.process" => "emission.process",
+            "emission.signal" | "emission.idler" => "emission.signal",
+            "pump.linewidth" | "pump.pulse" | "pump.spectrum" => "pump.linewidth",
+            "collection.iris" | "collection.fibre" => "collection.iris",
+            path if path.starts_with("sweep.target.") => "sweep.target",
+            path => path,
+        }
+    }
+}
+
 /// A key as it was typed, with the item of a list that it names.
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub struct KeyPath {
@@ -325,6 +355,23 @@ impl KeyPath {
         let near = nearest(typed, KEYS.iter().map(|key| key.path));
         let hint = near.map_or(String::new(), |near| format!(", did you mean `{near}`?"));
         Err(format!("`{typed}` is no key of a job{hint}"))
+    }
+
+    /// Whether setting one key undoes the other: the same or an excluding one, of the same item. `names` are those of
+    /// the crystals.
+    #[must_use]
+    pub fn overrides(&self, other: &Self, names: &[Option<&str>]) -> bool {
+        let number = |item: &Option<String>| {
+            let item = item.as_deref()?;
+            let named = names.iter().position(|name| *name == Some(item)).map(|at| (at + 1).to_string());
+            Some(named.unwrap_or_else(|| item.into()))
+        };
+        let same_item = match (number(&self.item), number(&other.item)) {
+            (Some(own), Some(other)) => own == other || own == "*" || other == "*",
+            // without a number there is only one item
+            _ => true,
+        };
+        self.key.group() == other.key.group() && same_item
     }
 
     /// Name of the column that shows the key's values.

@@ -88,7 +88,7 @@ impl Plan {
         };
         let plan = Self {
             report: choice(document, text, &Report::ALL)?,
-            grid: Grid::read(document, &sweep.axes)?,
+            grid: Grid::read(document, description)?,
             search: search(document, sweep)?,
         };
         let sweeps_target = plan.grid.axes().any(|axis| axis.path.key.path.starts_with("sweep.target."));

@@ -64,8 +64,9 @@ impl Setup {
     /// Several crystals or signals, of which one is to be named.
     pub fn tuning(&mut self, target: Target, actuator: Option<Actuator>) -> Result<Tuning, JobError> {
         let photons = self.only_photons("tilt").map_err(JobError)?;
-        if let (false, Target::HalfAngle(_)) = (self.interaction_given, target) {
-            self.interaction = Interaction::One;
+        let interaction = self.interaction_for(Some(target));
+        if interaction != self.interaction {
+            self.interaction = interaction;
             choose_phi(self, 0);
         }
         let crystal = self.only_crystal("tilt").map_err(JobError)?.clone();

@@ -118,7 +118,7 @@ fn sweep(node: &Node) -> Value {
 }
 
 fn axis() -> Value {
-    let known: Vec<&str> = KEYS.iter().map(|key| key.path).collect();
+    let known: Vec<&str> = KEYS.iter().filter(|key| key.can_be_swept()).map(|key| key.path).collect();
     let item = format!("^({})\\.[^.]+\\..+$", LISTS.join("|"));
     let quantity = |what: &str| json!({ "type": "string", "description": format!("{what}, with its unit") });
     json!({

@@ -3,7 +3,7 @@
 use super::document::JobError;
 use super::setup::{Needs, Setup, SetupError};
 use crate::frame::{Orientation, Reversal};
-use crate::matching::{ConesError, Design, Emission, Find, Interaction, Target, best_phi, design};
+use crate::matching::{ConesError, Design, Emission, Find, Interaction, best_phi, design};
 use crate::material::Optic;
 use crate::optics::Crystal;
 
@@ -12,9 +12,6 @@ pub(super) fn settle_cut(setup: &mut Setup, index: usize, needs: Needs) -> Resul
     let given = setup.cut[index];
     if !needs.cut {
         return Ok(());
-    }
-    if let (Some(Target::HalfAngle(_)), false) = (given.target, setup.interaction_given) {
-        setup.interaction = Interaction::One;
     }
     let Some(target) = given.target else {
         if !given.theta {

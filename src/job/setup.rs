@@ -153,7 +153,22 @@ impl Setup {
     /// # Errors
     /// A cut that is missing or does not exist.
     pub fn settle(&mut self, needs: Needs) -> Result<(), SetupError> {
+        if needs.cut {
+            self.interaction = self.interaction_for(None);
+        }
         (0..self.crystals.len()).try_for_each(|index| settle_cut(self, index, needs))
+    }
+
+    /// The interaction that was named; else type I where a half angle is wanted of a cut or as `target`, and type II.
+    #[must_use]
+    pub fn interaction_for(&self, target: Option<Target>) -> Interaction {
+        let cuts = self.cut.iter().map(|cut| cut.target);
+        let half_angle = cuts.chain([target]).any(|t| matches!(t, Some(Target::HalfAngle(_))));
+        match (self.interaction_given, half_angle) {
+            (true, _) => self.interaction,
+            (false, true) => Interaction::One,
+            (false, false) => Interaction::Two,
+        }
     }
 
     /// Signal wavelengths for the pump.

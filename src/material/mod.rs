@@ -27,6 +27,8 @@ pub struct Material {
     pub id: String,
     /// As it was written.
     pub file: File,
+    /// Of the text of its file: another text has another digest.
+    pub digest: u64,
     /// Completed nonlinear tensor in the dielectric frame; `None` in centrosymmetric crystals.
     pub tensor: Option<Tensor>,
     sets: Vec<DataSet>,
@@ -239,7 +241,7 @@ impl Material {
             }
             None => None,
         };
-        Ok(Self { id: file.id.get_ref().clone(), tensor, sets, expansion, default, file })
+        Ok(Self { id: file.id.get_ref().clone(), digest: 0, tensor, sets, expansion, default, file })
     }
 }
 

@@ -34,8 +34,8 @@ impl Slice {
         if self.of == 1 {
             return rows.into();
         }
-        let width = self.of.to_string().len();
-        rows.with_extension(format!("{:0width$}-of-{}.csv", self.part, self.of))
+        let width = self.of.to_string().len().max(3);
+        rows.with_extension(format!("{:0width$}-of-{:0width$}.csv", self.part, self.of))
     }
 }
 
@@ -66,6 +66,8 @@ struct Source {
     known: String,
     range: String,
     temperature: String,
+    /// Of the material's file.
+    digest: String,
 }
 
 #[derive(Serialize)]
@@ -104,10 +106,10 @@ pub fn meta(sweep: &Sweep<'_>, slice: Slice) -> Result<String, JobError> {
     Ok(toml::to_string(&meta).expect("texts, numbers and tables are TOML"))
 }
 
-/// The data sets of all combinations of words, once each.
+/// The data sets of all materials and sets that the sweep names, once each.
 fn sources(sweep: &Sweep<'_>) -> Vec<Source> {
     let mut all = Vec::new();
-    for setup in sweep.setups.some_bases(&sweep.plan) {
+    for setup in sweep.setups.of_each_material(&sweep.plan) {
         for crystal in &setup.crystals {
             let set = crystal.set();
             let source = Source {
@@ -116,6 +118,7 @@ fn sources(sweep: &Sweep<'_>) -> Vec<Source> {
                 known: set.file.known.to_string(),
                 range: format!("{} to {}", set.from, set.to),
                 temperature: set.temperature.to_string(),
+                digest: format!("{:016x}", crystal.material.digest),
             };
             if !all.contains(&source) {
                 all.push(source);

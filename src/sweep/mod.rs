@@ -149,6 +149,15 @@ fn columns(plan: &Plan) -> Result<Vec<SweepColumn>, JobError> {
         meaning: axis.path.key.meaning,
     });
     let mut columns: Vec<SweepColumn> = std::iter::once(point).chain(axes).collect();
+    for (n, column) in columns.iter().enumerate() {
+        if columns[..n].iter().any(|before| before.name == column.name) {
+            let message = format!(
+                "two axes would name a column {}; give the crystals names that differ more",
+                column.name
+            );
+            return Err(JobError(message));
+        }
+    }
     let own = rows::columns(plan.report, &plan.search).into_iter().chain([EXTRAPOLATED, STATUS]);
     for column in own {
         if let Some(axis) = columns.iter().position(|c| c.name == column.name) {

@@ -180,10 +180,29 @@ impl<'a> Setups<'a> {
         self.document
     }
 
-    /// Setups of all combinations that are kept, or of the first.
-    pub fn some_bases(&self, plan: &Plan) -> impl Iterator<Item = Setup> {
-        let count = self.kept.len().max(1) as u64;
-        (0..count).filter_map(|combination| self.base(plan, combination).ok())
+    /// Setups of all combinations of materials and data sets, with the first of every other text.
+    pub fn of_each_material<'p>(&'p self, plan: &'p Plan) -> impl Iterator<Item = Setup> + 'p {
+        let mut strides = Vec::new();
+        let mut stride = self.combination_count();
+        for (dimension, count) in plan.grid.dimensions.iter().zip(&self.combinations) {
+            stride /= count;
+            let names_material = |axis: &Axis| {
+                axis.path.key.path.ends_with(".material") || axis.path.key.path.ends_with(".dataset")
+            };
+            if *count > 1 && dimension.axes.iter().any(names_material) {
+                strides.push((*count, stride));
+            }
+        }
+        let count: u64 = strides.iter().map(|(count, _)| count).product();
+        (0..count.min(KEPT)).filter_map(move |number| {
+            let mut rest = number;
+            let mut combination = 0;
+            for (count, stride) in &strides {
+                combination += rest % count * stride;
+                rest /= count;
+            }
+            self.base(plan, combination).ok()
+        })
     }
 
     /// What a person may not expect.

@@ -220,7 +220,7 @@ fn points_that_fail_have_rows() {
     assert_eq!(cuts.cell(0, "status"), "ok");
     assert_ne!(cuts.cell(cuts.len() - 1, "status"), "ok");
     // type I has no rings of opposite polarization
-    let none = rows("--type I --report crossings --axis crystal.tilt=0deg,1deg");
+    let none = rows("--quiet --type I --report crossings --axis crystal.tilt=0deg,1deg");
     assert_eq!(none.column("status"), ["invalid", "invalid"]);
 }
 
@@ -241,6 +241,8 @@ fn mistakes_in_axes_are_found_before_the_first_point() {
         ("crystal.tilt", "there is no ="),
         ("title=a,b", "cannot be swept"),
         ("collection.*.iris=0.2deg,3mm", "of another kind"),
+        ("sweep.by=tilt,pump", "cannot be swept"),
+        ("sweep.pair=1,2", "cannot be swept"),
     ] {
         let refusal = run(&format!("--report rings --axis {axis}")).refusal(2);
         assert_says(&refusal, &[says]);
@@ -328,9 +330,9 @@ fn bytes_do_not_depend_on_threads_or_parts() {
     for part in 1..=12 {
         in_folder(folder, &format!("-o shared.csv --part {part}/12")).answer();
     }
-    assert!(names(folder).contains(&"shared.03-of-12.csv".to_string()), "{:?}", names(folder));
+    assert!(names(folder).contains(&"shared.003-of-012.csv".to_string()), "{:?}", names(folder));
     // each part is a table of its own
-    Table::read(&read(folder, "shared.03-of-12.csv"));
+    Table::read(&read(folder, "shared.003-of-012.csv"));
     twincone_in(folder, "join shared.csv").answer();
     assert_eq!(read(folder, "shared.csv"), piped);
     assert_eq!(read(folder, "shared.csv.meta.toml"), read(folder, "rows.csv.meta.toml"));
@@ -366,23 +368,23 @@ fn join_refuses_what_is_not_a_whole_sweep() {
     for part in [1, 3] {
         in_folder(folder, &format!("-o rows.csv --part {part}/3")).answer();
     }
-    join(4, &["rows.2-of-3.csv is missing"]);
-    fs::write(folder.join("rows.2-of-3.csv.unfinished"), "point").expect("a file");
-    join(4, &["rows.2-of-3.csv is not finished", "--resume"]);
-    fs::remove_file(folder.join("rows.2-of-3.csv.unfinished")).expect("it was there");
+    join(4, &["rows.002-of-003.csv is missing"]);
+    fs::write(folder.join("rows.002-of-003.csv.unfinished"), "point").expect("a file");
+    join(4, &["rows.002-of-003.csv is not finished", "--resume"]);
+    fs::remove_file(folder.join("rows.002-of-003.csv.unfinished")).expect("it was there");
     // another job's part
     in_folder(folder, "-o rows.csv --part 2/3 --roll 5deg").answer();
-    join(2, &["rows.2-of-3.csv cannot be joined", "crystal.1.roll"]);
+    join(2, &["rows.002-of-003.csv cannot be joined", "crystal.1.roll"]);
     in_folder(folder, "-o rows.csv --part 2/3").answer();
     // one that lost its end
-    let whole = read(folder, "rows.3-of-3.csv");
-    fs::write(folder.join("rows.3-of-3.csv"), &whole[..whole.len() / 2]).expect("a file");
-    join(2, &["rows.3-of-3.csv cannot be joined", "does not hold points 67 to 100"]);
-    fs::write(folder.join("rows.3-of-3.csv"), &whole).expect("a file");
+    let whole = read(folder, "rows.003-of-003.csv");
+    fs::write(folder.join("rows.003-of-003.csv"), &whole[..whole.len() / 2]).expect("a file");
+    join(2, &["rows.003-of-003.csv cannot be joined", "does not hold points 67 to 100"]);
+    fs::write(folder.join("rows.003-of-003.csv"), &whole).expect("a file");
     // two ways of sharing out
     in_folder(folder, "-o rows.csv --part 1/4").answer();
     join(2, &["of 3 and 4 parts"]);
-    fs::remove_file(folder.join("rows.1-of-4.csv")).expect("it was there");
+    fs::remove_file(folder.join("rows.001-of-004.csv")).expect("it was there");
     twincone_in(folder, "join rows.csv").answer();
     assert_eq!(read(folder, "rows.csv"), in_folder(folder, "").answer());
 }
@@ -452,4 +454,81 @@ fn report_compensate_designs_at_every_point() {
         assert!(table.number(row, "visibility_after") > 0.99);
         assert!(table.number(row, "visibility_before") < 0.4);
     }
+}
+
+/// Nothing of one point is left for the next: not even a default that depends on what was looked for.
+#[test]
+fn points_do_not_depend_on_those_before_them() {
+    for options in [
+        "-m bbo:kato-1986 -p 405nm --cut crossing=3deg --length 2mm -q --report tilt --half-angle 3deg --axis crystal.temperature=20degC,20.0000000001degC,20.0000000002degC",
+        "-m bbo:kato-1986 --cut crossing=3deg --length 2mm -q --report tilt --half-angle 3deg --axis pump.wavelength=400nm..410nm/5",
+        "-m bbo:kato-1986 -p 405nm --theta 42.5deg -q --report rings --axis crystal.cut.half-angle=2deg,3deg --axis crystal.tilt=0deg,1deg",
+    ] {
+        let folder = TempDir::new().expect("a folder");
+        let one = twincone(&format!("run {options} --threads 1")).answer();
+        assert!(one.contains(",ok\n"), "{one}");
+        let count =
+            one.lines().filter_map(|l| l.split(',').next()?.parse::<u64>().ok()).max().expect("points") + 1;
+        for part in 1..=count {
+            twincone_in(folder.path(), &format!("run {options} -o rows.csv --part {part}/{count}")).answer();
+        }
+        twincone_in(folder.path(), "join rows.csv").answer();
+        assert_eq!(read(folder.path(), "rows.csv"), one);
+    }
+}
+
+#[test]
+fn axes_that_undo_one_another_are_refused() {
+    for axes in [
+        "--axis crystal.tilt=0deg,1deg --axis crystal.1.tilt=0deg,2deg",
+        "--axis crystal.*.tilt=0deg,1deg --axis crystal.1.tilt=0deg,2deg",
+        "--axis crystal.cut.theta=42deg,43deg --axis crystal.cut.crossing=2deg,3deg",
+        "--axis emission.signal=800nm,810nm --axis emission.idler=800nm,810nm",
+    ] {
+        assert_says(&run(&format!("--report rings {axes}")).refusal(2), &["set the same thing"]);
+    }
+}
+
+/// A part made with another material file is another job, though every key is the same.
+#[test]
+fn a_changed_material_file_is_noticed() {
+    let folder = TempDir::new().expect("a folder");
+    let folder = folder.path();
+    let text = include_str!("../../data/materials/bbo.toml");
+    let mine = |text: &str| fs::write(folder.join("mine.toml"), text).expect("a file");
+    let sweep = "run -m ./mine.toml:kato-1986 -p 405nm --theta 42.541deg --phi 0deg --report rings --axis crystal.tilt=0deg..1deg/11 -o rows.csv";
+    mine(text);
+    twincone_in(folder, &format!("{sweep} --part 1/2")).answer();
+    mine(&format!("{text}\n# another text\n"));
+    twincone_in(folder, &format!("{sweep} --part 2/2")).answer();
+    assert_says(&twincone_in(folder, "join rows.csv").refusal(2), &["material files differ"]);
+}
+
+/// Every point of a part is looked at, and names that only look like parts are left alone.
+#[test]
+fn join_counts_the_points_and_minds_odd_names() {
+    let folder = TempDir::new().expect("a folder");
+    let folder = folder.path();
+    for part in 1..=2 {
+        in_folder(folder, &format!("-o rows.csv --part {part}/2")).answer();
+    }
+    for odd in ["rows.1-of-0.csv", "rows.1-of-999999999.csv", "rows.tilt.1-of-4.csv", "rows.5-of-3.csv"] {
+        fs::write(folder.join(odd), "").expect("a file");
+    }
+    let whole = read(folder, "rows.001-of-002.csv");
+    let torn: Vec<&str> = whole.lines().filter(|line| !line.starts_with("7,")).collect();
+    fs::write(folder.join("rows.001-of-002.csv"), torn.join("\n") + "\n").expect("a file");
+    assert_says(&twincone_in(folder, "join rows.csv").refusal(2), &["does not hold points 0 to 49"]);
+    fs::write(folder.join("rows.001-of-002.csv"), whole).expect("a file");
+    twincone_in(folder, "join rows.csv").answer();
+}
+
+#[test]
+fn a_sweep_that_can_never_be_says_why() {
+    let ran = run("--type I --report crossings --axis crystal.tilt=0deg,1deg");
+    assert_eq!(ran.status, 0);
+    assert_says(&ran.stderr, &["warning", "no point can be", "opposite polarization"]);
+    let folder = TempDir::new().expect("a folder");
+    fs::create_dir(folder.path().join("rows.csv")).expect("a folder");
+    assert_says(&in_folder(folder.path(), "-o rows.csv").refusal(4), &["it is a folder"]);
 }
