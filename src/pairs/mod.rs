@@ -28,7 +28,7 @@ pub use compensation::{Answers, Designed, Proposal, compensate, half_length};
 pub use mixture::{Estimate, Mixture};
 pub use quadrature::Rule;
 pub use solve::{Question, State};
-pub use stack::Stack;
+pub use stack::{Stack, most_even};
 pub use state::{Amplitude, Basis, DensityMatrix, Nearest};
 
 use crate::frame::Direction;
