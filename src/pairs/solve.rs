@@ -1,6 +1,6 @@
 //! The state of one pair of directions, with what spoils it.
 
-use super::bench::Bench;
+use super::bench::{Bench, PumpPolarization};
 use super::budget::{Loss, budget};
 use super::{DensityMatrix, Estimate, HistoryBasis, Mixture, Pair, PairsError, Stack, Vary};
 use crate::frame::Direction;
@@ -110,6 +110,7 @@ impl Question<'_> {
     pub fn state(&self) -> Result<State, PairsError> {
         let (number, pair, row) = self.pair()?;
         let stack = Stack::new(self.crystals, self.bench, &pair, self.interaction)?;
+        self.demand_drive(&stack, &pair)?;
         let mixture = Mixture::new(&stack, self.bench, Vary::ALL);
         let Estimate { lab, error, band } = mixture.estimate(self.wanted)?;
         let basis = stack.history_basis()?;
@@ -128,6 +129,20 @@ impl Question<'_> {
             extrapolated: row.extrapolated || beyond,
             status: if number.is_some() { row.status } else { Status::Ok },
         })
+    }
+
+    /// Refuses a pump polarization that makes no pairs: a normalised state would show nothing of it.
+    pub(super) fn demand_drive(&self, stack: &Stack, pair: &Pair) -> Result<(), PairsError> {
+        // rounding leaves some 1e-33 of the intensity
+        const FAINTEST: f64 = 1e-10;
+        if self.bench.polarization == PumpPolarization::Matched {
+            return Ok(());
+        }
+        let bench = Bench { polarization: PumpPolarization::Matched, ..self.bench.clone() };
+        let matched = Stack::new(self.crystals, &bench, pair, self.interaction)?;
+        let given = Mixture::new(stack, &bench, Vary::ALL).brightness()?;
+        let most = Mixture::new(&matched, &bench, Vary::ALL).brightness()?;
+        if given < FAINTEST * most { Err(PairsError::NotDriven) } else { Ok(()) }
     }
 
     /// What each cause alone costs, largest first.

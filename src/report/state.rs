@@ -196,7 +196,29 @@ fn heading(state: &State) -> String {
     )
 }
 
+/// Which history makes all pairs, but for a millionth, if one does.
+fn only_history(state: &State) -> Option<usize> {
+    const REST: f64 = 1e-6;
+    let [first, second] = [0, 3].map(|i| state.histories.0[(i, i)].re);
+    match (first, second) {
+        _ if second < REST * first => Some(0),
+        _ if first < REST * second => Some(1),
+        _ => None,
+    }
+}
+
 fn nearest_words(state: &State, basis: Basis) -> String {
+    if let Some(only) = only_history(state) {
+        let which = ["first", "second"][only];
+        let ket = match basis {
+            Basis::Histories => format!(" |{}>", basis.kets(state)[3 * only]),
+            Basis::Lab => String::new(),
+        };
+        return format!(
+            "a product{ket}, not an entangled state: only the {which} of the two histories makes pairs, since the pump \
+             drives it alone or the other is not phase-matched here"
+        );
+    }
     let nearest = basis.of(state).nearest_bell();
     let kets = basis.kets(state);
     let (i, j) = if nearest.alike { (0, 3) } else { (1, 2) };
