@@ -48,7 +48,7 @@ pub struct State {
     pub points: bool,
     /// Whether an index was taken from outside the data set's range.
     pub extrapolated: bool,
-    /// Of the crossing.
+    /// `NotConverged` where the error is far above what was asked for, else of the crossing.
     pub status: Status,
 }
 
@@ -127,7 +127,11 @@ impl Question<'_> {
             band: [band[1], band[0]].map(|omega| super::stack::wavelength(omega).si()),
             points: mixture.is_of_points(),
             extrapolated: row.extrapolated || beyond,
-            status: if number.is_some() { row.status } else { Status::Ok },
+            status: match number {
+                _ if missed(error, self.wanted) => Status::NotConverged,
+                Some(_) => row.status,
+                None => Status::Ok,
+            },
         })
     }
 
@@ -153,4 +157,9 @@ impl Question<'_> {
         let stack = Stack::new(self.crystals, self.bench, &state.pair, self.interaction)?;
         budget(&stack, self.bench, state)
     }
+}
+
+/// Whether a quadrature ended far from its aim.
+fn missed(error: f64, wanted: f64) -> bool {
+    error > 10.0 * wanted || error > wanted.max(0.01)
 }

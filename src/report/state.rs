@@ -5,6 +5,7 @@ use nalgebra::Matrix4;
 use super::angles::{fixed, grid, prose, rounded, signed};
 use super::table::{Cell, Column, Rows, Table, column};
 use crate::job::Setup;
+use crate::matching::Status;
 use crate::pairs::{Amplitude, Basis, DensityMatrix, Loss, Opening, State};
 
 /// Columns, without the two that end every table.
@@ -161,6 +162,15 @@ pub fn text(setup: &Setup, state: &State, budget: &[Loss], bases: &[Basis]) -> S
         out.push_str(&prose(&format!("{}: {}", basis.name(), nearest_words(state, *basis))));
     }
     out.push('\n');
+    if state.status == Status::NotConverged {
+        out.push_str(&prose(&format!(
+            "Not converged: visibilities may be off by {:.0e}, far more than was asked for, so that these numbers say \
+             little. The state turns too fast over the wavelengths or directions that are collected: take narrower \
+             filters or irises, or a shorter crystal.",
+            state.error
+        )));
+        out.push('\n');
+    }
     let header =
         ["basis", "along", "diagonal", "concurrence", "purity", "fidelity", "phase deg", "CHSH S", "error"];
     let rows: Vec<Vec<String>> = bases.iter().map(|basis| row(state, *basis)).collect();

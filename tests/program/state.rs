@@ -51,6 +51,15 @@ fn a_pump_across_the_wave_that_pumps_makes_no_pairs() {
 }
 
 #[test]
+fn a_quadrature_that_misses_its_aim_is_told() {
+    let long = format!("{BBO} --length 1m --filter-width 3nm");
+    let table = state(&long);
+    assert!(table.number(0, "quadrature_error") > 0.01);
+    assert_eq!(table.column("status"), ["not_converged", "not_converged"]);
+    assert_says(&twincone(&format!("state {long}")).answer(), &["Not converged: visibilities may be off by"]);
+}
+
+#[test]
 fn a_pump_that_drives_one_of_two_crystals_leaves_a_product() {
     let job = "state --job examples/two-crystals.toml --pump-polarization";
     let product = twincone(&format!("{job} 0deg")).answer();
