@@ -9,7 +9,7 @@ use crate::frame::{Direction, Lab, Mount};
 use crate::job::Setup;
 use crate::matching::{Actuator, ConesError, RingRow};
 use crate::optics::Crystal;
-use crate::pairs::{Pair, PumpPolarization, Stack, most_even};
+use crate::pairs::{Filter, Pair, PumpPolarization, Stack, most_even};
 use crate::picture::{Backdrop, Optics, Seen, Sensor};
 use crate::quantity::{Angle, Length, Wavelength};
 use crate::report::angles::{fixed, rounded, signed};
@@ -313,21 +313,23 @@ fn ring_words(setup: &Setup, row: &RingRow) -> String {
 fn filter_words(facts: &Facts<'_>) -> String {
     let light = crate::picture::Light::of(facts.setup).unwrap_or_default();
     let photons = facts.photons;
-    let one = |filter: Option<crate::picture::Filter>, nominal: Wavelength| match filter {
-        Some(f) => format!(
-            "{} nm wide (FWHM) at {}",
-            rounded(f.width.si() * 1e9, 3),
-            nm(f.centre.unwrap_or(nominal))
-        ),
-        None => format!("centred at {} (no width is given in the job)", nm(nominal)),
+    let one = |filters: &[Filter], nominal: Wavelength| {
+        let words = |f: &Filter| {
+            let width = rounded(f.width.si() * 1e9, 3);
+            format!("{width} nm wide (FWHM) at {}", nm(f.centre.unwrap_or(nominal)))
+        };
+        match filters {
+            [] => format!("centred at {} (no width is given in the job)", nm(nominal)),
+            all => all.iter().map(words).collect::<Vec<_>>().join(" behind one "),
+        }
     };
     if photons.degenerate() {
-        one(light.signal, photons.signal)
+        one(&light.signal, photons.signal)
     } else {
         format!(
             "{}, and for the partner {}",
-            one(light.signal, photons.signal),
-            one(light.idler, photons.idler)
+            one(&light.signal, photons.signal),
+            one(&light.idler, photons.idler)
         )
     }
 }
