@@ -206,15 +206,14 @@ fn heading(state: &State) -> String {
     )
 }
 
-/// Which history makes all pairs, but for a millionth, if one does.
+/// Which history makes all pairs, but for a thousandth that entangles nothing, if one does.
 fn only_history(state: &State) -> Option<usize> {
-    const REST: f64 = 1e-6;
+    const REST: f64 = 1e-3;
     let [first, second] = [0, 3].map(|i| state.histories.0[(i, i)].re);
-    match (first, second) {
-        _ if second < REST * first => Some(0),
-        _ if first < REST * second => Some(1),
-        _ => None,
+    if first.min(second) > REST * first.max(second) || state.histories.concurrence() > 0.01 {
+        return None;
     }
+    Some(usize::from(second > first))
 }
 
 fn nearest_words(state: &State, basis: Basis) -> String {
