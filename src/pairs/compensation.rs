@@ -161,6 +161,7 @@ impl<'q, 'a> Task<'q, 'a> {
         let own = Question { bench: &bare, ..*question };
         let (_, pair, _) = own.pair()?;
         let stack = Stack::new(question.crystals, &bare, &pair, question.interaction)?;
+        own.demand_drive(&stack, &pair)?;
         let basis = stack.history_basis()?;
         let seen = as_irises(&bare, &stack);
         let mixture = Mixture::new(&stack, &seen, Vary::ALL);

@@ -167,6 +167,13 @@ impl<'a> Mixture<'a> {
         Ok(Once { lab, band, samples: sum.samples })
     }
 
+    /// How many pairs are collected, roughly and in units of its own.
+    pub(super) fn brightness(&self) -> Result<f64, PairsError> {
+        let mut sum = Sum::new(self);
+        sum.over_line(&FIRST)?;
+        Ok(sum.total.trace().re)
+    }
+
     /// Pairs that stand for the mixture: some hundreds.
     pub(super) fn samples(&self) -> Result<Vec<Sample>, PairsError> {
         let mut sum = Sum { record: Some(Vec::new()), ..Sum::new(self) };

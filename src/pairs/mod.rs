@@ -28,7 +28,7 @@ pub use compensation::{Answers, Designed, Proposal, compensate, half_length};
 pub use mixture::{Estimate, Mixture};
 pub use quadrature::Rule;
 pub use solve::{Question, State};
-pub use stack::Stack;
+pub use stack::{Stack, most_even};
 pub use state::{Amplitude, Basis, DensityMatrix, Nearest};
 
 use crate::frame::Direction;
@@ -146,6 +146,11 @@ pub enum PairsError {
         "no pair passes: the filters of the two arms do not transmit a pair of one pump photon, or the irises do not see one; leave out their centre or direction to let them follow the crossing"
     )]
     NothingCollected,
+    /// The pump's polarization makes no pairs.
+    #[error(
+        "this pump polarization drives none of the histories: no pairs are made; leave it out, or write polarization = \"matched\", for the one that drives all crystals as evenly as can be"
+    )]
+    NotDriven,
     /// Both histories have amplitude zero, or are not orthogonal.
     #[error("the two histories leave the same polarization in an arm: there is nothing to entangle")]
     Alike,
@@ -166,6 +171,7 @@ impl From<&PairsError> for Status {
             PairsError::Material(error) => error.into(),
             // of the histories that were looked at; that there are fewer pairs than the number is no status of theirs
             PairsError::NoPair { count: 0, status, .. } => *status,
+            PairsError::NotDriven => Self::NoNonlinearity,
             PairsError::NoPair { .. }
             | PairsError::Description(_)
             | PairsError::NoTensor { .. }

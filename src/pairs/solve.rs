@@ -1,6 +1,6 @@
 //! The state of one pair of directions, with what spoils it.
 
-use super::bench::Bench;
+use super::bench::{Bench, PumpPolarization};
 use super::budget::{Loss, budget};
 use super::{DensityMatrix, Estimate, HistoryBasis, Mixture, Pair, PairsError, Stack, Vary};
 use crate::frame::Direction;
@@ -48,7 +48,7 @@ pub struct State {
     pub points: bool,
     /// Whether an index was taken from outside the data set's range.
     pub extrapolated: bool,
-    /// Of the crossing.
+    /// `NotConverged` where the error is far above what was asked for, else of the crossing.
     pub status: Status,
 }
 
@@ -110,6 +110,7 @@ impl Question<'_> {
     pub fn state(&self) -> Result<State, PairsError> {
         let (number, pair, row) = self.pair()?;
         let stack = Stack::new(self.crystals, self.bench, &pair, self.interaction)?;
+        self.demand_drive(&stack, &pair)?;
         let mixture = Mixture::new(&stack, self.bench, Vary::ALL);
         let Estimate { lab, error, band } = mixture.estimate(self.wanted)?;
         let basis = stack.history_basis()?;
@@ -126,8 +127,26 @@ impl Question<'_> {
             band: [band[1], band[0]].map(|omega| super::stack::wavelength(omega).si()),
             points: mixture.is_of_points(),
             extrapolated: row.extrapolated || beyond,
-            status: if number.is_some() { row.status } else { Status::Ok },
+            status: match number {
+                _ if missed(error, self.wanted) => Status::NotConverged,
+                Some(_) => row.status,
+                None => Status::Ok,
+            },
         })
+    }
+
+    /// Refuses a pump polarization that makes no pairs: a normalised state would show nothing of it.
+    pub(super) fn demand_drive(&self, stack: &Stack, pair: &Pair) -> Result<(), PairsError> {
+        // rounding leaves some 1e-33 of the intensity
+        const FAINTEST: f64 = 1e-10;
+        if self.bench.polarization == PumpPolarization::Matched {
+            return Ok(());
+        }
+        let bench = Bench { polarization: PumpPolarization::Matched, ..self.bench.clone() };
+        let matched = Stack::new(self.crystals, &bench, pair, self.interaction)?;
+        let given = Mixture::new(stack, &bench, Vary::ALL).brightness()?;
+        let most = Mixture::new(&matched, &bench, Vary::ALL).brightness()?;
+        if given < FAINTEST * most { Err(PairsError::NotDriven) } else { Ok(()) }
     }
 
     /// What each cause alone costs, largest first.
@@ -138,4 +157,9 @@ impl Question<'_> {
         let stack = Stack::new(self.crystals, self.bench, &state.pair, self.interaction)?;
         budget(&stack, self.bench, state)
     }
+}
+
+/// Whether a quadrature ended far from its aim.
+fn missed(error: f64, wanted: f64) -> bool {
+    error > 10.0 * wanted || error > wanted.max(0.01)
 }

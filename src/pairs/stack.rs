@@ -176,27 +176,8 @@ impl Stack {
             rows.push(row);
         }
         let linear = |angle: f64| Vector2::new(angle.cos(), angle.sin()).map(Complex::from);
-        let evenness = |angle: f64| -> f64 {
-            rows.iter().map(|row| (row.transpose() * linear(angle))[0].norm_sqr()).product()
-        };
-        let mut best = (0.0, evenness(0.0));
-        let mut step = 1f64.to_radians();
-        for degree in 1..180 {
-            let angle = f64::from(degree) * step;
-            let value = evenness(angle);
-            // one of equals is taken, whatever rounding says
-            if value > best.1 * (1.0 + 1e-6) + 1e-12 {
-                best = (angle, value);
-            }
-        }
-        while step > 1e-10 {
-            let sides = [best.0 - step, best.0 + step].map(|angle| (angle, evenness(angle)));
-            match sides.iter().find(|side| side.1 > best.1) {
-                Some(side) => best = *side,
-                None => step *= 0.5,
-            }
-        }
-        Ok(linear(best.0))
+        let driven = |row: &Vector2<Amplitude>, angle: f64| (row.transpose() * linear(angle))[0].norm_sqr();
+        Ok(linear(most_even(|angle| rows.iter().map(|row| driven(row, angle)).product())))
     }
 
     /// Amplitude of the wave that pumps a crystal, as a row to be multiplied with the polarization before everything.
@@ -220,6 +201,29 @@ impl Stack {
         let row = inverse.row(usize::from(sheet == Sheet::Slow)).map(Complex::from);
         Some((row * matrix).transpose())
     }
+}
+
+/// The azimuth from 0 to pi, but for rounding, at which the product of the crystals' intensities is largest, the smallest of several.
+#[must_use]
+pub fn most_even(evenness: impl Fn(f64) -> f64) -> f64 {
+    let mut best = (0.0, evenness(0.0));
+    let mut step = 1f64.to_radians();
+    for degree in 1..180 {
+        let angle = f64::from(degree) * step;
+        let value = evenness(angle);
+        // one of equals is taken, whatever rounding says
+        if value > best.1 * (1.0 + 1e-6) + 1e-12 {
+            best = (angle, value);
+        }
+    }
+    while step > 1e-10 {
+        let sides = [best.0 - step, best.0 + step].map(|angle| (angle, evenness(angle)));
+        match sides.iter().find(|side| side.1 > best.1) {
+            Some(side) => best = *side,
+            None => step *= 0.5,
+        }
+    }
+    best.0
 }
 
 fn histories_of(

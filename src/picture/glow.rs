@@ -2,7 +2,7 @@
 
 use nalgebra::{Matrix3, Vector3};
 
-use super::light::{Filter, Light};
+use super::light::{Filter, Light, centre, samples};
 use super::sensor::Sensor;
 use crate::frame::{Orientation, Tangential};
 use crate::job::Setup;
@@ -93,17 +93,18 @@ pub(super) fn glows(
                 .ok_or_else(|| GlowError::Description("a signal is not longer than the pump".into()))?;
             let emission = Emission::of(crystal, photons)?;
             let wanted = emission.wanted(crystal, setup.interaction).map_err(GlowError::Description)?;
-            let twins = wanted.iter().map(|r| (photons.exchanged(), r.exchanged(), light.idler));
-            let mut bands: Vec<_> = wanted.iter().map(|r| (photons, *r, light.signal)).collect();
+            let twins = wanted.iter().map(|r| (photons.exchanged(), r.exchanged(), &light.idler));
+            let mut bands: Vec<_> = wanted.iter().map(|r| (photons, *r, &light.signal)).collect();
             if !photons.degenerate() {
                 bands.extend(twins);
             }
-            for (photons, roles, filter) in bands {
-                let centre = filter.and_then(|f| f.centre).unwrap_or(photons.signal);
+            for (photons, roles, filters) in bands {
+                // filters that have nothing in common leave the dark
+                let Some(centre) = centre(filters, photons.signal) else { continue };
                 let key = (roles, (centre.nm() * 1e6).round() as u64);
                 if !seen.contains(&key) {
                     seen.push(key);
-                    let source = Source { crystal, roles, filter, centre, pump: setup.pump() };
+                    let source = Source { crystal, roles, filters, nominal: photons.signal, centre, pump: setup.pump() };
                     all.push(source.glow(light, sensor, sampling)?);
                 }
             }
@@ -127,7 +128,8 @@ pub enum GlowError {
 struct Source<'a> {
     crystal: &'a Crystal,
     roles: Roles,
-    filter: Option<Filter>,
+    filters: &'a [Filter],
+    nominal: Wavelength,
     centre: Wavelength,
     pump: Wavelength,
 }
@@ -153,16 +155,12 @@ impl Source<'_> {
         };
         let triplet = Triplet::new(self.crystal, &photons)?;
         let angles = self.pump_angles(light, sensor, &glow, &triplet, photons);
-        let wavelengths = match &self.filter {
-            None => vec![(self.centre, 1.0)],
-            Some(filter) => {
-                let count = match sampling.wavelengths {
-                    Some(count) => count.max(1),
-                    None => self.count(filter, sensor, &glow)?,
-                };
-                filter.samples(self.centre, count)
-            }
+        let count = match sampling.wavelengths {
+            _ if self.filters.is_empty() => 1,
+            Some(count) => count.max(1),
+            None => self.count(sensor, &glow)?,
         };
+        let wavelengths = samples(self.filters, self.nominal, count);
         for (wavelength, share) in wavelengths {
             let photons = self.photons(wavelength)?;
             let triplet = Triplet::new(self.crystal, &photons)?;
@@ -193,9 +191,9 @@ impl Source<'_> {
     }
 
     /// How many wavelengths keep the phase between two of them below [`PHASE_STEP`] wherever there is light.
-    fn count(&self, filter: &Filter, sensor: &Sensor, glow: &Glow) -> Result<usize, GlowError> {
+    fn count(&self, sensor: &Sensor, glow: &Glow) -> Result<usize, GlowError> {
         let mut waves = Vec::new();
-        for (wavelength, _) in filter.samples(self.centre, 3) {
+        for (wavelength, _) in samples(self.filters, self.nominal, 3) {
             let Some(mismatch) = Emission::of(self.crystal, self.photons(wavelength)?)?.mismatch(self.roles)
             else {
                 return Ok(FEWEST);

@@ -1,105 +1,79 @@
 //! What light a picture is taken in: the filter's wavelengths and the pump's angular spread.
 
 use crate::job::Setup;
-use crate::job::description::Filter as Written;
 use crate::quantity::{Length, Wavelength};
 
-/// Form of a filter's transmission.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub enum Shape {
-    /// exp(-4 ln 2 (lambda - centre)^2 / width^2)
-    Gaussian,
-    /// 1 within half a width of the centre, 0 outside.
-    Rectangular,
-}
-
-/// A filter before the detector.
-#[derive(Debug, Clone, Copy, PartialEq)]
-pub struct Filter {
-    /// Form of the transmission.
-    pub shape: Shape,
-    /// FWHM of the transmission.
-    pub width: Length,
-    /// Where it transmits most; `None` for the photon's nominal wavelength.
-    pub centre: Option<Wavelength>,
-}
+pub use crate::pairs::{Filter, Shape};
 
 /// Filters of both photons, and the pump's waist.
-#[derive(Debug, Clone, Copy, Default, PartialEq)]
+#[derive(Debug, Clone, Default, PartialEq)]
 pub struct Light {
-    /// Before the photon of the listed wavelength; `None` lets its nominal wavelength pass alone.
-    pub signal: Option<Filter>,
+    /// Before the photon of the listed wavelength, one behind the other; none let its nominal wavelength pass alone.
+    pub signal: Vec<Filter>,
     /// Before its twin.
-    pub idler: Option<Filter>,
+    pub idler: Vec<Filter>,
     /// 1/e^2 radius of the pump's intensity in the crystal; `None` for a plane wave.
     pub waist: Option<Length>,
 }
 
 impl Light {
-    /// As the experiment describes it: `[[filter]]` and `pump.waist`.
+    /// As the experiment describes it.
     ///
     /// # Errors
-    /// A sentence, where a filter is given by a file or a value is no quantity.
+    /// A sentence, where a filter is given by a file.
     pub fn of(setup: &Setup) -> Result<Self, String> {
-        let written = &setup.written;
-        let waist = written.pump.as_ref().and_then(|p| p.get_ref().waist.as_ref());
-        let waist = waist.map(|w| w.get_ref().parse()).transpose().map_err(|e| format!("{e}"))?;
-        let before = |arm: &str| {
-            let stands =
-                |f: &&Written| f.arm.as_ref().is_none_or(|a| [arm, "both"].contains(&&**a.get_ref()));
-            written.filter.iter().find(stands).map(read).transpose().map(Option::flatten)
-        };
-        Ok(Self { signal: before("a")?, idler: before("b")?, waist })
+        if setup.written.filter.iter().any(|filter| filter.file.is_some()) {
+            return Err(
+                "pictures know filters by width and shape; a measured trace (filter.file) is not read".into()
+            );
+        }
+        let [signal, idler] = setup.bench.filters.clone();
+        Ok(Self { signal, idler, waist: setup.bench.waist })
     }
 }
 
-/// A filter; `None` where no width is given.
-fn read(written: &Written) -> Result<Option<Filter>, String> {
-    if written.file.is_some() {
-        return Err(
-            "pictures know filters by width and shape; a measured trace (filter.file) is not read".into()
-        );
-    }
-    let Some(width) = &written.width else { return Ok(None) };
-    let rectangular = written.shape.as_ref().is_some_and(|s| &**s.get_ref() == "rectangular");
-    let centre = written.centre.as_ref().map(|c| c.get_ref().parse::<Wavelength>()).transpose();
-    Ok(Some(Filter {
-        shape: if rectangular { Shape::Rectangular } else { Shape::Gaussian },
-        width: width.get_ref().parse().map_err(|e| format!("the filter width: {e}"))?,
-        centre: centre.map_err(|e| format!("the filter centre: {e}"))?,
-    }))
+/// Shortest and longest wavelength, m, that pass all filters: within half a width of each centre (rectangular) or 1.5
+/// widths (Gaussian, where the transmission has fallen to 0.2 %). `None` where nothing passes.
+fn window(filters: &[Filter], nominal: Wavelength) -> Option<[f64; 2]> {
+    let ends = filters.iter().map(|filter| {
+        let reach = if filter.shape == Shape::Gaussian { 1.5 } else { 0.5 } * filter.width.si();
+        let centre = filter.centre.unwrap_or(nominal).si();
+        [centre - reach, centre + reach]
+    });
+    let [from, to] = ends.reduce(|a, b| [a[0].max(b[0]), a[1].min(b[1])])?;
+    (from < to).then_some([from, to])
 }
 
-impl Filter {
-    /// `count` wavelengths across the filter and their weights, which add up to 1.
-    ///
-    /// Midpoints of equal intervals in wavelength over the width (rectangular) or over 1.5 widths on either side of the
-    /// centre (Gaussian, where the transmission has fallen to 0.2 %); a weight is transmission times d omega, which is
-    /// d lambda / lambda^2.
-    #[must_use]
-    pub fn samples(&self, nominal: Wavelength, count: usize) -> Vec<(Wavelength, f64)> {
-        let centre = self.centre.unwrap_or(nominal).si();
-        let reach = match self.shape {
-            Shape::Gaussian => 3.0 * self.width.si(),
-            Shape::Rectangular => self.width.si(),
-        };
-        let mut all: Vec<(Wavelength, f64)> = (0..count)
-            .map(|j| {
-                let off = reach * ((j as f64 + 0.5) / count as f64 - 0.5);
-                let wavelength = centre + off;
-                let transmission = match self.shape {
-                    Shape::Gaussian => {
-                        (-4.0 * std::f64::consts::LN_2 * (off / self.width.si()).powi(2)).exp()
-                    }
-                    Shape::Rectangular => 1.0,
-                };
-                (Wavelength::metres(wavelength), transmission / (wavelength * wavelength))
-            })
-            .collect();
-        let sum: f64 = all.iter().map(|(_, weight)| weight).sum();
-        all.iter_mut().for_each(|(_, weight)| *weight /= sum);
-        all
+/// The middle of what filters let pass, the nominal wavelength without any; `None` where nothing passes.
+pub(super) fn centre(filters: &[Filter], nominal: Wavelength) -> Option<Wavelength> {
+    match filters {
+        [] => Some(nominal),
+        [one] => Some(one.centre.unwrap_or(nominal)),
+        all => window(all, nominal).map(|[from, to]| Wavelength::metres(0.5 * (from + to))),
     }
+}
+
+/// `count` wavelengths across filters that stand one behind the other and their weights: midpoints of equal intervals. A
+/// weight is the product of the transmissions times d omega, which is d lambda / lambda^2; for one filter weights add up to
+/// 1, for several to what the others let pass of what the narrowest one does.
+pub(super) fn samples(filters: &[Filter], nominal: Wavelength, count: usize) -> Vec<(Wavelength, f64)> {
+    let Some(narrowest) = filters.iter().min_by(|a, b| a.width.si().total_cmp(&b.width.si())) else {
+        return vec![(nominal, 1.0)];
+    };
+    let across = |filters: &[Filter]| -> Vec<(Wavelength, f64)> {
+        let Some([from, to]) = window(filters, nominal) else { return Vec::new() };
+        let step = (to - from) / count as f64;
+        let sample = |j: usize| {
+            let wavelength = Wavelength::metres(from + step * (j as f64 + 0.5));
+            let passed: f64 = filters.iter().map(|f| f.transmission(wavelength, nominal)).product();
+            (wavelength, passed * step / wavelength.si().powi(2))
+        };
+        (0..count).map(sample).collect()
+    };
+    let whole: f64 = across(std::slice::from_ref(narrowest)).iter().map(|(_, weight)| weight).sum();
+    let mut all = across(filters);
+    all.iter_mut().for_each(|(_, weight)| *weight /= whole);
+    all
 }
 
 #[cfg(test)]
@@ -109,12 +83,31 @@ mod tests {
     #[test]
     fn weights_add_up_and_meet_the_half_width() {
         let filter = Filter { shape: Shape::Gaussian, width: Length::metres(3e-9), centre: None };
-        let samples = filter.samples(Wavelength::from_nm(810.0), 301);
+        let samples = samples(&[filter], Wavelength::from_nm(810.0), 301);
         let sum: f64 = samples.iter().map(|s| s.1).sum();
         assert!((sum - 1.0).abs() < 1e-12);
         // 3.00 nm wide at 810 nm: the weight per d omega differs across the filter by less than a percent
         let peak = samples[150].1;
         let half = samples.iter().filter(|s| s.1 > 0.5 * peak).count() as f64 * 9.0 / 301.0;
         assert!((half - 3.0).abs() < 0.06, "{half}");
+    }
+
+    #[test]
+    fn filters_one_behind_the_other_multiply() {
+        let nominal = Wavelength::from_nm(810.0);
+        let gaussian =
+            |nm: f64| Filter { shape: Shape::Gaussian, width: Length::metres(nm * 1e-9), centre: None };
+        let sum = |all: &[Filter]| samples(all, nominal, 301).iter().map(|s| s.1).sum::<f64>();
+        // widths of Gaussians: 1/w^2 = 1/3^2 + 1/4^2, w = 2.4 nm; both pass 2.4/3 of what the first does
+        assert!((sum(&[gaussian(3.0), gaussian(4.0)]) - 0.8).abs() < 3e-3);
+        let away = Filter {
+            shape: Shape::Rectangular,
+            centre: Some(Wavelength::from_nm(820.0)),
+            ..gaussian(1.0)
+        };
+        assert!(samples(&[gaussian(3.0), away], nominal, 301).is_empty());
+        // half a Gaussian
+        let upper = Filter { width: Length::metres(10e-9), centre: Some(Wavelength::from_nm(815.0)), ..away };
+        assert!((sum(&[gaussian(3.0), upper]) - 0.5).abs() < 2e-3);
     }
 }

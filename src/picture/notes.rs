@@ -23,12 +23,13 @@ pub fn notes(setup: &Setup, light: &Light, sensor: &Sensor) -> Vec<String> {
         ));
     }
     let waist = light.waist.map_or("a plane wave".into(), |w| format!("of waist {} um", w.um()));
-    let filter = |name: &str, filter: &Option<super::light::Filter>| {
-        filter.map_or(String::new(), |f| {
+    let filter = |name: &str, filters: &[super::light::Filter]| -> String {
+        let words = |f: &super::light::Filter| {
             let shape = if f.shape == Shape::Gaussian { "Gaussian" } else { "rectangular" };
             let centre = f.centre.map_or("the photon's wavelength".into(), |c| format!("{:.2} nm", c.nm()));
             format!("; {name} filter {shape}, {:.2} nm wide at {centre}", f.width.si() * 1e9)
-        })
+        };
+        filters.iter().map(words).collect()
     };
     let filters = if light.signal == light.idler {
         filter("the", &light.signal).replace("; the filter", "; filter")

@@ -5,6 +5,7 @@ use nalgebra::Matrix4;
 use super::angles::{fixed, grid, prose, rounded, signed};
 use super::table::{Cell, Column, Rows, Table, column};
 use crate::job::Setup;
+use crate::matching::Status;
 use crate::pairs::{Amplitude, Basis, DensityMatrix, Loss, Opening, State};
 
 /// Columns, without the two that end every table.
@@ -161,6 +162,15 @@ pub fn text(setup: &Setup, state: &State, budget: &[Loss], bases: &[Basis]) -> S
         out.push_str(&prose(&format!("{}: {}", basis.name(), nearest_words(state, *basis))));
     }
     out.push('\n');
+    if state.status == Status::NotConverged {
+        out.push_str(&prose(&format!(
+            "Not converged: visibilities may be off by {:.0e}, far more than was asked for, so that these numbers say \
+             little. The state turns too fast over the wavelengths or directions that are collected: take narrower \
+             filters or irises, or a shorter crystal.",
+            state.error
+        )));
+        out.push('\n');
+    }
     let header =
         ["basis", "along", "diagonal", "concurrence", "purity", "fidelity", "phase deg", "CHSH S", "error"];
     let rows: Vec<Vec<String>> = bases.iter().map(|basis| row(state, *basis)).collect();
@@ -196,7 +206,28 @@ fn heading(state: &State) -> String {
     )
 }
 
+/// Which history makes all pairs, but for a thousandth that entangles nothing, if one does.
+fn only_history(state: &State) -> Option<usize> {
+    const REST: f64 = 1e-3;
+    let [first, second] = [0, 3].map(|i| state.histories.0[(i, i)].re);
+    if first.min(second) > REST * first.max(second) || state.histories.concurrence() > 0.01 {
+        return None;
+    }
+    Some(usize::from(second > first))
+}
+
 fn nearest_words(state: &State, basis: Basis) -> String {
+    if let Some(only) = only_history(state) {
+        let which = ["first", "second"][only];
+        let ket = match basis {
+            Basis::Histories => format!(" |{}>", basis.kets(state)[3 * only]),
+            Basis::Lab => String::new(),
+        };
+        return format!(
+            "a product{ket}, not an entangled state: only the {which} of the two histories makes pairs, since the pump \
+             drives it alone or the other is not phase-matched here"
+        );
+    }
     let nearest = basis.of(state).nearest_bell();
     let kets = basis.kets(state);
     let (i, j) = if nearest.alike { (0, 3) } else { (1, 2) };

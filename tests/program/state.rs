@@ -39,6 +39,35 @@ fn a_filter_decides_how_well_the_histories_are_told_apart() {
 }
 
 #[test]
+fn a_pump_across_the_wave_that_pumps_makes_no_pairs() {
+    let one = format!("{BBO} --length 1mm --filter-width 3nm");
+    // the optic axis lies along x: the e wave that pumps is horizontal
+    for command in ["state", "compensate"] {
+        let refused = twincone(&format!("{command} {one} --pump-polarization 90deg")).refusal(1);
+        assert_says(&refused, &["drives none of the histories"]);
+    }
+    let told = twincone(&format!("state {one} --pump-polarization 60deg")).answer();
+    assert_says(&told, &["near ("]);
+}
+
+#[test]
+fn a_quadrature_that_misses_its_aim_is_told() {
+    let long = format!("{BBO} --length 1m --filter-width 3nm");
+    let table = state(&long);
+    assert!(table.number(0, "quadrature_error") > 0.01);
+    assert_eq!(table.column("status"), ["not_converged", "not_converged"]);
+    assert_says(&twincone(&format!("state {long}")).answer(), &["Not converged: visibilities may be off by"]);
+}
+
+#[test]
+fn a_pump_that_drives_one_of_two_crystals_leaves_a_product() {
+    let job = "state --job examples/two-crystals.toml --pump-polarization";
+    let product = twincone(&format!("{job} 0deg")).answer();
+    assert_says(&product, &["a product |", "not an entangled state"]);
+    assert!(!product.contains("near ("), "{product}");
+}
+
+#[test]
 fn a_basis_can_be_chosen_and_precision_asked_for() {
     let table = state(&format!("{BBO} --length 1mm --filter-width 10nm --basis lab --precision 1e-7"));
     assert_eq!(table.column("basis"), ["lab"]);

@@ -9,6 +9,7 @@ use crate::frame::{Direction, Lab, Mount};
 use crate::job::Setup;
 use crate::matching::{Actuator, ConesError, RingRow};
 use crate::optics::Crystal;
+use crate::pairs::{Filter, Pair, PumpPolarization, Stack, most_even};
 use crate::picture::{Backdrop, Optics, Seen, Sensor};
 use crate::quantity::{Angle, Length, Wavelength};
 use crate::report::angles::{fixed, rounded, signed};
@@ -81,36 +82,88 @@ fn pump_steps(page: &mut Page, facts: &Facts<'_>) {
         ),
         vec!["Mark where it hits: that is x = 0, y = 0.".into()],
     );
+    polarization_step(page, facts);
+    page.step(
+        format!("Measure the pump's wavelength: these numbers are for {}.", nm(facts.photons.pump)),
+        vec!["A nanometre moves the rings by what the last table of this sheet says.".into()],
+    );
+}
+
+/// The pump's polarization: that of the job, else the one that drives all crystals as evenly as can be.
+fn polarization_step(page: &mut Page, facts: &Facts<'_>) {
+    let setup = facts.setup;
     let field = |crystal: &Crystal| {
         let pairing = facts.pairing(crystal, Direction::forward())?;
         let Lab(field) = crystal.placement().to_lab(pairing.pump.field);
         Some(azimuth(field))
     };
-    let fields: Vec<f64> = facts.setup.crystals.iter().filter_map(field).collect();
-    let alike = fields.windows(2).all(|f| (f[0] - f[1]).abs() < 0.05);
+    let fields: Vec<f64> = setup.crystals.iter().filter_map(field).collect();
+    let needs = |(n, field): (usize, &f64)| match fields.len() {
+        1 => format!("The crystal takes most at {}.", field_words(*field)),
+        _ => format!("Crystal {} by itself takes most at {}.", n + 1, field_words(*field)),
+    };
+    let each = fields.iter().enumerate().map(needs);
+    if let PumpPolarization::Given { angle, phase } = setup.bench.polarization {
+        page.step(
+            format!("Set the pump's polarization as the job gives it: {}.", given_words(angle, phase)),
+            each.collect(),
+        );
+        return;
+    }
+    let alike = fields.windows(2).all(|f| axes_apart(f[0], f[1]) < 0.05);
     match fields.as_slice() {
         [] => {}
         [first, ..] if alike => page.step(
             format!("Set the pump's polarization: {}.", field_words(*first)),
             vec!["Check with a polarizer before the crystal: it passes most there and least a quarter turn from there.".into()],
         ),
-        [first, second] => page.step(
-            format!("Set the pump's polarization: {}.", field_words(0.5 * (first + second))),
-            vec![format!(
-                "Both crystals then take the same share: crystal 1 needs {}, crystal 2 {}.",
-                field_words(*first),
-                field_words(*second)
-            )],
-        ),
-        all => page.step(
-            "Set the pump's polarization between those of the crystals.".to_string(),
-            all.iter().enumerate().map(|(n, f)| format!("crystal {}: {}", n + 1, field_words(*f))).collect(),
-        ),
+        all => {
+            let even = as_the_pairs(facts).unwrap_or_else(|| between(all));
+            let mut see = vec!["That drives the crystals as evenly as can be.".to_string()];
+            see.extend(each);
+            page.step(format!("Set the pump's polarization: {}.", field_words(even)), see);
+        }
     }
-    page.step(
-        format!("Measure the pump's wavelength: these numbers are for {}.", nm(facts.photons.pump)),
-        vec!["A nanometre moves the rings by what the last table of this sheet says.".into()],
-    );
+}
+
+/// Angle between two axes across the beam, degrees in [0, 90].
+fn axes_apart(a: f64, b: f64) -> f64 {
+    ((a - b + 90.0).rem_euclid(180.0) - 90.0).abs()
+}
+
+/// The azimuth, degrees in [0, 180), at which the product of the shares cos^2 of these axes is largest.
+fn between(axes: &[f64]) -> f64 {
+    let share = |at: f64, axis: &f64| (at - axis.to_radians()).cos().powi(2);
+    let even = most_even(|at| axes.iter().map(|axis| share(at, axis)).product());
+    azimuth(nalgebra::Vector3::new(even.cos(), even.sin(), 0.0))
+}
+
+/// The azimuth that `state` takes, degrees in [0, 180): with all that the pump meets before each crystal. `None` where the
+/// job has no pair to look at.
+fn as_the_pairs(facts: &Facts<'_>) -> Option<f64> {
+    let setup = facts.setup;
+    let pair = facts.cones.crossings.iter().find_map(|row| Pair::at(row, setup.pump()))?;
+    let stack = Stack::new(&setup.crystals, &setup.bench, &pair, setup.interaction).ok()?;
+    Some(azimuth(nalgebra::Vector3::new(stack.polarization.x.re, stack.polarization.y.re, 0.0)))
+}
+
+/// E = (cos angle, e^(i phase) sin angle) in words.
+fn given_words(angle: Angle, phase: Angle) -> String {
+    let (sin, cos) = angle.si().sin_cos();
+    let (quadrature, in_phase) = phase.si().sin_cos();
+    if (sin * cos * quadrature).abs() < 1e-6 {
+        field_words(azimuth(nalgebra::Vector3::new(cos, sin * in_phase, 0.0)))
+    } else {
+        format!(
+            "elliptical, {} of the power vertical and the vertical field {} deg ahead of the horizontal one",
+            percent(sin * sin),
+            fixed(phase.degrees(), 1)
+        )
+    }
+}
+
+fn percent(share: f64) -> String {
+    format!("{} %", fixed(100.0 * share, 1))
 }
 
 fn crystal_steps(page: &mut Page, facts: &Facts<'_>, index: usize, crystal: &Crystal) {
@@ -260,21 +313,23 @@ fn ring_words(setup: &Setup, row: &RingRow) -> String {
 fn filter_words(facts: &Facts<'_>) -> String {
     let light = crate::picture::Light::of(facts.setup).unwrap_or_default();
     let photons = facts.photons;
-    let one = |filter: Option<crate::picture::Filter>, nominal: Wavelength| match filter {
-        Some(f) => format!(
-            "{} nm wide (FWHM) at {}",
-            rounded(f.width.si() * 1e9, 3),
-            nm(f.centre.unwrap_or(nominal))
-        ),
-        None => format!("centred at {} (no width is given in the job)", nm(nominal)),
+    let one = |filters: &[Filter], nominal: Wavelength| {
+        let words = |f: &Filter| {
+            let width = rounded(f.width.si() * 1e9, 3);
+            format!("{width} nm wide (FWHM) at {}", nm(f.centre.unwrap_or(nominal)))
+        };
+        match filters {
+            [] => format!("centred at {} (no width is given in the job)", nm(nominal)),
+            all => all.iter().map(words).collect::<Vec<_>>().join(" behind one "),
+        }
     };
     if photons.degenerate() {
-        one(light.signal, photons.signal)
+        one(&light.signal, photons.signal)
     } else {
         format!(
             "{}, and for the partner {}",
-            one(light.signal, photons.signal),
-            one(light.idler, photons.idler)
+            one(&light.signal, photons.signal),
+            one(&light.idler, photons.idler)
         )
     }
 }
@@ -313,4 +368,29 @@ fn tilt_table(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesError> {
 /// The angle that both sheets watch, for the first crystal.
 pub(super) fn watched(facts: &Facts<'_>) -> Option<Watched> {
     facts.watched(&facts.setup.crystals[0])
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use approx::assert_abs_diff_eq;
+
+    #[test]
+    fn polarizations_are_axes() {
+        // the middle of 0 deg and 179.4 deg is 179.7 deg, not 89.7 deg
+        assert_abs_diff_eq!(between(&[0.0, 179.4]), 179.7, epsilon = 1e-6);
+        assert_abs_diff_eq!(between(&[10.0, 30.0]), 20.0, epsilon = 1e-6);
+        // of two that are as good, the smaller
+        assert_abs_diff_eq!(between(&[90.0, 0.0]), 45.0, epsilon = 1e-6);
+        assert_abs_diff_eq!(axes_apart(0.02, 179.99), 0.03, epsilon = 1e-9);
+    }
+
+    #[test]
+    fn a_given_polarization_is_told() {
+        let words = |angle: f64, phase: f64| given_words(Angle::from_degrees(angle), Angle::from_degrees(phase));
+        assert_eq!(words(30.0, 0.0), "30.0 deg from +x towards +y");
+        assert_eq!(words(30.0, 180.0), "150.0 deg from +x towards +y");
+        assert_eq!(words(90.0, 90.0), "vertical, 90.0 deg from +x towards +y");
+        assert!(words(45.0, 90.0).starts_with("elliptical, 50.0 % of the power vertical"));
+    }
 }
