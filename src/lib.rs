@@ -18,6 +18,7 @@
 //! | [`job`] | the description of an experiment |
 //! | [`report`] | rows to text, CSV, JSON |
 //! | [`sweep`] | a report at every point of a grid of settings |
+//! | [`tolerance`] | what errors cost, and whether turning repairs it |
 
 pub mod frame;
 pub mod job;
@@ -28,3 +29,4 @@ pub(crate) mod places;
 pub mod quantity;
 pub mod report;
 pub mod sweep;
+pub mod tolerance;

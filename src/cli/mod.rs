@@ -16,6 +16,7 @@ mod run;
 mod schema;
 mod sweep_file;
 mod tilt;
+mod tolerance;
 mod twin;
 
 use std::process::ExitCode;
@@ -56,6 +57,8 @@ enum Command {
     Cones(Box<cones::Args>),
     /// Find the settings of the mount that reach a target
     Tilt(Box<tilt::Args>),
+    /// Say what errors of cut, wavelength and mounting cost, and what turning repairs
+    Tolerance(Box<tolerance::Args>),
     /// Follow a photon's partner
     Twin(Box<twin::Args>),
     /// Write one report at every point of a grid of settings, as CSV
@@ -111,6 +114,7 @@ pub fn run(typed: &Typed) -> Result<output::Outcome, Failure> {
         Command::Cut(args) => cut::run(args, out),
         Command::Cones(args) => cones::run(args, out),
         Command::Tilt(args) => tilt::run(args, out),
+        Command::Tolerance(args) => tolerance::run(args, out),
         Command::Twin(args) => twin::run(args, out),
         Command::Run(args) => run::run(args, out),
         Command::Join(args) => join::run(args, out),

@@ -10,6 +10,7 @@ pub mod materials;
 mod spread;
 pub mod table;
 pub mod tilt;
+pub mod tolerance;
 pub mod twin;
 
 pub use conventions::{Conventions, room_words};

@@ -12,6 +12,7 @@ mod job;
 mod materials;
 mod sweep;
 mod tilt;
+mod tolerance;
 mod twin;
 
 mod bad_input;

@@ -12,7 +12,7 @@ pub struct Table {
 }
 
 /// Columns that hold words.
-const WORDS: [&str; 19] = [
+const WORDS: [&str; 24] = [
     "crystal_material",
     "crystal_dataset",
     "material",
@@ -30,6 +30,11 @@ const WORDS: [&str; 19] = [
     "optic_sign",
     "default_dataset",
     "datasets",
+    "contribution",
+    "error_unit",
+    "quantity",
+    "parameter",
+    "unit",
     "status",
     "extrapolated",
 ];
