@@ -15,11 +15,13 @@
 //! | [`material`] | dispersion, nonlinear tensors, the catalogue, user files |
 //! | [`optics`] | waves at a tangential wave vector |
 //! | [`matching`] | phase matching: cuts, rings, crossings, turns |
+//! | [`fit`] | the real bench, read out of what was measured |
 //! | [`job`] | the description of an experiment |
 //! | [`report`] | rows to text, CSV, JSON |
 //! | [`sweep`] | a report at every point of a grid of settings |
 //! | [`tolerance`] | what errors cost, and whether turning repairs it |
 
+pub mod fit;
 pub mod frame;
 pub mod job;
 pub mod matching;

@@ -5,6 +5,7 @@ pub mod cones;
 mod conventions;
 pub mod cut;
 mod export;
+pub mod fit;
 pub mod index;
 pub mod materials;
 mod spread;
