@@ -1,9 +1,12 @@
 //! `fit`: what are the real cut, tilt zero, roll and pump?
 
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 
 use clap::{Args as ClapArgs, ValueEnum};
-use twincone::fit::{Fitted, Measurement, Question, TEMPLATE, View, doubts, fit, read, unknowns};
+use twincone::fit::{
+    Exposure, Fitted, Frame, Measurement, Question, Settings, TEMPLATE, View, doubts, fit, fit_frames, read,
+    unknowns,
+};
 use twincone::job::setup::{GivenCut, Needs, Setup, Stage};
 use twincone::job::{resolve, setup::SetupError};
 use twincone::matching::{Actuator, Target, tune};
@@ -14,14 +17,16 @@ use twincone::report::{Answer, Conventions, resolved_job};
 use super::cut::TargetArgs;
 use super::failure::Failure;
 use super::options::{ExperimentArgs, catalogue, name_of, read_text};
-use super::output::{Outcome, OutputArgs};
+use super::output::{Outcome, OutputArgs, write_whole};
 
 /// Options of `fit`.
 #[derive(Debug, ClapArgs)]
 pub struct Args {
     /// CSV file of measurements, or - for standard input
-    #[arg(value_name = "FILE", required_unless_present = "template")]
+    #[arg(value_name = "FILE", required_unless_present_any = ["template", "image"])]
     file: Option<PathBuf>,
+    #[command(flatten)]
+    image: ImageArgs,
     /// Print a table to fill in
     #[arg(long)]
     template: bool,
@@ -52,6 +57,30 @@ pub struct Args {
     experiment: ExperimentArgs,
 }
 
+/// Frames of a camera instead of a table.
+#[derive(Debug, ClapArgs)]
+#[command(next_help_heading = "Frames")]
+struct ImageArgs {
+    /// Grey PNG of 8 or 16 bits in which the rings are found; repeat it for several tilts
+    #[arg(long, value_name = "FRAME", conflicts_with = "file")]
+    image: Vec<PathBuf>,
+    /// What the mount showed for each frame [default: the job's tilt]
+    #[arg(long, value_name = "ANGLE", allow_hyphen_values = true, requires = "image")]
+    image_tilt: Vec<String>,
+    /// Side of a pixel on the sensor, or on the screen that the camera looks at
+    #[arg(long, value_name = "LENGTH", requires = "image")]
+    pixel_pitch: Option<String>,
+    /// Focal length of the lens whose focal plane the sensor is in [default: a sensor at --distance]
+    #[arg(long, value_name = "LENGTH", requires = "image")]
+    focal_length: Option<String>,
+    /// Where the undeviated pump is, pixels from the upper left corner [default: the frame's middle]
+    #[arg(long, value_name = "X,Y", requires = "image")]
+    beam_centre: Option<String>,
+    /// Write the first frame with the fitted rings over it, the others beside it with their numbers
+    #[arg(long, value_name = "FILE", requires = "image")]
+    write_frame: Option<PathBuf>,
+}
+
 #[derive(Debug, Clone, Copy, PartialEq, ValueEnum)]
 enum ViewTurn {
     /// Upright
@@ -78,12 +107,85 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     if args.template {
         return output.plain(TEMPLATE.into());
     }
+    if !args.image.image.is_empty() {
+        return run_frames(args, output);
+    }
     let path = args.file.as_ref().ok_or_else(|| Failure::usage("no file of measurements"))?;
     let data = read(&read_text(path)?).map_err(|e| Failure::usage(format!("{}: {e}", name_of(path))))?;
     let setup = setup(args, output)?;
     let question = question(args, setup, with_sigma(args, data)?)?;
     let fitted = fit(&question).map_err(|e| Failure::usage(e.to_string()))?;
     answer(args, output, &question, &fitted)
+}
+
+/// Fits the job to the rings in frames.
+fn run_frames(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
+    let mut setup = setup(args, output)?;
+    if let Some(text) = &args.image.focal_length {
+        setup.screen = length("--focal-length", text)?;
+    }
+    let exposures = exposures(&args.image)?;
+    let question = question(args, setup, Vec::new())?;
+    let found = fit_frames(&question, &exposures).map_err(|e| Failure::usage(e.to_string()))?;
+    if let Some(path) = &args.image.write_frame {
+        for (number, (exposure, outlines)) in exposures.iter().zip(&found.outlines).enumerate() {
+            let bytes = exposure.frame.with_outlines(outlines).map_err(|e| Failure::usage(e.to_string()))?;
+            let path = numbered(path, number);
+            write_whole(&path, &bytes)
+                .map_err(|e| Failure::file("write", &path.display().to_string(), &e))?;
+        }
+    }
+    answer(args, output, &found.question, &found.fitted)
+}
+
+/// frame.png, frame.2.png, ...
+fn numbered(path: &Path, number: usize) -> PathBuf {
+    if number == 0 {
+        return path.to_path_buf();
+    }
+    let extension = path.extension().and_then(|e| e.to_str()).unwrap_or("png");
+    path.with_extension(format!("{}.{extension}", number + 1))
+}
+
+fn length(option: &str, text: &str) -> Result<Length, Failure> {
+    let length: Length = text.parse().map_err(|e| Failure::usage(format!("{option}: {e}")))?;
+    if length.si() > 0.0 {
+        Ok(length)
+    } else {
+        Err(Failure::usage(format!("{option} must be above 0, not {text}")))
+    }
+}
+
+fn exposures(args: &ImageArgs) -> Result<Vec<Exposure>, Failure> {
+    let pitch = args.pixel_pitch.as_ref().ok_or_else(|| {
+        Failure::usage("--image needs --pixel-pitch, the side of a pixel, for example --pixel-pitch 5um")
+    })?;
+    let pitch = length("--pixel-pitch", pitch)?.mm();
+    if !args.image_tilt.is_empty() && args.image_tilt.len() != args.image.len() {
+        return Err(Failure::usage("--image-tilt: give one for each --image, in the same order, or none"));
+    }
+    let centre = args.beam_centre.as_ref().map(|text| pixels(text)).transpose()?;
+    let each = args.image.iter().enumerate().map(|(n, path)| {
+        let shown = path.display().to_string();
+        let bytes = std::fs::read(path).map_err(|e| Failure::file("read", &shown, &e))?;
+        let frame =
+            Frame::read(&bytes, pitch, centre).map_err(|e| Failure::usage(format!("{shown}: {e}")))?;
+        let tilt = args.image_tilt.get(n).map(|text| {
+            text.parse::<Angle>()
+                .map(Angle::degrees)
+                .map_err(|e| Failure::usage(format!("--image-tilt: {e}")))
+        });
+        Ok(Exposure { frame, settings: Settings { tilt: tilt.transpose()?, ..Settings::default() } })
+    });
+    each.collect()
+}
+
+fn pixels(text: &str) -> Result<[f64; 2], Failure> {
+    let fault =
+        || Failure::usage(format!("--beam-centre {text}: write two numbers of pixels, such as 320.5,240"));
+    let (x, y) = text.split_once(',').ok_or_else(fault)?;
+    let number = |t: &str| t.trim().parse::<f64>().ok().filter(|v| v.is_finite()).ok_or_else(fault);
+    Ok([number(x)?, number(y)?])
 }
 
 /// The experiment as it is believed to be.

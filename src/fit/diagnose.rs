@@ -13,11 +13,11 @@ pub struct Doubt {
     pub remedy: String,
 }
 
-/// Combinations about which the data say less than half of what the priors do. With J the slopes in units of the priors'
+/// Combinations of which the data leave more than two fifths of what the priors leave open. With J the slopes in units of the priors'
 /// standard deviations, an eigenvalue l of J^T J leaves 1/sqrt(1 + l) of the prior along its eigenvector.
 #[must_use]
 pub fn doubts(question: &Question, fitted: &Fitted) -> Vec<Doubt> {
-    const LEFT: f64 = 0.7;
+    const LEFT: f64 = 0.4;
     let eigen = fitted.information.clone().symmetric_eigen();
     let mut all: Vec<Doubt> = Vec::new();
     for (value, vector) in eigen.eigenvalues.iter().zip(eigen.eigenvectors.column_iter()) {

@@ -5,6 +5,8 @@
 //! about keeps its prior and its prior's uncertainty instead of running away.
 
 mod diagnose;
+mod find;
+mod frame;
 mod least_squares;
 mod measured;
 mod model;
@@ -13,9 +15,11 @@ mod solve;
 mod unknown;
 
 pub use diagnose::{Doubt, doubts};
+pub use find::{Exposure, Found, fit_frames};
+pub use frame::{Frame, Outline};
 pub use least_squares::{Minimum, minimise};
 pub use measured::{Label, Measurement, Seen, Settings, View};
-pub use model::Model;
+pub use model::{Model, Traced};
 pub use read::{FileError, TEMPLATE, read};
 pub use solve::{FitError, Fitted, Question, Residual, fit};
 pub use unknown::{Unknown, unknowns};

@@ -7,7 +7,7 @@ use super::unknown::{Bearings, Unknown};
 use crate::frame::{Direction, Lab};
 use crate::job::Setup;
 use crate::matching::{
-    Emission, Landing, Meeting, Mismatch, Photons, Roles, Traced, Triplet, curves, meet, rings,
+    self, Emission, Landing, Meeting, Mismatch, Photons, Roles, Triplet, curves, meet, rings,
 };
 use crate::optics::{Indices, Polarization};
 use crate::quantity::{Angle, Temperature, Wavelength};
@@ -28,6 +28,19 @@ struct Predicted {
     /// Circle on the screen, in units of the distance; the radius as `half_angle`.
     centre: Vector2<f64>,
     radius: f64,
+}
+
+/// A predicted ring in the picture, mm.
+#[derive(Debug, Clone)]
+pub struct Traced {
+    /// Which photon, and its polarization.
+    pub label: (Landing, Polarization),
+    /// Points all round.
+    pub outline: Vec<Vector2<f64>>,
+    /// Middle of the circle that fits it best.
+    pub centre: Vector2<f64>,
+    /// Width at half maximum.
+    pub thickness: f64,
 }
 
 /// Predicts measurements. Holds a copy of the experiment that it turns about.
@@ -153,14 +166,32 @@ impl Model {
     }
 
     /// How many rings a measurement could be of; 1 where its label decides.
-    #[must_use]
-    pub fn choices(&mut self, measurement: &Measurement) -> usize {
+    ///
+    /// # Errors
+    /// Indices that are not to be had, a photon that is not longer than the pump.
+    pub fn choices(&mut self, measurement: &Measurement) -> Result<usize, String> {
         let Some(emission) = self.emission(&measurement.settings, measurement.label.wavelength) else {
-            return 0;
+            return Err(self.no_emission(measurement));
         };
-        match measurement.seen {
+        Ok(match measurement.seen {
             Seen::Crossing(_) | Seen::CrossingAngles(_) => 1,
             _ => self.candidates(&emission, &measurement.label).len(),
+        })
+    }
+
+    fn no_emission(&self, measurement: &Measurement) -> String {
+        let pump = self.setup.pump();
+        let signal = measurement.label.wavelength.unwrap_or_else(|| self.setup.signals()[0]);
+        let Some(photons) = Photons::new(pump, signal) else {
+            return format!("a photon of {signal} is not longer than the pump, {pump}");
+        };
+        let mut crystal = self.setup.crystals[0].clone();
+        if let Some(degc) = measurement.settings.temperature {
+            crystal.temperature = Temperature::celsius(degc);
+        }
+        match Triplet::new(&crystal, &photons) {
+            Err(error) => error.to_string(),
+            Ok(_) => "the pump does not enter the crystal".into(),
         }
     }
 
@@ -199,6 +230,29 @@ impl Model {
             Seen::Crossing(_) | Seen::CrossingAngles(_) => {}
         }
         Some(all)
+    }
+
+    /// All rings as they should stand in the picture, with so many points; those that are not there are left out.
+    #[must_use]
+    pub fn traced(&mut self, settings: &Settings, points: usize) -> Vec<Traced> {
+        let Some(emission) = self.emission(settings, None) else { return Vec::new() };
+        let distance = self.setup.screen.mm();
+        let mut all = Vec::new();
+        for candidate in self.candidates(&emission, &Label::default()) {
+            for ring in rings(&candidate.mismatch, candidate.length).unwrap_or_default() {
+                let place = |n: usize| {
+                    let azimuth = std::f64::consts::TAU * n as f64 / points as f64;
+                    let Lab(d) = ring.curve.at(&candidate.mismatch, azimuth)?.lab();
+                    Some(self.in_picture(Vector2::new(d.x / d.z, d.y / d.z) * distance))
+                };
+                let Some(outline) = (0..points).map(place).collect::<Option<Vec<_>>>() else { continue };
+                let centre = self.in_picture(ring.circle().0 * distance);
+                // a ring whose inside is filled is as thick as it is wide
+                let thickness = ring.thickness.unwrap_or(ring.half_angle) * distance;
+                all.push(Traced { label: candidate.label, outline, centre, thickness });
+            }
+        }
+        all
     }
 
     /// The nearest of the predicted crossings.
@@ -304,7 +358,7 @@ fn crossings(emission: &Emission, model: &Model) -> Option<Vec<Direction>> {
     let (one, two) = (emission.mismatch(roles)?, emission.mismatch(roles.exchanged())?);
     curves(&two).ok()?;
     let curve = curves(&one).ok()?.into_iter().next()?;
-    let met = meet(Traced { mismatch: &one, curve: &curve }, &two);
+    let met = meet(matching::Traced { mismatch: &one, curve: &curve }, &two);
     let points: Vec<Direction> =
         met.into_iter().filter(|(_, how)| *how != Meeting::Coincide).map(|(c, _)| c.direction).collect();
     (!points.is_empty()).then_some(points)

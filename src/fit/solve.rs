@@ -37,6 +37,16 @@ pub struct Question {
     pub robust: bool,
 }
 
+impl Question {
+    /// The unknown that changes the rings most: along which starts are looked for.
+    #[must_use]
+    pub fn tuner(&self) -> Option<usize> {
+        let tunes = ["theta", "zero", "tilt", "wavelength", "phi", "cross_tilt", "temperature", "poling"];
+        let last = |u: &Unknown| u.name.rsplit('.').next().unwrap_or_default().to_string();
+        tunes.iter().find_map(|t| self.unknowns.iter().position(|u| last(u) == *t))
+    }
+}
+
 /// One number against its prediction.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Residual {
@@ -222,7 +232,7 @@ impl<'a> Search<'a> {
     fn choices(&mut self) -> Result<Vec<usize>, FitError> {
         let mut all = Vec::new();
         for m in &self.question.data {
-            let count = self.model.choices(m);
+            let count = self.model.choices(m).map_err(|e| FitError(format!("line {}: {e}", m.line)))?;
             if count == 0 {
                 return Err(FitError(format!(
                     "line {}: there is no such photon here: look at photon, polarization, wavelength and --type",
@@ -300,9 +310,7 @@ impl<'a> Search<'a> {
     fn starts(&mut self, choices: &[usize]) -> Vec<(DVector<f64>, Vec<usize>)> {
         const STARTS: usize = 3;
         let count = self.question.unknowns.len();
-        let tunes = ["theta", "zero", "tilt", "wavelength", "phi", "cross_tilt", "temperature", "poling"];
-        let last = |u: &Unknown| u.name.rsplit('.').next().unwrap_or_default().to_string();
-        let tuner = tunes.iter().find_map(|t| self.question.unknowns.iter().position(|u| last(u) == *t));
+        let tuner = self.question.tuner();
         let mut tried = Vec::new();
         for n in 0..=20 {
             let mut x = DVector::zeros(count);
@@ -381,8 +389,13 @@ impl<'a> Search<'a> {
         let Some(covariance) = normal.clone().cholesky().map(|c| c.inverse()).filter(|c| sound(c)) else {
             return Err(inseparable(unknowns, &normal));
         };
-        let values = self.values(&minimum.x);
-        self.set(&minimum.x).ok_or_else(|| FitError("the fitted values are impossible".into()))?;
+        // digits far below any uncertainty say nothing, and make jobs hard to read
+        let values: Vec<f64> =
+            self.values(&minimum.x).iter().map(|v| (v * 1e7).round() / 1e7 + 0.0).collect();
+        self.model
+            .set(unknowns, &values)
+            .ok()
+            .ok_or_else(|| FitError("the fitted values are impossible".into()))?;
         let residuals = self.all_residuals(assigned);
         let chi_square: f64 = residuals.iter().map(|r| r.pull().powi(2)).sum();
         // an unknown that the priors hold takes nothing of the data's freedom
@@ -405,7 +418,7 @@ impl<'a> Search<'a> {
             chi_square,
             freedom,
             residuals,
-            other_way: other,
+            other_way: other.map(|cost| chi_square + cost - minimum.cost),
             stated,
             settled: minimum.settled,
             setup: self.model.setup().clone(),

@@ -353,6 +353,11 @@ fn quality(finding: &Finding<'_>) -> String {
                 .into()
         }
     };
+    let mut tilts: Vec<f64> = question_tilts(finding);
+    tilts.dedup();
+    if tilts.len() < 2 {
+        out.push_str(" All of it was measured at one tilt: measure at three or more, which tests the tilt's sign and the cut.");
+    }
     if !fitted.settled {
         out.push_str(" The search did not settle.");
     }
@@ -371,9 +376,16 @@ fn quality(finding: &Finding<'_>) -> String {
     out
 }
 
+/// Tilts of all lines, in order.
+fn question_tilts(finding: &Finding<'_>) -> Vec<f64> {
+    let mut tilts: Vec<f64> = finding.question.data.iter().filter_map(|m| m.settings.tilt).collect();
+    tilts.sort_by(f64::total_cmp);
+    tilts
+}
+
 fn doubts(finding: &Finding<'_>) -> String {
     let mut out = String::new();
-    for doubt in finding.doubts {
+    for doubt in finding.doubts.iter().filter(|_| finding.holds()) {
         let share = fixed(100.0 * doubt.left, 0);
         out.push_str(&match doubt.names.as_slice() {
             [only] => format!(
@@ -431,7 +443,7 @@ fn others(finding: &Finding<'_>) -> String {
     let mut told = false;
     for (view, other) in finding.views {
         let gain = fitted.chi_square - other.chi_square;
-        if gain > -9.0 && other.absent.is_empty() {
+        if gain > -9.0 && other.absent.is_empty() && finding.holds() {
             told = true;
             let how = if gain > 9.0 { "fits much better" } else { "fits as well" };
             out.push_str(&format!(
