@@ -2,14 +2,18 @@
 
 use std::f64::consts::TAU;
 
-use nalgebra::Vector2;
+use nalgebra::{Vector2, Vector3};
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::{Rng, SeedableRng};
 use rayon::prelude::*;
-use twincone::fit::{Fitted, Label, Measurement, Question, Seen, Settings, View, doubts, fit, unknowns};
+use twincone::fit::{
+    Exposure, Fitted, Frame, Label, Measurement, Question, Seen, Settings, View, doubts, fit, fit_frames,
+    unknowns,
+};
+use twincone::frame::{Direction, Lab};
 use twincone::job::setup::Needs;
 use twincone::job::{Document, Setup, resolve};
-use twincone::matching::{Want, cones};
+use twincone::matching::{Emission, Mismatch, Want, cones};
 use twincone::material::Catalogue;
 use twincone::quantity::{Angle, Wavelength};
 
@@ -186,4 +190,73 @@ fn too_few_numbers_and_impossible_places_are_refused() {
     let far = vec![Measurement { seen: Seen::Ring { centre: None, radius: Some(8e4) }, ..data[0].clone() }];
     let said = fit(&question(far, &["theta"])).expect_err("out of the world").to_string();
     assert!(said.contains("unit"), "{said}");
+}
+
+/// Pixels along each side of a frame, and their side on the screen in mm.
+const PIXELS: usize = 400;
+const PITCH: f64 = 0.6;
+
+/// A frame of 8 bits as a camera counts it: sinc^2(Delta_k L/2) of both processes at each pixel, photons that arrive by
+/// chance, background and hot pixels. Nothing in it traces a ring.
+fn frame(theta: f64, roll: f64, chance: &mut Chance) -> Vec<u8> {
+    let setup = believed();
+    let mut crystal = setup.crystals[0].clone();
+    crystal.cut.theta = Angle::from_degrees(theta);
+    crystal.orientation.roll = Angle::from_degrees(roll);
+    let emission = Emission::of(&crystal, setup.photons()).expect("indices");
+    let roles = emission.wanted(&crystal, setup.interaction).expect("two processes");
+    let mismatches: Vec<Mismatch> = roles.iter().filter_map(|r| emission.mismatch(*r)).collect();
+    let mut data = Vec::with_capacity(PIXELS * PIXELS);
+    for row in 0..PIXELS {
+        for column in 0..PIXELS {
+            let place = |n: usize| (n as f64 + 0.5 - 0.5 * PIXELS as f64) * PITCH;
+            let to = Direction::new(Lab(Vector3::new(place(column), -place(row), 1000.0)));
+            let light = |m: &Mismatch| {
+                let half = m.at(m.tangential(to)).map_or(0.0, |s| 0.5 * s.value * emission.length);
+                if half == 0.0 { 1.0 } else { (half.sin() / half).powi(2) }
+            };
+            let photons = 15.0 * mismatches.iter().map(light).sum::<f64>() + 10.0;
+            let counted = photons + photons.sqrt() * chance.normal();
+            let hot = chance.uniform() < 1e-3;
+            data.push(if hot { 255 } else { (4.0 * counted).clamp(0.0, 255.0) as u8 });
+        }
+    }
+    let mut bytes = Vec::new();
+    let mut encoder = png::Encoder::new(&mut bytes, PIXELS as u32, PIXELS as u32);
+    encoder.set_color(png::ColorType::Grayscale);
+    encoder.set_depth(png::BitDepth::Eight);
+    encoder.write_header().and_then(|mut w| w.write_image_data(&data)).expect("a frame");
+    bytes
+}
+
+/// Frames of crystals anywhere within a catalogue's tolerance give the cut to 0.02 deg.
+#[test]
+fn frames_give_the_cut() {
+    let mut chance = Chance::of(6);
+    for (theta, roll) in [(42.15, 1.5), (42.45, 0.0), (42.9, -2.0)] {
+        let bytes = frame(theta, roll, &mut chance);
+        let exposure = Exposure {
+            frame: Frame::read(&bytes, PITCH, None).expect("a frame"),
+            settings: Settings::default(),
+        };
+        let found =
+            fit_frames(&question(Vec::new(), &["theta", "roll"]), &[exposure.clone()]).expect("rings");
+        let off = found.fitted.values[0] - theta;
+        assert!(off.abs() < 0.02, "theta {theta}: off by {off}");
+        let off = found.fitted.values[1] - roll;
+        assert!(off.abs() < 0.3, "roll {roll}: off by {off}");
+        let over = exposure.frame.with_outlines(&found.outlines[0]).expect("a frame");
+        assert_eq!(Frame::read(&over, PITCH, None).expect("a frame").size(), (PIXELS, PIXELS));
+    }
+}
+
+/// Noise alone is no ring.
+#[test]
+fn an_empty_frame_has_no_rings() {
+    let mut chance = Chance::of(7);
+    let bytes = frame(38.0, 0.0, &mut chance);
+    let exposure =
+        Exposure { frame: Frame::read(&bytes, PITCH, None).expect("a frame"), settings: Settings::default() };
+    let said = fit_frames(&question(Vec::new(), &["theta"]), &[exposure]).expect_err("no ring").to_string();
+    assert!(said.contains("no ring stands out") || said.contains("no light"), "{said}");
 }

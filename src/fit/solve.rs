@@ -101,8 +101,8 @@ pub struct Fitted {
     pub residuals: Vec<Residual>,
     /// chi-square with the rings that carry no label taken the other way, where there are such.
     pub other_way: Option<f64>,
-    /// Whether uncertainties were stated, or follow from the scatter.
-    pub stated: bool,
+    /// Where some uncertainties were not stated: the scatter in units of what was assumed for those.
+    pub scatter: Option<f64>,
     /// Whether the search settled.
     pub settled: bool,
     /// The experiment with the fitted values.
@@ -121,12 +121,32 @@ impl Fitted {
     }
 }
 
-/// Fits.
+/// Fits. Measurements without a stated uncertainty get one from their scatter, with which the fit is made again: priors
+/// weigh against data only if both have a size.
 ///
 /// # Errors
 /// Too few measurements, places where no light can go, nothing of the kind within reach of the priors.
 pub fn fit(question: &Question) -> Result<Fitted, FitError> {
+    const LEAST: f64 = 1e-2;
     check(question)?;
+    let first = fit_as_stated(question)?;
+    if question.data.iter().all(|m| m.sigma.is_some()) {
+        return Ok(first);
+    }
+    let scatter = first.reduced().map_or(1.0, |r| r.sqrt().max(LEAST));
+    let mut again = question.clone();
+    for m in again.data.iter_mut().filter(|m| m.sigma.is_none()) {
+        m.sigma = Some(scatter * assumed(m));
+    }
+    Ok(Fitted { scatter: Some(scatter), ..fit_as_stated(&again)? })
+}
+
+/// What a measurement without a stated uncertainty is taken to have at first.
+fn assumed(m: &Measurement) -> f64 {
+    if m.seen.is_angle() { ASSUMED.1 } else { ASSUMED.0 }
+}
+
+fn fit_as_stated(question: &Question) -> Result<Fitted, FitError> {
     let mut search = Search::new(question);
     let choices = search.choices()?;
     let mut best: Option<(Minimum, Vec<usize>)> = None;
@@ -245,7 +265,7 @@ impl<'a> Search<'a> {
     }
 
     fn sigma(&self, m: &Measurement) -> f64 {
-        m.sigma.unwrap_or(if m.seen.is_angle() { ASSUMED.1 } else { ASSUMED.0 })
+        m.sigma.unwrap_or_else(|| assumed(m))
     }
 
     /// Pulls of all data with an assignment, then of the priors; `None` where the experiment cannot be so. A crossing
@@ -377,7 +397,7 @@ impl<'a> Search<'a> {
         assigned: &[usize],
         other: Option<f64>,
     ) -> Result<Fitted, FitError> {
-        let Question { unknowns, data, .. } = self.question;
+        let unknowns = &self.question.unknowns;
         let count = unknowns.len();
         let rows = minimum.residuals.len() - count;
         let slopes = minimum.jacobian.rows(0, rows).into_owned();
@@ -401,10 +421,7 @@ impl<'a> Search<'a> {
         // an unknown that the priors hold takes nothing of the data's freedom
         let determined = (&covariance * &information).trace();
         let freedom = rows as f64 - determined;
-        let stated = data.iter().all(|m| m.sigma.is_some());
-        let widen = if stated || freedom < 0.5 { 1.0 } else { (chi_square / freedom).max(0.0).sqrt() };
-        let sigmas: Vec<f64> =
-            (0..count).map(|i| covariance[(i, i)].sqrt() * unknowns[i].scale * widen).collect();
+        let sigmas: Vec<f64> = (0..count).map(|i| covariance[(i, i)].sqrt() * unknowns[i].scale).collect();
         let correlations = DMatrix::from_fn(count, count, |i, j| {
             covariance[(i, j)] / (covariance[(i, i)] * covariance[(j, j)]).sqrt()
         });
@@ -419,7 +436,7 @@ impl<'a> Search<'a> {
             freedom,
             residuals,
             other_way: other.map(|cost| chi_square + cost - minimum.cost),
-            stated,
+            scatter: None,
             settled: minimum.settled,
             setup: self.model.setup().clone(),
             zero,

@@ -69,7 +69,11 @@ impl Finding<'_> {
     #[must_use]
     pub fn holds(&self) -> bool {
         let fitted = self.fitted;
-        let described = !fitted.stated || fitted.reduced().is_none_or(|r| r < 30.0);
+        // of what was assumed, no more than of what was stated
+        let described = match fitted.scatter {
+            Some(scatter) => scatter * scatter < 30.0,
+            None => fitted.reduced().is_none_or(|r| r < 30.0),
+        };
         described && fitted.absent.is_empty() && !fitted.at_bound.contains(&true)
     }
 
@@ -326,7 +330,12 @@ fn advice(finding: &Finding<'_>) -> String {
 fn quality(finding: &Finding<'_>) -> String {
     let fitted = finding.fitted;
     let mut out = match fitted.reduced() {
-        Some(reduced) if fitted.stated => {
+        _ if fitted.scatter.is_some() => format!(
+            "No uncertainties were stated (column sigma_mm or --sigma): they are taken from the scatter, {} times 0.5 mm \
+             (0.03 deg).",
+            fixed(fitted.scatter.unwrap_or(1.0), 2)
+        ),
+        Some(reduced) => {
             let word = match reduced {
                 r if r < 0.3 => {
                     "less than the stated uncertainties allow: they are too large, or copied from a computation"
@@ -343,11 +352,6 @@ fn quality(finding: &Finding<'_>) -> String {
                 fixed(fitted.freedom, 1)
             )
         }
-        Some(_) => format!(
-            "No uncertainties were stated (column sigma_mm or --sigma): those here follow from the scatter, {} times 0.5 mm \
-             (0.03 deg).",
-            fixed(fitted.reduced().unwrap_or(1.0).sqrt(), 2)
-        ),
         None => {
             "There are no more measurements than unknowns, so nothing tests the fit: measure at more tilts."
                 .into()
@@ -495,11 +499,16 @@ fn datasets(finding: &Finding<'_>, key: impl Fn(&Fitted) -> String) -> String {
     out
 }
 
+/// Every number but points on edges, of which there may be hundreds: those that are far off, and their scatter.
 fn residual_grid(fitted: &Fitted) -> String {
+    const MANY: usize = 24;
     let header = ["quantity", "line", "tilt deg", "measured", "fitted", "sigma"];
+    let edges: Vec<&Residual> = fitted.residuals.iter().filter(|r| r.quantity == "edge_mm").collect();
+    let told = |r: &&Residual| edges.len() <= MANY || r.quantity != "edge_mm" || r.is_outlier();
     let rows: Vec<Vec<String>> = fitted
         .residuals
         .iter()
+        .filter(told)
         .map(|r| {
             vec![
                 r.quantity.into(),
@@ -511,5 +520,14 @@ fn residual_grid(fitted: &Fitted) -> String {
             ]
         })
         .collect();
-    grid(&header, &rows)
+    let mut out = if rows.is_empty() { String::new() } else { grid(&header, &rows) };
+    if edges.len() > MANY {
+        let square = edges.iter().map(|r| (r.measured - r.fitted).powi(2)).sum::<f64>() / edges.len() as f64;
+        out.push_str(&format!(
+            "  {} points on rings lie {} mm off on average (root mean square); --format json has each\n",
+            edges.len(),
+            fixed(square.sqrt(), 3)
+        ));
+    }
+    out
 }

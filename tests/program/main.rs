@@ -7,6 +7,7 @@ mod table;
 mod completions;
 mod cones;
 mod cut;
+mod fit;
 mod index;
 mod job;
 mod materials;
