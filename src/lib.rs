@@ -16,11 +16,14 @@
 //! | [`optics`] | waves at a tangential wave vector |
 //! | [`matching`] | phase matching: cuts, rings, crossings, turns |
 //! | [`pairs`] | amplitudes, the entangled state, compensation |
+//! | [`fit`] | the real bench, read out of what was measured |
 //! | [`job`] | the description of an experiment |
 //! | [`picture`] | what a screen or camera shows |
 //! | [`report`] | rows to text, CSV, JSON |
 //! | [`sweep`] | a report at every point of a grid of settings |
+//! | [`tolerance`] | what errors cost, and whether turning repairs it |
 
+pub mod fit;
 pub mod frame;
 pub mod job;
 pub mod matching;
@@ -32,3 +35,4 @@ pub(crate) mod places;
 pub mod quantity;
 pub mod report;
 pub mod sweep;
+pub mod tolerance;

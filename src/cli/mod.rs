@@ -5,6 +5,7 @@ mod completions;
 mod cones;
 mod cut;
 mod failure;
+mod fit;
 mod index;
 mod job;
 mod join;
@@ -20,6 +21,7 @@ mod sheet;
 mod state;
 mod sweep_file;
 mod tilt;
+mod tolerance;
 mod twin;
 
 use std::process::ExitCode;
@@ -60,6 +62,10 @@ enum Command {
     Cones(Box<cones::Args>),
     /// Find the settings of the mount that reach a target
     Tilt(Box<tilt::Args>),
+    /// Say what errors of cut, wavelength and mounting cost, and what turning repairs
+    Tolerance(Box<tolerance::Args>),
+    /// Read the real cut, tilt zero, roll and pump out of measured rings and crossings
+    Fit(Box<fit::Args>),
     /// Follow a photon's partner
     Twin(Box<twin::Args>),
     /// Write one report at every point of a grid of settings, as CSV
@@ -123,6 +129,8 @@ pub fn run(typed: &Typed) -> Result<output::Outcome, Failure> {
         Command::Cut(args) => cut::run(args, out),
         Command::Cones(args) => cones::run(args, out),
         Command::Tilt(args) => tilt::run(args, out),
+        Command::Tolerance(args) => tolerance::run(args, out),
+        Command::Fit(args) => fit::run(args, out),
         Command::Twin(args) => twin::run(args, out),
         Command::Run(args) => run::run(args, out),
         Command::Join(args) => join::run(args, out),

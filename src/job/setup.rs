@@ -192,6 +192,9 @@ impl Setup {
     pub fn forget_all_typed(&mut self) {
         self.forget_typed();
         self.written.screen = None;
+        if let Some(stage) = &mut self.written.stage {
+            stage.zero = None;
+        }
         for crystal in &mut self.written.crystal {
             let crystal = crystal.get_mut();
             (crystal.length, crystal.tilt, crystal.cross_tilt, crystal.roll) = (None, None, None, None);

@@ -74,7 +74,9 @@ fn stage_section(o: &mut String, setup: &Setup) {
         None => comment(o, &format!("{name} = {example}"), why),
     };
     let text = |text: &Text| quoted(text.get_ref());
-    key("zero", written.zero.as_ref().map(text), "\"0 deg\"", "reading at back-reflection");
+    let zero = setup.stage.and_then(|s| s.zero).map(|zero| quoted(&zero.to_string()));
+    let zero = written.zero.as_ref().map(text).or(zero);
+    key("zero", zero, "\"0 deg\"", "reading at back-reflection");
     let why = "turn of the crystal per turn of the screw";
     key("per_turn", written.per_turn.as_ref().map(text), "\"5 mrad\"", why);
     let why = "readings fall when the tilt rises";

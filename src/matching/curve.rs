@@ -221,7 +221,7 @@ impl Curve {
     }
 
     /// Four directions a quarter turn apart, off the planes of symmetry.
-    pub(super) fn quarters(&self) -> impl Iterator<Item = Direction> {
+    pub(crate) fn quarters(&self) -> impl Iterator<Item = Direction> {
         let quarter = self.count / 4;
         (0..4).map(move |n| self.direction(quarter * n + quarter / 3))
     }

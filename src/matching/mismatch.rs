@@ -276,6 +276,13 @@ impl Mismatch {
         None
     }
 
+    /// Least Delta_k of any direction, rad/m: below zero there is a ring about that direction; `None` where photons are
+    /// evanescent.
+    #[must_use]
+    pub fn least(&self) -> Option<f64> {
+        self.stationary(self.along_pump()).map(|s| s.value)
+    }
+
     /// Mismatch and its second derivatives with respect to q: uu, uv, vv.
     fn bent(&self, q: Tangential) -> Option<(Sample, [f64; 3])> {
         count::add(1);

@@ -106,6 +106,18 @@ fn crossings(emission: &Emission, roles: Roles) -> Option<Met> {
 }
 
 impl Target {
+    /// The angle that the target is about, radians, as it is: half angle, mean polar angle or mean separation of the
+    /// crossings; `None` where it does not exist, and for targets that are no angle.
+    #[must_use]
+    pub fn angle(&self, emission: &Emission, roles: Roles) -> Option<f64> {
+        match self {
+            Self::HalfAngle(_) => half_angle(&emission.mismatch(roles)?),
+            Self::Crossing(_) => crossings(emission, roles).map(|m| m.polar),
+            Self::Separation(_) => crossings(emission, roles).and_then(|m| m.separation),
+            Self::Collinear | Self::Beamlike | Self::Touching => None,
+        }
+    }
+
     /// Continuous function of the setting that is zero where the target is met; `None` where it has no meaning.
     #[must_use]
     pub fn residual(&self, emission: &Emission, roles: Roles) -> Option<f64> {

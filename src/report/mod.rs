@@ -6,6 +6,7 @@ pub mod cones;
 mod conventions;
 pub mod cut;
 mod export;
+pub mod fit;
 pub mod index;
 pub mod materials;
 pub mod sheet;
@@ -13,6 +14,7 @@ mod spread;
 pub mod state;
 pub mod table;
 pub mod tilt;
+pub mod tolerance;
 pub mod twin;
 
 pub use conventions::{Conventions, room_words};

@@ -7,6 +7,7 @@ mod table;
 mod completions;
 mod cones;
 mod cut;
+mod fit;
 mod index;
 mod job;
 mod materials;
@@ -15,6 +16,7 @@ mod sheet;
 mod state;
 mod sweep;
 mod tilt;
+mod tolerance;
 mod twin;
 
 mod bad_input;

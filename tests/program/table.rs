@@ -12,7 +12,7 @@ pub struct Table {
 }
 
 /// Columns that hold words.
-const WORDS: [&str; 22] = [
+const WORDS: [&str; 27] = [
     "crystal_process",
     "crystal_material",
     "crystal_dataset",
@@ -33,6 +33,11 @@ const WORDS: [&str; 22] = [
     "datasets",
     "basis",
     "arm",
+    "contribution",
+    "error_unit",
+    "quantity",
+    "parameter",
+    "unit",
     "status",
     "extrapolated",
 ];

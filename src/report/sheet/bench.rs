@@ -387,7 +387,8 @@ mod tests {
 
     #[test]
     fn a_given_polarization_is_told() {
-        let words = |angle: f64, phase: f64| given_words(Angle::from_degrees(angle), Angle::from_degrees(phase));
+        let words =
+            |angle: f64, phase: f64| given_words(Angle::from_degrees(angle), Angle::from_degrees(phase));
         assert_eq!(words(30.0, 0.0), "30.0 deg from +x towards +y");
         assert_eq!(words(30.0, 180.0), "150.0 deg from +x towards +y");
         assert_eq!(words(90.0, 90.0), "vertical, 90.0 deg from +x towards +y");
