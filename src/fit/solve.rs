@@ -158,7 +158,7 @@ fn fit_as_stated(question: &Question) -> Result<Fitted, FitError> {
         }
     }
     let Some((mut minimum, mut assigned)) = best else { return Err(search.nothing()) };
-    if choices.iter().any(|c| *c == 2) {
+    if choices.contains(&2) {
         let swapped = swapped(&assigned, &choices);
         let starts = [minimum.x.clone(), DVector::zeros(minimum.x.len())];
         for start in starts {
@@ -406,7 +406,7 @@ impl<'a> Search<'a> {
         for (i, unknown) in unknowns.iter().enumerate() {
             normal[(i, i)] += if unknown.prior_sigma.is_some() { 1.0 } else { 0.0 };
         }
-        let Some(covariance) = normal.clone().cholesky().map(|c| c.inverse()).filter(|c| sound(c)) else {
+        let Some(covariance) = normal.clone().cholesky().map(|c| c.inverse()).filter(sound) else {
             return Err(inseparable(unknowns, &normal));
         };
         // digits far below any uncertainty say nothing, and make jobs hard to read

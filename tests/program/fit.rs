@@ -114,10 +114,10 @@ fn bad_measurements_are_refused_with_what_is_missing() {
         ("x_cm,y_cm,radius_cm\n5.9,0,8\n", "x_mm"),
         ("x_mm,y_mm,radius_mm\n59,0,eighty\n", "line 2"),
         ("x_mm,y_mm,radius_mm\n59,0,-80\n", "above 0"),
-        ("x_mm,y_mm,radius_mm,polarization\n59,0,80000,e\n", "look at the unit"),
+        ("x_mm,y_mm,radius_mm,polarization\n59,0,80000,e\n58,0,70000,e\n", "look at the unit"),
         ("crystal_tilt_deg,x_mm,y_mm,radius_mm\n300,59,0,80\n", "miss the face"),
         ("x_mm,y_mm,radius_mm,polarization\n59,0,80,h\n", "write o, e, fast or slow"),
-        ("x_mm,y_mm,radius_mm,polarization\n59,0,80,fast\n", "no such photon"),
+        ("x_mm,y_mm,radius_mm,polarization\n59,0,80,fast\n-59,0,80,fast\n", "no such photon"),
         ("", "--template"),
     ] {
         let said = twincone_with(text, &format!("fit - {BENCH}")).refusal(2);

@@ -12,7 +12,7 @@ pub struct Table {
 }
 
 /// Columns that hold words.
-const WORDS: [&str; 24] = [
+const WORDS: [&str; 26] = [
     "crystal_material",
     "crystal_dataset",
     "material",
@@ -34,6 +34,8 @@ const WORDS: [&str; 24] = [
     "error_unit",
     "quantity",
     "parameter",
+    "at_bound",
+    "outlier",
     "unit",
     "status",
     "extrapolated",
