@@ -52,7 +52,7 @@ impl Question {
 pub struct Residual {
     /// Line of the file.
     pub line: usize,
-    /// Tilt as the row has it, degrees.
+    /// Tilt or reading as the row has it, degrees.
     pub tilt: Option<f64>,
     /// Which number.
     pub quantity: &'static str,
@@ -450,7 +450,7 @@ impl<'a> Search<'a> {
         for (m, choice) in self.question.data.iter().zip(assigned) {
             let sigma = self.sigma(m);
             for (quantity, fitted, measured) in self.model.differences(m, *choice).unwrap_or_default() {
-                let (line, tilt) = (m.line, m.settings.tilt);
+                let (line, tilt) = (m.line, m.settings.tilt.or(m.settings.reading));
                 all.push(Residual { line, tilt, quantity, measured, fitted, sigma, choice: *choice });
             }
         }

@@ -62,6 +62,18 @@ fn other_forms_of_the_same_measurements_give_the_same_cut() {
     }
 }
 
+/// A scale whose zero is at 3 deg and that runs backwards: 2.5 deg on it is a tilt of half a degree.
+#[test]
+fn readings_of_the_stage_count_from_its_zero() {
+    let cone = "cones -m bbo:kato-1986 -p 405nm --theta 42.3deg --tilt 0.5deg -f csv";
+    let radius = Table::read(&twincone(cone).answer()).number(0, "radius_mm");
+    let form = format!("stage_reading_deg,radius_mm,polarization,sigma_mm\n2.5,{radius},e,0.5\n");
+    let stage = "--set \"stage.zero='3 deg'\" --set stage.reversed=true";
+    let line = format!("fit - {BENCH} {stage} --free theta -f csv");
+    let table = Table::read(&twincone_with(&form, &line).answer());
+    assert_abs_diff_eq!(value(&table, "crystal.cut.theta", "value"), 42.3, epsilon = 0.01);
+}
+
 #[test]
 fn the_text_says_what_to_set_and_what_is_not_known() {
     let folder = TempDir::new().expect("a folder");
