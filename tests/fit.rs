@@ -239,8 +239,8 @@ fn frames_give_the_cut() {
             frame: Frame::read(&bytes, PITCH, None).expect("a frame"),
             settings: Settings::default(),
         };
-        let found =
-            fit_frames(&question(Vec::new(), &["theta", "roll"]), &[exposure.clone()]).expect("rings");
+        let found = fit_frames(&question(Vec::new(), &["theta", "roll"]), std::slice::from_ref(&exposure))
+            .expect("rings");
         let off = found.fitted.values[0] - theta;
         assert!(off.abs() < 0.02, "theta {theta}: off by {off}");
         let off = found.fitted.values[1] - roll;

@@ -245,7 +245,8 @@ mod tests {
         let mut values = vec![0u8; 1600];
         values[10 * 40 + 30] = 200;
         let frame = Frame::read(&grey(&values, 40, 40), 0.1, None).expect("a frame");
-        assert_eq!(frame.at(Vector2::new(1.05, 0.95)), Some(200.0));
+        // between pixels by straight lines, so a place off by rounding loses that share
+        assert!((frame.at(Vector2::new(1.05, 0.95)).expect("inside") - 200.0).abs() < 1e-9);
         assert_eq!(frame.at(Vector2::new(3.0, 0.0)), None);
         let even = frame.blurred(1);
         assert!((even.at(Vector2::new(1.05, 0.95)).expect("inside") - 200.0 / 9.0).abs() < 1e-3);

@@ -11,6 +11,8 @@ use crate::quantity::Wavelength;
 pub struct Settings {
     /// Tilt from where the scale is believed to be zero, degrees; `None` for the job's own tilt.
     pub tilt: Option<f64>,
+    /// What the tilt's scale showed, degrees, counted as `stage.zero` is; goes before `tilt`.
+    pub reading: Option<f64>,
     /// Cross tilt, degrees; `None` for the job's own.
     pub cross_tilt: Option<f64>,
     /// Temperature, degrees Celsius; `None` for the job's own.

@@ -106,6 +106,9 @@ impl Model {
     /// The tilt of the crystal, degrees, when the scale reads as a row says.
     fn true_tilt(&self, settings: &Settings) -> f64 {
         // reading = zero + sense tilt, and a row's tilt is counted from the believed zero
+        if let Some(reading) = settings.reading {
+            return self.sense * (reading - self.bearings.zero);
+        }
         settings.tilt.unwrap_or(self.tilt) + self.sense * (self.believed_zero - self.bearings.zero)
     }
 

@@ -18,7 +18,8 @@ pub struct FileError(pub String);
 /// A table to fill in.
 pub const TEMPLATE: &str = "\
 # One measurement a line; leave cells empty that you do not know. Lines that begin with # are not read.
-# crystal_tilt_deg: what the mount shows, counted from where you believe zero is. photon: signal or idler;
+# crystal_tilt_deg: what the mount shows, counted from where you believe zero is; or stage_reading_deg: what its scale
+# shows, with the back-reflection at stage.zero. photon: signal or idler;
 # polarization: o, e, fast or slow; what: ring, edge (a point on a ring) or crossing.
 # x_mm, y_mm: from where the undeviated pump hits, seen from downstream (+x right, +y up); radius_mm of a ring;
 # sigma_mm: standard deviation of these. Angles instead: h_deg, v_deg, half_angle_deg, sigma_deg.
@@ -155,6 +156,7 @@ fn check_names(names: &[String]) -> Result<(), FileError> {
 fn measurements(row: &Row<'_>, all: &mut Vec<Measurement>) -> Result<(), FileError> {
     let settings = Settings {
         tilt: row.number("crystal_tilt_deg")?,
+        reading: row.number("stage_reading_deg")?,
         cross_tilt: row.number("crystal_cross_tilt_deg")?,
         temperature: row.number("crystal_temperature_degc")?,
     };

@@ -52,7 +52,7 @@ impl Question {
 pub struct Residual {
     /// Line of the file.
     pub line: usize,
-    /// Tilt as the row has it, degrees.
+    /// Tilt or reading as the row has it, degrees.
     pub tilt: Option<f64>,
     /// Which number.
     pub quantity: &'static str,
@@ -158,7 +158,7 @@ fn fit_as_stated(question: &Question) -> Result<Fitted, FitError> {
         }
     }
     let Some((mut minimum, mut assigned)) = best else { return Err(search.nothing()) };
-    if choices.iter().any(|c| *c == 2) {
+    if choices.contains(&2) {
         let swapped = swapped(&assigned, &choices);
         let starts = [minimum.x.clone(), DVector::zeros(minimum.x.len())];
         for start in starts {
@@ -406,7 +406,7 @@ impl<'a> Search<'a> {
         for (i, unknown) in unknowns.iter().enumerate() {
             normal[(i, i)] += if unknown.prior_sigma.is_some() { 1.0 } else { 0.0 };
         }
-        let Some(covariance) = normal.clone().cholesky().map(|c| c.inverse()).filter(|c| sound(c)) else {
+        let Some(covariance) = normal.clone().cholesky().map(|c| c.inverse()).filter(sound) else {
             return Err(inseparable(unknowns, &normal));
         };
         // digits far below any uncertainty say nothing, and make jobs hard to read
@@ -450,7 +450,7 @@ impl<'a> Search<'a> {
         for (m, choice) in self.question.data.iter().zip(assigned) {
             let sigma = self.sigma(m);
             for (quantity, fitted, measured) in self.model.differences(m, *choice).unwrap_or_default() {
-                let (line, tilt) = (m.line, m.settings.tilt);
+                let (line, tilt) = (m.line, m.settings.tilt.or(m.settings.reading));
                 all.push(Residual { line, tilt, quantity, measured, fitted, sigma, choice: *choice });
             }
         }

@@ -382,7 +382,8 @@ fn quality(finding: &Finding<'_>) -> String {
 
 /// Tilts of all lines, in order.
 fn question_tilts(finding: &Finding<'_>) -> Vec<f64> {
-    let mut tilts: Vec<f64> = finding.question.data.iter().filter_map(|m| m.settings.tilt).collect();
+    let mut tilts: Vec<f64> =
+        finding.question.data.iter().filter_map(|m| m.settings.tilt.or(m.settings.reading)).collect();
     tilts.sort_by(f64::total_cmp);
     tilts
 }

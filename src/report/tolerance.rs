@@ -320,12 +320,13 @@ pub fn text(setup: &Setup, finding: &Finding<'_>) -> String {
     let Finding { bench, .. } = finding;
     let crystal = &bench.crystal;
     let mut out = prose(&format!(
-        "{}:{} cut theta {} deg, phi {} deg, {} mm; pump {} nm, {}; wanted: {}\n",
+        "{}:{} cut theta {} deg, phi {} deg, {} mm{}; pump {} nm, {}; wanted: {}\n",
         crystal.material.id,
         crystal.set().id,
         rounded(crystal.cut.theta.degrees(), 3),
         rounded(crystal.cut.phi.degrees(), 3),
         rounded(crystal.length.mm(), 3),
+        if setup.length_given { "" } else { " (default length)" },
         rounded(bench.photons.pump.nm(), 3),
         setup.interaction,
         target_words(bench.target)

@@ -89,7 +89,7 @@ impl Stand {
     }
 
     /// A direction seen from the pump, as it is seen from the screen's middle.
-    fn from_screen(&self, direction: Direction) -> Direction {
+    fn seen_from_screen(&self, direction: Direction) -> Direction {
         let [h, v] = self.aim;
         if h == 0.0 && v == 0.0 {
             return direction;
@@ -267,15 +267,16 @@ impl Bench {
         Seen {
             rings: all,
             crossing,
-            points: points.into_iter().map(|d| stand.from_screen(d)).collect(),
+            points: points.into_iter().map(|d| stand.seen_from_screen(d)).collect(),
             status,
         }
     }
 
     fn placed(&self, stand: &Stand, ring: &crate::matching::Ring) -> RingPlace {
         let (centre, radius) = ring.circle();
-        let axis = stand.from_screen(ring.axis);
-        let middle = stand.from_screen(Direction::new(Lab(Vector3::new(centre.x, centre.y, 1.0)))).lab().0;
+        let axis = stand.seen_from_screen(ring.axis);
+        let middle =
+            stand.seen_from_screen(Direction::new(Lab(Vector3::new(centre.x, centre.y, 1.0)))).lab().0;
         let centre = Vector2::new(middle.x / middle.z, middle.y / middle.z);
         RingPlace { half_angle: ring.half_angle, axis, centre, radius }
     }

@@ -62,6 +62,18 @@ fn other_forms_of_the_same_measurements_give_the_same_cut() {
     }
 }
 
+/// A scale whose zero is at 3 deg and that runs backwards: 2.5 deg on it is a tilt of half a degree.
+#[test]
+fn readings_of_the_stage_count_from_its_zero() {
+    let cone = "cones -m bbo:kato-1986 -p 405nm --theta 42.3deg --tilt 0.5deg -f csv";
+    let radius = Table::read(&twincone(cone).answer()).number(0, "radius_mm");
+    let form = format!("stage_reading_deg,radius_mm,polarization,sigma_mm\n2.5,{radius},e,0.5\n");
+    let stage = "--set \"stage.zero='3 deg'\" --set stage.reversed=true";
+    let line = format!("fit - {BENCH} {stage} --free theta -f csv");
+    let table = Table::read(&twincone_with(&form, &line).answer());
+    assert_abs_diff_eq!(value(&table, "crystal.cut.theta", "value"), 42.3, epsilon = 0.01);
+}
+
 #[test]
 fn the_text_says_what_to_set_and_what_is_not_known() {
     let folder = TempDir::new().expect("a folder");
@@ -114,10 +126,10 @@ fn bad_measurements_are_refused_with_what_is_missing() {
         ("x_cm,y_cm,radius_cm\n5.9,0,8\n", "x_mm"),
         ("x_mm,y_mm,radius_mm\n59,0,eighty\n", "line 2"),
         ("x_mm,y_mm,radius_mm\n59,0,-80\n", "above 0"),
-        ("x_mm,y_mm,radius_mm,polarization\n59,0,80000,e\n", "look at the unit"),
+        ("x_mm,y_mm,radius_mm,polarization\n59,0,80000,e\n58,0,70000,e\n", "look at the unit"),
         ("crystal_tilt_deg,x_mm,y_mm,radius_mm\n300,59,0,80\n", "miss the face"),
         ("x_mm,y_mm,radius_mm,polarization\n59,0,80,h\n", "write o, e, fast or slow"),
-        ("x_mm,y_mm,radius_mm,polarization\n59,0,80,fast\n", "no such photon"),
+        ("x_mm,y_mm,radius_mm,polarization\n59,0,80,fast\n-59,0,80,fast\n", "no such photon"),
         ("", "--template"),
     ] {
         let said = twincone_with(text, &format!("fit - {BENCH}")).refusal(2);

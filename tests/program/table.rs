@@ -12,7 +12,7 @@ pub struct Table {
 }
 
 /// Columns that hold words.
-const WORDS: [&str; 27] = [
+const WORDS: [&str; 29] = [
     "crystal_process",
     "crystal_material",
     "crystal_dataset",
@@ -37,6 +37,8 @@ const WORDS: [&str; 27] = [
     "error_unit",
     "quantity",
     "parameter",
+    "at_bound",
+    "outlier",
     "unit",
     "status",
     "extrapolated",
