@@ -50,12 +50,19 @@ pub(super) fn safety(page: &mut Page, facts: &Facts<'_>) {
         } else {
             "the crystal".into()
         };
-        lines.push(format!(
-            "The entrance face of {face} sends pump light back: {} and {} at {} towards the laser. Block it there; it moves when you tilt.",
-            mm(x, 1),
-            mm(y, 1),
-            facts.setup.screen
-        ));
+        // as `cones` has it: within half a millimetre
+        lines.push(if x.hypot(y) <= 0.5 {
+            format!(
+                "The entrance face of {face} reflects pump light straight back into the laser; it leaves the beam when you tilt."
+            )
+        } else {
+            format!(
+                "The entrance face of {face} sends pump light back: {} and {} at {} towards the laser. Block it there; it moves when you tilt.",
+                mm(x, 1),
+                mm(y, 1),
+                facts.setup.screen
+            )
+        });
     }
     lines
         .push("Dump the transmitted pump behind the crystal. Filters, plates and irises reflect too.".into());
