@@ -4,6 +4,7 @@ use super::bench::reflection;
 use super::facts::{Facts, mm, nm};
 use super::page::{Block, Page};
 use super::safety::{class, limits};
+use crate::pairs::Line;
 use crate::report::angles::rounded;
 
 /// Class of the pump, where reflections go, and the usual cautions.
@@ -33,6 +34,12 @@ pub(super) fn safety(page: &mut Page, facts: &Facts<'_>) {
             nm(pump)
         ),
     };
+    let pulsed = if matches!(facts.setup.bench.line, Line::Pulse(_)) {
+        "The pump is pulsed, so that the class of a continuous beam does not hold: peaks may be worse than the mean power \
+         tells. The class on the laser's own label counts, and the laser safety officer decides. "
+    } else {
+        ""
+    };
     let sight = match pump.nm() {
         n if n < 380.0 => "The pump is invisible.",
         n if n < 430.0 => "The pump looks far dimmer than it is: its brightness is no guide.",
@@ -40,7 +47,7 @@ pub(super) fn safety(page: &mut Page, facts: &Facts<'_>) {
         _ => "",
     };
     page.blocks.push(Block::Warning(format!(
-        "{class_text} {sight} Local rules and the local laser safety officer decide, not this sheet."
+        "{pulsed}{class_text} {sight} Local rules and the local laser safety officer decide, not this sheet."
     )));
     let mut lines = Vec::new();
     for (index, crystal) in facts.setup.crystals.iter().enumerate() {
