@@ -104,7 +104,14 @@ pub(super) fn glows(
                 let key = (roles, (centre.nm() * 1e6).round() as u64);
                 if !seen.contains(&key) {
                     seen.push(key);
-                    let source = Source { crystal, roles, filters, nominal: photons.signal, centre, pump: setup.pump() };
+                    let source = Source {
+                        crystal,
+                        roles,
+                        filters,
+                        nominal: photons.signal,
+                        centre,
+                        pump: setup.pump(),
+                    };
                     all.push(source.glow(light, sensor, sampling)?);
                 }
             }

@@ -24,7 +24,7 @@ impl Light {
     pub fn of(setup: &Setup) -> Result<Self, String> {
         if setup.written.filter.iter().any(|filter| filter.file.is_some()) {
             return Err(
-                "pictures know filters by width and shape; a measured trace (filter.file) is not read".into()
+                "pictures know filters by width and shape; a measured trace (filter.file) is not read".into(),
             );
         }
         let [signal, idler] = setup.bench.filters.clone();
@@ -100,11 +100,8 @@ mod tests {
         let sum = |all: &[Filter]| samples(all, nominal, 301).iter().map(|s| s.1).sum::<f64>();
         // widths of Gaussians: 1/w^2 = 1/3^2 + 1/4^2, w = 2.4 nm; both pass 2.4/3 of what the first does
         assert!((sum(&[gaussian(3.0), gaussian(4.0)]) - 0.8).abs() < 3e-3);
-        let away = Filter {
-            shape: Shape::Rectangular,
-            centre: Some(Wavelength::from_nm(820.0)),
-            ..gaussian(1.0)
-        };
+        let away =
+            Filter { shape: Shape::Rectangular, centre: Some(Wavelength::from_nm(820.0)), ..gaussian(1.0) };
         assert!(samples(&[gaussian(3.0), away], nominal, 301).is_empty());
         // half a Gaussian
         let upper = Filter { width: Length::metres(10e-9), centre: Some(Wavelength::from_nm(815.0)), ..away };

@@ -260,7 +260,14 @@ fn ring_steps(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesError> {
     };
     let rows = facts.cones.rings.iter().filter_map(ring_row).collect();
     page.table(
-        &["ring", "centre in mm", "radius in mm", "x from, to in mm", "y from, to in mm", "thickness (FWHM), one wavelength, plane pump"],
+        &[
+            "ring",
+            "centre in mm",
+            "radius in mm",
+            "x from, to in mm",
+            "y from, to in mm",
+            "thickness (FWHM), one wavelength, plane pump",
+        ],
         rows,
     );
     let differ = |a: &RingRow, b: &RingRow| {
@@ -387,7 +394,8 @@ mod tests {
 
     #[test]
     fn a_given_polarization_is_told() {
-        let words = |angle: f64, phase: f64| given_words(Angle::from_degrees(angle), Angle::from_degrees(phase));
+        let words =
+            |angle: f64, phase: f64| given_words(Angle::from_degrees(angle), Angle::from_degrees(phase));
         assert_eq!(words(30.0, 0.0), "30.0 deg from +x towards +y");
         assert_eq!(words(30.0, 180.0), "150.0 deg from +x towards +y");
         assert_eq!(words(90.0, 90.0), "vertical, 90.0 deg from +x towards +y");

@@ -5,8 +5,8 @@ use nalgebra::Vector3;
 use crate::frame::Direction;
 use crate::job::Setup;
 use crate::matching::{
-    Actuator, Cones, ConesError, Emission, Measure, Pairing, Photons, RingRow, Roles, Target, Triplet, Tuning, Want,
-    cones, tune, tuning_turn,
+    Actuator, Cones, ConesError, Emission, Measure, Pairing, Photons, RingRow, Roles, Target, Triplet,
+    Tuning, Want, cones, tune, tuning_turn,
 };
 use crate::optics::Crystal;
 use crate::quantity::{Angle, Length, Power};
