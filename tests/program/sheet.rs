@@ -24,6 +24,20 @@ fn the_bench_sheet_has_the_readings_to_dial() {
 }
 
 #[test]
+fn the_bench_sheet_warns_of_pulses() {
+    let sheet = |more: &str| {
+        let crystal = "-m bbo --theta 28.8deg --type I -p 405nm --length 1mm --power 40mW";
+        twincone(&format!("sheet --kind bench {crystal}{more}")).answer()
+    };
+    assert_says(&sheet(" --set pump.pulse=150fs"), &["the class of a continuous beam does not hold"]);
+    let continuous = sheet("");
+    assert!(!continuous.contains("pulsed"), "{continuous}");
+    // no tilt: the reflection meets the laser
+    assert_says(&continuous, &["reflects pump light straight back into the laser"]);
+    assert_says(&sheet(" --pump-polarization 30deg"), &["as the job gives it: 30.0 deg"]);
+}
+
+#[test]
 fn the_bench_sheet_places_arms_at_the_crossings() {
     let line = "sheet --kind bench --job examples/two-colours.toml --iris 3mm --filter-width 5nm";
     let sheet = twincone(line).answer();

@@ -260,7 +260,14 @@ fn ring_steps(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesError> {
     };
     let rows = facts.cones.rings.iter().filter_map(ring_row).collect();
     page.table(
-        &["ring", "centre in mm", "radius in mm", "x from, to in mm", "y from, to in mm", "thickness (FWHM)"],
+        &[
+            "ring",
+            "centre in mm",
+            "radius in mm",
+            "x from, to in mm",
+            "y from, to in mm",
+            "thickness (FWHM), one wavelength, plane pump",
+        ],
         rows,
     );
     let differ = |a: &RingRow, b: &RingRow| {

@@ -4,6 +4,7 @@ use super::bench::reflection;
 use super::facts::{Facts, mm, nm};
 use super::page::{Block, Page};
 use super::safety::{class, limits};
+use crate::pairs::Line;
 use crate::report::angles::rounded;
 
 /// Class of the pump, where reflections go, and the usual cautions.
@@ -33,6 +34,12 @@ pub(super) fn safety(page: &mut Page, facts: &Facts<'_>) {
             nm(pump)
         ),
     };
+    let pulsed = if matches!(facts.setup.bench.line, Line::Pulse(_)) {
+        "The pump is pulsed, so that the class of a continuous beam does not hold: peaks may be worse than the mean power \
+         tells. The class on the laser's own label counts, and the laser safety officer decides. "
+    } else {
+        ""
+    };
     let sight = match pump.nm() {
         n if n < 380.0 => "The pump is invisible.",
         n if n < 430.0 => "The pump looks far dimmer than it is: its brightness is no guide.",
@@ -40,7 +47,7 @@ pub(super) fn safety(page: &mut Page, facts: &Facts<'_>) {
         _ => "",
     };
     page.blocks.push(Block::Warning(format!(
-        "{class_text} {sight} Local rules and the local laser safety officer decide, not this sheet."
+        "{pulsed}{class_text} {sight} Local rules and the local laser safety officer decide, not this sheet."
     )));
     let mut lines = Vec::new();
     for (index, crystal) in facts.setup.crystals.iter().enumerate() {
@@ -50,12 +57,19 @@ pub(super) fn safety(page: &mut Page, facts: &Facts<'_>) {
         } else {
             "the crystal".into()
         };
-        lines.push(format!(
-            "The entrance face of {face} sends pump light back: {} and {} at {} towards the laser. Block it there; it moves when you tilt.",
-            mm(x, 1),
-            mm(y, 1),
-            facts.setup.screen
-        ));
+        // as `cones` has it: within half a millimetre
+        lines.push(if x.hypot(y) <= 0.5 {
+            format!(
+                "The entrance face of {face} reflects pump light straight back into the laser; it leaves the beam when you tilt."
+            )
+        } else {
+            format!(
+                "The entrance face of {face} sends pump light back: {} and {} at {} towards the laser. Block it there; it moves when you tilt.",
+                mm(x, 1),
+                mm(y, 1),
+                facts.setup.screen
+            )
+        });
     }
     lines
         .push("Dump the transmitted pump behind the crystal. Filters, plates and irises reflect too.".into());

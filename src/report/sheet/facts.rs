@@ -5,7 +5,8 @@ use nalgebra::Vector3;
 use crate::frame::Direction;
 use crate::job::Setup;
 use crate::matching::{
-    Cones, ConesError, Emission, Measure, Pairing, Photons, RingRow, Roles, Target, Tuning, Want, cones, tune,
+    Actuator, Cones, ConesError, Emission, Measure, Pairing, Photons, RingRow, Roles, Target, Triplet,
+    Tuning, Want, cones, tune, tuning_turn,
 };
 use crate::optics::Crystal;
 use crate::quantity::{Angle, Length, Power};
@@ -27,6 +28,13 @@ impl<'a> Facts<'a> {
     pub fn roles(&self, crystal: &Crystal) -> Option<Roles> {
         let emission = Emission::of(crystal, self.photons).ok()?;
         emission.wanted(crystal, self.setup.interaction).ok()?.first().copied()
+    }
+
+    /// Whether the cut's phi decides the phase matching and not its theta, as in XY cuts.
+    pub fn tunes_by_phi(&self, crystal: &Crystal) -> bool {
+        let triplet = Triplet::new(crystal, &self.photons).ok();
+        let turn = triplet.zip(self.roles(crystal)).map(|(t, r)| tuning_turn(crystal, self.photons, &t, r));
+        turn == Some(Actuator::CrossTilt)
     }
 
     /// The waves of a pair whose signal leaves towards `signal`.
@@ -60,7 +68,7 @@ impl<'a> Facts<'a> {
         let tuned = tune(&question).ok()?;
         let turn = tuned.turns.first()?;
         let now = match tuned.actuator {
-            crate::matching::Actuator::CrossTilt => changed.orientation.cross_tilt,
+            Actuator::CrossTilt => changed.orientation.cross_tilt,
             _ => changed.orientation.tilt,
         };
         Some(turn.setting - now.si())

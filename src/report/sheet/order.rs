@@ -104,7 +104,11 @@ fn specification(facts: &Facts<'_>, crystal: &Crystal, pairing: Option<&Pairing>
     if let Some((other, text)) = crystal.material.other_phi(crystal.cut.phi) {
         phi.push_str(&format!("; in the {text}, the same cut is phi {} deg", rounded(other.degrees(), 2)));
     }
-    phi.push_str(". In any case: phi for largest |d_eff| of the process above");
+    if facts.tunes_by_phi(crystal) {
+        phi.push_str("; phi decides the phase matching here: tolerance +-0.25 deg, and the measured value on the certificate");
+    } else {
+        phi.push_str(". In any case: phi for largest |d_eff| of the process above");
+    }
     let mut rows = vec![
         row2(
             "material",
@@ -256,6 +260,11 @@ fn spread(facts: &Facts<'_>, crystal: &Crystal) -> String {
     let Some(watched) = facts.watched(&upright).or_else(|| facts.watched(crystal)) else {
         return "There is no ring at the working point, so the data sets are not compared.".into();
     };
+    let find = if facts.tunes_by_phi(&upright) { Find::Phi } else { Find::Theta };
+    let sought = |crystal: &Crystal| match find {
+        Find::Phi => crystal.cut.phi.si(),
+        _ => crystal.cut.theta.si(),
+    };
     let ask = |crystal: &Crystal| {
         let question = Design {
             crystal: crystal.clone(),
@@ -263,21 +272,21 @@ fn spread(facts: &Facts<'_>, crystal: &Crystal) -> String {
             fixed_signal: facts.setup.signals.fixed(),
             interaction: facts.setup.interaction,
             target: watched.target(),
-            find: Find::Theta,
+            find,
             phi_given: true,
         };
         let all = design(&question).unwrap_or_default();
-        let wanted = crystal.cut.theta.si();
+        let wanted = sought(crystal);
         let away = |t: &f64| (t - wanted).abs();
-        all.iter().map(|s| s.crystal.cut.theta.si()).min_by(|a, b| away(a).total_cmp(&away(b)))
+        all.iter().map(|s| sought(&s.crystal)).min_by(|a, b| away(a).total_cmp(&away(b)))
     };
     let own = ask(&upright);
     let others = opinions(&upright, &facts.photons, ask);
     let told: Vec<String> = others
         .iter()
         .filter_map(|o| {
-            let theta = o.answer.as_ref().ok()?;
-            Some(theta.map_or(format!("{} none", o.dataset), |t| {
+            let angle = o.answer.as_ref().ok()?;
+            Some(angle.map_or(format!("{} none", o.dataset), |t| {
                 format!("{} {} deg", o.dataset, fixed(t.to_degrees(), 3))
             }))
         })
@@ -289,10 +298,11 @@ fn spread(facts: &Facts<'_>, crystal: &Crystal) -> String {
         format!("others: {}", told.join(", "))
     };
     format!(
-        "For {} {} at normal incidence the published refractive indices give these cuts: {} {own}; {others}. Order a cut \
+        "For {} {} at normal incidence the published refractive indices give these cuts ({}): {} {own}; {others}. Order a cut \
          from which tilting reaches the whole range.",
         watched.name(),
         plain_deg(watched.angle, 3),
+        if find == Find::Phi { "phi" } else { "theta" },
         crystal.set().id
     )
 }
