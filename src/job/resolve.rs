@@ -352,8 +352,9 @@ pub(super) fn targets(
     [crossing, half_angle, separation]: [Option<&Text>; 3],
     flags: &[(Option<bool>, Target)],
 ) -> Result<Vec<Target>, JobError> {
-    let by_angle: [(_, fn(f64) -> Target, f64); 3] = [
-        (crossing, Target::Crossing, 60.0),
+    type ByAngle = fn(f64) -> Target;
+    let by_angle = [
+        (crossing, Target::Crossing as ByAngle, 60.0),
         (half_angle, Target::HalfAngle, 60.0),
         (separation, Target::Separation, 120.0),
     ];

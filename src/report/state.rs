@@ -116,7 +116,7 @@ pub fn tables(state: &State, budget: &[Loss], bases: &[Basis]) -> Vec<Table> {
     }
     let mut losses = Table::new("budget", &LOSSES);
     for Loss { cause, loss } in budget {
-        losses.push(&vec![cause.to_string().into(), (*loss).into()], state.extrapolated, state.status);
+        losses.push(&[cause.to_string().into(), (*loss).into()], state.extrapolated, state.status);
     }
     vec![rows, elements, losses]
 }

@@ -27,7 +27,7 @@ fn the_bench_sheet_has_the_readings_to_dial() {
 fn the_bench_sheet_warns_of_pulses() {
     let sheet = |more: &str| {
         let crystal = "-m bbo --theta 28.8deg --type I -p 405nm --length 1mm --power 40mW";
-        twincone(&format!("sheet --kind bench {crystal}{more}")).answer()
+        twincone(&format!("sheet --kind bench --quiet {crystal}{more}")).answer()
     };
     assert_says(&sheet(" --set pump.pulse=150fs"), &["the class of a continuous beam does not hold"]);
     let continuous = sheet("");

@@ -431,10 +431,8 @@ fn report_state_sums_at_every_point() {
     assert_abs_diff_eq!(both.number(2, "visibility_diagonal"), 0.886, epsilon = 0.002);
     let missed = rows("--filter-width 3nm --report state --axis crystal.tilt=-1.3deg,0deg");
     assert_eq!(missed.column("status"), ["apart", "ok", "ok"]);
-    let job = format!(
-        "[pump]\nwavelength = \"405 nm\"\n[crystal]\nmaterial = \"bbo\"\ndataset = \"kato-1986\"\ncut = {{ theta = \"42.541 deg\", phi = \"0 deg\" }}\nlength = \"2 mm\"\n[[filter]]\nwidth = \"40 nm\"\n[[compensator]]\nlength = \"1 mm\"\nroll = \"90 deg\"\n[sweep]\nreport = \"state\"\nbasis = \"oe\"\naxes = [ {{ key = \"compensator.length\", values = [\"0.9 mm\", \"1 mm\"] }} ]\n"
-    );
-    let plates = Table::read(&twincone_with(&job, "run -").answer());
+    let job = "[pump]\nwavelength = \"405 nm\"\n[crystal]\nmaterial = \"bbo\"\ndataset = \"kato-1986\"\ncut = { theta = \"42.541 deg\", phi = \"0 deg\" }\nlength = \"2 mm\"\n[[filter]]\nwidth = \"40 nm\"\n[[compensator]]\nlength = \"1 mm\"\nroll = \"90 deg\"\n[sweep]\nreport = \"state\"\nbasis = \"oe\"\naxes = [ { key = \"compensator.length\", values = [\"0.9 mm\", \"1 mm\"] } ]\n";
+    let plates = Table::read(&twincone_with(job, "run -").answer());
     assert_eq!(plates.column("compensator_length_mm"), ["0.9", "1"]);
     assert_abs_diff_eq!(plates.number(0, "visibility_diagonal"), 0.943, epsilon = 0.002);
     assert_abs_diff_eq!(plates.number(1, "visibility_diagonal"), 0.981, epsilon = 0.002);

@@ -152,7 +152,8 @@ fn given_words(angle: Angle, phase: Angle) -> String {
     let (sin, cos) = angle.si().sin_cos();
     let (quadrature, in_phase) = phase.si().sin_cos();
     if (sin * cos * quadrature).abs() < 1e-6 {
-        field_words(azimuth(nalgebra::Vector3::new(cos, sin * in_phase, 0.0)))
+        // linear: along one axis, or both fields in step or against each other
+        field_words(azimuth(nalgebra::Vector3::new(cos, sin * in_phase.signum(), 0.0)))
     } else {
         format!(
             "elliptical, {} of the power vertical and the vertical field {} deg ahead of the horizontal one",
