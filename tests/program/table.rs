@@ -12,7 +12,9 @@ pub struct Table {
 }
 
 /// Columns that hold words.
-const WORDS: [&str; 22] = [
+const WORDS: [&str; 24] = [
+    "panel",
+    "compensators",
     "crystal_process",
     "crystal_material",
     "crystal_dataset",
