@@ -11,6 +11,8 @@ const JOBS: [&str; 4] = [
     "examples/two-crystals.toml",
 ];
 
+const PLATE: &str = " --set compensator.length=1mm --set compensator.roll=90deg";
+
 fn chromium() -> Option<PathBuf> {
     let paths = std::env::var_os("PATH")?;
     let names = ["chromium", "chromium-browser", "google-chrome"];
@@ -122,12 +124,15 @@ fn texts_of_drawings_do_not_overlap() {
     let Some(browser) = chromium() else { return };
     let folder = tempfile::tempdir().expect("a folder");
     for job in JOBS {
-        for view in ["camera", "side", "front", "ring-sweep", "cut"] {
-            if view == "cut" && job.contains("two-crystals") {
+        for view in ["camera", "side", "front", "ring-sweep", "cut", "phase"] {
+            // one crystal alone has a curve of cuts, and rings that do not cross have no pair
+            let none = [("cut", "two-crystals"), ("phase", "collinear-cut-tilted")];
+            if none.iter().any(|(of, name)| *of == view && job.contains(name)) {
                 continue;
             }
             let drawing = folder.path().join("drawing.svg");
-            let name = format!("picture --view {view} --job {job}");
+            let plate = if view == "phase" && job.contains("crossed-cones") { PLATE } else { "" };
+            let name = format!("picture --view {view} --job {job}{plate}");
             twincone(&name, &drawing);
             let svg = std::fs::read_to_string(&drawing).expect("a drawing");
             let html = format!(

@@ -1,4 +1,5 @@
-//! `picture`: what a screen or camera shows, the crystal in its mount, rings over a turn, the cut over wavelength.
+//! `picture`: what a screen or camera shows, the crystal in its mount, rings over a turn, the cut over wavelength, the phase
+//! between the two histories of a pair.
 
 use std::io::IsTerminal;
 use std::path::PathBuf;
@@ -7,8 +8,8 @@ use clap::{Args as ClapArgs, ValueEnum};
 use twincone::job::setup::{Needs, Setup};
 use twincone::matching::{Cones, Want, cones};
 use twincone::picture::{
-    Axis, Backdrop, Curves, Depth, Drawing, Exposure, GlowError, Light, Optics, Sampling, Seen, Sensor,
-    camera, cut_curve, front, notes, parse_axis, png_size, ring_sweep, side,
+    Axis, Backdrop, Curves, Depth, Drawing, Exposure, GlowError, Light, Optics, Phases, Sampling, Seen,
+    Sensor, camera, cut_curve, front, notes, parse_axis, phase, png_size, ring_sweep, side,
 };
 use twincone::quantity::{Angle, Length};
 use twincone::report::Conventions;
@@ -53,6 +54,9 @@ pub struct Args {
     /// Range of the ring sweep: crystal.tilt or crystal.cross_tilt=FROM..TO/POINTS [default: tilt 1 deg either way]
     #[arg(long, value_name = "KEY=RANGE", allow_hyphen_values = true)]
     axis: Option<String>,
+    /// View phase: which pair of crossings, as `cones` numbers them
+    #[arg(long, value_name = "N", default_value = "1", value_parser = clap::value_parser!(u16).range(1..))]
+    pair: u16,
     #[command(flatten)]
     experiment: ExperimentArgs,
 }
@@ -69,6 +73,8 @@ enum View {
     RingSweep,
     /// Cut angle against signal wavelength
     Cut,
+    /// Phase between the two histories of a pair, over wavelength and over the iris
+    Phase,
 }
 
 /// The picture.
@@ -101,6 +107,15 @@ fn draw(args: &Args, setup: &Setup, output: &OutputArgs, form: Format) -> Result
                 return Ok(OutputArgs::file(curves.csv().into_bytes(), warnings));
             }
             cut_curve(setup, &curves)
+        }
+        View::Phase => {
+            setup.demand_bench("picture --view phase")?;
+            let phases = Phases::of(setup, usize::from(args.pair))?;
+            let warnings = Conventions::of_pairs(setup).warnings;
+            if form == Format::Csv {
+                return Ok(OutputArgs::file(phases.csv().into_bytes(), warnings));
+            }
+            return as_svg(&phase(setup, &phases), form, warnings);
         }
     };
     as_svg(&drawing, form, warnings)

@@ -1,9 +1,9 @@
 //! Which frequencies of a count: those that filters, irises, data sets and phase matching leave.
 
-use super::Mixture;
 use super::amplitude::Behind;
 use super::slab::Ray;
 use super::stack::{PUMP, Stack, Tuned, wavelength};
+use super::{Mixture, PairsError};
 use crate::material::Reach;
 use crate::quantity::{SPEED_OF_LIGHT, Wavelength};
 
@@ -23,25 +23,27 @@ fn common(a: Band, b: Band) -> Option<Band> {
     (both[1] > both[0]).then_some(both)
 }
 
+/// Frequencies of a for those of a photon in this arm.
+fn of_a(own: Band, arm: usize, pump: f64) -> Band {
+    if arm == 0 { own } else { [pump - own[1], pump - own[0]] }
+}
+
 impl Mixture<'_> {
     /// Frequencies of a for a frequency of the pump; `None` where nothing passes.
     pub(super) fn band(&self, pump: f64, tuned: &mut Tuned, nulls: &mut Option<Band>) -> Option<Band> {
         let nominal = self.stack.nominal();
         let centre = nominal[0] * pump / nominal[PUMP];
         // the whole of what is positive, then what data sets hold, then filters
-        let mut band = [1e-3 * pump, 0.999 * pump];
+        let mut band = self.covered([1e-3 * pump, 0.999 * pump], pump)?;
         for arm in 0..2 {
-            let of_a = |own: Band| if arm == 0 { own } else { [pump - own[1], pump - own[0]] };
-            for window in self.ranges(arm) {
-                band = common(band, of_a(frequencies(window)))?;
-            }
             for filter in &self.filters[arm] {
-                band = common(band, of_a(frequencies(filter.window(self.photon(arm)))))?;
+                let window = frequencies(filter.window(self.photon(arm)));
+                band = common(band, of_a(window, arm, pump))?;
             }
         }
         if self.filters.iter().all(Vec::is_empty) {
             if nulls.is_none() {
-                let found = self.matched_band(band, centre, pump, tuned)?;
+                let found = self.matched_band(band, centre, pump, tuned, NULLS)?;
                 *nulls = Some(found.map(|omega| omega - centre));
             }
             if let Some(offset) = nulls {
@@ -63,8 +65,46 @@ impl Mixture<'_> {
         bound.map(|crystal| [crystal.set().from.si(), crystal.set().to.si()])
     }
 
-    /// Up to the twentieth null of every history on either side.
-    fn matched_band(&self, band: Band, centre: f64, pump: f64, tuned: &mut Tuned) -> Option<Band> {
+    /// Wavelengths of a, shortest first, worth looking at: those of which the filters leave a hundredth of what they leave
+    /// at best; without filters the main lobe of phase matching.
+    ///
+    /// # Errors
+    /// Nothing passes.
+    pub fn window(&self) -> Result<[Wavelength; 2], PairsError> {
+        const STEPS: usize = 2000;
+        let [centre, _, pump] = self.stack.nominal();
+        let (mut tuned, mut lobe) = (Tuned::default(), None);
+        if self.filters.iter().all(Vec::is_empty) {
+            let all = [1e-3 * pump, 0.999 * pump];
+            let bounds = self.covered(all, pump).ok_or(PairsError::NothingCollected)?;
+            let found = self.matched_band(bounds, centre, pump, &mut tuned, 1.0);
+            lobe = found.map(|band| band.map(|omega| omega - centre));
+        }
+        let band = self.band(pump, &mut tuned, &mut lobe).ok_or(PairsError::NothingCollected)?;
+        let at = |j: usize| band[0] + (band[1] - band[0]) * j as f64 / STEPS as f64;
+        let passed: Vec<f64> = (0..=STEPS).map(|j| self.passes(wavelength(at(j)))).collect();
+        let least = 0.01 * passed.iter().copied().fold(0.0, f64::max);
+        let open = |passed: &f64| *passed > 0.0 && *passed >= least;
+        let ends = passed.iter().rposition(open).zip(passed.iter().position(open));
+        let (last, first) = ends.ok_or(PairsError::NothingCollected)?;
+        Ok([last, first].map(|j| wavelength(at(j))))
+    }
+
+    /// The part of a band that the data sets in the way of both photons cover.
+    fn covered(&self, band: Band, pump: f64) -> Option<Band> {
+        let windows = (0..2).flat_map(|arm| self.ranges(arm).map(move |window| (arm, window)));
+        windows.map(|(arm, window)| of_a(frequencies(window), arm, pump)).try_fold(band, common)
+    }
+
+    /// Up to so many nulls of the best matched history on either side.
+    fn matched_band(
+        &self,
+        band: Band,
+        centre: f64,
+        pump: f64,
+        tuned: &mut Tuned,
+        nulls: f64,
+    ) -> Option<Band> {
         const STEPS: usize = 400;
         let mut found = [centre, centre];
         let mut born = Vec::new();
@@ -73,7 +113,7 @@ impl Mixture<'_> {
             for j in 0..STEPS {
                 let omega = centre + step * j as f64;
                 let matched = self.least_detuning(omega, pump, tuned, &mut born);
-                if j > 0 && matched.is_none_or(|x| x > NULLS * std::f64::consts::PI) {
+                if j > 0 && matched.is_none_or(|x| x > nulls * std::f64::consts::PI) {
                     break;
                 }
                 found[side] = omega + step * 0.999;

@@ -19,6 +19,7 @@ use super::slab::Ray;
 use super::stack::{PUMP, Stack, Tuned, wavelength};
 use super::state::{Amplitude, DensityMatrix};
 use super::{HistoryBasis, PairsError, Vary};
+use crate::quantity::Wavelength;
 
 /// What is integrated over, made ready.
 #[derive(Debug, Clone)]
@@ -241,6 +242,12 @@ impl<'a> Mixture<'a> {
     /// What a fibre takes of a direction where the other arm has none: |u|^2 of its mode.
     fn seen(&self, arm: usize, k0: f64, at: Vector2<f64>) -> f64 {
         self.fibres[arm].map_or(1.0, |w| (-0.5 * (k0 * w).powi(2) * at.norm_squared()).exp())
+    }
+
+    /// What the filters of both arms leave of pairs whose photon a has this wavelength, at the pump's centre.
+    #[must_use]
+    pub fn passes(&self, a: Wavelength) -> f64 {
+        self.transmission(a.angular_frequency(), self.stack.nominal()[PUMP])
     }
 
     fn transmission(&self, omega: f64, pump: f64) -> f64 {

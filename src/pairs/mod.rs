@@ -64,6 +64,22 @@ impl Pair {
         usable.then_some(Self { a: crossing.direction, b: crossing.partner?, photons, first, second })
     }
 
+    /// What the first and the second history leave in arm a and in arm b: o and e in one crystal, the crystal's number in
+    /// several.
+    #[must_use]
+    pub fn polarizations(&self) -> [[String; 2]; 2] {
+        let (one, two) = (&self.first, &self.second);
+        if one.crystal == two.crystal {
+            let (p, q) = (&one.process, &two.process);
+            return [
+                [p.signal.to_string(), q.signal.to_string()],
+                [p.idler.to_string(), q.idler.to_string()],
+            ];
+        }
+        let numbers = [one, two].map(|name| (name.crystal + 1).to_string());
+        [numbers.clone(), numbers]
+    }
+
     /// The same pair with the arms exchanged.
     #[must_use]
     pub fn swapped(&self) -> Self {

@@ -279,6 +279,21 @@ impl Drawing {
         self.coloured_text(at, size, anchor, text, colour);
     }
 
+    /// A label on a line, as near its middle as a place is free; none where all are taken.
+    pub fn label_on(&mut self, line: &[(f64, f64)], size: f64, text: &str, frame: Extent) {
+        let middle = line.len() / 2;
+        let places = (0..=middle).flat_map(|off| [middle + off, middle.wrapping_sub(off)]);
+        for (x, y) in places.filter_map(|place| line.get(place)) {
+            let at = (*x, y + 0.35 * size);
+            let extent = box_of(at, size, Anchor::Middle, text);
+            let free = self.taken.iter().all(|taken| taken.overlap(&extent) <= 0.0);
+            if free && extent.outside(&frame) <= 0.0 {
+                self.text(at, size, Anchor::Middle, text);
+                return;
+            }
+        }
+    }
+
     /// The drawing as an element that stands in a page by itself or within HTML.
     #[must_use]
     pub fn element(&self) -> String {

@@ -1,6 +1,8 @@
-//! Pictures: what a screen or camera shows, the crystal in its mount, rings over a turn, cuts over wavelength.
+//! Pictures: what a screen or camera shows, the crystal in its mount, rings over a turn, cuts over wavelength, the
+//! phase between the two histories of a pair.
 
 mod camera;
+mod contour;
 mod cut_curve;
 mod drawing;
 mod exposure;
@@ -9,6 +11,7 @@ mod geometry;
 mod glow;
 mod light;
 mod notes;
+mod phase;
 mod ring_sweep;
 mod sensor;
 mod sinc;
@@ -22,5 +25,6 @@ pub use geometry::{front, side};
 pub use glow::{GlowError, Sampling};
 pub use light::{Filter, Light, Shape};
 pub use notes::notes;
+pub use phase::{Phases, phase};
 pub use ring_sweep::{Axis, parse_axis, ring_sweep};
 pub use sensor::{Optics, Seen, Sensor};

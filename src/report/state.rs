@@ -63,7 +63,7 @@ impl InReport for Basis {
     fn kets(self, state: &State) -> [String; 4] {
         let [a, b] = match self {
             Self::Lab => [["H".to_string(), "V".to_string()], ["H".to_string(), "V".to_string()]],
-            Self::Histories => polarizations(state),
+            Self::Histories => state.pair.polarizations(),
         };
         let ket = |i: usize, j: usize| match a[i].len() + b[j].len() {
             2 => format!("{}{}", a[i], b[j]),
@@ -79,17 +79,6 @@ impl InReport for Basis {
             Self::Lab => state.lab.visibility_diagonal(),
         }
     }
-}
-
-/// What the first and the second history leave in arm a and b: o and e in one crystal, the crystal's number in several.
-fn polarizations(state: &State) -> [[String; 2]; 2] {
-    let (one, two) = (&state.pair.first, &state.pair.second);
-    if one.crystal == two.crystal {
-        let (p, q) = (&one.process, &two.process);
-        return [[p.signal.to_string(), q.signal.to_string()], [p.idler.to_string(), q.idler.to_string()]];
-    }
-    let numbers = [one, two].map(|name| (name.crystal + 1).to_string());
-    [numbers.clone(), numbers]
 }
 
 /// State, density matrices and budget.

@@ -2,7 +2,7 @@
 
 use std::path::Path;
 
-use crate::run::{assert_says, twincone, twincone_in};
+use crate::run::{assert_says, twincone, twincone_in, twincone_with};
 use crate::table::Table;
 
 const CROSSED: &str = "picture -m bbo:kato-1986 --theta 42.54deg --phi 0deg --length 2mm -p 405nm";
@@ -140,4 +140,100 @@ fn what_does_not_fit_is_refused_in_words() {
     assert_says(&twincone(&format!("{CROSSED} --size 0mm")).refusal(2), &["--size"]);
     assert_says(&twincone(&format!("{CROSSED} --size 5kg")).refusal(2), &["--size"]);
     assert_says(&twincone("cones -m bbo --theta 42deg -p 405nm -f svg").refusal(2), &["`picture` draws"]);
+}
+
+const COMPENSATED: &str = r#"
+[pump]
+wavelength = "405 nm"
+
+[crystal]
+material = "bbo"
+dataset = "kato-1986"
+cut = { theta = "42.541 deg", phi = "0 deg" }
+length = "2 mm"
+
+[[filter]]
+width = "10 nm"
+
+[[compensator]]
+arm = "both"
+length = "1 mm"
+roll = "90 deg"
+"#;
+
+/// Slope of the phase between two rows, rad per unit of a column.
+fn slope(table: &Table, rows: &[usize], column: &str) -> f64 {
+    let (first, last) = (rows[0], rows[rows.len() - 1]);
+    let step = |column: &str| table.number(last, column) - table.number(first, column);
+    step("phase_rad") / step(column)
+}
+
+fn rows(table: &Table, chosen: impl Fn(usize) -> bool) -> Vec<usize> {
+    (0..table.len()).filter(|row| chosen(*row)).collect()
+}
+
+#[test]
+fn the_phase_has_the_slope_that_is_known_and_the_value_of_the_state() {
+    let folder = tempfile::tempdir().expect("a folder");
+    let crystal = "[[crystal]]\nmaterial = \"bbo\"\ndataset = \"kato-1986\"\nlength = \"0.5 mm\"\n\
+                   cut = { theta = \"29.237 deg\", phi = \"90 deg\" }\n";
+    let job =
+        format!("pump.wavelength = \"405 nm\"\nemission.type = \"I\"\n{crystal}{crystal}roll = \"90 deg\"\n");
+    std::fs::write(folder.path().join("two.toml"), job).expect("a file");
+    let asked = "-j two.toml --filter-width 10nm --iris 0.1deg -f csv";
+    let csv = twincone_in(folder.path(), &format!("picture --view phase {asked}")).answer();
+    let table = Table::read(&csv);
+    table.assert_columns("panel, compensators, wavelength_nm, h_deg, v_deg, phase_rad, transmission");
+    let at = |row: usize, column: &str| table.number(row, column);
+    let upwards = rows(&table, |row| table.cell(row, "panel") == "iris" && at(row, "h_deg") == 0.0);
+    // in the plane of the second axis, agreed to 0.01 rad per degree; H and V of the arm here, polar angles there
+    let found = slope(&table, &upwards, "v_deg");
+    assert!((found + 4.67).abs() < 0.02, "{found}");
+    // the phase of the state is that of the second history against the first
+    let middle = rows(&table, |row| {
+        table.cell(row, "panel") == "iris" && at(row, "h_deg") == 0.0 && at(row, "v_deg") == 0.0
+    });
+    let state = twincone_in(folder.path(), &format!("state {asked} --basis oe")).answer();
+    let difference = at(middle[0], "phase_rad").to_degrees() + Table::read(&state).number(0, "phase_deg");
+    // the state is a mean over filter and iris
+    assert!((difference / 360.0 - (difference / 360.0).round()).abs() < 0.01, "{difference}");
+}
+
+#[test]
+fn compensators_flatten_the_phase_over_wavelength() {
+    let csv = twincone_with(COMPENSATED, "picture --view phase -j - -f csv").answer();
+    let table = Table::read(&csv);
+    let slopes = ["with", "without"].map(|with| {
+        let rows = rows(&table, |row| {
+            table.cell(row, "panel") == "wavelength"
+                && table.cell(row, "compensators") == with
+                && (table.number(row, "wavelength_nm") - 810.0).abs() < 2.0
+        });
+        slope(&table, &rows, "wavelength_nm")
+    });
+    assert!(slopes[0].abs() < 0.1 * slopes[1].abs(), "{slopes:?}");
+    let passed: Vec<f64> = (0..table.len()).map(|row| table.number(row, "transmission")).collect();
+    assert!(passed.iter().all(|share| (0.0..=1.0).contains(share)));
+    // the middle of the filters
+    assert!(passed.iter().any(|share| *share > 0.999));
+}
+
+#[test]
+fn the_phase_is_drawn_with_and_without_compensators() {
+    let svg = twincone_with(COMPENSATED, "picture --view phase -j - --iris 0.2deg").answer();
+    let with = [
+        "Phase of |eo> minus |oe>",
+        "with compensators: lines in rad",
+        "without compensators",
+        "0.2 deg wide",
+    ];
+    assert_says(&svg, &with.map(|text| text.replace('>', "&gt;")).each_ref().map(String::as_str));
+    assert_says(&svg, &["wavelength of photon a in nm", "h in deg about", "v in deg", "phase in rad"]);
+    let bare = twincone(&format!("{CROSSED} --view phase")).answer();
+    assert_says(
+        &bare,
+        &["over directions: lines in rad", "the job has no iris", "main lobe of phase matching"],
+    );
+    assert_says(&twincone(&format!("{CROSSED} --view phase --pair 2")).refusal(1), &["there is no pair 2"]);
+    assert_says(&twincone(&format!("{CROSSED} --view phase -f png")).refusal(2), &["drawing"]);
 }

@@ -12,7 +12,9 @@ pub struct Table {
 }
 
 /// Columns that hold words.
-const WORDS: [&str; 29] = [
+const WORDS: [&str; 31] = [
+    "panel",
+    "compensators",
     "crystal_process",
     "crystal_material",
     "crystal_dataset",
