@@ -350,6 +350,19 @@ impl Length {
     }
 }
 
+impl Temperature {
+    /// A difference of temperatures in kelvins, such as `0.5 K` or `0.5 degC`, which are alike.
+    ///
+    /// # Errors
+    /// A text that is none, with one that is.
+    pub fn difference(text: &str) -> Result<f64, String> {
+        let trimmed = text.trim();
+        let number = Self::units().find_map(|unit| trimmed.strip_suffix(unit));
+        let value = number.and_then(|number| number.trim().parse::<f64>().ok()).filter(|v| v.is_finite());
+        value.ok_or_else(|| format!("`{trimmed}` is no difference of temperatures; write 2K, for example"))
+    }
+}
+
 impl Angle {
     /// From a number of degrees.
     #[must_use]
@@ -541,6 +554,16 @@ mod tests {
         let idler = Wavelength::from_nm(800.0).partner(pump).expect("longer than the pump");
         assert!((1.0 / idler.nm() + 1.0 / 800.0 - 1.0 / 405.0).abs() < 1e-15);
         assert_eq!(Wavelength::from_nm(400.0).partner(pump), None);
+    }
+
+    #[test]
+    fn differences_of_temperatures_have_no_zero() {
+        for text in ["0.5 K", "0.5degC", " 0.5 \u{b0}C", "0.5 C"] {
+            assert_eq!(Temperature::difference(text), Ok(0.5));
+        }
+        for text in ["0.5", "0.5 KK", "K", "0.5 nm", ""] {
+            assert!(Temperature::difference(text).is_err(), "{text}");
+        }
     }
 
     #[test]

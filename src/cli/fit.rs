@@ -4,12 +4,12 @@ use std::path::{Path, PathBuf};
 
 use clap::{Args as ClapArgs, ValueEnum};
 use twincone::fit::{
-    Exposure, Fitted, Frame, Measurement, Question, Settings, TEMPLATE, View, doubts, fit, fit_frames, read,
-    unknowns,
+    Exposure, Fitted, Frame, Known, Measurement, Question, Settings, TEMPLATE, View, doubts, fit, fit_frames,
+    kept, other_datasets, other_views, read, setting_for, unknowns,
 };
-use twincone::job::setup::{GivenCut, Needs, Setup, Stage};
+use twincone::job::setup::{Needs, Setup};
 use twincone::job::{resolve, setup::SetupError};
-use twincone::matching::{Actuator, Target, tune};
+use twincone::matching::Target;
 use twincone::quantity::{Angle, Length};
 use twincone::report::fit::{Finding, tables, text};
 use twincone::report::{Answer, Conventions, resolved_job};
@@ -236,12 +236,14 @@ fn answer(
     question: &Question,
     fitted: &Fitted,
 ) -> Result<Outcome, Failure> {
-    let views = other_views(args, question);
+    let known = Known { turn: args.view_turn.is_some(), mirror: args.mirror.is_some() };
+    let views = other_views(question, known);
     let datasets = if args.all_datasets { other_datasets(question) } else { Vec::new() };
     let kept = kept(question, fitted);
     args.experiment.write_job(&kept)?;
     let doubts = doubts(question, fitted);
-    let advice = advice(args, question, &kept)?;
+    let target = args.target.target()?.or(question.setup.cut[0].target);
+    let advice = target.map(|target| Ok::<_, Failure>((target, setting_for(&kept, target)?))).transpose()?;
     let finding = Finding { question, fitted, doubts: &doubts, advice, views: &views, datasets: &datasets };
     let mut conventions = Conventions::of(&kept);
     if !finding.holds() {
@@ -256,53 +258,4 @@ fn answer(
         solved: finding.holds(),
     };
     output.outcome(&answer, None)
-}
-
-/// Fits with the picture standing in the other ways that the options leave open.
-fn other_views(args: &Args, question: &Question) -> Vec<(View, Fitted)> {
-    if !question.data.iter().any(|m| m.seen.has_place()) {
-        return Vec::new();
-    }
-    let open = View::ALL.into_iter().filter(|view| {
-        *view != question.view
-            && (args.view_turn.is_none() || view.turned == question.view.turned)
-            && (args.mirror.is_none() || view.mirrored == question.view.mirrored)
-    });
-    let each = open.filter_map(|view| Some((view, fit(&Question { view, ..question.clone() }).ok()?)));
-    each.collect()
-}
-
-fn other_datasets(question: &Question) -> Vec<(String, Result<Fitted, String>)> {
-    let crystal = &question.setup.crystals[0];
-    let others = crystal.material.sets().iter().enumerate().filter(|(i, _)| *i != crystal.dataset);
-    let each = others.map(|(index, set)| {
-        let mut again = question.clone();
-        again.setup.crystals[0] = crystal.with_dataset(index);
-        (set.id.clone(), fit(&again).map_err(|e| e.to_string()))
-    });
-    each.collect()
-}
-
-/// The experiment with the fitted values, as a job keeps it.
-fn kept(question: &Question, fitted: &Fitted) -> Setup {
-    let mut setup = fitted.setup.clone();
-    let believed = question.setup.stage.unwrap_or(Stage { zero: None, per_turn: None, reversed: false });
-    if let Some(zero) = fitted.zero {
-        setup.stage = Some(Stage { zero: Some(Angle::from_degrees(zero)), ..believed });
-    }
-    setup.cut[0] = GivenCut { theta: true, phi: true, target: None };
-    setup.forget_all_typed();
-    setup
-}
-
-/// The tilt that reaches the target with the fitted crystal.
-fn advice(
-    args: &Args,
-    question: &Question,
-    kept: &Setup,
-) -> Result<Option<(Target, Option<Angle>)>, Failure> {
-    let Some(target) = args.target.target()?.or(question.setup.cut[0].target) else { return Ok(None) };
-    let mut setup = kept.clone();
-    let tuned = tune(&setup.tuning(target, Some(Actuator::Tilt))?)?;
-    Ok(Some((target, tuned.turns.first().map(|turn| turn.crystal.orientation.tilt))))
 }

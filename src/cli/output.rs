@@ -88,6 +88,16 @@ impl OutputArgs {
         Outcome { answer: Some(bytes), warnings, solved: true }
     }
 
+    /// Does work on as many threads as asked for.
+    ///
+    /// # Errors
+    /// Threads that cannot be started.
+    pub fn on_threads<T: Send>(&self, work: impl FnOnce() -> T + Send) -> Result<T, Failure> {
+        let pool = rayon::ThreadPoolBuilder::new().num_threads(self.threads.map_or(0, usize::from)).build();
+        let failed = |e| Failure { status: 4, message: format!("cannot start threads: {e}") };
+        Ok(pool.map_err(failed)?.install(work))
+    }
+
     /// A text that has no other form.
     ///
     /// # Errors

@@ -88,10 +88,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     };
     let needs = Needs { cut: args.view != View::Cut, ..Needs::ALL };
     let setup = args.experiment.setup(output, needs)?;
-    let threads = usize::from(output.threads.unwrap_or(0));
-    let pool = rayon::ThreadPoolBuilder::new().num_threads(threads).build();
-    let pool = pool.map_err(|e| Failure { status: 4, message: format!("cannot start threads: {e}") })?;
-    pool.install(|| draw(args, &setup, output, form))
+    output.on_threads(|| draw(args, &setup, output, form))?
 }
 
 fn draw(args: &Args, setup: &Setup, output: &OutputArgs, form: Format) -> Result<Outcome, Failure> {
@@ -225,7 +222,7 @@ fn sensor(args: &Args, setup: &Setup, found: &Cones) -> Result<Sensor, Failure> 
     let field = match &args.size {
         None => Sensor::field_for(found, optics).si(),
         Some(text) => match (text.parse::<Angle>(), text.parse::<Length>()) {
-            (Ok(angle), _) if angle.degrees() < 150.0 => 2.0 * scale * (0.5 * angle.si()).tan(),
+            (Ok(angle), _) if angle.degrees() < 150.0 => optics.field(angle).si(),
             (_, Ok(length)) => length.si(),
             (Ok(_), Err(_)) => return Err(Failure::usage("--size: a field of 150 deg or more is too wide")),
             (Err(_), Err(e)) => {

@@ -2,7 +2,7 @@
 
 use std::io::{self, Write as _};
 use std::ops::Range;
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 use std::sync::Mutex;
 use std::sync::atomic::{AtomicBool, Ordering};
 use std::time::{Duration, Instant};
@@ -89,34 +89,14 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let points = slice.points(sweep.count());
     let header = sweep.header();
     let meta = meta(&sweep, slice)?;
-    let mut sink = match &target {
-        None => Sink::Pipe(io::stdout()),
-        Some(path) => {
-            let contents = Contents { header: &header, meta: &meta, points: points.clone() };
-            let leftover = match (args.resume, args.restart) {
-                (true, _) => Leftover::Resume,
-                (_, true) => Leftover::Restart,
-                _ => Leftover::Refuse,
-            };
-            match SweepFile::open(path, &contents, leftover)? {
-                Some(file) => Sink::File(file),
-                None => return Ok(Outcome::written()),
-            }
-        }
-    };
-    let from = match &mut sink {
-        Sink::File(file) => file.next,
-        Sink::Pipe(_) => points.start,
-    };
-    if matches!(sink, Sink::Pipe(_)) && sink.write(&header)? == Taken::Closed {
+    let contents = Contents { header: &header, meta: &meta, points: points.clone() };
+    let Some((mut sink, from)) = args.open(target.as_deref(), &contents)? else {
         return Ok(Outcome::written());
-    }
+    };
     let left = from..points.end;
     let progress = Progress::new(points.end - points.start, from - points.start, output.quiet);
-    let threads = rayon::ThreadPoolBuilder::new().num_threads(output.threads.map_or(0, usize::from));
-    let threads =
-        threads.build().map_err(|e| Failure { status: 4, message: format!("cannot start threads: {e}") })?;
-    let outcome = threads.install(|| Engine { sweep: &sweep, progress: &progress }.run(left, &mut sink));
+    let engine = Engine { sweep: &sweep, progress: &progress };
+    let outcome = output.on_threads(|| engine.run(left, &mut sink))?;
     progress.clear();
     let tally = outcome?;
     if let Sink::File(file) = sink {
@@ -303,6 +283,25 @@ fn part(text: &str, points: u64) -> Result<Slice, Failure> {
 }
 
 impl Args {
+    /// Opens the file or writes the header to the pipe; with the point to go on with. `None` where nothing is to be done.
+    fn open(&self, target: Option<&Path>, contents: &Contents<'_>) -> Result<Option<(Sink, u64)>, Failure> {
+        let Some(path) = target else {
+            let mut sink = Sink::Pipe(io::stdout());
+            let taken = sink.write(contents.header)?;
+            return Ok((taken == Taken::Yes).then_some((sink, contents.points.start)));
+        };
+        let leftover = match (self.resume, self.restart) {
+            (true, _) => Leftover::Resume,
+            (_, true) => Leftover::Restart,
+            _ => Leftover::Refuse,
+        };
+        let file = SweepFile::open(path, contents, leftover)?;
+        Ok(file.map(|file| {
+            let next = file.next;
+            (Sink::File(file), next)
+        }))
+    }
+
     fn document(&self) -> Result<Document, Failure> {
         let mut document = self.experiment.document_of(self.file.as_deref())?;
         if let Some(report) = &self.report {

@@ -37,11 +37,7 @@ enum Kind {
 pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let form = output.form()?;
     let setup = args.experiment.setup(output, Needs::ALL)?;
-    if !setup.length_given {
-        return Err(Failure::usage(
-            "a sheet needs the crystal's length: pass --length, for example --length 2mm",
-        ));
-    }
+    setup.demand_length("sheet")?;
     let mut page = match args.sheet {
         Kind::Order => order(&setup)?,
         Kind::Bench => bench(&setup)?,

@@ -5,12 +5,11 @@ use std::path::PathBuf;
 use clap::{Args as ClapArgs, ValueEnum};
 use twincone::job::resolve;
 use twincone::job::setup::{Needs, Setup};
-use twincone::matching::Triplet;
-use twincone::quantity::{Angle, Length};
+use twincone::quantity::{Angle, Length, Temperature};
 use twincone::report::tolerance::{Finding, samples_table, tables, text};
 use twincone::report::{Answer, Conventions, csv, resolved_job};
-use twincone::tolerance::{Bench, Cause, Chances, Draw, Errors, Sample, Spread};
-use twincone::tolerance::{advise, chances, contributions, sample};
+use twincone::tolerance::{Bench, Cause, Draw, Errors, Spread};
+use twincone::tolerance::{advise, chances, contributions, ordered_otherwise, sample};
 
 use super::cut::TargetArgs;
 use super::failure::Failure;
@@ -126,19 +125,13 @@ impl ErrorArgs {
             );
         }
         if let Some(text) = &self.temperature_error {
-            errors = errors.with(Cause::Temperature, kelvin(text)?);
+            let kelvins = Temperature::difference(text)
+                .map_err(|why| Failure::usage(format!("--temperature-error: {why}")))?;
+            let kelvins = size("--temperature-error", kelvins, 200.0, "200 K")?;
+            errors = errors.with(Cause::Temperature, kelvins);
         }
         Ok(errors)
     }
-}
-
-/// A difference of temperatures: a number with K or degC.
-fn kelvin(text: &str) -> Result<f64, Failure> {
-    let number = text.trim().strip_suffix("degC").or_else(|| text.trim().strip_suffix('K'));
-    let value = number.and_then(|n| n.trim().parse::<f64>().ok()).ok_or_else(|| {
-        Failure::usage(format!("--temperature-error: `{text}` is no difference of temperatures; write 2K"))
-    })?;
-    size("--temperature-error", value, 200.0, "200 K")
 }
 
 fn size(option: &str, value: f64, most: f64, words: &str) -> Result<f64, Failure> {
@@ -157,6 +150,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let target = args.target.target()?.or(setup.cut[0].target).ok_or_else(|| {
         Failure::usage("no target: pass --crossing, --half-angle, --separation or --collinear, for example --crossing 3deg")
     })?;
+    setup.demand_length("tolerance")?;
     let question = setup.tuning(target, None)?;
     args.experiment.write_job(&setup)?;
     let errors = args.errors.errors(&setup)?;
@@ -171,16 +165,16 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         },
         count: args.samples as usize,
         seed: args.seed,
-        datasets: datasets(&bench, args.one_dataset),
+        datasets: if args.one_dataset { vec![bench.crystal.dataset] } else { bench.datasets() },
     };
-    let samples = on_threads(output, || sample(&bench, &draw))?.map_err(Failure::from)?;
+    let samples = output.on_threads(|| sample(&bench, &draw))?.map_err(Failure::from)?;
     if let Some(path) = &args.write_samples {
         write_whole(path, csv(&samples_table(&bench, &samples)).as_bytes())
             .map_err(|e| Failure::file("write", &path.display().to_string(), &e))?;
     }
     let advice = advise(&bench, &parts, &samples)?;
     let shifted = match advice.shift_theta {
-        Some(shift) => Some(ordered_otherwise(&bench, &question, &draw, shift, limit.si(), output)?),
+        Some(shift) => Some(output.on_threads(|| ordered_otherwise(&bench, &draw, shift, limit.si()))??),
         None => None,
     };
     let all = chances(&samples, limit.si());
@@ -221,16 +215,6 @@ fn setup(args: &Args, output: &OutputArgs) -> Result<Setup, Failure> {
     Ok(setup)
 }
 
-/// Data sets that a sample may follow: those that reach these wavelengths.
-fn datasets(bench: &Bench, one: bool) -> Vec<usize> {
-    let own = bench.crystal.dataset;
-    let count = bench.crystal.material.sets().len();
-    let serves = |index: &usize| {
-        *index == own || !one && Triplet::new(&bench.crystal.with_dataset(*index), &bench.photons).is_ok()
-    };
-    (0..count).filter(serves).collect()
-}
-
 fn set_line(bench: &Bench, draw: &Draw) -> String {
     let sets = bench.crystal.material.sets();
     let ids: Vec<&str> = draw.datasets.iter().map(|i| sets[*i].id.as_str()).collect();
@@ -238,29 +222,4 @@ fn set_line(bench: &Bench, draw: &Draw) -> String {
         [only] => format!("Samples follow {only} alone."),
         _ => format!("Samples follow each as often: {}.", ids.join(", ")),
     }
-}
-
-/// The same samples with theta ordered otherwise.
-fn ordered_otherwise(
-    bench: &Bench,
-    question: &twincone::matching::Tuning,
-    draw: &Draw,
-    shift: f64,
-    limit: f64,
-    output: &OutputArgs,
-) -> Result<Chances, Failure> {
-    let mut question = question.clone();
-    question.crystal.cut.theta = Angle::radians(question.crystal.cut.theta.si() + shift);
-    let bench = Bench::new(&question, bench.screen)?;
-    let draw = Draw { count: draw.count.min(10_000), ..draw.clone() };
-    let samples: Vec<Sample> = on_threads(output, || sample(&bench, &draw))?.map_err(Failure::from)?;
-    Ok(chances(&samples, limit))
-}
-
-/// On as many threads as asked for.
-fn on_threads<T: Send>(output: &OutputArgs, work: impl FnOnce() -> T + Send) -> Result<T, Failure> {
-    let threads = rayon::ThreadPoolBuilder::new().num_threads(output.threads.map_or(0, usize::from));
-    let threads =
-        threads.build().map_err(|e| Failure { status: 4, message: format!("cannot start threads: {e}") })?;
-    Ok(threads.install(work))
 }

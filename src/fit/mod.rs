@@ -4,6 +4,7 @@
 //! unknowns say it stands. Priors from stated tolerances are further residuals, so that an unknown the data say nothing
 //! about keeps its prior and its prior's uncertainty instead of running away.
 
+mod again;
 mod diagnose;
 mod find;
 mod frame;
@@ -14,6 +15,7 @@ mod read;
 mod solve;
 mod unknown;
 
+pub use again::{Known, kept, other_datasets, other_views, setting_for};
 pub use diagnose::{Doubt, doubts};
 pub use find::{Exposure, Found, fit_frames};
 pub use frame::{Frame, Outline};

@@ -6,6 +6,7 @@ use super::description::{self, Description};
 use super::document::{Document, JobError};
 use super::keys::{Holds, KeyPath, Unit};
 use crate::places::nearest;
+use crate::quantity::Temperature;
 
 /// One key and its values.
 #[derive(Debug, Clone, PartialEq)]
@@ -25,8 +26,8 @@ pub enum Values {
     Range(Range),
     /// Numbers one by one.
     Numbers(Vec<f64>),
-    /// Words one by one.
-    Words(Vec<String>),
+    /// Words one by one, with their places in the document.
+    Words(Vec<Spanned<String>>),
 }
 
 /// Equally spaced numbers, both ends included, as the decimals a person expects.
@@ -84,7 +85,7 @@ impl Values {
         match self {
             Self::Range(range) => Value::Number(range.at(index)),
             Self::Numbers(all) => Value::Number(all[index as usize]),
-            Self::Words(all) => Value::Word(&all[index as usize]),
+            Self::Words(all) => Value::Word(all[index as usize].get_ref()),
         }
     }
 }
@@ -94,6 +95,15 @@ impl Axis {
     #[must_use]
     pub fn column(&self) -> String {
         self.path.column(self.unit)
+    }
+
+    /// Its words, with their places; `None` where it holds numbers.
+    #[must_use]
+    pub fn words(&self) -> Option<&[Spanned<String>]> {
+        match &self.values {
+            Values::Words(all) => Some(all),
+            Values::Range(_) | Values::Numbers(_) => None,
+        }
     }
 
     /// A value as a job would write it.
@@ -274,7 +284,8 @@ impl Reader<'_> {
 
     fn list(&self, list: &[description::Text]) -> Result<(Values, Option<Unit>), JobError> {
         if !self.holds.is_quantity() {
-            let words: Result<Vec<String>, JobError> = list.iter().map(|text| self.word(text)).collect();
+            let word = |text: &description::Text| Ok(Spanned::new(text.span(), self.word(text)?));
+            let words: Result<Vec<Spanned<String>>, JobError> = list.iter().map(word).collect();
             return Ok((Values::Words(words?), None));
         }
         let mut numbers = Vec::with_capacity(list.len());
@@ -350,7 +361,8 @@ impl Reader<'_> {
         let (step, own) = match self.holds {
             // a step of kelvins is not offset by 273.15
             Holds::Temperature => {
-                (kelvins(text).map_err(|why| self.document.fault(text.span(), &why))?, unit)
+                let step = Temperature::difference(text.get_ref());
+                (step.map_err(|why| self.document.fault(text.span(), &why))?, unit)
             }
             _ => self.number(text)?,
         };
@@ -369,17 +381,6 @@ impl Reader<'_> {
         }
         Ok(whole as u64 + 1)
     }
-}
-
-/// A temperature difference: K and degC are alike.
-fn kelvins(text: &description::Text) -> Result<f64, String> {
-    let difference = text.get_ref().trim().trim_end_matches('K').trim_end_matches("degC").trim();
-    difference.parse().map_err(|_| {
-        format!(
-            "`{}` is no difference of temperatures; write it in K or degC, such as `0.5 K`",
-            text.get_ref()
-        )
-    })
 }
 
 #[cfg(test)]

@@ -200,16 +200,3 @@ fn metres(value: f64, unit: Unit) -> f64 {
         _ => value / 1e3,
     }
 }
-
-impl Setup {
-    /// What the limits of single values do not say: photons fit the pump, and no crystal stands edge-on to it.
-    ///
-    /// # Errors
-    /// A combination that cannot be.
-    pub fn check(&self) -> Limit {
-        if let (Some(pump), Signals::At(all)) = (self.pump, &self.signals) {
-            all.iter().try_for_each(|signal| limits::photon(*signal, pump))?;
-        }
-        self.crystals.iter().try_for_each(|crystal| limits::facing(&crystal.orientation))
-    }
-}

@@ -94,17 +94,26 @@ impl Setup {
         }
     }
 
+    /// A length for every crystal.
+    ///
+    /// # Errors
+    /// It is missing.
+    pub fn demand_length(&self, command: &str) -> Result<(), JobError> {
+        let missing = || {
+            JobError(format!(
+                "no length: `{command}` needs that of every crystal; pass --length, for example --length 2mm, or write \
+                 crystal.length in the job file"
+            ))
+        };
+        self.length_given.then_some(()).ok_or_else(missing)
+    }
+
     /// A length for every crystal, and nothing that this version would leave out silently.
     ///
     /// # Errors
     /// What is missing, or not understood.
     pub fn demand_bench(&self, command: &str) -> Result<(), JobError> {
-        if !self.length_given {
-            return Err(JobError(format!(
-                "no length: `{command}` needs that of every crystal; pass --length, for example --length 2mm, or write \
-                 crystal.length in the job file"
-            )));
-        }
+        self.demand_length(command)?;
         match self.unread.as_slice() {
             [] => Ok(()),
             keys => Err(JobError(format!(

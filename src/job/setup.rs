@@ -2,6 +2,7 @@
 
 use super::description::Description;
 use super::document::JobError;
+use super::limits::{self, Limit};
 use super::settle::settle_cut;
 use crate::matching::{Interaction, Photons, Target};
 use crate::material::MaterialError;
@@ -157,6 +158,17 @@ impl Setup {
             self.interaction = self.interaction_for(None);
         }
         (0..self.crystals.len()).try_for_each(|index| settle_cut(self, index, needs))
+    }
+
+    /// What the limits of single values do not say: photons fit the pump, and no crystal stands edge-on to it.
+    ///
+    /// # Errors
+    /// A combination that cannot be.
+    pub fn check(&self) -> Limit {
+        if let (Some(pump), Signals::At(all)) = (self.pump, &self.signals) {
+            all.iter().try_for_each(|signal| limits::photon(*signal, pump))?;
+        }
+        self.crystals.iter().try_for_each(|crystal| limits::facing(&crystal.orientation))
     }
 
     /// The interaction that was named; else type I where a half angle is wanted of a cut or as `target`, and type II.

@@ -3,25 +3,29 @@
 use super::light::{Light, Shape};
 use super::sensor::{Optics, Sensor};
 use crate::job::Setup;
+use crate::optics::Crystal;
+
+/// A crystal or plate as it is cut and as it stands.
+pub(super) fn crystal_words(crystal: &Crystal) -> String {
+    let turn = &crystal.orientation;
+    format!(
+        "{}:{} cut theta {:.3} deg, phi {:.3} deg, {} long, tilt {:.3} deg, cross tilt {:.3} deg, roll {:.1} deg",
+        crystal.material.id,
+        crystal.set().id,
+        crystal.cut.theta.degrees(),
+        crystal.cut.phi.degrees(),
+        crystal.length,
+        turn.tilt.degrees() + 0.0,
+        turn.cross_tilt.degrees() + 0.0,
+        turn.roll.degrees() + 0.0,
+    )
+}
 
 /// Sentences.
 #[must_use]
 pub fn notes(setup: &Setup, light: &Light, sensor: &Sensor) -> Vec<String> {
     let mut lines = vec![format!("Seen {}.", sensor.seen.words())];
-    for crystal in &setup.crystals {
-        let turn = &crystal.orientation;
-        lines.push(format!(
-            "{}:{} cut theta {:.3} deg, phi {:.3} deg, {} long, tilt {:.3} deg, cross tilt {:.3} deg, roll {:.1} deg.",
-            crystal.material.id,
-            crystal.set().id,
-            crystal.cut.theta.degrees(),
-            crystal.cut.phi.degrees(),
-            crystal.length,
-            turn.tilt.degrees() + 0.0,
-            turn.cross_tilt.degrees() + 0.0,
-            turn.roll.degrees() + 0.0,
-        ));
-    }
+    lines.extend(setup.crystals.iter().map(|crystal| format!("{}.", crystal_words(crystal))));
     let waist = light.waist.map_or("a plane wave".into(), |w| format!("of waist {} um", w.um()));
     let filter = |name: &str, filters: &[super::light::Filter]| -> String {
         let words = |f: &super::light::Filter| {

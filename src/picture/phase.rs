@@ -6,9 +6,10 @@ use std::fmt::Write as _;
 use super::camera::broken;
 use super::contour::Grid;
 use super::drawing::{Anchor, BLUE, Drawing, Extent, GREY, INK, ORANGE, Pen, dashed, nice_step, pen};
+use super::notes::crystal_words;
 use crate::job::Setup;
 use crate::matching::Status;
-use crate::pairs::{Bench, HistoryBasis, Mixture, Opening, Pair, PairsError, Stack, Vary};
+use crate::pairs::{Bench, HistoryBasis, Mixture, Opening, Pair, PairsError, Place, Stack, Vary};
 use crate::quantity::{Angle, Wavelength, tidy};
 
 /// Phase of one pair, or why there is none.
@@ -520,35 +521,16 @@ fn notes(setup: &Setup, phases: &Phases) -> Vec<String> {
             .push("Shaded over directions: there, for the same reason, add pi to what the lines say.".into());
     }
     for crystal in &setup.crystals {
-        lines.push(format!(
-            "{}:{} cut theta {:.3} deg, phi {:.3} deg, {} long, roll {:.1} deg, tilt {:.3} deg; {}.",
-            crystal.material.id,
-            crystal.set().id,
-            crystal.cut.theta.degrees(),
-            crystal.cut.phi.degrees(),
-            crystal.length,
-            crystal.orientation.roll.degrees() + 0.0,
-            crystal.orientation.tilt.degrees() + 0.0,
-            setup.interaction
-        ));
+        lines.push(format!("{}; {}.", crystal_words(crystal), setup.interaction));
     }
     for compensator in &setup.bench.compensators {
-        let plate = &compensator.plate;
         let arm = match compensator.place {
-            crate::pairs::Place::Pump => "the pump".into(),
-            crate::pairs::Place::Both => "both arms".into(),
+            Place::Pump => "the pump".into(),
+            Place::Both => "both arms".into(),
             place => format!("arm {place}"),
         };
-        lines.push(format!(
-            "Compensator in {arm}: {}:{} cut theta {:.3} deg, phi {:.3} deg, {} long, roll {:.1} deg{}.",
-            plate.material.id,
-            plate.set().id,
-            plate.cut.theta.degrees(),
-            plate.cut.phi.degrees(),
-            plate.length,
-            plate.orientation.roll.degrees() + 0.0,
-            if compensator.half_wave { ", between half-wave plates" } else { "" }
-        ));
+        let between = if compensator.half_wave { ", between half-wave plates" } else { "" };
+        lines.push(format!("Compensator in {arm}: {}{between}.", crystal_words(&compensator.plate)));
     }
     lines
 }

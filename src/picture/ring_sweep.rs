@@ -1,7 +1,7 @@
 //! Rings over a range of turns, in one figure.
 
 use super::camera::{broken, ring_pen};
-use super::drawing::{Anchor, Drawing, Extent, GREY, INK, dashed, nice_step, pen};
+use super::drawing::{Anchor, Drawing, Extent, GREY, INK, Pen, dashed, nice_step, pen};
 use crate::job::Setup;
 use crate::matching::{Cones, ConesError, SAMPLES, Want, cones};
 use crate::quantity::{Angle, tidy};
@@ -95,7 +95,12 @@ fn figure(setup: &Setup, axis: &Axis, found: &[(Angle, Cones)]) -> Drawing {
     let scale = 300.0 / most;
     let at = |p: &(f64, f64)| (middle.0 + scale * p.0, middle.1 - scale * p.1);
     axes(&mut d, frame, scale, most, middle);
-    let mut labels = Vec::new();
+    let mut entries = Vec::new();
+    let mut wavelengths: Vec<f64> =
+        found.iter().flat_map(|(_, c)| &c.rings).map(|r| r.wavelength.nm().round()).collect();
+    wavelengths.sort_by(f64::total_cmp);
+    wavelengths.dedup();
+    let colours = wavelengths.len();
     for (n, (setting, cones)) in found.iter().enumerate() {
         let width = 0.6 + 1.8 * n as f64 / (found.len() - 1) as f64;
         let rows = cones.rings.iter().filter(|r| r.ring.is_ok());
@@ -104,35 +109,36 @@ fn figure(setup: &Setup, axis: &Axis, found: &[(Angle, Cones)]) -> Drawing {
             let placed: Vec<_> = curve.iter().map(at).collect();
             d.path(&placed, line, true);
             let degrees = tidy((setting.degrees() * 1e4).round() * 1e-4);
-            labels.push((placed, format!("{} at {degrees:+} deg", row.polarization), line.colour));
+            let of = if colours > 1 { format!(" {:.0} nm", row.wavelength.nm()) } else { String::new() };
+            entries.push((placed, format!("{}{of} at {degrees:+} deg", row.polarization), line));
         }
     }
-    columns(&mut d, labels, frame);
+    keys(&mut d, entries, frame);
     captions(&mut d, setup, axis, found);
     d
 }
 
-/// One ring's label: its curve, text and colour.
-type Label = (Vec<(f64, f64)>, String, &'static str);
+/// One ring's entry in the key: its curve, text and line.
+type Entry = (Vec<(f64, f64)>, String, Pen);
 
-/// Labels in a column on either side, highest ring first, each with a line to its ring.
-fn columns(d: &mut Drawing, labels: Vec<Label>, frame: Extent) {
+/// A key on either side, the ring that reaches highest first: each ring's line beside its text.
+fn keys(d: &mut Drawing, entries: Vec<Entry>, frame: Extent) {
+    const SAMPLE: f64 = 26.0;
     let middle = 0.5 * (frame.left + frame.right);
-    let (mut left, mut right): (Vec<_>, Vec<_>) = labels.into_iter().partition(|(points, ..)| {
+    let (mut left, mut right): (Vec<_>, Vec<_>) = entries.into_iter().partition(|(points, ..)| {
         let mean = points.iter().map(|p| p.0).sum::<f64>() / points.len() as f64;
         mean < middle - 1.0
     });
-    for (side, x, anchor, sample) in [
-        (&mut left, frame.left + 8.0, Anchor::Start, SAMPLES / 3),
-        (&mut right, frame.right - 8.0, Anchor::End, SAMPLES / 6),
+    let top = |entry: &Entry| entry.0.iter().map(|p| p.1).fold(f64::INFINITY, f64::min);
+    for (side, x, towards, anchor) in [
+        (&mut left, frame.left + 8.0, 1.0, Anchor::Start),
+        (&mut right, frame.right - 8.0, -1.0, Anchor::End),
     ] {
-        side.sort_by(|a, b| a.0[sample].1.total_cmp(&b.0[sample].1));
-        for (n, (points, text, colour)) in side.iter().enumerate() {
+        side.sort_by(|a, b| top(a).total_cmp(&top(b)));
+        for (n, (_, text, line)) in side.iter().enumerate() {
             let y = frame.top + 18.0 + 15.0 * n as f64;
-            let width = 0.56 * 12.0 * text.chars().count() as f64 + 4.0;
-            let end = if anchor == Anchor::Start { x + width } else { x - width };
-            d.line((end, y - 4.0), points[sample], pen(GREY, 0.6));
-            d.coloured_text((x, y), 12.0, anchor, text, colour);
+            d.line((x, y - 4.0), (x + towards * SAMPLE, y - 4.0), *line);
+            d.coloured_text((x + towards * (SAMPLE + 6.0), y), 12.0, anchor, text, line.colour);
         }
     }
 }
@@ -168,7 +174,10 @@ fn captions(d: &mut Drawing, setup: &Setup, axis: &Axis, found: &[(Angle, Cones)
         (70.0, 22.0),
         13.0,
         Anchor::Start,
-        &format!("Rings for {} settings of the {key}; thin lines first", found.len()),
+        &format!(
+            "Rings for {} settings of the {key}; thin lines first, the highest ring first in each key",
+            found.len()
+        ),
     );
     d.text((16.0, 40.0), 12.0, Anchor::Start, "y in mm");
     let place = format!("x in mm on a screen at {}, seen from downstream: +x right, +y up", setup.screen);

@@ -2,7 +2,7 @@
 
 use crate::frame::{Direction, Lab};
 use crate::matching::{Cones, RingRow};
-use crate::quantity::Length;
+use crate::quantity::{Angle, Length};
 
 use nalgebra::Vector3;
 
@@ -22,6 +22,12 @@ impl Optics {
         match self {
             Self::Screen(scale) | Self::Lens(scale) => scale,
         }
+    }
+
+    /// Width on the sensor of a field of this full angle about the pump.
+    #[must_use]
+    pub fn field(self, full: Angle) -> Length {
+        Length::metres(2.0 * self.scale().si() * (0.5 * full.si()).tan())
     }
 }
 

@@ -7,9 +7,11 @@
 mod meta;
 mod rows;
 mod setups;
+mod slice;
 mod worker;
 
-pub use meta::{Slice, meta};
+pub use meta::meta;
+pub use slice::Slice;
 pub use worker::{Piece, Tally, Worker};
 
 use std::fmt;

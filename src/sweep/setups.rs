@@ -2,8 +2,10 @@
 
 use std::sync::OnceLock;
 
+use toml::Spanned;
+
 use super::{Fault, rows};
-use crate::job::axes::{Axis, Value, Values};
+use crate::job::axes::{Axis, Value};
 use crate::job::keys::{Holds, Unit};
 use crate::job::plan::{Plan, Report, Search};
 use crate::job::setup::{Needs, Setup, SetupError};
@@ -143,8 +145,9 @@ impl<'a> Setups<'a> {
         let mut stride = self.combination_count();
         for (dimension, count) in plan.grid.dimensions.iter().zip(&self.combinations) {
             stride /= count;
-            let words = dimension.axes.iter().any(|axis| matches!(axis.values, Values::Words(_)));
-            if !words || *count > TRIED {
+            let words: Vec<(&Axis, &[Spanned<String>])> =
+                dimension.axes.iter().filter_map(|axis| Some((axis, axis.words()?))).collect();
+            if words.is_empty() || *count > TRIED {
                 continue;
             }
             for index in 0..*count {
@@ -152,22 +155,35 @@ impl<'a> Setups<'a> {
                 let around = self.combination_count() / (count * stride);
                 let all =
                     (0..around).flat_map(|a| (0..stride).map(move |b| (a * count + index) * stride + b));
-                let mut fault = None;
-                for combination in all.take(TRIED as usize) {
-                    match self.base(plan, combination) {
-                        Err(why) if why.status == Status::Invalid => fault = Some(why),
-                        _ => {
-                            fault = None;
-                            break;
-                        }
-                    }
-                }
-                if let Some(why) = fault {
-                    return Err(JobError(why.message).into());
+                if let Some(message) = self.always_invalid(plan, all.take(TRIED as usize)) {
+                    return Err(self.at_word(&words, index as usize, &message).into());
                 }
             }
         }
         Ok(())
+    }
+
+    /// Why none of these combinations can be; `None` where one can.
+    fn always_invalid(&self, plan: &Plan, combinations: impl Iterator<Item = u64>) -> Option<String> {
+        let mut message = None;
+        for combination in combinations {
+            match self.base(plan, combination) {
+                Err(why) if why.status == Status::Invalid => message = Some(why.message),
+                _ => return None,
+            }
+        }
+        message
+    }
+
+    /// The message at the place of the word that it names, or of the first one.
+    fn at_word(&self, words: &[(&Axis, &[Spanned<String>])], index: usize, message: &str) -> JobError {
+        let named = |(axis, all): &(&Axis, &[Spanned<String>])| {
+            let rest = message.strip_prefix(&said(axis, all[index].get_ref()))?;
+            Some((all[index].span(), rest.trim_start_matches(": ")))
+        };
+        let (place, message) =
+            words.iter().find_map(named).unwrap_or_else(|| (words[0].1[index].span(), message));
+        self.document.fault(place, message)
     }
 
     /// Where materials are looked up.
@@ -219,6 +235,11 @@ impl<'a> Setups<'a> {
     }
 }
 
+/// What messages call a value of an axis.
+fn said(axis: &Axis, text: &str) -> String {
+    format!("{} = {text}", axis.path.typed)
+}
+
 /// A document with the values of a point written into it. Materials come first, since a new one drops the data set.
 fn with_texts<'v>(document: &Document, plan: &Plan, values: impl Iterator<Item = Value<'v>>) -> Document {
     let mut document = document.clone();
@@ -226,7 +247,7 @@ fn with_texts<'v>(document: &Document, plan: &Plan, values: impl Iterator<Item =
     all.sort_by_key(|(axis, _)| axis.path.key.path != "crystal.material");
     for (axis, value) in all {
         let (key, text) = (axis.path.typed.as_str(), axis.text(value));
-        let name = format!("{key} = {text}");
+        let name = said(axis, &text);
         match axis.path.key.holds {
             Holds::Flag => document.set_raw(&name, key, &text),
             _ => document.set(&name, key, &text),

@@ -3,7 +3,8 @@
 use super::bench::Bench;
 use super::contribution::{Contribution, Origin};
 use super::errors::{Cause, Errors};
-use super::samples::Sample;
+use super::samples::{Chances, Draw, Sample, chances, sample};
+use crate::matching::ConesError;
 use crate::material::MaterialError;
 use crate::optics::Indices;
 
@@ -62,4 +63,16 @@ fn brighter(bench: &Bench, samples: &[Sample]) -> Result<Option<f64>, MaterialEr
     };
     let slope = least(STEP)?.zip(least(-STEP)?).map(|(a, b)| (a - b) / (2.0 * STEP));
     Ok(slope.filter(|s| *s != 0.0).map(|slope| -worst / slope))
+}
+
+/// What the chances would be if theta were ordered otherwise by `shift`, the turn within `limit` (radians); at most ten
+/// thousand samples tell.
+///
+/// # Errors
+/// Indices that are not to be had; a target that no such crystal has.
+pub fn ordered_otherwise(bench: &Bench, draw: &Draw, shift: f64, limit: f64) -> Result<Chances, ConesError> {
+    const ENOUGH: usize = 10_000;
+    let bench = bench.with_theta(bench.crystal.cut.theta.si() + shift)?;
+    let draw = Draw { count: draw.count.min(ENOUGH), ..draw.clone() };
+    Ok(chances(&sample(&bench, &draw)?, limit))
 }

@@ -102,6 +102,26 @@ impl Stand {
 }
 
 impl Bench {
+    /// The same question about a crystal whose theta (radians) was ordered otherwise.
+    ///
+    /// # Errors
+    /// As [`Self::new`].
+    pub fn with_theta(&self, theta: f64) -> Result<Self, ConesError> {
+        let mut question = self.tuning.clone();
+        question.crystal.cut.theta = Angle::radians(theta);
+        Self::new(&question, self.screen)
+    }
+
+    /// Data sets that a sample may follow, by index: the crystal's own and those that reach these wavelengths.
+    #[must_use]
+    pub fn datasets(&self) -> Vec<usize> {
+        let own = self.crystal.dataset;
+        let serves = |index: &usize| {
+            *index == own || Triplet::new(&self.crystal.with_dataset(*index), &self.photons).is_ok()
+        };
+        (0..self.crystal.material.sets().len()).filter(serves).collect()
+    }
+
     /// Of a question as [`tune`] takes it.
     ///
     /// # Errors

@@ -10,7 +10,7 @@ mod contribution;
 mod errors;
 mod samples;
 
-pub use advice::{Advice, advise};
+pub use advice::{Advice, advise, ordered_otherwise};
 pub use bench::{Bench, RingPlace, Seen};
 pub use contribution::{Contribution, End, Origin, contributions};
 pub use errors::{CAUSES, Cause, Errors};

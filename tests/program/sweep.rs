@@ -530,3 +530,14 @@ fn a_sweep_that_can_never_be_says_why() {
     fs::create_dir(folder.path().join("rows.csv")).expect("a folder");
     assert_says(&in_folder(folder.path(), "-o rows.csv").refusal(4), &["it is a folder"]);
 }
+
+/// A word that no point can have is pointed at, in a list of a job as well.
+#[test]
+fn a_word_that_never_fits_is_pointed_at() {
+    let job = "[pump]\nwavelength = \"405 nm\"\n[crystal]\nmaterial = \"bbo\"\ncut = { theta = \"42 deg\", phi = \"0 deg\" }\n[sweep]\nreport = \"rings\"\naxes = [\n  { key = \"crystal.dataset\", values = [\"kato-1986\", \"kato-1987\"] },\n]\n";
+    let refusal = twincone_with(job, "run -").refusal(2);
+    assert_says(
+        &refusal,
+        &["standard input:9:53: bbo has no data set `kato-1987`", "it has eimerl-1987", "^"],
+    );
+}

@@ -13,9 +13,9 @@ const COLUMNS: &str = "contribution, error, error_unit, crossing_low_deg, crossi
      half_angle_high_deg, shift_mm, retilt_low_deg, retilt_high_deg, left_over_deg";
 
 /// Type I, cut for a cone of 3 deg.
-const CONE: &str = "tolerance -m bbo:kato-1986 -p 405nm --half-angle 3deg";
+const CONE: &str = "tolerance -m bbo:kato-1986 -p 405nm --half-angle 3deg --length 1mm";
 /// Type II, cones that cross at 3 deg.
-const CROSSED: &str = "tolerance -m bbo:kato-1986 -p 405nm --crossing 3deg";
+const CROSSED: &str = "tolerance -m bbo:kato-1986 -p 405nm --crossing 3deg --length 1mm";
 
 fn table(line: &str) -> Table {
     Table::read(&twincone(&format!("{line} -f csv")).answer())
@@ -141,7 +141,7 @@ fn the_text_names_what_to_pay_for() {
 /// Near collinear a cone grows as a square root: nothing on one side, much on the other.
 #[test]
 fn collinear_cuts_are_answered_at_both_ends() {
-    let table = table("tolerance -m bbo:kato-1986 -p 405nm --collinear --type I --samples 100");
+    let table = table("tolerance -m bbo:kato-1986 -p 405nm --collinear --type I --length 1mm --samples 100");
     let theta = row(&table, "theta");
     assert_eq!(table.cell(theta, "half_angle_low_deg"), "");
     assert!(table.number(theta, "half_angle_high_deg") > 3.0);
@@ -161,5 +161,5 @@ fn nonsense_is_refused() {
         assert_says(&said, &[why]);
     }
     assert_says(&twincone("tolerance -m bbo -p 405nm --theta 42deg").refusal(2), &["no target"]);
-    assert_says(&twincone("tolerance -m bbo -p 405nm --beamlike").refusal(2), &["--crossing"]);
+    assert_says(&twincone("tolerance -m bbo -p 405nm --beamlike --length 1mm").refusal(2), &["--crossing"]);
 }
