@@ -26,14 +26,14 @@ pub struct Dielectric(pub Vector3<f64>);
 
 /// Wave-vector components along u and v, which a plane face conserves; rad/m.
 #[derive(Debug, Clone, Copy, PartialEq, Default)]
-pub struct Tangential {
+pub struct Tangential<T = f64> {
     /// Along u.
-    pub u: f64,
+    pub u: T,
     /// Along v.
-    pub v: f64,
+    pub v: T,
 }
 
-impl std::ops::Sub for Tangential {
+impl<T: std::ops::Sub<Output = T>> std::ops::Sub for Tangential<T> {
     type Output = Self;
 
     fn sub(self, other: Self) -> Self {

@@ -28,6 +28,7 @@ pub mod frame;
 pub mod job;
 pub mod matching;
 pub mod material;
+pub(crate) mod number;
 pub mod optics;
 pub mod pairs;
 pub mod picture;

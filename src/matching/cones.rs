@@ -6,7 +6,7 @@ use super::curve::{Curve, RingFault, curves};
 use super::emission::{Emission, Photons, Triplet};
 use super::interaction::{Interaction, Process, Roles};
 use super::mismatch::Mismatch;
-use super::ring::{Ring, rings};
+use super::ring::{Ring, partner_rings, rings};
 use super::tuning::{Actuator, nearest_touch, tuning_turn};
 use crate::frame::Direction;
 use crate::material::MaterialError;
@@ -233,6 +233,7 @@ fn ring_rows(history: &History<'_>, rows: &mut Vec<RingRow>) {
     let (photons, roles, media) = (emission.photons, history.roles, &emission.media);
     let signal = (Landing::Signal, photons.signal, media.signal.polarization(roles.signal));
     let idler = (Landing::Idler, photons.idler, media.idler.polarization(roles.idler));
+    let from = rows.len();
     for ((photon, wavelength, polarization), twin) in [(signal, idler.2), (idler, signal.2)] {
         let same = |row: &RingRow| {
             let own = match row.photon {
@@ -247,15 +248,15 @@ fn ring_rows(history: &History<'_>, rows: &mut Vec<RingRow>) {
         if rows.iter().any(same) {
             continue;
         }
-        let seen = history.mismatch.as_ref().ok_or(SHUT_OUT).map(|m| match photon {
-            Landing::Signal => *m,
-            Landing::Idler => m.exchanged(),
+        let found = history.mismatch.as_ref().ok_or(SHUT_OUT).and_then(|m| match photon {
+            Landing::Signal => rings(m, emission.length),
+            Landing::Idler => partner_rings(m, only_ring(&rows[from..]), emission.length),
         });
-        let outcomes: Vec<Result<Ring, RingFault>> = match seen.and_then(|m| rings(&m, emission.length)) {
-            Ok(all) => all.into_iter().map(Ok).collect(),
-            Err(fault) => vec![Err(fault)],
+        let (found, fault) = match found {
+            Ok(found) => (found, None),
+            Err(fault) => (Vec::new(), Some(Err(fault))),
         };
-        for ring in outcomes {
+        for ring in found.into_iter().map(Ok).chain(fault) {
             let status = match &ring {
                 Ok(found) if photon == Landing::Signal && is_dark(history, std::iter::once(&found.curve)) => {
                     Status::NoNonlinearity
@@ -283,6 +284,14 @@ fn ring_rows(history: &History<'_>, rows: &mut Vec<RingRow>) {
     }
 }
 
+/// The ring of some rows, if it is the only one.
+fn only_ring(rows: &[RingRow]) -> Option<&Ring> {
+    match rows {
+        [row] => row.ring.as_ref().ok(),
+        _ => None,
+    }
+}
+
 impl RingRow {
     /// Whether this is the dark signal ring of a history, so that the idler's ring is dark too.
     fn is_dark_twin(&self, history: &History<'_>) -> bool {
@@ -295,7 +304,7 @@ fn field(history: &History<'_>, photon: Landing, ring: &Ring) -> Option<f64> {
     let emission = &history.source.emission;
     match photon {
         Landing::Signal => emission.field_azimuth(history.roles, ring.axis),
-        Landing::Idler => emission.exchanged().field_azimuth(history.roles.exchanged(), ring.axis),
+        Landing::Idler => emission.idler_field_azimuth(history.roles, ring.axis),
     }
 }
 
@@ -313,8 +322,8 @@ fn opposed(first: &History<'_>, second: &History<'_>) -> bool {
     };
     let of = |h: &History<'_>| {
         let forward = Direction::forward();
-        let (seen, exchanged) = (&h.source.emission, h.source.emission.exchanged());
-        (seen.field_azimuth(h.roles, forward), exchanged.field_azimuth(h.roles.exchanged(), forward))
+        let emission = &h.source.emission;
+        (emission.field_azimuth(h.roles, forward), emission.idler_field_azimuth(h.roles, forward))
     };
     let ((a1, b1), (a2, b2)) = (of(first), of(second));
     across(a1, a2) && across(b1, b2)
@@ -324,22 +333,49 @@ fn crossing_rows(first: &History<'_>, second: &History<'_>, rows: &mut Vec<Cross
     if !opposed(first, second) {
         return;
     }
-    let (ones, twos) = (curves_of(first), curves_of(second));
+    let ones = curves_of(first);
+    // the same pairs with their photons renamed: the second ring is that of the first one's partners, and as bright
+    let renamed = first.name.crystal == second.name.crystal
+        && first.source.emission.photons.degenerate()
+        && second.roles == first.roles.exchanged();
+    if let (true, Ok([one]), Some(m1), Some(m2)) =
+        (renamed, ones.as_deref(), &first.mismatch, &second.mismatch)
+        && one.partners_stay_near(m1)
+    {
+        let points = crossings((m1, std::slice::from_ref(one)), m2);
+        if !points.is_empty() {
+            let dark = is_dark(first, std::iter::once(one));
+            meeting_rows(first, second, points, dark, rows);
+            return;
+        }
+    }
+    let twos = curves_of(second);
     let (Ok(ones), Ok(twos), Some(m1), Some(m2)) = (&ones, &twos, &first.mismatch, &second.mismatch) else {
         let fault = ones.as_ref().err().or(twos.as_ref().err());
         rows.push(blank_row(first, second, fault.map_or(Status::NoPhaseMatching, |f| f.status)));
         return;
     };
-    let points = meetings((m1, ones), (m2, twos));
+    let mut points = crossings((m1, ones), m2);
+    if points.is_empty() {
+        points = contacts((m1, ones), (m2, twos));
+    }
     if points.is_empty() {
         rows.push(missing_row(first, second, (m1, ones), (m2, twos)));
         return;
     }
-    // the same pairs with their photons renamed are as bright
-    let renamed = first.name.crystal == second.name.crystal
-        && first.source.emission.photons.degenerate()
-        && second.roles == first.roles.exchanged();
     let dark = is_dark(first, ones.iter()) || !renamed && is_dark(second, twos.iter());
+    meeting_rows(first, second, points, dark, rows);
+}
+
+/// Rows for rings that meet.
+fn meeting_rows(
+    first: &History<'_>,
+    second: &History<'_>,
+    mut points: Vec<(Crossing, Status)>,
+    dark: bool,
+    rows: &mut Vec<CrossingRow>,
+) {
+    order(&mut points);
     let from = rows.len();
     let mut number = rows.iter().filter_map(|r| r.pair).max().unwrap_or(0);
     for (crossing, status) in points {
@@ -363,15 +399,11 @@ fn curves_of(history: &History<'_>) -> Result<Vec<Curve>, RingFault> {
 
 type Curves<'a> = (&'a Mismatch, &'a [Curve]);
 
-/// Where the rings of two histories cross or touch, in the order of the table.
-fn meetings(
-    (m1, ones): (&Mismatch, &Vec<Curve>),
-    (m2, twos): (&Mismatch, &Vec<Curve>),
-) -> Vec<(Crossing, Status)> {
+/// Where the rings of one history cross or touch that of another.
+fn crossings((m1, ones): Curves<'_>, m2: &Mismatch) -> Vec<(Crossing, Status)> {
     let mut points = Vec::new();
-    for one in ones {
-        let first = Traced { mismatch: m1, curve: one };
-        points.extend(meet(first, m2).into_iter().map(|(crossing, how)| {
+    for curve in ones {
+        points.extend(meet(Traced { mismatch: m1, curve }, m2).into_iter().map(|(crossing, how)| {
             let status = match how {
                 Meeting::Cross => Status::Ok,
                 Meeting::Touch => Status::Touching,
@@ -380,15 +412,18 @@ fn meetings(
             (crossing, status)
         }));
     }
-    if points.is_empty() {
-        for (one, two) in ones.iter().flat_map(|one| twos.iter().map(move |two| (one, two))) {
-            let (first, second) = (Traced { mismatch: m1, curve: one }, Traced { mismatch: m2, curve: two });
-            if let Some(Miss::Touch(point)) = miss(first, second) {
-                points.push((point, Status::Touching));
-            }
+    points
+}
+
+/// Where rings that do not cross touch after all.
+fn contacts((m1, ones): Curves<'_>, (m2, twos): Curves<'_>) -> Vec<(Crossing, Status)> {
+    let mut points = Vec::new();
+    for (one, two) in ones.iter().flat_map(|one| twos.iter().map(move |two| (one, two))) {
+        let (first, second) = (Traced { mismatch: m1, curve: one }, Traced { mismatch: m2, curve: two });
+        if let Some(Miss::Touch(point)) = miss(first, second) {
+            points.push((point, Status::Touching));
         }
     }
-    order(&mut points);
     points
 }
 

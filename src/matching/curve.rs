@@ -6,21 +6,28 @@
 
 use std::f64::consts::TAU;
 
+use fearless_simd::dispatch;
+use fearless_simd::prelude::*;
 use nalgebra::Vector3;
 
 use super::Status;
 use super::count;
-use super::meridian::{FEW_SAMPLES, Hit, Meridians, SAMPLES, azimuths, cos_sin, polar, settle};
-use super::mismatch::{Field, Mismatch, Stationary};
+use super::fit::Moments;
+use super::meridian::{FEW_SAMPLES, Fan, Hit, Meridians, Place, SAMPLES, azimuths, cos_sin, polar, settle};
+use super::mismatch::{Mismatch, Quadrics, Sample, Stationary};
 use super::seed::seeds;
 use crate::frame::{Direction, Lab, Tangential};
+use crate::number::{self, LANES, Number, Wide, strided, wide};
 
 /// Cosine of the search region's half angle about the pump, 60 deg.
 pub(super) const REGION: f64 = 0.5;
 
-/// Relative steps of [`Curve::trace`] after which what is left is rounding, and after which it does not matter yet.
+/// Relative steps of [`Curve::trace`] after which what is left is rounding, and after which it does not matter yet. What
+/// is left of a step d is about d^2 psi^2: the parabola that steps assume is off by psi^2.
 pub(super) const FINE: f64 = 1e-6;
-pub(super) const ROUGH: f64 = 1e-3;
+pub(super) const ROUGH: f64 = 1e-2;
+/// For the width of a ring, which is told to 1e-8 of it.
+const CLOSE: f64 = 3e-4;
 
 /// Why there is no ring.
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -53,7 +60,10 @@ pub struct Curve {
 /// # Errors
 /// As [`rings`](super::rings).
 pub fn curves(mismatch: &Mismatch) -> Result<Vec<Curve>, RingFault> {
-    all(&seeds(mismatch)?, |seed| Curve::about(mismatch, seed, FINE)?.within_region())
+    all(&seeds(mismatch)?, |seed| {
+        let curve = Curve::about(mismatch, seed, FINE)?;
+        curve.demand_region().map(|()| curve)
+    })
 }
 
 /// What can be made of the seeds; the fault of one where there is nothing.
@@ -76,6 +86,25 @@ pub(super) fn all<T>(
 }
 
 impl Curve {
+    /// The curve of the partners of another one's photons, roughly, as a process has them with its photons exchanged:
+    /// q_p - q lies opposite. `None` where it is not found from there.
+    pub(super) fn of_partners(&self, mismatch: &Mismatch, exchanged: &Mismatch) -> Option<Self> {
+        const EVERY: usize = SAMPLES / FEW_SAMPLES;
+        if !mismatch.is_convex() || self.is_point() || self.is_coarse() {
+            return None;
+        }
+        let axis = mismatch.partner(Direction::new(Lab(self.frame.axis)))?;
+        let frame = Meridians::about(axis.lab().0);
+        let scale = mismatch.k0_signal() / mismatch.k0_idler();
+        let mut samples = [0.0; SAMPLES];
+        for (j, t) in samples[..FEW_SAMPLES].iter_mut().enumerate() {
+            *t = scale * self.samples[(j * EVERY + SAMPLES / 2) % SAMPLES];
+        }
+        let mut curve = Self { frame, samples, turns: [0.0; SAMPLES], count: FEW_SAMPLES };
+        curve.trace(exchanged, ROUGH).ok()?;
+        Some(curve)
+    }
+
     /// The curve about a seed, traced from there; a point where the mismatch is zero at the seed itself.
     pub(super) fn about(mismatch: &Mismatch, seed: &Stationary, tolerance: f64) -> Result<Self, RingFault> {
         let count = if mismatch.is_convex() { FEW_SAMPLES } else { SAMPLES };
@@ -108,8 +137,9 @@ impl Curve {
         if mismatch.is_convex() {
             let guesses = self.samples;
             let fan = self.frame.on_face(mismatch);
-            let t = &mut self.samples[..self.count];
-            if settle(mismatch, &fan, 0.0, t, &mut self.turns[..self.count], tolerance) {
+            let (t, turns) = (&mut self.samples[..self.count], &mut self.turns[..self.count]);
+            let middle = mismatch.at(Tangential { u: fan.axis.x, v: fan.axis.y });
+            if middle.is_some_and(|at| settle(mismatch, &fan, [0.0, at.value], t, turns, tolerance)) {
                 return Ok(());
             }
             self.samples = guesses;
@@ -141,54 +171,87 @@ impl Curve {
         Ok(())
     }
 
-    /// The same curve traced about another axis, given by its components along the meridians' own axes.
+    /// The same curve traced about another axis, given by its components along the meridians' own axes; with all
+    /// samples, or roughly with few.
     pub(super) fn recentred(
         &mut self,
         mismatch: &Mismatch,
         axis: &Vector3<f64>,
-        tolerance: f64,
+        all: bool,
     ) -> Result<(), RingFault> {
-        let Meridians { axis: old, across: [first, second] } = &self.frame;
-        self.frame = Meridians::about((first * axis.x + second * axis.y + old * axis.z).normalize());
-        let (cos, sin) = azimuths(self.count);
-        for (j, t) in self.samples[..self.count].iter_mut().enumerate() {
-            // the old axis as seen from the new one: along the meridian, and across it
-            let along = -(axis.x * cos[j] + axis.y * sin[j]);
-            let across = axis.x * sin[j] - axis.y * cos[j];
-            // 1/sin psi and dt/dpsi
-            let rate = 0.5 * (1.0 + *t * *t);
-            let inverse = rate / *t;
-            // the point seen here was seen at phi - across/sin psi, and sqrt(sin^2 psi - across^2) away
-            let turned = *t * (1.0 - self.turns[j] * across * inverse);
-            *t = turned + (along - 0.5 * across * across * inverse) * rate;
+        self.shift(axis);
+        match (self.is_coarse(), all) {
+            (true, true) => self.refined(mismatch),
+            (true, false) => self.trace(mismatch, ROUGH),
+            (false, _) => self.trace(mismatch, FINE),
         }
-        self.trace(mismatch, tolerance)
+    }
+
+    /// The same curve about another axis, to second order in its distance.
+    pub(super) fn shift(&mut self, axis: &Vector3<f64>) {
+        self.frame = Meridians::about(self.frame.turned(axis));
+        dispatch!(number::level(), simd => self.shift_wide(simd, axis));
+    }
+
+    #[inline(always)]
+    fn shift_wide<S: Simd>(&mut self, simd: S, axis: &Vector3<f64>) {
+        let (cos, sin) = azimuths(self.count);
+        let (samples, turns) = (self.samples.as_chunks_mut::<LANES>().0, self.turns.as_chunks::<LANES>().0);
+        let (cos, sin) = (cos.as_chunks::<LANES>().0, sin.as_chunks::<LANES>().0);
+        for (((samples, turn), cos), sin) in samples.iter_mut().zip(turns).zip(cos).zip(sin) {
+            let [t, turn, cos, sin] = [samples, turn, cos, sin].map(
+                #[inline(always)]
+                |from| Wide::simd_from(simd, *from),
+            );
+            // the old axis as seen from the new one: along the meridian, and across it
+            let along = -(cos * axis.x + sin * axis.y);
+            let across = sin * axis.x - cos * axis.y;
+            // 1/sin psi and dt/dpsi
+            let rate = (t * t + 1.0) * 0.5;
+            let inverse = rate / t;
+            // the point seen here was seen at phi - across/sin psi, and sqrt(sin^2 psi - across^2) away
+            let turned = t * (-(turn * across * inverse) + 1.0);
+            *samples = (turned + (along - across * across * inverse * 0.5) * rate).into();
+        }
+    }
+
+    /// Whether it has fewer samples than a ring.
+    pub(super) fn is_coarse(&self) -> bool {
+        self.count < SAMPLES
     }
 
     /// Three samples for each one, by interpolation, then traced.
-    pub(super) fn refined(&mut self, mismatch: &Mismatch) -> Result<(), RingFault> {
-        // Lagrange's weights of eight neighbours at a third of the way between the fourth and the fifth; those at two
-        // thirds are the same from behind
-        const WEIGHTS: [f64; 8] = weights(1.0 / 3.0);
-        let few = self.samples;
-        let around = |j: usize, k: usize| few[(j + FEW_SAMPLES + k - 3) % FEW_SAMPLES];
+    fn refined(&mut self, mismatch: &Mismatch) -> Result<(), RingFault> {
+        let mut around = [0.0; FEW_SAMPLES + 7];
+        let few = &self.samples[..FEW_SAMPLES];
+        around[..3].copy_from_slice(&few[FEW_SAMPLES - 3..]);
+        around[3..FEW_SAMPLES + 3].copy_from_slice(few);
+        around[FEW_SAMPLES + 3..].copy_from_slice(&few[..4]);
         self.count = SAMPLES;
-        for (j, t) in few[..FEW_SAMPLES].iter().enumerate() {
-            self.samples[3 * j] = *t;
-            self.samples[3 * j + 1] = (0..8).map(|k| WEIGHTS[k] * around(j, k)).sum();
-            self.samples[3 * j + 2] = (0..8).map(|k| WEIGHTS[7 - k] * around(j, k)).sum();
-        }
+        dispatch!(number::level(), simd => thirds(simd, &around, &mut self.samples));
         self.trace(mismatch, FINE)
     }
 
-    /// The curve, if all of it lies in the search region.
-    pub(super) fn within_region(self) -> Result<Self, RingFault> {
+    /// Refuses a curve of which not all lies in the search region.
+    pub(super) fn demand_region(&self) -> Result<(), RingFault> {
         // cos(theta + psi), with the axis at theta and the largest psi, bounds them all
-        let (along, out) = polar(self.half_tangents().iter().copied().fold(0.0, f64::max));
+        let [_, widest] = self.range();
+        let (along, out) = polar(widest);
         let axis = &self.frame.axis;
-        let far = axis.z * along - axis.x.hypot(axis.y) * out < REGION;
+        let far = axis.z * along - (axis.x * axis.x + axis.y * axis.y).sqrt() * out < REGION;
         let outside = far && (0..self.count).any(|j| self.vector(j).z < REGION);
-        if outside { Err(RingFault::new(Status::OpenRing)) } else { Ok(self) }
+        if outside { Err(RingFault::new(Status::OpenRing)) } else { Ok(()) }
+    }
+
+    /// Least and largest tan(psi/2) of the samples.
+    pub(super) fn range(&self) -> [f64; 2] {
+        number::range(self.half_tangents())
+    }
+
+    /// Samples after which, before the next, the curve turns in or out.
+    pub(super) fn turning_samples(&self) -> impl Iterator<Item = usize> {
+        let sign = |j: usize| self.turns[j].is_sign_negative();
+        (0..self.count).filter(move |j| sign(*j) != sign(if j + 1 < self.count { j + 1 } else { 0 }))
     }
 
     /// Whether it is a point, traced as such.
@@ -211,13 +274,81 @@ impl Curve {
         &self.turns[..self.count]
     }
 
-    /// Components (sin psi cos phi, sin psi sin phi, 1 - cos psi) of the samples.
-    pub(super) fn local(&self) -> impl Iterator<Item = Vector3<f64>> + Clone {
+    /// Of the samples' components (sin psi cos phi, sin psi sin phi, 1 - cos psi).
+    pub(super) fn moments(&self) -> Moments {
         let (cos, sin) = azimuths(self.count);
-        self.half_tangents().iter().zip(cos.iter().zip(sin)).map(|(t, (cos, sin))| {
-            let out = 2.0 * t / (1.0 + t * t);
-            Vector3::new(out * cos, out * sin, out * t)
-        })
+        dispatch!(number::level(), simd => Moments::new(simd, self.count, #[inline(always)] |j| {
+            let t = wide(simd, &self.samples, j);
+            let out = (t * t + 1.0).reciprocal() * t * 2.0;
+            [out * wide(simd, cos, j), out * wide(simd, sin, j), out * t]
+        }))
+    }
+
+    /// The first so many samples, every `stride`-th, as points (x/z, y/z) on a screen across the pump.
+    pub(super) fn on_screen(&self, stride: usize, x: &mut [f64; SAMPLES], y: &mut [f64; SAMPLES]) {
+        dispatch!(number::level(), simd => self.on_screen_wide(simd, stride, x, y));
+    }
+
+    #[inline(always)]
+    fn on_screen_wide<S: Simd>(
+        &self,
+        simd: S,
+        stride: usize,
+        x: &mut [f64; SAMPLES],
+        y: &mut [f64; SAMPLES],
+    ) {
+        let Meridians { axis, across: [first, second] } = &self.frame;
+        let (cos, sin) = azimuths(self.count);
+        for j in (0..self.count / stride).step_by(LANES) {
+            let [t, cos, sin] = [&self.samples[..], cos, sin].map(
+                #[inline(always)]
+                |from| strided(simd, from, j, stride),
+            );
+            let (along, out) = polar(t);
+            let (cos, sin) = (cos * out, sin * out);
+            let [dx, dy, dz] = [0, 1, 2].map(
+                #[inline(always)]
+                |i| along * axis[i] + cos * first[i] + sin * second[i],
+            );
+            let inverse = dz.reciprocal();
+            (dx * inverse).store_slice(&mut x[j..j + LANES]);
+            (dy * inverse).store_slice(&mut y[j..j + LANES]);
+        }
+    }
+
+    /// Of the unit wave vectors inside at every `stride`-th sample, from that of the axis; that one.
+    pub(super) fn inside(&self, mismatch: &Mismatch, stride: usize) -> (Moments, Vector3<f64>) {
+        let fan = self.frame.on_face(mismatch);
+        let (cos, sin) = azimuths(self.count);
+        let unit = |q| mismatch.inside(q).map_or(Vector3::z(), |k| k.normalize());
+        let middle = unit(Tangential { u: fan.axis.x, v: fan.axis.y });
+        let count = self.count / stride;
+        let moments = match mismatch.quadrics() {
+            Some(field) => dispatch!(number::level(), simd => {
+                Moments::new(simd, count, #[inline(always)] |j| {
+                    let [t, cos, sin] = [&self.samples[..], cos, sin].map(
+                        #[inline(always)]
+                        |from| strided(simd, from, j, stride),
+                    );
+                    let q = fan.place(t, (cos, sin)).q;
+                    let k_w = field.signal_height(q);
+                    let inverse = (q.u * q.u + q.v * q.v + k_w * k_w).sqrt().reciprocal();
+                    [q.u * inverse - middle.x, q.v * inverse - middle.y, k_w * inverse - middle.z]
+                })
+            }),
+            None => {
+                let mut off = [[0.0; SAMPLES]; 3];
+                for j in 0..count {
+                    let azimuth = (cos[j * stride], sin[j * stride]);
+                    let from = unit(fan.place(self.samples[j * stride], azimuth).q) - middle;
+                    (0..3).for_each(|i| off[i][j] = from[i]);
+                }
+                dispatch!(number::level(), simd => Moments::new(simd, count, #[inline(always)] |j| {
+                    [wide(simd, &off[0], j), wide(simd, &off[1], j), wide(simd, &off[2], j)]
+                }))
+            }
+        };
+        (moments, middle)
     }
 
     /// Four directions a quarter turn apart, off the planes of symmetry.
@@ -254,13 +385,25 @@ impl Curve {
 
     /// Whether every partner can leave the crystal.
     pub(super) fn partners_leave(&self, mismatch: &Mismatch) -> bool {
+        self.partners_reach(mismatch) < 1.0 || self.tangential(mismatch).all(|q| mismatch.idler_leaves(q))
+    }
+
+    /// Whether every partner leaves within the search region, as far as a bound tells.
+    pub(super) fn partners_stay_near(&self, mismatch: &Mismatch) -> bool {
+        // 60 deg about the pump hold all that is 60 deg less the tilt about the normal
+        let normal = mismatch.on_face(&Vector3::z()).z.min(1.0);
+        let limit = (1.0 - REGION * REGION).sqrt() * normal - REGION * (1.0 - normal * normal).sqrt();
+        self.partners_reach(mismatch) < limit
+    }
+
+    /// A bound of the sine of the angle between partners and the exit normal.
+    fn partners_reach(&self, mismatch: &Mismatch) -> f64 {
         // no tangential wave vector is further from the axis' own than k0 times the chord 2 sin(psi/2)
-        let widest = self.half_tangents().iter().copied().fold(0.0, f64::max);
+        let [_, widest] = self.range();
         let chord = 2.0 * widest / (1.0 + widest * widest).sqrt();
         let axis = mismatch.on_face(&self.frame.axis);
         let idler = mismatch.pump() - Tangential { u: axis.x, v: axis.y };
-        let far = idler.u.hypot(idler.v) + mismatch.k0_signal() * chord;
-        far < mismatch.k0_idler() || self.tangential(mismatch).all(|q| mismatch.idler_leaves(q))
+        (idler.u.hypot(idler.v) + mismatch.k0_signal() * chord) / mismatch.k0_idler()
     }
 
     /// The point of the curve at an azimuth about its axis (radians); `mismatch` must be the one it was traced with.
@@ -319,34 +462,40 @@ impl Curve {
     /// What another mismatch is at the samples.
     pub(super) fn survey(&self, other: &Mismatch) -> [Along; SAMPLES] {
         let mut all = [Along::default(); SAMPLES];
+        let fan = self.frame.on_face(other);
+        let k0 = other.k0_signal();
         match other.quadrics() {
-            Some(quadrics) => self.look(&quadrics, other, &mut all),
-            None => self.look(other, other, &mut all),
+            Some(field) => dispatch!(number::level(), simd => {
+                self.look_wide(simd, &fan, &field, k0, &mut all[..self.count]);
+            }),
+            None => {
+                let (cos, sin) = azimuths(self.count);
+                for (j, slot) in all[..self.count].iter_mut().enumerate() {
+                    let place = fan.place(self.samples[j], (cos[j], sin[j]));
+                    *slot = Along::new(&place, &other.sample(place.q), k0, self.turns[j]);
+                    if place.forward <= 0.0 {
+                        slot.value = f64::NAN;
+                    }
+                }
+            }
         }
+        count::add(self.count);
         all
     }
 
     #[inline(always)]
-    fn look(&self, field: &impl Field, other: &Mismatch, all: &mut [Along; SAMPLES]) {
-        let fan = self.frame.on_face(other);
+    fn look_wide<S: Simd>(&self, simd: S, fan: &Fan, field: &Quadrics, k0: f64, all: &mut [Along]) {
         let (cos, sin) = azimuths(self.count);
-        let square = other.k0_signal() * other.k0_signal();
-        for (j, slot) in all[..self.count].iter_mut().enumerate() {
-            let place = fan.place(self.samples[j], (cos[j], sin[j]));
-            let here = field.sample(place.q);
-            let [gu, gv] = here.slope;
-            let swing = gu * place.round.u + gv * place.round.v;
-            let rise = gu * place.out.u + gv * place.out.v;
-            // the gradient k0 (g_u u + g_v v) less its part along the direction, d.gradient = g.q
-            let inward = gu * place.q.u + gv * place.q.v;
-            let across = square * (gu * gu + gv * gv) - inward * inward;
-            *slot = Along {
-                value: if place.forward > 0.0 { here.value } else { f64::NAN },
-                slope: (swing + self.turns[j] * rise) * place.sin,
-                scale: across.sqrt(),
-            };
+        let (nowhere, none) = (Wide::splat(simd, f64::NAN), Wide::splat(simd, 0.0));
+        for (n, slots) in all.as_chunks_mut::<LANES>().0.iter_mut().enumerate() {
+            let j = n * LANES;
+            let place = fan.place(wide(simd, &self.samples, j), (wide(simd, cos, j), wide(simd, sin, j)));
+            let along = Along::new(&place, &field.sample(place.q), k0, wide(simd, &self.turns, j));
+            let value = place.forward.simd_gt(none).select(along.value, nowhere);
+            for (l, slot) in slots.iter_mut().enumerate() {
+                *slot = Along { value: value[l], slope: along.slope[l], scale: along.scale[l] };
+            }
         }
-        count::add(self.count);
     }
 
     /// d point/d phi = sin psi (round + turn d point/d psi).
@@ -363,25 +512,24 @@ impl Curve {
     pub(super) fn level(
         &self,
         mismatch: &Mismatch,
-        [level, middle]: [f64; 2],
+        level: f64,
+        middle: &Sample,
         stride: usize,
     ) -> Option<Level> {
         let fan = self.frame.on_face(mismatch);
         let count = self.count / stride;
         let mut level_curve = Level { t: [0.0; SAMPLES], count };
-        let guesses = |level_curve: &mut Level| {
-            for (k, t) in level_curve.t[..count].iter_mut().enumerate() {
-                // the parabola about the axis: f = f_0 (1 - (t/t_0)^2)
-                *t = self.samples[k * stride] * (1.0 - level / middle).sqrt();
-            }
+        let t = &mut level_curve.t[..count];
+        let guesses = |t: &mut [f64]| {
+            dispatch!(number::level(), simd => self.guess_level(simd, &fan, level, middle, stride, t));
         };
-        guesses(&mut level_curve);
+        guesses(t);
         let mut turns = [0.0; SAMPLES];
         let smooth = mismatch.is_convex()
-            && settle(mismatch, &fan, level, &mut level_curve.t[..count], &mut turns[..count], FINE);
+            && settle(mismatch, &fan, [level, middle.value], t, &mut turns[..count], CLOSE);
         if !smooth {
-            guesses(&mut level_curve);
-            for (k, t) in level_curve.t[..count].iter_mut().enumerate() {
+            guesses(t);
+            for (k, t) in t.iter_mut().enumerate() {
                 match mismatch.meet(&fan, self.azimuth_cos_sin(k * stride), level, *t) {
                     Hit::At { t: found, .. } => *t = found,
                     Hit::Face(_) | Hit::Lost => return None,
@@ -390,17 +538,77 @@ impl Curve {
         }
         Some(level_curve)
     }
+
+    /// The parabola through value and slope on the axis and the curve at t_0: with s = t/t_0 and G = t_0 df/dt,
+    /// f_0 + G s - (f_0 + G) s^2 = level.
+    #[inline(always)]
+    fn guess_level<S: Simd>(
+        &self,
+        simd: S,
+        fan: &Fan,
+        level: f64,
+        middle: &Sample,
+        stride: usize,
+        guesses: &mut [f64],
+    ) {
+        let (cos, sin) = azimuths(self.count);
+        let [a, b] = fan.across.map(|across| middle.slope[0] * across.x + middle.slope[1] * across.y);
+        for (n, guesses) in guesses.as_chunks_mut::<LANES>().0.iter_mut().enumerate() {
+            let [t, cos, sin] = [&self.samples[..], cos, sin].map(
+                #[inline(always)]
+                |from| strided(simd, from, n * LANES, stride),
+            );
+            // dpsi = 2 dt at t = 0
+            let rise = (cos * a + sin * b) * t * 2.0;
+            let down = rise + middle.value;
+            let root = (rise * rise + down * (4.0 * (middle.value - level))).sqrt();
+            *guesses = (t * (rise - root) / (down * 2.0)).into();
+        }
+    }
+
+    /// Stationary value of tan(psi/2) between samples j and j + 1, at which the curve turns in and out; for a curve that
+    /// a third of the samples would hold as well, by interpolation.
+    pub(super) fn turning_value(&self, j: usize) -> f64 {
+        let (here, next) = (j % self.count, (j + 1) % self.count);
+        let x = self.turns[here] / (self.turns[here] - self.turns[next]);
+        let Some(weights) = weights_at(x) else { return self.samples[if x < 0.5 { here } else { next }] };
+        let (mut t, mut turn, mut all) = (0.0, 0.0, 0.0);
+        for (k, weight) in weights.iter().enumerate() {
+            let sample = (j + self.count + k - 5) % self.count;
+            all += weight;
+            t += weight * self.samples[sample];
+            turn += weight * self.turns[sample];
+        }
+        let (t, turn) = (t / all, turn / all);
+        // t' = t turn is nearly linear: up to x + d, where it is zero, t grows by half of t' d
+        let step = TAU / self.count as f64;
+        t + 0.5 * t * turn * step * turn / (self.turns[here] - self.turns[next])
+    }
 }
 
 /// Another mismatch along a curve.
 #[derive(Debug, Clone, Copy, Default)]
-pub(super) struct Along {
+pub(super) struct Along<T = f64> {
     /// Delta_k of the other process, rad/m: negative inside the other ring.
-    pub value: f64,
+    pub value: T,
     /// Its change per radian of azimuth.
-    pub slope: f64,
+    pub slope: T,
     /// Size of its gradient, rad/m per radian of direction: near the other ring, value/scale is the angle off it.
-    pub scale: f64,
+    pub scale: T,
+}
+
+impl<T: Number> Along<T> {
+    /// On a curve that turns outwards by `turn` from a circle about the axis.
+    #[inline(always)]
+    fn new(place: &Place<T>, here: &Sample<T>, k0: f64, turn: T) -> Self {
+        let [gu, gv] = here.slope;
+        let swing = gu * place.round.u + gv * place.round.v;
+        let rise = gu * place.out.u + gv * place.out.v;
+        // the gradient k0 (g_u u + g_v v) less its part along the direction, d.gradient = g.q
+        let inward = gu * place.q.u + gv * place.q.v;
+        let across = (gu * gu + gv * gv) * (k0 * k0) - inward * inward;
+        Self { value: here.value, slope: (swing + turn * rise) * place.sin, scale: across.root() }
+    }
 }
 
 impl Along {
@@ -421,6 +629,35 @@ impl Level {
     pub fn half_tangents(&self) -> &[f64] {
         &self.t[..self.count]
     }
+}
+
+/// Values at thirds between [`FEW_SAMPLES`] that have three neighbours before and four after them.
+#[inline(always)]
+fn thirds<S: Simd>(simd: S, around: &[f64; FEW_SAMPLES + 7], all: &mut [f64; SAMPLES]) {
+    // Lagrange's weights of eight neighbours at a third of the way between the fourth and the fifth; those at two thirds
+    // are the same from behind
+    const WEIGHTS: [f64; 8] = weights(1.0 / 3.0);
+    for j in (0..FEW_SAMPLES).step_by(LANES) {
+        let mut between = [Wide::splat(simd, 0.0); 2];
+        for k in 0..8 {
+            let value = wide(simd, around, j + k);
+            between[0] += value * WEIGHTS[k];
+            between[1] += value * WEIGHTS[7 - k];
+        }
+        for l in 0..LANES {
+            let three = &mut all[3 * (j + l)..][..3];
+            three.copy_from_slice(&[around[j + l + 3], between[0][l], between[1][l]]);
+        }
+    }
+}
+
+/// Barycentric weights of values at -5, -4, ... 6 in the polynomial through them at x, up to a factor: (-1)^k (11 over k)
+/// divided by the distance; `None` at 0 and 1.
+fn weights_at(x: f64) -> Option<[f64; 12]> {
+    const BINOMIALS: [f64; 12] =
+        [1.0, -11.0, 55.0, -165.0, 330.0, -462.0, 462.0, -330.0, 165.0, -55.0, 11.0, -1.0];
+    let on_sample = x.abs() < 1e-9 || (x - 1.0).abs() < 1e-9;
+    (!on_sample).then(|| std::array::from_fn(|k| BINOMIALS[k] / (x + 5.0 - k as f64)))
 }
 
 /// Weights of values at -3, -2, ... 4 in the polynomial through them, at x.

@@ -5,9 +5,9 @@ use nalgebra::Vector3;
 use super::interaction::{Interaction, Process, Roles};
 use super::mismatch::Mismatch;
 use super::partner::Pairing;
-use crate::frame::{Direction, Lab, Orientation, Placement};
+use crate::frame::{Direction, Lab, Mount, Orientation, Placement, Tangential};
 use crate::material::{MaterialError, Principal, tensor::is_centrosymmetric};
-use crate::optics::{Crystal, Indices, Medium};
+use crate::optics::{Crystal, Indices, Medium, Sheet};
 use crate::quantity::Wavelength;
 
 /// Wavelengths of one process; energy is conserved by construction.
@@ -274,12 +274,27 @@ impl Emission {
         Some((d.xy().norm().atan2(d.z), d.y.atan2(d.x)))
     }
 
-    /// Azimuth of the signal's electric field in the lab, from +x towards +y, degrees in [0, 180), along the pump.
+    /// Azimuth of the signal's electric field in the lab, from +x towards +y, degrees in [0, 180), for a direction
+    /// outside; `None` where there is no such wave.
     #[must_use]
     pub fn field_azimuth(&self, roles: Roles, signal: Direction) -> Option<f64> {
-        let pairing = self.pairing(roles, signal)?;
-        let Lab(field) = self.placement.to_lab(pairing.signal.field);
-        let Lab(d) = signal.lab();
+        self.azimuth_of_field(&self.media.signal, roles.signal, signal)
+    }
+
+    /// The same for the idler.
+    #[must_use]
+    pub fn idler_field_azimuth(&self, roles: Roles, idler: Direction) -> Option<f64> {
+        self.azimuth_of_field(&self.media.idler, roles.idler, idler)
+    }
+
+    fn azimuth_of_field(&self, medium: &Medium, sheet: Sheet, direction: Direction) -> Option<f64> {
+        let Lab(d) = direction.lab();
+        let Mount(inside) = self.placement.to_mount(Lab(d));
+        if inside.z <= 0.0 {
+            return None;
+        }
+        let q = Tangential { u: medium.k0() * inside.x, v: medium.k0() * inside.y };
+        let Lab(field) = self.placement.to_lab(medium.wave(sheet, q)?.field);
         // the transverse part of the field, in the plane that the photon outside lies across
         let outside: Vector3<f64> = field - d * field.dot(&d);
         let azimuth = outside.y.atan2(outside.x).to_degrees().rem_euclid(180.0);

@@ -5,11 +5,14 @@
 use std::f64::consts::TAU;
 use std::sync::LazyLock;
 
+use fearless_simd::dispatch;
+use fearless_simd::prelude::*;
 use nalgebra::Vector3;
 
 use super::count;
-use super::mismatch::{Field, Mismatch};
+use super::mismatch::{Mismatch, Quadrics, Sample};
 use crate::frame::Tangential;
+use crate::number::{self, LANES, Number, Wide};
 
 /// Samples on a ring, equally spaced in azimuth about its axis.
 pub const SAMPLES: usize = 72;
@@ -56,6 +59,12 @@ impl Meridians {
         Self { axis, across: [first, axis.cross(&first)] }
     }
 
+    /// The unit vector with these components along the two directions across and the axis, up to their length.
+    pub(super) fn turned(&self, local: &Vector3<f64>) -> Vector3<f64> {
+        let Self { axis, across: [first, second] } = self;
+        (first * local.x + second * local.y + axis * local.z).normalize()
+    }
+
     /// As the face of a crystal sees them.
     pub(super) fn on_face(&self, mismatch: &Mismatch) -> Fan {
         let [first, second] = &self.across;
@@ -73,8 +82,8 @@ impl Meridians {
 
 /// cos psi and sin psi of t = tan(psi/2).
 #[inline(always)]
-pub(super) fn polar(t: f64) -> (f64, f64) {
-    let w = 2.0 / (1.0 + t * t);
+pub(super) fn polar<T: Number>(t: T) -> (T, T) {
+    let w = (t * t + 1.0).reciprocal() * 2.0;
     (w - 1.0, t * w)
 }
 
@@ -86,69 +95,144 @@ pub(super) struct Fan {
 }
 
 /// A place on a meridian.
-pub(super) struct Place {
-    pub q: Tangential,
+pub(super) struct Place<T = f64> {
+    pub q: Tangential<T>,
     /// dq/dpsi
-    pub out: Tangential,
+    pub out: Tangential<T>,
     /// dq/dphi divided by sin psi
-    pub round: Tangential,
-    pub sin: f64,
+    pub round: Tangential<T>,
+    pub sin: T,
     /// Component of the direction along the exit normal.
-    pub forward: f64,
+    pub forward: T,
 }
 
 impl Fan {
     #[inline(always)]
-    pub(super) fn place(&self, t: f64, (cos, sin): (f64, f64)) -> Place {
+    pub(super) fn place<T: Number>(&self, t: T, (cos, sin): (T, T)) -> Place<T> {
         let ([a, b], axis) = (&self.across, &self.axis);
         let (along, out) = polar(t);
         // the direction across the axis, towards the azimuth
-        let (u, v, w) = (a.x * cos + b.x * sin, a.y * cos + b.y * sin, a.z * cos + b.z * sin);
+        let (u, v, w) = (cos * a.x + sin * b.x, cos * a.y + sin * b.y, cos * a.z + sin * b.z);
         Place {
-            q: Tangential { u: axis.x * along + u * out, v: axis.y * along + v * out },
-            out: Tangential { u: u * along - axis.x * out, v: v * along - axis.y * out },
-            round: Tangential { u: b.x * cos - a.x * sin, v: b.y * cos - a.y * sin },
+            q: Tangential { u: along * axis.x + u * out, v: along * axis.y + v * out },
+            out: Tangential { u: u * along - out * axis.x, v: v * along - out * axis.y },
+            round: Tangential { u: cos * b.x - sin * a.x, v: cos * b.y - sin * a.y },
             sin: out,
-            forward: axis.z * along + w * out,
+            forward: along * axis.z + w * out,
         }
-    }
-
-    /// One step towards Delta_k = `level` on each meridian, where Delta_k = `middle` on the axis. Steps are relative,
-    /// and not a number where the way out does not lead upwards.
-    #[inline(always)]
-    fn step(&self, field: &impl Field, [level, middle]: [f64; 2], curve: Advance<'_>) {
-        let count = curve.t.len();
-        let (cos, sin) = azimuths(count);
-        let (cos, sin, turns, steps) =
-            (&cos[..count], &sin[..count], &mut curve.turns[..count], &mut curve.steps[..count]);
-        for j in 0..count {
-            let t = curve.t[j];
-            let place = self.place(t, (cos[j], sin[j]));
-            let here = field.sample(place.q);
-            let rise = here.slope[0] * place.out.u + here.slope[1] * place.out.v;
-            let swing = here.slope[0] * place.round.u + here.slope[1] * place.round.v;
-            // t f' = sin psi df/dpsi
-            let inverse = 1.0 / (rise * place.sin);
-            // Newton with the bend of the parabola through the value on the axis, t -> t - (f/f')(1 + f f''/(2 f'^2)):
-            // with y = f/(t f') and y_0 = (f(0) - f)/(t f'),  f f''/(2 f'^2) = y (1 + y_0)
-            let y = (here.value - level) * inverse;
-            let y0 = (middle - here.value) * inverse;
-            let step = y * (1.0 + y * (1.0 + y0));
-            let upwards = rise > 0.0 && place.forward > 0.0;
-            steps[j] = if upwards { step } else { f64::NAN };
-            curve.t[j] = t - t * step;
-            // Delta_k stays: psi' = -(dDelta_k/dphi)/(dDelta_k/dpsi)
-            turns[j] = -swing * place.sin * inverse;
-        }
-        count::add(count);
     }
 }
 
-/// What [`Fan::step`] moves.
-struct Advance<'a> {
+/// A step along a meridian.
+struct Step<T> {
+    /// t becomes t (1 - step).
+    step: T,
+    /// (d psi/d phi)/sin psi of the curve.
+    turn: T,
+    /// d Delta_k/d psi.
+    rise: T,
+}
+
+/// Newton with the bend of the parabola through the value on the axis, towards Delta_k = `level`, where Delta_k =
+/// `middle` on the axis:
+///
+/// t -> t - (f/f')(1 + f f''/(2 f'^2)),   with y = f/(t f') and y_0 = (f(0) - f)/(t f'),  f f''/(2 f'^2) = y (1 + y_0).
+#[inline(always)]
+fn newton<T: Number>(place: &Place<T>, here: &Sample<T>, [level, middle]: [f64; 2]) -> Step<T> {
+    let rise = here.slope[0] * place.out.u + here.slope[1] * place.out.v;
+    let swing = here.slope[0] * place.round.u + here.slope[1] * place.round.v;
+    // t f' = sin psi df/dpsi
+    let inverse = (rise * place.sin).reciprocal();
+    let y = (here.value - level) * inverse;
+    let y0 = (-here.value + middle) * inverse;
+    Step {
+        step: y * (y * (y0 + 1.0) + 1.0),
+        // Delta_k stays: psi' = -(dDelta_k/dphi)/(dDelta_k/dpsi)
+        turn: -swing * place.sin * inverse,
+        rise,
+    }
+}
+
+/// What a step on all meridians came to.
+#[derive(Clone, Copy, PartialEq)]
+enum Moved {
+    /// No meridian by more than the tolerance.
+    Hardly,
+    Further,
+    /// One by so much that it needs a bracket, or its way out does not lead upwards.
+    TooFar,
+}
+
+/// Relative steps that need a bracket.
+const TOO_FAR: f64 = 0.5;
+
+/// The meridians that are followed together: t and turns.
+struct Front<'a> {
     t: &'a mut [f64],
     turns: &'a mut [f64],
-    steps: &'a mut [f64],
+}
+
+impl Front<'_> {
+    /// A step on all meridians, four side by side.
+    #[inline(always)]
+    fn step_wide<S: Simd>(
+        &mut self,
+        simd: S,
+        fan: &Fan,
+        field: &Quadrics,
+        levels: [f64; 2],
+        tolerance: f64,
+    ) -> Moved {
+        let count = self.t.len();
+        let (cos, sin) = azimuths(count);
+        let azimuths = cos.as_chunks::<LANES>().0.iter().zip(sin.as_chunks::<LANES>().0);
+        let (t, turns) = (self.t.as_chunks_mut::<LANES>().0, self.turns.as_chunks_mut::<LANES>().0);
+        let none = Wide::splat(simd, 0.0);
+        let mut near = none.simd_eq(none);
+        let mut settled = near;
+        for ((t, turn), (cos, sin)) in t.iter_mut().zip(turns).zip(azimuths) {
+            let here = Wide::simd_from(simd, *t);
+            let place = fan.place(here, (Wide::simd_from(simd, *cos), Wide::simd_from(simd, *sin)));
+            let step = newton(&place, &field.sample(place.q), levels);
+            let there = here - here * step.step;
+            let size = step.step.abs();
+            let upwards = step.rise.simd_gt(none) & place.forward.simd_gt(none);
+            near = near & upwards & size.simd_le(Wide::splat(simd, TOO_FAR));
+            settled = settled & there.simd_gt(none) & size.simd_le(Wide::splat(simd, tolerance));
+            *t = there.into();
+            *turn = step.turn.into();
+        }
+        count::add(count);
+        Moved::by(near.all_true(), settled.all_true())
+    }
+
+    /// The same one by one.
+    fn step_singly(&mut self, fan: &Fan, field: &Mismatch, levels: [f64; 2], tolerance: f64) -> Moved {
+        let count = self.t.len();
+        let (cos, sin) = azimuths(count);
+        let (mut near, mut settled) = (true, true);
+        for (j, (t, turn)) in self.t.iter_mut().zip(&mut *self.turns).enumerate() {
+            let place = fan.place(*t, (cos[j], sin[j]));
+            let step = newton(&place, &field.sample(place.q), levels);
+            *t -= *t * step.step;
+            *turn = step.turn;
+            // written so that what is not a number is neither
+            near &= step.rise > 0.0 && place.forward > 0.0 && step.step.abs() <= TOO_FAR;
+            settled &= *t > 0.0 && step.step.abs() <= tolerance;
+        }
+        count::add(count);
+        Moved::by(near, settled)
+    }
+}
+
+impl Moved {
+    fn by(near: bool, settled: bool) -> Self {
+        match (near, settled) {
+            (false, _) => Self::TooFar,
+            (true, true) => Self::Hardly,
+            (true, false) => Self::Further,
+        }
+    }
 }
 
 /// Where a meridian meets Delta_k = level.
@@ -210,35 +294,34 @@ impl Mismatch {
     }
 }
 
-/// Steps on all meridians until none moves by more than `tolerance`; false where that does not come about at once.
+/// Steps on all meridians until none moves by more than `tolerance`, towards the first of `levels`, where the mismatch on
+/// the axis is the second; false where that does not come about at once.
 pub(super) fn settle(
     mismatch: &Mismatch,
     fan: &Fan,
-    level: f64,
+    levels: [f64; 2],
     t: &mut [f64],
     turns: &mut [f64],
     tolerance: f64,
 ) -> bool {
+    let mut front = Front { t, turns };
+    match mismatch.quadrics() {
+        Some(field) => dispatch!(number::level(), simd => {
+            settles(#[inline(always)] || front.step_wide(simd, fan, &field, levels, tolerance))
+        }),
+        None => settles(|| front.step_singly(fan, mismatch, levels, tolerance)),
+    }
+}
+
+/// Steps until nothing moves.
+#[inline(always)]
+fn settles(mut step: impl FnMut() -> Moved) -> bool {
     const STEPS: usize = 8;
-    // relative steps that need a bracket
-    const TOO_FAR: f64 = 0.5;
-    let axis = Tangential { u: fan.axis.x, v: fan.axis.y };
-    let Some(middle) = mismatch.at(axis).map(|at| at.value) else { return false };
-    let mut steps = [0.0; SAMPLES];
-    let steps = &mut steps[..t.len()];
     for _ in 0..STEPS {
-        let advance = Advance { t: &mut *t, turns: &mut *turns, steps: &mut *steps };
-        match mismatch.quadrics() {
-            Some(quadrics) => fan.step(&quadrics, [level, middle], advance),
-            None => fan.step(mismatch, [level, middle], advance),
-        }
-        // written so that what is not a number is neither
-        let within = |limit: f64| steps.iter().all(|step| step.abs() <= limit);
-        if within(tolerance) {
-            return t.iter().all(|t| *t > 0.0);
-        }
-        if !within(TOO_FAR) {
-            return false;
+        match step() {
+            Moved::Hardly => return true,
+            Moved::TooFar => return false,
+            Moved::Further => {}
         }
     }
     false

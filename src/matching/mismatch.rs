@@ -10,6 +10,7 @@ use super::count;
 use super::emission::Media;
 use super::interaction::Roles;
 use crate::frame::{Direction, Lab, Mount, Placement, Tangential};
+use crate::number::Number;
 use crate::optics::{Normal, Quadric, Surface};
 
 /// Phase mismatch of one process in one crystal; signal and idler by role.
@@ -28,11 +29,11 @@ pub struct Mismatch {
 
 /// Mismatch and its gradient at one tangential wave vector.
 #[derive(Debug, Clone, Copy)]
-pub struct Sample {
+pub struct Sample<T = f64> {
     /// Delta_k, rad/m.
-    pub value: f64,
+    pub value: T,
     /// d Delta_k/d q_u and d q_v, dimensionless.
-    pub slope: [f64; 2],
+    pub slope: [T; 2],
 }
 
 /// Mismatch towards an external direction of the signal.
@@ -58,12 +59,7 @@ pub(crate) struct Stationary {
     pub smooth: bool,
 }
 
-/// A mismatch as loops over many wave vectors want it: without branches, not a number where a photon is evanescent.
-pub(crate) trait Field {
-    fn sample(&self, q: Tangential) -> Sample;
-}
-
-/// The mismatch of two quadrics.
+/// The mismatch of two quadrics: what loops over many wave vectors want, without branches.
 #[derive(Debug, Clone, Copy)]
 pub(crate) struct Quadrics {
     q_pump: Tangential,
@@ -72,17 +68,26 @@ pub(crate) struct Quadrics {
     idler: Quadric,
 }
 
-impl Field for Quadrics {
+impl Quadrics {
+    /// Normal component of the signal's wave vector inside.
     #[inline(always)]
-    fn sample(&self, q: Tangential) -> Sample {
-        difference(self.available, &self.signal.normal(q), &self.idler.normal(self.q_pump - q))
+    pub fn signal_height<T: Number>(&self, q: Tangential<T>) -> T {
+        self.signal.height(q).k_w()
     }
-}
 
-impl Field for Mismatch {
-    fn sample(&self, q: Tangential) -> Sample {
-        let nowhere = Sample { value: f64::NAN, slope: [f64::NAN; 2] };
-        self.solve(q).unwrap_or(nowhere)
+    /// Not a number where a photon is evanescent.
+    #[inline(always)]
+    pub fn sample<T: Number>(&self, q: Tangential<T>) -> Sample<T> {
+        let other = Tangential { u: -q.u + self.q_pump.u, v: -q.v + self.q_pump.v };
+        let (signal, idler) = (self.signal.height(q), self.idler.height(other));
+        // both reciprocals by one division
+        let inverse = (signal.root * idler.root).reciprocal();
+        let from = self.signal.slope(&signal, inverse * idler.root);
+        let to = self.idler.slope(&idler, inverse * signal.root);
+        Sample {
+            value: -signal.k_w() + self.available - idler.k_w(),
+            slope: [to[0] - from[0], to[1] - from[1]],
+        }
     }
 }
 
@@ -145,6 +150,12 @@ impl Mismatch {
         self.solve(q)
     }
 
+    /// The same, not a number where a photon is evanescent; for loops that count for themselves.
+    pub(super) fn sample(&self, q: Tangential) -> Sample {
+        let nowhere = Sample { value: f64::NAN, slope: [f64::NAN; 2] };
+        self.solve(q).unwrap_or(nowhere)
+    }
+
     #[inline]
     fn solve(&self, q: Tangential) -> Option<Sample> {
         match self.quadrics() {
@@ -178,6 +189,16 @@ impl Mismatch {
     pub(super) fn idler_leaves(&self, q: Tangential) -> bool {
         let idler = self.q_pump - q;
         idler.u * idler.u + idler.v * idler.v < self.k0_idler * self.k0_idler
+    }
+
+    /// Mismatch of the signal towards a unit direction in the lab; `None` where a photon is evanescent or totally
+    /// reflected.
+    pub(super) fn along(&self, d: Vector3<f64>) -> Option<Sample> {
+        let on_face = self.on_face(&d);
+        if on_face.z <= 0.0 {
+            return None;
+        }
+        self.at(Tangential { u: on_face.x, v: on_face.y })
     }
 
     /// Mismatch towards a unit direction in the lab; `None` behind the exit face and where the idler is evanescent.

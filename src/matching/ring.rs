@@ -6,16 +6,18 @@
 
 use std::f64::consts::TAU;
 
+use fearless_simd::dispatch;
 use nalgebra::{Vector2, Vector3};
 
 use super::Status;
-use super::curve::{Curve, FINE, ROUGH, RingFault, all};
+use super::curve::{Curve, ROUGH, RingFault, all};
 use super::fit;
-use super::meridian::{FEW_SAMPLES, SAMPLES};
-use super::mismatch::Mismatch;
+use super::meridian::SAMPLES;
+use super::mismatch::{Mismatch, Sample};
 use super::partner::HALF_MAXIMUM;
 use super::seed::seeds;
 use crate::frame::{Direction, Lab};
+use crate::number::{self, Number, sums, wide};
 
 /// A ring and the cone that fits it.
 #[derive(Debug, Clone)]
@@ -49,45 +51,65 @@ pub struct Ring {
 /// The fault of the one ring that is not there, where there is none at all.
 pub fn rings(mismatch: &Mismatch, length: f64) -> Result<Vec<Ring>, RingFault> {
     all(&seeds(mismatch)?, |seed| {
-        Ring::fit(centred(Curve::about(mismatch, seed, ROUGH)?, mismatch)?, mismatch, length)
+        let mut curve = Curve::about(mismatch, seed, ROUGH)?;
+        centre(&mut curve, mismatch)?;
+        Ok(Ring::fit(curve, mismatch, length))
     })
+}
+
+/// All rings of the idler of a process, given the only one of its signal, or none where that is not known.
+///
+/// # Errors
+/// As [`rings`].
+pub fn partner_rings(
+    mismatch: &Mismatch,
+    only: Option<&Ring>,
+    length: f64,
+) -> Result<Vec<Ring>, RingFault> {
+    let exchanged = mismatch.exchanged();
+    if let Some(ring) = only
+        && let Some(mut curve) = ring.curve.of_partners(mismatch, &exchanged)
+        && centre(&mut curve, &exchanged).is_ok()
+    {
+        return Ok(vec![Ring::fit(curve, &exchanged, length)]);
+    }
+    rings(&exchanged, length)
 }
 
 /// Half angle of the cone that fits the first ring of a process best, radians; `None` where there is no ring.
 #[must_use]
 pub fn half_angle(mismatch: &Mismatch) -> Option<f64> {
     let seed = *seeds(mismatch).ok()?.first()?;
-    let curve = centred(Curve::about(mismatch, &seed, ROUGH).ok()?, mismatch).ok()?;
-    Some(cone_angle(&curve.within_region().ok()?))
+    let mut curve = Curve::about(mismatch, &seed, ROUGH).ok()?;
+    centre(&mut curve, mismatch).ok()?;
+    Some(cone_angle(&curve))
 }
 
-/// Traces a curve again about the axis of the cone that fits best, until the axis stays.
-fn centred(mut curve: Curve, mismatch: &Mismatch) -> Result<Curve, RingFault> {
+/// Traces a curve again about the axis of the cone that fits best until the axis stays.
+fn centre(curve: &mut Curve, mismatch: &Mismatch) -> Result<(), RingFault> {
     const PASSES: usize = 20;
-    const STAYS: f64 = 1e-9 * std::f64::consts::PI / 180.0;
+    // a last move of this much leaves the axis off by r of it, 1e-10 deg or so, and the samples to rounding
+    const STAYS: f64 = 2e-8 * std::f64::consts::PI / 180.0;
     if curve.is_point() {
-        return Ok(curve);
+        return curve.demand_region();
     }
-    let mut before = f64::INFINITY;
+    let mut before = None;
     for _ in 0..PASSES {
-        let few = curve.count() == FEW_SAMPLES;
-        let mut axis = local_axis(&curve);
-        let moved = axis.x.hypot(axis.y);
-        let shrink = moved / before;
+        let (few, mut axis) = (curve.is_coarse(), local_axis(curve));
+        let moved = (axis.x * axis.x + axis.y * axis.y).sqrt();
         if !few && moved < STAYS {
-            return Ok(curve);
-        }
-        // with a margin, so that more samples do not move it again; where rounding moves it there is none
-        if few && (moved < 1e-3 * STAYS || moved < STAYS && shrink > 0.5) {
-            curve.refined(mismatch)?;
-            continue;
+            curve.shift(&axis);
+            return curve.demand_region();
         }
         // moves shrink by one factor: sum of the geometric series, 1 + r + r^2 + ...
+        let shrink = before.map_or(1.0, |before| moved / before);
         if shrink < 0.1 {
             axis += Vector3::new(axis.x, axis.y, 0.0) * (shrink / (1.0 - shrink));
         }
-        curve.recentred(mismatch, &axis, if few { ROUGH } else { FINE })?;
-        before = moved;
+        // what is left then is about r^2 of the move, and all samples will do
+        let last = moved * shrink * shrink < 0.5 * STAYS;
+        curve.recentred(mismatch, &axis, last)?;
+        before = Some(moved);
     }
     Err(RingFault::new(Status::NotConverged))
 }
@@ -95,29 +117,31 @@ fn centred(mut curve: Curve, mismatch: &Mismatch) -> Result<Curve, RingFault> {
 /// Axis of the cone that fits a curve best, by components along its meridians' own axes.
 fn local_axis(curve: &Curve) -> Vector3<f64> {
     // 1 - cos psi instead of cos psi keeps small rings accurate, and turns the sign
-    let normal = fit::normal(curve.local(), &-Vector3::z());
+    let normal = curve.moments().normal(&-Vector3::z());
     Vector3::new(normal.x, normal.y, -normal.z)
 }
 
 /// alpha with cos alpha = mean cos psi: sin^2(alpha/2) = mean t^2/(1 + t^2) is accurate for narrow cones.
 fn cone_angle(curve: &Curve) -> f64 {
     let t = curve.half_tangents();
-    let mean = t.iter().map(|t| t * t / (1.0 + t * t)).sum::<f64>() / t.len() as f64;
-    2.0 * mean.sqrt().asin()
+    let [sum] = dispatch!(number::level(), simd => sums(simd, t.len(), #[inline(always)] |j| {
+        let square = wide(simd, t, j) * wide(simd, t, j);
+        [square / (square + 1.0)]
+    }));
+    2.0 * (sum / t.len() as f64).sqrt().asin()
 }
 
 impl Ring {
     /// Looks at the details of a curve about its cone's axis.
-    fn fit(curve: Curve, mismatch: &Mismatch, length: f64) -> Result<Self, RingFault> {
-        let curve = curve.within_region()?;
-        let (least, largest) = if curve.is_point() { (0.0, 0.0) } else { extremes(mismatch, &curve) };
+    fn fit(curve: Curve, mismatch: &Mismatch, length: f64) -> Self {
+        let stride = stride(&curve);
+        let (least, largest) = if curve.is_point() { (0.0, 0.0) } else { extremes(mismatch, &curve, stride) };
         // half of the maximum is not passed on the way in: Delta_k stays above it at the axis
         let half_width = 2.0 * HALF_MAXIMUM / length;
-        let middle = mismatch.towards(curve.frame.axis).map(|at| at.value);
-        let filled = middle.is_none_or(|value| value >= -half_width);
+        let middle = mismatch.along(curve.frame.axis);
+        let filled = middle.is_none_or(|at| at.value >= -half_width);
         let partners_leave = curve.partners_leave(mismatch);
-        let stride = stride(&curve);
-        Ok(Self {
+        Self {
             axis: Direction::new(Lab(curve.frame.axis)),
             half_angle: cone_angle(&curve),
             least,
@@ -125,24 +149,21 @@ impl Ring {
             internal_half_angle: internal_half_angle(mismatch, &curve, stride),
             thickness: middle
                 .filter(|_| !filled)
-                .and_then(|middle| thickness(mismatch, &curve, [half_width, middle], stride)),
+                .and_then(|middle| thickness(mismatch, &curve, half_width, &middle, stride)),
             filled,
             status: if partners_leave { Status::Ok } else { Status::TotalReflection },
             stride,
             curve,
-        })
+        }
     }
 
     /// The circle that fits the ring best on a screen across the pump: centre and radius in units of the distance.
     #[must_use]
     pub fn circle(&self) -> (Vector2<f64>, f64) {
-        let mut points = [Vector2::zeros(); SAMPLES];
-        let points = &mut points[..SAMPLES / self.stride];
-        for (k, point) in points.iter_mut().enumerate() {
-            let d = self.curve.vector(k * self.stride);
-            *point = d.xy() / d.z;
-        }
-        fit::circle(points)
+        let (mut x, mut y) = ([0.0; SAMPLES], [0.0; SAMPLES]);
+        self.curve.on_screen(self.stride, &mut x, &mut y);
+        let count = SAMPLES / self.stride;
+        fit::circle(&x[..count], &y[..count])
     }
 }
 
@@ -162,32 +183,22 @@ fn internal_half_angle(mismatch: &Mismatch, curve: &Curve, stride: usize) -> f64
     if curve.is_point() {
         return 0.0;
     }
-    let mut inside = [Vector3::z(); SAMPLES];
-    let mut count = 0;
-    for q in curve.tangential(mismatch).step_by(stride) {
-        inside[count] = mismatch.inside(q).map_or(Vector3::z(), |k| k.normalize());
-        count += 1;
-    }
-    let inside = &inside[..count];
-    let mean = inside.iter().sum::<Vector3<f64>>() / count as f64;
-    let axis = fit::normal(inside.iter().map(|k| k - mean), &mean.normalize());
-    // 1 - cos alpha = mean |d - a|^2/2
-    let versine = inside.iter().map(|d| (d - axis).norm_squared()).sum::<f64>() / (2 * count) as f64;
+    let (moments, middle) = curve.inside(mismatch, stride);
+    // 1 - cos alpha = mean |k - a|^2/2
+    let versine = 0.5 * moments.square_from(&(moments.normal(&middle) - middle));
     2.0 * (0.5 * versine).sqrt().asin()
 }
 
 /// Least and largest stationary values of the radius, found where its slope changes sign between samples.
-fn extremes(mismatch: &Mismatch, curve: &Curve) -> (f64, f64) {
-    let (samples, turns) = (curve.half_tangents(), curve.turns());
-    let mut least = samples.iter().copied().fold(f64::INFINITY, f64::min);
-    let mut largest = samples.iter().copied().fold(0.0, f64::max);
+fn extremes(mismatch: &Mismatch, curve: &Curve, stride: usize) -> (f64, f64) {
+    let [mut least, mut largest] = curve.range();
     // a ring that is round to rounding error has no extremes worth looking for
     if largest - least >= 0.5e-13 {
-        for j in 0..SAMPLES {
-            let ends = [turns[j], turns[(j + 1) % SAMPLES]];
-            if ends[0].is_sign_negative() != ends[1].is_sign_negative()
-                && let Some(t) = stationary(mismatch, curve, j, ends)
-            {
+        // the polynomial through twelve neighbours is off by 4e-14 of the second harmonic's amplitude
+        let smooth = stride > 1 && largest - least < 0.1 * least;
+        for j in curve.turning_samples() {
+            let exact = || stationary(mismatch, curve, j);
+            if let Some(t) = smooth.then(|| curve.turning_value(j)).or_else(exact) {
                 (least, largest) = (least.min(t), largest.max(t));
             }
         }
@@ -196,8 +207,9 @@ fn extremes(mismatch: &Mismatch, curve: &Curve) -> (f64, f64) {
 }
 
 /// Stationary value of tan(psi/2) between samples j and j + 1, at which the curve turns in and out.
-fn stationary(mismatch: &Mismatch, curve: &Curve, j: usize, [mut fa, mut fb]: [f64; 2]) -> Option<f64> {
+fn stationary(mismatch: &Mismatch, curve: &Curve, j: usize) -> Option<f64> {
     const STEPS: usize = 50;
+    let (mut fa, mut fb) = (curve.turns()[j], curve.turns()[(j + 1) % SAMPLES]);
     let (mut a, mut b) = (curve.azimuth(j), TAU * (j + 1) as f64 / SAMPLES as f64);
     let mut x = a + (b - a) * fa / (fa - fb);
     let mut found = None;
@@ -225,13 +237,39 @@ fn stationary(mismatch: &Mismatch, curve: &Curve, j: usize, [mut fa, mut fb]: [f
 fn thickness(
     mismatch: &Mismatch,
     curve: &Curve,
-    [half_width, middle]: [f64; 2],
+    half_width: f64,
+    middle: &Sample,
     stride: usize,
 ) -> Option<f64> {
-    let inner = curve.level(mismatch, [-half_width, middle], stride)?;
-    let outer = curve.level(mismatch, [half_width, middle], stride)?;
+    let inner = curve.level(mismatch, -half_width, middle, stride)?;
+    let outer = curve.level(mismatch, half_width, middle, stride)?;
     let (inner, outer) = (inner.half_tangents(), outer.half_tangents());
     // psi_2 - psi_1 = 2 atan((t_2 - t_1)/(1 + t_1 t_2))
-    let widths = inner.iter().zip(outer).map(|(a, b)| 2.0 * ((b - a) / (1.0 + a * b)).atan());
-    Some(widths.sum::<f64>() / inner.len() as f64)
+    let [sum, widest] = dispatch!(number::level(), simd => sums(simd, inner.len(), #[inline(always)] |j| {
+        let (a, b) = (wide(simd, inner, j), wide(simd, outer, j));
+        let x = (b - a) / (a * b + 1.0);
+        let square = x * x;
+        [narrow_atan(x), square * square]
+    }));
+    // the sum of fourth powers bounds each of them
+    let sum = if widest < NARROW.powi(4) {
+        sum
+    } else {
+        inner.iter().zip(outer).map(|(a, b)| ((b - a) / (1.0 + a * b)).atan()).sum()
+    };
+    Some(2.0 * sum / inner.len() as f64)
+}
+
+/// Below this [`narrow_atan`] is exact to rounding.
+const NARROW: f64 = 0.08;
+
+/// atan x = x - x^3/3 + x^5/5 - ... to x^13.
+#[inline(always)]
+fn narrow_atan<T: Number>(x: T) -> T {
+    let square = x * x;
+    let mut series = square * (1.0 / 13.0) - 1.0 / 11.0;
+    for c in [1.0 / 9.0, -1.0 / 7.0, 1.0 / 5.0, -1.0 / 3.0, 1.0] {
+        series = series * square + c;
+    }
+    series * x
 }

@@ -14,6 +14,7 @@
 use nalgebra::{Matrix3, Vector3};
 
 use crate::frame::Tangential;
+use crate::number::Number;
 
 /// One of the two sheets at a given frequency.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Hash)]
@@ -31,6 +32,17 @@ pub struct Normal {
     pub k_w: f64,
     /// d k_w/d q_u and d k_w/d q_v = -S_u/S_w, -S_v/S_w with S the ray.
     pub slope: [f64; 2],
+}
+
+/// What a quadric's k_w and its slopes are made of at one tangential wave vector.
+#[derive(Clone, Copy)]
+pub(crate) struct Height<T> {
+    /// sqrt(D); not a number where the wave is evanescent.
+    pub root: T,
+    /// (Q q)_u and (Q q)_v.
+    bowl: [T; 2],
+    /// b.
+    lean: T,
 }
 
 /// Second derivatives of k_w with respect to (q_u, q_v), in m: uu, uv, vv.
@@ -156,6 +168,14 @@ impl Surface {
     }
 }
 
+impl<T: Number> Height<T> {
+    /// k_w = sqrt(D) - b.
+    #[inline(always)]
+    pub fn k_w(&self) -> T {
+        self.root - self.lean
+    }
+}
+
 impl Quadric {
     fn new(m: &Matrix3<f64>, k0: f64) -> Self {
         let ww = m[(2, 2)];
@@ -164,19 +184,31 @@ impl Quadric {
         Self { ww, top: k0 * k0 / ww, lean, bowl: [bowl(0, 0), bowl(0, 1), bowl(1, 1)] }
     }
 
+    /// The square root and what goes with it.
+    #[inline(always)]
+    pub(crate) fn height<T: Number>(&self, q: Tangential<T>) -> Height<T> {
+        let ([lean_u, lean_v], [uu, uv, vv]) = (self.lean, self.bowl);
+        // half the gradient of q.Q q
+        let (u, v) = (q.u * uu + q.v * uv, q.u * uv + q.v * vv);
+        Height {
+            root: (-(u * q.u + v * q.v) + self.top).root(),
+            bowl: [u, v],
+            lean: q.u * lean_u + q.v * lean_v,
+        }
+    }
+
+    /// d k_w/d q_i = -(Q q)_i/sqrt(D) - b_i, given 1/sqrt(D).
+    #[inline(always)]
+    pub(crate) fn slope<T: Number>(&self, height: &Height<T>, inverse: T) -> [T; 2] {
+        let ([lean_u, lean_v], [u, v]) = (self.lean, height.bowl);
+        [-(u * inverse) - lean_u, -(v * inverse) - lean_v]
+    }
+
     /// k_w and its slopes; not a number where the wave is evanescent.
     #[inline(always)]
     pub(crate) fn normal(&self, q: Tangential) -> Normal {
-        let ([lean_u, lean_v], [uu, uv, vv]) = (self.lean, self.bowl);
-        // half the gradient of q.Q q
-        let (u, v) = (uu * q.u + uv * q.v, uv * q.u + vv * q.v);
-        let root = (self.top - (u * q.u + v * q.v)).sqrt();
-        // d k_w/d q_i = -(Q q)_i/sqrt(D) - b_i
-        let inverse = 1.0 / root;
-        Normal {
-            k_w: root - (lean_u * q.u + lean_v * q.v),
-            slope: [-u * inverse - lean_u, -v * inverse - lean_v],
-        }
+        let height = self.height(q);
+        Normal { k_w: height.k_w(), slope: self.slope(&height, height.root.reciprocal()) }
     }
 
     #[inline]

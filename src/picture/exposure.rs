@@ -284,7 +284,7 @@ impl Row<'_> {
             before = after;
         }
         let weight = wave.weight as f32;
-        if matches!(self.level, Level::Avx2(_)) {
+        if fuses(self.level) {
             dispatch!(self.level, _simd => add_all::<true>(cubics, self.places, weight, line));
         } else {
             dispatch!(self.level, _simd => add_all::<false>(cubics, self.places, weight, line));
@@ -300,6 +300,15 @@ impl Row<'_> {
             }
         }
     }
+}
+
+/// Whether the processor multiplies and adds in one rounding.
+#[inline]
+fn fuses(level: Level) -> bool {
+    #[cfg(any(target_arch = "x86", target_arch = "x86_64"))]
+    return matches!(level, Level::Avx2(_) | Level::Avx512(_));
+    #[cfg(not(any(target_arch = "x86", target_arch = "x86_64")))]
+    return cfg!(target_arch = "aarch64") && !level.is_fallback();
 }
 
 /// Delta_k L/2 in half turns between two nodes, in powers of the place between them; `None` where nothing is to be added.
