@@ -43,7 +43,7 @@ fn points(c: &mut Criterion) {
         c.bench_function(&format!("one point of report {name}"), |b| {
             b.iter(|| {
                 point = (point + 1) % sweep.count();
-                black_box(worker.piece(point..point + 1, &never))
+                black_box(worker.piece(point..point + 1, Vec::new(), &never))
             });
         });
     }

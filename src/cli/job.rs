@@ -134,7 +134,7 @@ fn sweep(document: &Document, catalogue: &Catalogue, output: &OutputArgs) -> Res
     let (mut tried, mut rows) = (0, 0);
     while tried < TRIED.min(count) && started.elapsed() < PATIENCE {
         let point = (u128::from(count) * u128::from(tried) / u128::from(TRIED.min(count))) as u64;
-        let piece = worker.piece(point..point + 1, &never).unwrap_or_default();
+        let piece = worker.piece(point..point + 1, Vec::new(), &never).unwrap_or_default();
         rows += piece.bytes.iter().filter(|b| **b == b'\n').count() as u64;
         tried += 1;
     }

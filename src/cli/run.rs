@@ -187,17 +187,34 @@ fn listen() {
 /// Exit status after Ctrl-C, as shells have it.
 const STOPPED: u8 = 130;
 
-/// Computes batches of points on all threads and writes them in order.
+/// Computes batches of points on all threads, and writes each in order while the next is computed.
 struct Engine<'a> {
     sweep: &'a Sweep<'a>,
     progress: &'a Progress,
+}
+
+/// What is kept from one batch for the next: workers, and buffers that have been written.
+#[derive(Default)]
+struct Idle<'a> {
+    workers: Mutex<Vec<Worker<'a>>>,
+    buffers: Mutex<Vec<Vec<u8>>>,
+}
+
+fn pop<T>(kept: &Mutex<Vec<T>>) -> Option<T> {
+    kept.lock().ok().and_then(|mut kept| kept.pop())
+}
+
+fn keep<T>(kept: &Mutex<Vec<T>>, one: T) {
+    if let Ok(mut kept) = kept.lock() {
+        kept.push(one);
+    }
 }
 
 impl Engine<'_> {
     /// Batches grow until one takes about this long, so that little is lost by a stop and little spent on starting.
     const BATCH: Duration = Duration::from_millis(100);
     /// Pieces of a batch for each thread, so that one slow point does not hold up the others.
-    const PIECES: u64 = 8;
+    const PIECES: u64 = 16;
     /// Keeps a batch's lines in a few megabytes.
     const MOST: u64 = 16_384;
 
@@ -207,20 +224,24 @@ impl Engine<'_> {
         let threads = rayon::current_num_threads() as u64;
         let mut size = threads;
         let mut from = points.start;
-        let workers = Mutex::new(Vec::new());
-        while from < points.end {
+        let idle = Idle::default();
+        let mut waiting = Vec::new();
+        loop {
             let to = points.end.min(from + size);
             let started = Instant::now();
-            let Some(pieces) = self.batch(from..to, threads * Self::PIECES, &workers) else {
-                return Err(stopped(from, &points, sink));
+            let (written, next) = rayon::join(
+                || self.write(std::mem::take(&mut waiting), sink, &mut tally, &idle),
+                || (from < to).then(|| self.batch(from..to, threads * Self::PIECES, &idle)),
+            );
+            if written? == Taken::Closed {
+                return Ok(tally);
+            }
+            waiting = match next {
+                Some(Some(pieces)) => pieces,
+                Some(None) => return Err(stopped(from, &points, sink)),
+                None => return Ok(tally),
             };
             let took = started.elapsed();
-            for piece in pieces {
-                if sink.write(&piece.bytes)? == Taken::Closed {
-                    return Ok(tally);
-                }
-                tally.add(piece.tally);
-            }
             self.progress.advance(to - from);
             from = to;
             if took < Self::BATCH / 2 {
@@ -229,25 +250,35 @@ impl Engine<'_> {
                 size = (size / 2).max(threads);
             }
         }
-        Ok(tally)
     }
 
-    fn batch<'w>(
-        &'w self,
-        points: Range<u64>,
-        pieces: u64,
-        workers: &Mutex<Vec<Worker<'w>>>,
-    ) -> Option<Vec<Piece>> {
+    fn write(
+        &self,
+        pieces: Vec<Piece>,
+        sink: &mut Sink,
+        tally: &mut Tally,
+        idle: &Idle<'_>,
+    ) -> Result<Taken, Failure> {
+        for Piece { mut bytes, tally: own } in pieces {
+            if sink.write(&bytes)? == Taken::Closed {
+                return Ok(Taken::Closed);
+            }
+            tally.add(own);
+            bytes.clear();
+            keep(&idle.buffers, bytes);
+        }
+        Ok(Taken::Yes)
+    }
+
+    fn batch<'w>(&'w self, points: Range<u64>, pieces: u64, idle: &Idle<'w>) -> Option<Vec<Piece>> {
         let count = points.end - points.start;
         let pieces = pieces.min(count);
         let border = |n: u64| points.start + count * n / pieces;
         let piece = |n: u64| {
-            let idle = workers.lock().ok().and_then(|mut idle| idle.pop());
-            let mut worker = idle.unwrap_or_else(|| self.sweep.worker());
-            let piece = worker.piece(border(n)..border(n + 1), &STOP);
-            if let Ok(mut idle) = workers.lock() {
-                idle.push(worker);
-            }
+            let mut worker = pop(&idle.workers).unwrap_or_else(|| self.sweep.worker());
+            let buffer = pop(&idle.buffers).unwrap_or_default();
+            let piece = worker.piece(border(n)..border(n + 1), buffer, &STOP);
+            keep(&idle.workers, worker);
             piece
         };
         (0..pieces).into_par_iter().map(piece).collect()

@@ -222,7 +222,10 @@ const SHUT_OUT: RingFault = RingFault { status: Status::TotalReflection, shortfa
 /// Whether symmetry forbids the pairs all round the curves: d_eff is looked at in four places, unless the first is bright.
 fn is_dark<'c>(history: &History<'_>, curves: impl Iterator<Item = &'c Curve>) -> bool {
     let Source { crystal, emission, .. } = history.source;
-    let dark = |direction: Direction| emission.is_dark(crystal, history.roles, direction) == Some(true);
+    let Some(mismatch) = &history.mismatch else { return false };
+    let dark = |direction: Direction| {
+        emission.is_dark_with(crystal, history.roles, mismatch, direction) == Some(true)
+    };
     let mut curves = curves.peekable();
     curves.peek().is_some() && curves.all(|curve| curve.quarters().all(dark))
 }

@@ -255,10 +255,21 @@ impl Emission {
     /// Whether symmetry forbids a pair whose signal leaves towards `signal`; `None` where the tensor is not known.
     #[must_use]
     pub fn is_dark(&self, crystal: &Crystal, roles: Roles, signal: Direction) -> Option<bool> {
+        self.is_dark_with(crystal, roles, &self.mismatch(roles)?, signal)
+    }
+
+    /// The same where the mismatch is known.
+    pub(super) fn is_dark_with(
+        &self,
+        crystal: &Crystal,
+        roles: Roles,
+        mismatch: &Mismatch,
+        signal: Direction,
+    ) -> Option<bool> {
         let material = &crystal.material;
         match &material.tensor {
             Some(tensor) => {
-                let pairing = self.pairing(roles, signal)?;
+                let pairing = Pairing::of(self, roles, mismatch, signal)?;
                 Some(pairing.d_eff(self, tensor) < 1e-6 * tensor.largest())
             }
             None => is_centrosymmetric(material.file.point_group.get_ref()).then_some(true),

@@ -68,10 +68,13 @@ fn polarization(text: &str) -> Option<Polarization> {
 impl fmt::Display for Process {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         let Self { pump, signal, idler } = self;
-        match (f.width(), f.precision()) {
-            (None, None) => write!(f, "{pump} -> {signal} + {idler}"),
-            _ => f.pad(&format!("{pump} -> {signal} + {idler}")),
+        if f.width().or(f.precision()).is_some() {
+            return f.pad(&format!("{pump} -> {signal} + {idler}"));
         }
+        for part in [pump.name(), " -> ", signal.name(), " + ", idler.name()] {
+            f.write_str(part)?;
+        }
+        Ok(())
     }
 }
 

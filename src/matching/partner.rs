@@ -3,6 +3,7 @@
 use super::Status;
 use super::emission::Emission;
 use super::interaction::{Interaction, Process, Roles};
+use super::mismatch::Mismatch;
 use crate::frame::{Direction, Tangential};
 use crate::material::tensor::Tensor;
 use crate::optics::{Crystal, Wave};
@@ -24,16 +25,25 @@ pub struct Pairing {
 
 impl Pairing {
     pub(super) fn new(emission: &Emission, roles: Roles, direction: Direction) -> Option<Self> {
-        let mismatch = emission.mismatch(roles)?;
+        Self::of(emission, roles, &emission.mismatch(roles)?, direction)
+    }
+
+    /// The same where the mismatch is known.
+    pub(super) fn of(
+        emission: &Emission,
+        roles: Roles,
+        mismatch: &Mismatch,
+        direction: Direction,
+    ) -> Option<Self> {
         // behind the exit face there is no such direction
-        mismatch.towards(direction.lab().0)?;
+        let sample = mismatch.along(direction.lab().0)?;
         let q = mismatch.tangential(direction);
         let q_idler: Tangential = mismatch.pump() - q;
         Some(Self {
             pump: emission.media.pump.wave(roles.pump, mismatch.pump())?,
             signal: emission.media.signal.wave(roles.signal, q)?,
             idler: emission.media.idler.wave(roles.idler, q_idler)?,
-            mismatch: mismatch.at(q)?.value,
+            mismatch: sample.value,
             idler_outside: mismatch.partner(direction),
         })
     }

@@ -22,14 +22,22 @@ pub enum Polarization {
     Slow,
 }
 
-impl fmt::Display for Polarization {
-    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        f.pad(match self {
+impl Polarization {
+    /// As it is written in processes and tables.
+    #[must_use]
+    pub fn name(self) -> &'static str {
+        match self {
             Self::Ordinary => "o",
             Self::Extraordinary => "e",
             Self::Fast => "fast",
             Self::Slow => "slow",
-        })
+        }
+    }
+}
+
+impl fmt::Display for Polarization {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        f.pad(self.name())
     }
 }
 

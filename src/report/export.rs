@@ -109,6 +109,11 @@ impl Lines {
     pub fn take(&mut self) -> Vec<u8> {
         std::mem::take(&mut self.rows.bytes)
     }
+
+    /// Goes on at the end of other bytes; what there is so far is lost.
+    pub fn go_on(&mut self, bytes: Vec<u8>) {
+        self.rows = Records { bytes, ..Records::default() };
+    }
 }
 
 /// A value that rows begin with.

@@ -77,9 +77,10 @@ impl<'a> Sweep<'a> {
 }
 
 impl Worker<'_> {
-    /// The lines of some points; `None` where `stop` was set meanwhile.
-    pub fn piece(&mut self, points: Range<u64>, stop: &AtomicBool) -> Option<Piece> {
+    /// The lines of some points, at the end of `buffer`; `None` where `stop` was set meanwhile.
+    pub fn piece(&mut self, points: Range<u64>, buffer: Vec<u8>, stop: &AtomicBool) -> Option<Piece> {
         let mut tally = Tally::default();
+        self.lines.go_on(buffer);
         for point in points {
             if stop.load(Ordering::Relaxed) {
                 self.lines = Lines::default();
