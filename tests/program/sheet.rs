@@ -121,6 +121,12 @@ fn cross_tilts_are_dialled_by_the_spot_and_swept_where_they_tune() {
         twincone("sheet --kind bench --job examples/biaxial.toml --cross-tilt 0.5deg --tilt 1deg").answer();
     // 1000 mm tan 2 deg = 34.92 mm; after both turns 17.46 mm down as well
     assert_says(&sheet, &["34.92 mm to the right (-x)", "more, about the other axis", "mm down (-y)"]);
+    // every turn that is asked for has its spot: 1000 tan 4 deg, 1000 tan 0.2 deg
+    assert_says(
+        &sheet,
+        &["the reflected spot moves by 69.9 mm", "by 0.1 deg moves the reflected spot by 3.49 mm"],
+    );
+    assert_says(&sheet, &["run clockwise for who looks along the beam"]);
     assert_says(&sheet, &["| cross tilt of the crystal |", "cross tilt +0.1 deg: tip the top"]);
     let ring = |line: &str| {
         let row = sheet.lines().find(|l| l.starts_with(line)).expect("a line");

@@ -27,7 +27,8 @@ pub fn bench(setup: &Setup) -> Result<Page, ConesError> {
     page.heading("Frame");
     page.text(format!(
         "x is horizontal and positive to the left of who stands behind the laser and looks along the beam, y is up; both \
-         count from where the undeviated pump hits. The screen stands across the beam at {} from the crystal. Angles are \
+         count from where the undeviated pump hits. Angles from +x towards +y run clockwise for who looks along the beam (0 deg \
+         left, 90 deg up) and counterclockwise for who looks back at the laser (0 deg right, 90 deg up). The screen stands across the beam at {} from the crystal. Angles are \
          outside the crystal. Indices: {}.",
         setup.screen,
         setup.crystals.iter().map(Facts::id).collect::<Vec<_>>().join(", ")

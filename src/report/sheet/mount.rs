@@ -167,8 +167,9 @@ fn quarter_turn(facts: &Facts<'_>, upright: &Crystal) -> Vec<String> {
             };
             all.push(format!(
                 "A quarter turn off? Turn both polarizers by 45 deg, still crossed, and turn the crystal by {TURN} deg from \
-                 back-reflection. When you {} the light passes {} times from dark to dark; when you {}, {} times. The other way \
+                 back-reflection (the reflected spot moves by {} mm 1000 mm before it). When you {} the light passes {} times from dark to dark; when you {}, {} times. The other way \
                  round: the crystal is rolled by a quarter turn too much.",
+                fixed(spot_per_turn(TURN), 1),
                 words(Actuator::Tilt),
                 fixed(tilt, 1),
                 words(Actuator::CrossTilt),
@@ -187,6 +188,12 @@ fn quarter_turn(facts: &Facts<'_>, upright: &Crystal) -> Vec<String> {
         ));
     }
     all
+}
+
+/// How far the reflected spot moves on a card 1000 mm before a crystal that is turned by so many degrees, mm: by twice the
+/// turn.
+pub(super) fn spot_per_turn(degrees: f64) -> f64 {
+    1000.0 * (2.0 * degrees.to_radians()).tan()
 }
 
 fn stage_words(stage: Stage, turn: Angle) -> Vec<String> {
