@@ -2,11 +2,10 @@
 
 use clap::{Args as ClapArgs, ValueEnum};
 use twincone::job::setup::{Needs, Setup};
-use twincone::matching::{Cones, Status, Want, cones, opening_turn, opinions};
+use twincone::matching::{Cones, Want, cones, opinions};
 use twincone::optics::Crystal;
-use twincone::quantity::Angle;
-use twincone::report::cones::{Advice, crossings_table, rings_table, spread_lines, text};
-use twincone::report::{Answer, Conventions, resolved_job};
+use twincone::report::cones::{crossings_table, rings_table, spread_lines, text};
+use twincone::report::{Answer, Conventions, advice, resolved_job};
 
 use super::failure::Failure;
 use super::options::ExperimentArgs;
@@ -37,15 +36,7 @@ enum Rows {
 pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let setup = args.experiment.setup(output, Needs::ALL)?;
     let found = solve(&setup, &setup.crystals)?;
-    let advice: Vec<Advice> = found
-        .rings
-        .iter()
-        .map(|row| {
-            let turn = (row.status == Status::NoPhaseMatching)
-                .then(|| opening_turn(&setup.crystals[row.crystal], row.photons, row.roles));
-            turn.and_then(|t| t.ok().flatten()).map(|(actuator, change)| (actuator, Angle::radians(change)))
-        })
-        .collect();
+    let advice = advice(&setup, &found);
     let others = opinions(&setup.crystals[0], &setup.photons(), |other| {
         let crystals: Vec<Crystal> = setup.crystals.iter().map(|c| alike(c, other)).collect();
         solve(&setup, &crystals).ok()

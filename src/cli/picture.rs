@@ -12,7 +12,7 @@ use twincone::picture::{
     Sensor, camera, cut_curve, front, notes, parse_axis, phase, png_size, ring_sweep, side,
 };
 use twincone::quantity::{Angle, Length};
-use twincone::report::Conventions;
+use twincone::report::{Conventions, darkness};
 
 use super::failure::Failure;
 use super::options::ExperimentArgs;
@@ -92,7 +92,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
 }
 
 fn draw(args: &Args, setup: &Setup, output: &OutputArgs, form: Format) -> Result<Outcome, Failure> {
-    let warnings = warnings(setup);
+    let warnings = warnings(setup, args.view);
     let drawing = match args.view {
         View::Camera => return photograph(args, setup, output, form, warnings),
         View::Side => side(setup, &rings(setup)?),
@@ -126,9 +126,12 @@ fn as_svg(drawing: &Drawing, form: Format, warnings: Vec<String>) -> Result<Outc
 }
 
 /// What to know before trusting the picture. Filter and waist are used here, so that they are not missed.
-fn warnings(setup: &Setup) -> Vec<String> {
+fn warnings(setup: &Setup, view: View) -> Vec<String> {
     let mut conventions = Conventions::of(setup);
     conventions.uses(&["pump.waist", "filter"]);
+    if matches!(view, View::Side | View::Front) {
+        conventions.uses(&["pump.polarization"]);
+    }
     conventions.warnings
 }
 
@@ -175,6 +178,7 @@ fn photograph(
             let backdrop = Backdrop { png: &image, size: (args.pixels, args.pixels), pump: (middle, middle) };
             let mut lines = notes(setup, &light, &sensor);
             lines.insert(0, "Dark is bright.".into());
+            lines.extend(darkness(setup, &found));
             camera(setup, &found, &sensor, backdrop, &lines).element().into_bytes()
         }
         Format::Text | Format::Json | Format::Html => {
@@ -209,7 +213,8 @@ fn overlay(
         }
     };
     let light = Light::default();
-    let lines = notes(setup, &light, sensor);
+    let mut lines = notes(setup, &light, sensor);
+    lines.extend(darkness(setup, found));
     Ok(camera(setup, found, sensor, Backdrop { png: &png, size, pump }, &lines))
 }
 

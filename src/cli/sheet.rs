@@ -44,7 +44,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     };
     let mut conventions = Conventions::of(&setup);
     conventions.warn_of_dim_phi(&setup);
-    conventions.uses(&["pump.waist", "pump.power", "filter", "collection"]);
+    conventions.uses(&["pump.waist", "pump.power", "pump.polarization", "filter", "collection"]);
     finish(&mut page, &setup, &conventions.lines, args.date.as_deref());
     let text = match form {
         Format::Text => page.markdown(),

@@ -5,6 +5,7 @@ mod crystal;
 mod index;
 mod indices;
 mod medium;
+mod retardation;
 mod surface;
 
 pub use along::{Along, along_axes, along_direction};
@@ -12,5 +13,6 @@ pub use crystal::Crystal;
 pub use index::{IndexRow, index_rows, missing};
 pub use indices::Indices;
 pub use medium::{Medium, Polarization, Wave};
+pub use retardation::retardation;
 pub(crate) use surface::Quadric;
 pub use surface::{Curvature, Normal, Sheet, Surface};

@@ -196,7 +196,9 @@ fn marks(drawing: &mut Drawing, plot: &Plot, setup: &Setup, cones: &Cones) {
             drawing.line((at.0 - dx, at.1 - dy), (at.0 + dx, at.1 + dy), pen(colour, 2.0));
         }
         drawing.reserve(Extent { left: at.0 - 7.0, top: at.1 - 7.0, right: at.0 + 7.0, bottom: at.1 + 7.0 });
-        drawing.label(at, SIZE, label, colour, plot.frame);
+        // marks stand on the brightest places
+        let look = if label.len() < 4 { (SIZE + 3.0, 1.0) } else { (SIZE, 0.75) };
+        drawing.tag(at, look, label, colour, plot.frame);
     };
     let upright = [(7.0, 0.0), (0.0, 7.0)];
     spot(drawing, plot.place(0.0, 0.0), "pump", &upright, INK);

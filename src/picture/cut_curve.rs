@@ -9,7 +9,9 @@ use super::camera::broken;
 use super::drawing::{Anchor, BLUE, Drawing, Extent, GREY, INK, ORANGE, Pen, nice_step, pen};
 use crate::frame::{Cut, Orientation};
 use crate::job::Setup;
-use crate::matching::{Emission, Interaction, Photons, Process, Scan, Status, Target, Triplet, roots};
+use crate::matching::{
+    Actuator, Emission, Interaction, Photons, Process, Scan, Status, Target, Triplet, roots, tuning_turn,
+};
 use crate::material::Optic;
 use crate::optics::Crystal;
 use crate::quantity::{Angle, Wavelength, tidy};
@@ -25,8 +27,8 @@ pub struct CutPoint {
     pub process: Process,
     /// Collinear, or the angle asked for.
     pub target: Target,
-    /// From the smallest on, radians; empty where nothing matches.
-    pub thetas: Vec<f64>,
+    /// theta, or phi where that decides: from the smallest on, radians; empty where nothing matches.
+    pub angles: Vec<f64>,
 }
 
 /// All of them.
@@ -34,6 +36,8 @@ pub struct CutPoint {
 pub struct Curves {
     crystal: Crystal,
     targets: [Target; 2],
+    /// Whether phi decides the phase matching and not theta, as in XY cuts.
+    by_phi: bool,
     points: Vec<CutPoint>,
 }
 
@@ -42,7 +46,8 @@ const COUNT: usize = 73;
 
 impl Curves {
     /// For signals from 1.61 to 2.63 pump wavelengths (shares of the energy 0.62 to 0.38), collinear and at the angle
-    /// that the job's cut is made for, 3 deg without one; normal incidence, along the job's phi.
+    /// that the job's cut is made for, 3 deg without one; normal incidence, along the job's phi (or at its theta against phi
+    /// where a change of theta does nothing in first order).
     ///
     /// # Errors
     /// A sentence: several crystals, or polarizations that the crystal does not have.
@@ -58,17 +63,20 @@ impl Curves {
         let targets = [Target::Collinear, open];
         let shares: Vec<f64> = (0..COUNT).map(|n| 0.62 - 0.24 * n as f64 / (COUNT - 1) as f64).collect();
         let pump = setup.pump();
+        let by_phi = tunes_by_phi(setup, &crystal);
         let at = |share: &f64| {
-            points(&crystal, pump, Wavelength::metres(pump.si() / share), setup.interaction, targets)
+            let signal = Wavelength::metres(pump.si() / share);
+            points((&crystal, by_phi), (pump, signal), setup.interaction, targets)
         };
         let all: Result<Vec<Vec<CutPoint>>, String> = shares.par_iter().map(at).collect();
-        Ok(Self { crystal, targets, points: all?.into_iter().flatten().collect() })
+        Ok(Self { crystal, targets, by_phi, points: all?.into_iter().flatten().collect() })
     }
 
     /// A row per data set, process, target and wavelength.
     #[must_use]
     pub fn csv(&self) -> String {
-        let mut out = String::from("signal_nm,dataset,process,target,theta_deg,extrapolated,status\n");
+        let angle = self.name();
+        let mut out = format!("signal_nm,dataset,process,target,{angle}_deg,extrapolated,status\n");
         for p in &self.points {
             let set = &self.crystal.material.sets()[p.dataset].id;
             let mut row = |theta: String, status: Status| {
@@ -76,12 +84,16 @@ impl Curves {
                 let _ =
                     writeln!(out, "{},{set},{},{target},{theta},false,{status}", p.signal.nm(), p.process);
             };
-            if p.thetas.is_empty() {
+            if p.angles.is_empty() {
                 row(String::new(), Status::NoPhaseMatching);
             }
-            p.thetas.iter().for_each(|t| row(tidy(t.to_degrees()).to_string(), Status::Ok));
+            p.angles.iter().for_each(|t| row(tidy(t.to_degrees()).to_string(), Status::Ok));
         }
         out
+    }
+
+    fn name(&self) -> &'static str {
+        if self.by_phi { "phi" } else { "theta" }
     }
 
     /// Processes in the order in which they appear.
@@ -96,10 +108,23 @@ impl Curves {
     }
 }
 
+/// As [`crate::matching::tuning_turn`] finds it; theta where no cut is given.
+fn tunes_by_phi(setup: &Setup, crystal: &Crystal) -> bool {
+    if !setup.cut.first().is_some_and(|cut| cut.theta) || crystal.material.file.optic == Optic::Uniaxial {
+        return false;
+    }
+    let photons = setup.photons();
+    let turn = Triplet::new(crystal, &photons).ok().and_then(|triplet| {
+        let emission = Emission::new(crystal, photons, &triplet);
+        let roles = *emission.wanted(crystal, setup.interaction).ok()?.first()?;
+        Some(tuning_turn(crystal, photons, &triplet, roles))
+    });
+    turn == Some(Actuator::CrossTilt)
+}
+
 fn points(
-    crystal: &Crystal,
-    pump: Wavelength,
-    signal: Wavelength,
+    (crystal, by_phi): (&Crystal, bool),
+    (pump, signal): (Wavelength, Wavelength),
     interaction: Interaction,
     targets: [Target; 2],
 ) -> Result<Vec<CutPoint>, String> {
@@ -109,8 +134,11 @@ fn points(
         let crystal =
             if dataset == crystal.dataset { crystal.clone() } else { crystal.with_dataset(dataset) };
         let Ok(triplet) = Triplet::new(&crystal, &photons) else { continue };
-        let emission = |theta: f64| {
-            let cut = Cut { theta: Angle::radians(theta), ..crystal.cut };
+        let emission = |angle: f64| {
+            let cut = match by_phi {
+                true => Cut { phi: Angle::radians(angle), ..crystal.cut },
+                false => Cut { theta: Angle::radians(angle), ..crystal.cut },
+            };
             Emission::new(&Crystal { cut, ..crystal.clone() }, photons, &triplet)
         };
         let start = emission(0.5);
@@ -118,9 +146,9 @@ fn points(
             for target in targets {
                 let intervals = if target == Target::Collinear { 180 } else { 90 };
                 let scan = Scan { from: 0.0, to: FRAC_PI_2, intervals };
-                let found = roots(&mut |theta| target.residual(&emission(theta), roles), scan);
-                let thetas = found.into_iter().map(|r| r.x).collect();
-                all.push(CutPoint { signal, dataset, process: start.process(roles), target, thetas });
+                let found = roots(&mut |angle| target.residual(&emission(angle), roles), scan);
+                let angles = found.into_iter().map(|r| r.x).collect();
+                all.push(CutPoint { signal, dataset, process: start.process(roles), target, angles });
             }
         }
     }
@@ -154,88 +182,150 @@ impl Plot {
     }
 }
 
+/// A branch of the curve: at each wavelength (nm) the angle of the job's set and the least and largest of all sets, deg.
+#[derive(Debug, Default, Clone)]
+struct Branch {
+    own: Vec<(f64, f64)>,
+    band: Vec<(f64, f64, f64)>,
+}
+
+/// Neighbouring solutions belong together when they are no farther apart than this, deg.
+const NEXT: f64 = 2.5;
+/// Solutions of two data sets are the same one when they are no farther apart than this, deg.
+const ALIKE: f64 = 6.0;
+
+impl Curves {
+    /// All branches of a process and target, in the order in which they begin.
+    fn branches(&self, process: Process, target: Target) -> Vec<Branch> {
+        let points = || self.points.iter().filter(|p| p.process == process && p.target == target);
+        let mut wavelengths: Vec<f64> = points().map(|p| p.signal.nm()).collect();
+        wavelengths.dedup();
+        let mut all: Vec<Branch> = Vec::new();
+        for nm in wavelengths {
+            let here: Vec<&CutPoint> = points().filter(|p| p.signal.nm() == nm).collect();
+            let own = here.iter().find(|p| p.dataset == self.crystal.dataset && !p.angles.is_empty());
+            let Some(lead) = own.or_else(|| here.iter().find(|p| !p.angles.is_empty())) else { continue };
+            let mut taken: Vec<usize> = Vec::new();
+            for angle in lead.angles.iter().map(|a| a.to_degrees()) {
+                let nearest = |p: &&&CutPoint| {
+                    let others = p.angles.iter().map(|a| a.to_degrees());
+                    others.min_by(|a, b| (a - angle).abs().total_cmp(&(b - angle).abs()))
+                };
+                let alike = here.iter().filter_map(|p| nearest(&p)).filter(|a| (a - angle).abs() < ALIKE);
+                let (low, high) = alike.fold((angle, angle), |(low, high), a| (low.min(a), high.max(a)));
+                let ends = |branch: &Branch| {
+                    let (last, low, high) = *branch.band.last()?;
+                    let gone = (nm - last).abs() > 3.0 * (nm / COUNT as f64);
+                    (!gone).then(|| {
+                        (low - angle)
+                            .abs()
+                            .min((high - angle).abs())
+                            .min(branch.own.last().map_or(f64::INFINITY, |o| (o.1 - angle).abs()))
+                    })
+                };
+                let next = (0..all.len())
+                    .filter(|n| !taken.contains(n))
+                    .filter_map(|n| Some((n, ends(&all[n])?)))
+                    .min_by(|a, b| a.1.total_cmp(&b.1))
+                    .filter(|(_, away)| *away < NEXT);
+                let at = next.map_or(all.len(), |(n, _)| n);
+                if at == all.len() {
+                    all.push(Branch::default());
+                }
+                taken.push(at);
+                all[at].band.push((nm, low, high));
+                if own.is_some() {
+                    all[at].own.push((nm, angle));
+                }
+            }
+        }
+        all
+    }
+}
+
 /// The figure.
 #[must_use]
 pub fn cut_curve(setup: &Setup, curves: &Curves) -> Drawing {
     let mut d = Drawing::new(760.0, 640.0, "Cut angle against signal wavelength");
-    let thetas = || curves.points.iter().flat_map(|p| p.thetas.iter().map(|t| t.to_degrees()));
-    let (low, high) = thetas().fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), t| (l.min(t), h.max(t)));
-    let (low, high) = if low <= high { (low, high) } else { (0.0, 90.0) };
-    let margin = 0.08 * (high - low).max(1.0);
-    let pump = setup.pump().nm();
-    let frame = Extent { left: 70.0, top: 40.0, right: 730.0, bottom: 520.0 };
-    let plot = Plot { frame, nm: (pump / 0.62, pump / 0.38), deg: (low - margin, high + margin) };
-    axes(&mut d, &plot);
-    d.clip(frame);
-    let mut labels = Vec::new();
+    let mut lines = Vec::new();
     for (n, process) in curves.processes().into_iter().enumerate() {
         for target in curves.targets {
-            let colour = if target == Target::Collinear { BLUE } else { ORANGE };
-            let dash = match (target == Target::Collinear, n) {
-                (true, 0) => "",
-                (true, _) => "12 4",
-                (false, 0) => "6 3",
-                (false, _) => "2 3",
-            };
-            if target.needs_two_rings() && n > 0 {
-                // crossings belong to both processes
-                continue;
-            }
-            band(&mut d, &plot, curves, process, target, colour);
-            let own = own_line(curves, process, target);
-            let placed: Vec<_> = own.iter().map(|(nm, deg)| plot.at(*nm, *deg)).collect();
-            if placed.len() > 1 {
-                d.path(&placed, Pen { colour, width: 2.0, dash }, false);
-                let share = if n == 0 { 0.2 } else { 0.8 };
-                let point = placed[(share * placed.len() as f64) as usize];
-                labels.push((point, format!("{process}, {}", target_words(target)), colour));
+            // crossings belong to both processes
+            if !(target.needs_two_rings() && n > 0) {
+                lines.push((n, process, target, curves.branches(process, target)));
             }
         }
+    }
+    let (mut nm, mut deg) = ([f64::INFINITY, f64::NEG_INFINITY], [f64::INFINITY, f64::NEG_INFINITY]);
+    for (at, low, high) in lines.iter().flat_map(|l| &l.3).flat_map(|branch| branch.band.iter().copied()) {
+        nm = [nm[0].min(at), nm[1].max(at)];
+        deg = [deg[0].min(low), deg[1].max(high)];
+    }
+    let pump = setup.pump().nm();
+    if nm[0] >= nm[1] {
+        nm = [pump / 0.62, pump / 0.38];
+    }
+    if deg[0] > deg[1] {
+        deg = [0.0, 90.0];
+    }
+    let margin = 0.08 * (deg[1] - deg[0]).max(1.0);
+    let frame = Extent { left: 70.0, top: 40.0, right: 730.0, bottom: 520.0 };
+    let plot = Plot { frame, nm: (nm[0], nm[1]), deg: (deg[0] - margin, deg[1] + margin) };
+    axes(&mut d, &plot, curves.name(), 2.0 * pump);
+    d.clip(frame);
+    let mut labels = Vec::new();
+    for (n, process, target, branches) in &lines {
+        let collinear = *target == Target::Collinear;
+        let colour = if collinear { BLUE } else { ORANGE };
+        let dash = match (collinear, n) {
+            (true, 0) => "",
+            (true, _) => "12 4",
+            (false, 0) => "6 3",
+            (false, _) => "2 3",
+        };
+        for branch in branches {
+            let low = branch.band.iter().map(|b| plot.at(b.0, b.1));
+            let high = branch.band.iter().rev().map(|b| plot.at(b.0, b.2));
+            let outline: Vec<_> = low.chain(high).collect();
+            if outline.len() > 3 {
+                d.shape(&outline, colour, 0.18);
+            }
+            let placed: Vec<_> = branch.own.iter().map(|(nm, deg)| plot.at(*nm, *deg)).collect();
+            if placed.len() > 1 {
+                d.path(&placed, Pen { colour, width: 2.0, dash }, false);
+            }
+        }
+        // the longest line carries the words
+        let longest = branches.iter().map(|branch| &branch.own).max_by_key(|own| own.len());
+        if let Some(own) = longest.filter(|own| own.len() > 1) {
+            let share = if *n == 0 { 0.2 } else { 0.8 };
+            let (nm, deg) = own[(share * own.len() as f64) as usize];
+            labels.push((plot.at(nm, deg), format!("{process}, {}", target_words(*target)), colour));
+        }
+    }
+    let cut = if curves.by_phi { curves.crystal.cut.phi } else { curves.crystal.cut.theta }.degrees();
+    let here = plot.at(setup.photons().signal.nm(), cut);
+    let given = setup.cut.first().is_some_and(|c| c.theta || c.target.is_some());
+    let marked =
+        given && (frame.left..=frame.right).contains(&here.0) && (frame.top..=frame.bottom).contains(&here.1);
+    if marked {
+        d.circle(here, 5.0, pen(INK, 1.8));
     }
     d.unclip();
     for (point, text, colour) in labels {
         d.label(point, 12.0, &text, colour, frame);
     }
+    if marked {
+        d.label(here, 12.0, "the job's cut", INK, frame);
+    }
+    if lines.iter().all(|l| l.3.is_empty()) {
+        d.text((400.0, 280.0), 14.0, Anchor::Middle, "nothing is phase matched here at any angle");
+    }
     captions(&mut d, setup, curves);
     d
 }
 
-/// First theta of the job's own data set at each wavelength.
-fn own_line(curves: &Curves, process: Process, target: Target) -> Vec<(f64, f64)> {
-    let own =
-        |p: &&CutPoint| p.dataset == curves.crystal.dataset && p.process == process && p.target == target;
-    let points = curves.points.iter().filter(own);
-    points.filter_map(|p| Some((p.signal.nm(), p.thetas.first()?.to_degrees()))).collect()
-}
-
-/// From the least to the largest first theta of all data sets.
-fn band(
-    d: &mut Drawing,
-    plot: &Plot,
-    curves: &Curves,
-    process: Process,
-    target: Target,
-    colour: &'static str,
-) {
-    let mut rows: Vec<(f64, f64, f64)> = Vec::new();
-    for p in curves.points.iter().filter(|p| p.process == process && p.target == target) {
-        let Some(theta) = p.thetas.first().map(|t| t.to_degrees()) else { continue };
-        match rows.last_mut() {
-            Some(last) if last.0 == p.signal.nm() => {
-                (last.1, last.2) = (last.1.min(theta), last.2.max(theta))
-            }
-            _ => rows.push((p.signal.nm(), theta, theta)),
-        }
-    }
-    let low = rows.iter().map(|r| plot.at(r.0, r.1));
-    let high = rows.iter().rev().map(|r| plot.at(r.0, r.2));
-    let outline: Vec<_> = low.chain(high).collect();
-    if outline.len() > 3 {
-        d.shape(&outline, colour, 0.18);
-    }
-}
-
-fn axes(d: &mut Drawing, plot: &Plot) {
+fn axes(d: &mut Drawing, plot: &Plot, angle: &str, degenerate: f64) {
     let f = plot.frame;
     let step = nice_step(plot.nm.1 - plot.nm.0, 8.0);
     let mut nm = (plot.nm.0 / step).ceil() * step;
@@ -259,10 +349,13 @@ fn axes(d: &mut Drawing, plot: &Plot) {
         true,
     );
     d.text((0.5 * (f.left + f.right), f.bottom + 38.0), 12.0, Anchor::Middle, "signal wavelength in nm");
-    d.text((12.0, 24.0), 12.0, Anchor::Start, "theta in deg (face normal to Z, normal incidence)");
-    let (x, _) = plot.at(2.0 * plot.nm.0 * 0.62, plot.deg.0);
-    d.line((x, f.top), (x, f.bottom), pen(GREY, 1.2));
-    d.label((x, f.bottom - 4.0), 11.5, "degenerate", GREY, f);
+    let meaning = if angle == "phi" { "azimuth of the face normal from X" } else { "face normal to Z" };
+    d.text((12.0, 24.0), 12.0, Anchor::Start, &format!("{angle} in deg ({meaning}, normal incidence)"));
+    let (x, _) = plot.at(degenerate, plot.deg.0);
+    if (f.left..=f.right).contains(&x) {
+        d.line((x, f.top), (x, f.bottom), pen(GREY, 1.2));
+        d.label((x, f.bottom - 4.0), 11.5, "degenerate", GREY, f);
+    }
 }
 
 fn captions(d: &mut Drawing, setup: &Setup, curves: &Curves) {
@@ -281,10 +374,11 @@ fn captions(d: &mut Drawing, setup: &Setup, curves: &Curves) {
         format!("bands: from the lowest to the highest of all sets ({own}, {})", used.join(", "))
     };
     let text = format!(
-        "{}: lines for data set {own}; {spread}. Pump {:.3} nm, phi {:.3} deg. Each set is shown where it is valid.",
+        "{}: lines for data set {own}; {spread}. Pump {:.3} nm, {} {:.3} deg. Each set is shown where it is valid.",
         material.id,
         setup.pump().nm(),
-        curves.crystal.cut.phi.degrees()
+        if curves.by_phi { "theta" } else { "phi" },
+        if curves.by_phi { curves.crystal.cut.theta } else { curves.crystal.cut.phi }.degrees()
     );
     for (n, line) in broken(&text, 108).iter().enumerate() {
         d.text((12.0, 586.0 + 17.0 * n as f64), 12.0, Anchor::Start, line);

@@ -240,6 +240,18 @@ impl Drawing {
     /// A label near a point, at the first of many places about it that is free within `frame`; where none is, the one
     /// that covers least. A thin line leads to labels that stand off; what lies under a label shines through faintly.
     pub fn label(&mut self, point: (f64, f64), size: f64, text: &str, colour: &'static str, frame: Extent) {
+        self.tag(point, (size, 0.75), text, colour, frame);
+    }
+
+    /// A label with a size and a background of this opacity.
+    pub fn tag(
+        &mut self,
+        point: (f64, f64),
+        (size, opacity): (f64, f64),
+        text: &str,
+        colour: &'static str,
+        frame: Extent,
+    ) {
         let mut best: Option<(f64, (f64, f64), Anchor, f64)> = None;
         for ring in 0..12 {
             let away = size * (0.9 + 0.9 * f64::from(ring));
@@ -270,12 +282,15 @@ impl Drawing {
         if away > 2.5 * size {
             self.line(point, (at.0, at.1 - 0.35 * size), pen(colour, 0.6));
         }
+        // letters have a white edge of their own: the background need not reach as far as the widest font would
         let b = box_of(at, size, anchor, text);
-        self.shape(
-            &[(b.left, b.top), (b.right, b.top), (b.right, b.bottom), (b.left, b.bottom)],
-            "#ffffff",
-            0.75,
-        );
+        let spare = 0.12 * (b.right - b.left);
+        let (left, right) = match anchor {
+            Anchor::Start => (b.left, b.right - spare),
+            Anchor::Middle => (b.left + 0.5 * spare, b.right - 0.5 * spare),
+            Anchor::End => (b.left + spare, b.right),
+        };
+        self.shape(&[(left, b.top), (right, b.top), (right, b.bottom), (left, b.bottom)], "#ffffff", opacity);
         self.coloured_text(at, size, anchor, text, colour);
     }
 
@@ -292,6 +307,16 @@ impl Drawing {
                 return;
             }
         }
+    }
+
+    /// Another drawing below this one, as one; labels of both keep where they are.
+    #[must_use]
+    pub fn above(mut self, other: &Self) -> Self {
+        let _ =
+            write!(self.body, "<g transform=\"translate(0 {})\">\n{}</g>\n", short(self.height), other.body);
+        self.height += other.height;
+        self.width = self.width.max(other.width);
+        self
     }
 
     /// The drawing as an element that stands in a page by itself or within HTML.

@@ -110,8 +110,9 @@ impl Exposure {
         let pitch = self.sensor.pitch();
         let steepest = |glow: &Glow| {
             let Some(wave) = glow.waves.get(glow.waves.len() / 2) else { return 0.0 };
-            let lit = glow.lit(&self.sensor, wave);
-            lit.into_iter().map(|(x, y)| glow.steepness(wave, &self.sensor, x, y)).fold(0.0, f64::max)
+            let steep =
+                |((x, y), left): &((f64, f64), f64)| left * glow.steepness(wave, &self.sensor, *x, *y);
+            glow.details.iter().map(steep).fold(0.0, f64::max)
         };
         let most = self.glows.iter().map(steepest).fold(0.0, f64::max);
         ((most * pitch / SAMPLE).ceil() as usize).clamp(1, 32)

@@ -2,6 +2,7 @@
 
 use nalgebra::{Matrix3, Vector3};
 
+use super::fewest::{Counts, Spread, detail, fewest, line};
 use super::light::{Filter, Light, centre, samples};
 use super::sensor::Sensor;
 use crate::frame::{Orientation, Tangential};
@@ -14,6 +15,12 @@ use crate::quantity::{Angle, Wavelength};
 /// One photon of one process in one crystal.
 #[derive(Debug)]
 pub(super) struct Glow {
+    /// Index of the crystal, from 0.
+    pub crystal: usize,
+    /// Sheets of the process, with the photon as signal.
+    pub roles: Roles,
+    /// Nominal wavelength of the photon.
+    pub nominal: Wavelength,
     /// Lab components of the mount's u, v and w.
     pub axes: [Vector3<f64>; 3],
     /// Half the crystal's length, m.
@@ -22,6 +29,8 @@ pub(super) struct Glow {
     pub strength: Strength,
     /// Wavelengths and pump directions.
     pub waves: Vec<Wave>,
+    /// Places with light, and how much of the finest detail of sinc^2 is left there by filter and pump, 0 to 1.
+    pub details: Vec<((f64, f64), f64)>,
 }
 
 /// One wavelength at one direction of the pump.
@@ -86,7 +95,7 @@ pub(super) fn glows(
     sampling: Sampling,
 ) -> Result<Vec<Glow>, GlowError> {
     let mut all: Vec<Glow> = Vec::new();
-    for crystal in &setup.crystals {
+    for (index, crystal) in setup.crystals.iter().enumerate() {
         let mut seen: Vec<(Roles, u64)> = Vec::new();
         for signal in setup.signals() {
             let photons = Photons::new(setup.pump(), signal)
@@ -105,6 +114,7 @@ pub(super) fn glows(
                 if !seen.contains(&key) {
                     seen.push(key);
                     let source = Source {
+                        index,
                         crystal,
                         roles,
                         filters,
@@ -133,6 +143,7 @@ pub enum GlowError {
 
 /// One photon of one process before it is sampled.
 struct Source<'a> {
+    index: usize,
     crystal: &'a Crystal,
     roles: Roles,
     filters: &'a [Filter],
@@ -155,18 +166,17 @@ impl Source<'_> {
         let nominal = Emission::of(self.crystal, photons)?;
         let [u, v] = nominal.placement.face_axes();
         let mut glow = Glow {
+            crystal: self.index,
+            roles: self.roles,
+            nominal: self.nominal,
             axes: [u, v, u.cross(&v)],
             half_length: 0.5 * nominal.length,
             strength: self.strength(&nominal, sensor),
             waves: Vec::new(),
+            details: Vec::new(),
         };
-        let triplet = Triplet::new(self.crystal, &photons)?;
-        let angles = self.pump_angles(light, sensor, &glow, &triplet, photons);
-        let count = match sampling.wavelengths {
-            _ if self.filters.is_empty() => 1,
-            Some(count) => count.max(1),
-            None => self.count(sensor, &glow)?,
-        };
+        let Counts { pump, wavelengths: count } = self.counts(light, sensor, sampling, &mut glow)?;
+        let angles = self.pump_angles(light, pump);
         let wavelengths = samples(self.filters, self.nominal, count);
         for (wavelength, share) in wavelengths {
             let photons = self.photons(wavelength)?;
@@ -197,66 +207,110 @@ impl Source<'_> {
         Strength { half_field, values }
     }
 
-    /// How many wavelengths keep the phase between two of them below [`PHASE_STEP`] wherever there is light.
-    fn count(&self, sensor: &Sensor, glow: &Glow) -> Result<usize, GlowError> {
-        let mut waves = Vec::new();
-        for (wavelength, _) in samples(self.filters, self.nominal, 3) {
-            let Some(mismatch) = Emission::of(self.crystal, self.photons(wavelength)?)?.mismatch(self.roles)
-            else {
-                return Ok(FEWEST);
-            };
-            waves.push(Wave { mismatch, k0: wavelength.wavenumber(), weight: 1.0 });
-        }
-        let change = |(x, y)| {
-            Some((glow.phase(&waves[0], sensor, x, y)? - glow.phase(&waves[2], sensor, x, y)?).abs())
+    /// How many wavelengths and pump directions; how fine the details of the picture are goes into the glow.
+    fn counts(
+        &self,
+        light: &Light,
+        sensor: &Sensor,
+        sampling: Sampling,
+        glow: &mut Glow,
+    ) -> Result<Counts, GlowError> {
+        let photons = self.photons(self.centre)?;
+        let wave = |crystal: &Crystal, photons: Photons| -> Result<Option<Wave>, GlowError> {
+            let mismatch = Emission::of(crystal, photons)?.mismatch(self.roles);
+            let k0 = photons.signal.wavenumber();
+            Ok(mismatch.map(|mismatch| Wave { mismatch, k0, weight: 1.0 }))
         };
-        let most = glow.lit(sensor, &waves[1]).into_iter().filter_map(change).fold(0.0, f64::max);
-        // the outer two of three midpoints lie two thirds of the whole range apart
-        Ok(((1.5 * most / PHASE_STEP).ceil() as usize).clamp(FEWEST, 401) | 1)
+        let fewest_of_all = Counts { pump: [0, 0], wavelengths: 1 };
+        let Some(straight) = wave(self.crystal, photons)? else { return Ok(fewest_of_all) };
+        // three midpoints of the filter's window, and one standard deviation of the pump either way about both axes
+        let mut colours = Vec::new();
+        for (wavelength, _) in samples(self.filters, self.nominal, 3) {
+            colours.push(wave(self.crystal, self.photons(wavelength)?)?);
+        }
+        let deviation = light.waist.map_or(0.0, |waist| 1.0 / (waist.si() * self.pump.wavenumber()));
+        let mut turned = Vec::new();
+        if deviation > 0.0 {
+            for (x, y) in [(1.0, 0.0), (-1.0, 0.0), (0.0, 1.0), (0.0, -1.0)] {
+                let crystal = self.crystal_for(Vector3::new(x * deviation, y * deviation, 1.0));
+                turned.push(wave(&crystal, photons)?);
+            }
+        }
+        let change = |wave: &Option<Wave>, x: f64, y: f64| {
+            Some(glow.phase(wave.as_ref()?, sensor, x, y)? - glow.phase(&straight, sensor, x, y)?)
+        };
+        let mut spreads = Vec::new();
+        let (mut bent, mut steepest) = (false, 0.0f64);
+        for (x, y) in glow.lit(sensor, &straight) {
+            let by: Vec<f64> = turned.iter().map(|w| change(w, x, y).map_or(0.0, f64::abs)).collect();
+            let pump = if by.len() == 4 { [by[0].max(by[1]), by[2].max(by[3])] } else { [0.0; 2] };
+            // phi = b s + q s^2 at s = -1/3, 0, 1/3 of the window
+            let mut filter = 0.0;
+            if let [Some(low), Some(middle), Some(high)] =
+                [0, 1, 2].map(|n| colours.get(n).and_then(|w| change(w, x, y)))
+            {
+                let (b, q) = (1.5 * (high - low), 4.5 * (high + low - 2.0 * middle));
+                bent |= q.abs() > 0.3 * b.abs();
+                steepest = steepest.max(b.abs() + q.abs());
+                filter = b.abs();
+            }
+            spreads.push(((x, y), Spread { pump, filter }));
+        }
+        let alone = |most: f64| {
+            // trapezoidal sum: exact but for exp(-(2 pi/h - 2 phase)^2/2) in units of the standard deviation
+            let step = std::f64::consts::TAU / (2.0 * most + 5.0);
+            ((REACH / step).ceil() as usize).clamp(2, 40)
+        };
+        let most = |axis: usize| spreads.iter().fold(0.0, |m: f64, (_, s)| m.max(s.pump[axis]));
+        // phases of two neighbouring wavelengths less than PHASE_STEP apart wherever there is light
+        let by_itself = ((steepest / PHASE_STEP).ceil() as usize).clamp(FEWEST, 401) | 1;
+        let given = sampling.wavelengths.map(|count| count.max(1));
+        let mut counts = Counts {
+            pump: if turned.is_empty() { [0, 0] } else { [alone(most(0)), alone(most(1))] },
+            wavelengths: if self.filters.is_empty() { 1 } else { given.unwrap_or(by_itself) },
+        };
+        let window = |count: usize| {
+            let all = samples(self.filters, self.nominal, count);
+            let ends = all.first().zip(all.last()).map(|(a, b)| (a.0.si(), b.0.si()));
+            let (first, last) = ends.unwrap_or((0.0, 1.0));
+            let span = (last - first).max(1e-15) / (1.0 - 1.0 / count.max(2) as f64);
+            all.iter()
+                .map(|(w, weight)| ((w.si() - first) / span - 0.5 + 0.5 / count as f64, *weight))
+                .collect()
+        };
+        if !turned.is_empty() && !self.filters.is_empty() && !bent {
+            let step = spreads.len().div_ceil(12).max(1);
+            let some: Vec<Spread> = spreads.iter().step_by(step).map(|(_, spread)| *spread).collect();
+            let cost = |c: &Counts| (2 * c.pump[0] + 1) * (2 * c.pump[1] + 1) * c.wavelengths;
+            if let Some(few) = fewest(&some, REACH, window, given).filter(|few| cost(few) < cost(&counts)) {
+                counts = few;
+            }
+        }
+        let colours = if self.filters.is_empty() { Vec::new() } else { window(101) };
+        let step = spreads.len().div_ceil(60).max(1);
+        glow.details = spreads
+            .iter()
+            .step_by(step)
+            .map(|(place, spread)| (*place, if bent { 1.0 } else { detail(spread, REACH, &colours) }))
+            .collect();
+        Ok(counts)
     }
 
     /// Directions of the pump as crystals that are turned the other way, with their shares of the power.
     ///
     /// The field of a waist w has the angular spectrum exp(-q^2 w^2/4), its power exp(-q^2 w^2/2): a Gaussian of
     /// standard deviation 1/w in each component.
-    fn pump_angles(
-        &self,
-        light: &Light,
-        sensor: &Sensor,
-        glow: &Glow,
-        triplet: &Triplet,
-        photons: Photons,
-    ) -> Vec<(Crystal, f64)> {
+    fn pump_angles(&self, light: &Light, [nx, ny]: [usize; 2]) -> Vec<(Crystal, f64)> {
         let Some(waist) = light.waist else { return vec![(self.crystal.clone(), 1.0)] };
+        if nx == 0 || ny == 0 {
+            return Vec::new();
+        }
         let deviation = 1.0 / (waist.si() * self.pump.wavenumber());
-        let turned = |x: f64, y: f64| self.crystal_for(Vector3::new(x, y, 1.0));
-        let wave = |crystal: &Crystal| {
-            let mismatch = Emission::new(crystal, photons, triplet).mismatch(self.roles)?;
-            Some(Wave { mismatch, k0: photons.signal.wavenumber(), weight: 1.0 })
-        };
-        let Some(straight) = wave(self.crystal) else { return Vec::new() };
-        let lit = glow.lit(sensor, &straight);
-        let count = |crystal: Crystal| {
-            let moved = wave(&crystal);
-            let phase = |(x, y): &(f64, f64)| {
-                let moved = glow.phase(moved.as_ref()?, sensor, *x, *y)?;
-                Some((moved - glow.phase(&straight, sensor, *x, *y)?).abs())
-            };
-            let most = lit.iter().filter_map(phase).fold(0.0, f64::max);
-            // trapezoidal sum: exact but for exp(-(2 pi/h - 2 phase)^2/2) in units of the standard deviation
-            let step = std::f64::consts::TAU / (2.0 * most + 5.0);
-            ((REACH / step).ceil() as usize).clamp(2, 15)
-        };
-        let (nx, ny) = (count(turned(deviation, 0.0)), count(turned(0.0, deviation)));
-        let line = |n: usize| {
-            let places = (-(n as i64)..=n as i64).map(move |j| REACH * j as f64 / n as f64);
-            places.map(|t| (t, (-0.5 * t * t).exp())).collect::<Vec<_>>()
-        };
         let mut all: Vec<(Crystal, f64)> = Vec::new();
-        for (y, wy) in line(ny) {
-            for (x, wx) in line(nx) {
+        for (y, wy) in line(ny, REACH) {
+            for (x, wx) in line(nx, REACH) {
                 if x.hypot(y) <= REACH {
-                    all.push((turned(x * deviation, y * deviation), wx * wy));
+                    all.push((self.crystal_for(Vector3::new(x * deviation, y * deviation, 1.0)), wx * wy));
                 }
             }
         }
@@ -294,6 +348,16 @@ impl Glow {
     pub fn phase(&self, wave: &Wave, sensor: &Sensor, x: f64, y: f64) -> Option<f64> {
         let q = self.tangential(wave.k0, x, y, sensor.optics.scale().si());
         wave.mismatch.at(q).map(|s| s.value * self.half_length)
+    }
+
+    /// Brightness at a place, in units of its own: the sum over wavelengths and pump directions, with |d_eff|^2 and solid angle.
+    pub fn brightness(&self, x: f64, y: f64, scale: f64) -> f64 {
+        let one = |wave: &Wave| {
+            let q = self.tangential(wave.k0, x, y, scale);
+            let phase = wave.mismatch.at(q).map(|s| s.value * self.half_length);
+            phase.map_or(0.0, |p| wave.weight * if p.abs() < 1e-9 { 1.0 } else { (p.sin() / p).powi(2) })
+        };
+        self.strength.at(x, y) * self.geometry(x, y, scale) * self.waves.iter().map(one).sum::<f64>()
     }
 
     /// Places of a grid near which sinc^2 may be large.

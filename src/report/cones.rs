@@ -10,6 +10,7 @@ use crate::quantity::{Angle, Length};
 
 use super::angles::{degrees, fixed, grid, or_dash, prose, rounded, signed};
 use super::conventions::room_words;
+use super::darkness::{Advice, Opening, turn_advice};
 use super::spread;
 use super::table::{Column, Rows, Table, column};
 
@@ -151,9 +152,6 @@ fn place(direction: Option<Direction>, screen: Length, out: &mut impl Rows) {
         .for_each(|value| out.clean(value));
 }
 
-/// A turn that begins to give light, for each ring that has none.
-pub type Advice = Option<(Actuator, Angle)>;
-
 /// For people; `advice` has an entry for each ring.
 #[must_use]
 pub fn text(setup: &Setup, cones: &Cones, advice: &[Advice]) -> String {
@@ -179,7 +177,7 @@ pub fn text(setup: &Setup, cones: &Cones, advice: &[Advice]) -> String {
     let rows: Vec<Vec<String>> = cones.rings.iter().map(|row| ring_cells(setup, row)).collect();
     out.push_str(&grid(&header, &rows));
     for (row, advice) in cones.rings.iter().zip(advice) {
-        out.push_str(&prose(&ring_words(setup, row, *advice)));
+        out.push_str(&prose(&ring_words(setup, row, advice)));
     }
     out.push('\n');
     if cones.crossings.is_empty() {
@@ -252,7 +250,7 @@ fn ring_cells(setup: &Setup, row: &RingRow) -> Vec<String> {
 }
 
 /// On which side a ring lies and how its light is polarized; or what to do where there is none.
-fn ring_words(setup: &Setup, row: &RingRow, advice: Advice) -> String {
+pub(super) fn ring_words(setup: &Setup, row: &RingRow, advice: &[Opening]) -> String {
     let name = ring_name(setup, row);
     match &row.ring {
         Ok(ring) => {
@@ -321,18 +319,6 @@ fn ring_words(setup: &Setup, row: &RingRow, advice: Advice) -> String {
             }
             (status, _) => format!("  The {name}: {status}.\n"),
         },
-    }
-}
-
-/// Which way to turn where there is no light.
-fn turn_advice(setup: &Setup, index: usize, advice: Advice) -> String {
-    match advice {
-        Some((actuator, turn)) => {
-            let key = if actuator == Actuator::CrossTilt { "cross tilt" } else { "tilt" };
-            let words = room_words(&setup.crystals[index], actuator, turn);
-            format!("A {key} changed by {} deg begins to give a ring: {words}.", signed(turn.degrees(), 3))
-        }
-        None => "No turn within 30 deg gives a ring.".into(),
     }
 }
 

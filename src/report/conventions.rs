@@ -9,6 +9,8 @@ use crate::quantity::{Angle, Wavelength};
 
 use super::angles::{fixed, rounded};
 
+use nalgebra::Vector3;
+
 /// Lines for people, ids for scripts.
 #[derive(Debug, Clone, Default)]
 pub struct Conventions {
@@ -203,11 +205,17 @@ fn caution(pump: Wavelength) -> String {
 /// A turn in the words of a room: which way, seen from where, for the crystal's actual roll.
 #[must_use]
 pub fn room_words(crystal: &Crystal, actuator: Actuator, turn: Angle) -> String {
+    axis_words(crystal.turning_axis(actuator == Actuator::CrossTilt), turn)
+}
+
+/// A right-handed turn about a lab axis across the beam in the words of a room.
+#[must_use]
+pub fn axis_words(axis: Vector3<f64>, turn: Angle) -> String {
     let size = format!("{} deg", rounded(turn.degrees().abs(), 3));
     if turn.degrees().abs() < 5e-4 {
         return "leave the mount as it is".into();
     }
-    let axis = crystal.turning_axis(actuator == Actuator::CrossTilt) * turn.si().signum();
+    let axis = axis * turn.si().signum();
     if axis.y.abs() > 0.999 {
         let sense = if axis.y > 0.0 { "counterclockwise" } else { "clockwise" };
         return format!("turn the mount {sense} seen from above by {size}");

@@ -5,6 +5,7 @@ pub mod compensate;
 pub mod cones;
 mod conventions;
 pub mod cut;
+mod darkness;
 mod export;
 pub mod fit;
 pub mod index;
@@ -17,7 +18,8 @@ pub mod tilt;
 pub mod tolerance;
 pub mod twin;
 
-pub use conventions::{Conventions, room_words};
+pub use conventions::{Conventions, axis_words, room_words};
+pub use darkness::{Advice, Opening, advice, darkness};
 pub use export::{Lead, Lines, csv, json};
 pub use table::{Cell, Column, Rows, Table};
 

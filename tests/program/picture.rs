@@ -118,6 +118,48 @@ fn geometry_is_drawn_with_its_signs() {
     );
 }
 
+#[test]
+fn every_crystal_of_a_stack_is_drawn() {
+    let line = "picture --job examples/two-crystals.toml --set crystal.2.gap_before=5mm";
+    let side = twincone(&format!("{line} --view side")).answer();
+    assert_says(&side, &["Crystal 1 (first)", "Crystal 2 (second)", "5 mm of air"]);
+    // roll 90 deg: the second is seen in the vertical plane
+    assert_says(&side, &["+x is up: seen from above", "+y is up: seen from the right"]);
+    let front = twincone(&format!("{line} --view front")).answer();
+    assert_eq!(front.matches("cross tilt<").count(), 2);
+}
+
+#[test]
+fn the_pump_is_drawn_as_the_job_polarizes_it() {
+    let side = twincone(&format!("{CROSSED} --view side --pump-polarization 30deg")).answer();
+    // the process takes what is horizontal: cos^2 30 deg
+    assert_says(&side, &["stands at 30.0 deg", "as the job gives it", "takes 75 % of its power"]);
+    assert_says(&side, &["pump E 75 % in this plane"]);
+    let matched = twincone(&format!("{CROSSED} --view side")).answer();
+    assert_says(&matched, &["pump E in this plane", "chosen to drive the crystals"]);
+    let round = format!(
+        "{CROSSED} --view front --set pump.polarization.angle=45deg --set pump.polarization.phase=90deg"
+    );
+    assert_says(&twincone(&round).answer(), &["is elliptical, 50 % of its power vertical", ">taken<"]);
+}
+
+/// Where phi decides, the curve is phi: it passes through the cut of the example, which gives 1.942 deg.
+#[test]
+fn the_cut_curve_of_an_xy_cut_is_phi_and_holds_all_branches() {
+    let csv = twincone("picture --view cut --job examples/biaxial.toml -f csv").answer();
+    assert!(csv.starts_with("signal_nm,dataset,process,target,phi_deg,"), "{csv}");
+    let at = |target: &str| -> f64 {
+        let head = format!("810,kato-1994,fast -> slow + slow,{target},");
+        let row = csv.lines().find_map(|line| line.strip_prefix(&head)).unwrap_or_else(|| panic!("{head}"));
+        row.split(',').next().and_then(|t| t.parse().ok()).expect("phi")
+    };
+    // at 31.5 deg the ring is open by 1.942 deg: between collinear and a half angle of 3 deg
+    let (closed, open) = (at("collinear"), at("half angle 3 deg"));
+    assert!((31.5 - closed) * (31.5 - open) < 0.0, "{closed} {open}");
+    let svg = twincone("picture --view cut --job examples/biaxial.toml").answer();
+    assert_says(&svg, &["phi in deg", "the job's cut"]);
+}
+
 /// Published sets for 405 nm -> 810 nm, type II, collinear, in BBO: 41.793 (kato-1986), 41.421 (eimerl-1987) and
 /// 41.610 deg (tamosauskas-2018), computed independently.
 #[test]

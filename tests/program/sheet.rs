@@ -94,3 +94,115 @@ fn a_sheet_needs_a_length_and_a_kind() {
         &["Markdown"],
     );
 }
+
+const STACK: &str =
+    "--job examples/two-crystals.toml --set crystal.2.tilt=0.3deg --set crystal.2.gap_before=5mm";
+
+#[test]
+fn every_mount_of_a_stack_has_its_steps() {
+    let sheet = twincone(&format!("sheet --kind bench {STACK} --set crystal.2.reversed=about-beam")).answer();
+    assert_says(&sheet, &["Mount crystal 1 (first)", "Mount crystal 2 (second)", "5 mm of air"]);
+    // at roll 90 deg Z leans up, turned about the beam down; the reflection turns by twice the tilt: 1000 tan 0.6 deg
+    assert_says(&sheet, &["leans down (-y)", "turned by half a turn about the beam"]);
+    assert_says(&sheet, &["10.47 mm down (-y)", "tip the top of the mount towards the laser by 0.3 deg"]);
+    assert_says(&sheet, &["Rings against tilt of crystal 1", "Rings against tilt of crystal 2"]);
+    let order = twincone(&format!("sheet --kind order {STACK}")).answer();
+    assert_says(
+        &order,
+        &["For crystal 1 (first) and crystal 2 (second): 2 equal pieces", "| quantity | 2 |"],
+    );
+    let order = twincone(&format!("sheet --kind order {STACK} --set crystal.2.length=0.6mm")).answer();
+    assert_says(&order, &["For crystal 1 (first): one piece", "For crystal 2 (second): one piece", "0.6 mm"]);
+}
+
+#[test]
+fn cross_tilts_are_dialled_by_the_spot_and_swept_where_they_tune() {
+    let sheet =
+        twincone("sheet --kind bench --job examples/biaxial.toml --cross-tilt 0.5deg --tilt 1deg").answer();
+    // 1000 mm tan 2 deg = 34.92 mm; after both turns 17.46 mm down as well
+    assert_says(&sheet, &["34.92 mm to the right (-x)", "more, about the other axis", "mm down (-y)"]);
+    // every turn that is asked for has its spot: 1000 tan 4 deg, 1000 tan 0.2 deg
+    assert_says(
+        &sheet,
+        &["the reflected spot moves by 69.9 mm", "by 0.1 deg moves the reflected spot by 3.49 mm"],
+    );
+    assert_says(&sheet, &["run clockwise for who looks along the beam"]);
+    assert_says(&sheet, &["| cross tilt of the crystal |", "cross tilt +0.1 deg: tip the top"]);
+    let ring = |line: &str| {
+        let row = sheet.lines().find(|l| l.starts_with(line)).expect("a line");
+        row.split('|').nth(3).expect("a radius").trim().parse::<f64>().expect("a number")
+    };
+    // the table moves: more cross tilt, larger ring
+    assert!(ring("| +1.50 deg") > ring("| -0.50 deg") + 10.0);
+}
+
+#[test]
+fn a_setting_without_light_says_what_gives_some() {
+    let sheet = twincone("sheet --kind bench --job examples/telecom.toml").answer();
+    // the temperature at which the rings of this period open, as a sweep of that example shows
+    assert_says(
+        &sheet,
+        &["There is no ring at this setting", "A temperature of 42.5 degC (+12.5 K from now)"],
+    );
+    assert_says(
+        &sheet,
+        &["Set the oven so that the crystal is at 30 degC", "A cross tilt changed by +3.975 deg"],
+    );
+    assert_says(&sheet, &["as planned | no ring; the best direction misses by 0.16 rad/mm"]);
+    let picture = twincone("picture --job examples/telecom.toml --pixels 16").answer();
+    assert_says(&picture, &["There is no ring at this setting"]);
+    let hot = twincone("cones --job examples/telecom.toml --temperature 43degC").answer();
+    assert!(!hot.contains("No direction is phase matched"), "{hot}");
+}
+
+#[test]
+fn rings_on_the_sheet_are_as_thick_as_filter_and_pump_make_them() {
+    let thickness = |more: &str| {
+        let sheet = twincone(&format!("sheet --kind bench --job examples/crossed-cones.toml{more}")).answer();
+        let row = sheet.lines().find(|l| l.starts_with("| e 810 nm |")).expect("a row").to_string();
+        let cell = row.split('|').nth(6).expect("a cell").trim().trim_end_matches(" mm").to_string();
+        cell.parse::<f64>().expect("mm")
+    };
+    let plain = thickness("");
+    // `cones`: 0.208 deg at one wavelength
+    assert!((plain - 3.7).abs() < 0.11, "{plain}");
+    // a rectangular filter far wider than that: the rings of its edges, 800 and 820 nm, lie that far apart
+    let wide = thickness(" --filter-width 20nm --filter-shape rectangular");
+    let csv =
+        twincone("cones --job examples/crossed-cones.toml --signal 800nm --signal 820nm -f csv").answer();
+    let table = crate::table::Table::read(&csv);
+    let outer = |nm: f64| {
+        let row = (0..table.len()).find(|r| {
+            (table.number(*r, "wavelength_nm") - nm).abs() < 1e-6 && table.cell(*r, "polarization") == "e"
+        });
+        table.number(row.expect("a ring"), "radius_mm")
+    };
+    let centre = |nm: f64| {
+        let row = (0..table.len()).find(|r| {
+            (table.number(*r, "wavelength_nm") - nm).abs() < 1e-6 && table.cell(*r, "polarization") == "e"
+        });
+        table.number(row.expect("a ring"), "x_mm")
+    };
+    // mean over azimuth of the distance of two circles: the difference of radii, as the shift of centres averages out
+    let apart = (outer(820.0) - outer(800.0)).abs();
+    assert!((centre(820.0) - centre(800.0)).abs() < 0.7 * apart);
+    assert!((wide - apart).abs() < 0.15 * apart, "{wide} {apart}");
+    // what a pump's spread adds goes as 1/waist
+    let added = |waist: &str| (thickness(&format!(" --waist {waist}")).powi(2) - plain * plain).sqrt();
+    let (loose, tight) = (added("30um"), added("20um"));
+    assert!(loose > 4.0 && (tight / loose / 1.5 - 1.0).abs() < 0.05, "{loose} {tight}");
+}
+
+#[test]
+fn seed_steps_reach_from_full_light_to_half() {
+    let sheet = twincone("sheet --kind bench --job examples/crossed-cones.toml").answer();
+    let table = sheet.split("| seed |").nth(1).expect("a table");
+    let values: Vec<f64> = table
+        .lines()
+        .skip(2)
+        .take(5)
+        .map(|l| l.split('|').nth(5).expect("sinc^2").trim().parse().expect("a number"))
+        .collect();
+    assert!(values[2] > 0.99 && values.iter().all(|v| *v > 0.2), "{values:?}");
+    assert!(values[0].min(values[4]) < 0.9, "{values:?}");
+}

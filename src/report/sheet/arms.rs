@@ -28,7 +28,7 @@ pub(super) fn arm_steps(page: &mut Page, facts: &Facts<'_>) {
     }
     if crossings.is_empty() {
         let Some((label, d, partner)) = ring_pair(facts) else {
-            page.text("There is no ring here, so there is nowhere to put an arm. Turn the crystal first.");
+            page.text("There is no ring at this setting, so there is nowhere to put an arm: first change what the caution above names, in the job too, and print again.");
             return;
         };
         page.text(
@@ -65,9 +65,9 @@ fn iris(facts: &Facts<'_>) -> Option<(f64, &'static str)> {
     if let Some(full) = facts.iris() {
         return Some((full, "as the job says"));
     }
-    let thick = facts.cones.rings.iter().filter_map(|r| r.ring.as_ref().ok()?.thickness);
-    let thin = thick.fold(f64::INFINITY, f64::min);
-    thin.is_finite().then_some((thin, "as wide as the ring is thick, since the job gives no iris"))
+    let thin = facts.widths.iter().flatten().copied().fold(f64::INFINITY, f64::min);
+    thin.is_finite()
+        .then_some((2.0 * (0.5 * thin).atan(), "as wide as the ring is thick, since the job gives no iris"))
 }
 
 fn arm_angles(label: &str, d: Direction) -> Vec<String> {
@@ -127,13 +127,17 @@ fn seeds(page: &mut Page, facts: &Facts<'_>) {
     let crystal = &facts.setup.crystals[0];
     let Some(roles) = facts.roles(crystal) else { return };
     let mut rows = Vec::new();
-    for off in [-10.0, -5.0, 0.0, 5.0, 10.0] {
+    let at = |off: f64| {
         let seed = Wavelength::from_nm(facts.photons.signal.nm() + off);
-        let row = Photons::new(facts.photons.pump, seed).and_then(|photons| {
-            let pairing = Emission::of(crystal, photons).ok()?.pairing(roles, direction)?;
+        let photons = Photons::new(facts.photons.pump, seed)?;
+        let pairing = Emission::of(crystal, photons).ok()?.pairing(roles, direction)?;
+        Some((seed, photons, pairing, pairing.phase_matching_factor(crystal.hot_length().si())))
+    };
+    let step = seed_step(facts.photons.signal.nm(), |off| at(off).map(|found| found.3));
+    for off in [-2.0, -1.0, 0.0, 1.0, 2.0] {
+        let row = at(off * step).and_then(|(seed, photons, pairing, factor)| {
             let partner = pairing.idler_outside?;
             let (x, y) = partner.on_screen_mm(facts.setup.screen);
-            let factor = pairing.phase_matching_factor(crystal.hot_length().si());
             Some(vec![nm(seed), nm(photons.idler), signed(x, 2), signed(y, 2), fixed(factor, 2)])
         });
         rows.extend(row);
@@ -148,4 +152,17 @@ fn seeds(page: &mut Page, facts: &Facts<'_>) {
         )],
     );
     page.table(&["seed", "partner", "partner x in mm", "partner y in mm", "sinc^2"], rows);
+}
+
+/// A round step, nm, two of which take sinc^2 to about one half; a twentieth of the wavelength where nothing does.
+fn seed_step(nm: f64, factor: impl Fn(f64) -> Option<f64>) -> f64 {
+    let largest = 0.05 * nm;
+    let dim = |off: f64| [off, -off].iter().all(|o| factor(*o).is_none_or(|f| f < 0.5));
+    let mut half = 1e-3;
+    while half < largest && !dim(half) {
+        half *= 1.1;
+    }
+    let power = 10f64.powf((0.5 * half).log10().floor());
+    let lead = 0.5 * half / power;
+    power * [5.0, 2.0, 1.0].into_iter().find(|nice| *nice <= lead + 1e-9).unwrap_or(1.0)
 }

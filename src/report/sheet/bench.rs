@@ -2,18 +2,18 @@
 
 use super::arms::arm_steps;
 use super::caution::safety;
-use super::facts::{Facts, Watched, azimuth, deg, field_words, mm, nm, ring_name, rings, side_words};
+use super::facts::{Facts, field_words, nm, ring_name, side_words};
+use super::mount::{common_mount, mount_steps, temperature_steps, tuning_tables, which};
 use super::page::{Block, Page};
 use super::trouble::trouble;
-use crate::frame::{Direction, Lab, Mount};
 use crate::job::Setup;
-use crate::matching::{Actuator, ConesError, RingRow};
+use crate::matching::{ConesError, RingRow};
 use crate::optics::Crystal;
-use crate::pairs::{Filter, Pair, PumpPolarization, Stack, most_even};
-use crate::picture::{Backdrop, Optics, Seen, Sensor};
-use crate::quantity::{Angle, Length, Wavelength};
+use crate::pairs::Filter;
+use crate::picture::{Backdrop, Optics, PumpLight, Seen, Sensor, taken};
+use crate::quantity::Wavelength;
 use crate::report::angles::{fixed, rounded, signed};
-use crate::report::room_words;
+use crate::report::darkness;
 
 /// The sheet.
 ///
@@ -27,17 +27,23 @@ pub fn bench(setup: &Setup) -> Result<Page, ConesError> {
     page.heading("Frame");
     page.text(format!(
         "x is horizontal and positive to the left of who stands behind the laser and looks along the beam, y is up; both \
-         count from where the undeviated pump hits. The screen stands across the beam at {} from the crystal. Angles are \
+         count from where the undeviated pump hits. Angles from +x towards +y run clockwise for who looks along the beam (0 deg \
+         left, 90 deg up) and counterclockwise for who looks back at the laser (0 deg right, 90 deg up). The screen stands across the beam at {} from the crystal. Angles are \
          outside the crystal. Indices: {}.",
         setup.screen,
         setup.crystals.iter().map(Facts::id).collect::<Vec<_>>().join(", ")
     ));
+    if let Some(words) = darkness(setup, &facts.cones) {
+        page.blocks.push(Block::Warning(words));
+    }
     figures(&mut page, &facts);
     page.heading("Pump and crystal");
     pump_steps(&mut page, &facts);
-    for (index, crystal) in setup.crystals.iter().enumerate() {
-        crystal_steps(&mut page, &facts, index, crystal);
+    for index in 0..setup.crystals.len() {
+        mount_steps(&mut page, &facts, index);
     }
+    common_mount(&mut page, setup);
+    temperature_steps(&mut page, &facts);
     page.heading("Rings");
     ring_steps(&mut page, &facts)?;
     page.heading("Arms");
@@ -46,18 +52,16 @@ pub fn bench(setup: &Setup) -> Result<Page, ConesError> {
     Ok(page)
 }
 
-/// Where the entrance face's reflection hits a card at `distance` back towards the laser, mm.
-pub(super) fn reflection(crystal: &Crystal, distance: Length) -> (f64, f64) {
-    let r = crystal.reflection();
-    (-r.x / r.z * distance.mm() + 0.0, -r.y / r.z * distance.mm() + 0.0)
-}
-
 fn figures(page: &mut Page, facts: &Facts<'_>) {
     let setup = facts.setup;
-    page.blocks.push(Block::Figure(
-        crate::picture::side(setup, &facts.cones),
-        "twincone picture --view side".into(),
-    ));
+    let command = || "twincone picture --view side".to_string();
+    if setup.crystals.len() > 1 {
+        page.blocks.push(Block::Figure(crate::picture::line_up(setup), command()));
+    }
+    for index in 0..setup.crystals.len() {
+        let drawing = crate::picture::side_of(setup, &facts.cones, index);
+        page.blocks.push(Block::Figure(drawing, command()));
+    }
     let optics = Optics::Screen(setup.screen);
     let field = Sensor::field_for(&facts.cones, optics);
     let sensor = Sensor { optics, field, pixels: 240, seen: Seen::default() };
@@ -92,143 +96,59 @@ fn pump_steps(page: &mut Page, facts: &Facts<'_>) {
 /// The pump's polarization: that of the job, else the one that drives all crystals as evenly as can be.
 fn polarization_step(page: &mut Page, facts: &Facts<'_>) {
     let setup = facts.setup;
-    let field = |crystal: &Crystal| {
-        let pairing = facts.pairing(crystal, Direction::forward())?;
-        let Lab(field) = crystal.placement().to_lab(pairing.pump.field);
-        Some(azimuth(field))
+    let Some(light) = PumpLight::of(setup, &facts.cones) else { return };
+    let words = light.linear().map_or_else(|| elliptical_words(&light), |a| field_words(degrees(a)));
+    let several = setup.crystals.len() > 1;
+    let takes = |(index, crystal): (usize, &Crystal)| {
+        let azimuth = taken(setup, crystal)?;
+        let who = if several { which(setup, index) } else { "the crystal".into() };
+        Some(format!(
+            "{}{} takes most at {}; of the polarization above it takes {}.",
+            who[..1].to_uppercase(),
+            &who[1..],
+            field_words(degrees(azimuth)),
+            percent(light.share(azimuth))
+        ))
     };
-    let fields: Vec<f64> = setup.crystals.iter().filter_map(field).collect();
-    let needs = |(n, field): (usize, &f64)| match fields.len() {
-        1 => format!("The crystal takes most at {}.", field_words(*field)),
-        _ => format!("Crystal {} by itself takes most at {}.", n + 1, field_words(*field)),
-    };
-    let each = fields.iter().enumerate().map(needs);
-    if let PumpPolarization::Given { angle, phase } = setup.bench.polarization {
-        page.step(
-            format!("Set the pump's polarization as the job gives it: {}.", given_words(angle, phase)),
-            each.collect(),
-        );
+    let each: Vec<String> = setup.crystals.iter().enumerate().filter_map(takes).collect();
+    if light.given {
+        page.step(format!("Set the pump's polarization as the job gives it: {words}."), each);
         return;
     }
-    let alike = fields.windows(2).all(|f| axes_apart(f[0], f[1]) < 0.05);
-    match fields.as_slice() {
-        [] => {}
-        [first, ..] if alike => page.step(
-            format!("Set the pump's polarization: {}.", field_words(*first)),
-            vec!["Check with a polarizer before the crystal: it passes most there and least a quarter turn from there.".into()],
-        ),
-        all => {
-            let even = as_the_pairs(facts).unwrap_or_else(|| between(all));
-            let mut see = vec!["That drives the crystals as evenly as can be.".to_string()];
-            see.extend(each);
-            page.step(format!("Set the pump's polarization: {}.", field_words(even)), see);
-        }
+    let mut see = if several && each.len() > 1 {
+        let mut see = vec!["That drives the crystals as evenly as can be.".to_string()];
+        see.extend(each);
+        see
+    } else {
+        Vec::new()
+    };
+    if let Some(azimuth) = light.linear() {
+        let across = (degrees(azimuth) + 90.0).rem_euclid(180.0);
+        see.push(format!(
+            "Check with a polarizer before the crystal: it passes most with its axis there and least at {}.",
+            field_words(across)
+        ));
     }
+    page.step(format!("Set the pump's polarization: {words}."), see);
 }
 
-/// Angle between two axes across the beam, degrees in [0, 90].
-fn axes_apart(a: f64, b: f64) -> f64 {
-    ((a - b + 90.0).rem_euclid(180.0) - 90.0).abs()
-}
-
-/// The azimuth, degrees in [0, 180), at which the product of the shares cos^2 of these axes is largest.
-fn between(axes: &[f64]) -> f64 {
-    let share = |at: f64, axis: &f64| (at - axis.to_radians()).cos().powi(2);
-    let even = most_even(|at| axes.iter().map(|axis| share(at, axis)).product());
-    azimuth(nalgebra::Vector3::new(even.cos(), even.sin(), 0.0))
-}
-
-/// The azimuth that `state` takes, degrees in [0, 180): with all that the pump meets before each crystal. `None` where the
-/// job has no pair to look at.
-fn as_the_pairs(facts: &Facts<'_>) -> Option<f64> {
-    let setup = facts.setup;
-    let pair = facts.cones.crossings.iter().find_map(|row| Pair::at(row, setup.pump()))?;
-    let stack = Stack::new(&setup.crystals, &setup.bench, &pair, setup.interaction).ok()?;
-    Some(azimuth(nalgebra::Vector3::new(stack.polarization.x.re, stack.polarization.y.re, 0.0)))
+/// Of an axis, in [0, 180) and free of rounding next to 180.
+fn degrees(azimuth: f64) -> f64 {
+    let degrees = azimuth.to_degrees();
+    if degrees > 179.95 { 0.0 } else { degrees }
 }
 
 /// E = (cos angle, e^(i phase) sin angle) in words.
-fn given_words(angle: Angle, phase: Angle) -> String {
-    let (sin, cos) = angle.si().sin_cos();
-    let (quadrature, in_phase) = phase.si().sin_cos();
-    if (sin * cos * quadrature).abs() < 1e-6 {
-        // linear: along one axis, or both fields in step or against each other
-        field_words(azimuth(nalgebra::Vector3::new(cos, sin * in_phase.signum(), 0.0)))
-    } else {
-        format!(
-            "elliptical, {} of the power vertical and the vertical field {} deg ahead of the horizontal one",
-            percent(sin * sin),
-            fixed(phase.degrees(), 1)
-        )
-    }
+fn elliptical_words(light: &PumpLight) -> String {
+    format!(
+        "elliptical, {} of the power vertical and the vertical field {} deg ahead of the horizontal one",
+        percent(light.share(std::f64::consts::FRAC_PI_2)),
+        fixed(light.phase.to_degrees(), 1)
+    )
 }
 
 fn percent(share: f64) -> String {
     format!("{} %", fixed(100.0 * share, 1))
-}
-
-fn crystal_steps(page: &mut Page, facts: &Facts<'_>, index: usize, crystal: &Crystal) {
-    let which =
-        if facts.setup.crystals.len() > 1 { format!("crystal {}", index + 1) } else { "the crystal".into() };
-    let placement = crystal.placement();
-    let z = placement.to_lab(Mount(placement.dielectric_axes().column(2).into_owned())).0;
-    let lean = if z.z < 0.0 { -z } else { z };
-    page.step(
-        format!(
-            "Mount {which} ({}, {} long), roll {} deg.",
-            Facts::id(crystal),
-            crystal.length,
-            signed(crystal.orientation.roll.degrees(), 1)
-        ),
-        vec![
-            format!(
-                "The end of Z that points downstream leans {}, looking along the beam.",
-                side_words(nalgebra::Vector3::new(lean.x, lean.y, 0.0))
-            ),
-            "Roll right: between crossed polarizers and without tilt, the pump is extinguished.".into(),
-        ],
-    );
-    let stage = facts.setup.stage.filter(|_| index == 0);
-    let zero = stage.and_then(|s| s.zero);
-    page.step(
-        format!("Turn {which} until the reflection of its face goes back into the laser: tilt zero."),
-        vec![match zero {
-            Some(zero) => format!("Stage reading there: {} deg. If yours differs, correct [stage] zero in the job and print again.", fixed(zero.degrees(), 3)),
-            None => "Write the reading down: ________ deg. Print this sheet again with your reading, `--set stage.zero=3.2deg`, and it names the reading to set.".into(),
-        }],
-    );
-    let tilt = crystal.orientation.tilt;
-    let cross = crystal.orientation.cross_tilt;
-    let mut see = vec![format!("In words: {}.", room_words(crystal, Actuator::Tilt, tilt))];
-    if let Some(stage) = stage {
-        if let Some(reading) = stage.reading(tilt) {
-            see.push(format!("Stage reading to set: {} deg.", fixed(reading.degrees(), 3)));
-        }
-        if let Some(turns) = stage.turns(tilt) {
-            let sense = if turns < 0.0 { "falls" } else { "rises" };
-            see.push(format!("Screw: {} turns, so that the reading {sense}.", fixed(turns.abs(), 2)));
-        }
-    }
-    if cross.si() != 0.0 {
-        see.push(format!(
-            "Cross tilt {}: {}.",
-            deg(cross.si(), 3),
-            room_words(crystal, Actuator::CrossTilt, cross)
-        ));
-    }
-    page.step(format!("Tilt {which} by {} from there.", deg(tilt.si(), 3)), see);
-    let places = [0.1, 0.2, 0.3, 0.5, 1.0].map(Length::metres);
-    let rows = places
-        .into_iter()
-        .map(|distance| {
-            let (x, y) = reflection(crystal, distance);
-            vec![distance.to_string(), mm(x, 2), mm(y, 2)]
-        })
-        .collect();
-    page.text(format!(
-        "Where the reflection of {which} lands at that tilt, on a card beside the incoming pump:"
-    ));
-    page.table(&["card before the crystal", "x", "y"], rows);
 }
 
 fn ring_steps(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesError> {
@@ -242,13 +162,11 @@ fn ring_steps(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesError> {
         format!("Find the rings on a camera or with a detector that is moved across at {}.", setup.screen),
         facts.cones.rings.iter().map(|row| ring_words(setup, row)).collect(),
     );
-    let ring_row = |row: &RingRow| {
+    let ring_row = |(row, width): (&RingRow, &Option<f64>)| {
         let ring = row.ring.as_ref().ok()?;
         let (c, r) = ring.circle();
         let (x, y, r) = (c.x * setup.screen.mm(), c.y * setup.screen.mm(), r * setup.screen.mm());
-        let thick = ring
-            .thickness
-            .map_or("filled".into(), |t| format!("{} mm", fixed(t.tan() * setup.screen.mm(), 1)));
+        let thick = width.map_or("filled".into(), |t| format!("{} mm", fixed(t * setup.screen.mm(), 1)));
         let edge = |a: f64, b: f64| format!("{} to {}", signed(a, 1), signed(b, 1));
         Some(vec![
             ring_name(setup, row),
@@ -259,7 +177,7 @@ fn ring_steps(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesError> {
             thick,
         ])
     };
-    let rows = facts.cones.rings.iter().filter_map(ring_row).collect();
+    let rows = facts.cones.rings.iter().zip(&facts.widths).filter_map(ring_row).collect();
     page.table(
         &[
             "ring",
@@ -267,7 +185,7 @@ fn ring_steps(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesError> {
             "radius in mm",
             "x from, to in mm",
             "y from, to in mm",
-            "thickness (FWHM), one wavelength, plane pump",
+            &format!("thickness (FWHM), {}", facts.light_words()),
         ],
         rows,
     );
@@ -276,29 +194,26 @@ fn ring_steps(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesError> {
         off.is_some_and(|off| (1.0..179.0).contains(&off))
     };
     let mixed = facts.cones.rings.windows(2).any(|r| differ(&r[0], &r[1]));
-    page.step(
-        if mixed {
-            "Tell the rings apart with a polarizer before the camera."
-        } else {
-            "Check the polarization with a polarizer before the camera."
-        },
-        facts
-            .cones
-            .rings
-            .iter()
-            .filter_map(|row| {
-                let a = row.field_azimuth?;
-                let across = (a + 90.0).rem_euclid(180.0);
-                Some(format!(
-                    "{} stays with the polarizer's axis at {} deg from +x towards +y and goes at {} deg.",
-                    ring_name(setup, row),
-                    fixed(a, 1),
-                    fixed(across, 1)
-                ))
-            })
-            .collect(),
-    );
-    tilt_table(page, facts)
+    let apart: Vec<String> = facts
+        .cones
+        .rings
+        .iter()
+        .filter_map(|row| {
+            let a = row.field_azimuth?;
+            let across = (a + 90.0).rem_euclid(180.0);
+            Some(format!(
+                "{} stays with the polarizer's axis at {} deg from +x towards +y and goes at {} deg.",
+                ring_name(setup, row),
+                fixed(a, 1),
+                fixed(across, 1)
+            ))
+        })
+        .collect();
+    if !apart.is_empty() {
+        let head = if mixed { "Tell the rings apart" } else { "Check the polarization" };
+        page.step(format!("{head} with a polarizer before the camera."), apart);
+    }
+    (0..setup.crystals.len()).try_for_each(|index| tuning_tables(page, facts, index))
 }
 
 /// Side and polarization of a ring, or that there is none.
@@ -342,61 +257,16 @@ fn filter_words(facts: &Facts<'_>) -> String {
     }
 }
 
-/// Rings against tilt: what to compare a measured ring with.
-fn tilt_table(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesError> {
-    let setup = facts.setup;
-    let now = setup.crystals[0].orientation.tilt.degrees();
-    let stage = setup.stage;
-    let mut header = vec!["tilt of crystal 1".to_string()];
-    if stage.is_some_and(|s| s.zero.is_some()) {
-        header.push("stage reading".into());
-    }
-    header.extend(facts.cones.rings.iter().map(|r| format!("{}: radius in mm", ring_name(setup, r))));
-    let mut rows = Vec::new();
-    for step in -4..=4 {
-        let tilt = Angle::from_degrees(now + 0.25 * f64::from(step));
-        let mut crystals = setup.crystals.clone();
-        crystals[0].orientation.tilt = tilt;
-        let found = rings(setup, &crystals)?;
-        let mut row = vec![deg(tilt.si(), 2)];
-        if let Some(reading) = stage.and_then(|s| s.reading(tilt)) {
-            row.push(format!("{} deg", fixed(reading.degrees(), 2)));
-        }
-        row.extend(found.rings.iter().map(|r| match &r.ring {
-            Ok(ring) => fixed(ring.circle().1 * setup.screen.mm(), 1),
-            Err(_) => "none".into(),
-        }));
-        rows.push(row);
-    }
-    page.text("Rings against tilt: a ring that fits another line tells by how much tilt, cut or wavelength are off.");
-    page.blocks.push(Block::Table(header, rows));
-    Ok(())
-}
-
-/// The angle that both sheets watch, for the first crystal.
-pub(super) fn watched(facts: &Facts<'_>) -> Option<Watched> {
-    facts.watched(&facts.setup.crystals[0])
-}
-
 #[cfg(test)]
 mod tests {
     use super::*;
-    use approx::assert_abs_diff_eq;
-
-    #[test]
-    fn polarizations_are_axes() {
-        // the middle of 0 deg and 179.4 deg is 179.7 deg, not 89.7 deg
-        assert_abs_diff_eq!(between(&[0.0, 179.4]), 179.7, epsilon = 1e-6);
-        assert_abs_diff_eq!(between(&[10.0, 30.0]), 20.0, epsilon = 1e-6);
-        // of two that are as good, the smaller
-        assert_abs_diff_eq!(between(&[90.0, 0.0]), 45.0, epsilon = 1e-6);
-        assert_abs_diff_eq!(axes_apart(0.02, 179.99), 0.03, epsilon = 1e-9);
-    }
 
     #[test]
     fn a_given_polarization_is_told() {
-        let words =
-            |angle: f64, phase: f64| given_words(Angle::from_degrees(angle), Angle::from_degrees(phase));
+        let words = |angle: f64, phase: f64| {
+            let light = PumpLight { angle: angle.to_radians(), phase: phase.to_radians(), given: true };
+            light.linear().map_or_else(|| elliptical_words(&light), |a| field_words(degrees(a)))
+        };
         assert_eq!(words(30.0, 0.0), "30.0 deg from +x towards +y");
         assert_eq!(words(30.0, 180.0), "150.0 deg from +x towards +y");
         assert_eq!(words(90.0, 90.0), "vertical, 90.0 deg from +x towards +y");

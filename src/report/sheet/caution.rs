@@ -1,7 +1,7 @@
 //! The caution that opens the bench sheet.
 
-use super::bench::reflection;
 use super::facts::{Facts, mm, nm};
+use super::mount::reflection;
 use super::page::{Block, Page};
 use super::safety::{class, limits};
 use crate::pairs::Line;

@@ -9,20 +9,30 @@ use crate::matching::{
     Tuning, Want, cones, tune, tuning_turn,
 };
 use crate::optics::Crystal;
+use crate::picture::{Light, ring_widths};
 use crate::quantity::{Angle, Length, Power};
 use crate::report::angles::{fixed, rounded, signed};
+use crate::report::{Opening, advice};
 
 /// An experiment with its rings.
 pub(super) struct Facts<'a> {
     pub setup: &'a Setup,
     pub cones: Cones,
     pub photons: Photons,
+    /// Of each ring, FWHM along a radius in the job's light, in units of the screen's distance.
+    pub widths: Vec<Option<f64>>,
 }
 
 impl<'a> Facts<'a> {
     pub fn of(setup: &'a Setup) -> Result<Self, ConesError> {
         let cones = rings(setup, &setup.crystals)?;
-        Ok(Self { setup, cones, photons: setup.photons() })
+        let light = Light::of(setup).unwrap_or_default();
+        // where no picture can be taken the width at one wavelength must do
+        let widths = ring_widths(setup, &light, &cones).unwrap_or_else(|_| {
+            let width = |row: &RingRow| row.ring.as_ref().ok()?.thickness.map(f64::tan);
+            cones.rings.iter().map(width).collect()
+        });
+        Ok(Self { setup, cones, photons: setup.photons(), widths })
     }
 
     pub fn roles(&self, crystal: &Crystal) -> Option<Roles> {
@@ -30,11 +40,22 @@ impl<'a> Facts<'a> {
         emission.wanted(crystal, self.setup.interaction).ok()?.first().copied()
     }
 
-    /// Whether the cut's phi decides the phase matching and not its theta, as in XY cuts.
-    pub fn tunes_by_phi(&self, crystal: &Crystal) -> bool {
+    /// The turn with the larger effect.
+    pub fn tuning(&self, crystal: &Crystal) -> Actuator {
         let triplet = Triplet::new(crystal, &self.photons).ok();
         let turn = triplet.zip(self.roles(crystal)).map(|(t, r)| tuning_turn(crystal, self.photons, &t, r));
-        turn == Some(Actuator::CrossTilt)
+        turn.unwrap_or(Actuator::Tilt)
+    }
+
+    /// What begins to give a ring of a crystal that has none.
+    pub fn openings(&self, index: usize) -> Vec<Opening> {
+        let all = self.cones.rings.iter().zip(advice(self.setup, &self.cones));
+        all.filter(|(row, _)| row.crystal == index).map(|(_, advice)| advice).next().unwrap_or_default()
+    }
+
+    /// Whether the cut's phi decides the phase matching and not its theta, as in XY cuts.
+    pub fn tunes_by_phi(&self, crystal: &Crystal) -> bool {
+        self.tuning(crystal) == Actuator::CrossTilt
     }
 
     /// The waves of a pair whose signal leaves towards `signal`.
@@ -72,6 +93,17 @@ impl<'a> Facts<'a> {
             _ => changed.orientation.tilt,
         };
         Some(turn.setting - now.si())
+    }
+
+    /// In which light rings are as thick as the sheet says.
+    pub fn light_words(&self) -> String {
+        let filtered = self.setup.bench.filters.iter().any(|filters| !filters.is_empty());
+        let pump = self
+            .setup
+            .bench
+            .waist
+            .map_or("plane pump".into(), |waist| format!("pump of waist {} um", rounded(waist.um(), 1)));
+        format!("{}, {pump}", if filtered { "behind the filter" } else { "one wavelength" })
     }
 
     pub fn power(&self) -> Option<Power> {
@@ -124,6 +156,17 @@ pub(super) fn rings(setup: &Setup, crystals: &[Crystal]) -> Result<Cones, ConesE
     cones(crystals, setup.pump(), &setup.signals(), setup.interaction, Want::Both)
 }
 
+/// Whether two crystals are the same piece on an order: same material, indices, cut, length, poling and temperature.
+pub(super) fn same_order(a: &Crystal, b: &Crystal) -> bool {
+    a.material.id == b.material.id
+        && a.dataset == b.dataset
+        && a.cut == b.cut
+        && a.length == b.length
+        && a.poling == b.poling
+        && a.temperature == b.temperature
+        && a.reference_temperature == b.reference_temperature
+}
+
 pub(super) fn nm(wavelength: crate::quantity::Wavelength) -> String {
     format!("{} nm", rounded(wavelength.nm(), 3))
 }
@@ -145,12 +188,6 @@ pub(super) fn ring_name(setup: &Setup, row: &RingRow) -> String {
     let of =
         if setup.crystals.len() > 1 { format!(" of crystal {}", row.crystal + 1) } else { String::new() };
     format!("{} {}{of}", row.polarization, nm(row.wavelength))
-}
-
-/// Azimuth of a field across the beam, degrees in [0, 180).
-pub(super) fn azimuth(field: Vector3<f64>) -> f64 {
-    let a = field.y.atan2(field.x).to_degrees().rem_euclid(180.0);
-    if (1e-6..180.0 - 1e-6).contains(&a) { a } else { 0.0 }
 }
 
 /// "horizontal (0.0 deg)"

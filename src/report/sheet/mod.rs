@@ -4,6 +4,7 @@ mod arms;
 mod bench;
 mod caution;
 mod facts;
+mod mount;
 mod order;
 mod page;
 mod safety;

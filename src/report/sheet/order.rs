@@ -1,6 +1,7 @@
 //! The order sheet: what the maker of a crystal must know.
 
-use super::facts::{Facts, deg, nm, plain_deg, side_words};
+use super::facts::{Facts, deg, nm, plain_deg, same_order, side_words};
+use super::mount::which;
 use super::page::{Block, Page};
 use crate::frame::{Direction, Lab, Mount, Orientation};
 use crate::job::Setup;
@@ -18,11 +19,22 @@ pub fn order(setup: &Setup) -> Result<Page, ConesError> {
     let facts = Facts::of(setup)?;
     let name = setup.title.as_deref().unwrap_or("pair source");
     let mut page = Page { title: format!("Order sheet: crystal for {name}"), ..Page::default() };
+    let mut groups: Vec<Vec<usize>> = Vec::new();
     for (index, crystal) in setup.crystals.iter().enumerate() {
-        if setup.crystals.len() > 1 {
-            page.heading(&format!("Crystal {}", index + 1));
+        let same = |group: &&mut Vec<usize>| same_order(&setup.crystals[group[0]], crystal);
+        match groups.iter_mut().find(same) {
+            Some(group) => group.push(index),
+            None => groups.push(vec![index]),
         }
-        one(&mut page, &facts, crystal);
+    }
+    for group in &groups {
+        if setup.crystals.len() > 1 {
+            let names: Vec<String> = group.iter().map(|index| which(setup, *index)).collect();
+            let pieces =
+                if group.len() == 1 { "one piece".into() } else { format!("{} equal pieces", group.len()) };
+            page.heading(&format!("For {}: {pieces}", names.join(" and ")));
+        }
+        one(&mut page, &facts, group);
     }
     if setup.crystals.len() > 1 {
         page.text(
@@ -33,9 +45,13 @@ pub fn order(setup: &Setup) -> Result<Page, ConesError> {
     Ok(page)
 }
 
-fn one(page: &mut Page, facts: &Facts<'_>, crystal: &Crystal) {
+/// Crystals that are the same piece.
+fn one(page: &mut Page, facts: &Facts<'_>, group: &[usize]) {
+    let crystal = &facts.setup.crystals[group[0]];
     let pairing = facts.pairing(crystal, signal_direction(facts, crystal));
-    page.table(&["item", "specification"], specification(facts, crystal, pairing.as_ref()));
+    let mut items = vec![row2("quantity", group.len().to_string())];
+    items.extend(specification(facts, crystal, pairing.as_ref()));
+    page.table(&["item", "specification"], items);
     drawings(page, facts.setup, crystal);
     page.heading("What an error costs");
     let watched = facts.watched(crystal);
@@ -178,9 +194,11 @@ fn drawings(page: &mut Page, setup: &Setup, crystal: &Crystal) {
     let none = crate::matching::Cones::default();
     page.blocks
         .push(Block::Figure(crate::picture::side(&alone, &none), "twincone picture --view side".into()));
+    page.blocks
+        .push(Block::Figure(crate::picture::front(&alone, &none), "twincone picture --view front".into()));
     page.text(
-        "The drawing shows the face normal, the axis Z and the angle theta between them, as cut and before tilting. The \
-         plane of the drawing holds Z and the face normal.",
+        "The drawings show the crystal as cut and before tilting: from the side the face normal, the axis Z and the angle theta \
+         between them, in the plane that holds both; from the exit face the axes X, Y and Z as they lie across the beam.",
     );
 }
 

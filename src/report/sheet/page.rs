@@ -180,7 +180,7 @@ fn table_html(header: &[String], rows: &[Vec<String>]) -> String {
 const STYLE: &str = "\
 :root { color-scheme: light; }
 body { margin: 0; background: #fff; color: #000; font: 15px/1.45 sans-serif; }
-main { max-width: 60rem; margin: 0 auto; padding: 1rem; overflow-wrap: anywhere; }
+main { max-width: 60rem; margin: 0 auto; padding: 1rem; overflow-wrap: break-word; }
 h1 { font-size: 1.5rem; margin: 0 0 .6rem; }
 h2 { font-size: 1.15rem; margin: 1.4rem 0 .4rem; border-bottom: 1px solid #000; break-after: avoid; }
 p, ul { margin: .4rem 0; }
@@ -189,12 +189,14 @@ table { border-collapse: collapse; width: 100%; margin: .6rem 0; font-size: .92e
 th, td { border: 1px solid #777; padding: .2rem .4rem; text-align: left; vertical-align: top; }
 th { background: #eee; }
 tr, .step, figure, .caution { break-inside: avoid; }
+p:has(+ table) { break-after: avoid; }
 .caution { border: 2px solid #000; padding: .5rem .7rem; }
 .step { display: flex; gap: .6rem; margin: .5rem 0; }
 .step > div { flex: 1; min-width: 0; }
 .box { flex: none; width: .85rem; height: .85rem; border: 1.5px solid #000; margin-top: .2rem; }
 figure { margin: .8rem 0; }
 figure svg { max-width: 100%; height: auto; display: block; }
+code, pre { overflow-wrap: anywhere; }
 pre { font-size: .8em; white-space: pre-wrap; border: 1px solid #777; padding: .5rem; }
 @media (max-width: 640px) {
   figure { overflow-x: auto; }

@@ -1,12 +1,14 @@
 //! What is seen if something is wrong, what to check then, and the test that decides.
 
-use super::bench::watched;
-use super::facts::{Facts, deg, mm, plain_deg, ring_name, rings};
+use super::facts::{Facts, deg, mm, plain_deg, ring_name, rings, same_order};
+use super::mount::{spot_per_turn, which};
 use super::page::Page;
 use crate::frame::Reversal;
-use crate::matching::{Cones, ConesError, Photons, Want, cones};
-use crate::quantity::{Angle, Wavelength};
+use crate::matching::{Actuator, Cones, ConesError, Photons, Want, cones, phase_matching_factor};
+use crate::optics::Crystal;
+use crate::quantity::{Angle, Temperature, Wavelength};
 use crate::report::angles::fixed;
+use crate::report::{darkness, room_words};
 
 /// The part of the bench sheet.
 ///
@@ -17,7 +19,30 @@ pub(super) fn trouble(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesErr
     let rows = [no_light(facts)?, wrong_size(facts)?, wrong_side(facts)?, no_coincidences(facts)];
     page.table(&["what is seen", "likely, in this order", "the test that decides"], rows.into());
     page.heading("What moves the rings");
-    page.table(&["change", "effect"], movers(facts)?);
+    page.text(format!(
+        "A turn by 0.1 deg moves the reflected spot by {} mm on a card 1000 mm before the crystal, by 0.5 deg {} mm, by 1 deg {} mm.",
+        fixed(spot_per_turn(0.1), 2),
+        fixed(spot_per_turn(0.5), 2),
+        fixed(spot_per_turn(1.0), 2)
+    ));
+    let mut done: Vec<usize> = Vec::new();
+    for (index, crystal) in facts.setup.crystals.iter().enumerate() {
+        let stands = |other: &usize| alike(crystal, &facts.setup.crystals[*other]);
+        match done.iter().find(|other| stands(other)) {
+            Some(other) => page.text(format!(
+                "{} as {}; sides turned with its roll.",
+                capital(&which(facts.setup, index)),
+                which(facts.setup, *other)
+            )),
+            None => {
+                if facts.setup.crystals.len() > 1 {
+                    page.text(format!("{}:", capital(&which(facts.setup, index))));
+                }
+                page.table(&["change", "effect"], movers(facts, crystal)?);
+                done.push(index);
+            }
+        }
+    }
     Ok(())
 }
 
@@ -32,25 +57,45 @@ fn words(facts: &Facts<'_>, cones: &Cones) -> String {
     cones.rings.iter().map(radius).collect::<Vec<_>>().join("; ")
 }
 
+/// Whether two crystals are moved alike by everything but roll.
+fn alike(a: &Crystal, b: &Crystal) -> bool {
+    same_order(a, b)
+        && a.orientation.tilt == b.orientation.tilt
+        && a.orientation.cross_tilt == b.orientation.cross_tilt
+}
+
+fn capital(text: &str) -> String {
+    let mut letters = text.chars();
+    letters.next().map_or(String::new(), |first| first.to_uppercase().chain(letters).collect())
+}
+
 fn no_light(facts: &Facts<'_>) -> Result<Vec<String>, ConesError> {
     let setup = facts.setup;
-    let tilt = setup.crystals[0].orientation.tilt;
     let mut likely = String::from(
-        "pump polarization a quarter turn off; crystal rolled by 90 deg; tilt of the wrong sense; cut at the wrong phi; filter centred elsewhere, or a filter in the camera that stops the infrared",
+        "pump polarization a quarter turn off; crystal rolled by 90 deg; a turn of the wrong sense; cut at the wrong phi; filter centred elsewhere, or a filter in the camera that stops the infrared",
     );
     let mut test = String::from(
         "Turn the pump's half-wave plate: light from pairs rises and falls as sin^2 of twice the plate's angle, background does not.",
     );
-    if tilt.degrees().abs() > 0.01 {
+    let cross = facts.tuning(&setup.crystals[0]) == Actuator::CrossTilt;
+    let (key, turn) = match cross {
+        true => ("cross tilt", setup.crystals[0].orientation.cross_tilt),
+        false => ("tilt", setup.crystals[0].orientation.tilt),
+    };
+    if turn.degrees().abs() > 0.01 {
         let mut crystals = setup.crystals.clone();
-        crystals[0].orientation.tilt = Angle::radians(-tilt.si());
+        let turned = &mut crystals[0].orientation;
+        *if cross { &mut turned.cross_tilt } else { &mut turned.tilt } = Angle::radians(-turn.si());
         let other = rings(setup, &crystals)?;
         likely.push_str(&format!(
-            "; at tilt {} this crystal gives {}",
-            deg(-tilt.si(), 3),
+            "; at {key} {} this crystal gives {}",
+            deg(-turn.si(), 3),
             words(facts, &other)
         ));
-        test.push_str(" Go through back-reflection to the same tilt on the other side.");
+        test.push_str(&format!(" Go through back-reflection to the same {key} on the other side."));
+    }
+    if let Some(dark) = darkness(setup, &facts.cones) {
+        likely.insert_str(0, &format!("{dark} Else: "));
     }
     Ok(vec!["no light above background".into(), likely, test])
 }
@@ -72,7 +117,7 @@ fn wrong_size(facts: &Facts<'_>) -> Result<Vec<String>, ConesError> {
     Ok(vec![
         "rings of the wrong size".into(),
         format!("pump wavelength ({change}); tilt zero; error of the cut; choice of refractive indices"),
-        "Measure the pump with a spectrometer. Then the radius at three tilts or more: with the table of rings against tilt, an error of the cut shifts all of them by the same tilt.".into(),
+        "Measure the pump with a spectrometer. Then the radius at three lines or more of the table of rings against the turn: an error of the cut shifts all of them by the same turn.".into(),
     ])
 }
 
@@ -96,15 +141,42 @@ fn wrong_side(facts: &Facts<'_>) -> Result<Vec<String>, ConesError> {
             format!("{} centred at x {}, y {}", ring_name(setup, row), mm(c.x, 1), mm(c.y, 1))
         })
     };
+    let crystal = &setup.crystals[0];
+    let (actuator, half) = growing(facts, crystal);
+    let first = facts.cones.rings.first().and_then(|r| r.ring.as_ref().ok());
+    let centred = first.is_none_or(|ring| ring.circle().0.norm() < 0.01 * ring.circle().1);
     Ok(vec![
-        "the e ring on the wrong side, or rings that shrink with tilt".into(),
+        if centred {
+            "rings that shrink when they should grow".into()
+        } else {
+            "the e ring on the wrong side, or rings that shrink when they should grow".into()
+        },
         format!(
             "crystal turned by half a turn about the beam, or other face first with Z up. As planned: {}; turned about the beam: {}",
             place(&facts.cones),
             place(&other)
         ),
-        "Tilt a little: turned round, the sense of tilt that makes the rings grow is the other one. Turn the crystal about the beam.".into(),
+        format!(
+            "{} by 0.5 deg: the rings must grow. Turned round, they shrink or vanish: turn the crystal by half a turn about the beam.",
+            capital(&room_words(crystal, actuator, half).replace(" by 0.5 deg", ""))
+        ),
     ])
+}
+
+/// The turn by half a degree of which the watched angle grows; more of the tuning turn where there is none.
+fn growing(facts: &Facts<'_>, crystal: &Crystal) -> (Actuator, Angle) {
+    let actuator = facts.tuning(crystal);
+    let half = |sign: f64| Angle::from_degrees(0.5 * sign);
+    let reach = |sign: f64| {
+        let mut turned = crystal.clone();
+        let cross = actuator == Actuator::CrossTilt;
+        let turn = if cross { &mut turned.orientation.cross_tilt } else { &mut turned.orientation.tilt };
+        *turn = Angle::radians(turn.si() + half(sign).si());
+        facts.measure(&turned, facts.photons).half_angle
+    };
+    let less = reach(-1.0).zip(reach(1.0)).is_some_and(|(less, more)| less > more);
+    let only_less = reach(1.0).is_none() && reach(-1.0).is_some();
+    (actuator, half(if less || only_less { -1.0 } else { 1.0 }))
 }
 
 fn no_coincidences(facts: &Facts<'_>) -> Vec<String> {
@@ -120,39 +192,81 @@ fn no_coincidences(facts: &Facts<'_>) -> Vec<String> {
     ]
 }
 
-fn movers(facts: &Facts<'_>) -> Result<Vec<Vec<String>>, ConesError> {
+/// What each change does to the angle that is watched; where there is no ring, to what is missing.
+fn movers(facts: &Facts<'_>, crystal: &Crystal) -> Result<Vec<Vec<String>>, ConesError> {
     let setup = facts.setup;
-    let Some(watched) = watched(facts) else { return Ok(Vec::new()) };
-    let crystal = &setup.crystals[0];
-    let mut rows =
-        vec![vec!["as planned".into(), format!("{} {}", watched.name(), plain_deg(watched.angle, 3))]];
-    let mut row = |change: String, angle: Option<f64>| {
-        let effect = angle.map_or("no ring or no crossing".into(), |a| {
+    let watched = facts.watched(crystal);
+    let effect = |changed: &Crystal, photons: Photons| -> Result<String, ConesError> {
+        let Some(watched) = watched else { return missing(facts, changed, photons) };
+        let angle = watched.of(&facts.measure(changed, photons));
+        Ok(angle.map_or("no ring or no crossing".into(), |a| {
             let shift = setup.screen.mm() * (a.tan() - watched.angle.tan());
             format!("{} ({} on the screen)", plain_deg(a, 3), mm(shift, 1))
-        });
-        rows.push(vec![change, effect]);
+        }))
     };
-    for off in [0.1, -0.1] {
-        let mut turned = crystal.clone();
-        turned.orientation.tilt = Angle::radians(crystal.orientation.tilt.si() + f64::to_radians(off));
-        row(format!("tilt {off:+} deg"), watched.of(&facts.measure(&turned, facts.photons)));
+    let mut rows = vec![vec![
+        "as planned".into(),
+        match watched {
+            Some(watched) => format!("{} {}", watched.name(), plain_deg(watched.angle, 3)),
+            None => missing(facts, crystal, facts.photons)?,
+        },
+    ]];
+    let first = facts.tuning(crystal);
+    let second = if first == Actuator::Tilt { Actuator::CrossTilt } else { Actuator::Tilt };
+    for (actuator, size) in [(first, 0.1), (second, 1.0)] {
+        for off in [size, -size] {
+            let mut turned = crystal.clone();
+            let cross = actuator == Actuator::CrossTilt;
+            let turn = if cross { &mut turned.orientation.cross_tilt } else { &mut turned.orientation.tilt };
+            *turn = Angle::radians(turn.si() + f64::to_radians(off));
+            let way = room_words(crystal, actuator, Angle::from_degrees(off));
+            let key = if cross { "cross tilt" } else { "tilt" };
+            rows.push(vec![format!("{key} {off:+} deg: {way}"), effect(&turned, facts.photons)?]);
+        }
+    }
+    if crystal.set().has_thermo_optics() {
+        for off in [5.0, -5.0] {
+            let mut warmer = crystal.clone();
+            warmer.temperature = Temperature::celsius(crystal.temperature.degc() + off);
+            if let Ok(words) = effect(&warmer, facts.photons) {
+                rows.push(vec![format!("temperature {off:+} K"), words]);
+            }
+        }
     }
     for off in [1.0, -1.0] {
         let pump = Wavelength::from_nm(facts.photons.pump.nm() + off);
         let Some(photons) = Photons::new(pump, setup.signals.for_pump(pump)[0]) else { continue };
-        row(format!("pump {off:+} nm"), watched.of(&facts.measure(crystal, photons)));
+        rows.push(vec![format!("pump {off:+} nm"), effect(crystal, photons)?]);
     }
     for (index, set) in crystal.material.sets().iter().enumerate() {
         let other = crystal.with_dataset(index);
         let covers =
             [facts.photons.pump, facts.photons.signal, facts.photons.idler].iter().all(|w| set.covers(*w));
         if index != crystal.dataset && covers {
-            row(
-                format!("refractive indices of {}", set.id),
-                watched.of(&facts.measure(&other, facts.photons)),
-            );
+            rows.push(vec![format!("refractive indices of {}", set.id), effect(&other, facts.photons)?]);
         }
     }
     Ok(rows)
+}
+
+/// The first ring of a crystal, or by how much its best direction misses.
+fn missing(facts: &Facts<'_>, crystal: &Crystal, photons: Photons) -> Result<String, ConesError> {
+    let interaction = facts.setup.interaction;
+    let found =
+        cones(std::slice::from_ref(crystal), photons.pump, &[photons.signal], interaction, Want::Rings)?;
+    Ok(match found.rings.first().map(|row| &row.ring) {
+        Some(Ok(ring)) => format!(
+            "a ring of half angle {} (radius {} mm)",
+            plain_deg(ring.half_angle, 3),
+            fixed(ring.circle().1 * facts.setup.screen.mm(), 1)
+        ),
+        Some(Err(fault)) => fault.shortfall.map_or("no ring".into(), |off| {
+            format!(
+                "no ring; the best direction misses by {} rad/mm (sinc^2 {})",
+                fixed(off * 1e-3, 2),
+                fixed(phase_matching_factor(off, crystal.hot_length().si()), 2)
+            )
+        }),
+        None => "no ring".into(),
+    })
 }
