@@ -24,6 +24,7 @@ pub use files::{Depth, png_size};
 pub use geometry::{front, side};
 pub use glow::{GlowError, Sampling};
 pub use light::{Filter, Light, Shape};
+pub(crate) use light::{centre as middle, samples};
 pub use notes::notes;
 pub use phase::{Phases, phase};
 pub use ring_sweep::{Axis, parse_axis, ring_sweep};
