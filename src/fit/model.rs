@@ -47,7 +47,7 @@ pub struct Traced {
     pub outline: Vec<Vector2<f64>>,
     /// Middle of the circle that fits it best.
     pub centre: Vector2<f64>,
-    /// Width at half maximum.
+    /// Width at half maximum, through the filters.
     pub thickness: f64,
     /// Of the crystal, m.
     length: f64,
@@ -276,6 +276,7 @@ impl Model {
         let mut all = Vec::new();
         for candidate in self.candidates(crystal, &emission, &label) {
             let band = self.band(settings, light, nominal, &candidate);
+            let spread = spread(&band, candidate.length);
             for ring in rings(&candidate.mismatch, candidate.length).unwrap_or_default() {
                 let place = |n: usize| {
                     let azimuth = std::f64::consts::TAU * n as f64 / points as f64;
@@ -285,7 +286,7 @@ impl Model {
                 let Some(outline) = (0..points).map(place).collect::<Option<Vec<_>>>() else { continue };
                 let centre = self.in_picture(ring.circle().0 * distance);
                 // a ring whose inside is filled is as thick as it is wide
-                let thickness = ring.thickness.unwrap_or(ring.half_angle) * distance;
+                let thickness = (ring.thickness.unwrap_or(ring.half_angle) + spread) * distance;
                 let (label, length) = (candidate.label, candidate.length);
                 let band = band.clone();
                 all.push(Traced {
@@ -390,6 +391,18 @@ impl Model {
     /// From the picture to the screen, mm.
     fn on_screen(&self, place: Vector2<f64>) -> Vector2<f64> {
         place.component_mul(&self.view.signs()) - Vector2::from(self.bearings.centre)
+    }
+}
+
+/// By how much the radii of rings at the ends of a band differ, in units of the distance: where filters let pass at least
+/// half of what they do at best.
+fn spread(band: &[(Mismatch, f64)], length: f64) -> f64 {
+    let most = band.iter().map(|(_, weight)| *weight).fold(0.0, f64::max);
+    let lit = || band.iter().filter(|(_, weight)| *weight >= 0.5 * most);
+    let radius = |wave: Option<&(Mismatch, f64)>| Some(rings(&wave?.0, length).ok()?.first()?.circle().1);
+    match (radius(lit().next()), radius(lit().next_back())) {
+        (Some(first), Some(last)) => (last - first).abs(),
+        _ => 0.0,
     }
 }
 
