@@ -4,7 +4,7 @@
 //! Unknowns come scaled, so that 1 is a change of about a standard deviation of what is known beforehand. Two things the
 //! crate does not know are put around it. What is not defined counts as residuals a thousand times as large, so that a step
 //! there is refused and a shorter one tried. Beyond a bound residuals are those on it, so that nothing is gained there, and
-//! the search begins once more from the bound itself, where the slopes say whether to come back.
+//! the search begins once more from the bound itself: what the slopes drive outwards there is held, and the others go on.
 
 use std::cell::RefCell;
 
@@ -41,6 +41,8 @@ struct Bounded<'a, R> {
     /// The crate asks for slopes of what it does not change.
     inner: RefCell<&'a mut R>,
     bound: f64,
+    /// Unknowns that stay where they are.
+    held: Vec<bool>,
     x: DVector<f64>,
     residuals: DVector<f64>,
 }
@@ -75,7 +77,13 @@ impl<R: Residuals> LeastSquaresProblem<f64, Dyn, Dyn> for &mut Bounded<'_, R> {
     }
 
     fn jacobian(&self) -> Option<DMatrix<f64>> {
-        self.inner.borrow_mut().slopes(&self.clamped())
+        let mut slopes = self.inner.borrow_mut().slopes(&self.clamped())?;
+        for (mut column, held) in slopes.column_iter_mut().zip(&self.held) {
+            if *held {
+                column.fill(0.0);
+            }
+        }
+        Some(slopes)
     }
 }
 
@@ -84,12 +92,17 @@ impl<R: Residuals> LeastSquaresProblem<f64, Dyn, Dyn> for &mut Bounded<'_, R> {
 pub fn minimise(problem: &mut impl Residuals, start: DVector<f64>, bound: f64) -> Option<Minimum> {
     /// Relative change of the sum of squares, or of the unknowns, that ends a search.
     const ENOUGH: f64 = 1e-10;
-    const ROUNDS: usize = 4;
+    const ROUNDS: usize = 6;
     let mut x = start.map(|v| v.clamp(-bound, bound));
     let mut settled = false;
     for _ in 0..ROUNDS {
         let residuals = problem.at(&x)?;
-        let mut bounded = Bounded { inner: RefCell::new(&mut *problem), bound, x: x.clone(), residuals };
+        let downhill = -problem.slopes(&x)?.tr_mul(&residuals);
+        let outwards = |(x, down): (&f64, &f64)| x.abs() >= bound && x * down > 0.0;
+        let held: Vec<bool> = x.iter().zip(downhill.iter()).map(outwards).collect();
+        let any = held.contains(&true);
+        let mut bounded =
+            Bounded { inner: RefCell::new(&mut *problem), bound, held, x: x.clone(), residuals };
         let search = LevenbergMarquardt::new().with_tol(ENOUGH).with_stepbound(10.0);
         let (_, report) = search.minimize(&mut bounded);
         // where nothing at all can be gained the tolerance is met more than well
@@ -99,7 +112,7 @@ pub fn minimise(problem: &mut impl Residuals, start: DVector<f64>, bound: f64) -
         let left = bounded.x != clamped;
         let moved = (&clamped - &x).amax();
         x = clamped;
-        if !left || moved < 1e-9 {
+        if !(left || any) || moved < 1e-9 {
             break;
         }
     }
