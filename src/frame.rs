@@ -200,6 +200,50 @@ impl Orientation {
     }
 }
 
+/// Lab axes about which a mount turns, right-handed, when one of its angles grows.
+#[derive(Debug, Clone, Copy)]
+pub struct TurningAxes {
+    /// Of `tilt`.
+    pub tilt: Vector3<f64>,
+    /// Of `cross_tilt`.
+    pub cross_tilt: Vector3<f64>,
+    /// Of `roll`.
+    pub roll: Vector3<f64>,
+}
+
+impl Orientation {
+    /// The axes of tilt, cross tilt and roll: each carried along by the rotations that follow it in [`Self::rotation`].
+    #[must_use]
+    pub fn turning_axes(&self) -> TurningAxes {
+        let common = Self { about_x: self.about_x, about_y: self.about_y, ..Self::default() };
+        let rolled = Self { roll: self.roll, ..common };
+        let tilted = Self { tilt: self.tilt, ..rolled };
+        TurningAxes {
+            tilt: rolled.rotation() * Vector3::y(),
+            cross_tilt: tilted.rotation() * -Vector3::x(),
+            roll: common.rotation() * Vector3::z(),
+        }
+    }
+}
+
+/// Mount axes about which the dielectric axes turn, right-handed, when an angle of the cut grows.
+#[derive(Debug, Clone, Copy)]
+pub struct CutAxes {
+    /// Of `theta`.
+    pub theta: Vector3<f64>,
+    /// Of `phi`.
+    pub phi: Vector3<f64>,
+}
+
+impl Placement {
+    /// The axes of theta and phi: du/d theta = w and dw/d theta = -u turn everything about v as it stands in the mount;
+    /// the face turns about Z by phi, and so Z's surroundings turn back as seen from the face.
+    #[must_use]
+    pub fn cut_axes(&self, reversal: Reversal) -> CutAxes {
+        CutAxes { theta: reversal.matrix() * Vector3::y(), phi: -self.mount_from_dielectric.column(2) }
+    }
+}
+
 /// Where a crystal's dielectric axes and its mount are, worked out: turns vectors between the three frames.
 #[derive(Debug, Clone, Copy)]
 pub struct Placement {

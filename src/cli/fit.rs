@@ -111,8 +111,10 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         return run_frames(args, output);
     }
     let path = args.file.as_ref().ok_or_else(|| Failure::usage("no file of measurements"))?;
-    let data = read(&read_text(path)?).map_err(|e| Failure::usage(format!("{}: {e}", name_of(path))))?;
+    let text = read_text(path)?;
     let setup = setup(args, output)?;
+    let crystals: Vec<String> = setup.crystals.iter().map(|c| c.name.clone()).collect();
+    let data = read(&text, &crystals).map_err(|e| Failure::usage(format!("{}: {e}", name_of(path))))?;
     let question = question(args, setup, with_sigma(args, data)?)?;
     let fitted = fit(&question).map_err(|e| Failure::usage(e.to_string()))?;
     answer(args, output, &question, &fitted)
@@ -196,7 +198,6 @@ fn setup(args: &Args, output: &OutputArgs) -> Result<Setup, Failure> {
         // settles on type I, as other commands do
         setup.tuning(target, None).map_err(SetupError::from)?;
     }
-    setup.only_crystal("fit").map_err(Failure::usage)?;
     Ok(setup)
 }
 
@@ -223,8 +224,10 @@ fn question(args: &Args, setup: Setup, data: Vec<Measurement>) -> Result<Questio
         })
     });
     let priors: Vec<(String, String)> = pairs.collect::<Result<_, _>>()?;
-    let unknowns =
-        unknowns(&args.free, &priors, &setup).map_err(|e| Failure::usage(format!("--free: {e}")))?;
+    let unknowns = unknowns(&args.free, &priors, &setup).map_err(|e| {
+        let prefix = if e.starts_with("--") { "" } else { "--free: " };
+        Failure::usage(format!("{prefix}{e}"))
+    })?;
     let view =
         View { turned: args.view_turn == Some(ViewTurn::Half), mirrored: args.mirror == Some(YesNo::Yes) };
     Ok(Question { setup, unknowns, data, view, robust: args.robust })
@@ -237,15 +240,20 @@ fn answer(
     fitted: &Fitted,
 ) -> Result<Outcome, Failure> {
     let known = Known { turn: args.view_turn.is_some(), mirror: args.mirror.is_some() };
-    let views = other_views(question, known);
-    let datasets = if args.all_datasets { other_datasets(question) } else { Vec::new() };
+    let views = other_views(question, fitted, known);
+    let datasets = if args.all_datasets { other_datasets(question, fitted) } else { Vec::new() };
     let kept = kept(question, fitted);
     args.experiment.write_job(&kept)?;
     let doubts = doubts(question, fitted);
     let target = args.target.target()?.or(question.setup.cut[0].target);
+    // with several crystals no one turn is the answer
+    let target = target.filter(|_| kept.crystals.len() == 1);
     let advice = target.map(|target| Ok::<_, Failure>((target, setting_for(&kept, target)?))).transpose()?;
     let finding = Finding { question, fitted, doubts: &doubts, advice, views: &views, datasets: &datasets };
     let mut conventions = Conventions::of(&kept);
+    if !args.image.image.is_empty() {
+        conventions.uses(&["filter"]);
+    }
     if !finding.holds() {
         conventions.warnings.push("no fit: see the text of the answer".into());
     }

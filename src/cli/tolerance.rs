@@ -151,6 +151,8 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         Failure::usage("no target: pass --crossing, --half-angle, --separation or --collinear, for example --crossing 3deg")
     })?;
     setup.demand_length("tolerance")?;
+    setup.only_crystal("tolerance").map_err(Failure::usage)?;
+    setup.only_photons("tolerance").map_err(Failure::usage)?;
     let question = setup.tuning(target, None)?;
     args.experiment.write_job(&setup)?;
     let errors = args.errors.errors(&setup)?;

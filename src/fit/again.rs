@@ -15,9 +15,16 @@ pub struct Known {
     pub mirror: bool,
 }
 
+/// The question with the uncertainties that its own fit found: each other description would find larger ones for itself,
+/// and all would fit as well.
+fn measured_alike(question: &Question, fitted: &Fitted) -> Question {
+    question.with_scatter(fitted.scatter.unwrap_or(1.0))
+}
+
 /// Fits with the picture standing in the other ways that are not ruled out; none where no places were measured.
 #[must_use]
-pub fn other_views(question: &Question, known: Known) -> Vec<(View, Fitted)> {
+pub fn other_views(question: &Question, fitted: &Fitted, known: Known) -> Vec<(View, Fitted)> {
+    let question = &measured_alike(question, fitted);
     if !question.data.iter().any(|m| m.seen.has_place()) {
         return Vec::new();
     }
@@ -31,14 +38,17 @@ pub fn other_views(question: &Question, known: Known) -> Vec<(View, Fitted)> {
     View::ALL.into_iter().filter(open).filter_map(fitted).collect()
 }
 
-/// Fits with the other data sets of the material, by their ids.
+/// Fits with the other data sets of the first crystal's material, by their ids; all crystals of that material change theirs.
 #[must_use]
-pub fn other_datasets(question: &Question) -> Vec<(String, Result<Fitted, String>)> {
+pub fn other_datasets(question: &Question, fitted: &Fitted) -> Vec<(String, Result<Fitted, String>)> {
+    let question = &measured_alike(question, fitted);
     let crystal = &question.setup.crystals[0];
     let others = crystal.material.sets().iter().enumerate().filter(|(i, _)| *i != crystal.dataset);
     let each = others.map(|(index, set)| {
         let mut again = question.clone();
-        again.setup.crystals[0] = crystal.with_dataset(index);
+        for crystal in again.setup.crystals.iter_mut().filter(|c| c.material.id == crystal.material.id) {
+            *crystal = crystal.with_dataset(index);
+        }
         (set.id.clone(), fit(&again).map_err(|e| e.to_string()))
     });
     each.collect()
@@ -52,7 +62,7 @@ pub fn kept(question: &Question, fitted: &Fitted) -> Setup {
     if let Some(zero) = fitted.zero {
         setup.stage = Some(Stage { zero: Some(Angle::from_degrees(zero)), ..believed });
     }
-    setup.cut[0] = GivenCut { theta: true, phi: true, target: None };
+    setup.cut.fill(GivenCut { theta: true, phi: true, target: None });
     setup.forget_all_typed();
     setup
 }

@@ -1,15 +1,25 @@
-//! Least squares by the method of Levenberg and Marquardt (Marquardt, J. Soc. Ind. Appl. Math. 11, 431 (1963)), with
-//! bounds and central differences.
+//! Least squares by the method of Levenberg and Marquardt, with bounds; the steps are those of the crate
+//! `levenberg-marquardt` (J. J. More, Lecture Notes in Mathematics 630, 105 (1978), as in MINPACK).
 //!
-//! Unknowns come scaled, so that 1 is a change of about a standard deviation of what is known beforehand. Residuals are
-//! computed to about 1e-9 of their own scale; a central difference with step h is off by h^2 f'''/6 + 1e-9/h, so h = 1e-3
-//! leaves about 1e-6 of the slope, which is far below what any uncertainty is known to. Slopes of traced rings would need
-//! the derivative of the tracing; none is to be had in closed form for axis and circle.
+//! Unknowns come scaled, so that 1 is a change of about a standard deviation of what is known beforehand. Two things the
+//! crate does not know are put around it. What is not defined counts as residuals a thousand times as large, so that a step
+//! there is refused and a shorter one tried. Beyond a bound residuals are those on it, so that nothing is gained there, and
+//! the search begins once more from the bound itself: what the slopes drive outwards there is held, and the others go on.
 
-use nalgebra::{DMatrix, DVector};
+use std::cell::RefCell;
 
-/// Step of central differences, scaled.
-const STEP: f64 = 1e-3;
+use levenberg_marquardt::{LeastSquaresProblem, LevenbergMarquardt, TerminationReason};
+use nalgebra::storage::Owned;
+use nalgebra::{DMatrix, DVector, Dyn};
+
+/// What is to be made small.
+pub trait Residuals {
+    /// At scaled unknowns; `None` where they are not defined.
+    fn at(&mut self, x: &DVector<f64>) -> Option<DVector<f64>>;
+
+    /// Their slopes.
+    fn slopes(&mut self, x: &DVector<f64>) -> Option<DMatrix<f64>>;
+}
 
 /// Where the sum of squares is least.
 #[derive(Debug, Clone)]
@@ -26,84 +36,89 @@ pub struct Minimum {
     pub settled: bool,
 }
 
-/// From a start to the nearest minimum of the sum of squares within -bound to +bound; `None` where the residuals are not
-/// defined at the start.
-pub fn minimise(
-    residuals: &mut impl FnMut(&DVector<f64>) -> Option<DVector<f64>>,
-    start: DVector<f64>,
+/// The problem within its bounds.
+struct Bounded<'a, R> {
+    /// The crate asks for slopes of what it does not change.
+    inner: RefCell<&'a mut R>,
     bound: f64,
-) -> Option<Minimum> {
-    const STEPS: usize = 60;
-    let clamped = |x: DVector<f64>| x.map(|v| v.clamp(-bound, bound));
-    let mut x = clamped(start);
-    let mut here = residuals(&x)?;
-    let mut cost = here.norm_squared();
-    let mut damping = 1e-3;
-    let mut settled = false;
-    let mut jacobian = slopes(residuals, &x, &here)?;
-    for _ in 0..STEPS {
-        let normal = jacobian.tr_mul(&jacobian);
-        let gradient = jacobian.tr_mul(&here);
-        let mut moved = false;
-        while damping < 1e12 {
-            let mut damped = normal.clone();
-            for i in 0..damped.nrows() {
-                damped[(i, i)] += damping * (normal[(i, i)] + 1e-9 * normal.trace() + 1e-30);
-            }
-            let Some(step) = damped.cholesky().map(|c| -c.solve(&gradient)) else {
-                damping *= 10.0;
-                continue;
-            };
-            let there = clamped(&x + &step);
-            let tried =
-                residuals(&there).filter(|r| r.norm_squared().is_finite() && r.norm_squared() <= cost);
-            let Some(tried) = tried else {
-                damping *= 10.0;
-                if step.amax() < 1e-9 {
-                    break;
-                }
-                continue;
-            };
-            let gain = cost - tried.norm_squared();
-            let size = (&there - &x).amax();
-            settled = size < 1e-6 || gain <= 1e-10 * (1e-3 + cost);
-            (x, cost, here) = (there, tried.norm_squared(), tried);
-            damping = (damping * 0.1).max(1e-12);
-            moved = true;
-            break;
-        }
-        settled |= !moved;
-        if settled {
-            break;
-        }
-        jacobian = slopes(residuals, &x, &here)?;
-    }
-    let jacobian = slopes(residuals, &x, &here)?;
-    Some(Minimum { x, residuals: here, jacobian, cost, settled })
+    /// Unknowns that stay where they are.
+    held: Vec<bool>,
+    x: DVector<f64>,
+    residuals: DVector<f64>,
 }
 
-/// Slopes by central differences; from one side where the other is not defined.
-fn slopes(
-    residuals: &mut impl FnMut(&DVector<f64>) -> Option<DVector<f64>>,
-    x: &DVector<f64>,
-    here: &DVector<f64>,
-) -> Option<DMatrix<f64>> {
-    let mut jacobian = DMatrix::zeros(here.len(), x.len());
-    for i in 0..x.len() {
-        let mut at = |step: f64| {
-            let mut there = x.clone();
-            there[i] += step;
-            residuals(&there)
-        };
-        let column = match (at(STEP), at(-STEP)) {
-            (Some(up), Some(down)) => (up - down) / (2.0 * STEP),
-            (Some(up), None) => (up - here) / STEP,
-            (None, Some(down)) => (here - down) / STEP,
-            (None, None) => return None,
-        };
-        jacobian.set_column(i, &column);
+impl<R: Residuals> Bounded<'_, R> {
+    fn clamped(&self) -> DVector<f64> {
+        self.x.map(|v| v.clamp(-self.bound, self.bound))
     }
-    Some(jacobian)
+}
+
+impl<R: Residuals> LeastSquaresProblem<f64, Dyn, Dyn> for &mut Bounded<'_, R> {
+    type ResidualStorage = Owned<f64, Dyn>;
+    type JacobianStorage = Owned<f64, Dyn, Dyn>;
+    type ParameterStorage = Owned<f64, Dyn>;
+
+    fn set_params(&mut self, x: &DVector<f64>) {
+        const FAR: f64 = 1e3;
+        self.x.copy_from(x);
+        let there = self.clamped();
+        match self.inner.get_mut().at(&there).filter(|r| r.norm_squared().is_finite()) {
+            Some(residuals) => self.residuals = residuals,
+            None => self.residuals.iter_mut().for_each(|r| *r = FAR * (1.0 + r.abs())),
+        }
+    }
+
+    fn params(&self) -> DVector<f64> {
+        self.x.clone()
+    }
+
+    fn residuals(&self) -> Option<DVector<f64>> {
+        Some(self.residuals.clone())
+    }
+
+    fn jacobian(&self) -> Option<DMatrix<f64>> {
+        let mut slopes = self.inner.borrow_mut().slopes(&self.clamped())?;
+        for (mut column, held) in slopes.column_iter_mut().zip(&self.held) {
+            if *held {
+                column.fill(0.0);
+            }
+        }
+        Some(slopes)
+    }
+}
+
+/// From a start to the nearest minimum of the sum of squares within -bound to +bound; `None` where the residuals are not
+/// defined at the start.
+pub fn minimise(problem: &mut impl Residuals, start: DVector<f64>, bound: f64) -> Option<Minimum> {
+    /// Relative change of the sum of squares, or of the unknowns, that ends a search.
+    const ENOUGH: f64 = 1e-10;
+    const ROUNDS: usize = 6;
+    let mut x = start.map(|v| v.clamp(-bound, bound));
+    let mut settled = false;
+    for _ in 0..ROUNDS {
+        let residuals = problem.at(&x)?;
+        let downhill = -problem.slopes(&x)?.tr_mul(&residuals);
+        let outwards = |(x, down): (&f64, &f64)| x.abs() >= bound && x * down > 0.0;
+        let held: Vec<bool> = x.iter().zip(downhill.iter()).map(outwards).collect();
+        let any = held.contains(&true);
+        let mut bounded =
+            Bounded { inner: RefCell::new(&mut *problem), bound, held, x: x.clone(), residuals };
+        let search = LevenbergMarquardt::new().with_tol(ENOUGH).with_stepbound(10.0);
+        let (_, report) = search.minimize(&mut bounded);
+        // where nothing at all can be gained the tolerance is met more than well
+        let no_more = matches!(report.termination, TerminationReason::NoImprovementPossible(_));
+        settled = report.termination.was_successful() || no_more;
+        let clamped = bounded.clamped();
+        let left = bounded.x != clamped;
+        let moved = (&clamped - &x).amax();
+        x = clamped;
+        if !(left || any) || moved < 1e-9 {
+            break;
+        }
+    }
+    let residuals = problem.at(&x)?;
+    let jacobian = problem.slopes(&x)?;
+    Some(Minimum { cost: residuals.norm_squared(), x, residuals, jacobian, settled })
 }
 
 #[cfg(test)]
@@ -111,11 +126,32 @@ mod tests {
     use super::*;
     use approx::assert_abs_diff_eq;
 
+    struct Functions<F, G>(F, G);
+
+    impl<F: Fn(&DVector<f64>) -> Option<Vec<f64>>, G: Fn(&DVector<f64>) -> DMatrix<f64>> Residuals
+        for Functions<F, G>
+    {
+        fn at(&mut self, x: &DVector<f64>) -> Option<DVector<f64>> {
+            self.0(x).map(DVector::from_vec)
+        }
+
+        fn slopes(&mut self, x: &DVector<f64>) -> Option<DMatrix<f64>> {
+            Some(self.1(x))
+        }
+    }
+
+    fn matrix(rows: usize, columns: usize, values: &[f64]) -> DMatrix<f64> {
+        DMatrix::from_row_slice(rows, columns, values)
+    }
+
     /// Rosenbrock, Comput. J. 3, 175 (1960): a curved valley with its floor at (1, 1).
     #[test]
     fn a_curved_valley_is_followed_to_its_floor() {
-        let mut f = |x: &DVector<f64>| Some(DVector::from_vec(vec![10.0 * (x[1] - x[0] * x[0]), 1.0 - x[0]]));
-        let found = minimise(&mut f, DVector::from_vec(vec![-1.2, 1.0]), 10.0).expect("a minimum");
+        let mut valley = Functions(
+            |x: &DVector<f64>| Some(vec![10.0 * (x[1] - x[0] * x[0]), 1.0 - x[0]]),
+            |x: &DVector<f64>| matrix(2, 2, &[-20.0 * x[0], 10.0, -1.0, 0.0]),
+        );
+        let found = minimise(&mut valley, DVector::from_vec(vec![-1.2, 1.0]), 10.0).expect("a minimum");
         assert!(found.settled);
         assert_abs_diff_eq!(found.x[0], 1.0, epsilon = 1e-5);
         assert_abs_diff_eq!(found.x[1], 1.0, epsilon = 1e-5);
@@ -123,25 +159,44 @@ mod tests {
 
     #[test]
     fn bounds_hold() {
-        let mut f = |x: &DVector<f64>| Some(DVector::from_vec(vec![x[0] - 5.0]));
-        let found = minimise(&mut f, DVector::from_vec(vec![0.0]), 2.0).expect("a minimum");
+        let mut line =
+            Functions(|x: &DVector<f64>| Some(vec![x[0] - 5.0]), |_: &DVector<f64>| matrix(1, 1, &[1.0]));
+        let found = minimise(&mut line, DVector::from_vec(vec![0.0]), 2.0).expect("a minimum");
         assert_eq!(found.x[0], 2.0);
     }
 
-    /// The slopes of a straight line are those of its formula.
+    /// One unknown is driven over its bound on the way; the other has to be found all the same, along the bound.
     #[test]
-    fn slopes_are_exact_for_lines() {
-        let mut f = |x: &DVector<f64>| Some(DVector::from_vec(vec![3.0 * x[0] - x[1], x[1]]));
-        let found = minimise(&mut f, DVector::from_vec(vec![1.0, 1.0]), 10.0).expect("a minimum");
-        assert_abs_diff_eq!(found.jacobian[(0, 0)], 3.0, epsilon = 1e-9);
-        assert_abs_diff_eq!(found.jacobian[(0, 1)], -1.0, epsilon = 1e-9);
+    fn a_bound_is_followed() {
+        let mut plane = Functions(
+            |x: &DVector<f64>| Some(vec![x[0] - 5.0, x[1] - 0.1 * x[0]]),
+            |_: &DVector<f64>| matrix(2, 2, &[1.0, 0.0, -0.1, 1.0]),
+        );
+        let found = minimise(&mut plane, DVector::from_vec(vec![0.0, -1.0]), 2.0).expect("a minimum");
+        assert_eq!(found.x[0], 2.0);
+        assert_abs_diff_eq!(found.x[1], 0.2, epsilon = 1e-6);
+    }
+
+    /// The full step leads to where nothing is defined.
+    #[test]
+    fn the_border_of_what_is_defined_is_not_crossed() {
+        let mut root = Functions(
+            |x: &DVector<f64>| (x[0] > 0.0).then(|| vec![x[0].ln() + 3.0]),
+            |x: &DVector<f64>| matrix(1, 1, &[1.0 / x[0]]),
+        );
+        let found = minimise(&mut root, DVector::from_vec(vec![2.0]), 8.0).expect("a minimum");
+        assert_abs_diff_eq!(found.x[0], (-3f64).exp(), epsilon = 1e-7);
+        assert!(minimise(&mut root, DVector::from_vec(vec![-1.0]), 8.0).is_none());
     }
 
     /// A direction without any effect does not stop the others.
     #[test]
     fn an_unknown_without_effect_stays() {
-        let mut f = |x: &DVector<f64>| Some(DVector::from_vec(vec![x[0] - 0.5]));
-        let found = minimise(&mut f, DVector::from_vec(vec![0.0, 0.3]), 2.0).expect("a minimum");
+        let mut one = Functions(
+            |x: &DVector<f64>| Some(vec![x[0] - 0.5, 0.0]),
+            |_: &DVector<f64>| matrix(2, 2, &[1.0, 0.0, 0.0, 0.0]),
+        );
+        let found = minimise(&mut one, DVector::from_vec(vec![0.0, 0.3]), 2.0).expect("a minimum");
         assert_abs_diff_eq!(found.x[0], 0.5, epsilon = 1e-6);
         assert_abs_diff_eq!(found.x[1], 0.3, epsilon = 1e-9);
     }

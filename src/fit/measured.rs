@@ -22,6 +22,8 @@ pub struct Settings {
 /// Which ring a measurement belongs to, as far as it is known.
 #[derive(Debug, Clone, Copy, PartialEq, Default)]
 pub struct Label {
+    /// The crystal that shines, from 0; `None` where nothing is said.
+    pub crystal: Option<usize>,
     /// Signal or idler.
     pub photon: Option<Landing>,
     /// Of the photon.

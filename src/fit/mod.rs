@@ -5,6 +5,7 @@
 //! about keeps its prior and its prior's uncertainty instead of running away.
 
 mod again;
+mod check;
 mod diagnose;
 mod find;
 mod frame;
@@ -19,7 +20,7 @@ pub use again::{Known, kept, other_datasets, other_views, setting_for};
 pub use diagnose::{Doubt, doubts};
 pub use find::{Exposure, Found, fit_frames};
 pub use frame::{Frame, Outline};
-pub use least_squares::{Minimum, minimise};
+pub use least_squares::{Minimum, Residuals, minimise};
 pub use measured::{Label, Measurement, Seen, Settings, View};
 pub use model::{Model, Traced};
 pub use read::{FileError, TEMPLATE, read};

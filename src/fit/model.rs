@@ -2,19 +2,25 @@
 
 use nalgebra::{Vector2, Vector3};
 
+mod slopes;
+
 use super::measured::{Label, Measurement, Seen, Settings, View};
-use super::unknown::{Bearings, Unknown};
+use super::unknown::{Acts, Bearings, Unknown};
 use crate::frame::{Direction, Lab};
 use crate::job::Setup;
+use crate::matching::phase_matching_factor;
 use crate::matching::{
-    self, Emission, Landing, Meeting, Mismatch, Photons, Roles, Triplet, curves, meet, rings,
+    self, Emission, Foot, Landing, Meeting, Mismatch, Photons, Roles, Triplet, curves, meet, rings,
 };
-use crate::optics::{Indices, Polarization};
+use crate::optics::{Crystal, Indices, Polarization};
+use crate::picture::{Light, middle, samples};
 use crate::quantity::{Angle, Temperature, Wavelength};
 
 /// A ring that could be the one that was seen.
 struct Candidate {
     mismatch: Mismatch,
+    /// As the signal has them, whichever photon this is.
+    roles: Roles,
     label: (Landing, Polarization),
     length: f64,
 }
@@ -35,12 +41,20 @@ struct Predicted {
 pub struct Traced {
     /// Which photon, and its polarization.
     pub label: (Landing, Polarization),
+    /// The signal's wavelength, where filters let another than the nominal one pass.
+    pub wavelength: Option<Wavelength>,
     /// Points all round.
     pub outline: Vec<Vector2<f64>>,
     /// Middle of the circle that fits it best.
     pub centre: Vector2<f64>,
-    /// Width at half maximum.
+    /// Width at half maximum, through the filters.
     pub thickness: f64,
+    /// Of the crystal, m.
+    length: f64,
+    /// Of its face, in the lab.
+    normal: Vector3<f64>,
+    /// Mismatches at the wavelengths that are seen, with their weights.
+    band: Vec<(Mismatch, f64)>,
 }
 
 /// Predicts measurements. Holds a copy of the experiment that it turns about.
@@ -49,8 +63,8 @@ pub struct Model {
     setup: Setup,
     bearings: Bearings,
     indices: Indices,
-    /// The tilt that the job has, degrees, for rows that give none.
-    tilt: f64,
+    /// The tilt that the job gives each crystal, degrees, for rows that give none.
+    tilts: Vec<f64>,
     /// Zero of the scale as the job has it, degrees.
     believed_zero: f64,
     /// -1 where readings fall when the tilt rises.
@@ -62,7 +76,7 @@ pub struct Model {
 pub type Differences = Vec<(&'static str, f64, f64)>;
 
 impl Model {
-    /// For an experiment with one crystal whose cut is known.
+    /// For an experiment whose cuts are known. The tilt's scale is that of the first crystal.
     #[must_use]
     pub fn new(setup: &Setup, view: View) -> Self {
         let mut setup = setup.clone();
@@ -73,7 +87,7 @@ impl Model {
         let zero = setup.stage.and_then(|s| s.zero).map_or(0.0, Angle::degrees);
         let reversed = setup.stage.is_some_and(|s| s.reversed);
         Self {
-            tilt: setup.crystals[0].orientation.tilt.degrees(),
+            tilts: setup.crystals.iter().map(|c| c.orientation.tilt.degrees()).collect(),
             bearings: Bearings { zero, centre: [0.0; 2] },
             believed_zero: zero,
             sense: if reversed { -1.0 } else { 1.0 },
@@ -90,8 +104,8 @@ impl Model {
     pub fn set(&mut self, unknowns: &[Unknown], values: &[f64]) -> Result<(), String> {
         for (unknown, value) in unknowns.iter().zip(values) {
             unknown.set(*value, &mut self.setup, &mut self.bearings)?;
-            if unknown.name.ends_with("crystal.tilt") {
-                self.tilt = *value;
+            if unknown.acts == Acts::Tilt {
+                self.tilts[unknown.crystal] = *value;
             }
         }
         Ok(())
@@ -103,36 +117,43 @@ impl Model {
         &self.setup
     }
 
-    /// The tilt of the crystal, degrees, when the scale reads as a row says.
-    fn true_tilt(&self, settings: &Settings) -> f64 {
+    /// The tilt of a crystal, degrees, when the scales read as a row says.
+    fn true_tilt(&self, settings: &Settings, crystal: usize) -> f64 {
         // reading = zero + sense tilt, and a row's tilt is counted from the believed zero
-        if let Some(reading) = settings.reading {
+        if let (Some(reading), 0) = (settings.reading, crystal) {
             return self.sense * (reading - self.bearings.zero);
         }
-        settings.tilt.unwrap_or(self.tilt) + self.sense * (self.believed_zero - self.bearings.zero)
+        let off = if crystal == 0 { self.sense * (self.believed_zero - self.bearings.zero) } else { 0.0 };
+        settings.tilt.unwrap_or(self.tilts[crystal]) + off
     }
 
-    fn emission(&mut self, settings: &Settings, wavelength: Option<Wavelength>) -> Option<Emission> {
-        let pump = self.setup.pump();
-        let signal = wavelength.or_else(|| self.setup.signals.for_pump(pump).first().copied())?;
-        let photons = Photons::new(pump, signal)?;
-        let tilt = self.true_tilt(settings);
-        let crystal = &mut self.setup.crystals[0];
-        let mut turned = crystal.clone();
-        turned.orientation.tilt = Angle::from_degrees(tilt);
+    /// A crystal as the scales say it stands.
+    fn turned(&self, settings: &Settings, index: usize) -> Crystal {
+        let mut turned = self.setup.crystals[index].clone();
+        turned.orientation.tilt = Angle::from_degrees(self.true_tilt(settings, index));
         if let Some(cross) = settings.cross_tilt {
             turned.orientation.cross_tilt = Angle::from_degrees(cross);
         }
         if let Some(temperature) = settings.temperature {
             turned.temperature = Temperature::celsius(temperature);
         }
+        turned
+    }
+
+    fn emission(&mut self, settings: &Settings, label: &Label) -> Option<(usize, Emission)> {
+        let pump = self.setup.pump();
+        let index = label.crystal.unwrap_or(0);
+        let signal = label.wavelength.or_else(|| self.setup.signals.for_pump(pump).first().copied())?;
+        let photons = Photons::new(pump, signal)?;
+        let turned = self.turned(settings, index);
         let triplet = Triplet::remembered(&mut self.indices, &turned, &photons).ok()?;
-        Some(Emission::new(&turned, photons, &triplet))
+        Some((index, Emission::new(&turned, photons, &triplet)))
     }
 
     /// The rings that a label does not exclude, each once.
-    fn candidates(&self, emission: &Emission, label: &Label) -> Vec<Candidate> {
-        let wanted = emission.wanted(&self.setup.crystals[0], self.setup.interaction).unwrap_or_default();
+    fn candidates(&self, crystal: usize, emission: &Emission, label: &Label) -> Vec<Candidate> {
+        let wanted =
+            emission.wanted(&self.setup.crystals[crystal], self.setup.interaction).unwrap_or_default();
         let mut all: Vec<Candidate> = Vec::new();
         let mut names: Vec<(Landing, Polarization, Polarization)> = Vec::new();
         for roles in wanted {
@@ -149,7 +170,7 @@ impl Model {
                 names.push((landing, own, twin));
                 let Some(mismatch) = emission.mismatch(roles) else { continue };
                 let mismatch = if landing == Landing::Signal { mismatch } else { mismatch.exchanged() };
-                all.push(Candidate { mismatch, label: (landing, own), length: emission.length });
+                all.push(Candidate { mismatch, roles, label: (landing, own), length: emission.length });
             }
         }
         let fits = |c: &Candidate| {
@@ -173,12 +194,20 @@ impl Model {
     /// # Errors
     /// Indices that are not to be had, a photon that is not longer than the pump.
     pub fn choices(&mut self, measurement: &Measurement) -> Result<usize, String> {
-        let Some(emission) = self.emission(&measurement.settings, measurement.label.wavelength) else {
+        let several = self.setup.crystals.len() > 1;
+        if several && measurement.label.crystal.is_none() {
+            let names: Vec<&str> = self.setup.crystals.iter().map(|c| c.name.as_str()).collect();
+            return Err(format!(
+                "the job has several crystals: say in a column `crystal` which one shines, {}",
+                names.join(" or ")
+            ));
+        }
+        let Some((crystal, emission)) = self.emission(&measurement.settings, &measurement.label) else {
             return Err(self.no_emission(measurement));
         };
         Ok(match measurement.seen {
             Seen::Crossing(_) | Seen::CrossingAngles(_) => 1,
-            _ => self.candidates(&emission, &measurement.label).len(),
+            _ => self.candidates(crystal, &emission, &measurement.label).len(),
         })
     }
 
@@ -188,10 +217,7 @@ impl Model {
         let Some(photons) = Photons::new(pump, signal) else {
             return format!("a photon of {signal} is not longer than the pump, {pump}");
         };
-        let mut crystal = self.setup.crystals[0].clone();
-        if let Some(degc) = measurement.settings.temperature {
-            crystal.temperature = Temperature::celsius(degc);
-        }
+        let crystal = self.turned(&measurement.settings, measurement.label.crystal.unwrap_or(0));
         match Triplet::new(&crystal, &photons) {
             Err(error) => error.to_string(),
             Ok(_) => "the pump does not enter the crystal".into(),
@@ -200,11 +226,11 @@ impl Model {
 
     /// Predicted minus measured, for one of the rings it could be of; `None` where there is no such thing.
     pub fn differences(&mut self, measurement: &Measurement, choice: usize) -> Option<Differences> {
-        let emission = self.emission(&measurement.settings, measurement.label.wavelength)?;
+        let (crystal, emission) = self.emission(&measurement.settings, &measurement.label)?;
         if let Seen::Crossing(_) | Seen::CrossingAngles(_) = measurement.seen {
-            return self.crossing_differences(&emission, &measurement.seen);
+            return self.crossing_differences(crystal, &emission, &measurement.seen);
         }
-        let candidates = self.candidates(&emission, &measurement.label);
+        let candidates = self.candidates(crystal, &emission, &measurement.label);
         let candidate = candidates.get(choice)?;
         let distance = self.setup.screen.mm();
         let mut all = Vec::new();
@@ -228,20 +254,29 @@ impl Model {
             }
             Seen::Edge(seen) => {
                 let place = self.on_screen(seen) / distance;
-                all.push(("edge_mm", distance * beside(&candidate.mismatch, place)?, 0.0));
+                let beyond = Foot::of(&candidate.mismatch, place)?.beyond;
+                all.push(("edge_mm", distance * beyond, 0.0));
             }
             Seen::Crossing(_) | Seen::CrossingAngles(_) => {}
         }
         Some(all)
     }
 
-    /// All rings as they should stand in the picture, with so many points; those that are not there are left out.
+    /// All rings as they should stand in the picture, with so many points, and the light they are seen in; those that are
+    /// not there are left out.
     #[must_use]
-    pub fn traced(&mut self, settings: &Settings, points: usize) -> Vec<Traced> {
-        let Some(emission) = self.emission(settings, None) else { return Vec::new() };
+    pub fn traced(&mut self, settings: &Settings, points: usize, light: &Light) -> Vec<Traced> {
+        let nominal = self.setup.signals()[0];
+        let passed = middle(&light.signal, nominal).filter(|w| (w.nm() - nominal.nm()).abs() > 1e-6);
+        let label = Label { wavelength: passed, ..Label::default() };
+        let Some((crystal, emission)) = self.emission(settings, &label) else { return Vec::new() };
         let distance = self.setup.screen.mm();
+        let [u, v] = emission.placement.face_axes();
+        let normal = u.cross(&v);
         let mut all = Vec::new();
-        for candidate in self.candidates(&emission, &Label::default()) {
+        for candidate in self.candidates(crystal, &emission, &label) {
+            let band = self.band(settings, light, nominal, &candidate);
+            let spread = spread(&band, candidate.length);
             for ring in rings(&candidate.mismatch, candidate.length).unwrap_or_default() {
                 let place = |n: usize| {
                     let azimuth = std::f64::consts::TAU * n as f64 / points as f64;
@@ -251,35 +286,101 @@ impl Model {
                 let Some(outline) = (0..points).map(place).collect::<Option<Vec<_>>>() else { continue };
                 let centre = self.in_picture(ring.circle().0 * distance);
                 // a ring whose inside is filled is as thick as it is wide
-                let thickness = ring.thickness.unwrap_or(ring.half_angle) * distance;
-                all.push(Traced { label: candidate.label, outline, centre, thickness });
+                let thickness = (ring.thickness.unwrap_or(ring.half_angle) + spread) * distance;
+                let (label, length) = (candidate.label, candidate.length);
+                let band = band.clone();
+                all.push(Traced {
+                    label,
+                    wavelength: passed,
+                    outline,
+                    centre,
+                    thickness,
+                    length,
+                    normal,
+                    band,
+                });
             }
         }
         all
     }
 
+    /// The mismatches of a candidate's photon at all wavelengths that its filters let pass, with their weights.
+    fn band(
+        &mut self,
+        settings: &Settings,
+        light: &Light,
+        nominal: Wavelength,
+        of: &Candidate,
+    ) -> Vec<(Mismatch, f64)> {
+        // sinc^2 has no Fourier component beyond exp(2i phase): enough for phases that differ by 300 rad across the filter
+        const WAVELENGTHS: usize = 101;
+        let pump = self.setup.pump();
+        let Some(twin) = nominal.partner(pump) else { return Vec::new() };
+        let own = of.label.0 == Landing::Signal;
+        let (filters, nominal) = if own { (&light.signal, nominal) } else { (&light.idler, twin) };
+        let mut all = Vec::new();
+        for (wavelength, weight) in samples(filters, nominal, WAVELENGTHS) {
+            let Some(partner) = wavelength.partner(pump) else { continue };
+            let signal = if own { wavelength } else { partner };
+            let label = Label { wavelength: Some(signal), ..Label::default() };
+            let Some((_, emission)) = self.emission(settings, &label) else { continue };
+            let Some(mismatch) = emission.mismatch(of.roles) else { continue };
+            let mismatch = if own { mismatch } else { mismatch.exchanged() };
+            // photons are counted per d^2q d omega: k^2/(lambda_s lambda_i), as a camera's picture has it
+            let density = 1.0 / (wavelength.si().powi(3) * partner.si());
+            all.push((mismatch, weight * density));
+        }
+        all
+    }
+
+    /// How bright a traced ring's photon is at a place in the picture, over all that its filters let pass:
+    /// sinc^2(Delta_k L/2) (d.w) (d.z)^3 as a camera's picture has it, with w the face's normal.
+    #[must_use]
+    pub fn brightness(&self, ring: &Traced, place: Vector2<f64>) -> f64 {
+        let place = self.on_screen(place) / self.setup.screen.mm();
+        let to = Direction::new(Lab(place.push(1.0)));
+        let Lab(d) = to.lab();
+        let shine = |(mismatch, weight): &(Mismatch, f64)| {
+            let value = mismatch.at(mismatch.tangential(to)).map(|at| at.value);
+            value.map_or(0.0, |value| weight * phase_matching_factor(value, ring.length))
+        };
+        d.dot(&ring.normal) * d.z.powi(3) * ring.band.iter().map(shine).sum::<f64>()
+    }
+
+    /// A direction as it is seen: horizontal and vertical angle in degrees, or place in the picture in mm.
+    fn shown(&self, direction: Direction, angles: bool) -> Vector2<f64> {
+        if angles {
+            return Vector2::new(direction.h_deg(), direction.v_deg()).component_mul(&self.view.signs());
+        }
+        let Lab(d) = direction.lab();
+        self.in_picture(d.xy() / d.z * self.setup.screen.mm())
+    }
+
     /// The nearest of the predicted crossings.
-    fn crossing_differences(&self, emission: &Emission, seen: &Seen) -> Option<Differences> {
-        let points = crossings(emission, self)?;
-        let distance = self.setup.screen.mm();
-        let signs = self.view.signs();
-        let (names, seen, places): ([&'static str; 2], Vector2<f64>, Vec<Vector2<f64>>) = match seen {
-            Seen::Crossing(seen) => {
-                let place = |d: &Direction| {
-                    let Lab(d) = d.lab();
-                    self.in_picture(Vector2::new(d.x / d.z, d.y / d.z) * distance)
-                };
-                (["crossing_x_mm", "crossing_y_mm"], *seen, points.iter().map(place).collect())
-            }
-            Seen::CrossingAngles(seen) => {
-                let place = |d: &Direction| Vector2::new(signs.x * d.h_deg(), signs.y * d.v_deg());
-                (["crossing_h_deg", "crossing_v_deg"], *seen, points.iter().map(place).collect())
-            }
+    fn crossing_differences(&self, crystal: usize, emission: &Emission, seen: &Seen) -> Option<Differences> {
+        let (names, seen, angles) = match seen {
+            Seen::Crossing(seen) => (["crossing_x_mm", "crossing_y_mm"], *seen, false),
+            Seen::CrossingAngles(seen) => (["crossing_h_deg", "crossing_v_deg"], *seen, true),
             _ => return None,
         };
-        let away = |p: &&Vector2<f64>| (*p - seen).norm_squared();
-        let nearest = places.iter().min_by(|a, b| away(a).total_cmp(&away(b)))?;
+        let (points, _) = self.crossings(crystal, emission)?;
+        let places = points.iter().map(|d| self.shown(*d, angles));
+        let away = |p: &Vector2<f64>| (p - seen).norm_squared();
+        let nearest = places.min_by(|a, b| away(a).total_cmp(&away(b)))?;
         Some(vec![(names[0], nearest.x, seen.x), (names[1], nearest.y, seen.y)])
+    }
+
+    /// Where the rings of opposite polarization of a crystal cross, and the assignment whose ring was traced.
+    fn crossings(&self, crystal: usize, emission: &Emission) -> Option<(Vec<Direction>, Roles)> {
+        let wanted = emission.wanted(&self.setup.crystals[crystal], self.setup.interaction).ok()?;
+        let roles = *wanted.iter().find(|r| r.signal != r.idler)?;
+        let (one, two) = (emission.mismatch(roles)?, emission.mismatch(roles.exchanged())?);
+        curves(&two).ok()?;
+        let curve = curves(&one).ok()?.into_iter().next()?;
+        let met = meet(matching::Traced { mismatch: &one, curve: &curve }, &two);
+        let points: Vec<Direction> =
+            met.into_iter().filter(|(_, how)| *how != Meeting::Coincide).map(|(c, _)| c.direction).collect();
+        (!points.is_empty()).then_some((points, roles))
     }
 
     /// From the screen to the picture, mm.
@@ -290,6 +391,18 @@ impl Model {
     /// From the picture to the screen, mm.
     fn on_screen(&self, place: Vector2<f64>) -> Vector2<f64> {
         place.component_mul(&self.view.signs()) - Vector2::from(self.bearings.centre)
+    }
+}
+
+/// By how much the radii of rings at the ends of a band differ, in units of the distance: where filters let pass at least
+/// half of what they do at best.
+fn spread(band: &[(Mismatch, f64)], length: f64) -> f64 {
+    let most = band.iter().map(|(_, weight)| *weight).fold(0.0, f64::max);
+    let lit = || band.iter().filter(|(_, weight)| *weight >= 0.5 * most);
+    let radius = |wave: Option<&(Mismatch, f64)>| Some(rings(&wave?.0, length).ok()?.first()?.circle().1);
+    match (radius(lit().next()), radius(lit().next_back())) {
+        (Some(first), Some(last)) => (last - first).abs(),
+        _ => 0.0,
     }
 }
 
@@ -319,50 +432,4 @@ fn absent(mismatch: &Mismatch) -> Option<Predicted> {
     let psi = (2.0 * lowest.value.max(0.0) / bend.max(f64::MIN_POSITIVE)).sqrt();
     let Lab(d) = axis.lab();
     Some(Predicted { axis, half_angle: -psi, centre: Vector2::new(d.x / d.z, d.y / d.z), radius: -psi })
-}
-
-/// How far a place on the screen lies outside a ring (negative inside), in units of the distance: by steps along the
-/// gradient of Delta_k until it is zero.
-fn beside(mismatch: &Mismatch, place: Vector2<f64>) -> Option<f64> {
-    const STEPS: usize = 6;
-    let start = Vector3::new(place.x, place.y, 1.0).normalize();
-    let mut d = start;
-    let mut outside = true;
-    for step in 0..STEPS {
-        let there = mismatch.towards(d)?;
-        if step == 0 {
-            outside = there.value > 0.0;
-        }
-        let across = there.gradient - d * there.gradient.dot(&d);
-        let square = across.norm_squared();
-        if square == 0.0 {
-            return None;
-        }
-        let mut by = across * (-there.value / square);
-        // a point near the middle of a ring is sent far away by its small gradient
-        let longest = 0.1;
-        if by.norm() > longest {
-            by *= longest / by.norm();
-        }
-        d = (d + by).normalize();
-        if by.norm() < 1e-9 {
-            break;
-        }
-    }
-    let there = Vector2::new(d.x / d.z, d.y / d.z);
-    let distance = (there - place).norm();
-    Some(if outside { distance } else { -distance })
-}
-
-/// Where the rings of opposite polarization cross.
-fn crossings(emission: &Emission, model: &Model) -> Option<Vec<Direction>> {
-    let wanted = emission.wanted(&model.setup.crystals[0], model.setup.interaction).ok()?;
-    let roles = *wanted.iter().find(|r| r.signal != r.idler)?;
-    let (one, two) = (emission.mismatch(roles)?, emission.mismatch(roles.exchanged())?);
-    curves(&two).ok()?;
-    let curve = curves(&one).ok()?.into_iter().next()?;
-    let met = meet(matching::Traced { mismatch: &one, curve: &curve }, &two);
-    let points: Vec<Direction> =
-        met.into_iter().filter(|(_, how)| *how != Meeting::Coincide).map(|(c, _)| c.direction).collect();
-    (!points.is_empty()).then_some(points)
 }

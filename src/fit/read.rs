@@ -34,6 +34,8 @@ crystal_tilt_deg,what,photon,polarization,wavelength_nm,x_mm,y_mm,radius_mm,sigm
 /// A row by the names of its columns.
 struct Row<'a> {
     line: usize,
+    /// Names of the job's crystals.
+    crystals: &'a [String],
     cells: HashMap<&'a str, String>,
     decimal_comma: bool,
 }
@@ -57,6 +59,20 @@ impl Row<'_> {
                 "{column} is `{text}`, which is no number; the unit stands in the name of the column"
             ))),
         }
+    }
+
+    /// A setting of the crystal that a row is about: of its own column where there is one, such as crystal_2_tilt_deg.
+    fn of_crystal(&self, crystal: Option<usize>, what: &str) -> Result<Option<f64>, FileError> {
+        let index = crystal.unwrap_or(0);
+        let number = format!("crystal_{}_{what}", index + 1);
+        let name =
+            self.crystals.get(index).map(|name| format!("crystal_{}_{what}", name.to_ascii_lowercase()));
+        for column in [Some(number), name].into_iter().flatten() {
+            if let Some(value) = self.number(&column)? {
+                return Ok(Some(value));
+            }
+        }
+        self.number(&format!("crystal_{what}"))
     }
 
     fn pair(&self, x: &str, y: &str) -> Result<Option<Vector2<f64>>, FileError> {
@@ -93,12 +109,12 @@ const MEASURED: [&str; 16] = [
     "b_v_deg",
 ];
 
-/// Reads a table. Commas, or semicolons with decimal commas, or tabs; rows whose `status` says that there is nothing are
+/// Reads a table of a job whose crystals have these names, in the pump's order. Commas, or semicolons with decimal commas, or tabs; rows whose `status` says that there is nothing are
 /// passed over.
 ///
 /// # Errors
 /// What cannot be read, with its line; a table without measurements.
-pub fn read(text: &str) -> Result<Vec<Measurement>, FileError> {
+pub fn read(text: &str, crystals: &[String]) -> Result<Vec<Measurement>, FileError> {
     let text = text.trim_start_matches('\u{feff}');
     let header =
         text.lines().find(|line| !line.trim().is_empty() && !line.starts_with('#')).unwrap_or_default();
@@ -118,10 +134,16 @@ pub fn read(text: &str) -> Result<Vec<Measurement>, FileError> {
     check_names(&names)?;
     let mut all = Vec::new();
     for record in reader.records() {
-        let record = record.map_err(unreadable)?;
+        let record = record.map_err(|e| match e.kind() {
+            csv::ErrorKind::UnequalLengths { pos, expected_len, len } => FileError(format!(
+                "line {}: {len} cells where the first line names {expected_len} columns",
+                pos.as_ref().map_or(0, csv::Position::line)
+            )),
+            _ => unreadable(e),
+        })?;
         let line = record.position().map_or(0, |p| p.line() as usize);
         let cells = names.iter().map(String::as_str).zip(record.iter().map(String::from)).collect();
-        let row = Row { line, cells, decimal_comma: delimiter != b',' };
+        let row = Row { line, crystals, cells, decimal_comma: delimiter != b',' };
         measurements(&row, &mut all)?;
     }
     if all.is_empty() {
@@ -154,19 +176,19 @@ fn check_names(names: &[String]) -> Result<(), FileError> {
 }
 
 fn measurements(row: &Row<'_>, all: &mut Vec<Measurement>) -> Result<(), FileError> {
+    let label = label(row)?;
     let settings = Settings {
-        tilt: row.number("crystal_tilt_deg")?,
+        tilt: row.of_crystal(label.crystal, "tilt_deg")?,
         reading: row.number("stage_reading_deg")?,
-        cross_tilt: row.number("crystal_cross_tilt_deg")?,
-        temperature: row.number("crystal_temperature_degc")?,
+        cross_tilt: row.of_crystal(label.crystal, "cross_tilt_deg")?,
+        temperature: row.of_crystal(label.crystal, "temperature_degc")?,
     };
-    for turn in [settings.tilt, settings.cross_tilt].into_iter().flatten() {
+    for turn in [settings.tilt, settings.cross_tilt, settings.reading].into_iter().flatten() {
         if turn.abs() > 60.0 {
             return Err(row.fault(&format!("a turn of {turn} deg: the beam would miss the face")));
         }
     }
     let (in_mm, in_deg) = (positive(row, "sigma_mm")?, positive(row, "sigma_deg")?);
-    let label = label(row)?;
     let before = all.len();
     let mut push = |seen: Seen, label: Label| {
         let sigma = if seen.is_angle() { in_deg } else { in_mm };
@@ -174,7 +196,11 @@ fn measurements(row: &Row<'_>, all: &mut Vec<Measurement>) -> Result<(), FileErr
     };
     for arm in ["a", "b"] {
         let name = |what: &str| format!("{arm}_{what}");
-        let label = Label { wavelength: wavelength(row, &name("wavelength_nm"))?, ..Label::default() };
+        let label = Label {
+            wavelength: wavelength(row, &name("wavelength_nm"))?,
+            crystal: label.crystal,
+            ..Label::default()
+        };
         if let Some(place) = row.pair(&name("x_mm"), &name("y_mm"))? {
             push(Seen::Crossing(place), label);
         } else if let Some(place) = row.pair(&name("h_deg"), &name("v_deg"))? {
@@ -234,6 +260,28 @@ fn wavelength(row: &Row<'_>, column: &str) -> Result<Option<Wavelength>, FileErr
     }
 }
 
+/// The crystal that a row names, by number or name; rows of crossings name two, which have to be one.
+fn crystal(row: &Row<'_>) -> Result<Option<usize>, FileError> {
+    if let (Some(first), Some(second)) = (row.text("first_crystal"), row.text("second_crystal"))
+        && first != second
+    {
+        return Err(row.fault(
+            "a crossing of two crystals' rings is not fitted: give the rings themselves, a line for each with its crystal",
+        ));
+    }
+    let Some(word) = row.text("crystal").or(row.text("first_crystal")) else { return Ok(None) };
+    let named = row.crystals.iter().position(|name| name == word);
+    let numbered =
+        || word.parse::<usize>().ok().map(|n| n.wrapping_sub(1)).filter(|n| *n < row.crystals.len());
+    match named.or_else(numbered) {
+        Some(index) => Ok(Some(index)),
+        None => Err(row.fault(&format!(
+            "there is no crystal `{word}` in the job, which has {}; describe all of them, each in a [[crystal]]",
+            row.crystals.join(", ")
+        ))),
+    }
+}
+
 fn label(row: &Row<'_>) -> Result<Label, FileError> {
     let photon = match row.text("photon") {
         None => None,
@@ -255,35 +303,54 @@ fn label(row: &Row<'_>) -> Result<Label, FileError> {
             );
         }
     };
-    Ok(Label { photon, polarization, wavelength: wavelength(row, "wavelength_nm")? })
+    Ok(Label { crystal: crystal(row)?, photon, polarization, wavelength: wavelength(row, "wavelength_nm")? })
 }
 
 #[cfg(test)]
 mod tests {
     use super::*;
 
+    fn one() -> Vec<String> {
+        vec!["1".into()]
+    }
+
+    /// Each row turns the crystal that it is about.
+    #[test]
+    fn rows_of_a_stack_name_their_crystal() {
+        let both = ["first".to_string(), "second".to_string()];
+        let text = "crystal_1_tilt_deg,crystal_second_tilt_deg,crystal,radius_mm\n1,2,first,50\n1,2,2,51\n";
+        let all = read(text, &both).expect("a table");
+        assert_eq!(all.iter().map(|m| m.label.crystal).collect::<Vec<_>>(), [Some(0), Some(1)]);
+        assert_eq!(all.iter().map(|m| m.settings.tilt).collect::<Vec<_>>(), [Some(1.0), Some(2.0)]);
+        let said = read("crystal,radius_mm\nthird,50\n", &both).expect_err("no such crystal").0;
+        assert!(said.contains("line 2") && said.contains("first, second"), "{said}");
+        let met = "first_crystal,second_crystal,a_x_mm,a_y_mm\nfirst,second,1,2\n";
+        assert!(read(met, &both).expect_err("two crystals").0.contains("give the rings"));
+    }
+
     #[test]
     fn the_template_reads() {
-        let all = read(TEMPLATE).expect("the template is a table");
+        let all = read(TEMPLATE, &one()).expect("the template is a table");
         assert_eq!(all.len(), 5);
         assert!(matches!(all[3].seen, Seen::Crossing(_)) && matches!(all[4].seen, Seen::Edge(_)));
     }
 
     #[test]
     fn semicolons_come_with_decimal_commas() {
-        let all =
-            read("crystal_tilt_deg;x_mm;y_mm;radius_mm;sigma_mm\n0,5;1,25;-3;80,5;0,5\n").expect("a table");
+        let all = read("crystal_tilt_deg;x_mm;y_mm;radius_mm;sigma_mm\n0,5;1,25;-3;80,5;0,5\n", &one())
+            .expect("a table");
         let Seen::Ring { centre: Some(centre), radius: Some(radius) } = all[0].seen else { panic!("a ring") };
         assert_eq!((centre.x, centre.y, radius, all[0].settings.tilt), (1.25, -3.0, 80.5, Some(0.5)));
     }
 
     #[test]
     fn what_cannot_be_read_is_named() {
-        let said = |text: &str| read(text).expect_err("no table").0;
+        let said = |text: &str| read(text, &one()).expect_err("no table").0;
         assert!(said("x_cm,y_cm,radius_cm\n1,2,3\n").contains("x_mm"));
         assert!(said("x_mm,y_mm,radius_mm\n1,2,80mm\n").contains("line 2"));
         assert!(said("x_mm,y_mm,radius_mm\n1,,80\n").contains("y_mm"));
         assert!(said("x_mm,y_mm,radius_mm\n1,2,-80\n").contains("above 0"));
+        assert!(said("x_mm,y_mm,radius_mm\n1,2,80,4\n").contains("line 2: 4 cells"));
         assert!(said("time,mood\n1,2\n").contains("--template"));
         assert!(said("").contains("--template"));
     }

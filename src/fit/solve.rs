@@ -3,8 +3,9 @@
 use nalgebra::{DMatrix, DVector};
 use thiserror::Error;
 
-use super::least_squares::{Minimum, minimise};
-use super::measured::{Measurement, Seen, View};
+use super::check::check;
+use super::least_squares::{Minimum, Residuals, minimise};
+use super::measured::{Measurement, View};
 use super::model::{Differences, Model};
 use super::unknown::Unknown;
 use crate::job::Setup;
@@ -95,6 +96,8 @@ pub struct Fitted {
     pub information: DMatrix<f64>,
     /// Sum of squared pulls of the data.
     pub chi_square: f64,
+    /// Sum of squares of the unknowns' distances from their priors, in standard deviations.
+    pub strain: f64,
     /// Numbers measured minus unknowns that the data determine.
     pub freedom: f64,
     /// Every number.
@@ -114,6 +117,13 @@ pub struct Fitted {
 }
 
 impl Fitted {
+    /// What speaks against the values: chi-square of the data and distance from what was believed. The most likely of
+    /// several descriptions has the least.
+    #[must_use]
+    pub fn against(&self) -> f64 {
+        self.chi_square + self.strain
+    }
+
     /// chi-square over the degrees of freedom; `None` where there are none.
     #[must_use]
     pub fn reduced(&self) -> Option<f64> {
@@ -134,11 +144,20 @@ pub fn fit(question: &Question) -> Result<Fitted, FitError> {
         return Ok(first);
     }
     let scatter = first.reduced().map_or(1.0, |r| r.sqrt().max(LEAST));
-    let mut again = question.clone();
-    for m in again.data.iter_mut().filter(|m| m.sigma.is_none()) {
-        m.sigma = Some(scatter * assumed(m));
-    }
+    let again = question.with_scatter(scatter);
     Ok(Fitted { scatter: Some(scatter), ..fit_as_stated(&again)? })
+}
+
+impl Question {
+    /// The same with uncertainties for what has none, so many times what is assumed.
+    #[must_use]
+    pub fn with_scatter(&self, scatter: f64) -> Self {
+        let mut again = self.clone();
+        for m in again.data.iter_mut().filter(|m| m.sigma.is_none()) {
+            m.sigma = Some(scatter * assumed(m));
+        }
+        again
+    }
 }
 
 /// What a measurement without a stated uncertainty is taken to have at first.
@@ -176,56 +195,6 @@ fn fit_as_stated(question: &Question) -> Result<Fitted, FitError> {
 
 fn swapped(assigned: &[usize], choices: &[usize]) -> Vec<usize> {
     assigned.iter().zip(choices).map(|(a, c)| if *c == 2 { 1 - a } else { *a }).collect()
-}
-
-/// What can be said without computing.
-fn check(question: &Question) -> Result<(), FitError> {
-    let numbers: usize = question.data.iter().map(|m| m.seen.count()).sum();
-    let unknowns = question.unknowns.len();
-    if unknowns == 0 {
-        return Err(FitError("nothing is free: pass --free, for example --free theta,zero".into()));
-    }
-    if numbers < unknowns {
-        let names: Vec<&str> = question.unknowns.iter().map(|u| u.name.as_str()).collect();
-        return Err(FitError(format!(
-            "{numbers} measured number{} for {unknowns} unknowns ({}): measure more rings, at three or more tilts, or free fewer",
-            if numbers == 1 { "" } else { "s" },
-            names.join(", ")
-        )));
-    }
-    let distance = question.setup.screen.mm();
-    let far = 60f64.to_radians().tan() * distance;
-    for m in &question.data {
-        let beyond = |what: &str, value: f64| {
-            FitError(format!(
-                "line {}: {what} {value} mm on a screen at {distance} mm lies more than 60 deg off the pump; look at the unit \
-                 and at --distance",
-                m.line
-            ))
-        };
-        match m.seen {
-            Seen::Ring { centre, radius } => {
-                if let Some(c) = centre.filter(|c| c.norm() > far) {
-                    return Err(beyond("a centre", c.norm()));
-                }
-                if let Some(r) = radius.filter(|r| *r > far) {
-                    return Err(beyond("a radius of", r));
-                }
-            }
-            Seen::Edge(p) | Seen::Crossing(p) if p.norm() > far => return Err(beyond("a point", p.norm())),
-            Seen::Cone { axis, half_angle } => {
-                let wide = axis.map_or(0.0, |a| a.norm()).max(half_angle.unwrap_or(0.0));
-                if wide > 60.0 {
-                    return Err(FitError(format!(
-                        "line {}: {wide} deg is more than 60 deg off the pump",
-                        m.line
-                    )));
-                }
-            }
-            _ => {}
-        }
-    }
-    Ok(())
 }
 
 /// A fit in progress.
@@ -290,6 +259,72 @@ impl<'a> Search<'a> {
         Some(DVector::from_vec(all))
     }
 
+    /// Slopes of the residuals: exact where there is a ring, else by central differences.
+    fn slopes(&mut self, x: &DVector<f64>, assigned: &[usize]) -> Option<DMatrix<f64>> {
+        self.set(x)?;
+        let question = self.question;
+        let unknowns = &question.unknowns;
+        let mut rows = Vec::new();
+        for (m, choice) in question.data.iter().zip(assigned) {
+            let sigma = self.sigma(m);
+            let differences = self.model.differences(m, *choice)?;
+            let slopes = match self.model.slopes(m, *choice, unknowns) {
+                Some(slopes) => slopes,
+                None => self.across(x, m, *choice, differences.len())?,
+            };
+            for (row, (_, fitted, seen)) in slopes.row_iter().zip(&differences) {
+                let steep = self.loss_slope((fitted - seen) / sigma) / sigma;
+                rows.push(row.transpose().zip_map(&self.scales(), |slope, scale| steep * scale * slope));
+            }
+        }
+        for (i, unknown) in unknowns.iter().enumerate() {
+            let mut row = DVector::zeros(unknowns.len());
+            row[i] = if unknown.prior_sigma.is_some() { 1.0 } else { 0.0 };
+            rows.push(row);
+        }
+        Some(DMatrix::from_fn(rows.len(), unknowns.len(), |i, j| rows[i][j]))
+    }
+
+    fn scales(&self) -> DVector<f64> {
+        DVector::from_iterator(self.question.unknowns.len(), self.question.unknowns.iter().map(|u| u.scale))
+    }
+
+    /// Slopes of the differences of one measurement in the unknowns' units by differences over a thousandth of the scale, to
+    /// both sides or to the one where there is something: for the stand-in of a ring that is not there, whose slope is that
+    /// of a search and not of a prediction, and for rings that only touch.
+    fn across(
+        &mut self,
+        x: &DVector<f64>,
+        m: &Measurement,
+        choice: usize,
+        rows: usize,
+    ) -> Option<DMatrix<f64>> {
+        const STEP: f64 = 1e-3;
+        let here = self.model.differences(m, choice)?;
+        let scales = self.scales();
+        let mut slopes = DMatrix::zeros(rows, x.len());
+        for i in 0..x.len() {
+            let mut at = |step: f64| {
+                let mut there = x.clone();
+                there[i] += step;
+                self.set(&there)?;
+                self.model.differences(m, choice)
+            };
+            let (up, down) = (at(STEP), at(-STEP));
+            let (to, from, step) = match (&up, &down) {
+                (Some(up), Some(down)) => (up, down, 2.0 * STEP),
+                (Some(up), None) => (up, &here, STEP),
+                (None, Some(down)) => (&here, down, STEP),
+                (None, None) => return None,
+            };
+            for row in 0..rows {
+                slopes[(row, i)] = (to[row].1 - from[row].1) / (step * scales[i]);
+            }
+        }
+        self.set(x)?;
+        Some(slopes)
+    }
+
     fn square(&self, differences: &Differences, sigma: f64) -> f64 {
         differences.iter().map(|(_, fitted, seen)| self.loss((fitted - seen) / sigma).powi(2)).sum()
     }
@@ -301,6 +336,14 @@ impl<'a> Search<'a> {
         }
         // r'^2 = 2 k |r| - k^2
         pull.signum() * (2.0 * ROBUST * pull.abs() - ROBUST * ROBUST).sqrt()
+    }
+
+    /// Slope of [`Self::loss`].
+    fn loss_slope(&self, pull: f64) -> f64 {
+        if !self.question.robust || pull.abs() <= ROBUST {
+            return 1.0;
+        }
+        ROBUST / (2.0 * ROBUST * pull.abs() - ROBUST * ROBUST).sqrt()
     }
 
     /// The ring of each measurement that lies nearest, and the sum of squares that makes; `None` where something does
@@ -356,7 +399,7 @@ impl<'a> Search<'a> {
     }
 
     fn run(&mut self, start: DVector<f64>, assigned: &[usize]) -> Option<Minimum> {
-        minimise(&mut |x| self.residuals(x, assigned), start, BOUND)
+        minimise(&mut Assigned { search: self, assigned }, start, BOUND)
     }
 
     /// Fits and assigns anew until the assignment stays.
@@ -433,6 +476,12 @@ impl<'a> Search<'a> {
             at_bound: minimum.x.iter().map(|z| z.abs() >= BOUND - 1e-6).collect(),
             information,
             chi_square,
+            strain: unknowns
+                .iter()
+                .zip(minimum.x.iter())
+                .filter(|(u, _)| u.prior_sigma.is_some())
+                .map(|(_, z)| z * z)
+                .sum(),
             freedom,
             residuals,
             other_way: other.map(|cost| chi_square + cost - minimum.cost),
@@ -467,6 +516,22 @@ impl<'a> Search<'a> {
             size.is_none_or(|all| all.iter().any(negative))
         };
         question.data.iter().zip(assigned).filter(gone).map(|(m, _)| m.line).collect()
+    }
+}
+
+/// The residuals of a search with an assignment.
+struct Assigned<'a, 'b> {
+    search: &'a mut Search<'b>,
+    assigned: &'a [usize],
+}
+
+impl Residuals for Assigned<'_, '_> {
+    fn at(&mut self, x: &DVector<f64>) -> Option<DVector<f64>> {
+        self.search.residuals(x, self.assigned)
+    }
+
+    fn slopes(&mut self, x: &DVector<f64>) -> Option<DMatrix<f64>> {
+        self.search.slopes(x, self.assigned)
     }
 }
 

@@ -9,6 +9,10 @@ pub struct Unknown {
     /// Key of the job, such as `crystal.cut.theta`.
     pub name: String,
     what: What,
+    /// What of the model it changes.
+    pub(super) acts: Acts,
+    /// On which crystal, from 0.
+    pub(super) crystal: usize,
     /// Unit of its numbers, as a job writes it.
     pub unit: &'static str,
     /// What is known beforehand, or where to begin.
@@ -24,6 +28,42 @@ enum What {
     Key(Handle, Unit),
     Zero,
     Centre(usize),
+}
+
+/// What of the model an unknown changes: that of which there are exact derivatives.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(super) enum Acts {
+    Theta,
+    Phi,
+    Tilt,
+    CrossTilt,
+    Roll,
+    Temperature,
+    Poling,
+    Pump,
+    Distance,
+    Zero,
+    Centre(usize),
+}
+
+impl Acts {
+    fn of(key: &str) -> Option<Self> {
+        Some(match key {
+            "crystal.cut.theta" => Self::Theta,
+            "crystal.cut.phi" => Self::Phi,
+            "crystal.tilt" => Self::Tilt,
+            "crystal.cross_tilt" => Self::CrossTilt,
+            "crystal.roll" => Self::Roll,
+            "crystal.temperature" => Self::Temperature,
+            "crystal.poling" => Self::Poling,
+            "pump.wavelength" => Self::Pump,
+            "screen.distance" => Self::Distance,
+            "stage.zero" => Self::Zero,
+            "screen.centre.x" => Self::Centre(0),
+            "screen.centre.y" => Self::Centre(1),
+            _ => return None,
+        })
+    }
 }
 
 /// What the unknowns set, beside the experiment.
@@ -120,40 +160,59 @@ fn one(name: &str, setup: &Setup) -> Result<Unknown, String> {
         // a tape measure and the middle of a crystal
         limit = 0.01 * setup.screen.mm();
     }
-    let (what, unit, prior) = match plain {
-        "stage.zero" => {
+    let cannot = || format!("`{name}` cannot be fitted");
+    let acts = Acts::of(plain).ok_or_else(cannot)?;
+    let mut crystal = 0;
+    let (what, unit, prior) = match acts {
+        Acts::Zero => {
             let zero = setup.stage.and_then(|s| s.zero).unwrap_or_default();
             (What::Zero, "deg", zero.degrees())
         }
-        "screen.centre.x" => (What::Centre(0), "mm", 0.0),
-        "screen.centre.y" => (What::Centre(1), "mm", 0.0),
+        Acts::Centre(axis) => (What::Centre(axis), "mm", 0.0),
         _ => {
-            let path = path.ok_or_else(|| format!("`{name}` cannot be fitted"))?;
+            let path = path.ok_or_else(cannot)?;
             let handle = Handle::of(&path, setup).ok_or_else(|| {
-                format!(
-                    "`{name}` cannot be fitted: the job has several crystals, or its signal hangs on the pump"
-                )
+                if plain.starts_with("crystal.") && path.item.is_none() {
+                    one_of_several(plain, setup)
+                } else {
+                    format!("`{name}` cannot be fitted: the job has no such crystal, or its signal hangs on the pump")
+                }
             })?;
-            let (unit, prior) =
-                now(plain, &path, setup).ok_or_else(|| format!("`{name}` cannot be fitted"))?;
+            crystal = numbered(&path, setup).ok_or_else(cannot)?;
+            let (unit, prior) = now(plain, crystal, setup).ok_or_else(cannot)?;
             (What::Key(handle, unit), unit.name(), prior)
         }
     };
     let sigma = limit / 3f64.sqrt();
-    Ok(Unknown { name: name.into(), what, unit, prior, prior_sigma: Some(sigma), scale: sigma })
+    Ok(Unknown {
+        name: name.into(),
+        what,
+        acts,
+        crystal,
+        unit,
+        prior,
+        prior_sigma: Some(sigma),
+        scale: sigma,
+    })
+}
+
+/// The keys that a bare one could mean where there are several crystals.
+fn one_of_several(plain: &str, setup: &Setup) -> String {
+    let last = plain.trim_start_matches("crystal.");
+    let each = setup.crystals.iter().map(|c| format!("crystal.{}.{last}", c.name));
+    format!("the job has several crystals; write {}", each.collect::<Vec<_>>().join(" or "))
+}
+
+/// The crystal that a key names, from 0: the first where it names none.
+fn numbered(path: &KeyPath, setup: &Setup) -> Option<usize> {
+    let Some(item) = path.item.as_deref() else { return Some(0) };
+    let number = item.parse::<usize>().ok().map(|n| n.wrapping_sub(1)).filter(|n| *n < setup.crystals.len());
+    number.or_else(|| setup.crystals.iter().position(|c| c.name == item))
 }
 
 /// Unit and present value of a key.
-fn now(plain: &str, path: &KeyPath, setup: &Setup) -> Option<(Unit, f64)> {
-    let index = match path.item.as_deref() {
-        Some(item) => item
-            .parse::<usize>()
-            .ok()
-            .map(|n| n.wrapping_sub(1))
-            .or_else(|| setup.crystals.iter().position(|c| c.name == item))?,
-        None => 0,
-    };
-    let crystal = setup.crystals.get(index)?;
+fn now(plain: &str, crystal: usize, setup: &Setup) -> Option<(Unit, f64)> {
+    let crystal = setup.crystals.get(crystal)?;
     let stands = &crystal.orientation;
     Some(match plain {
         "crystal.cut.theta" => (Unit::Deg, crystal.cut.theta.degrees()),

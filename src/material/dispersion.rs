@@ -60,14 +60,14 @@ pub struct TemperatureFactor {
 }
 
 impl TemperatureFactor {
-    fn at<D: DualNum<Primitive = f64> + Copy>(self, temperature: D) -> D {
+    fn at<D: DualNum<f64> + Copy>(self, temperature: D) -> D {
         (temperature - self.minus) * (temperature + self.plus)
     }
 }
 
 impl Axis {
     /// Square of the index, without thermo-optic terms that add to n.
-    pub fn n_squared<D: DualNum<Primitive = f64> + Copy>(
+    pub fn n_squared<D: DualNum<f64> + Copy>(
         &self,
         um: D,
         temperature: D,
@@ -104,7 +104,7 @@ impl Axis {
     }
 }
 
-fn power<D: DualNum<Primitive = f64> + Copy>(x: D, exponent: f64) -> D {
+fn power<D: DualNum<f64> + Copy>(x: D, exponent: f64) -> D {
     if exponent.fract() == 0.0 && exponent.abs() < 100.0 { x.powi(exponent as i32) } else { x.powf(exponent) }
 }
 
@@ -120,7 +120,7 @@ pub struct ThermoAxis {
 
 impl ThermoAxis {
     /// What is added to n at `t` degrees above the reference temperature.
-    pub fn delta<D: DualNum<Primitive = f64> + Copy>(&self, um: D, t: D) -> D {
+    pub fn delta<D: DualNum<f64> + Copy>(&self, um: D, t: D) -> D {
         let sum = |terms: &[PowerTerm]| {
             terms.iter().fold(D::from(0.0), |sum, p| sum + power(um, p.exponent) * p.coefficient)
         };

@@ -14,6 +14,7 @@ pub use error::MaterialError;
 pub use file::{Known, Optic, Relative};
 
 use nalgebra::{Matrix3, Vector3};
+use num_dual::DualNum;
 use toml::Spanned;
 
 use crate::quantity::{Angle, Temperature, Wavelength};
@@ -156,14 +157,21 @@ impl Material {
     /// Length at `temperature` of a length 1 at 25 degC (or at `reference`), along a direction in the dielectric frame.
     #[must_use]
     pub fn expansion(&self, along: Vector3<f64>, reference: Temperature, temperature: Temperature) -> f64 {
-        let Some((own_reference, axes)) = &self.expansion else { return 1.0 };
-        let strain = |axis: &ExpansionAxis, at: Temperature| {
-            let t = at.degc() - own_reference.degc();
-            axis.linear_per_k * t + axis.quadratic_per_k2 * t * t
+        self.expansion_of([along.x, along.y, along.z], reference, temperature.degc())
+    }
+
+    /// The same over a scalar that carries derivatives; `degc` is the temperature in degC.
+    #[must_use]
+    pub fn expansion_of<D: DualNum<f64> + Copy>(&self, along: [D; 3], reference: Temperature, degc: D) -> D {
+        let Some((own_reference, axes)) = &self.expansion else { return D::from(1.0) };
+        let strain = |axis: &ExpansionAxis, at: D| {
+            let t = at - own_reference.degc();
+            t * axis.linear_per_k + t * t * axis.quadratic_per_k2
         };
         // strain tensor is diagonal in the dielectric frame: dl/l = sum_i s_i a_i^2
-        let along_at = |at: Temperature| (0..3).map(|i| strain(&axes[i], at) * along[i].powi(2)).sum::<f64>();
-        (1.0 + along_at(temperature)) / (1.0 + along_at(reference))
+        let along_at =
+            |at: D| (0..3).fold(D::from(0.0), |sum, i| sum + strain(&axes[i], at) * along[i] * along[i]);
+        (along_at(degc) + 1.0) / (along_at(D::from(reference.degc())) + 1.0)
     }
 
     /// What `phi` is called in the other choice of crystal axes in use: the smallest equivalent angle, and how to tell

@@ -64,6 +64,43 @@ impl Wave {
     }
 }
 
+/// A small change of a medium, for each unit of whatever changes it.
+#[derive(Debug, Clone, Copy, Default)]
+pub struct Drift {
+    /// Of the vacuum wavenumber, rad/m.
+    pub k0: f64,
+    /// Of 1/n^2 along X, Y, Z.
+    pub eta: Vector3<f64>,
+    /// Turn of the dielectric axes in the mount frame, right-handed, radians.
+    pub turn: Vector3<f64>,
+}
+
+/// One wave of a sheet with what its first-order changes are made of.
+#[derive(Debug, Clone, Copy)]
+pub struct Tangent {
+    k0: f64,
+    k: Vector3<f64>,
+    /// Half the gradient of G.
+    flow: Vector3<f64>,
+    /// Squares of the unit displacement's components along X, Y, Z, times k^2: dG/d eta.
+    weight: Vector3<f64>,
+}
+
+impl Tangent {
+    /// First-order change of the normal component, rad/m, when the medium drifts and the tangential one changes by `q`.
+    ///
+    /// G(k; eta, axes) = k0^2 holds throughout. Axes turned by t see k turned back, so dG = -grad G . (t x k) at fixed k;
+    /// dG/d eta_i = k^2 D_i^2, since D is an eigenvector and its own change does not count. With g = grad G/2
+    ///
+    /// d k_w = [k0 dk0 - k^2 sum_i D_i^2 d eta_i/2 + g.(t x k) - g_u dq_u - g_v dq_v] / g_w.
+    #[must_use]
+    pub fn change(&self, drift: &Drift, q: Tangential) -> f64 {
+        let turned = self.flow.dot(&drift.turn.cross(&self.k));
+        let along = self.flow.x * q.u + self.flow.y * q.v;
+        (self.k0 * drift.k0 - 0.5 * self.weight.dot(&drift.eta) + turned - along) / self.flow.z
+    }
+}
+
 /// A crystal at one frequency, oriented in the mount frame.
 #[derive(Debug, Clone, Copy)]
 pub struct Medium {
@@ -140,6 +177,32 @@ impl Medium {
     pub fn wave(&self, sheet: Sheet, q: Tangential) -> Option<Wave> {
         let normal = self.surface(sheet).normal(q)?;
         Some(self.wave_at(sheet, q, &normal))
+    }
+
+    /// What first-order changes of a sheet's wave are made of, at a tangential wave vector (rad/m); `None` where the wave
+    /// is evanescent.
+    #[must_use]
+    pub fn tangent(&self, sheet: Sheet, q: Tangential) -> Option<Tangent> {
+        let k = Vector3::new(q.u, q.v, self.surface(sheet).normal(q)?.k_w);
+        let displacement = self.axes.tr_mul(&self.displacement(sheet, k).0);
+        Some(Tangent {
+            k0: self.k0,
+            k,
+            flow: self.surface(sheet).flow(k),
+            weight: displacement.component_mul(&displacement) * k.norm_squared(),
+        })
+    }
+
+    /// d(1/n^2)/d k0 along X, Y, Z, m.
+    #[must_use]
+    pub fn dispersion(&self) -> Vector3<f64> {
+        self.eta_w * SPEED_OF_LIGHT
+    }
+
+    /// Dielectric axes X, Y, Z as columns in the mount frame.
+    #[must_use]
+    pub fn axes(&self) -> &Matrix3<f64> {
+        &self.axes
     }
 
     /// The wave whose normal component is already known.

@@ -12,7 +12,7 @@ pub use along::{Along, along_axes, along_direction};
 pub use crystal::Crystal;
 pub use index::{IndexRow, index_rows, missing};
 pub use indices::Indices;
-pub use medium::{Medium, Polarization, Wave};
+pub use medium::{Drift, Medium, Polarization, Tangent, Wave};
 pub use retardation::retardation;
 pub(crate) use surface::Quadric;
 pub use surface::{Curvature, Normal, Sheet, Surface};

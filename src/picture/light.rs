@@ -45,7 +45,7 @@ fn window(filters: &[Filter], nominal: Wavelength) -> Option<[f64; 2]> {
 }
 
 /// The middle of what filters let pass, the nominal wavelength without any; `None` where nothing passes.
-pub(super) fn centre(filters: &[Filter], nominal: Wavelength) -> Option<Wavelength> {
+pub(crate) fn centre(filters: &[Filter], nominal: Wavelength) -> Option<Wavelength> {
     match filters {
         [] => Some(nominal),
         [one] => Some(one.centre.unwrap_or(nominal)),
@@ -56,7 +56,7 @@ pub(super) fn centre(filters: &[Filter], nominal: Wavelength) -> Option<Waveleng
 /// `count` wavelengths across filters that stand one behind the other and their weights: midpoints of equal intervals. A
 /// weight is the product of the transmissions times d omega, which is d lambda / lambda^2; for one filter weights add up to
 /// 1, for several to what the others let pass of what the narrowest one does.
-pub(super) fn samples(filters: &[Filter], nominal: Wavelength, count: usize) -> Vec<(Wavelength, f64)> {
+pub(crate) fn samples(filters: &[Filter], nominal: Wavelength, count: usize) -> Vec<(Wavelength, f64)> {
     let Some(narrowest) = filters.iter().min_by(|a, b| a.width.si().total_cmp(&b.width.si())) else {
         return vec![(nominal, 1.0)];
     };

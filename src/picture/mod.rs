@@ -29,6 +29,7 @@ pub use files::{Depth, png_size};
 pub use front::{front, front_of};
 pub use glow::{GlowError, Sampling};
 pub use light::{Filter, Light, Shape};
+pub(crate) use light::{centre as middle, samples};
 pub use notes::notes;
 pub use phase::{Phases, phase};
 pub use pump_light::{PumpLight, taken};

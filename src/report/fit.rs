@@ -80,7 +80,9 @@ impl Finding<'_> {
     fn extrapolated(&self) -> bool {
         let setup = &self.fitted.setup;
         let photons = setup.photons();
-        [photons.pump, photons.signal, photons.idler].iter().any(|w| setup.crystals[0].extrapolates(*w))
+        [photons.pump, photons.signal, photons.idler]
+            .iter()
+            .any(|w| setup.crystals.iter().any(|c| c.extrapolates(*w)))
     }
 }
 
@@ -188,11 +190,11 @@ pub fn view_words(view: View) -> &'static str {
 #[must_use]
 pub fn text(finding: &Finding<'_>) -> String {
     let Finding { question, fitted, .. } = finding;
-    let crystal = &fitted.setup.crystals[0];
+    let crystals = &fitted.setup.crystals;
+    let each = crystals.iter().map(|c| format!("{}:{}", c.material.id, c.set().id));
     let mut out = prose(&format!(
-        "{}:{}, {}; {} numbers in {} measurements\n",
-        crystal.material.id,
-        crystal.set().id,
+        "{}, {}; {} numbers in {} measurements\n",
+        each.collect::<Vec<_>>().join(" and "),
         fitted.setup.interaction,
         fitted.residuals.len(),
         question.data.len()
@@ -291,20 +293,21 @@ fn sentences(finding: &Finding<'_>) -> String {
         let off = fitted.values[i] - unknown.prior;
         let off = with_error(off, fitted.sigmas[i]);
         let unit = unknown.unit;
-        let sentence = match unknown.name.rsplit('.').next().unwrap_or_default() {
-            "theta" => format!("This crystal is cut at {value} {unit}."),
-            "zero" => {
+        let sentence = match unknown.name.as_str() {
+            "crystal.cut.theta" => format!("This crystal is cut at {value} {unit}."),
+            "stage.zero" => {
                 format!("Your tilt zero is {off} {unit} off: the back-reflection is at {value} {unit}.")
             }
-            "roll" => format!("The crystal is rolled by {value} {unit}."),
-            "wavelength" => format!("The pump is at {value} {unit}."),
-            "distance" => format!("The screen stands {value} {unit} from the crystal."),
+            "crystal.roll" => format!("The crystal is rolled by {value} {unit}."),
+            "pump.wavelength" => format!("The pump is at {value} {unit}."),
+            "screen.distance" => format!("The screen stands {value} {unit} from the crystal."),
             _ => format!("{} is {value} {unit}.", unknown.name),
         };
         out.push_str(&sentence);
         out.push(' ');
     }
     out.push_str(&advice(finding));
+    out.truncate(out.trim_end().len());
     out.push('\n');
     out
 }
@@ -440,14 +443,16 @@ fn others(finding: &Finding<'_>) -> String {
     let key = |f: &Fitted| {
         let each = question.unknowns.iter().enumerate().take(4);
         let each = each.map(|(i, u)| {
+            // with several crystals a last word says too little
             let last = u.name.rsplit('.').next().unwrap_or_default();
+            let last = if question.setup.crystals.len() > 1 { u.name.as_str() } else { last };
             format!("{last} {} {}", with_error(f.values[i], f.sigmas[i]), u.unit)
         });
         each.collect::<Vec<_>>().join(", ")
     };
     let mut told = false;
     for (view, other) in finding.views {
-        let gain = fitted.chi_square - other.chi_square;
+        let gain = fitted.against() - other.against();
         if gain > -9.0 && other.absent.is_empty() && finding.holds() {
             told = true;
             let how = if gain > 9.0 { "fits much better" } else { "fits as well" };
@@ -472,18 +477,19 @@ fn others(finding: &Finding<'_>) -> String {
 }
 
 fn datasets(finding: &Finding<'_>, key: impl Fn(&Fitted) -> String) -> String {
-    let own = (finding.fitted.setup.crystals[0].set().id.clone(), finding.fitted.chi_square);
+    let own = (finding.fitted.setup.crystals[0].set().id.clone(), finding.fitted.against());
     let mut out = String::new();
     let mut best = own.clone();
     for (id, fitted) in finding.datasets {
         match fitted {
             Ok(fitted) => {
-                if fitted.chi_square < best.1 {
-                    best = (id.clone(), fitted.chi_square);
+                if fitted.against() < best.1 {
+                    best = (id.clone(), fitted.against());
                 }
                 out.push_str(&format!(
-                    "{id}: chi-square {}; {}.\n",
+                    "{id}: chi-square {}, and {} against what was believed; {}.\n",
                     fixed(fitted.chi_square, 1),
+                    fixed(fitted.strain, 1),
                     key(fitted)
                 ));
             }
@@ -491,7 +497,7 @@ fn datasets(finding: &Finding<'_>, key: impl Fn(&Fitted) -> String) -> String {
         }
     }
     out.push_str(&format!(
-        "Of the published sets {} fits this bench best (chi-square {}; {} has {}).\n",
+        "Of the published sets {} fits this bench best (both together {}; {} has {}).\n",
         best.0,
         fixed(best.1, 1),
         own.0,

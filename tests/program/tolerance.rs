@@ -148,6 +148,17 @@ fn collinear_cuts_are_answered_at_both_ends() {
     assert_abs_diff_eq!(table.number(theta, "retilt_low_deg"), 0.83, epsilon = 0.01);
 }
 
+/// A stack is refused in this command's own name.
+#[test]
+fn several_crystals_are_refused() {
+    let folder = TempDir::new().expect("a folder");
+    let crystal = "[[crystal]]\nmaterial = \"bbo\"\nlength = \"1 mm\"\ncut = { theta = \"29 deg\", phi = \"90 deg\" }\n";
+    let job = format!("[pump]\nwavelength = \"405 nm\"\n{crystal}{crystal}[emission]\ntype = \"I\"\n");
+    fs::write(folder.path().join("two.toml"), job).expect("a file");
+    let said = twincone_in(folder.path(), "tolerance -j two.toml --half-angle 3deg").refusal(2);
+    assert_says(&said, &["`tolerance` looks at one"]);
+}
+
 #[test]
 fn nonsense_is_refused() {
     for (options, why) in [

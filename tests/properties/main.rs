@@ -9,6 +9,7 @@ mod crystals;
 mod pairs;
 mod rings;
 mod round_trips;
+mod slopes;
 mod slowly;
 mod symmetries;
 mod waves;
