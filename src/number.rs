@@ -113,3 +113,51 @@ pub(crate) fn total<S: Simd>(lanes: Wide<S>) -> f64 {
     let all: [f64; LANES] = lanes.into();
     all.iter().sum()
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[inline(always)]
+    fn formula<T: Number>(x: T, y: T) -> [T; 2] {
+        let root = (x * x + y * y + 0.5).root();
+        [root - x * 3.0, (root * y - 0.25).reciprocal() / (x + 2.0)]
+    }
+
+    /// One by one and side by side, on every kind of vectors that this machine has.
+    #[test]
+    fn lanes_have_the_bits_of_single_numbers() {
+        let x: Vec<f64> = (0..9 * LANES).map(|j| (1.7 * j as f64).sin()).collect();
+        let y: Vec<f64> = (0..9 * LANES).map(|j| (0.3 * j as f64).cos()).collect();
+        for level in [Level::fallback(), level()] {
+            let mut compared = 0;
+            dispatch!(level, simd => for j in (0..x.len()).step_by(LANES) {
+                let lanes = formula(wide(simd, &x, j), wide(simd, &y, j));
+                for l in 0..LANES {
+                    let single = formula(x[j + l], y[j + l]);
+                    assert_eq!(single.map(f64::to_bits), [lanes[0][l], lanes[1][l]].map(f64::to_bits));
+                    compared += 1;
+                }
+            });
+            assert_eq!(compared, x.len());
+        }
+    }
+
+    #[test]
+    fn sums_do_not_depend_on_the_vectors() {
+        let x: Vec<f64> = (0..9 * LANES).map(|j| (1.7 * j as f64).sin()).collect();
+        let of = |level: Level| {
+            dispatch!(level, simd => sums(simd, x.len(), |j| {
+                let x = wide(simd, &x, j);
+                [x, x * x, strided(simd, &[1.0; 9 * LANES], j / 3, 3)]
+            }))
+        };
+        let [sum, squares, ones] = of(level());
+        assert_eq!(of(Level::fallback()).map(f64::to_bits), [sum, squares, ones].map(f64::to_bits));
+        assert!((sum - x.iter().sum::<f64>()).abs() < 1e-13);
+        assert!((squares - x.iter().map(|x| x * x).sum::<f64>()).abs() < 1e-13);
+        assert_eq!(ones, x.len() as f64);
+        let [least, largest] = range(&x);
+        assert!(x.iter().all(|x| (least..=largest).contains(x)) && x.contains(&least) && x.contains(&largest));
+    }
+}

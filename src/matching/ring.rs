@@ -273,3 +273,61 @@ fn narrow_atan<T: Number>(x: T) -> T {
     }
     series * x
 }
+
+#[cfg(test)]
+mod tests {
+    use std::sync::Arc;
+
+    use super::*;
+    use crate::matching::{Emission, Interaction, Photons};
+    use crate::material::Catalogue;
+    use crate::optics::Crystal;
+    use crate::quantity::{Angle, Wavelength};
+
+    #[test]
+    fn narrow_atan_is_exact_to_rounding() {
+        for n in 1..=800 {
+            let x = NARROW * f64::from(n) / 800.0;
+            assert!((narrow_atan(x) / x.atan() - 1.0).abs() < 5e-16, "{x}");
+        }
+    }
+
+    /// Rings of idlers from those of signals are what a search from their own minimum finds.
+    #[test]
+    fn rings_of_partners_are_those_of_the_exchanged_process() {
+        let bbo = Arc::new(Catalogue::default().get("bbo").expect("a compiled-in crystal"));
+        let mut crystal = Crystal::new(bbo, Some("kato-1986")).expect("a data set").with_cut(42.541, 0.0);
+        let pump = Wavelength::from_nm(405.0);
+        let (mut compared, mut worst) = (0, [0.0f64; 2]);
+        for (signal, tilt, cross) in
+            [(810.0, 0.0, 0.0), (810.0, 1.3, -0.4), (780.0, 0.8, 0.3), (850.0, -0.5, 2.0), (810.0, -1.7, 0.0)]
+        {
+            crystal.orientation.tilt = Angle::from_degrees(tilt);
+            crystal.orientation.cross_tilt = Angle::from_degrees(cross);
+            let photons = Photons::new(pump, Wavelength::from_nm(signal)).expect("longer than the pump");
+            let emission = Emission::of(&crystal, photons).expect("indices");
+            for roles in emission.roles(Interaction::Two).expect("two processes") {
+                let mismatch = emission.mismatch(roles).expect("the pump enters");
+                let Ok(own) = rings(&mismatch, 2e-3) else { continue };
+                assert!(own[0].curve.of_partners(&mismatch, &mismatch.exchanged()).is_some());
+                let partners = partner_rings(&mismatch, own.first(), 2e-3).expect("a ring");
+                let searched = rings(&mismatch.exchanged(), 2e-3).expect("a ring");
+                assert_eq!([own.len(), partners.len(), searched.len()], [1; 3]);
+                let (a, b) = (&partners[0], &searched[0]);
+                worst[0] = worst[0].max(a.axis.angle_to(b.axis));
+                for (a, b) in [
+                    (a.half_angle, b.half_angle),
+                    (a.least, b.least),
+                    (a.largest, b.largest),
+                    (a.internal_half_angle, b.internal_half_angle),
+                ] {
+                    worst[1] = worst[1].max((a - b).abs());
+                }
+                compared += 1;
+            }
+        }
+        assert!(compared >= 8, "{compared} rings");
+        // 1e-9 deg
+        assert!(worst.iter().all(|w| *w < 1.7e-11), "{worst:?}");
+    }
+}
