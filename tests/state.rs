@@ -24,7 +24,7 @@ fn bbo(theta: f64, phi: f64, length_mm: f64, roll: f64) -> Crystal {
 
 fn gaussian(width_nm: f64) -> [Vec<Filter>; 2] {
     let filter = Filter { shape: Shape::Gaussian, width: Length::metres(width_nm * 1e-9), centre: None };
-    [vec![filter], vec![filter]]
+    [vec![filter.clone()], vec![filter]]
 }
 
 fn irises(full_deg: f64) -> [Collection; 2] {
@@ -184,7 +184,7 @@ fn question<'a>(
         signals,
         interaction: kind,
         bench,
-        number: 1,
+        number: None,
         wanted: 1e-3,
     }
 }
@@ -202,17 +202,12 @@ fn designed_plates_beat_the_half_length_rule_and_no_thickness_beats_them() {
         let found = compensate(&question, &crystals, false).expect("plates").proposals.remove(0);
         let rule = half_length(&question).expect("a state").remove(0);
         let what = format!("{length} mm, {width} nm, {iris:?}");
-        assert!(found.after > rule.after - 1e-3, "{what}: {} against {}", found.after, rule.after);
+        assert!(found.after >= rule.after, "{what}: {} against {}", found.after, rule.after);
         assert!(found.after > found.before, "{what}");
         no_thickness_is_better(&question, &found, &what);
         let flipped = compensate(&question, &crystals, true).expect("plates").proposals.remove(0);
         let rule = half_length(&question).expect("a state").remove(1);
-        assert!(
-            flipped.after > rule.after - 1e-3,
-            "{what}, flipped: {} against {}",
-            flipped.after,
-            rule.after
-        );
+        assert!(flipped.after >= rule.after, "{what}, flipped: {} against {}", flipped.after, rule.after);
     }
     let (crystals, mut bench) = two_crystals(0.0);
     bench.filters = gaussian(10.0);
@@ -336,6 +331,71 @@ fn the_source_of_1999_could_be_as_good_as_it_was() {
     let question = Question { pump, ..question(&crystals, &bench, Interaction::One, &signals) };
     let found = question.state().expect("a state").histories.coherence();
     assert!(found > 0.996 - 0.003, "{found}");
+}
+
+/// Upper-bound check: computed concurrence is not below what was measured, 0.97 of fidelity in a beamlike source of two
+/// crystals is not computed (a stack that a half-wave plate divides is not described by `[[crystal]]`); nor are PPKTP loops
+/// (Prevedel et al. 2011, Fedrizzi et al. 2007, Kuzucu and Wong 2008: light passes one crystal from both sides), nor sources
+/// whose geometry was not seen (Halevy et al. 2011, Chin et al., Lohrmann et al., Altepeter et al. 2005 without its plates'
+/// cut and irises).
+///
+/// A fibre-coupled source: visibility 0.963 between diagonal polarizers (C. Kurtsiefer, M. Oberparleiter, H. Weinfurter,
+/// Phys. Rev. A 64, 023802 (2001); numbers from memory): 351.1 nm, 2 mm of BBO at 49.7 deg, mode radii and pump waist 82 um,
+/// 1 mm plates behind half-wave plates. Geometry by eimerl-1987, as for 1995.
+#[test]
+fn the_fibre_coupled_source_of_2001_could_be_as_good_as_it_was() {
+    let mut crystal = bbo(49.63, 0.0, 2.0, 0.0);
+    crystal.dataset = crystal.material.sets().iter().position(|set| set.id == "eimerl-1987").expect("a set");
+    let plate = Crystal { length: Length::metres(1e-3), ..crystal.clone() };
+    let compensators = vec![Compensator { place: Place::Both, plate, half_wave: true }];
+    let waist = Length::metres(82e-6);
+    let collection = [Collection { opening: Opening::Fibre(waist), direction: None }; 2];
+    // the modes alone take in 4 nm; the filter only ends the band
+    let bench =
+        Bench { filters: gaussian(10.0), compensators, collection, waist: Some(waist), ..Default::default() };
+    let pump = Wavelength::from_nm(351.1);
+    let signals = [pump.doubled()];
+    let question =
+        Question { pump, ..question(std::slice::from_ref(&crystal), &bench, Interaction::Two, &signals) };
+    let found = question.state().expect("a state").histories.coherence();
+    assert!(found > 0.963, "{found}");
+}
+
+/// Two crossed type I crystals in a teaching laboratory, S = 2.307 +- 0.035 (D. Dehlinger, M. W. Mitchell, Am. J. Phys. 70, 903
+/// (2002); numbers from memory) and 2.198 (Malik and Li, a report of 2007 after the same design, as quoted): 405 nm, 0.1 mm,
+/// cone of 3 deg. Filters of 10 nm (as such laboratories use), points.
+#[test]
+fn the_teaching_source_of_2002_could_be_as_good_as_it_was() {
+    let crystals = [bbo(29.237, 90.0, 0.1, 0.0), bbo(29.237, 90.0, 0.1, 90.0)];
+    // a free-running diode of 0.6 nm
+    let line = Line::Width(Length::metres(0.6e-9));
+    let bench = Bench { filters: gaussian(10.0), line, ..Default::default() };
+    let signals = [Wavelength::from_nm(2.0 * PUMP_NM)];
+    let state = question(&crystals, &bench, Interaction::One, &signals).state().expect("a state");
+    assert!(state.histories.chsh_max() > 2.307 - 0.035, "{}", state.histories.chsh_max());
+}
+
+/// Type I BiBO for a loophole-free test, visibility 0.997 (second-hand, read in notes that quote a thesis; 355 nm from memory: B.
+/// G. Christensen et al., Phys. Rev. Lett. 111, 130406 (2013)): two crystals cut at 141.8 deg, collected at 3 deg. Thickness and
+/// filters were not seen: thin crystals and narrow filters, which is what an upper bound may assume. The data begin at 480 nm,
+/// so that the pump's index is extrapolated, as the file says.
+#[test]
+fn the_bibo_source_could_be_as_good_as_it_was() {
+    let bibo = Arc::new(Catalogue::default().get("bibo").expect("bibo"));
+    let crystal = |roll: f64| {
+        let mut crystal = Crystal::new(bibo.clone(), None).expect("its first set").with_cut(141.8, 90.0);
+        crystal.length = Length::metres(0.2e-3);
+        crystal.reach = twincone::material::Reach::Extrapolate;
+        crystal.orientation.roll = Angle::from_degrees(roll);
+        crystal
+    };
+    let crystals = [crystal(0.0), crystal(90.0)];
+    let pump = Wavelength::from_nm(355.0);
+    let signals = [pump.doubled()];
+    let bench = Bench { filters: gaussian(1.0), ..Default::default() };
+    let question = Question { pump, ..question(&crystals, &bench, Interaction::One, &signals) };
+    let found = question.state().expect("a state").histories.coherence();
+    assert!(found > 0.997 - 0.003, "{found}");
 }
 
 /// Without filters and with Delta_k linear in frequency, a delay tau of e against o gives the triangle 1 - |1 - 2 tau/(D L)|
