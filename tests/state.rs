@@ -333,15 +333,14 @@ fn the_source_of_1999_could_be_as_good_as_it_was() {
     assert!(found > 0.996 - 0.003, "{found}");
 }
 
-/// Upper-bound check: computed concurrence is not below what was measured, 0.97 of fidelity in a beamlike source of two
-/// crystals is not computed (a stack that a half-wave plate divides is not described by `[[crystal]]`); nor are PPKTP loops
-/// (Prevedel et al. 2011, Fedrizzi et al. 2007, Kuzucu and Wong 2008: light passes one crystal from both sides), nor sources
-/// whose geometry was not seen (Halevy et al. 2011, Chin et al., Lohrmann et al., Altepeter et al. 2005 without its plates'
-/// cut and irises).
+/// As above, a fibre-coupled source: 0.963 between diagonal polarizers (C. Kurtsiefer, M. Oberparleiter, H. Weinfurter, Phys.
+/// Rev. A 64, 023802 (2001); numbers from memory, plates as in 1995): 351.1 nm, 2 mm of BBO, modes and pump waist of 82 um.
+/// Cut and eimerl-1987 as for 1995.
 ///
-/// A fibre-coupled source: visibility 0.963 between diagonal polarizers (C. Kurtsiefer, M. Oberparleiter, H. Weinfurter,
-/// Phys. Rev. A 64, 023802 (2001); numbers from memory): 351.1 nm, 2 mm of BBO at 49.7 deg, mode radii and pump waist 82 um,
-/// 1 mm plates behind half-wave plates. Geometry by eimerl-1987, as for 1995.
+/// Not computed, of the sources whose visibility is known: two beamlike crystals with a half-wave plate between them (Wang et al.
+/// 2016), which a row of crystals does not describe; loops and double passes, where light meets one crystal from two sides
+/// (Barz et al. 2014, Prevedel et al. 2011, Kuzucu and Wong 2008); and those whose geometry was not seen (Altepeter et al.
+/// 2005, Lee et al. 2016, Chin et al., Oh and Jennewein).
 #[test]
 fn the_fibre_coupled_source_of_2001_could_be_as_good_as_it_was() {
     let mut crystal = bbo(49.63, 0.0, 2.0, 0.0);

@@ -112,7 +112,7 @@ pub fn compensate(
             Err(other) => return Err(other),
         };
         let mut choices: Vec<Vec<Compensator>> = found.iter().map(|best| task.plates(best)).collect();
-        choices.extend(task.from_rule(material)?);
+        choices.extend(task.plates_of_rule(material)?);
         match task.best_judged(choices)? {
             Some(plates) => answers.proposals.push(task.propose(plates, &before)?),
             None => answers.useless.push((id(), "no plate of it helps".into())),
@@ -205,7 +205,7 @@ impl<'q, 'a> Task<'q, 'a> {
     }
 
     /// The rule for one crystal of this material, as it is and polished; nothing else.
-    fn from_rule(&self, material: &Crystal) -> Result<Vec<Vec<Compensator>>, PairsError> {
+    fn plates_of_rule(&self, material: &Crystal) -> Result<Vec<Vec<Compensator>>, PairsError> {
         let [crystal] = self.question.crystals else { return Ok(Vec::new()) };
         if crystal.material.id != material.material.id || crystal.set().id != material.set().id {
             return Ok(Vec::new());
