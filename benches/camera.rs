@@ -43,7 +43,7 @@ fn ours() -> (Vec<f64>, f64) {
         pixels: PIXELS,
         seen: Seen::default(),
     };
-    let light = Light::of(&setup).expect("a filter");
+    let light = Light::of(&setup);
     let sampling = Sampling { wavelengths: Some(WAVELENGTHS) };
     let mut best = f64::INFINITY;
     let mut values = Vec::new();

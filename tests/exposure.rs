@@ -23,7 +23,7 @@ fn sensor(field_mm: f64, pixels: usize) -> Sensor {
 }
 
 fn exposure(setup: &Setup, sensor: Sensor) -> Exposure {
-    let light = Light::of(setup).expect("filter and waist");
+    let light = Light::of(setup);
     Exposure::new(setup, &light, sensor, Sampling { wavelengths: None }).expect("indices")
 }
 

@@ -24,7 +24,7 @@ fn bbo(theta: f64, phi: f64, length_mm: f64, roll: f64) -> Crystal {
 
 fn gaussian(width_nm: f64) -> [Vec<Filter>; 2] {
     let filter = Filter { shape: Shape::Gaussian, width: Length::metres(width_nm * 1e-9), centre: None };
-    [vec![filter], vec![filter]]
+    [vec![filter.clone()], vec![filter]]
 }
 
 fn irises(full_deg: f64) -> [Collection; 2] {
@@ -184,7 +184,7 @@ fn question<'a>(
         signals,
         interaction: kind,
         bench,
-        number: 1,
+        number: None,
         wanted: 1e-3,
     }
 }
@@ -202,17 +202,12 @@ fn designed_plates_beat_the_half_length_rule_and_no_thickness_beats_them() {
         let found = compensate(&question, &crystals, false).expect("plates").proposals.remove(0);
         let rule = half_length(&question).expect("a state").remove(0);
         let what = format!("{length} mm, {width} nm, {iris:?}");
-        assert!(found.after > rule.after - 1e-3, "{what}: {} against {}", found.after, rule.after);
+        assert!(found.after >= rule.after, "{what}: {} against {}", found.after, rule.after);
         assert!(found.after > found.before, "{what}");
         no_thickness_is_better(&question, &found, &what);
         let flipped = compensate(&question, &crystals, true).expect("plates").proposals.remove(0);
         let rule = half_length(&question).expect("a state").remove(1);
-        assert!(
-            flipped.after > rule.after - 1e-3,
-            "{what}, flipped: {} against {}",
-            flipped.after,
-            rule.after
-        );
+        assert!(flipped.after >= rule.after, "{what}, flipped: {} against {}", flipped.after, rule.after);
     }
     let (crystals, mut bench) = two_crystals(0.0);
     bench.filters = gaussian(10.0);
@@ -249,28 +244,58 @@ fn no_thickness_is_better(question: &Question<'_>, found: &Proposal, what: &str)
     }
 }
 
+/// Coherence of two crossed crystals when the pump's line of so many nm is all that varies, or filters of the given width too.
+fn behind_a_line(width_nm: f64, filter: Option<f64>, arms: Option<[Direction; 2]>) -> f64 {
+    let (crystals, mut bench) = two_crystals(0.0);
+    bench.line = Line::Width(Length::metres(width_nm * 1e-9));
+    bench.filters = filter.map_or([vec![], vec![]], gaussian);
+    let crossed = first_pair(&crystals, Interaction::One);
+    let pair = arms.map_or(crossed, |[a, b]| Pair { a, b, ..crossed });
+    let stack = Stack::new(&crystals, &bench, &pair, Interaction::One).expect("a stack");
+    let vary = Vary { frequency: filter.is_some(), line: true, even: filter.is_none(), ..Vary::NOTHING };
+    let found = Mixture::new(&stack, &bench, vary).estimate(5e-4).expect("a state");
+    let basis = stack.history_basis().expect("a basis");
+    found.lab.in_basis(&basis.a, &basis.b).coherence()
+}
+
 #[test]
 fn the_pump_line_limits_two_crossed_crystals() {
-    let widths = [0.1, 0.3, 0.6, 1.0];
     let table = [
-        // in the pair's own directions the offset is 0.7 % longer than at normal incidence, whose closed form gives 0.590
-        (None, [0.995, 0.954, 0.827, 0.586]),
+        (None, [0.995, 0.953, 0.825, 0.586]),
         (Some(10.0), [0.993, 0.952, 0.830, 0.618]),
         (Some(1.0), [0.995, 0.972, 0.952, 0.943]),
     ];
     for (filter, agreed) in table {
-        for (width, agreed) in widths.into_iter().zip(agreed) {
-            let (crystals, mut bench) = two_crystals(0.0);
-            bench.line = Line::Width(Length::metres(width * 1e-9));
-            bench.filters = filter.map_or([vec![], vec![]], gaussian);
-            let pair = first_pair(&crystals, Interaction::One);
-            let stack = Stack::new(&crystals, &bench, &pair, Interaction::One).expect("a stack");
-            let vary =
-                Vary { frequency: filter.is_some(), line: true, even: filter.is_none(), ..Vary::NOTHING };
-            let found = Mixture::new(&stack, &bench, vary).estimate(5e-4).expect("a state");
-            let basis = stack.history_basis().expect("a basis");
-            let rho = found.lab.in_basis(&basis.a, &basis.b);
-            close(rho.coherence(), agreed, 0.003, &format!("{width} nm line, {filter:?} nm filters"));
+        for (width, agreed) in [0.1, 0.3, 0.6, 1.0].into_iter().zip(agreed) {
+            let found = behind_a_line(width, filter, None);
+            close(found, agreed, 0.001, &format!("{width} nm line, {filter:?} nm filters"));
+        }
+    }
+}
+
+/// The line alone, 0.995, 0.954, 0.827, 0.590, is what pairs along the pump have: there the phase between the histories
+/// changes by the group offset of 421.1 fs per mm. At 3 deg the rate d phase/d omega_p depends on what stands while the
+/// pump's frequency changes: 424.2 fs per mm with both directions fixed (what discs do, and what the program does: 0.586),
+/// 418.0 with both transverse wave vectors fixed (0.595), because q = omega sin(3 deg)/c moves with omega and the phase has
+/// a slope against q of -4.8 rad per degree and half a millimetre. `reference/pump_line.txt` has the same from
+/// another program, and that neither the weight of phase matching nor a Gaussian in frequency instead of wavelength gives 0.590.
+#[test]
+fn the_pump_line_alone_acts_as_agreed_on_pairs_along_the_pump() {
+    for (width, agreed) in [(0.1, 0.995), (0.3, 0.954), (0.6, 0.827), (1.0, 0.590)] {
+        let along = behind_a_line(width, None, Some([Direction::forward(); 2]));
+        close(along, agreed, 0.001, &format!("{width} nm line, along the pump"));
+    }
+    // polar angle, what stands, delay, weighed, Gaussian in, then 0.1, 0.3, 0.6, 1.0 nm
+    for line in include_str!("reference/pump_line.txt").lines().skip(1) {
+        let cells: Vec<&str> = line.split(',').collect();
+        let along = match (cells[0], cells[1], cells[3]) {
+            ("0", ..) => Some([Direction::forward(); 2]),
+            ("3", "directions", "no") => None,
+            _ => continue,
+        };
+        for (width, value) in [0.1, 0.3, 0.6, 1.0].into_iter().zip(&cells[5..]) {
+            let value: f64 = value.parse().expect("a number");
+            close(behind_a_line(width, None, along), value, 5e-4, &format!("{line}, {width} nm"));
         }
     }
 }
@@ -306,6 +331,70 @@ fn the_source_of_1999_could_be_as_good_as_it_was() {
     let question = Question { pump, ..question(&crystals, &bench, Interaction::One, &signals) };
     let found = question.state().expect("a state").histories.coherence();
     assert!(found > 0.996 - 0.003, "{found}");
+}
+
+/// As above, a fibre-coupled source: 0.963 between diagonal polarizers (C. Kurtsiefer, M. Oberparleiter, H. Weinfurter, Phys.
+/// Rev. A 64, 023802 (2001); numbers from memory, plates as in 1995): 351.1 nm, 2 mm of BBO, modes and pump waist of 82 um.
+/// Cut and eimerl-1987 as for 1995.
+///
+/// Not computed, of the sources whose visibility is known: two beamlike crystals with a half-wave plate between them (Wang et al.
+/// 2016), which a row of crystals does not describe; loops and double passes, where light meets one crystal from two sides
+/// (Barz et al. 2014, Prevedel et al. 2011, Kuzucu and Wong 2008); and those whose geometry was not seen (Altepeter et al.
+/// 2005, Lee et al. 2016, Chin et al., Oh and Jennewein).
+#[test]
+fn the_fibre_coupled_source_of_2001_could_be_as_good_as_it_was() {
+    let mut crystal = bbo(49.63, 0.0, 2.0, 0.0);
+    crystal.dataset = crystal.material.sets().iter().position(|set| set.id == "eimerl-1987").expect("a set");
+    let plate = Crystal { length: Length::metres(1e-3), ..crystal.clone() };
+    let compensators = vec![Compensator { place: Place::Both, plate, half_wave: true }];
+    let waist = Length::metres(82e-6);
+    let collection = [Collection { opening: Opening::Fibre(waist), direction: None }; 2];
+    // the modes alone take in 4 nm; the filter only ends the band
+    let bench =
+        Bench { filters: gaussian(10.0), compensators, collection, waist: Some(waist), ..Default::default() };
+    let pump = Wavelength::from_nm(351.1);
+    let signals = [pump.doubled()];
+    let question =
+        Question { pump, ..question(std::slice::from_ref(&crystal), &bench, Interaction::Two, &signals) };
+    let found = question.state().expect("a state").histories.coherence();
+    assert!(found > 0.963, "{found}");
+}
+
+/// Two crossed type I crystals in a teaching laboratory, S = 2.307 +- 0.035 (D. Dehlinger, M. W. Mitchell, Am. J. Phys. 70, 903
+/// (2002); numbers from memory) and 2.198 (Malik and Li, a report of 2007 after the same design, as quoted): 405 nm, 0.1 mm,
+/// cone of 3 deg. Filters of 10 nm (as such laboratories use), points.
+#[test]
+fn the_teaching_source_of_2002_could_be_as_good_as_it_was() {
+    let crystals = [bbo(29.237, 90.0, 0.1, 0.0), bbo(29.237, 90.0, 0.1, 90.0)];
+    // a free-running diode of 0.6 nm
+    let line = Line::Width(Length::metres(0.6e-9));
+    let bench = Bench { filters: gaussian(10.0), line, ..Default::default() };
+    let signals = [Wavelength::from_nm(2.0 * PUMP_NM)];
+    let state = question(&crystals, &bench, Interaction::One, &signals).state().expect("a state");
+    assert!(state.histories.chsh_max() > 2.307 - 0.035, "{}", state.histories.chsh_max());
+}
+
+/// Type I BiBO for a loophole-free test, visibility 0.997 (second-hand, read in notes that quote a thesis; 355 nm from memory: B.
+/// G. Christensen et al., Phys. Rev. Lett. 111, 130406 (2013)): two crystals cut at 141.8 deg, collected at 3 deg. Thickness and
+/// filters were not seen: thin crystals and narrow filters, which is what an upper bound may assume. The data begin at 480 nm,
+/// so that the pump's index is extrapolated, as the file says.
+#[test]
+fn the_bibo_source_could_be_as_good_as_it_was() {
+    let bibo = Arc::new(Catalogue::default().get("bibo").expect("bibo"));
+    let crystal = |roll: f64| {
+        let mut crystal = Crystal::new(bibo.clone(), None).expect("its first set").with_cut(141.8, 90.0);
+        crystal.length = Length::metres(0.2e-3);
+        crystal.reach = twincone::material::Reach::Extrapolate;
+        crystal.orientation.roll = Angle::from_degrees(roll);
+        crystal
+    };
+    let crystals = [crystal(0.0), crystal(90.0)];
+    let pump = Wavelength::from_nm(355.0);
+    let signals = [pump.doubled()];
+    let bench = Bench { filters: gaussian(1.0), ..Default::default() };
+    let question = Question { pump, ..question(&crystals, &bench, Interaction::One, &signals) };
+    let found = question.state().expect("a state").histories.coherence();
+    assert!(found > 0.997 - 0.003, "{found}");
 }
 
 /// Without filters and with Delta_k linear in frequency, a delay tau of e against o gives the triangle 1 - |1 - 2 tau/(D L)|
@@ -356,21 +445,23 @@ fn behind_plates(length_mm: f64) -> (f64, f64, [f64; 2]) {
     (found.lab.in_basis(&basis.a, &basis.b).coherence(), found.error, [band[1], band[0]])
 }
 
+/// `reference/triangle.txt` comes from another program.
 #[test]
 fn dispersion_rounds_the_peak_of_the_triangle() {
-    // plates of half the length, one in each arm, bring tau to D L/2, where the triangle has its peak
-    let (peak, error, band) = behind_plates(0.5);
-    // computed here, by no other program: what dispersion leaves of 1
-    close(peak, 0.973, 0.002, "peak");
-    assert!(error < 1e-3, "{error}");
-    // 20 nulls would be wider: the data set ends at 1060 nm, whose partner is 655.42 nm
-    close(band[1], 1060.0, 0.01, "long end of the band, nm");
-    close(band[0], 1.0 / (1.0 / PUMP_NM - 1.0 / 1060.0), 0.01, "short end of the band, nm");
-    for length in [0.0_f64, 0.1, 0.2, 0.3, 0.4, 0.6, 0.7, 0.8, 0.9, 1.0] {
-        let triangle = 1.0 - (1.0 - 2.0 * length).abs();
-        let (found, ..) = behind_plates(length);
-        // dispersion of the plates and of D; most near the peak
-        close(found, triangle, 0.01, &format!("plates of {length} mm"));
-        assert!(found < peak);
+    let mut peak = 0.0_f64;
+    for line in include_str!("reference/triangle.txt").lines().skip(1) {
+        let cells: Vec<f64> = line.split(',').map(|cell| cell.parse().expect("a number")).collect();
+        let [length, reference, triangle, linear] = cells[..] else { panic!("{line}") };
+        let (found, error, band) = behind_plates(length);
+        close(found, reference, 5e-4, &format!("plates of {length} mm"));
+        close(linear, triangle, 0.01, &format!("plates of {length} mm, linear"));
+        // dispersion of the plates and of D; most at the peak, where plates of half the length bring tau to D L/2
+        close(found, triangle, if triangle == 1.0 { 0.03 } else { 0.01 }, &format!("plates of {length} mm"));
+        assert!(error < 1e-3, "{error}");
+        // 20 nulls would be wider: the data set ends at 1060 nm, whose partner is 655.42 nm
+        close(band[1], 1060.0, 0.01, "long end of the band, nm");
+        close(band[0], 1.0 / (1.0 / PUMP_NM - 1.0 / 1060.0), 0.01, "short end of the band, nm");
+        peak = peak.max(found);
     }
+    close(peak, 0.973, 0.001, "peak");
 }

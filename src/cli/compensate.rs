@@ -20,9 +20,9 @@ pub struct Args {
     /// Plates in the arms stand behind half-wave plates at 45 deg, which exchange H and V
     #[arg(long)]
     half_wave: bool,
-    /// Which pair of crossings, as `cones` numbers them
-    #[arg(long, value_name = "N", default_value = "1", value_parser = clap::value_parser!(u16).range(1..))]
-    pair: u16,
+    /// Which pair of crossings, as `cones` numbers them [default: 1]
+    #[arg(long, value_name = "N", value_parser = clap::value_parser!(u16).range(1..))]
+    pair: Option<u16>,
     /// Error of a visibility to go for: less takes longer
     #[arg(long, value_name = "ERROR", default_value = "1e-3", value_parser = precision)]
     precision: f64,
@@ -36,12 +36,12 @@ pub struct Args {
 /// What is missing, wrong or outside a data set's range; no pair, or none that passes.
 pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let setup = args.experiment.setup(output, Needs::ALL)?;
-    setup.demand_bench("compensate")?;
+    setup.demand_length("compensate")?;
     let mut catalogue = catalogue(output, &args.experiment.document()?)?;
     args.allow.iter().try_for_each(|name| add_file(&mut catalogue, name))?;
     let materials = setup.plates(&catalogue, &args.allow)?;
     let signals = setup.signals();
-    let question = setup.pairs(&signals, usize::from(args.pair), args.precision);
+    let question = setup.pairs(&signals, args.pair.map(usize::from), args.precision);
     let answers = compensate(&question, &materials, args.half_wave)?;
     let rules = half_length(&question)?;
     let mut conventions = Conventions::of_pairs(&setup);

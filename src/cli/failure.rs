@@ -72,7 +72,9 @@ impl From<PairsError> for Failure {
     fn from(error: PairsError) -> Self {
         let status = match error {
             PairsError::Material(error) => return error.into(),
-            PairsError::Description(_) => 2,
+            PairsError::Description(_)
+            | PairsError::FixedDirections { .. }
+            | PairsError::TightWaist { .. } => 2,
             PairsError::NoTensor { .. } => 3,
             _ => 1,
         };

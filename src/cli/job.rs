@@ -11,7 +11,7 @@ use twincone::material::Catalogue;
 use twincone::sweep::Sweep;
 
 use super::failure::Failure;
-use super::options::{ExperimentArgs, catalogue, name_of, read_text};
+use super::options::{ExperimentArgs, attach_curves, catalogue, name_of, read_text};
 use super::output::{Outcome, OutputArgs};
 
 /// Options of `job`.
@@ -81,7 +81,8 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
 
 fn check(file: &std::path::Path, output: &OutputArgs) -> Result<Outcome, Failure> {
     let name = name_of(file);
-    let document = Document::from_file(&name, &read_text(file)?);
+    let mut document = Document::from_file(&name, &read_text(file)?);
+    attach_curves(&mut document, Some(file))?;
     let named = |failure: Failure| match failure.message.starts_with(&name) {
         true => failure,
         false => Failure { message: format!("{name}: {}", failure.message), ..failure },

@@ -181,6 +181,7 @@ impl ExperimentArgs {
             })?;
             document.set_raw(&format!("--set {assignment}"), key.trim(), value.trim());
         }
+        attach_curves(&mut document, job.or(self.job.as_deref()))?;
         Ok(document)
     }
 
@@ -258,6 +259,21 @@ impl ExperimentArgs {
         write_whole(path, template(setup).as_bytes())
             .map_err(|e| Failure::file("write", &path.display().to_string(), &e))
     }
+}
+
+/// Reads the files with curves that a document names, from the folder of its job file.
+///
+/// # Errors
+/// A file that cannot be read.
+pub fn attach_curves(document: &mut Document, job: Option<&Path>) -> Result<(), Failure> {
+    let folder = job.and_then(Path::parent).unwrap_or(Path::new(""));
+    let names: Vec<String> = document.describe()?.curves().into_iter().map(String::from).collect();
+    for name in names {
+        if document.attachment(&name).is_none() {
+            document.attach(&name, &read_text(&folder.join(&name))?);
+        }
+    }
+    Ok(())
 }
 
 /// `crossing=3deg` or `collinear`.

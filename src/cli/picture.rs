@@ -54,9 +54,9 @@ pub struct Args {
     /// Range of the ring sweep: crystal.tilt or crystal.cross_tilt=FROM..TO/POINTS [default: tilt 1 deg either way]
     #[arg(long, value_name = "KEY=RANGE", allow_hyphen_values = true)]
     axis: Option<String>,
-    /// View phase: which pair of crossings, as `cones` numbers them
-    #[arg(long, value_name = "N", default_value = "1", value_parser = clap::value_parser!(u16).range(1..))]
-    pair: u16,
+    /// View phase: which pair of crossings, as `cones` numbers them [default: 1]
+    #[arg(long, value_name = "N", value_parser = clap::value_parser!(u16).range(1..))]
+    pair: Option<u16>,
     #[command(flatten)]
     experiment: ExperimentArgs,
 }
@@ -106,8 +106,8 @@ fn draw(args: &Args, setup: &Setup, output: &OutputArgs, form: Format) -> Result
             cut_curve(setup, &curves)
         }
         View::Phase => {
-            setup.demand_bench("picture --view phase")?;
-            let phases = Phases::of(setup, usize::from(args.pair))?;
+            setup.demand_length("picture --view phase")?;
+            let phases = Phases::of(setup, args.pair.map(usize::from))?;
             let warnings = Conventions::of_pairs(setup).warnings;
             if form == Format::Csv {
                 return Ok(OutputArgs::file(phases.csv().into_bytes(), warnings));
@@ -152,7 +152,7 @@ fn photograph(
         let drawing = overlay(args, setup, &found, &sensor, path)?;
         return as_svg(&drawing, form, warnings);
     }
-    let light = Light::of(setup).map_err(Failure::usage)?;
+    let light = Light::of(setup);
     let sampling = Sampling { wavelengths: args.wavelengths.map(usize::from) };
     let exposure = Exposure::new(setup, &light, sensor, sampling)?;
     let picture = exposure.take();

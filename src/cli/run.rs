@@ -17,7 +17,7 @@ use twincone::sweep::{Piece, Slice, Sweep, Tally, Worker, meta};
 use super::cut::{Sought, TargetArgs};
 use super::failure::Failure;
 use super::join::MOST_PARTS;
-use super::options::{ExperimentArgs, catalogue};
+use super::options::{ExperimentArgs, attach_curves, catalogue};
 use super::output::{Format, Outcome, OutputArgs};
 use super::progress::Progress;
 use super::state::Choice;
@@ -376,6 +376,8 @@ impl Args {
         if self.half_wave {
             document.set_raw("--half-wave", "sweep.half_wave", "true");
         }
+        // axes may name files too
+        attach_curves(&mut document, self.file.as_deref())?;
         Ok(document)
     }
 }

@@ -13,9 +13,9 @@ use super::output::{Outcome, OutputArgs};
 /// Options of `state`.
 #[derive(Debug, ClapArgs)]
 pub struct Args {
-    /// Which pair of crossings, as `cones` numbers them
-    #[arg(long, value_name = "N", default_value = "1", value_parser = clap::value_parser!(u16).range(1..))]
-    pair: u16,
+    /// Which pair of crossings, as `cones` numbers them [default: 1]
+    #[arg(long, value_name = "N", value_parser = clap::value_parser!(u16).range(1..))]
+    pair: Option<u16>,
     /// oe: the two histories; lab: H and V of each arm [default: both]
     #[arg(long, value_enum)]
     basis: Option<Choice>,
@@ -58,9 +58,9 @@ pub fn precision(text: &str) -> Result<f64, String> {
 /// What is missing, wrong or outside a data set's range; no pair, or none that passes.
 pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let setup = args.experiment.setup(output, Needs::ALL)?;
-    setup.demand_bench("state")?;
+    setup.demand_length("state")?;
     let signals = setup.signals();
-    let question = setup.pairs(&signals, usize::from(args.pair), args.precision);
+    let question = setup.pairs(&signals, args.pair.map(usize::from), args.precision);
     let state = question.state()?;
     let budget = question.budget(&state)?;
     let bases: &[Basis] = match args.basis {

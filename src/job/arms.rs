@@ -5,6 +5,7 @@ use std::sync::Arc;
 use toml::Spanned;
 
 use super::checks::{check, either, positive};
+use super::curve_file::{self, Curve};
 use super::description::{self, Description, Text};
 use super::document::JobError;
 use super::resolve::{Reader, material};
@@ -12,7 +13,9 @@ use super::setup::SetupError;
 use crate::frame::{Cut, Direction};
 use crate::material::{Catalogue, Material, Reach};
 use crate::optics::Crystal;
-use crate::pairs::{Bench, Collection, Compensator, Filter, Line, Opening, Place, PumpPolarization, Shape};
+use crate::pairs::{
+    Bench, Collection, Compensator, Filter, Line, Opening, Place, PumpPolarization, Shape, Trace,
+};
 use crate::quantity::{Angle, Duration, Frequency, Length};
 
 /// All but the compensators, which take from the crystals what they leave open.
@@ -28,22 +31,21 @@ pub(super) fn bench(reader: &Reader<'_>, d: &Description, screen: Length) -> Res
         collect(reader, collection, screen, &mut bench.collection)?;
     }
     for written in &d.filter {
-        let Some(filter) = filter(reader, written)? else { continue };
-        arms(reader, written.arm.as_ref())?.iter().for_each(|arm| bench.filters[*arm].push(filter));
+        let filter = filter(reader, written)?;
+        arms(reader, written.arm.as_ref())?.iter().for_each(|arm| bench.filters[*arm].push(filter.clone()));
     }
     Ok(bench)
 }
 
-/// What is written and not understood yet, in words: a command that would need it has to say so.
-pub(super) fn unread(d: &Description) -> Vec<&'static str> {
-    let mut found = Vec::new();
-    if d.pump.as_ref().is_some_and(|p| p.get_ref().spectrum.is_some()) {
-        found.push("pump.spectrum");
-    }
-    if d.filter.iter().any(|f| f.file.is_some()) {
-        found.push("filter.file");
-    }
-    found
+/// The curve in a file that a value names.
+fn curve(reader: &Reader<'_>, text: &Text, curve: Curve) -> Result<Arc<Trace>, SetupError> {
+    let name = &**text.get_ref();
+    let content = reader.document.attachment(name).ok_or_else(|| {
+        reader.fault(text, &format!("the file {name} was not read; attach its text to the document"))
+    })?;
+    let trace =
+        curve_file::read(content, curve).map_err(|why| reader.fault(text, &format!("{name}: {why}")))?;
+    Ok(Arc::new(trace))
 }
 
 fn gaps(reader: &Reader<'_>, d: &Description) -> Result<Vec<Length>, SetupError> {
@@ -63,6 +65,12 @@ fn line(reader: &Reader<'_>, pump: &description::Pump) -> Result<Line, SetupErro
     if let Some(text) = &pump.linewidth {
         let size = either::<Length, Frequency>(text, Length::si, Frequency::si);
         check(reader, text, size, "the linewidth", "a linewidth such as `0.1 nm` or `200 GHz`")?;
+    }
+    if let Some(text) = &pump.spectrum {
+        if let Some(other) = pump.linewidth.as_ref().or(pump.pulse.as_ref()) {
+            return Err(reader.fault(other, "the spectrum of the pump is in a file already: leave out the linewidth or pulse, or the file"));
+        }
+        return Ok(Line::Measured(curve(reader, text, Curve::Intensity)?));
     }
     match (&pump.linewidth, &pump.pulse) {
         (Some(_), Some(pulse)) => Err(reader.fault(
@@ -178,23 +186,26 @@ fn opening(
     }
 }
 
-/// `None` where nothing but a file is given.
-fn filter(reader: &Reader<'_>, written: &description::Filter) -> Result<Option<Filter>, SetupError> {
+fn filter(reader: &Reader<'_>, written: &description::Filter) -> Result<Filter, SetupError> {
     arms(reader, written.arm.as_ref())?;
-    let shapes = [("gaussian", Shape::Gaussian), ("rectangular", Shape::Rectangular)];
-    let shape = written.shape.as_ref().map_or(Ok(Shape::Gaussian), |text| reader.one_of(text, &shapes))?;
+    let boxed = |text| reader.one_of(text, &[("gaussian", false), ("rectangular", true)]);
+    let boxed = written.shape.as_ref().map_or(Ok(false), boxed)?;
+    let shape = if boxed { Shape::Rectangular } else { Shape::Gaussian };
     let width = reader.positive(written.width.as_ref(), "the filter width")?;
     let centre =
         written.centre.as_ref().map(|text| reader.wavelength(text, "the filter centre")).transpose()?;
-    match (width, &written.file) {
-        (Some(width), _) => Ok(Some(Filter { shape, width, centre })),
-        (None, Some(_)) => Ok(None),
-        (None, None) => {
-            let place = written.centre.as_ref().or(written.shape.as_ref()).or(written.arm.as_ref());
-            let message = "a filter needs a width, its FWHM, such as width = \"3 nm\"";
-            Err(place.map_or_else(|| JobError(message.into()).into(), |text| reader.fault(text, message)))
+    if let Some(file) = &written.file {
+        if let Some(other) = written.width.as_ref().or(written.shape.as_ref()) {
+            return Err(reader.fault(other, "this filter has a file, which says how wide it is and of which shape; leave out width and shape, or the file"));
         }
+        let measured = Filter::measured(curve(reader, file, Curve::Transmission)?);
+        return Ok(Filter { centre: centre.or(measured.centre), ..measured });
     }
+    width.map(|width| Filter { shape, width, centre }).ok_or_else(|| {
+        let place = written.centre.as_ref().or(written.shape.as_ref()).or(written.arm.as_ref());
+        let message = "a filter needs a width, its FWHM, such as width = \"3 nm\", or a file";
+        place.map_or_else(|| JobError(message.into()).into(), |text| reader.fault(text, message))
+    })
 }
 
 /// The compensators; what they leave open they take from the first crystal.

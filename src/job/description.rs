@@ -124,12 +124,26 @@ impl Description {
     pub fn materials(&self) -> Vec<&str> {
         let crystals = self.crystal.iter().filter_map(|c| c.get_ref().material.as_ref());
         let compensators = self.compensator.iter().filter_map(|c| c.material.as_ref());
+        let swept = self.swept(|key| key.ends_with(".material"));
+        crystals.chain(compensators).chain(swept).map(|text| &**text.get_ref()).collect()
+    }
+
+    /// Files with curves over wavelength that are named: traces of filters, spectra of the pump.
+    #[must_use]
+    pub fn curves(&self) -> Vec<&str> {
+        let spectrum = self.pump.as_ref().and_then(|pump| pump.get_ref().spectrum.as_ref());
+        let filters = self.filter.iter().filter_map(|filter| filter.file.as_ref());
+        let is_curve =
+            |key: &str| key == "pump.spectrum" || key.starts_with("filter.") && key.ends_with(".file");
+        filters.chain(spectrum).chain(self.swept(is_curve)).map(|text| &**text.get_ref()).collect()
+    }
+
+    /// Values that sweeps give to keys.
+    fn swept(&self, is_wanted: impl Fn(&str) -> bool) -> impl Iterator<Item = &Text> {
         let axes = self.sweep.iter().flat_map(|s| &s.axes).map(Spanned::get_ref);
         let axes = axes.flat_map(|a| std::iter::once(a).chain(a.together.iter().map(Spanned::get_ref)));
-        let of_materials =
-            |a: &&Axis| a.key.as_ref().is_some_and(|k| k.get_ref().trim().ends_with(".material"));
-        let swept = axes.filter(of_materials).flat_map(|a| &a.values);
-        crystals.chain(compensators).chain(swept).map(|text| &**text.get_ref()).collect()
+        let wanted = move |a: &&Axis| a.key.as_ref().is_some_and(|k| is_wanted(k.get_ref().trim()));
+        axes.filter(wanted).flat_map(|a| &a.values)
     }
 }
 

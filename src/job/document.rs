@@ -3,7 +3,9 @@
 //! All sources stand behind one another in one buffer: the file first, then one line per override. A span in that
 //! buffer says which source a value came from, so a message can point at file, line and column, or name the option.
 
+use std::collections::BTreeMap;
 use std::ops::Range;
+use std::sync::Arc;
 
 use serde::Deserialize;
 use thiserror::Error;
@@ -33,6 +35,8 @@ struct Source {
 pub struct Document {
     buffer: String,
     sources: Vec<Source>,
+    /// Texts of files that values name, by the name as written.
+    attached: BTreeMap<String, Arc<str>>,
 }
 
 impl Document {
@@ -51,8 +55,25 @@ impl Document {
         self.buffer.push('\n');
     }
 
+    /// Adds the text of a file that a value names so.
+    pub fn attach(&mut self, name: &str, text: &str) {
+        self.attached.insert(name.into(), text.into());
+    }
+
+    /// The text of a file that a value names so.
+    #[must_use]
+    pub fn attachment(&self, name: &str) -> Option<&str> {
+        self.attached.get(name).map(|text| &**text)
+    }
+
+    /// Names and texts of all files that values name.
+    pub fn attachments(&self) -> impl Iterator<Item = (&str, &str)> {
+        self.attached.iter().map(|(name, text)| (name.as_str(), &**text))
+    }
+
     /// Adds the sources of another document after those of this one.
     pub fn append(&mut self, other: &Self) {
+        self.attached.extend(other.attached.clone());
         for source in &other.sources {
             self.push(&source.name, source.is_file, &other.buffer[source.range.clone()]);
         }

@@ -3,6 +3,7 @@
 mod arms;
 pub mod axes;
 mod checks;
+mod curve_file;
 pub mod description;
 mod document;
 mod handle;

@@ -52,8 +52,8 @@ pub struct Search {
     pub by: Option<Actuator>,
     /// What `cut` solves for.
     pub find: Find,
-    /// Which pair of crossings `state` and `compensate` are about, from 1.
-    pub pair: usize,
+    /// Which pair of crossings `state` and `compensate` are about, from 1; the first where left open.
+    pub pair: Option<usize>,
     /// Basis of `state`; `None` for both.
     pub basis: Option<Basis>,
     /// Whether `compensate` puts plates between half-wave plates.
@@ -147,8 +147,8 @@ fn search(document: &Document, sweep: &Sweep) -> Result<Search, JobError> {
         by: sweep.by.as_ref().map(|text| choice(document, text, &actuators)).transpose()?,
         find: sweep.find.as_ref().map_or(Ok(Find::Theta), |text| choice(document, text, &finds))?,
         pair: match &sweep.pair {
-            None => 1,
-            Some(number) if (1..=9999).contains(number.get_ref()) => *number.get_ref() as usize,
+            None => None,
+            Some(number) if (1..=9999).contains(number.get_ref()) => Some(*number.get_ref() as usize),
             Some(number) => return Err(document.fault(number.span(), "pairs are numbered from 1")),
         },
         basis: sweep.basis.as_ref().map(|text| choice(document, text, &bases)).transpose()?,

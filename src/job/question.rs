@@ -82,7 +82,12 @@ impl Setup {
 
     /// What state a pair of crossings has; `signals` are those of this setup.
     #[must_use]
-    pub fn pairs<'a>(&'a self, signals: &'a [Wavelength], number: usize, wanted: f64) -> pairs::Question<'a> {
+    pub fn pairs<'a>(
+        &'a self,
+        signals: &'a [Wavelength],
+        number: Option<usize>,
+        wanted: f64,
+    ) -> pairs::Question<'a> {
         pairs::Question {
             crystals: &self.crystals,
             pump: self.pump(),
@@ -106,21 +111,6 @@ impl Setup {
             ))
         };
         self.length_given.then_some(()).ok_or_else(missing)
-    }
-
-    /// A length for every crystal, and nothing that this version would leave out silently.
-    ///
-    /// # Errors
-    /// What is missing, or not understood.
-    pub fn demand_bench(&self, command: &str) -> Result<(), JobError> {
-        self.demand_length(command)?;
-        match self.unread.as_slice() {
-            [] => Ok(()),
-            keys => Err(JobError(format!(
-                "{} is not read by this version; give a width instead (pump.linewidth, filter.width)",
-                keys.join(" and ")
-            ))),
-        }
     }
 
     /// What plates may be made of: `allow` by id, or the first crystal's own material and quartz. A plate of the first

@@ -124,7 +124,6 @@ pub fn resolve_description(
         signals,
         screen,
         bench,
-        unread: arms::unread(description),
         stage: stage(&reader, description)?,
         length_given: description.crystal.iter().all(|c| c.get_ref().length.is_some()),
         written: description.clone(),
@@ -147,6 +146,9 @@ pub fn resolve_description(
         setup.cut.push(cut);
     }
     setup.settle(needs)?;
+    if let Some(text) = description.pump.as_ref().and_then(|pump| pump.get_ref().spectrum.as_ref()) {
+        reader.within(text, setup.check_spectrum())?;
+    }
     setup.bench.compensators = arms::compensators(&reader, description, &setup.crystals, catalogue)?;
     Ok(setup)
 }

@@ -7,7 +7,7 @@ use super::settle::settle_cut;
 use crate::matching::{Interaction, Photons, Target};
 use crate::material::MaterialError;
 use crate::optics::Crystal;
-use crate::pairs::Bench;
+use crate::pairs::{Bench, Line};
 use crate::quantity::{Angle, Length, Wavelength};
 
 use thiserror::Error;
@@ -61,8 +61,6 @@ pub struct Setup {
     pub screen: Length,
     /// What pump and pairs meet beside the crystals.
     pub bench: Bench,
-    /// Keys that are written and not understood by this version; a result that depends on them must not be given.
-    pub unread: Vec<&'static str>,
     /// The mount's scale.
     pub stage: Option<Stage>,
     /// Whether the length was given.
@@ -168,7 +166,23 @@ impl Setup {
         if let (Some(pump), Signals::At(all)) = (self.pump, &self.signals) {
             all.iter().try_for_each(|signal| limits::photon(*signal, pump))?;
         }
+        self.check_spectrum()?;
         self.crystals.iter().try_for_each(|crystal| limits::facing(&crystal.orientation))
+    }
+
+    /// A spectrum that was measured holds the pump's wavelength.
+    pub(super) fn check_spectrum(&self) -> Limit {
+        let (Some(pump), Line::Measured(trace)) = (self.pump, &self.bench.line) else { return Ok(()) };
+        let [from, to] = trace.range();
+        if (from..=to).contains(&pump.si()) {
+            return Ok(());
+        }
+        Err(format!(
+            "the spectrum goes from {:.3} nm to {:.3} nm, which does not hold the pump wavelength, {pump}: correct one of \
+             the two",
+            1e9 * from,
+            1e9 * to
+        ))
     }
 
     /// The interaction that was named; else type I where a half angle is wanted of a cut or as `target`, and type II.

@@ -74,7 +74,8 @@ pub struct HistoryName {
 /// Two histories that meet, or miss.
 #[derive(Debug, Clone)]
 pub struct CrossingRow {
-    /// Number of the pair from 1, where they meet.
+    /// Number of the pair from 1, where they meet: of its directions and wavelengths, so that more histories that meet in
+    /// the same pair have the same number. Its directions are 1a and 1b.
     pub pair: Option<usize>,
     /// One history.
     pub first: HistoryName,
@@ -187,7 +188,110 @@ pub fn cones_with(
             }
         }
     }
+    found.crossings = each_once(std::mem::take(&mut found.crossings));
     Ok(found)
+}
+
+impl Cones {
+    /// Pairs of directions, each once: rows in which histories meet, in the order of their numbers.
+    pub fn pairs(&self) -> impl Iterator<Item = &CrossingRow> {
+        let mut last = 0;
+        self.crossings.iter().filter(move |row| {
+            let is_next = row.pair.is_some_and(|number| number > last);
+            last = row.pair.unwrap_or(0).max(last);
+            is_next
+        })
+    }
+}
+
+/// How near directions are one, radians.
+const SAME: f64 = 1e-7;
+
+impl CrossingRow {
+    /// What an arm of the pair is called: 1a, 1b; `None` where the rings do not meet.
+    #[must_use]
+    pub fn arm(&self, photon: char) -> Option<String> {
+        self.pair.map(|number| format!("{number}{photon}"))
+    }
+
+    fn partner(&self) -> Option<Direction> {
+        self.crossing.as_ref()?.partner
+    }
+
+    /// Whether both are one pair with its photons renamed.
+    fn is_renamed(&self, other: &Self) -> bool {
+        let same = |a: Wavelength, b: Wavelength| (a.si() / b.si() - 1.0).abs() < 1e-9;
+        let renamed = |one: HistoryName, two: HistoryName| {
+            let (p, q) = (one.process, two.process);
+            one.crystal == two.crystal && (p.pump, p.signal, p.idler) == (q.pump, q.idler, q.signal)
+        };
+        let histories = renamed(self.first, other.first) && renamed(self.second, other.second)
+            || renamed(self.first, other.second) && renamed(self.second, other.first);
+        if !histories
+            || !same(self.a_wavelength, other.b_wavelength)
+            || !same(self.b_wavelength, other.a_wavelength)
+        {
+            return false;
+        }
+        let (Some(own), Some(others)) = (&self.crossing, &other.crossing) else {
+            return self.crossing.is_none() && other.crossing.is_none();
+        };
+        if [self, other].iter().all(|row| row.status == Status::Coincident) {
+            return true;
+        }
+        let meets = |partner: Option<Direction>, there: Direction| {
+            partner.is_some_and(|partner| partner.angle_to(there) < SAME)
+        };
+        meets(own.partner, others.direction) && meets(others.partner, own.direction)
+    }
+
+    fn is_at(&self, other: &Self) -> bool {
+        let near = |one: Option<Direction>, two: Option<Direction>| match (one, two) {
+            (Some(one), Some(two)) => one.angle_to(two) < SAME,
+            (one, two) => one.is_none() && two.is_none(),
+        };
+        let of = |row: &Self| row.crossing.as_ref().map(|crossing| crossing.direction);
+        self.a_wavelength == other.a_wavelength
+            && near(of(self), of(other))
+            && near(self.partner(), other.partner())
+    }
+
+    /// Whether a of a degenerate pair lies above b, or level with it and at larger h.
+    fn is_upright(&self) -> bool {
+        let Some((a, b)) = self.crossing.as_ref().map(|c| c.direction).zip(self.partner()) else {
+            return true;
+        };
+        let level = (a.v_deg() - b.v_deg()).abs() <= 1e-6;
+        if level { a.h_deg() > b.h_deg() } else { a.v_deg() > b.v_deg() }
+    }
+}
+
+/// Every pair once, however its photons are named, and numbered.
+fn each_once(rows: Vec<CrossingRow>) -> Vec<CrossingRow> {
+    let mut kept: Vec<CrossingRow> = Vec::with_capacity(rows.len());
+    for row in rows {
+        match kept.iter().position(|other| other.is_renamed(&row)) {
+            None => kept.push(row),
+            Some(twin) => {
+                let degenerate = row.a_wavelength == row.b_wavelength;
+                if degenerate && !kept[twin].is_upright() && row.is_upright() {
+                    kept[twin] = row;
+                }
+            }
+        }
+    }
+    let mut last = 0;
+    for i in 0..kept.len() {
+        if kept[i].crossing.is_none() {
+            continue;
+        }
+        let same = kept[..i].iter().find(|other| other.pair.is_some() && other.is_at(&kept[i]));
+        kept[i].pair = same.and_then(|other| other.pair).or_else(|| {
+            last += 1;
+            Some(last)
+        });
+    }
+    kept
 }
 
 impl<'a> Source<'a> {
@@ -380,19 +484,17 @@ fn meeting_rows(
 ) {
     order(&mut points);
     let from = rows.len();
-    let mut number = rows.iter().filter_map(|r| r.pair).max().unwrap_or(0);
     for (crossing, status) in points {
         if first.source.emission.photons.degenerate() && is_twin_of_earlier(&rows[from..], &crossing) {
             continue;
         }
-        number += 1;
         let status = match status {
             Status::Ok if crossing.partner.is_none() => Status::TotalReflection,
             Status::Ok if dark => Status::NoNonlinearity,
             other => other,
         };
         let blank = blank_row(first, second, status);
-        rows.push(CrossingRow { pair: Some(number), crossing: Some(crossing), ..blank });
+        rows.push(CrossingRow { crossing: Some(crossing), ..blank });
     }
 }
 

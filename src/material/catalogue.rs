@@ -157,7 +157,8 @@ fn read(name: &str, text: &str) -> Result<Material, MaterialError> {
 }
 
 /// FNV-1a, 64 bit (G. Fowler, L. C. Noll, K.-P. Vo; RFC 9923, constants from memory): tells texts apart, keeps no secret.
-fn digest(text: &str) -> u64 {
+#[must_use]
+pub fn digest(text: &str) -> u64 {
     text.bytes().fold(0xcbf2_9ce4_8422_2325, |hash, byte| {
         (hash ^ u64::from(byte)).wrapping_mul(0x0000_0100_0000_01b3)
     })

@@ -8,7 +8,7 @@ mod error;
 pub mod file;
 pub mod tensor;
 
-pub use catalogue::{Catalogue, TEMPLATE};
+pub use catalogue::{Catalogue, TEMPLATE, digest};
 pub use dataset::{DataSet, Index, Principal, Reach};
 pub use error::MaterialError;
 pub use file::{Known, Optic, Relative};

@@ -3,7 +3,9 @@
 //! Arrays of two hold arm a first, then arm b.
 
 use std::f64::consts::{LN_2, PI};
+use std::sync::Arc;
 
+use super::trace::Trace;
 use crate::frame::Direction;
 use crate::optics::Crystal;
 use crate::quantity::{Angle, Duration, Frequency, Length, SPEED_OF_LIGHT, Wavelength};
@@ -27,8 +29,8 @@ pub struct Bench {
     pub compensators: Vec<Compensator>,
 }
 
-/// Spectrum of the pump, a Gaussian about its wavelength.
-#[derive(Debug, Clone, Copy, PartialEq, Default)]
+/// Spectrum of the pump, a Gaussian about its wavelength unless it was measured.
+#[derive(Debug, Clone, PartialEq, Default)]
 pub enum Line {
     /// One frequency.
     #[default]
@@ -39,6 +41,8 @@ pub enum Line {
     Band(Frequency),
     /// Transform-limited Gaussian pulses of this FWHM of intensity.
     Pulse(Duration),
+    /// Continuous, of this intensity per wavelength.
+    Measured(Arc<Trace>),
 }
 
 impl Line {
@@ -46,13 +50,14 @@ impl Line {
     ///
     /// Gaussian pulse: FWHM of frequency times FWHM of duration = 2 ln 2 / pi.
     #[must_use]
-    pub fn width(self, pump: Wavelength) -> f64 {
+    pub fn width(&self, pump: Wavelength) -> f64 {
         match self {
             Self::Monochromatic => 0.0,
             // d omega = 2 pi c d lambda / lambda^2
             Self::Width(width) => 2.0 * PI * SPEED_OF_LIGHT * width.si() / pump.si().powi(2),
             Self::Band(width) => 2.0 * PI * width.si(),
             Self::Pulse(duration) => 4.0 * LN_2 / duration.si(),
+            Self::Measured(trace) => 2.0 * PI * SPEED_OF_LIGHT * trace.width() / trace.middle().powi(2),
         }
     }
 }
@@ -94,24 +99,26 @@ pub enum Opening {
 }
 
 /// Transmission of intensity against wavelength.
-#[derive(Debug, Clone, Copy, PartialEq)]
+#[derive(Debug, Clone, PartialEq)]
 pub struct Filter {
-    /// Gaussian or rectangular.
+    /// Gaussian, rectangular or measured.
     pub shape: Shape,
     /// FWHM of the intensity transmission.
     pub width: Length,
-    /// Centre; `None` is the photon's nominal wavelength.
+    /// Where its middle stands; `None` is the photon's nominal wavelength.
     pub centre: Option<Wavelength>,
 }
 
 /// Shape of a filter.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Default)]
+#[derive(Debug, Clone, PartialEq, Default)]
 pub enum Shape {
     /// exp(-4 ln 2 x^2) with x in widths.
     #[default]
     Gaussian,
     /// 1 within the width, 0 outside.
     Rectangular,
+    /// As measured, moved so that its middle stands at the centre.
+    Measured(Arc<Trace>),
 }
 
 /// Beyond this many FWHM from its centre a Gaussian (1e-7 there) counts as nothing.
@@ -121,18 +128,58 @@ impl Filter {
     /// Transmission at a wavelength, for a photon of this nominal wavelength.
     #[must_use]
     pub fn transmission(&self, wavelength: Wavelength, nominal: Wavelength) -> f64 {
-        let x = (wavelength.si() - self.centre.unwrap_or(nominal).si()) / self.width.si();
-        match self.shape {
+        let off = wavelength.si() - self.centre.unwrap_or(nominal).si();
+        let x = off / self.width.si();
+        match &self.shape {
             Shape::Gaussian => (-4.0 * LN_2 * x * x).exp(),
             Shape::Rectangular => f64::from(x.abs() <= 0.5),
+            Shape::Measured(trace) => trace.at(trace.middle() + off),
+        }
+    }
+
+    /// As measured, where it was measured.
+    #[must_use]
+    pub fn measured(trace: Arc<Trace>) -> Self {
+        let width = Length::metres(trace.width());
+        let centre = Some(Wavelength::metres(trace.middle()));
+        Self { shape: Shape::Measured(trace), width, centre }
+    }
+
+    /// Shortest and longest wavelength of a filter centred here, m: so many widths off the centre of a Gaussian, and as far as
+    /// a measured one is above that share of its best.
+    pub(crate) fn open(&self, centre: f64, widths: f64, share: f64) -> [f64; 2] {
+        let half = match &self.shape {
+            Shape::Gaussian => widths * self.width.si(),
+            Shape::Rectangular => 0.5 * self.width.si(),
+            Shape::Measured(trace) => return trace.above(share).map(|w| w - trace.middle() + centre),
+        };
+        [centre - half, centre + half]
+    }
+
+    /// Wavelengths between which a measured one is smooth, m.
+    pub(super) fn joints(&self, nominal: Wavelength) -> impl Iterator<Item = f64> {
+        let moved = self.centre.unwrap_or(nominal).si();
+        let trace = match &self.shape {
+            Shape::Measured(trace) => Some(trace),
+            _ => None,
+        };
+        trace.into_iter().flat_map(move |trace| trace.wavelengths().map(move |w| w - trace.middle() + moved))
+    }
+
+    /// What it is, in a word.
+    #[must_use]
+    pub fn kind(&self) -> &'static str {
+        match self.shape {
+            Shape::Gaussian => "Gaussian",
+            Shape::Rectangular => "rectangular",
+            Shape::Measured(_) => "as measured",
         }
     }
 
     /// Shortest and longest wavelength that matter, m.
     pub(super) fn window(&self, nominal: Wavelength) -> [f64; 2] {
         let centre = self.centre.unwrap_or(nominal).si();
-        let half = self.width.si() * if self.shape == Shape::Gaussian { REACH } else { 0.5 };
-        [centre - half, centre + half]
+        self.open(centre, REACH, 0.0)
     }
 }
 

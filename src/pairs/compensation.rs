@@ -15,6 +15,7 @@ use super::solve::{Question, State};
 use super::stack::{PUMP, Stack};
 use super::{Bench, Compensator, HistoryBasis, Mixture, Opening, PairsError, Place, Vary};
 use crate::frame::Cut;
+use crate::matching::Status;
 use crate::optics::Crystal;
 use crate::quantity::{Angle, Length, SPEED_OF_LIGHT};
 
@@ -46,6 +47,8 @@ pub struct Proposal {
     pub after: f64,
     /// The state with these.
     pub state: State,
+    /// `NotConverged` where a visibility, before or after, may be far off.
+    pub status: Status,
 }
 
 /// Longest plate that is proposed, m.
@@ -100,21 +103,20 @@ pub fn compensate(
     let mut answers = Answers { proposals: Vec::new(), useless: Vec::new() };
     for material in materials {
         let id = || material.material.id.clone();
-        let best = match task.best_of(material) {
-            Ok(Some(best)) => best,
-            Ok(None) => {
-                answers.useless.push((id(), "no plate of it helps".into()));
-                continue;
-            }
+        let found = match task.best_of(material) {
+            Ok(best) => best,
             Err(PairsError::Material(error)) => {
                 answers.useless.push((id(), error.to_string()));
                 continue;
             }
             Err(other) => return Err(other),
         };
-        let plates: Vec<Compensator> =
-            best.parts.iter().map(|(candidate, length)| task.compensator(candidate, *length)).collect();
-        answers.proposals.push(task.propose(plates, &before)?);
+        let mut choices: Vec<Vec<Compensator>> = found.iter().map(|best| task.plates(best)).collect();
+        choices.extend(task.plates_of_rule(material)?);
+        match task.best_judged(choices)? {
+            Some(plates) => answers.proposals.push(task.propose(plates, &before)?),
+            None => answers.useless.push((id(), "no plate of it helps".into())),
+        }
     }
     answers.proposals.sort_by(|a, b| b.after.total_cmp(&a.after));
     Ok(answers)
@@ -138,16 +140,16 @@ pub fn half_length(question: &Question<'_>) -> Result<Vec<Proposal>, PairsError>
     let [crystal] = question.crystals else { return Ok(Vec::new()) };
     let task = Task::new(question, false)?;
     let before = task.judge(&[])?;
-    let mut all = Vec::with_capacity(2);
-    for half_wave in [false, true] {
-        let mut plate = as_plate(crystal);
-        plate.length = Length::metres(0.5 * crystal.length.si());
-        let turn = if half_wave { 0.0 } else { 90.0 };
-        plate.orientation.roll = Angle::from_degrees(crystal.orientation.roll.degrees() + turn);
-        let plates = [Place::A, Place::B].map(|place| Compensator { place, plate: plate.clone(), half_wave });
-        all.push(task.propose(plates.to_vec(), &before)?);
-    }
-    Ok(all)
+    [false, true].into_iter().map(|half_wave| task.propose(rule(crystal, half_wave), &before)).collect()
+}
+
+/// The plates of the rule, in arm a and arm b.
+fn rule(crystal: &Crystal, half_wave: bool) -> Vec<Compensator> {
+    let mut plate = as_plate(crystal);
+    plate.length = Length::metres(0.5 * crystal.length.si());
+    let turn = if half_wave { 0.0 } else { 90.0 };
+    plate.orientation.roll = Angle::from_degrees(crystal.orientation.roll.degrees() + turn);
+    [Place::A, Place::B].map(|place| Compensator { place, plate: plate.clone(), half_wave }).to_vec()
 }
 
 /// A crystal's material and cut, upright and unpoled.
@@ -198,6 +200,39 @@ impl<'q, 'a> Task<'q, 'a> {
         Question { bench: &bench, ..*self.question }.state()
     }
 
+    fn plates(&self, combination: &Combination) -> Vec<Compensator> {
+        combination.parts.iter().map(|(candidate, length)| self.compensator(candidate, *length)).collect()
+    }
+
+    /// The rule for one crystal of this material, as it is and polished; nothing else.
+    fn plates_of_rule(&self, material: &Crystal) -> Result<Vec<Vec<Compensator>>, PairsError> {
+        let [crystal] = self.question.crystals else { return Ok(Vec::new()) };
+        if crystal.material.id != material.material.id || crystal.set().id != material.set().id {
+            return Ok(Vec::new());
+        }
+        let plates = rule(crystal, self.half_wave);
+        let part = |(site, compensator): (usize, &Compensator)| {
+            let plate = compensator.plate.clone();
+            let length = plate.length.si();
+            (Candidate { site, plate, slopes: Vector4::zeros() }, length)
+        };
+        let parts = plates.iter().enumerate().map(part).collect();
+        let (polished, _) = self.polish(Combination { parts, variance: 0.0 })?;
+        Ok(vec![self.plates(&polished), plates])
+    }
+
+    /// The plates that leave the best state.
+    fn best_judged(&self, choices: Vec<Vec<Compensator>>) -> Result<Option<Vec<Compensator>>, PairsError> {
+        let mut best: Option<(f64, Vec<Compensator>)> = None;
+        for plates in choices {
+            let value = self.judge(&plates)?.histories.coherence();
+            if best.as_ref().is_none_or(|(most, _)| value > *most) {
+                best = Some((value, plates));
+            }
+        }
+        Ok(best.map(|(_, plates)| plates))
+    }
+
     fn compensator(&self, candidate: &Candidate, length: f64) -> Compensator {
         let plate = Crystal { length: Length::metres(length), ..candidate.plate.clone() };
         let place = self.sites[candidate.site].place;
@@ -238,7 +273,9 @@ impl<'q, 'a> Task<'q, 'a> {
                 plate: compensator.clone(),
             });
         }
-        Ok(Proposal { plates: designed, before: before.histories.coherence(), after, state })
+        let missed = [before, &state].iter().any(|state| state.status == Status::NotConverged);
+        let status = if missed { Status::NotConverged } else { Status::Ok };
+        Ok(Proposal { plates: designed, before: before.histories.coherence(), after, state, status })
     }
 
     fn site(&self, place: Place) -> &Site {

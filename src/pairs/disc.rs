@@ -28,6 +28,11 @@ impl ArmFrame {
         self.h * at.x + self.v * at.y + self.d * (1.0 - at.norm_squared()).max(0.0).sqrt()
     }
 
+    /// The place whose direction, to first order, has these components across the pump more than the nominal one.
+    pub fn across(&self, tangential: &Vector2<f64>) -> Option<Vector2<f64>> {
+        Some(Matrix2::from_columns(&[self.h.xy(), self.v.xy()]).try_inverse()? * tangential)
+    }
+
     pub fn place(&self, direction: &Vector3<f64>) -> Vector2<f64> {
         Vector2::new(self.h.dot(direction), self.v.dot(direction))
     }

@@ -11,7 +11,7 @@ use nalgebra::{Complex, Matrix4, Vector2, Vector3, Vector4};
 
 use super::amplitude::{Behind, Born};
 use super::band::Band;
-use super::bench::{Bench, Filter, Opening};
+use super::bench::{Bench, Filter, Line, Opening};
 use super::disc::{ArmFrame, Passage};
 use super::plate::Point;
 use super::quadrature::Rule;
@@ -33,6 +33,8 @@ pub struct Mixture<'a> {
     pub(super) frames: [ArmFrame; 2],
     /// FWHM of the pump's spectrum, rad/s.
     line: f64,
+    /// That spectrum as many points (rad/s, weight), where it was measured.
+    spectrum: Option<Vec<[f64; 2]>>,
     /// 1/e^2 radius of the pump, m.
     pub(super) waist: Option<f64>,
     vary: Vary,
@@ -83,6 +85,11 @@ impl<'a> Mixture<'a> {
         if vary.recentred {
             filters.iter_mut().flatten().for_each(|filter| filter.centre = None);
         }
+        let spectrum = match &bench.line {
+            Line::Measured(trace) if vary.line => Some(trace.measure()),
+            _ => None,
+        };
+        let in_frequency = |[w, weight]: [f64; 2]| [Wavelength::metres(w).angular_frequency(), weight];
         Self {
             stack,
             filters,
@@ -90,6 +97,7 @@ impl<'a> Mixture<'a> {
             fibres,
             frames: stack.arms.map(ArmFrame::new),
             line: if vary.line { bench.line.width(stack.photons.pump) } else { 0.0 },
+            spectrum: spectrum.map(|points| points.into_iter().map(in_frequency).collect()),
             waist: if vary.direction { bench.waist.map(|w| w.si()) } else { None },
             vary,
         }
@@ -145,6 +153,15 @@ impl<'a> Mixture<'a> {
         self.radii[1] * self.photon(1).wavenumber() * waist < 2.0 && self.radii[0].is_finite()
     }
 
+    /// The one arm with a fibre, and its mode radius.
+    fn only_fibre(&self) -> Option<(usize, f64)> {
+        match self.fibres {
+            [Some(radius), None] => Some((0, radius)),
+            [None, Some(radius)] => Some((1, radius)),
+            _ => None,
+        }
+    }
+
     fn spreads(&self) -> bool {
         self.radii.iter().any(|r| r.is_finite()) || self.fibres.iter().any(Option::is_some)
     }
@@ -157,7 +174,11 @@ impl<'a> Mixture<'a> {
             TILT => self.waist.is_some() && !narrow && !modes,
             BAND => self.vary.frequency,
             RADIUS => self.spreads(),
-            _ => self.spreads() && !modes,
+            // a fibre, a focused pump and no iris: all are sums over planes
+            _ => {
+                let planes = self.only_fibre().is_some() && self.waist.is_some();
+                self.spreads() && !modes && (!planes || self.radii.iter().any(|r| r.is_finite()))
+            }
         }
     }
 
@@ -244,6 +265,44 @@ impl<'a> Mixture<'a> {
         self.fibres[arm].map_or(1.0, |w| (-0.5 * (k0 * w).powi(2) * at.norm_squared()).exp())
     }
 
+    /// Frequencies of the pump with weights.
+    fn pump_frequencies(&self, order: usize) -> Vec<[f64; 2]> {
+        if let Some(points) = &self.spectrum {
+            return Rule::weighted(points, order).0;
+        }
+        // a Gaussian of intensity, exp(-4 ln 2 x^2) with x in FWHM
+        let scale = 0.5 / LN_2.sqrt() * self.line;
+        let centre = self.stack.nominal()[PUMP];
+        Rule::hermite(order).0.into_iter().map(|[x, weight]| [centre + x * scale, weight]).collect()
+    }
+
+    /// Frequencies of a with weights, which hold what the filters transmit.
+    fn frequencies(&self, piece: Band, pump: f64, order: usize) -> Vec<[f64; 2]> {
+        let mut joints: Vec<f64> = Vec::new();
+        for (arm, filters) in self.filters.iter().enumerate() {
+            let photon = self.photon(arm);
+            let own = filters.iter().flat_map(|filter| filter.joints(photon));
+            let omega = own.map(|w| Wavelength::metres(w).angular_frequency());
+            joints.extend(omega.map(|omega| if arm == 0 { omega } else { pump - omega }));
+        }
+        let weighed = |[omega, share]: [f64; 2]| [omega, share * self.transmission(omega, pump)];
+        if joints.is_empty() {
+            return Rule::legendre(order).on(piece).map(weighed).collect();
+        }
+        // a measured filter may be open in a small part of the piece: a rule of its own, from points that are close enough
+        // for every filter
+        const STEPS: usize = 64;
+        let step = (piece[1] - piece[0]) / STEPS as f64;
+        joints.extend((0..=STEPS).map(|j| piece[0] + step * j as f64));
+        joints.retain(|omega| (piece[0]..=piece[1]).contains(omega));
+        joints.sort_by(f64::total_cmp);
+        let rule = Rule::legendre(3);
+        let between =
+            joints.windows(2).flat_map(|pair| rule.on([pair[0], pair[1]]).map(weighed).collect::<Vec<_>>());
+        let points: Vec<[f64; 2]> = between.filter(|point| point[1] > 0.0).collect();
+        Rule::weighted(&points, order).0
+    }
+
     /// What the filters of both arms leave of pairs whose photon a has this wavelength, at the pump's centre.
     #[must_use]
     pub fn passes(&self, a: Wavelength) -> f64 {
@@ -299,7 +358,7 @@ struct Once {
 }
 
 impl<'a, 'b> Sum<'a, 'b> {
-    fn new(mixture: &'b Mixture<'a>) -> Self {
+    pub(super) fn new(mixture: &'b Mixture<'a>) -> Self {
         Self {
             mixture,
             total: Matrix4::zeros(),
@@ -317,19 +376,19 @@ impl Sum<'_, '_> {
     fn over_line(&mut self, orders: &Orders) -> Result<Band, PairsError> {
         let mixture = self.mixture;
         let centre = mixture.stack.nominal()[PUMP];
-        let mut middle = None;
         if mixture.line == 0.0 {
             return self.over_band(centre, 1.0, orders)?.ok_or(PairsError::NothingCollected);
         }
-        // a Gaussian of intensity, exp(-4 ln 2 x^2) with x in FWHM
-        let scale = 0.5 / LN_2.sqrt();
-        for [x, weight] in Rule::hermite(orders[LINE]).0 {
-            let band = self.over_band(centre + x * scale * mixture.line, weight, orders)?;
-            if middle.is_none() || x.abs() < 0.5 {
-                middle = band.or(middle);
+        let mut middle: Option<(f64, Band)> = None;
+        for [pump, weight] in mixture.pump_frequencies(orders[LINE]) {
+            let off = (pump - centre).abs();
+            if let Some(band) = self.over_band(pump, weight, orders)?
+                && middle.is_none_or(|(least, _)| off < least)
+            {
+                middle = Some((off, band));
             }
         }
-        middle.ok_or(PairsError::NothingCollected)
+        middle.map(|(_, band)| band).ok_or(PairsError::NothingCollected)
     }
 
     fn over_band(&mut self, pump: f64, weight: f64, orders: &Orders) -> Result<Option<Band>, PairsError> {
@@ -343,14 +402,12 @@ impl Sum<'_, '_> {
         let Some(band) = mixture.band(pump, &mut self.tuned, &mut self.nulls) else { return Ok(None) };
         // the middle is a kink of what two equal irises let through
         let centre = mixture.stack.nominal()[0] * pump / mixture.stack.nominal()[PUMP];
-        let rule = Rule::legendre(orders[BAND]);
         let kinked = mixture.radii.iter().all(|r| r.is_finite()) && centre > band[0] && centre < band[1];
         let pieces: &[Band] = if kinked { &[[band[0], centre], [centre, band[1]]] } else { &[band] };
         for piece in pieces {
-            for [omega, share] in rule.on(*piece) {
-                let transmitted = mixture.transmission(omega, pump);
-                if transmitted > 0.0 {
-                    self.over_directions(omega, pump, weight * share * transmitted, orders)?;
+            for [omega, share] in mixture.frequencies(*piece, pump, orders[BAND]) {
+                if share > 0.0 {
+                    self.over_directions(omega, pump, weight * share, orders)?;
                 }
             }
         }
@@ -374,6 +431,10 @@ impl Sum<'_, '_> {
             self.over_discs(&Vector3::z(), weight, orders);
             return Ok(());
         };
+        if let Some((arm, radius)) = mixture.only_fibre() {
+            self.over_one_mode(arm, radius, waist, weight, [orders[RADIUS], orders[TILT], orders[AZIMUTH]]);
+            return Ok(());
+        }
         if mixture.is_narrow(waist) {
             self.over_both_discs(waist, weight, orders);
             return Ok(());
@@ -459,7 +520,7 @@ impl Sum<'_, '_> {
         &self.born
     }
 
-    fn pair_field(&mut self, a: &Vector3<f64>, b: &Vector3<f64>) -> Option<Vector4<Amplitude>> {
+    pub(super) fn pair_field(&mut self, a: &Vector3<f64>, b: &Vector3<f64>) -> Option<Vector4<Amplitude>> {
         let k0 = self.tuned.k0;
         let (a, b) = (Ray::new(k0[0], *a), Ray::new(k0[1], *b));
         self.samples += 1;

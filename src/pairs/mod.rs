@@ -20,6 +20,7 @@ mod slab;
 mod solve;
 mod stack;
 mod state;
+mod trace;
 
 pub use basis::HistoryBasis;
 pub use bench::{Bench, Collection, Compensator, Filter, Line, Opening, Place, PumpPolarization, Shape};
@@ -30,11 +31,12 @@ pub use quadrature::Rule;
 pub use solve::{Question, State};
 pub use stack::{Stack, most_even};
 pub use state::{Amplitude, Basis, DensityMatrix, Nearest};
+pub use trace::Trace;
 
 use crate::frame::Direction;
 use crate::matching::{ConesError, CrossingRow, HistoryName, Photons, Status};
 use crate::material::MaterialError;
-use crate::quantity::Wavelength;
+use crate::quantity::{Length, Wavelength};
 
 use thiserror::Error;
 
@@ -134,6 +136,19 @@ pub enum PairsError {
     /// The interaction does not fit a crystal.
     #[error("{0}")]
     Description(String),
+    /// A pump that spreads too far to be a beam.
+    #[error(
+        "a waist of {} um spreads the pump over {spread_deg:.1} deg to either side, too far for a beam along z: phases and rings would not be those of these crystals; take {least_um:.1} um or more",
+        waist.um()
+    )]
+    TightWaist {
+        /// 1/e^2 radius.
+        waist: Length,
+        /// Half angle of the beam.
+        spread_deg: f64,
+        /// That would do.
+        least_um: f64,
+    },
     /// No nonlinear tensor.
     #[error(
         "the nonlinear tensor of {material} is not known, so that the amplitudes of its pairs are not known either; add `nonlinearity` to a material file of your own"
@@ -151,6 +166,20 @@ pub enum PairsError {
         count: usize,
         /// Of the first two histories, where there is none.
         status: Status,
+    },
+    /// All pairs have photons of the same polarizations.
+    #[error("{}", one_polarization(*crystals))]
+    OnePolarization {
+        /// How many crystals there are.
+        crystals: usize,
+    },
+    /// A pair is asked for by its number, and the directions are given.
+    #[error(
+        "pair {number} is asked for, but collection.direction fixes the directions, whichever pair is meant: leave out one of the two"
+    )]
+    FixedDirections {
+        /// Asked for.
+        number: usize,
     },
     /// The histories of the pair are not among those of the interaction.
     #[error(
@@ -191,11 +220,26 @@ impl From<&PairsError> for Status {
             PairsError::NoPair { .. }
             | PairsError::Description(_)
             | PairsError::NoTensor { .. }
+            | PairsError::TightWaist { .. }
             | PairsError::NoHistories
+            | PairsError::OnePolarization { .. }
+            | PairsError::FixedDirections { .. }
             | PairsError::NothingCollected
             | PairsError::Alike => Self::Invalid,
         }
     }
+}
+
+fn one_polarization(crystals: usize) -> String {
+    let which = if crystals == 1 {
+        "one crystal of this type makes all its pairs in one way"
+    } else {
+        "these crystals make all their pairs alike"
+    };
+    format!(
+        "{which}, so that each photon has one polarization and nothing is entangled; add a second equal [[crystal]] with \
+         roll = \"90 deg\", or take type II"
+    )
 }
 
 fn no_pair(number: usize, count: usize, status: Status) -> String {

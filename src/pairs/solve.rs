@@ -21,8 +21,8 @@ pub struct Question<'a> {
     pub interaction: Interaction,
     /// What the pairs meet beside the crystals.
     pub bench: &'a Bench,
-    /// Number of the pair from 1, as `cones` counts them.
-    pub number: usize,
+    /// Number of the pair from 1, as `cones` counts them; the first where left open.
+    pub number: Option<usize>,
     /// Error of a visibility that will do.
     pub wanted: f64,
 }
@@ -67,17 +67,24 @@ impl Question<'_> {
     /// There is none, with what there is.
     pub fn pair(&self) -> Result<(Option<usize>, Pair, CrossingRow), PairsError> {
         let found = self.crossings()?;
+        if found.crossings.is_empty() {
+            return Err(PairsError::OnePolarization { crystals: self.crystals.len() });
+        }
         let fixed = [0, 1].map(|arm| self.bench.collection[arm].direction);
         if fixed.iter().any(Option::is_some) {
+            if let Some(number) = self.number {
+                return Err(PairsError::FixedDirections { number });
+            }
             let row = found.crossings.first().ok_or(PairsError::NoHistories)?;
             return Ok((None, self.fixed_pair(row, fixed)?, row.clone()));
         }
-        let row = found.crossings.iter().find(|row| row.pair == Some(self.number));
+        let number = self.number.unwrap_or(1);
+        let row = found.crossings.iter().find(|row| row.pair == Some(number));
         match row.and_then(|row| Some((row, Pair::at(row, self.pump)?))) {
-            Some((row, pair)) => Ok((Some(self.number), pair, row.clone())),
+            Some((row, pair)) => Ok((Some(number), pair, row.clone())),
             None => Err(PairsError::NoPair {
-                number: self.number,
-                count: found.crossings.iter().filter(|row| row.pair.is_some()).count(),
+                number,
+                count: found.crossings.iter().filter_map(|row| row.pair).max().unwrap_or(0),
                 status: row.or(found.crossings.first()).map_or(Status::NoPhaseMatching, |row| row.status),
             }),
         }

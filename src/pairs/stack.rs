@@ -66,6 +66,9 @@ pub fn wavelength(omega: f64) -> Wavelength {
     Wavelength::metres(2.0 * std::f64::consts::PI * SPEED_OF_LIGHT / omega)
 }
 
+/// Half angle up to which a pump is a beam, radians: beyond, sums over its directions would reach far beyond the rings.
+const WIDEST: f64 = 0.05;
+
 impl Stack {
     /// For a pair of directions; all histories that the interaction allows in each crystal take part.
     ///
@@ -77,6 +80,14 @@ impl Stack {
         pair: &Pair,
         interaction: Interaction,
     ) -> Result<Self, PairsError> {
+        // lambda/(pi w), the 1/e^2 half angle of a Gaussian beam
+        let spread = |waist: f64| pair.photons.pump.si() / (std::f64::consts::PI * waist);
+        if let Some(waist) = bench.waist
+            && spread(waist.si()) > WIDEST
+        {
+            let spread_deg = spread(waist.si()).to_degrees();
+            return Err(PairsError::TightWaist { waist, spread_deg, least_um: 1e6 * spread(WIDEST) });
+        }
         let mut slabs = Vec::with_capacity(crystals.len());
         let mut histories = Vec::new();
         for (index, crystal) in crystals.iter().enumerate() {

@@ -202,15 +202,13 @@ fn marks(drawing: &mut Drawing, plot: &Plot, setup: &Setup, cones: &Cones) {
     };
     let upright = [(7.0, 0.0), (0.0, 7.0)];
     spot(drawing, plot.place(0.0, 0.0), "pump", &upright, INK);
-    let pairs = cones.crossings.iter().filter(|c| c.crossing.is_some()).count();
-    for row in &cones.crossings {
+    for row in cones.pairs() {
         let Some(crossing) = &row.crossing else { continue };
-        let number =
-            if pairs > 1 { row.pair.map_or(String::new(), |n| n.to_string()) } else { String::new() };
+        let arm = |photon: char| row.arm(photon).unwrap_or_default();
         let oblique = [(5.5, 5.5), (5.5, -5.5)];
-        spot(drawing, plot.towards(crossing.direction), &format!("A{number}"), &oblique, INK);
+        spot(drawing, plot.towards(crossing.direction), &arm('a'), &oblique, INK);
         if let Some(partner) = crossing.partner {
-            spot(drawing, plot.towards(partner), &format!("B{number}"), &oblique, INK);
+            spot(drawing, plot.towards(partner), &arm('b'), &oblique, INK);
         }
     }
     for (n, crystal) in setup.crystals.iter().enumerate() {

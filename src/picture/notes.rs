@@ -1,6 +1,6 @@
 //! The sentences under a camera picture: how it is seen, what of, and on which data it rests.
 
-use super::light::{Light, Shape};
+use super::light::Light;
 use super::sensor::{Optics, Sensor};
 use crate::job::Setup;
 use crate::optics::Crystal;
@@ -29,7 +29,7 @@ pub fn notes(setup: &Setup, light: &Light, sensor: &Sensor) -> Vec<String> {
     let waist = light.waist.map_or("a plane wave".into(), |w| format!("of waist {} um", w.um()));
     let filter = |name: &str, filters: &[super::light::Filter]| -> String {
         let words = |f: &super::light::Filter| {
-            let shape = if f.shape == Shape::Gaussian { "Gaussian" } else { "rectangular" };
+            let shape = f.kind();
             let centre = f.centre.map_or("the photon's wavelength".into(), |c| format!("{:.2} nm", c.nm()));
             format!("; {name} filter {shape}, {:.2} nm wide at {centre}", f.width.si() * 1e9)
         };
@@ -46,8 +46,8 @@ pub fn notes(setup: &Setup, light: &Light, sensor: &Sensor) -> Vec<String> {
     };
     lines.push(format!("{}, pump {:.3} nm {waist}{filters}.{optics}", setup.interaction, setup.pump().nm()));
     lines.push(
-        "Lines: e or slow rings full, o or fast rings dashed, for the nominal wavelengths. A and B: crossings, where a \
-         photon and its partner go."
+        "Lines: e or slow rings full, o or fast rings dashed, for the nominal wavelengths. 1a and 1b: the first crossing, \
+         where a photon and its partner go."
             .into(),
     );
     lines

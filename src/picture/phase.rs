@@ -82,7 +82,7 @@ impl Phases {
     ///
     /// # Errors
     /// There is no such pair, or nothing passes.
-    pub fn of(setup: &Setup, number: usize) -> Result<Self, PairsError> {
+    pub fn of(setup: &Setup, number: Option<usize>) -> Result<Self, PairsError> {
         let signals = setup.signals();
         let question = setup.pairs(&signals, number, 1e-3);
         let (number, pair, row) = question.pair()?;
@@ -531,6 +531,16 @@ fn notes(setup: &Setup, phases: &Phases) -> Vec<String> {
         };
         let between = if compensator.half_wave { ", between half-wave plates" } else { "" };
         lines.push(format!("Compensator in {arm}: {}{between}.", crystal_words(&compensator.plate)));
+    }
+    if setup.bench.compensators.iter().any(|compensator| compensator.place != Place::Pump) {
+        lines.push(match phases.view.1 {
+            View::Default => {
+                "Plates in the arms: over wavelength they are passed head-on, since points say nothing of how light comes to \
+                 them; over directions along the direction each photon has."
+                    .into()
+            }
+            _ => "Plates in the arms are passed along the direction each photon has.".into(),
+        });
     }
     lines
 }

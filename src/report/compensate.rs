@@ -54,7 +54,7 @@ pub fn rows(answers: &Answers, out: &mut impl Rows) {
             ];
             cells.extend(numbers.map(Cell::from));
             let extrapolated = proposal.state.extrapolated;
-            out.push(&cells, extrapolated, Status::Ok);
+            out.push(&cells, extrapolated, proposal.status);
         }
     }
 }
@@ -67,6 +67,14 @@ pub fn text(answers: &Answers, rules: &[Proposal]) -> String {
         out.push_str(&prose(&proposal_words(proposal)));
         out.push_str(&plates(proposal));
         proposal.plates.iter().for_each(|designed| out.push_str(&prose(&mounting(designed))));
+        out.push('\n');
+    }
+    if answers.proposals.iter().any(|proposal| proposal.status == Status::NotConverged) {
+        out.push_str(&prose(
+            "Not converged: some of these visibilities may be far off, because the state turns too fast over the \
+             wavelengths or directions that are collected; `twincone state` says by how much. Take narrower filters or \
+             irises, or a shorter crystal.",
+        ));
         out.push('\n');
     }
     for (id, why) in &answers.useless {

@@ -40,7 +40,7 @@ pub const RINGS: [Column; 16] = [
 
 /// Columns of the crossings, without the two that end every table.
 pub const CROSSINGS: [Column; 24] = [
-    column("pair", "", "number of the pair of directions, from 1"),
+    column("pair", "", "number of the pair of directions, from 1; arms 1a and 1b"),
     column("first_crystal", "", "crystal of the first history"),
     column("first_process", "", "process of the first history, photon a as signal"),
     column("second_crystal", "", "crystal of the second history"),
@@ -361,8 +361,9 @@ fn crossing_words(setup: &Setup, row: &CrossingRow) -> String {
         );
         out.push_str(&format!("    {name} {} nm: {place}\n", rounded(wavelength, 2)));
     };
-    photon("a", row.a_wavelength.nm(), Some(crossing.direction));
-    photon("b", row.b_wavelength.nm(), crossing.partner);
+    let arm = |photon: char| row.arm(photon).unwrap_or_default();
+    photon(&arm('a'), row.a_wavelength.nm(), Some(crossing.direction));
+    photon(&arm('b'), row.b_wavelength.nm(), crossing.partner);
     out
 }
 

@@ -186,8 +186,9 @@ fn heading(state: &State) -> String {
         format!("h {} deg, v {} deg", signed(d.h_deg(), 3), signed(d.v_deg(), 3))
     };
     let which = state.number.map_or("Fixed directions".into(), |n| format!("Pair {n}"));
+    let number = state.number.map_or(String::new(), |n| n.to_string());
     format!(
-        "{which}: a at {}, {} nm; b at {}, {} nm",
+        "{which}: {number}a at {}, {} nm; {number}b at {}, {} nm",
         place(state.pair.a),
         rounded(state.pair.photons.signal.nm(), 3),
         place(state.pair.b),
@@ -273,7 +274,13 @@ fn collection_words(setup: &Setup, state: &State) -> String {
             "Fibres: amplitudes add over directions in the two modes, which look at where the two histories come from on \
              average. {band}."
         ),
-        1 => format!("One fibre: directions add as intensities, weighed with its mode. {band}."),
+        1 if setup.bench.waist.is_some() => format!(
+            "One fibre: amplitudes add over directions in its mode, which looks at where the two histories come from on \
+             average; what that leaves adds as intensity over the directions of the other arm. {band}."
+        ),
+        1 => format!(
+            "One fibre and a plane pump: directions add as intensities, weighed with the mode. {band}."
+        ),
         _ => format!(
             "Irises: a pair counts when both photons pass. The two directions stand, so that irises filter wavelengths \
              too: tiny ones leave less than points do. {band}."

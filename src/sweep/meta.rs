@@ -5,6 +5,7 @@ use serde::Serialize;
 use super::{Slice, Sweep};
 use crate::job::JobError;
 use crate::job::description::Description;
+use crate::material::digest;
 
 #[derive(Serialize)]
 struct Meta<'a> {
@@ -14,6 +15,9 @@ struct Meta<'a> {
     #[serde(skip_serializing_if = "Option::is_none")]
     part: Option<Part>,
     dataset: Vec<Source>,
+    /// Files with curves that the job names.
+    #[serde(skip_serializing_if = "Vec::is_empty")]
+    file: Vec<Named>,
     column: Vec<ColumnMeta<'a>>,
     job: &'a Description,
 }
@@ -34,6 +38,12 @@ struct Source {
     range: String,
     temperature: String,
     /// Of the material's file.
+    digest: String,
+}
+
+#[derive(Serialize)]
+struct Named {
+    name: String,
     digest: String,
 }
 
@@ -63,6 +73,12 @@ pub fn meta(sweep: &Sweep<'_>, slice: Slice) -> Result<String, JobError> {
         points: sweep.count(),
         part,
         dataset: sources(sweep),
+        file: sweep
+            .setups
+            .document()
+            .attachments()
+            .map(|(name, text)| Named { name: name.into(), digest: format!("{:016x}", digest(text)) })
+            .collect(),
         column: sweep
             .columns()
             .iter()

@@ -87,7 +87,7 @@ fn write_tilt(setup: &mut Setup, search: &Search, out: &mut Lines) -> Result<(),
 const WANTED: f64 = 1e-3;
 
 fn write_state(setup: &Setup, search: &Search, out: &mut Lines) -> Result<(), Fault> {
-    setup.demand_bench("state")?;
+    setup.demand_length("state")?;
     let state = setup.pairs(&setup.signals(), search.pair, WANTED).state()?;
     match search.basis {
         Some(basis) => state::rows(&state, &[basis], out),
@@ -102,7 +102,7 @@ fn write_compensate(
     catalogue: &Catalogue,
     out: &mut Lines,
 ) -> Result<(), Fault> {
-    setup.demand_bench("compensate")?;
+    setup.demand_length("compensate")?;
     let materials = setup.plates(catalogue, &[]).map_err(ConesError::from)?;
     let answers =
         pairs::compensate(&setup.pairs(&setup.signals(), search.pair, WANTED), &materials, search.half_wave)?;

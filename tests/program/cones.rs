@@ -235,3 +235,44 @@ fn extrapolation_is_marked_in_the_row_and_warned_of() {
     assert_says(&run.stderr, &["warning: extrapolated: 1246.2 nm is outside 220 nm to 1060 nm"]);
     assert!(Table::read(&run.stdout).column("extrapolated").iter().all(|e| *e == "true"));
 }
+
+/// The same pairs with their photons renamed are one pair; more histories in the same directions share its number.
+#[test]
+fn each_pair_of_directions_has_one_number() {
+    let crystal = |roll: u32, cut: &str| {
+        format!(
+            "[[crystal]]\nmaterial = \"bbo:kato-1986\"\ncut = {{ {cut} }}\nlength = \"1 mm\"\nroll = \"{roll} deg\"\n"
+        )
+    };
+    let rows = |crystals: &str, options: &str| {
+        let job = format!("[pump]\nwavelength = \"405 nm\"\n{crystals}");
+        Table::read(
+            &twincone_with(&job, &format!("cones --job - {options} -f csv --rows crossings")).answer(),
+        )
+    };
+    let two = "theta = \"42.541 deg\", phi = \"0 deg\"";
+    let crossed = rows(&(crystal(0, two) + &crystal(90, two)), "");
+    assert_eq!(crossed.column("pair"), ["1", "2", "3", "4"]);
+    let place = |row: usize, arm: &str| {
+        ["h", "v"].map(|axis| (crossed.number(row, &format!("{arm}_{axis}_deg")) * 1e5).round() as i64)
+    };
+    for row in 0..4 {
+        let [a, b] = [place(row, "a"), place(row, "b")];
+        // a above b, or level with it and at larger h
+        assert!((a[1], a[0]) > (b[1], b[0]), "{a:?} {b:?}");
+        for other in 0..row {
+            assert!(place(other, "a") != a || place(other, "b") != b, "{row} is {other}");
+            assert!(place(other, "a") != b || place(other, "b") != a, "{row} is {other} renamed");
+        }
+    }
+    // rings that lie on each other: three crystals, of which two stand alike; and both photons listed
+    let one = "theta = \"29.237 deg\", phi = \"90 deg\"";
+    let three = rows(&(crystal(0, one) + &crystal(90, one) + &crystal(0, one)), "--type I");
+    assert_eq!(three.column("pair"), ["1", "1"]);
+    let both = rows(&(crystal(0, one) + &crystal(90, one)), "--type I --signal 780nm --signal 842.4nm");
+    assert_eq!((both.column("pair"), both.column("a_wavelength_nm")), (vec!["1"], vec!["780"]));
+    let told =
+        twincone_with(&format!("[pump]\nwavelength = \"405 nm\"\n{}", crystal(0, two)), "cones --job -")
+            .answer();
+    assert_says(&told, &["Pair 1:", "1a 810 nm: h", "1b 810 nm: h"]);
+}

@@ -70,7 +70,8 @@ fn turned_and_mirrored_pictures_are_the_same_pixels() {
 #[test]
 fn the_drawing_says_how_it_is_seen_and_names_rings_and_marks() {
     let svg = twincone(&format!("{CROSSED} --tilt 0.4deg --pixels 32")).answer();
-    let texts = ["as a translucent screen shows it from downstream: +x right, +y up", ">A<", ">B<", ">pump<"];
+    let texts =
+        ["as a translucent screen shows it from downstream: +x right, +y up", ">1a<", ">1b<", ">pump<"];
     assert_says(&svg, &texts);
     assert_says(
         &svg,

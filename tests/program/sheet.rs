@@ -41,7 +41,7 @@ fn the_bench_sheet_warns_of_pulses() {
 fn the_bench_sheet_places_arms_at_the_crossings() {
     let line = "sheet --kind bench --job examples/two-colours.toml --iris 3mm --filter-width 5nm";
     let sheet = twincone(line).answer();
-    assert_says(&sheet, &["A1 (800 nm)", "B1 (820.253 nm)", "5 nm wide (FWHM) at 800 nm", "| 800 mm |"]);
+    assert_says(&sheet, &["1a (800 nm)", "1b (820.253 nm)", "5 nm wide (FWHM) at 800 nm", "| 800 mm |"]);
     // an iris of 3 mm on the screen at 0.8 m is 0.94 mm at 0.25 m
     assert_says(&sheet, &["full angle 0.215 deg", "| 250 mm | 0.94 mm |", "1.5 mm at 800 mm"]);
 }

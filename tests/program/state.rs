@@ -203,3 +203,204 @@ fn plates_are_proposed_and_do_what_they_promise() {
     let text = twincone(&format!("compensate {asked}")).answer();
     assert_says(&text, &["for a phase of pi", "For comparison", "quartz", "Bell states"]);
 }
+
+/// A Gaussian of this FWHM as a table.
+fn curve(header: &str, centre_nm: f64, width_nm: f64) -> String {
+    let row = |j: i32| {
+        let x = f64::from(j) / 12.0;
+        format!(
+            "{:.5},{:.7}\n",
+            centre_nm + x * width_nm,
+            0.9 * (-4.0 * std::f64::consts::LN_2 * x * x).exp()
+        )
+    };
+    (-36..=36).map(row).fold(format!("{header}\n"), |table, row| table + &row)
+}
+
+fn with_files(filter: &str, pump: &str, two_crystals: bool) -> tempfile::TempDir {
+    let folder = tempfile::tempdir().expect("a folder");
+    let write = |name: &str, text: &str| std::fs::write(folder.path().join(name), text).expect("a file");
+    write("trace.csv", &curve("wavelength_nm,transmission", 810.0, 3.0));
+    write("line.csv", &curve("wavelength_nm,intensity", 405.0, 0.6));
+    let crystal = |roll: u32| {
+        let cut = if two_crystals {
+            "theta = \"29.237 deg\", phi = \"90 deg\""
+        } else {
+            "theta = \"42.541 deg\", phi = \"0 deg\""
+        };
+        format!(
+            "[[crystal]]\nmaterial = \"bbo:kato-1986\"\ncut = {{ {cut} }}\nlength = \"1 mm\"\nroll = \"{roll} deg\"\n"
+        )
+    };
+    let crystals = if two_crystals { crystal(0) + &crystal(90) } else { crystal(0) };
+    let kind = if two_crystals { "I" } else { "II" };
+    let job = format!(
+        "[pump]\nwavelength = \"405 nm\"\n{pump}\n{crystals}[emission]\ntype = \"{kind}\"\n[[filter]]\n{filter}\n"
+    );
+    write("job.toml", &job);
+    folder
+}
+
+fn visibility_in(folder: &tempfile::TempDir, command: &str) -> f64 {
+    let job = folder.path().join("job.toml");
+    let line = command.replace("JOB", &format!("\"{}\"", job.display()));
+    Table::read(&twincone(&line).answer()).number(0, "visibility_diagonal")
+}
+
+#[test]
+fn a_filter_from_a_file_is_the_filter_it_was_sampled_from() {
+    for two in [false, true] {
+        let measured = visibility_in(&with_files("file = \"trace.csv\"", "", two), "state --job JOB -f csv");
+        let stated = visibility_in(&with_files("width = \"3 nm\"", "", two), "state --job JOB -f csv");
+        assert_abs_diff_eq!(measured, stated, epsilon = 1e-3);
+        assert!(two || (0.2..0.95).contains(&stated), "{stated}");
+    }
+    // with irises, and in one arm alone
+    let options = "state --job JOB -f csv --set collection.*.iris=0.2deg --set filter.*.arm=a";
+    let measured = visibility_in(&with_files("file = \"trace.csv\"", "", false), options);
+    let stated = visibility_in(&with_files("width = \"3 nm\"", "", false), options);
+    assert_abs_diff_eq!(measured, stated, epsilon = 1e-3);
+    // moved to a centre of its own
+    let moved = visibility_in(
+        &with_files("file = \"trace.csv\"\ncentre = \"812 nm\"", "", false),
+        "state --job JOB -f csv",
+    );
+    let stated = visibility_in(
+        &with_files("width = \"3 nm\"\ncentre = \"812 nm\"", "", false),
+        "state --job JOB -f csv",
+    );
+    assert_abs_diff_eq!(moved, stated, epsilon = 1e-3);
+}
+
+#[test]
+fn a_pump_spectrum_from_a_file_is_the_line_it_was_sampled_from() {
+    let filter = "width = \"10 nm\"";
+    let measured = with_files(filter, "spectrum = \"line.csv\"", true);
+    let stated = with_files(filter, "linewidth = \"0.6 nm\"", true);
+    let found = [&measured, &stated].map(|folder| visibility_in(folder, "state --job JOB -f csv"));
+    assert_abs_diff_eq!(found[0], found[1], epsilon = 1e-3);
+    let narrow = visibility_in(&with_files(filter, "", true), "state --job JOB -f csv");
+    assert!(narrow > found[0] + 0.1, "{narrow} {found:?}");
+    // plates in the pump mend both alike
+    let after = |folder: &tempfile::TempDir| {
+        let job = folder.path().join("job.toml");
+        let line = format!("compensate --job \"{}\" --allow bbo:kato-1986 -f csv", job.display());
+        Table::read(&twincone(&line).answer()).number(0, "visibility_after")
+    };
+    assert_abs_diff_eq!(after(&measured), after(&stated), epsilon = 2e-3);
+}
+
+#[test]
+fn files_that_are_no_curves_are_refused_where_they_are_named() {
+    let refused = |filter: &str, pump: &str, trace: &str, status: i32| {
+        let folder = with_files(filter, pump, false);
+        std::fs::write(folder.path().join("bad.csv"), trace).expect("a file");
+        twincone(&format!("state --job \"{}\"", folder.path().join("job.toml").display())).refusal(status)
+    };
+    let falling = "wavelength_nm,transmission\n812,0\n810,0.9\n808,0\n";
+    assert_says(
+        &refused("file = \"bad.csv\"", "", falling, 2),
+        &["bad.csv: line 3: wavelengths must rise", "job.toml"],
+    );
+    assert_says(&refused("file = \"none.csv\"", "", "", 4), &["cannot read", "none.csv"]);
+    let both = refused("file = \"trace.csv\"\nwidth = \"3 nm\"", "", "", 2);
+    assert_says(&both, &["this filter has a file", "leave out width"]);
+    let both = refused("width = \"3 nm\"", "spectrum = \"line.csv\"\npulse = \"100 fs\"", "", 2);
+    assert_says(&both, &["the spectrum of the pump is in a file already"]);
+    let far = "wavelength_nm,intensity\n532,0\n533,0.9\n534,0\n";
+    let far = refused("width = \"3 nm\"", "spectrum = \"bad.csv\"", far, 2);
+    assert_says(&far, &["does not hold the pump wavelength, 405 nm"]);
+}
+
+#[test]
+fn sweeps_remember_the_files_they_read() {
+    let folder = with_files("file = \"trace.csv\"", "", false);
+    let job = folder.path().join("job.toml");
+    let rows = folder.path().join("rows.csv");
+    let line = format!(
+        "run \"{}\" --report state --axis crystal.length=1mm..2mm/3 --basis oe -o \"{}\"",
+        job.display(),
+        rows.display()
+    );
+    assert_eq!(twincone(&format!("{line} -q")).status, 0);
+    let meta = std::fs::read_to_string(folder.path().join("rows.csv.meta.toml")).expect("a meta file");
+    assert_says(&meta, &["[[file]]", "name = \"trace.csv\"", "digest = "]);
+    std::fs::write(folder.path().join("trace.csv"), curve("wavelength_nm,transmission", 810.0, 4.0))
+        .expect("a file");
+    let other = twincone(&format!("{line} --resume"));
+    assert_eq!(other.status, 2, "{other:?}");
+    // files as an axis
+    std::fs::write(folder.path().join("wide.csv"), curve("wavelength_nm,transmission", 810.0, 10.0))
+        .expect("a file");
+    let axis = format!(
+        "run \"{}\" --report state --axis filter.1.file=trace.csv,wide.csv --basis oe -q",
+        job.display()
+    );
+    let answer = twincone(&axis).answer();
+    let cells: Vec<Vec<&str>> = answer.lines().map(|line| line.split(',').collect()).collect();
+    let place = cells[0].iter().position(|name| *name == "visibility_diagonal").expect("a column");
+    let [narrow, wide] = [1, 2].map(|row| cells[row][place].parse::<f64>().expect("a number"));
+    assert!(narrow > wide + 0.1, "{answer}");
+}
+
+#[test]
+fn one_type_i_crystal_has_nothing_to_entangle() {
+    let said =
+        twincone("state -m bbo:kato-1986 -p 405nm --type I --theta 29.237deg --phi 90deg --length 1mm")
+            .refusal(1);
+    assert_says(&said, &["each photon has one polarization", "roll = \"90 deg\"", "type II"]);
+}
+
+#[test]
+fn a_pair_and_fixed_directions_exclude_each_other() {
+    let folder = with_files("width = \"3 nm\"", "", false);
+    let job = folder.path().join("job.toml");
+    let text = std::fs::read_to_string(&job).expect("a job");
+    std::fs::write(
+        &job,
+        text + "[[collection]]\narm = \"a\"\ndirection = { h = \"0 deg\", v = \"3 deg\" }\n",
+    )
+    .expect("a job");
+    let job = job.display();
+    let said = twincone(&format!("state --job \"{job}\" --pair 2")).refusal(2);
+    assert_says(&said, &["pair 2 is asked for", "collection.direction fixes"]);
+    assert_says(&twincone(&format!("state --job \"{job}\"")).answer(), &["Fixed directions: a at"]);
+}
+
+#[test]
+fn plates_behind_half_wave_plates_are_never_worse_than_the_rule() {
+    for more in [
+        "--length 2mm --filter-width 40nm",
+        "--length 1mm --filter-width 10nm --iris 0.2deg",
+        "--length 3mm --filter-width 5nm --iris 0.06deg",
+    ] {
+        for half_wave in [false, true] {
+            let flag = if half_wave { "--half-wave" } else { "" };
+            let said = twincone(&format!("compensate {BBO} {more} --allow bbo:kato-1986 {flag}")).answer();
+            let unbroken = said.split_whitespace().collect::<Vec<_>>().join(" ");
+            let number = |after: &str| -> f64 {
+                let rest =
+                    &unbroken[unbroken.find(after).unwrap_or_else(|| panic!("no `{after}` in {said}"))
+                        + after.len()..];
+                rest.split([' ', ';', ',']).find_map(|word| word.parse().ok()).expect("a number")
+            };
+            let rolled = number("in both arms: visibility ");
+            let rule = if half_wave { number("by a quarter turn; ") } else { rolled };
+            let found = number("bbo: visibility ");
+            assert!(found >= rule, "{more} {flag}: {found} against {rule}");
+        }
+    }
+}
+
+#[test]
+fn plates_whose_visibilities_did_not_converge_say_so() {
+    let long = format!("compensate {BBO} --length 1m --filter-width 3nm --allow bbo:kato-1986 -f csv");
+    let table = Table::read(&twincone(&long).answer());
+    assert_eq!(table.column("status"), ["not_converged"; 2]);
+}
+
+#[test]
+fn a_waist_that_is_no_beam_is_refused() {
+    let said = twincone(&format!("state {BBO} --length 1mm --waist 1um")).refusal(2);
+    assert_says(&said, &["a waist of 1 um spreads the pump over 7.4 deg", "2.6 um or more"]);
+}

@@ -54,7 +54,7 @@ impl Source {
 
 fn filters(width_nm: f64) -> [Vec<Filter>; 2] {
     let filter = Filter { shape: Shape::Gaussian, width: Length::metres(width_nm * 1e-9), centre: None };
-    [vec![filter], vec![filter]]
+    [vec![filter.clone()], vec![filter]]
 }
 
 fn irises(a: f64, b: f64) -> [Collection; 2] {

@@ -10,18 +10,16 @@ use crate::report::angles::{fixed, signed};
 /// The steps of the bench sheet about the arms.
 pub(super) fn arm_steps(page: &mut Page, facts: &Facts<'_>) {
     let setup = facts.setup;
-    let crossings: Vec<&CrossingRow> =
-        facts.cones.crossings.iter().filter(|r| r.crossing.is_some()).collect();
+    let crossings: Vec<&CrossingRow> = facts.cones.pairs().collect();
     let mut rows = Vec::new();
     let mut angles = Vec::new();
     for row in &crossings {
         let Some(crossing) = &row.crossing else { continue };
-        let number = row.pair.map_or(String::new(), |n| n.to_string());
         for (name, direction, wavelength) in
-            [("A", Some(crossing.direction), row.a_wavelength), ("B", crossing.partner, row.b_wavelength)]
+            [('a', Some(crossing.direction), row.a_wavelength), ('b', crossing.partner, row.b_wavelength)]
         {
             let Some(d) = direction else { continue };
-            let label = format!("{name}{number} ({})", nm(wavelength));
+            let label = format!("{} ({})", row.arm(name).unwrap_or_default(), nm(wavelength));
             angles.push(arm_angles(&label, d));
             rows.extend(arm_places(&label, d, setup.screen));
         }
@@ -34,7 +32,7 @@ pub(super) fn arm_steps(page: &mut Page, facts: &Facts<'_>) {
         page.text(
             "No two rings cross here: the arms go to opposite points of the ring. This is one such pair.",
         );
-        for (name, d) in [("A", d), ("B", partner)] {
+        for (name, d) in [("a", d), ("b", partner)] {
             angles.push(arm_angles(&format!("{name} ({label})"), d));
             rows.extend(arm_places(&format!("{name} ({label})"), d, setup.screen));
         }
@@ -54,7 +52,7 @@ pub(super) fn arm_steps(page: &mut Page, facts: &Facts<'_>) {
     page.step(
         "Look for coincidences: irises open first, window wide, delays of both arms equal.",
         vec![format!(
-            "If there are none, leave A and move B over a grid about its place in steps of half an iris{}.",
+            "If there are none, leave arm a and move arm b over a grid about its place in steps of half an iris{}.",
             step.map_or(String::new(), |s| format!(": {s}"))
         )],
     );

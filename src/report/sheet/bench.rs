@@ -65,11 +65,10 @@ fn figures(page: &mut Page, facts: &Facts<'_>) {
     let optics = Optics::Screen(setup.screen);
     let field = Sensor::field_for(&facts.cones, optics);
     let sensor = Sensor { optics, field, pixels: 240, seen: Seen::default() };
-    let exposure = crate::picture::Light::of(setup).ok().and_then(|light| {
-        crate::picture::Exposure::new(setup, &light, sensor, crate::picture::Sampling { wavelengths: None })
-            .ok()
-    });
-    let Some(image) = exposure.and_then(|e| e.take().png(crate::picture::Depth::Eight, false).ok()) else {
+    let sampling = crate::picture::Sampling { wavelengths: None };
+    let exposure = crate::picture::Exposure::new(setup, &crate::picture::Light::of(setup), sensor, sampling);
+    let Some(image) = exposure.ok().and_then(|e| e.take().png(crate::picture::Depth::Eight, false).ok())
+    else {
         return;
     };
     let backdrop = Backdrop { png: &image, size: (240, 240), pump: (120.0, 120.0) };
@@ -234,7 +233,7 @@ fn ring_words(setup: &Setup, row: &RingRow) -> String {
 }
 
 fn filter_words(facts: &Facts<'_>) -> String {
-    let light = crate::picture::Light::of(facts.setup).unwrap_or_default();
+    let light = crate::picture::Light::of(facts.setup);
     let photons = facts.photons;
     let one = |filters: &[Filter], nominal: Wavelength| {
         let words = |f: &Filter| {

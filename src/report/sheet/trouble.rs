@@ -188,7 +188,7 @@ fn no_coincidences(facts: &Facts<'_>) -> Vec<String> {
             "arms not conjugate; delay of cables; filters not conjugate ({pairs} needs {} in the other arm)",
             super::facts::nm(photons.idler)
         ),
-        "Leave A, move B over a grid about its place, window wide, in the steps that the last step names; coincidences that come tell which arm was off.".into(),
+        "Leave arm a, move arm b over a grid about its place, window wide, in the steps that the last step names; coincidences that come tell which arm was off.".into(),
     ]
 }
 
