@@ -73,7 +73,11 @@ pub(crate) fn wide<S: Simd>(simd: S, from: &[f64], j: usize) -> Wide<S> {
 /// Every `stride`-th number, from place j of those on.
 #[inline(always)]
 pub(crate) fn strided<S: Simd>(simd: S, from: &[f64], j: usize, stride: usize) -> Wide<S> {
-    Wide::from_fn(simd, #[inline(always)] |l| from[(j + l) * stride])
+    Wide::from_fn(
+        simd,
+        #[inline(always)]
+        |l| from[(j + l) * stride],
+    )
 }
 
 /// Sums of terms at 0, [`LANES`], ... below `count`, each of them for the numbers from there on.
@@ -129,7 +133,7 @@ mod tests {
     fn lanes_have_the_bits_of_single_numbers() {
         let x: Vec<f64> = (0..9 * LANES).map(|j| (1.7 * j as f64).sin()).collect();
         let y: Vec<f64> = (0..9 * LANES).map(|j| (0.3 * j as f64).cos()).collect();
-        for level in [Level::fallback(), level()] {
+        for level in [Level::baseline(), level()] {
             let mut compared = 0;
             dispatch!(level, simd => for j in (0..x.len()).step_by(LANES) {
                 let lanes = formula(wide(simd, &x, j), wide(simd, &y, j));
@@ -153,11 +157,13 @@ mod tests {
             }))
         };
         let [sum, squares, ones] = of(level());
-        assert_eq!(of(Level::fallback()).map(f64::to_bits), [sum, squares, ones].map(f64::to_bits));
+        assert_eq!(of(Level::baseline()).map(f64::to_bits), [sum, squares, ones].map(f64::to_bits));
         assert!((sum - x.iter().sum::<f64>()).abs() < 1e-13);
         assert!((squares - x.iter().map(|x| x * x).sum::<f64>()).abs() < 1e-13);
         assert_eq!(ones, x.len() as f64);
         let [least, largest] = range(&x);
-        assert!(x.iter().all(|x| (least..=largest).contains(x)) && x.contains(&least) && x.contains(&largest));
+        assert!(
+            x.iter().all(|x| (least..=largest).contains(x)) && x.contains(&least) && x.contains(&largest)
+        );
     }
 }

@@ -47,7 +47,7 @@ pub fn fit_frames(question: &Question, exposures: &[Exposure]) -> Result<Found, 
                 .into(),
         ));
     }
-    let light = Light::of(&question.setup).map_err(FitError)?;
+    let light = Light::of(&question.setup);
     let clean: Vec<Exposure> =
         exposures.iter().map(|e| Exposure { frame: e.frame.cleaned(), ..e.clone() }).collect();
     let mut model = Model::new(&question.setup, question.view);

@@ -17,10 +17,15 @@ impl Moments {
     /// Of points from place 0, [`number::LANES`], ... on. They should lie about the origin, or differences lose digits.
     #[inline(always)]
     pub fn new<S: Simd>(simd: S, count: usize, mut points: impl FnMut(usize) -> [Wide<S>; 3]) -> Self {
-        let [x, y, z, xx, xy, xz, yy, yz, zz] = sums(simd, count, #[inline(always)] |j| {
-            let [x, y, z] = points(j);
-            [x, y, z, x * x, x * y, x * z, y * y, y * z, z * z]
-        });
+        let [x, y, z, xx, xy, xz, yy, yz, zz] = sums(
+            simd,
+            count,
+            #[inline(always)]
+            |j| {
+                let [x, y, z] = points(j);
+                [x, y, z, x * x, x * y, x * z, y * y, y * z, z * z]
+            },
+        );
         Self { count: count as f64, sum: Vector3::new(x, y, z), products: [xx, xy, xz, yy, yz, zz] }
     }
 
@@ -78,25 +83,40 @@ pub(super) fn circle(x: &[f64], y: &[f64]) -> (Vector2<f64>, f64) {
 #[inline(always)]
 fn circle_wide<S: Simd>(simd: S, x: &[f64], y: &[f64]) -> (Vector2<f64>, f64) {
     let count = x.len() as f64;
-    let sum = sums(simd, x.len(), #[inline(always)] |j| [wide(simd, x, j), wide(simd, y, j)]);
+    let sum = sums(
+        simd,
+        x.len(),
+        #[inline(always)]
+        |j| [wide(simd, x, j), wide(simd, y, j)],
+    );
     let mut centre = Vector2::from(sum) / count;
-    let [distances] = sums(simd, x.len(), #[inline(always)] |j| {
-        let (x, y) = (wide(simd, x, j) - centre.x, wide(simd, y, j) - centre.y);
-        [(x * x + y * y).sqrt()]
-    });
+    let [distances] = sums(
+        simd,
+        x.len(),
+        #[inline(always)]
+        |j| {
+            let (x, y) = (wide(simd, x, j) - centre.x, wide(simd, y, j) - centre.y);
+            [(x * x + y * y).sqrt()]
+        },
+    );
     let mut radius = distances / count;
     for _ in 0..50 {
         // with e = (p - c)/|p - c| and r = |p - c| - R:  gradient -sum r (e, 1);
         // Hessian sum [(1 - R/|p - c|) I + R/|p - c| e e^T, e; e^T, 1]
-        let [gx, gy, gr, xx, xy, yy, ex, ey] = sums(simd, x.len(), #[inline(always)] |j| {
-            let (x, y) = (wide(simd, x, j) - centre.x, wide(simd, y, j) - centre.y);
-            let distance = (x * x + y * y).sqrt().max(f64::MIN_POSITIVE);
-            let inverse = distance.reciprocal();
-            let (ex, ey) = (x * inverse, y * inverse);
-            let (residual, bend) = (distance - radius, inverse * radius);
-            let (bx, by) = (bend * ex, bend * ey);
-            [residual * ex, residual * ey, residual, -by * ey + 1.0, bx * ey, -bx * ex + 1.0, ex, ey]
-        });
+        let [gx, gy, gr, xx, xy, yy, ex, ey] = sums(
+            simd,
+            x.len(),
+            #[inline(always)]
+            |j| {
+                let (x, y) = (wide(simd, x, j) - centre.x, wide(simd, y, j) - centre.y);
+                let distance = (x * x + y * y).sqrt().max(f64::MIN_POSITIVE);
+                let inverse = distance.reciprocal();
+                let (ex, ey) = (x * inverse, y * inverse);
+                let (residual, bend) = (distance - radius, inverse * radius);
+                let (bx, by) = (bend * ex, bend * ey);
+                [residual * ex, residual * ey, residual, -by * ey + 1.0, bx * ey, -bx * ex + 1.0, ex, ey]
+            },
+        );
         // the last row gives step_R = (gr - e.step)/n
         let (sxx, sxy, syy) = (xx - ex * ex / count, xy - ex * ey / count, yy - ey * ey / count);
         let (sx, sy) = (gx - ex * gr / count, gy - ey * gr / count);

@@ -61,11 +61,7 @@ pub fn rings(mismatch: &Mismatch, length: f64) -> Result<Vec<Ring>, RingFault> {
 ///
 /// # Errors
 /// As [`rings`].
-pub fn partner_rings(
-    mismatch: &Mismatch,
-    only: Option<&Ring>,
-    length: f64,
-) -> Result<Vec<Ring>, RingFault> {
+pub fn partner_rings(mismatch: &Mismatch, only: Option<&Ring>, length: f64) -> Result<Vec<Ring>, RingFault> {
     let exchanged = mismatch.exchanged();
     if let Some(ring) = only
         && let Some(mut curve) = ring.curve.of_partners(mismatch, &exchanged)

@@ -26,7 +26,7 @@ pub(super) struct Facts<'a> {
 impl<'a> Facts<'a> {
     pub fn of(setup: &'a Setup) -> Result<Self, ConesError> {
         let cones = rings(setup, &setup.crystals)?;
-        let light = Light::of(setup).unwrap_or_default();
+        let light = Light::of(setup);
         // where no picture can be taken the width at one wavelength must do
         let widths = ring_widths(setup, &light, &cones).unwrap_or_else(|_| {
             let width = |row: &RingRow| row.ring.as_ref().ok()?.thickness.map(f64::tan);
