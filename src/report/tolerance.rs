@@ -38,6 +38,19 @@ pub const SENSITIVITIES: [Column; 5] = [
     column("other_half_angle_high_deg", "deg", "half angle of the other ring at plus the error, outside"),
 ];
 
+/// Columns of how far each ring and the crossings move.
+pub const SHIFTS: [Column; 6] = [
+    column("contribution", "", "what is off"),
+    column("what", "", "signal_ring, other_ring or crossing"),
+    column("shift_low_deg", "deg", "by how much it moves at minus the error, outside"),
+    column("shift_high_deg", "deg", "by how much it moves at plus the error, outside"),
+    column("shift_low_mm", "mm", "by how much it moves on the screen at minus the error"),
+    column("shift_high_mm", "mm", "by how much it moves on the screen at plus the error"),
+];
+
+/// What [`SHIFTS`] speak of.
+const MOVING: [&str; 3] = ["signal_ring", "other_ring", "crossing"];
+
 /// Columns of the data sets.
 pub const DATASETS: [Column; 6] = [
     column("dataset", "", "whose refractive indices"),
@@ -101,6 +114,8 @@ struct Line {
     half: [Option<f64>; 2],
     other: [Option<f64>; 2],
     turn: [Option<f64>; 2],
+    /// Of what [`MOVING`] names: deg, mm.
+    moved: [[Option<[f64; 2]>; 2]; 3],
     shift: Option<f64>,
     left: Option<f64>,
     sensitivity: Option<f64>,
@@ -113,6 +128,12 @@ fn degrees(radians: Option<f64>) -> Option<f64> {
 
 fn half_angle(end: &End, ring: usize) -> Option<f64> {
     degrees(end.seen.rings.get(ring).copied().flatten().map(|r| r.half_angle))
+}
+
+/// How far a ring (0 and 1) or the crossings (2) move, deg and mm.
+fn moved(end: &End, what: usize) -> Option<[f64; 2]> {
+    let shift = if what < 2 { end.moved.rings.get(what).copied().flatten() } else { end.moved.crossing };
+    shift.map(|shift| [shift.angle.to_degrees(), shift.screen * 1e3])
 }
 
 /// Largest of two ends; nothing where one of them has none.
@@ -142,7 +163,10 @@ impl Line {
             half: at(&|e| half_angle(e, 0)),
             other: at(&|e| half_angle(e, 1)),
             turn: at(&|e| degrees(e.turn)),
-            shift: larger(at(&|e| e.shift.map(|s| s * 1e3))),
+            moved: [0, 1, 2].map(|what| {
+                contribution.ends.each_ref().map(|end| end.as_ref().ok().and_then(|end| moved(end, what)))
+            }),
+            shift: larger(at(&|e| e.moved.most().map(|s| s * 1e3))),
             left: larger(at(&|e| degrees(e.left_over))),
             sensitivity: contribution.sensitivity(target).map(|s| (s * scale).to_degrees()),
             status: contribution.status(),
@@ -165,6 +189,15 @@ impl Line {
         let most = |f: fn(&Self) -> Option<f64>| {
             lines.iter().map(f).try_fold(f64::NEG_INFINITY, |a, b| b.map(|b| a.max(b)))
         };
+        let moved = [0, 1, 2].map(|what| {
+            let unit = |unit: usize| {
+                let each = || lines.iter().map(|line| line.moved[what][0].map(|m| m[unit]));
+                let least = each().try_fold(f64::INFINITY, |a, b| b.map(|b| a.min(b)))?;
+                Some([least, each().try_fold(0.0, |a: f64, b| b.map(|b| a.max(b)))?])
+            };
+            let both = unit(0).zip(unit(1));
+            [0, 1].map(|end| both.map(|(deg, mm)| [deg[end], mm[end]]))
+        });
         let status = lines.iter().map(|l| l.status).find(|s| *s != Status::Ok).unwrap_or(Status::Ok);
         (lines.len() > 1).then(|| Self {
             name: "dataset".into(),
@@ -174,6 +207,7 @@ impl Line {
             half: range(|l| l.half),
             other: range(|l| l.other),
             turn: range(|l| l.turn),
+            moved,
             shift: most(|l| l.shift),
             left: most(|l| l.left),
             sensitivity: None,
@@ -205,6 +239,25 @@ impl Line {
             self.other[0].into(),
             self.other[1].into(),
         ]
+    }
+
+    /// Rows of [`SHIFTS`].
+    fn shift_cells(&self) -> impl Iterator<Item = [Cell; SHIFTS.len()]> {
+        MOVING.iter().zip(self.moved).map(|(what, [low, high])| {
+            let cell = |end: Option<[f64; 2]>, unit: usize| end.map_or(Cell::Empty, |end| clean(end[unit]));
+            let name = self.name.clone().into();
+            [name, (*what).into(), cell(low, 0), cell(high, 0), cell(low, 1), cell(high, 1)]
+        })
+    }
+
+    /// How far some of what [`MOVING`] names move, in words.
+    fn moved_words(&self, moving: &[usize]) -> Vec<String> {
+        let both = |ends: [Option<[f64; 2]>; 2], unit: usize, decimals: usize| {
+            ends.map(|end| end.map_or_else(|| "none".to_string(), |end| fixed(end[unit], decimals)))
+                .join(" .. ")
+        };
+        let each = |what: &usize| [both(self.moved[*what], 0, 3), both(self.moved[*what], 1, 1)];
+        std::iter::once(self.name.clone()).chain(moving.iter().flat_map(each)).collect()
     }
 
     fn words(&self, crossings: bool) -> Vec<String> {
@@ -252,9 +305,11 @@ pub fn tables(finding: &Finding<'_>) -> Vec<Table> {
     let extrapolated = extrapolated(finding.bench);
     let mut table = Table::new("tolerance", &COLUMNS);
     let mut more = Table::new("sensitivities", &SENSITIVITIES);
+    let mut shifts = Table::new("shifts", &SHIFTS);
     for line in lines(finding) {
         table.push(&line.cells(), extrapolated, line.status);
         more.push(&line.sensitivity_cells(), extrapolated, line.status);
+        line.shift_cells().for_each(|cells| shifts.push(&cells, extrapolated, line.status));
     }
     let mut sets = Table::new("datasets", &DATASETS);
     for contribution in finding.contributions {
@@ -269,7 +324,7 @@ pub fn tables(finding: &Finding<'_>) -> Vec<Table> {
             std::iter::once(id.into()).chain(values.map(|v| v.map_or(Cell::Empty, clean))).collect();
         sets.push(&cells, false, line.status);
     }
-    vec![table, more, sets, chances_table(finding)]
+    vec![table, more, shifts, sets, chances_table(finding)]
 }
 
 fn chances_table(finding: &Finding<'_>) -> Table {
@@ -346,7 +401,25 @@ pub fn text(setup: &Setup, finding: &Finding<'_>) -> String {
         "left over",
         "sensitivity",
     ];
-    let rows: Vec<Vec<String>> = lines(finding).iter().map(|line| line.words(crossings)).collect();
+    let all = lines(finding);
+    let rows: Vec<Vec<String>> = all.iter().map(|line| line.words(crossings)).collect();
+    out.push_str(&grid(&header, &rows));
+    out.push_str(
+        "\nHow far each moves at minus .. plus the error (a ring: its middle and, on top, its radius; over data sets least \
+         .. most)\n",
+    );
+    let rings = bench.ring_polarizations().unwrap_or_default();
+    let mut moving: Vec<usize> = (0..rings.len()).collect();
+    let mut header = vec!["contribution".to_string()];
+    for name in &rings {
+        header.extend([format!("{name} ring, deg"), "mm".to_string()]);
+    }
+    if crossings {
+        moving.push(2);
+        header.extend(["crossing, deg".to_string(), "mm".to_string()]);
+    }
+    let header: Vec<&str> = header.iter().map(String::as_str).collect();
+    let rows: Vec<Vec<String>> = all[1..].iter().map(|line| line.moved_words(&moving)).collect();
     out.push_str(&grid(&header, &rows));
     out.push('\n');
     out.push_str(&prose(&together(finding)));

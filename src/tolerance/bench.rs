@@ -10,7 +10,7 @@ use crate::matching::{
 };
 use crate::matching::{Meeting, Traced, Triplet};
 use crate::material::MaterialError;
-use crate::optics::{Crystal, Indices};
+use crate::optics::{Crystal, Indices, Polarization};
 use crate::quantity::{Angle, Length, Wavelength};
 
 /// A ring on the screen, in units of the distance, from where the pump should hit.
@@ -260,13 +260,9 @@ impl Bench {
     /// What is seen after a turn of so much from the setting, radians.
     pub(super) fn seen(&self, stand: &Stand, by: f64) -> Seen {
         let emission = stand.turned(by);
-        let mut roles = vec![self.roles];
-        if self.roles.signal != self.roles.idler {
-            roles.push(self.roles.exchanged());
-        }
         let mut status = Status::Ok;
         let mut all = Vec::new();
-        for roles in roles {
+        for roles in self.seen_roles() {
             match emission.mismatch(roles).map(|m| rings(&m, emission.length)) {
                 Some(Ok(found)) => all.push(found.first().map(|ring| self.placed(stand, ring))),
                 Some(Err(fault)) => {
@@ -317,6 +313,21 @@ impl Bench {
             true => own,
             false => own.into_iter().chain(least(self.roles.exchanged())).reduce(f64::min),
         }
+    }
+
+    /// Polarizations of the rings that [`Seen`] speaks of.
+    ///
+    /// # Errors
+    /// Indices that are not to be had.
+    pub fn ring_polarizations(&self) -> Result<Vec<Polarization>, MaterialError> {
+        let signal = Emission::of(&self.crystal, self.photons)?.media.signal;
+        Ok(self.seen_roles().map(|roles| signal.polarization(roles.signal)).collect())
+    }
+
+    /// The process of the target, and the exchanged one where it differs.
+    fn seen_roles(&self) -> impl Iterator<Item = Roles> {
+        let exchanged = (self.roles.signal != self.roles.idler).then(|| self.roles.exchanged());
+        std::iter::once(self.roles).chain(exchanged)
     }
 
     /// Axis that the target's ring should have, seen from the pump.

@@ -1,6 +1,8 @@
 //! One error at a time, at both of its ends.
 
-use super::bench::{Bench, Seen};
+use nalgebra::Vector2;
+
+use super::bench::{Bench, RingPlace, Seen};
 use super::errors::{CAUSES, Cause, Errors};
 use crate::frame::{Direction, Lab};
 use crate::matching::{Status, Target};
@@ -27,8 +29,28 @@ pub struct End {
     pub turn: Option<f64>,
     /// Largest angle between where light is wanted and where it goes after that turn, radians.
     pub left_over: Option<f64>,
-    /// How far rings and crossings move on the screen from where they were, m.
-    pub shift: Option<f64>,
+    /// How far light moves from where it was.
+    pub moved: Moved,
+}
+
+/// How far something moves.
+#[derive(Debug, Clone, Copy, PartialEq, Default)]
+pub struct Shift {
+    /// Outside, radians: of a ring's axis, and what its half angle changes by on top.
+    pub angle: f64,
+    /// On the screen, m: of a ring's centre, and what its radius changes by on top.
+    pub screen: f64,
+}
+
+/// How far rings and crossings move; `None` what is not there at one of both times.
+#[derive(Debug, Clone, PartialEq, Default)]
+pub struct Moved {
+    /// The signal's ring, then that of the exchanged process where it differs.
+    pub rings: Vec<Option<Shift>>,
+    /// The crossing that moves most, each to the nearest one.
+    pub crossing: Option<Shift>,
+    /// Whether a ring that was there is gone.
+    pub lost: bool,
 }
 
 /// What one error does.
@@ -116,13 +138,18 @@ fn end(
 ) -> Result<End, MaterialError> {
     let Some(stand) = bench.stand(off, dataset, indices)? else {
         let seen = Seen { rings: vec![None], crossing: None, points: Vec::new(), status: Status::Invalid };
-        return Ok(End { seen, turn: None, left_over: None, shift: None });
+        return Ok(End {
+            seen,
+            turn: None,
+            left_over: None,
+            moved: Moved { lost: true, ..Moved::default() },
+        });
     };
     let seen = bench.seen(&stand, 0.0);
     let turn = bench.repair(&stand);
     let left_over = turn.and_then(|turn| left_over(bench, &bench.seen(&stand, turn), off));
-    let shift = from.map_or(Some(0.0), |from| shift(from, &seen)).map(|s| s * bench.screen.si());
-    Ok(End { seen, turn, left_over, shift })
+    let moved = Moved::between(from.unwrap_or(&seen), &seen, bench.screen.si());
+    Ok(End { seen, turn, left_over, moved })
 }
 
 /// Largest angle between where light is wanted and where it goes.
@@ -147,22 +174,42 @@ fn left_over(bench: &Bench, seen: &Seen, off: &Errors) -> Option<f64> {
     }
 }
 
-/// How far crossings and rings move, in units of the distance: a crossing to the nearest one, a ring by its centre and
-/// radius together.
-fn shift(from: &Seen, to: &Seen) -> Option<f64> {
-    let place = |d: &Direction| {
-        let Lab(d) = d.lab();
-        nalgebra::Vector2::new(d.x / d.z, d.y / d.z)
-    };
-    let crossings = from
-        .points
-        .iter()
-        .filter_map(|old| to.points.iter().map(|new| (place(new) - place(old)).norm()).reduce(f64::min));
-    let rings = from.rings.iter().zip(&to.rings).filter_map(|(old, new)| {
-        let (old, new) = ((*old)?, (*new)?);
-        Some((new.centre - old.centre).norm() + (new.radius - old.radius).abs())
-    });
-    let whole = from.rings.iter().zip(&to.rings).all(|(old, new)| old.is_none() || new.is_some());
-    let moved = crossings.chain(rings).reduce(f64::max);
-    moved.filter(|_| whole)
+impl Moved {
+    /// On a screen at a distance (m).
+    fn between(from: &Seen, to: &Seen, distance: f64) -> Self {
+        let pairs = || from.rings.iter().zip(&to.rings);
+        let ring = |(old, new): (&Option<RingPlace>, &Option<RingPlace>)| {
+            let (old, new) = ((*old)?, (*new)?);
+            let screen = (new.centre - old.centre).norm() + (new.radius - old.radius).abs();
+            let angle = new.axis.angle_to(old.axis) + (new.half_angle - old.half_angle).abs();
+            Some(Shift { angle, screen: screen * distance })
+        };
+        let place = |d: &Direction| {
+            let Lab(d) = d.lab();
+            Vector2::new(d.x / d.z, d.y / d.z)
+        };
+        let nearest = |old: &Direction| {
+            let each = to.points.iter().map(|new| Shift {
+                angle: new.angle_to(*old),
+                screen: (place(new) - place(old)).norm() * distance,
+            });
+            each.reduce(|a, b| if b.angle < a.angle { b } else { a })
+        };
+        Self {
+            rings: pairs().map(ring).collect(),
+            crossing: from
+                .points
+                .iter()
+                .filter_map(nearest)
+                .reduce(|a, b| if b.angle > a.angle { b } else { a }),
+            lost: pairs().any(|(old, new)| old.is_some() && new.is_none()),
+        }
+    }
+
+    /// Most that anything moves on the screen, m; `None` where a ring is gone, or nothing was there.
+    #[must_use]
+    pub fn most(&self) -> Option<f64> {
+        let all = self.rings.iter().flatten().chain(&self.crossing);
+        all.map(|shift| shift.screen).reduce(f64::max).filter(|_| !self.lost)
+    }
 }

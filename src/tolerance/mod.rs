@@ -12,6 +12,6 @@ mod samples;
 
 pub use advice::{Advice, advise, ordered_otherwise};
 pub use bench::{Bench, RingPlace, Seen};
-pub use contribution::{Contribution, End, Origin, contributions};
+pub use contribution::{Contribution, End, Moved, Origin, Shift, contributions};
 pub use errors::{CAUSES, Cause, Errors};
 pub use samples::{Chances, Draw, Sample, Spread, chances, sample};

@@ -42,6 +42,48 @@ fn a_catalogue_cut_is_repaired_by_tilting() {
     assert_abs_diff_eq!(per_nm, 0.25, epsilon = 0.01);
 }
 
+/// Each ring and the crossings move by what `cones` says of both settings, and the largest of them is `shift_mm`.
+#[test]
+fn each_ring_moves_by_what_cones_says() {
+    let crystal = "-m bbo:kato-1986 -p 405nm --phi 0deg --length 1mm";
+    let answer = twincone(&format!(
+        "tolerance {crystal} --crossing 3deg --theta 42.541deg --theta-error 0.3deg -f json"
+    ))
+    .answer();
+    let answer: serde_json::Value = serde_json::from_str(&answer).expect("JSON");
+    let table = |name: &str| answer[name].as_array().expect("a table").clone();
+    let number = |value: &serde_json::Value| value.as_f64().expect("a number");
+    let shift = |what: &str, column: &str| {
+        let of = |row: &serde_json::Value| row["contribution"] == "theta" && row["what"] == what;
+        number(&table("shifts").into_iter().find(of).expect("a row")[column])
+    };
+    let rings = |theta: &str| {
+        Table::read(&twincone(&format!("cones {crystal} --theta {theta} --rows rings -f csv")).answer())
+    };
+    let (from, low, high) = (rings("42.541deg"), rings("42.241deg"), rings("42.841deg"));
+    for (end, to) in [("low", &low), ("high", &high)] {
+        for (what, polarization) in [("signal_ring", "e"), ("other_ring", "o")] {
+            let at = |table: &Table, column: &str| {
+                let row =
+                    table.column("polarization").iter().position(|p| *p == polarization).expect("a ring");
+                table.number(row, column)
+            };
+            let change = |column: &str| at(to, column) - at(&from, column);
+            // axes move along x alone
+            let deg = change("axis_h_deg").abs() + change("half_angle_deg").abs();
+            let mm = change("x_mm").abs() + change("radius_mm").abs();
+            assert_abs_diff_eq!(shift(what, &format!("shift_{end}_deg")), deg, epsilon = 1e-9);
+            assert_abs_diff_eq!(shift(what, &format!("shift_{end}_mm")), mm, epsilon = 1e-8);
+        }
+    }
+    let most = ["signal_ring", "other_ring", "crossing"]
+        .iter()
+        .flat_map(|what| ["shift_low_mm", "shift_high_mm"].map(|end| shift(what, end)))
+        .fold(0.0, f64::max);
+    let theta = table("tolerance").into_iter().find(|row| row["contribution"] == "theta").expect("a row");
+    assert_abs_diff_eq!(number(&theta["shift_mm"]), most, epsilon = 1e-9);
+}
+
 /// The ends of an error are what `cones` and `tilt` say of a crystal that is off by it.
 #[test]
 fn both_ends_are_confirmed_by_other_commands() {
