@@ -286,8 +286,8 @@ fn carried(s: &Sample, a: &Vector3<f64>, axis: &Vector3<f64>) -> Vector3<f64> {
 /// The axis of the cone that fits best, and the equations that hold it there.
 ///
 /// With x_i = sin psi rho_i (i = 1, 2 across the axis) and z = cos psi, the axis is an eigenvector of the covariance of the
-/// samples: g_i = sum (x_i - <x_i>)(z - <z>) = 0. Then dg_i = sum A_i d psi = 0 with
-/// A_i = cos psi rho_i (z - <z>) - (x_i - <x_i>) sin psi, and d psi is linear in the change of the axis.
+/// samples: g_i = sum (x_i - mean(x_i))(z - mean(z)) = 0. Then dg_i = sum A_i d psi = 0 with
+/// A_i = cos psi rho_i (z - mean(z)) - (x_i - mean(x_i)) sin psi, and d psi is linear in the change of the axis.
 struct Tilting {
     axis: Vector3<f64>,
     across: [Vector3<f64>; 2],
