@@ -99,7 +99,7 @@ fn draw(args: &Args, setup: &Setup, output: &OutputArgs, form: Format) -> Result
         View::Front => front(setup, &rings(setup)?),
         View::RingSweep => ring_sweep(setup, &axis(args, setup)?)?,
         View::Cut => {
-            let curves = Curves::of(setup).map_err(Failure::usage)?;
+            let curves = Curves::of(setup)?;
             if form == Format::Csv {
                 return Ok(OutputArgs::file(curves.csv().into_bytes(), warnings));
             }

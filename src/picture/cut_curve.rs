@@ -10,7 +10,8 @@ use super::drawing::{Anchor, BLUE, Drawing, Extent, GREY, INK, ORANGE, Pen, nice
 use crate::frame::{Cut, Orientation};
 use crate::job::Setup;
 use crate::matching::{
-    Actuator, Emission, Interaction, Photons, Process, Scan, Status, Target, Triplet, roots, tuning_turn,
+    Actuator, ConesError, Emission, Interaction, Photons, Process, Roles, Scan, Status, Target, Triplet,
+    roots, tuning_turn,
 };
 use crate::material::Optic;
 use crate::optics::Crystal;
@@ -50,10 +51,11 @@ impl Curves {
     /// where a change of theta does nothing in first order).
     ///
     /// # Errors
-    /// A sentence: several crystals, or polarizations that the crystal does not have.
-    pub fn of(setup: &Setup) -> Result<Self, String> {
-        let crystal = setup.only_crystal("picture --view cut")?.clone();
+    /// Several crystals, the job's wavelengths outside its data set's range, or polarizations that the crystal does not have.
+    pub fn of(setup: &Setup) -> Result<Self, ConesError> {
+        let crystal = setup.only_crystal("picture --view cut").map_err(ConesError::Description)?.clone();
         let crystal = Crystal { orientation: Orientation::default(), ..crystal };
+        Triplet::new(&crystal, &setup.photons())?;
         // the crossings of biaxial crystals cost too much for a curve that nobody asked for
         let two =
             matches!(setup.interaction, Interaction::Two) && crystal.material.file.optic == Optic::Uniaxial;
@@ -64,12 +66,13 @@ impl Curves {
         let shares: Vec<f64> = (0..COUNT).map(|n| 0.62 - 0.24 * n as f64 / (COUNT - 1) as f64).collect();
         let pump = setup.pump();
         let by_phi = tunes_by_phi(setup, &crystal);
-        let at = |share: &f64| {
-            let signal = Wavelength::metres(pump.si() / share);
-            points((&crystal, by_phi), (pump, signal), setup.interaction, targets)
-        };
-        let all: Result<Vec<Vec<CutPoint>>, String> = shares.par_iter().map(at).collect();
-        Ok(Self { crystal, targets, by_phi, points: all?.into_iter().flatten().collect() })
+        let signals: Vec<Wavelength> =
+            shares.iter().map(|share| Wavelength::metres(pump.si() / share)).collect();
+        let tracks = tracks((&crystal, by_phi), (pump, &signals), setup.interaction, targets)?;
+        let mut points: Vec<(usize, usize, CutPoint)> =
+            tracks.par_iter().enumerate().flat_map_iter(|(n, track)| track.points(n)).collect();
+        points.sort_by_key(|(place, track, _)| (*place, *track));
+        Ok(Self { crystal, targets, by_phi, points: points.into_iter().map(|(.., p)| p).collect() })
     }
 
     /// A row per data set, process, target and wavelength.
@@ -122,37 +125,156 @@ fn tunes_by_phi(setup: &Setup, crystal: &Crystal) -> bool {
     turn == Some(Actuator::CrossTilt)
 }
 
-fn points(
+/// One wavelength of a track.
+struct Stop {
+    /// Index of the wavelength.
+    place: usize,
+    photons: Photons,
+    triplet: Triplet,
+    process: Process,
+}
+
+/// The curve of one data set, process and target: its wavelengths in order, as far as the data set is valid.
+struct Track {
+    crystal: Crystal,
+    by_phi: bool,
+    roles: Roles,
+    target: Target,
+    stops: Vec<Stop>,
+}
+
+/// Wavelengths between those at which the whole range of angles is searched; between them each solution is followed.
+const STRIDE: usize = 6;
+/// Half width of the search about the angle expected at the next wavelength, beside the step itself, radians.
+const AROUND: f64 = 0.3 * std::f64::consts::PI / 180.0;
+
+/// Ordered by data set, process, target.
+fn tracks(
     (crystal, by_phi): (&Crystal, bool),
-    (pump, signal): (Wavelength, Wavelength),
+    (pump, signals): (Wavelength, &[Wavelength]),
     interaction: Interaction,
     targets: [Target; 2],
-) -> Result<Vec<CutPoint>, String> {
-    let Some(photons) = Photons::new(pump, signal) else { return Ok(Vec::new()) };
-    let mut all = Vec::new();
+) -> Result<Vec<Track>, ConesError> {
+    let mut all: Vec<Track> = Vec::new();
     for dataset in 0..crystal.material.sets().len() {
         let crystal =
             if dataset == crystal.dataset { crystal.clone() } else { crystal.with_dataset(dataset) };
-        let Ok(triplet) = Triplet::new(&crystal, &photons) else { continue };
-        let emission = |angle: f64| {
-            let cut = match by_phi {
-                true => Cut { phi: Angle::radians(angle), ..crystal.cut },
-                false => Cut { theta: Angle::radians(angle), ..crystal.cut },
-            };
-            Emission::new(&Crystal { cut, ..crystal.clone() }, photons, &triplet)
-        };
-        let start = emission(0.5);
-        for roles in start.wanted(&crystal, interaction)? {
-            for target in targets {
-                let intervals = if target == Target::Collinear { 180 } else { 90 };
-                let scan = Scan { from: 0.0, to: FRAC_PI_2, intervals };
-                let found = roots(&mut |angle| target.residual(&emission(angle), roles), scan);
-                let angles = found.into_iter().map(|r| r.x).collect();
-                all.push(CutPoint { signal, dataset, process: start.process(roles), target, angles });
+        let first = all.len();
+        for (place, signal) in signals.iter().enumerate() {
+            let Some(photons) = Photons::new(pump, *signal) else { continue };
+            let Ok(triplet) = Triplet::new(&crystal, &photons) else { continue };
+            let start = emission((&crystal, by_phi), photons, &triplet, 0.5);
+            for roles in start.wanted(&crystal, interaction).map_err(ConesError::Description)? {
+                for target in targets {
+                    let stop =
+                        Stop { place, photons, triplet: triplet.clone(), process: start.process(roles) };
+                    let own = all[first..].iter_mut().find(|t| t.roles == roles && t.target == target);
+                    match own {
+                        Some(track) => track.stops.push(stop),
+                        None => {
+                            let crystal = crystal.clone();
+                            let stops = vec![stop];
+                            all.push(Track { crystal, by_phi, roles, target, stops });
+                        }
+                    }
+                }
             }
         }
     }
     Ok(all)
+}
+
+fn emission(
+    (crystal, by_phi): (&Crystal, bool),
+    photons: Photons,
+    triplet: &Triplet,
+    angle: f64,
+) -> Emission {
+    let cut = match by_phi {
+        true => Cut { phi: Angle::radians(angle), ..crystal.cut },
+        false => Cut { theta: Angle::radians(angle), ..crystal.cut },
+    };
+    Emission::new(&Crystal { cut, ..crystal.clone() }, photons, triplet)
+}
+
+impl Track {
+    /// The points with the index of their wavelength and that of the track.
+    fn points(&self, track: usize) -> Vec<(usize, usize, CutPoint)> {
+        let point = |(stop, angles): (&Stop, Vec<f64>)| {
+            let (signal, dataset) = (stop.photons.signal, self.crystal.dataset);
+            let point = CutPoint { signal, dataset, process: stop.process, target: self.target, angles };
+            (stop.place, track, point)
+        };
+        self.stops.iter().zip(self.solved()).map(point).collect()
+    }
+
+    /// Solutions at every stop. The whole range is searched at some; between two of them that have equally many
+    /// solutions these are followed, and where the number differs the stretch is halved.
+    fn solved(&self) -> Vec<Vec<f64>> {
+        let last = self.stops.len() - 1;
+        let mut places: Vec<usize> = (0..last).step_by(STRIDE).collect();
+        places.push(last);
+        let searched: Vec<Vec<f64>> = places.par_iter().map(|n| self.search(*n)).collect();
+        let stretches: Vec<(usize, usize)> = (1..places.len()).map(|n| (n - 1, n)).collect();
+        let between: Vec<Vec<Vec<f64>>> = stretches
+            .par_iter()
+            .map(|(a, b)| self.between((places[*a], &searched[*a]), (places[*b], &searched[*b])))
+            .collect();
+        let mut all = vec![searched[0].clone()];
+        for (inside, end) in between.into_iter().zip(&searched[1..]) {
+            all.extend(inside);
+            all.push(end.clone());
+        }
+        all
+    }
+
+    /// Solutions at the stops between two, which are left out.
+    fn between(&self, (from, first): (usize, &[f64]), (to, last): (usize, &[f64])) -> Vec<Vec<f64>> {
+        if to <= from + 1 {
+            return Vec::new();
+        }
+        let (middle, here) = if first.len() == last.len() {
+            let followed = self.followed(from + 1, first, last, (to - from) as f64);
+            (from + 1, followed.unwrap_or_else(|| self.search(from + 1)))
+        } else {
+            let middle = from.midpoint(to);
+            (middle, self.search(middle))
+        };
+        let mut all = self.between((from, first), (middle, &here));
+        let after = self.between((middle, &here), (to, last));
+        all.push(here);
+        all.extend(after);
+        all
+    }
+
+    /// Solutions beside those of the stop before, on the way to those `steps` stops on; `None` where they are lost.
+    fn followed(&self, stop: usize, before: &[f64], ahead: &[f64], steps: f64) -> Option<Vec<f64>> {
+        let mut found: Vec<f64> = Vec::new();
+        for (a, b) in before.iter().zip(ahead) {
+            let step = (b - a) / steps;
+            let half = AROUND + step.abs();
+            let scan =
+                Scan { from: (a + step - half).max(0.0), to: (a + step + half).min(FRAC_PI_2), intervals: 2 };
+            let [root] = self.roots(stop, scan)[..] else { return None };
+            if found.last().is_some_and(|last| root - last < 1e-9) {
+                return None;
+            }
+            found.push(root);
+        }
+        Some(found)
+    }
+
+    fn search(&self, stop: usize) -> Vec<f64> {
+        let intervals = if self.target == Target::Collinear { 180 } else { 90 };
+        self.roots(stop, Scan { from: 0.0, to: FRAC_PI_2, intervals })
+    }
+
+    fn roots(&self, stop: usize, scan: Scan) -> Vec<f64> {
+        let Stop { photons, triplet, .. } = &self.stops[stop];
+        let at = |angle: f64| emission((&self.crystal, self.by_phi), *photons, triplet, angle);
+        let found = roots(&mut |angle| self.target.residual(&at(angle), self.roles), scan);
+        found.into_iter().map(|r| r.x).collect()
+    }
 }
 
 fn target_words(target: Target) -> String {
@@ -305,7 +427,7 @@ pub fn cut_curve(setup: &Setup, curves: &Curves) -> Drawing {
     }
     let cut = if curves.by_phi { curves.crystal.cut.phi } else { curves.crystal.cut.theta }.degrees();
     let here = plot.at(setup.photons().signal.nm(), cut);
-    let given = setup.cut.first().is_some_and(|c| c.theta || c.target.is_some());
+    let given = setup.cut.first().is_some_and(|c| c.theta);
     let marked =
         given && (frame.left..=frame.right).contains(&here.0) && (frame.top..=frame.bottom).contains(&here.1);
     if marked {
