@@ -116,6 +116,14 @@ impl OutputArgs {
     /// # Errors
     /// Text asked into a .csv file and the like, or an extension that says nothing.
     pub fn form(&self) -> Result<Format, Failure> {
+        self.form_of(".txt, .csv or .json")
+    }
+
+    /// As [`Self::form`], for a command that writes files with these extensions.
+    ///
+    /// # Errors
+    /// As [`Self::form`].
+    pub fn form_of(&self, extensions: &str) -> Result<Format, Failure> {
         let Some(path) = self.output.as_ref().filter(|path| path.as_os_str() != "-") else {
             return Ok(self.format.unwrap_or(Format::Text));
         };
@@ -137,7 +145,7 @@ impl OutputArgs {
             ))),
             (Some(form), _) | (None, Some(form)) => Ok(form),
             (None, None) => Err(Failure::usage(format!(
-                "{}: the extension does not say which format; use .txt, .csv or .json, or pass --format",
+                "{}: the extension does not say which format; use {extensions}, or pass --format",
                 path.display()
             ))),
         }

@@ -35,7 +35,7 @@ enum Kind {
 /// # Errors
 /// What is missing, wrong or outside a data set's range.
 pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
-    let form = output.form()?;
+    let form = output.form_of(".md or .html")?;
     let setup = args.experiment.setup(output, Needs::ALL)?;
     setup.demand_length("sheet")?;
     let mut page = match args.sheet {
