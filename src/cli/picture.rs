@@ -51,7 +51,7 @@ pub struct Args {
     /// Where the pump is on the recorded frame, pixels from the upper left corner [default: its middle]
     #[arg(long, value_name = "X,Y", requires = "overlay")]
     pump_at: Option<String>,
-    /// Range of the ring sweep: crystal.tilt or crystal.cross_tilt=FROM..TO/POINTS [default: tilt 1 deg either way]
+    /// Range of the ring sweep: crystal.tilt or crystal.cross_tilt=FROM..TO/POINTS [default: 1 deg either way, the turn that tunes]
     #[arg(long, value_name = "KEY=RANGE", allow_hyphen_values = true)]
     axis: Option<String>,
     /// View phase: which pair of crossings, as `cones` numbers them [default: 1]
@@ -84,7 +84,7 @@ enum View {
 pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     let form = match output.output.as_ref() {
         None => output.format.unwrap_or(Format::Svg),
-        Some(_) => output.form()?,
+        Some(_) => output.form_of(".png, .svg or .csv")?,
     };
     let needs = Needs { cut: args.view != View::Cut, ..Needs::ALL };
     let setup = args.experiment.setup(output, needs)?;
@@ -92,12 +92,17 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
 }
 
 fn draw(args: &Args, setup: &Setup, output: &OutputArgs, form: Format) -> Result<Outcome, Failure> {
-    let warnings = warnings(setup, args.view);
+    let mut warnings = warnings(setup, args.view);
+    let unused = args.unused();
+    warnings.extend(unused.clone());
     let drawing = match args.view {
         View::Camera => return photograph(args, setup, output, form, warnings),
         View::Side => side(setup, &rings(setup)?),
         View::Front => front(setup, &rings(setup)?),
-        View::RingSweep => ring_sweep(setup, &axis(args, setup)?)?,
+        View::RingSweep => {
+            let dark = darkness(setup, &rings(setup)?);
+            ring_sweep(setup, &axis(args, setup)?, dark.as_deref())?
+        }
         View::Cut => {
             let curves = Curves::of(setup)?;
             if form == Format::Csv {
@@ -108,7 +113,8 @@ fn draw(args: &Args, setup: &Setup, output: &OutputArgs, form: Format) -> Result
         View::Phase => {
             setup.demand_length("picture --view phase")?;
             let phases = Phases::of(setup, args.pair.map(usize::from))?;
-            let warnings = Conventions::of_pairs(setup).warnings;
+            let mut warnings = Conventions::of_pairs(setup).warnings;
+            warnings.extend(unused);
             if form == Format::Csv {
                 return Ok(OutputArgs::file(phases.csv().into_bytes(), warnings));
             }
@@ -116,6 +122,25 @@ fn draw(args: &Args, setup: &Setup, output: &OutputArgs, form: Format) -> Result
         }
     };
     as_svg(&drawing, form, warnings)
+}
+
+impl Args {
+    /// Options that the view has no use for, as a warning.
+    fn unused(&self) -> Option<String> {
+        let camera = self.view == View::Camera;
+        let given = [
+            ("--size", self.size.is_some() && !camera),
+            ("--focal", self.focal.is_some() && !camera),
+            ("--view-turn", self.view_turn != "0" && !camera),
+            ("--mirror", self.mirror && !camera),
+            ("--wavelengths", self.wavelengths.is_some() && !camera),
+            ("--overlay", self.overlay.is_some() && !camera),
+            ("--axis", self.axis.is_some() && self.view != View::RingSweep),
+            ("--pair", self.pair.is_some() && self.view != View::Phase),
+        ];
+        let names: Vec<&str> = given.iter().filter(|(_, unused)| *unused).map(|(name, _)| *name).collect();
+        (!names.is_empty()).then(|| format!("not used by this view: {}", names.join(", ")))
+    }
 }
 
 fn as_svg(drawing: &Drawing, form: Format, warnings: Vec<String>) -> Result<Outcome, Failure> {
@@ -244,7 +269,15 @@ fn sensor(args: &Args, setup: &Setup, found: &Cones) -> Result<Sensor, Failure> 
 
 fn axis(args: &Args, setup: &Setup) -> Result<Axis, Failure> {
     match &args.axis {
-        Some(text) => parse_axis(text).map_err(Failure::usage),
+        Some(text) => {
+            let axis = parse_axis(text).map_err(Failure::usage)?;
+            let count = setup.crystals.len();
+            if axis.crystal.is_some_and(|n| n >= count) {
+                let many = if count == 1 { "1 crystal".into() } else { format!("{count} crystals") };
+                return Err(Failure::usage(format!("--axis {text}: the job has {many}")));
+            }
+            Ok(axis)
+        }
         None => Ok(Axis::around(setup)),
     }
 }

@@ -116,13 +116,16 @@ fn tunes_by_phi(setup: &Setup, crystal: &Crystal) -> bool {
     if !setup.cut.first().is_some_and(|cut| cut.theta) || crystal.material.file.optic == Optic::Uniaxial {
         return false;
     }
+    tuning(setup, crystal) == Some(Actuator::CrossTilt)
+}
+
+/// The turn with the larger effect; `None` where indices are not to be had.
+pub(super) fn tuning(setup: &Setup, crystal: &Crystal) -> Option<Actuator> {
     let photons = setup.photons();
-    let turn = Triplet::new(crystal, &photons).ok().and_then(|triplet| {
-        let emission = Emission::new(crystal, photons, &triplet);
-        let roles = *emission.wanted(crystal, setup.interaction).ok()?.first()?;
-        Some(tuning_turn(crystal, photons, &triplet, roles))
-    });
-    turn == Some(Actuator::CrossTilt)
+    let triplet = Triplet::new(crystal, &photons).ok()?;
+    let emission = Emission::new(crystal, photons, &triplet);
+    let roles = *emission.wanted(crystal, setup.interaction).ok()?.first()?;
+    Some(tuning_turn(crystal, photons, &triplet, roles))
 }
 
 /// One wavelength of a track.
