@@ -176,6 +176,41 @@ fn the_cut_curve_passes_through_known_cuts() {
     assert_says(&svg, &["collinear", "crossing at 3 deg", "from the lowest to the highest of all sets"]);
 }
 
+/// No set of bibo reaches 405 nm: `cones` says so, and so does the curve; a cut that nobody solved is not marked.
+#[test]
+fn the_cut_curve_fails_as_the_rings_do_and_marks_only_a_known_cut() {
+    let bibo = "-m bibo -p 405nm --type I --theta 151.7deg --phi 90deg";
+    let says = twincone(&format!("picture {bibo} --view cut")).refusal(3);
+    assert_eq!(says, twincone(&format!("cones {bibo}")).refusal(3));
+    let svg = twincone("picture -m bbo -p 405nm --cut collinear --view cut").answer();
+    assert!(!svg.contains("the job's cut"));
+}
+
+#[test]
+fn a_ring_sweep_turns_one_crystal_names_it_and_says_where_there_is_no_ring() {
+    let stack = "picture --job examples/two-crystals.toml --view ring-sweep";
+    let one = twincone(&format!("{stack} --axis crystal.2.tilt=-0.2deg..0.2deg/2")).answer();
+    assert_says(&one, &["settings of the tilt of crystal 2", "of crystal 1 at +0.2 deg"]);
+    assert_says(
+        &twincone(&format!("{stack} --axis crystal.3.tilt=0deg..1deg/2")).refusal(2),
+        &["2 crystals"],
+    );
+    let dark = twincone("picture --job examples/telecom.toml --view ring-sweep").answer();
+    assert_says(&dark, &["no ring at any of these settings", "degC"]);
+    // an XY cut is tuned by the other turn
+    let tuned = twincone("picture --job examples/biaxial.toml --view ring-sweep").answer();
+    assert_says(&tuned, &["settings of the cross tilt"]);
+}
+
+#[test]
+fn options_and_extensions_that_do_not_fit_are_named() {
+    let side = twincone(&format!("{CROSSED} --view side --size 3deg --axis crystal.tilt=0deg..1deg/3"));
+    assert_says(&side.stderr, &["not used by this view: --size, --axis"]);
+    assert_says(&twincone(&format!("{CROSSED} -o x.jpg")).refusal(2), &[".png, .svg or .csv"]);
+    let sheet = "sheet --kind order --job examples/order.toml -o x.pdf";
+    assert_says(&twincone(sheet).refusal(2), &[".md or .html"]);
+}
+
 #[test]
 fn what_does_not_fit_is_refused_in_words() {
     assert_says(&twincone(&format!("{CROSSED} -f json")).refusal(2), &["png, svg and csv"]);
