@@ -206,3 +206,17 @@ fn seed_steps_reach_from_full_light_to_half() {
     assert!(values[2] > 0.99 && values.iter().all(|v| *v > 0.2), "{values:?}");
     assert!(values[0].min(values[4]) < 0.9, "{values:?}");
 }
+
+#[test]
+fn a_turn_that_changes_the_ring_alike_both_ways_is_no_test() {
+    // light across Z at normal incidence: the table of this sheet shrinks on both sides
+    let sheet = twincone("sheet --kind bench --job examples/telecom.toml --temperature 50degC").answer();
+    assert!(!sheet.contains("must grow") && !sheet.contains("turned about the beam"), "{sheet}");
+    let dark = twincone("sheet --kind bench --job examples/telecom.toml").answer();
+    assert!(!dark.contains("must grow"), "{dark}");
+    let crossed = twincone("sheet --kind bench --job examples/two-crystals.toml").answer();
+    assert_says(&crossed, &["the rings must grow", "is the same both ways; only a turn tells"]);
+    // beside normal incidence the two rings of a biaxial crystal differ: 40 mm, 26 mm
+    let biaxial = twincone("sheet --kind bench --job examples/biaxial.toml --cross-tilt 0.5deg").answer();
+    assert_says(&biaxial, &["the rings must grow", "slow 810 nm of radius 40.", "slow 810 nm of radius 26."]);
+}
