@@ -220,3 +220,17 @@ fn a_turn_that_changes_the_ring_alike_both_ways_is_no_test() {
     let biaxial = twincone("sheet --kind bench --job examples/biaxial.toml --cross-tilt 0.5deg").answer();
     assert_says(&biaxial, &["the rings must grow", "slow 810 nm of radius 40.", "slow 810 nm of radius 26."]);
 }
+
+#[test]
+fn crossed_crystals_are_never_dark_together() {
+    // cos^2 + sin^2 = 1
+    let sheet = twincone("sheet --kind bench --job examples/two-crystals.toml").answer();
+    assert_says(
+        &sheet,
+        &["the sum stays the same", "axis at 90.0 deg from +x towards +y: it passes the pairs of crystal 1"],
+    );
+    let row = sheet.lines().find(|l| l.starts_with("| no light")).expect("a row");
+    assert!(!row.contains("quarter turn off") && !row.contains("rolled by 90 deg"), "{row}");
+    let one = twincone("sheet --kind bench --job examples/crossed-cones.toml").answer();
+    assert_says(&one, &["pump polarization a quarter turn off"]);
+}

@@ -6,6 +6,7 @@ use super::page::Page;
 use crate::frame::Reversal;
 use crate::matching::{Actuator, Cones, ConesError, Photons, Want, cones, phase_matching_factor};
 use crate::optics::Crystal;
+use crate::picture::taken;
 use crate::quantity::{Angle, Temperature, Wavelength};
 use crate::report::angles::fixed;
 use crate::report::{darkness, room_words};
@@ -74,11 +75,16 @@ fn capital(text: &str) -> String {
 fn no_light(facts: &Facts<'_>) -> Result<Vec<String>, ConesError> {
     let setup = facts.setup;
     let mut likely = String::from(
-        "pump polarization a quarter turn off; crystal rolled by 90 deg; a turn of the wrong sense; cut at the wrong phi; filter centred elsewhere, or a filter in the camera that stops the infrared",
+        "a turn of the wrong sense; cut at the wrong phi; filter centred elsewhere, or a filter in the camera that stops the infrared",
     );
-    let mut test = String::from(
-        "Turn the pump's half-wave plate: light from pairs rises and falls as sin^2 of twice the plate's angle, background does not.",
-    );
+    let mut test = match apart(facts) {
+        // sum of cos^2 of the field's angles from directions that differ is nowhere zero
+        Some(words) => words,
+        None => {
+            likely.insert_str(0, "pump polarization a quarter turn off; crystal rolled by 90 deg; ");
+            "Turn the pump's half-wave plate: light from pairs rises and falls as sin^2 of twice the plate's angle, background does not.".into()
+        }
+    };
     let cross = facts.tuning(&setup.crystals[0]) == Actuator::CrossTilt;
     let (key, turn) = match cross {
         true => ("cross tilt", setup.crystals[0].orientation.cross_tilt),
@@ -100,6 +106,49 @@ fn no_light(facts: &Facts<'_>) -> Result<Vec<String>, ConesError> {
         likely.insert_str(0, &format!("{dark} Else: "));
     }
     Ok(vec!["no light above background".into(), likely, test])
+}
+
+/// Crystals that take different polarizations of the pump: no turn of its half-wave plate darkens all of them, so what it does
+/// to each. `None` where they take the same one.
+fn apart(facts: &Facts<'_>) -> Option<String> {
+    let setup = facts.setup;
+    let axes: Vec<f64> = setup.crystals.iter().filter_map(|c| taken(setup, c)).map(f64::to_degrees).collect();
+    let differ = |a: f64, b: f64| {
+        let off = (a - b).rem_euclid(180.0);
+        off.min(180.0 - off)
+    };
+    let first = *axes.first()?;
+    let other = axes.iter().map(|a| differ(*a, first)).fold(0.0, f64::max);
+    if other < 1.0 {
+        return None;
+    }
+    // rings of one field per crystal are parted by a polarizer
+    let field = |index: usize| {
+        let own: Vec<f64> =
+            facts.cones.rings.iter().filter(|r| r.crystal == index).filter_map(|r| r.field_azimuth).collect();
+        let one = *own.first()?;
+        own.iter().all(|a| differ(*a, one) < 1.0).then_some(one)
+    };
+    let fields: Vec<Option<f64>> = (0..setup.crystals.len()).map(field).collect();
+    let parted = fields[0]
+        .filter(|a| fields[1..].iter().all(|b| b.is_some_and(|b| (differ(*a, b) - 90.0).abs() < 1.0)));
+    let alone = match parted {
+        Some(azimuth) => format!(
+            "Put a polarizer before the camera, its axis at {} deg from +x towards +y: it passes the pairs of {} alone",
+            fixed(azimuth, 1),
+            which(setup, 0)
+        ),
+        None => format!("Leave {} alone in the beam", which(setup, 0)),
+    };
+    let whole = if setup.crystals.len() == 2 && (other - 90.0).abs() < 1.0 {
+        "the light of one crystal falls as that of the other grows; of equal crystals the sum stays the same"
+    } else {
+        "it is dark at no setting, since the crystals take different polarizations"
+    };
+    Some(format!(
+        "Turning the pump's half-wave plate does not tell by itself: {whole}. {alone}, and these rise and fall as sin^2 of twice the \
+         plate's angle, background does not."
+    ))
 }
 
 fn wrong_size(facts: &Facts<'_>) -> Result<Vec<String>, ConesError> {
