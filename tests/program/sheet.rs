@@ -234,3 +234,20 @@ fn crossed_crystals_are_never_dark_together() {
     let one = twincone("sheet --kind bench --job examples/crossed-cones.toml").answer();
     assert_says(&one, &["pump polarization a quarter turn off"]);
 }
+
+#[test]
+fn an_axis_across_the_beam_is_told_from_its_reverse_by_another() {
+    // normal at 31.5 deg from X about Z, Z towards +x: X leans to one side of the plane of Z and beam, turned round to the other
+    let job = "--job examples/biaxial.toml";
+    let side = |more: &str| {
+        let sheet = twincone(&format!("sheet --kind bench {job} {more}")).answer();
+        let line = sheet.lines().find(|l| l.contains("The end of X that points downstream")).expect("a line");
+        (line.contains("leans up (+y)"), line.contains("leans down (-y)"))
+    };
+    let (planned, round) = (side(""), side("--set crystal.reversed=about-beam"));
+    assert!(planned.0 != planned.1 && planned == (round.1, round.0), "{planned:?} {round:?}");
+    let order = twincone(&format!("sheet --kind order {job}")).answer();
+    assert_says(&order, &["the end of X that points to the output leans", "Z lies across the beam"]);
+    let uniaxial = twincone("sheet --kind order --job examples/crossed-cones.toml").answer();
+    assert_says(&uniaxial, &["the end of Z that points downstream leans to the left (+x)"]);
+}

@@ -2,7 +2,7 @@
 
 use nalgebra::Vector3;
 
-use super::facts::{Facts, deg, field_words, mm, nm, ring_name, rings, side_words};
+use super::facts::{Facts, capital, deg, field_words, lean_words, mm, nm, ring_name, rings, side_words};
 use super::page::{Block, Page};
 use crate::frame::{Mount, Orientation};
 use crate::job::{Setup, setup::Stage};
@@ -116,10 +116,9 @@ fn put_in(page: &mut Page, facts: &Facts<'_>, index: usize, which: &str) {
     }
     let plane = across.y.atan2(across.x).to_degrees().rem_euclid(180.0);
     if across.norm() > 0.01 {
+        see.extend(lean_words(&upright).iter().map(|words| format!("{}.", capital(words))));
         see.push(format!(
-            "The end of Z that points downstream leans {}, looking along the beam; the line of the mark on its side face lies \
-             in the plane at {} deg from +x towards +y.",
-            side_words(across),
+            "The line of the mark on its side face lies in the plane at {} deg from +x towards +y.",
             fixed(if plane > 179.95 { 0.0 } else { plane }, 1)
         ));
     }

@@ -1,9 +1,9 @@
 //! The order sheet: what the maker of a crystal must know.
 
-use super::facts::{Facts, deg, nm, plain_deg, same_order, side_words};
+use super::facts::{Facts, deg, lean_words, nm, plain_deg, same_order};
 use super::mount::which;
 use super::page::{Block, Page};
-use crate::frame::{Direction, Lab, Mount, Orientation};
+use crate::frame::{Direction, Orientation};
 use crate::job::Setup;
 use crate::matching::{ConesError, Design, Find, Pairing, design, opinions};
 use crate::material::Optic;
@@ -434,17 +434,18 @@ fn coating(facts: &Facts<'_>, crystal: &Crystal, pairing: Option<&Pairing>) -> V
 }
 
 fn mark(crystal: &Crystal) -> Vec<String> {
-    let placement = Crystal { orientation: Orientation::default(), ..crystal.clone() }.placement();
-    let z = placement.dielectric_axes().column(2).into_owned();
-    let Lab(lean) = placement.to_lab(Mount(if z.z < 0.0 { -z } else { z }));
+    let upright = Crystal { orientation: Orientation::default(), ..crystal.clone() };
+    let leans = lean_words(&upright);
+    let by_x = leans.iter().any(|words| words.contains("end of X"));
     let mut lines = vec![
         "Mark on a side face, parallel to the plane of Z and the face normal: a line along the projection of Z, and an arrow from the input to the output face.".into(),
-        "Say which face is the input, and to which side the end of Z that points to the output leans.".into(),
+        format!(
+            "Say which face is the input, and to which side the end of {} that points to the output leans{}.",
+            if by_x { "X" } else { "Z" },
+            if by_x { ": mark it too, for the line of Z and the arrow fit two mountings that are not alike" } else { "" }
+        ),
     ];
-    lines.push(format!(
-        "As this job mounts it at roll 0, that end leans {}, looking along the beam.",
-        side_words(nalgebra::Vector3::new(lean.x, lean.y, 0.0))
-    ));
+    lines.extend(leans.iter().map(|words| format!("As this job mounts it at roll 0, {words}.")));
     lines
 }
 

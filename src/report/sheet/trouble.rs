@@ -1,6 +1,6 @@
 //! What is seen if something is wrong, what to check then, and the test that decides.
 
-use super::facts::{Facts, deg, mm, plain_deg, ring_name, rings, same_order};
+use super::facts::{Facts, capital, deg, mm, plain_deg, ring_name, rings, same_order};
 use super::mount::{spot_per_turn, which};
 use super::page::Page;
 use crate::frame::Reversal;
@@ -65,11 +65,6 @@ fn alike(a: &Crystal, b: &Crystal) -> bool {
     same_order(a, b)
         && a.orientation.tilt == b.orientation.tilt
         && a.orientation.cross_tilt == b.orientation.cross_tilt
-}
-
-fn capital(text: &str) -> String {
-    let mut letters = text.chars();
-    letters.next().map_or(String::new(), |first| first.to_uppercase().chain(letters).collect())
 }
 
 fn no_light(facts: &Facts<'_>) -> Result<Vec<String>, ConesError> {
