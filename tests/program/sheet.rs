@@ -251,3 +251,19 @@ fn an_axis_across_the_beam_is_told_from_its_reverse_by_another() {
     let uniaxial = twincone("sheet --kind order --job examples/crossed-cones.toml").answer();
     assert_says(&uniaxial, &["the end of Z that points downstream leans to the left (+x)"]);
 }
+
+#[test]
+fn the_order_of_a_poled_crystal_is_about_its_period() {
+    let job = "sheet --kind order --job examples/telecom.toml";
+    let dark = twincone(job).answer();
+    let hot = twincone(&format!("{job} --temperature 50degC")).answer();
+    for sheet in [&dark, &hot] {
+        assert_says(sheet, &["| period +0.05 um |", "| temperature +5 K", "leaves 2/pi of it", "kato-2002", "kato-1991"]);
+        assert!(!sheet.contains("How sure the cut is"), "{sheet}");
+    }
+    // as `cut --find poling` at this temperature
+    assert_says(&dark, &["konig-2004 46.204 um", "kato-2002 45.028 um", "fan-1987 50.041 um"]);
+    // the oven that is 5 K too warm is set back by 5 K
+    let row = hot.lines().find(|l| l.starts_with("| temperature +5 K")).expect("a row");
+    assert!(row.contains("50.0 degC"), "{row}");
+}

@@ -95,6 +95,19 @@ impl<'a> Facts<'a> {
         Some(turn.setting - now.si())
     }
 
+    /// The temperature, degrees Celsius, that brings a changed crystal back to the watched angle.
+    pub fn heat(&self, changed: &Crystal, watched: Watched) -> Option<f64> {
+        let question = Tuning {
+            crystal: changed.clone(),
+            photons: self.photons,
+            fixed_signal: self.setup.signals.fixed(),
+            interaction: self.setup.interaction,
+            target: watched.target(),
+            actuator: Some(Actuator::Temperature),
+        };
+        Some(tune(&question).ok()?.turns.first()?.setting)
+    }
+
     /// In which light rings are as thick as the sheet says.
     pub fn light_words(&self) -> String {
         let filtered = self.setup.bench.filters.iter().any(|filters| !filters.is_empty());

@@ -3,12 +3,13 @@
 use super::facts::{Facts, deg, lean_words, nm, plain_deg, same_order};
 use super::mount::which;
 use super::page::{Block, Page};
+use super::trouble::missing;
 use crate::frame::{Direction, Orientation};
 use crate::job::Setup;
-use crate::matching::{ConesError, Design, Find, Pairing, design, opinions};
+use crate::matching::{ConesError, Design, Find, Pairing, Photons, Target, design, opinions};
 use crate::material::Optic;
 use crate::optics::Crystal;
-use crate::quantity::{Angle, Length, Wavelength};
+use crate::quantity::{Angle, Length, Temperature, Wavelength};
 use crate::report::angles::{fixed, rounded};
 
 /// The sheet of every crystal of the experiment.
@@ -54,22 +55,14 @@ fn one(page: &mut Page, facts: &Facts<'_>, group: &[usize]) {
     page.table(&["item", "specification"], items);
     drawings(page, facts.setup, crystal);
     page.heading("What an error costs");
-    let watched = facts.watched(crystal);
-    if let Some(watched) = watched {
-        page.text(format!(
-            "Computed for {} nominally {}, on a screen at {}. The last column is the turn of the mount (outside) that \
-             brings the angle back.",
-            watched.name(),
-            plain_deg(watched.angle, 3),
-            facts.setup.screen
-        ));
+    error_costs(page, facts, crystal);
+    if crystal.poling.is_some() {
+        page.heading("How sure the period is");
+        page.text(period_spread(facts, crystal));
+    } else {
+        page.heading("How sure the cut is");
+        page.text(spread(facts, crystal));
     }
-    page.table(
-        &["error", "angle becomes", "shift on the screen", "turn that repairs it"],
-        costs(facts, crystal),
-    );
-    page.heading("How sure the cut is");
-    page.text(spread(facts, crystal));
     page.heading("Size, faces and coatings");
     page.table(&["item", "value", "why"], body(facts, crystal, pairing.as_ref()));
     page.heading("Orientation mark");
@@ -173,7 +166,15 @@ fn specification(facts: &Facts<'_>, crystal: &Crystal, pairing: Option<&Pairing>
     {
         rows.push(row2(
             "|d_eff| expected",
-            format!("{} pm/V at the working point", fixed(p.d_eff(&emission, t), 3)),
+            format!(
+                "{} pm/V at the working point{}",
+                fixed(p.d_eff(&emission, t), 3),
+                if crystal.poling.is_some() {
+                    " (of the bulk: a first-order grating leaves 2/pi of it)"
+                } else {
+                    ""
+                }
+            ),
         ));
     }
     rows
@@ -202,44 +203,94 @@ fn drawings(page: &mut Page, setup: &Setup, crystal: &Crystal) {
     );
 }
 
-/// What each error does to the angle that is watched.
-fn costs(facts: &Facts<'_>, crystal: &Crystal) -> Vec<Vec<String>> {
-    let Some(watched) = facts.watched(crystal) else { return Vec::new() };
-    let with_theta = |off: f64| {
-        let mut changed = crystal.clone();
-        changed.cut.theta = Angle::radians(crystal.cut.theta.si() + off.to_radians());
-        changed
+/// A crystal or a pump that is not as planned.
+struct Fault {
+    words: String,
+    crystal: Crystal,
+    photons: Photons,
+    /// Whether the mount or the oven may mend it.
+    mended: bool,
+}
+
+/// What each error does to the angle that is watched; where there is no ring, to what is missing for one.
+fn error_costs(page: &mut Page, facts: &Facts<'_>, crystal: &Crystal) {
+    let Some(watched) = facts.watched(crystal) else {
+        page.text(
+            "There is no ring at this setting, so each line says what the best direction misses, or the ring that begins.",
+        );
+        let rows = faults(facts, crystal).into_iter().map(|fault| {
+            let seen = missing(facts, &fault.crystal, fault.photons);
+            vec![fault.words, seen.unwrap_or_else(|_| "beyond the range of the refractive indices".into())]
+        });
+        let rows = rows.collect();
+        page.table(&["error", "what comes of it"], rows);
+        return;
     };
-    let mut rows = Vec::new();
+    let heats = crystal.poling.is_some() && crystal.set().has_thermo_optics();
+    page.text(format!(
+        "Computed for {} nominally {}, on a screen at {}. The last column is the turn of the mount (outside){} that brings the \
+         angle back.",
+        watched.name(),
+        plain_deg(watched.angle, 3),
+        facts.setup.screen,
+        if heats { ", or the temperature of the crystal," } else { "" }
+    ));
+    let rows = faults(facts, crystal).into_iter().map(|fault| {
+        let angle = watched.of(&facts.measure(&fault.crystal, fault.photons));
+        let turn = fault.mended.then(|| facts.repair(&fault.crystal, watched)).flatten();
+        let heat = (fault.mended && heats).then(|| facts.heat(&fault.crystal, watched)).flatten();
+        let mends = [turn.map(|turn| deg(turn, 2)), heat.map(|t| format!("{} degC", fixed(t, 1)))];
+        let mends: Vec<String> = mends.into_iter().flatten().collect();
+        cost(facts, fault.words, watched.angle, angle, &mends.join(" or "))
+    });
+    let rows = rows.collect();
+    let last = if heats { "turn or temperature that repairs it" } else { "turn that repairs it" };
+    page.table(&["error", "angle becomes", "shift on the screen", last], rows);
+}
+
+fn faults(facts: &Facts<'_>, crystal: &Crystal) -> Vec<Fault> {
+    let photons = facts.photons;
+    let mut all = Vec::new();
+    let mut with = |words: String, change: &dyn Fn(&mut Crystal)| {
+        let mut changed = crystal.clone();
+        change(&mut changed);
+        all.push(Fault { words, crystal: changed, photons, mended: true });
+    };
     for off in [0.1, -0.1, 0.25, -0.25, 0.5, -0.5] {
-        let changed = with_theta(off);
-        let repair = facts.repair(&changed, watched);
-        let angle = watched.of(&facts.measure(&changed, facts.photons));
-        rows.push(cost(facts, format!("theta {off:+} deg"), watched.angle, angle, repair));
+        with(format!("theta {off:+} deg"), &|c| {
+            c.cut.theta = Angle::radians(c.cut.theta.si() + f64::to_radians(off))
+        });
     }
     for off in [0.5, -0.5] {
+        let change = |c: &mut Crystal| c.cut.phi = Angle::radians(c.cut.phi.si() + f64::to_radians(off));
         let mut changed = crystal.clone();
-        changed.cut.phi = Angle::radians(crystal.cut.phi.si() + f64::to_radians(off));
-        let angle = watched.of(&facts.measure(&changed, facts.photons));
-        let repair = facts.repair(&changed, watched);
+        change(&mut changed);
         let rate = relative_rate(facts, crystal, &changed)
             .map_or(String::new(), |r| format!(" (pair rate x {})", fixed(r, 3)));
-        rows.push(cost(facts, format!("phi {off:+} deg{rate}"), watched.angle, angle, repair));
+        with(format!("phi {off:+} deg{rate}"), &change);
+    }
+    if let Some(period) = crystal.poling {
+        for off in [0.05, -0.05] {
+            with(format!("period {off:+} um"), &|c| {
+                c.poling = Some(Length::metres(period.si() + off * 1e-6))
+            });
+        }
+        if crystal.set().has_thermo_optics() {
+            for off in [1.0, -1.0, 5.0, -5.0] {
+                with(format!("temperature {off:+} K (your oven, not the maker's)"), &|c| {
+                    c.temperature = Temperature::celsius(c.temperature.degc() + off);
+                });
+            }
+        }
     }
     for off in [1.0, -1.0] {
-        let pump = Wavelength::from_nm(facts.photons.pump.nm() + off);
+        let pump = Wavelength::from_nm(photons.pump.nm() + off);
         let signal = facts.setup.signals.for_pump(pump)[0];
-        let Some(photons) = crate::matching::Photons::new(pump, signal) else { continue };
-        let angle = watched.of(&facts.measure(crystal, photons));
-        rows.push(cost(
-            facts,
-            format!("pump {off:+} nm (your laser, not the maker's)"),
-            watched.angle,
-            angle,
-            None,
-        ));
+        let Some(photons) = Photons::new(pump, signal) else { continue };
+        let words = format!("pump {off:+} nm (your laser, not the maker's)");
+        all.push(Fault { words, crystal: crystal.clone(), photons, mended: false });
     }
-    rows
+    all
 }
 
 /// |d_eff|^2 of a changed crystal over that of the planned one.
@@ -253,13 +304,7 @@ fn relative_rate(facts: &Facts<'_>, planned: &Crystal, changed: &Crystal) -> Opt
     Some((d_eff(changed)? / d_eff(planned)?).powi(2)).filter(|r| r.is_finite())
 }
 
-fn cost(
-    facts: &Facts<'_>,
-    error: String,
-    nominal: f64,
-    angle: Option<f64>,
-    repair: Option<f64>,
-) -> Vec<String> {
+fn cost(facts: &Facts<'_>, error: String, nominal: f64, angle: Option<f64>, repair: &str) -> Vec<String> {
     let shift = |a: f64| {
         let off = facts.setup.screen.mm() * (a.tan() - nominal.tan());
         super::facts::mm(off, 1)
@@ -268,8 +313,50 @@ fn cost(
         error,
         angle.map_or("no ring or no crossing".into(), |a| plain_deg(a, 3)),
         angle.map_or("-".into(), shift),
-        repair.map_or("-".into(), |turn| deg(turn, 2)),
+        if repair.is_empty() { "-".into() } else { repair.into() },
     ]
+}
+
+/// The period that each data set would give for the angle that is watched; without a ring, for pairs along the pump.
+fn period_spread(facts: &Facts<'_>, crystal: &Crystal) -> String {
+    let now = crystal.poling.map_or(f64::NAN, |p| p.um());
+    let ask = |crystal: &Crystal, target: Target| {
+        let question = Design {
+            crystal: crystal.clone(),
+            photons: facts.photons,
+            fixed_signal: facts.setup.signals.fixed(),
+            interaction: facts.setup.interaction,
+            target,
+            find: Find::Poling,
+            phi_given: true,
+        };
+        let all = design(&question).unwrap_or_default();
+        let away = |p: &f64| (p - now).abs();
+        let periods = all.iter().filter_map(|s| s.crystal.poling.map(|p| p.um()));
+        periods.min_by(|a, b| away(a).total_cmp(&away(b)))
+    };
+    let watched = facts.watched(crystal).filter(|w| ask(crystal, w.target()).is_some());
+    let target = watched.map_or(Target::Collinear, super::facts::Watched::target);
+    let what =
+        watched.map_or("pairs along the pump".into(), |w| format!("{} {}", w.name(), plain_deg(w.angle, 3)));
+    let words = |period: Option<f64>| period.map_or("none".into(), |p| format!("{} um", fixed(p, 3)));
+    let others = opinions(crystal, &facts.photons, |other| ask(other, target));
+    let told: Vec<String> = others
+        .iter()
+        .filter_map(|o| Some(format!("{} {}", o.dataset, words(*o.answer.as_ref().ok()?))))
+        .collect();
+    let others = if told.is_empty() {
+        "no other set covers these wavelengths, so nothing says how sure it is".into()
+    } else {
+        format!("others: {}", told.join(", "))
+    };
+    format!(
+        "For {what} at {} the published refractive indices give these periods: {} {}; {others}. Where they differ by more than the \
+         oven mends (see the lines of period and temperature above), order several periods side by side on one piece.",
+        crystal.temperature,
+        crystal.set().id,
+        words(ask(crystal, target))
+    )
 }
 
 /// The cut that each data set would give for the same geometry at normal incidence.

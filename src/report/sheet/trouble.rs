@@ -328,7 +328,7 @@ fn movers(facts: &Facts<'_>, crystal: &Crystal) -> Result<Vec<Vec<String>>, Cone
 }
 
 /// The first ring of a crystal, or by how much its best direction misses.
-fn missing(facts: &Facts<'_>, crystal: &Crystal, photons: Photons) -> Result<String, ConesError> {
+pub(super) fn missing(facts: &Facts<'_>, crystal: &Crystal, photons: Photons) -> Result<String, ConesError> {
     let interaction = facts.setup.interaction;
     let found =
         cones(std::slice::from_ref(crystal), photons.pump, &[photons.signal], interaction, Want::Rings)?;
