@@ -267,3 +267,11 @@ fn the_order_of_a_poled_crystal_is_about_its_period() {
     let row = hot.lines().find(|l| l.starts_with("| temperature +5 K")).expect("a row");
     assert!(row.contains("50.0 degC"), "{row}");
 }
+
+#[test]
+fn a_ring_that_is_not_round_has_its_own_extent() {
+    let sheet = twincone("sheet --kind bench --job examples/biaxial.toml").answer();
+    let row = sheet.lines().find(|l| l.starts_with("| slow 810 nm | x")).expect("a row");
+    // up and down as far as the arms stand, sideways less
+    assert_says(row, &["-33.6 to +33.6", "-34.2 to +34.2"]);
+}
