@@ -275,3 +275,22 @@ fn a_ring_that_is_not_round_has_its_own_extent() {
     // up and down as far as the arms stand, sideways less
     assert_says(row, &["-33.6 to +33.6", "-34.2 to +34.2"]);
 }
+
+#[test]
+fn what_is_to_be_dialled_is_on_the_sheet() {
+    let sheet = |more: &str| twincone(&format!("sheet --kind bench {more}")).answer();
+    let cross = sheet("--job examples/biaxial.toml --cross-tilt 0.5deg");
+    assert!(!cross.contains("it names the readings"), "{cross}");
+    let scaled = sheet("--job examples/biaxial.toml --cross-tilt 0.5deg --set stage.zero=3.2deg");
+    assert_says(&scaled, &["reads tilt, not this turn: set it by the spot"]);
+    // 0.1 deg = 1.745 mrad of 5 mrad a turn; 0.25 deg 0.87 turns
+    let screw = sheet("--job examples/two-colours.toml --set \"stage.per_turn=5 mrad\"");
+    assert_says(&screw, &["(+0.35 turns of the screw)", "| +0.25 deg | +0.87 turns |"]);
+    let at = |place: &str| screw.find(place).expect("a row");
+    assert!(at("| 1a (800 nm) | 800 mm") < at("| 1a (800 nm) | 1000 mm"));
+    assert!(screw.split("| iris at").nth(1).is_some_and(|table| table.contains("| 800 mm |")));
+    let filled = sheet("--job examples/telecom.toml --temperature 50degC");
+    assert_says(&filled, &["half the ring's radius: 3.6 mm at 1000 mm", "class 1 to 0.551 mW"]);
+    let order = twincone("sheet --kind order --job examples/telecom.toml").answer();
+    assert_says(&order, &["1550 nm, normal incidence; ask"]);
+}

@@ -497,6 +497,11 @@ fn coating(facts: &Facts<'_>, crystal: &Crystal, pairing: Option<&Pairing>) -> V
         .filter_map(|r| r.ring.as_ref().ok())
         .fold(0.0, |m: f64, ring| m.max(ring.axis.polar_deg() + ring.largest.to_degrees()));
     let incidence = (largest + crystal.orientation.tilt.degrees().abs()).ceil();
+    let angles = if incidence == 0.0 {
+        "normal incidence".to_string()
+    } else {
+        format!("angles of incidence 0 to {incidence} deg")
+    };
     let loss = |wave: Option<f64>, w: Wavelength| {
         wave.map(|k| {
             let n = k / w.wavenumber();
@@ -513,7 +518,7 @@ fn coating(facts: &Facts<'_>, crystal: &Crystal, pairing: Option<&Pairing>) -> V
     vec![
         "coating".into(),
         format!(
-            "antireflection on both faces for {}, angles of incidence 0 to {incidence} deg; ask for the curve",
+            "antireflection on both faces for {}, {angles}; ask for the curve",
             wavelengths.join(" and ")
         ),
         format!("each bare face reflects {}", bare.join(", ")),

@@ -8,7 +8,7 @@ use crate::matching::{Actuator, Cones, ConesError, Photons, Want, cones, phase_m
 use crate::optics::Crystal;
 use crate::picture::taken;
 use crate::quantity::{Angle, Temperature, Wavelength};
-use crate::report::angles::fixed;
+use crate::report::angles::{fixed, signed};
 use crate::report::{darkness, room_words};
 
 /// The part of the bench sheet.
@@ -299,7 +299,10 @@ fn movers(facts: &Facts<'_>, crystal: &Crystal) -> Result<Vec<Vec<String>>, Cone
             *turn = Angle::radians(turn.si() + f64::to_radians(off));
             let way = room_words(crystal, actuator, Angle::from_degrees(off));
             let key = if cross { "cross tilt" } else { "tilt" };
-            rows.push(vec![format!("{key} {off:+} deg: {way}"), effect(&turned, facts.photons)?]);
+            let stage = setup.stage.filter(|_| !cross && std::ptr::eq(crystal, &raw const setup.crystals[0]));
+            let turns = stage.and_then(|s| s.turns(Angle::from_degrees(off)));
+            let turns = turns.map_or(String::new(), |t| format!(" ({} turns of the screw)", signed(t, 2)));
+            rows.push(vec![format!("{key} {off:+} deg: {way}{turns}"), effect(&turned, facts.photons)?]);
         }
     }
     if crystal.set().has_thermo_optics() {
