@@ -130,10 +130,13 @@ fn iris_step(page: &mut Page, facts: &Facts<'_>) {
     page.table(&["iris at", "diameter"], rows);
 }
 
-/// Where a seed laser at A shows its partner.
+/// Where a seed laser in the first arm shows its partner.
 fn seeds(page: &mut Page, facts: &Facts<'_>) {
-    let crossing = facts.cones.crossings.iter().find_map(|c| c.crossing.as_ref());
-    let Some(direction) = crossing.map(|c| c.direction).or_else(|| ring_pair(facts).map(|p| p.1)) else {
+    let crossing = facts
+        .cones
+        .pairs()
+        .find_map(|row| Some((row.arm('a').unwrap_or_default(), row.crossing.as_ref()?.direction)));
+    let Some((arm, direction)) = crossing.or_else(|| ring_pair(facts).map(|p| ("a".into(), p.1))) else {
         return;
     };
     let crystal = &facts.setup.crystals[0];
@@ -155,7 +158,9 @@ fn seeds(page: &mut Page, facts: &Facts<'_>) {
         rows.extend(row);
     }
     page.step(
-        "If a laser near the signal's wavelength is at hand, send it through the crystal to A: its partner lights up here.",
+        format!(
+            "If a laser near the signal's wavelength is at hand, send it through the crystal to arm {arm}: its partner lights up here."
+        ),
         vec![format!(
             "Seed at h {} deg, v {} deg; places on the screen at {}.",
             signed(direction.h_deg(), 3),

@@ -54,7 +54,7 @@ pub fn bench(setup: &Setup) -> Result<Page, ConesError> {
 
 fn figures(page: &mut Page, facts: &Facts<'_>) {
     let setup = facts.setup;
-    let command = || "twincone picture --view side".to_string();
+    let command = || "twincone picture --view side --job job.toml".to_string();
     if setup.crystals.len() > 1 {
         page.blocks.push(Block::Figure(crate::picture::line_up(setup), command()));
     }
@@ -74,7 +74,7 @@ fn figures(page: &mut Page, facts: &Facts<'_>) {
     let backdrop = Backdrop { png: &image, size: (240, 240), pump: (120.0, 120.0) };
     let notes = ["Dark is bright. Seen from downstream: +x right, +y up.".to_string()];
     let figure = crate::picture::camera(setup, &facts.cones, &sensor, backdrop, &notes);
-    page.blocks.push(Block::Figure(figure, "twincone picture --view camera".into()));
+    page.blocks.push(Block::Figure(figure, "twincone picture --view camera --job job.toml".into()));
 }
 
 fn pump_steps(page: &mut Page, facts: &Facts<'_>) {

@@ -193,10 +193,14 @@ fn drawings(page: &mut Page, setup: &Setup, crystal: &Crystal) {
     };
     let alone = Setup { crystals: vec![upright], ..setup.clone() };
     let none = crate::matching::Cones::default();
-    page.blocks
-        .push(Block::Figure(crate::picture::side(&alone, &none), "twincone picture --view side".into()));
-    page.blocks
-        .push(Block::Figure(crate::picture::front(&alone, &none), "twincone picture --view front".into()));
+    page.blocks.push(Block::Figure(
+        crate::picture::side(&alone, &none),
+        "twincone picture --view side --job job.toml".into(),
+    ));
+    page.blocks.push(Block::Figure(
+        crate::picture::front(&alone, &none),
+        "twincone picture --view front --job job.toml".into(),
+    ));
     page.text(
         "The drawings show the crystal as cut and before tilting: from the side the face normal, the axis Z and the angle theta \
          between them, in the plane that holds both; from the exit face the axes X, Y and Z as they lie across the beam.",
@@ -396,6 +400,16 @@ fn spread(facts: &Facts<'_>, crystal: &Crystal) -> String {
             }))
         })
         .collect();
+    let tilted =
+        own.filter(|t| (t - sought(crystal)).abs() > f64::to_radians(5e-3)).map_or(String::new(), |_| {
+            let o = &crystal.orientation;
+            format!(
+                " The cut ordered above, {} deg, is another one: it is used at tilt {}, cross tilt {}.",
+                fixed(sought(crystal).to_degrees(), 2),
+                deg(o.tilt.si(), 3),
+                deg(o.cross_tilt.si(), 3)
+            )
+        });
     let own = own.map_or("none".into(), |t| format!("{} deg", fixed(t.to_degrees(), 3)));
     let others = if told.is_empty() {
         "no other set covers these wavelengths, so nothing says how sure it is".into()
@@ -404,7 +418,7 @@ fn spread(facts: &Facts<'_>, crystal: &Crystal) -> String {
     };
     format!(
         "For {} {} at normal incidence the published refractive indices give these cuts ({}): {} {own}; {others}. Order a cut \
-         from which tilting reaches the whole range.",
+         from which tilting reaches the whole range.{tilted}",
         watched.name(),
         plain_deg(watched.angle, 3),
         if find == Find::Phi { "phi" } else { "theta" },
