@@ -206,3 +206,91 @@ fn seed_steps_reach_from_full_light_to_half() {
     assert!(values[2] > 0.99 && values.iter().all(|v| *v > 0.2), "{values:?}");
     assert!(values[0].min(values[4]) < 0.9, "{values:?}");
 }
+
+#[test]
+fn a_turn_that_changes_the_ring_alike_both_ways_is_no_test() {
+    // light across Z at normal incidence: the table of this sheet shrinks on both sides
+    let sheet = twincone("sheet --kind bench --job examples/telecom.toml --temperature 50degC").answer();
+    assert!(!sheet.contains("must grow") && !sheet.contains("turned about the beam"), "{sheet}");
+    let dark = twincone("sheet --kind bench --job examples/telecom.toml").answer();
+    assert!(!dark.contains("must grow"), "{dark}");
+    let crossed = twincone("sheet --kind bench --job examples/two-crystals.toml").answer();
+    assert_says(&crossed, &["the rings must grow", "is the same both ways; only a turn tells"]);
+    // beside normal incidence the two rings of a biaxial crystal differ: 40 mm, 26 mm
+    let biaxial = twincone("sheet --kind bench --job examples/biaxial.toml --cross-tilt 0.5deg").answer();
+    assert_says(&biaxial, &["the rings must grow", "slow 810 nm of radius 40.", "slow 810 nm of radius 26."]);
+}
+
+#[test]
+fn crossed_crystals_are_never_dark_together() {
+    // cos^2 + sin^2 = 1
+    let sheet = twincone("sheet --kind bench --job examples/two-crystals.toml").answer();
+    assert_says(
+        &sheet,
+        &["the sum stays the same", "axis at 90.0 deg from +x towards +y: it passes the pairs of crystal 1"],
+    );
+    let row = sheet.lines().find(|l| l.starts_with("| no light")).expect("a row");
+    assert!(!row.contains("quarter turn off") && !row.contains("rolled by 90 deg"), "{row}");
+    let one = twincone("sheet --kind bench --job examples/crossed-cones.toml").answer();
+    assert_says(&one, &["pump polarization a quarter turn off"]);
+}
+
+#[test]
+fn an_axis_across_the_beam_is_told_from_its_reverse_by_another() {
+    // normal at 31.5 deg from X about Z, Z towards +x: X leans to one side of the plane of Z and beam, turned round to the other
+    let job = "--job examples/biaxial.toml";
+    let side = |more: &str| {
+        let sheet = twincone(&format!("sheet --kind bench {job} {more}")).answer();
+        let line = sheet.lines().find(|l| l.contains("The end of X that points downstream")).expect("a line");
+        (line.contains("leans up (+y)"), line.contains("leans down (-y)"))
+    };
+    let (planned, round) = (side(""), side("--set crystal.reversed=about-beam"));
+    assert!(planned.0 != planned.1 && planned == (round.1, round.0), "{planned:?} {round:?}");
+    let order = twincone(&format!("sheet --kind order {job}")).answer();
+    assert_says(&order, &["the end of X that points to the output leans", "Z lies across the beam"]);
+    let uniaxial = twincone("sheet --kind order --job examples/crossed-cones.toml").answer();
+    assert_says(&uniaxial, &["the end of Z that points downstream leans to the left (+x)"]);
+}
+
+#[test]
+fn the_order_of_a_poled_crystal_is_about_its_period() {
+    let job = "sheet --kind order --job examples/telecom.toml";
+    let dark = twincone(job).answer();
+    let hot = twincone(&format!("{job} --temperature 50degC")).answer();
+    for sheet in [&dark, &hot] {
+        assert_says(sheet, &["| period +0.05 um |", "| temperature +5 K", "leaves 2/pi of it", "kato-2002", "kato-1991"]);
+        assert!(!sheet.contains("How sure the cut is"), "{sheet}");
+    }
+    // as `cut --find poling` at this temperature
+    assert_says(&dark, &["konig-2004 46.204 um", "kato-2002 45.028 um", "fan-1987 50.041 um"]);
+    // the oven that is 5 K too warm is set back by 5 K
+    let row = hot.lines().find(|l| l.starts_with("| temperature +5 K")).expect("a row");
+    assert!(row.contains("50.0 degC"), "{row}");
+}
+
+#[test]
+fn a_ring_that_is_not_round_has_its_own_extent() {
+    let sheet = twincone("sheet --kind bench --job examples/biaxial.toml").answer();
+    let row = sheet.lines().find(|l| l.starts_with("| slow 810 nm | x")).expect("a row");
+    // up and down as far as the arms stand, sideways less
+    assert_says(row, &["-33.6 to +33.6", "-34.2 to +34.2"]);
+}
+
+#[test]
+fn what_is_to_be_dialled_is_on_the_sheet() {
+    let sheet = |more: &str| twincone(&format!("sheet --kind bench {more}")).answer();
+    let cross = sheet("--job examples/biaxial.toml --cross-tilt 0.5deg");
+    assert!(!cross.contains("it names the readings"), "{cross}");
+    let scaled = sheet("--job examples/biaxial.toml --cross-tilt 0.5deg --set stage.zero=3.2deg");
+    assert_says(&scaled, &["reads tilt, not this turn: set it by the spot"]);
+    // 0.1 deg = 1.745 mrad of 5 mrad a turn; 0.25 deg 0.87 turns
+    let screw = sheet("--job examples/two-colours.toml --set \"stage.per_turn=5 mrad\"");
+    assert_says(&screw, &["(+0.35 turns of the screw)", "| +0.25 deg | +0.87 turns |"]);
+    let at = |place: &str| screw.find(place).expect("a row");
+    assert!(at("| 1a (800 nm) | 800 mm") < at("| 1a (800 nm) | 1000 mm"));
+    assert!(screw.split("| iris at").nth(1).is_some_and(|table| table.contains("| 800 mm |")));
+    let filled = sheet("--job examples/telecom.toml --temperature 50degC");
+    assert_says(&filled, &["half the ring's radius: 3.6 mm at 1000 mm", "class 1 to 0.551 mW"]);
+    let order = twincone("sheet --kind order --job examples/telecom.toml").answer();
+    assert_says(&order, &["1550 nm, normal incidence; ask"]);
+}

@@ -47,13 +47,20 @@ pub(super) fn arm_steps(page: &mut Page, facts: &Facts<'_>) {
     iris_step(page, facts);
     seeds(page, facts);
     let screen = setup.screen;
-    let step =
-        iris(facts).map(|(full, _)| format!("{} mm at {screen}", fixed(screen.mm() * (0.5 * full).tan(), 1)));
+    // a ring that is filled gives no iris: its own size is what there is to step by
+    let radius = || facts.cones.rings.iter().find_map(|r| r.ring.as_ref().ok()).map(|ring| ring.circle().1);
+    let step = match iris(facts) {
+        Some((full, _)) => {
+            format!("half an iris: {} mm at {screen}", fixed(screen.mm() * (0.5 * full).tan(), 1))
+        }
+        None => radius().map_or("half an iris".into(), |radius| {
+            format!("half the ring's radius: {} mm at {screen}", fixed(0.5 * radius * screen.mm(), 1))
+        }),
+    };
     page.step(
         "Look for coincidences: irises open first, window wide, delays of both arms equal.",
         vec![format!(
-            "If there are none, leave arm a and move arm b over a grid about its place in steps of half an iris{}.",
-            step.map_or(String::new(), |s| format!(": {s}"))
+            "If there are none, leave arm a and move arm b over a grid about its place in steps of {step}."
         )],
     );
 }
@@ -79,12 +86,18 @@ fn arm_angles(label: &str, d: Direction) -> Vec<String> {
     ]
 }
 
-fn arm_places(label: &str, d: Direction, screen: Length) -> Vec<Vec<String>> {
+/// Planes across the pump where places are told, nearest first; the screen among them.
+fn planes(screen: Length) -> Vec<Length> {
     let mut planes = vec![Length::metres(0.25), Length::metres(0.5), Length::metres(1.0)];
     if planes.iter().all(|p| (p.si() - screen.si()).abs() > 1e-9) {
         planes.push(screen);
+        planes.sort_by(|a, b| a.si().total_cmp(&b.si()));
     }
     planes
+}
+
+fn arm_places(label: &str, d: Direction, screen: Length) -> Vec<Vec<String>> {
+    planes(screen)
         .into_iter()
         .map(|plane| {
             let (x, y) = d.on_screen_mm(plane);
@@ -106,20 +119,24 @@ pub(super) fn ring_pair(facts: &Facts<'_>) -> Option<(String, Direction, Directi
 fn iris_step(page: &mut Page, facts: &Facts<'_>) {
     let at = |full: f64, distance: Length| 2.0 * distance.mm() * (0.5 * full).tan();
     let Some((full, why)) = iris(facts) else { return };
-    let rows = [0.25, 0.5, 1.0]
-        .map(Length::metres)
-        .map(|d| vec![d.to_string(), format!("{} mm", fixed(at(full, d), 2))]);
+    let rows = planes(facts.setup.screen)
+        .into_iter()
+        .map(|d| vec![d.to_string(), format!("{} mm", fixed(at(full, d), 2))])
+        .collect();
     page.step(
         format!("Set the irises: full angle {} seen from the crystal, {why}.", plain_deg(full, 3)),
         Vec::new(),
     );
-    page.table(&["iris at", "diameter"], rows.into());
+    page.table(&["iris at", "diameter"], rows);
 }
 
-/// Where a seed laser at A shows its partner.
+/// Where a seed laser in the first arm shows its partner.
 fn seeds(page: &mut Page, facts: &Facts<'_>) {
-    let crossing = facts.cones.crossings.iter().find_map(|c| c.crossing.as_ref());
-    let Some(direction) = crossing.map(|c| c.direction).or_else(|| ring_pair(facts).map(|p| p.1)) else {
+    let crossing = facts
+        .cones
+        .pairs()
+        .find_map(|row| Some((row.arm('a').unwrap_or_default(), row.crossing.as_ref()?.direction)));
+    let Some((arm, direction)) = crossing.or_else(|| ring_pair(facts).map(|p| ("a".into(), p.1))) else {
         return;
     };
     let crystal = &facts.setup.crystals[0];
@@ -141,7 +158,9 @@ fn seeds(page: &mut Page, facts: &Facts<'_>) {
         rows.extend(row);
     }
     page.step(
-        "If a laser near the signal's wavelength is at hand, send it through the crystal to A: its partner lights up here.",
+        format!(
+            "If a laser near the signal's wavelength is at hand, send it through the crystal to arm {arm}: its partner lights up here."
+        ),
         vec![format!(
             "Seed at h {} deg, v {} deg; places on the screen at {}.",
             signed(direction.h_deg(), 3),

@@ -7,7 +7,7 @@ use super::mount::{common_mount, mount_steps, temperature_steps, tuning_tables, 
 use super::page::{Block, Page};
 use super::trouble::trouble;
 use crate::job::Setup;
-use crate::matching::{ConesError, RingRow};
+use crate::matching::{ConesError, RingRow, SAMPLES};
 use crate::optics::Crystal;
 use crate::pairs::Filter;
 use crate::picture::{Backdrop, Optics, PumpLight, Seen, Sensor, taken};
@@ -54,7 +54,7 @@ pub fn bench(setup: &Setup) -> Result<Page, ConesError> {
 
 fn figures(page: &mut Page, facts: &Facts<'_>) {
     let setup = facts.setup;
-    let command = || "twincone picture --view side".to_string();
+    let command = || "twincone picture --view side --job job.toml".to_string();
     if setup.crystals.len() > 1 {
         page.blocks.push(Block::Figure(crate::picture::line_up(setup), command()));
     }
@@ -74,7 +74,7 @@ fn figures(page: &mut Page, facts: &Facts<'_>) {
     let backdrop = Backdrop { png: &image, size: (240, 240), pump: (120.0, 120.0) };
     let notes = ["Dark is bright. Seen from downstream: +x right, +y up.".to_string()];
     let figure = crate::picture::camera(setup, &facts.cones, &sensor, backdrop, &notes);
-    page.blocks.push(Block::Figure(figure, "twincone picture --view camera".into()));
+    page.blocks.push(Block::Figure(figure, "twincone picture --view camera --job job.toml".into()));
 }
 
 fn pump_steps(page: &mut Page, facts: &Facts<'_>) {
@@ -166,13 +166,20 @@ fn ring_steps(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesError> {
         let (c, r) = ring.circle();
         let (x, y, r) = (c.x * setup.screen.mm(), c.y * setup.screen.mm(), r * setup.screen.mm());
         let thick = width.map_or("filled".into(), |t| format!("{} mm", fixed(t * setup.screen.mm(), 1)));
-        let edge = |a: f64, b: f64| format!("{} to {}", signed(a, 1), signed(b, 1));
+        // of the ring itself, which need not be the circle that fits it
+        let spots: Vec<(f64, f64)> =
+            (0..SAMPLES).map(|j| ring.curve.direction(j).on_screen_mm(setup.screen)).collect();
+        let edge = |of: fn(&(f64, f64)) -> f64| {
+            let low = spots.iter().map(of).fold(f64::INFINITY, f64::min);
+            let high = spots.iter().map(of).fold(f64::NEG_INFINITY, f64::max);
+            format!("{} to {}", signed(low, 1), signed(high, 1))
+        };
         Some(vec![
             ring_name(setup, row),
             format!("x {}, y {}", signed(x, 1), signed(y, 1)),
             fixed(r, 1),
-            edge(x - r, x + r),
-            edge(y - r, y + r),
+            edge(|spot| spot.0),
+            edge(|spot| spot.1),
             thick,
         ])
     };

@@ -24,7 +24,7 @@ pub(super) fn safety(page: &mut Page, facts: &Facts<'_>) {
             let mut told: Vec<String> = Vec::new();
             for (class, limit) in limits {
                 if class != super::safety::Class::Two || (400.0..=700.0).contains(&pump.nm()) {
-                    told.push(format!("class {} to {} mW", class.name(), rounded(limit * 1e3, 4)));
+                    told.push(format!("class {} to {} mW", class.name(), three_digits(limit * 1e3)));
                 }
             }
             format!("No power is given. At {}: {}, class 4 above ({standard}).", nm(pump), told.join(", "))
@@ -84,4 +84,10 @@ pub(super) fn safety(page: &mut Page, facts: &Facts<'_>) {
             .into(),
     );
     page.blocks.push(Block::List(lines));
+}
+
+/// A power to three digits, which is more than the limits are known to.
+fn three_digits(value: f64) -> String {
+    let places = (2.0 - value.log10().floor()).max(0.0);
+    rounded(value, places as usize)
 }

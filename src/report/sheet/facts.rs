@@ -2,7 +2,7 @@
 
 use nalgebra::Vector3;
 
-use crate::frame::Direction;
+use crate::frame::{Direction, Lab, Mount};
 use crate::job::Setup;
 use crate::matching::{
     Actuator, Cones, ConesError, Emission, Measure, Pairing, Photons, RingRow, Roles, Target, Triplet,
@@ -93,6 +93,19 @@ impl<'a> Facts<'a> {
             _ => changed.orientation.tilt,
         };
         Some(turn.setting - now.si())
+    }
+
+    /// The temperature, degrees Celsius, that brings a changed crystal back to the watched angle.
+    pub fn heat(&self, changed: &Crystal, watched: Watched) -> Option<f64> {
+        let question = Tuning {
+            crystal: changed.clone(),
+            photons: self.photons,
+            fixed_signal: self.setup.signals.fixed(),
+            interaction: self.setup.interaction,
+            target: watched.target(),
+            actuator: Some(Actuator::Temperature),
+        };
+        Some(tune(&question).ok()?.turns.first()?.setting)
     }
 
     /// In which light rings are as thick as the sheet says.
@@ -200,6 +213,46 @@ pub(super) fn field_words(azimuth: f64) -> String {
         ""
     };
     format!("{word}{} deg from +x towards +y", fixed(azimuth, 1))
+}
+
+pub(super) fn capital(text: &str) -> String {
+    let mut letters = text.chars();
+    letters.next().map_or(String::new(), |first| first.to_uppercase().chain(letters).collect())
+}
+
+/// How the marked axes of a crystal lie across the beam: where the downstream end of Z leans; of a Z across the beam, which
+/// leans to neither side, its line and where the downstream end of X leans, for the line alone fits a crystal turned round too.
+pub(super) fn lean_words(crystal: &Crystal) -> Vec<String> {
+    let placement = crystal.placement();
+    let axis = |n: usize| {
+        let Lab(v) = placement.to_lab(Mount(placement.dielectric_axes().column(n).into_owned()));
+        if v.z < -1e-9 { -v } else { v }
+    };
+    let leans = |name: &str, v: Vector3<f64>| {
+        let across = Vector3::new(v.x, v.y, 0.0);
+        let oblique = across.norm() > 0.01 && v.z > 0.01;
+        oblique.then(|| {
+            format!(
+                "the end of {name} that points downstream leans {}, looking along the beam",
+                side_words(across)
+            )
+        })
+    };
+    let z = axis(2);
+    if z.z > 0.01 {
+        return leans("Z", z).into_iter().collect();
+    }
+    let plane = z.y.atan2(z.x).to_degrees().rem_euclid(180.0);
+    let mut all = vec![format!(
+        "Z lies across the beam, in the plane at {} deg from +x towards +y",
+        fixed(if plane > 179.95 { 0.0 } else { plane }, 1)
+    )];
+    all.extend(leans("X", axis(0)).map(|words| {
+        format!(
+            "{words}: with X on the other side the crystal is turned round, which the line of Z does not show"
+        )
+    }));
+    all
 }
 
 /// Towards which side a direction across the beam points: "to the left (+x)", for somebody who looks along the beam.

@@ -2,7 +2,7 @@
 
 use nalgebra::Vector3;
 
-use super::facts::{Facts, deg, field_words, mm, nm, ring_name, rings, side_words};
+use super::facts::{Facts, capital, deg, field_words, lean_words, mm, nm, ring_name, rings, side_words};
 use super::page::{Block, Page};
 use crate::frame::{Mount, Orientation};
 use crate::job::{Setup, setup::Stage};
@@ -45,6 +45,9 @@ pub(super) fn mount_steps(page: &mut Page, facts: &Facts<'_>, index: usize) {
             "Stage reading there: {} deg. If yours differs, correct [stage] zero in the job and print again.",
             fixed(zero.degrees(), 3)
         ),
+        None if index == 0 && tilt.si() == 0.0 && cross.si() != 0.0 => {
+            "No reading is asked for: a stage's scale in the job reads tilt, and cross tilt is set by the reflected spot.".into()
+        }
         None if index == 0 => "Write the reading down: ________ deg. Print this sheet again with your reading, \
                                `--set stage.zero=3.2deg`, and it names the readings to set; without a scale the \
                                reflected spot does."
@@ -71,6 +74,9 @@ pub(super) fn mount_steps(page: &mut Page, facts: &Facts<'_>, index: usize) {
         see.extend(
             stage.filter(|_| actuator == Actuator::Tilt).map(|s| stage_words(s, turn)).unwrap_or_default(),
         );
+        if stage.is_some() && actuator == Actuator::CrossTilt {
+            see.push("The job's stage reads tilt, not this turn: set it by the spot.".into());
+        }
         match actuator {
             Actuator::Tilt => stands.orientation.tilt = turn,
             _ => stands.orientation.cross_tilt = turn,
@@ -116,10 +122,9 @@ fn put_in(page: &mut Page, facts: &Facts<'_>, index: usize, which: &str) {
     }
     let plane = across.y.atan2(across.x).to_degrees().rem_euclid(180.0);
     if across.norm() > 0.01 {
+        see.extend(lean_words(&upright).iter().map(|words| format!("{}.", capital(words))));
         see.push(format!(
-            "The end of Z that points downstream leans {}, looking along the beam; the line of the mark on its side face lies \
-             in the plane at {} deg from +x towards +y.",
-            side_words(across),
+            "The line of the mark on its side face lies in the plane at {} deg from +x towards +y.",
             fixed(if plane > 179.95 { 0.0 } else { plane }, 1)
         ));
     }
@@ -346,11 +351,15 @@ fn turn_table(
     let cross = actuator == Actuator::CrossTilt;
     let key = if cross { "cross tilt" } else { "tilt" };
     let now = if cross { crystal.orientation.cross_tilt } else { crystal.orientation.tilt }.degrees();
-    let stage = setup.stage.filter(|s| index == 0 && !cross && s.zero.is_some());
+    let stage = setup.stage.filter(|_| index == 0 && !cross);
+    let (scale, screw) = (stage.filter(|s| s.zero.is_some()), stage.filter(|s| s.per_turn.is_some()));
     let which = which(setup, index);
     let mut header = vec![format!("{key} of {which}")];
-    if stage.is_some() {
+    if scale.is_some() {
         header.push("stage reading".into());
+    }
+    if screw.is_some() {
+        header.push("screw from back-reflection".into());
     }
     header.push("reflected spot 1000 mm before it".into());
     header.extend(radius_names(facts, index));
@@ -363,8 +372,11 @@ fn turn_table(
             false => crystals[index].orientation.tilt = turn,
         }
         let mut row = vec![deg(turn.si(), 2)];
-        if let Some(reading) = stage.and_then(|s| s.reading(turn)) {
+        if let Some(reading) = scale.and_then(|s| s.reading(turn)) {
             row.push(format!("{} deg", fixed(reading.degrees(), 2)));
+        }
+        if let Some(turns) = screw.and_then(|s| s.turns(turn)) {
+            row.push(format!("{} turns", signed(turns, 2)));
         }
         row.push(spot_words(&crystals[index], Length::metres(1.0)));
         row.extend(radii(facts, &crystals, index)?);

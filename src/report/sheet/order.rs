@@ -1,14 +1,15 @@
 //! The order sheet: what the maker of a crystal must know.
 
-use super::facts::{Facts, deg, nm, plain_deg, same_order, side_words};
+use super::facts::{Facts, deg, lean_words, nm, plain_deg, same_order};
 use super::mount::which;
 use super::page::{Block, Page};
-use crate::frame::{Direction, Lab, Mount, Orientation};
+use super::trouble::missing;
+use crate::frame::{Direction, Orientation};
 use crate::job::Setup;
-use crate::matching::{ConesError, Design, Find, Pairing, design, opinions};
+use crate::matching::{ConesError, Design, Find, Pairing, Photons, Target, design, opinions};
 use crate::material::Optic;
 use crate::optics::Crystal;
-use crate::quantity::{Angle, Length, Wavelength};
+use crate::quantity::{Angle, Length, Temperature, Wavelength};
 use crate::report::angles::{fixed, rounded};
 
 /// The sheet of every crystal of the experiment.
@@ -54,22 +55,14 @@ fn one(page: &mut Page, facts: &Facts<'_>, group: &[usize]) {
     page.table(&["item", "specification"], items);
     drawings(page, facts.setup, crystal);
     page.heading("What an error costs");
-    let watched = facts.watched(crystal);
-    if let Some(watched) = watched {
-        page.text(format!(
-            "Computed for {} nominally {}, on a screen at {}. The last column is the turn of the mount (outside) that \
-             brings the angle back.",
-            watched.name(),
-            plain_deg(watched.angle, 3),
-            facts.setup.screen
-        ));
+    error_costs(page, facts, crystal);
+    if crystal.poling.is_some() {
+        page.heading("How sure the period is");
+        page.text(period_spread(facts, crystal));
+    } else {
+        page.heading("How sure the cut is");
+        page.text(spread(facts, crystal));
     }
-    page.table(
-        &["error", "angle becomes", "shift on the screen", "turn that repairs it"],
-        costs(facts, crystal),
-    );
-    page.heading("How sure the cut is");
-    page.text(spread(facts, crystal));
     page.heading("Size, faces and coatings");
     page.table(&["item", "value", "why"], body(facts, crystal, pairing.as_ref()));
     page.heading("Orientation mark");
@@ -173,7 +166,15 @@ fn specification(facts: &Facts<'_>, crystal: &Crystal, pairing: Option<&Pairing>
     {
         rows.push(row2(
             "|d_eff| expected",
-            format!("{} pm/V at the working point", fixed(p.d_eff(&emission, t), 3)),
+            format!(
+                "{} pm/V at the working point{}",
+                fixed(p.d_eff(&emission, t), 3),
+                if crystal.poling.is_some() {
+                    " (of the bulk: a first-order grating leaves 2/pi of it)"
+                } else {
+                    ""
+                }
+            ),
         ));
     }
     rows
@@ -192,54 +193,108 @@ fn drawings(page: &mut Page, setup: &Setup, crystal: &Crystal) {
     };
     let alone = Setup { crystals: vec![upright], ..setup.clone() };
     let none = crate::matching::Cones::default();
-    page.blocks
-        .push(Block::Figure(crate::picture::side(&alone, &none), "twincone picture --view side".into()));
-    page.blocks
-        .push(Block::Figure(crate::picture::front(&alone, &none), "twincone picture --view front".into()));
+    page.blocks.push(Block::Figure(
+        crate::picture::side(&alone, &none),
+        "twincone picture --view side --job job.toml".into(),
+    ));
+    page.blocks.push(Block::Figure(
+        crate::picture::front(&alone, &none),
+        "twincone picture --view front --job job.toml".into(),
+    ));
     page.text(
         "The drawings show the crystal as cut and before tilting: from the side the face normal, the axis Z and the angle theta \
          between them, in the plane that holds both; from the exit face the axes X, Y and Z as they lie across the beam.",
     );
 }
 
-/// What each error does to the angle that is watched.
-fn costs(facts: &Facts<'_>, crystal: &Crystal) -> Vec<Vec<String>> {
-    let Some(watched) = facts.watched(crystal) else { return Vec::new() };
-    let with_theta = |off: f64| {
-        let mut changed = crystal.clone();
-        changed.cut.theta = Angle::radians(crystal.cut.theta.si() + off.to_radians());
-        changed
+/// A crystal or a pump that is not as planned.
+struct Fault {
+    words: String,
+    crystal: Crystal,
+    photons: Photons,
+    /// Whether the mount or the oven may mend it.
+    mended: bool,
+}
+
+/// What each error does to the angle that is watched; where there is no ring, to what is missing for one.
+fn error_costs(page: &mut Page, facts: &Facts<'_>, crystal: &Crystal) {
+    let Some(watched) = facts.watched(crystal) else {
+        page.text(
+            "There is no ring at this setting, so each line says what the best direction misses, or the ring that begins.",
+        );
+        let rows = faults(facts, crystal).into_iter().map(|fault| {
+            let seen = missing(facts, &fault.crystal, fault.photons);
+            vec![fault.words, seen.unwrap_or_else(|_| "beyond the range of the refractive indices".into())]
+        });
+        let rows = rows.collect();
+        page.table(&["error", "what comes of it"], rows);
+        return;
     };
-    let mut rows = Vec::new();
+    let heats = crystal.poling.is_some() && crystal.set().has_thermo_optics();
+    page.text(format!(
+        "Computed for {} nominally {}, on a screen at {}. The last column is the turn of the mount (outside){} that brings the \
+         angle back.",
+        watched.name(),
+        plain_deg(watched.angle, 3),
+        facts.setup.screen,
+        if heats { ", or the temperature of the crystal," } else { "" }
+    ));
+    let rows = faults(facts, crystal).into_iter().map(|fault| {
+        let angle = watched.of(&facts.measure(&fault.crystal, fault.photons));
+        let turn = fault.mended.then(|| facts.repair(&fault.crystal, watched)).flatten();
+        let heat = (fault.mended && heats).then(|| facts.heat(&fault.crystal, watched)).flatten();
+        let mends = [turn.map(|turn| deg(turn, 2)), heat.map(|t| format!("{} degC", fixed(t, 1)))];
+        let mends: Vec<String> = mends.into_iter().flatten().collect();
+        cost(facts, fault.words, watched.angle, angle, &mends.join(" or "))
+    });
+    let rows = rows.collect();
+    let last = if heats { "turn or temperature that repairs it" } else { "turn that repairs it" };
+    page.table(&["error", "angle becomes", "shift on the screen", last], rows);
+}
+
+fn faults(facts: &Facts<'_>, crystal: &Crystal) -> Vec<Fault> {
+    let photons = facts.photons;
+    let mut all = Vec::new();
+    let mut with = |words: String, change: &dyn Fn(&mut Crystal)| {
+        let mut changed = crystal.clone();
+        change(&mut changed);
+        all.push(Fault { words, crystal: changed, photons, mended: true });
+    };
     for off in [0.1, -0.1, 0.25, -0.25, 0.5, -0.5] {
-        let changed = with_theta(off);
-        let repair = facts.repair(&changed, watched);
-        let angle = watched.of(&facts.measure(&changed, facts.photons));
-        rows.push(cost(facts, format!("theta {off:+} deg"), watched.angle, angle, repair));
+        with(format!("theta {off:+} deg"), &|c| {
+            c.cut.theta = Angle::radians(c.cut.theta.si() + f64::to_radians(off))
+        });
     }
     for off in [0.5, -0.5] {
+        let change = |c: &mut Crystal| c.cut.phi = Angle::radians(c.cut.phi.si() + f64::to_radians(off));
         let mut changed = crystal.clone();
-        changed.cut.phi = Angle::radians(crystal.cut.phi.si() + f64::to_radians(off));
-        let angle = watched.of(&facts.measure(&changed, facts.photons));
-        let repair = facts.repair(&changed, watched);
+        change(&mut changed);
         let rate = relative_rate(facts, crystal, &changed)
             .map_or(String::new(), |r| format!(" (pair rate x {})", fixed(r, 3)));
-        rows.push(cost(facts, format!("phi {off:+} deg{rate}"), watched.angle, angle, repair));
+        with(format!("phi {off:+} deg{rate}"), &change);
+    }
+    if let Some(period) = crystal.poling {
+        for off in [0.05, -0.05] {
+            with(format!("period {off:+} um"), &|c| {
+                c.poling = Some(Length::metres(period.si() + off * 1e-6))
+            });
+        }
+        if crystal.set().has_thermo_optics() {
+            for off in [1.0, -1.0, 5.0, -5.0] {
+                with(format!("temperature {off:+} K (your oven, not the maker's)"), &|c| {
+                    c.temperature = Temperature::celsius(c.temperature.degc() + off);
+                });
+            }
+        }
     }
     for off in [1.0, -1.0] {
-        let pump = Wavelength::from_nm(facts.photons.pump.nm() + off);
+        let pump = Wavelength::from_nm(photons.pump.nm() + off);
         let signal = facts.setup.signals.for_pump(pump)[0];
-        let Some(photons) = crate::matching::Photons::new(pump, signal) else { continue };
-        let angle = watched.of(&facts.measure(crystal, photons));
-        rows.push(cost(
-            facts,
-            format!("pump {off:+} nm (your laser, not the maker's)"),
-            watched.angle,
-            angle,
-            None,
-        ));
+        let Some(photons) = Photons::new(pump, signal) else { continue };
+        let words = format!("pump {off:+} nm (your laser, not the maker's)");
+        all.push(Fault { words, crystal: crystal.clone(), photons, mended: false });
     }
-    rows
+    all
 }
 
 /// |d_eff|^2 of a changed crystal over that of the planned one.
@@ -253,13 +308,7 @@ fn relative_rate(facts: &Facts<'_>, planned: &Crystal, changed: &Crystal) -> Opt
     Some((d_eff(changed)? / d_eff(planned)?).powi(2)).filter(|r| r.is_finite())
 }
 
-fn cost(
-    facts: &Facts<'_>,
-    error: String,
-    nominal: f64,
-    angle: Option<f64>,
-    repair: Option<f64>,
-) -> Vec<String> {
+fn cost(facts: &Facts<'_>, error: String, nominal: f64, angle: Option<f64>, repair: &str) -> Vec<String> {
     let shift = |a: f64| {
         let off = facts.setup.screen.mm() * (a.tan() - nominal.tan());
         super::facts::mm(off, 1)
@@ -268,8 +317,50 @@ fn cost(
         error,
         angle.map_or("no ring or no crossing".into(), |a| plain_deg(a, 3)),
         angle.map_or("-".into(), shift),
-        repair.map_or("-".into(), |turn| deg(turn, 2)),
+        if repair.is_empty() { "-".into() } else { repair.into() },
     ]
+}
+
+/// The period that each data set would give for the angle that is watched; without a ring, for pairs along the pump.
+fn period_spread(facts: &Facts<'_>, crystal: &Crystal) -> String {
+    let now = crystal.poling.map_or(f64::NAN, |p| p.um());
+    let ask = |crystal: &Crystal, target: Target| {
+        let question = Design {
+            crystal: crystal.clone(),
+            photons: facts.photons,
+            fixed_signal: facts.setup.signals.fixed(),
+            interaction: facts.setup.interaction,
+            target,
+            find: Find::Poling,
+            phi_given: true,
+        };
+        let all = design(&question).unwrap_or_default();
+        let away = |p: &f64| (p - now).abs();
+        let periods = all.iter().filter_map(|s| s.crystal.poling.map(|p| p.um()));
+        periods.min_by(|a, b| away(a).total_cmp(&away(b)))
+    };
+    let watched = facts.watched(crystal).filter(|w| ask(crystal, w.target()).is_some());
+    let target = watched.map_or(Target::Collinear, super::facts::Watched::target);
+    let what =
+        watched.map_or("pairs along the pump".into(), |w| format!("{} {}", w.name(), plain_deg(w.angle, 3)));
+    let words = |period: Option<f64>| period.map_or("none".into(), |p| format!("{} um", fixed(p, 3)));
+    let others = opinions(crystal, &facts.photons, |other| ask(other, target));
+    let told: Vec<String> = others
+        .iter()
+        .filter_map(|o| Some(format!("{} {}", o.dataset, words(*o.answer.as_ref().ok()?))))
+        .collect();
+    let others = if told.is_empty() {
+        "no other set covers these wavelengths, so nothing says how sure it is".into()
+    } else {
+        format!("others: {}", told.join(", "))
+    };
+    format!(
+        "For {what} at {} the published refractive indices give these periods: {} {}; {others}. Where they differ by more than the \
+         oven mends (see the lines of period and temperature above), order several periods side by side on one piece.",
+        crystal.temperature,
+        crystal.set().id,
+        words(ask(crystal, target))
+    )
 }
 
 /// The cut that each data set would give for the same geometry at normal incidence.
@@ -309,6 +400,16 @@ fn spread(facts: &Facts<'_>, crystal: &Crystal) -> String {
             }))
         })
         .collect();
+    let tilted =
+        own.filter(|t| (t - sought(crystal)).abs() > f64::to_radians(5e-3)).map_or(String::new(), |_| {
+            let o = &crystal.orientation;
+            format!(
+                " The cut ordered above, {} deg, is another one: it is used at tilt {}, cross tilt {}.",
+                fixed(sought(crystal).to_degrees(), 2),
+                deg(o.tilt.si(), 3),
+                deg(o.cross_tilt.si(), 3)
+            )
+        });
     let own = own.map_or("none".into(), |t| format!("{} deg", fixed(t.to_degrees(), 3)));
     let others = if told.is_empty() {
         "no other set covers these wavelengths, so nothing says how sure it is".into()
@@ -317,7 +418,7 @@ fn spread(facts: &Facts<'_>, crystal: &Crystal) -> String {
     };
     format!(
         "For {} {} at normal incidence the published refractive indices give these cuts ({}): {} {own}; {others}. Order a cut \
-         from which tilting reaches the whole range.",
+         from which tilting reaches the whole range.{tilted}",
         watched.name(),
         plain_deg(watched.angle, 3),
         if find == Find::Phi { "phi" } else { "theta" },
@@ -410,6 +511,11 @@ fn coating(facts: &Facts<'_>, crystal: &Crystal, pairing: Option<&Pairing>) -> V
         .filter_map(|r| r.ring.as_ref().ok())
         .fold(0.0, |m: f64, ring| m.max(ring.axis.polar_deg() + ring.largest.to_degrees()));
     let incidence = (largest + crystal.orientation.tilt.degrees().abs()).ceil();
+    let angles = if incidence == 0.0 {
+        "normal incidence".to_string()
+    } else {
+        format!("angles of incidence 0 to {incidence} deg")
+    };
     let loss = |wave: Option<f64>, w: Wavelength| {
         wave.map(|k| {
             let n = k / w.wavenumber();
@@ -426,7 +532,7 @@ fn coating(facts: &Facts<'_>, crystal: &Crystal, pairing: Option<&Pairing>) -> V
     vec![
         "coating".into(),
         format!(
-            "antireflection on both faces for {}, angles of incidence 0 to {incidence} deg; ask for the curve",
+            "antireflection on both faces for {}, {angles}; ask for the curve",
             wavelengths.join(" and ")
         ),
         format!("each bare face reflects {}", bare.join(", ")),
@@ -434,17 +540,18 @@ fn coating(facts: &Facts<'_>, crystal: &Crystal, pairing: Option<&Pairing>) -> V
 }
 
 fn mark(crystal: &Crystal) -> Vec<String> {
-    let placement = Crystal { orientation: Orientation::default(), ..crystal.clone() }.placement();
-    let z = placement.dielectric_axes().column(2).into_owned();
-    let Lab(lean) = placement.to_lab(Mount(if z.z < 0.0 { -z } else { z }));
+    let upright = Crystal { orientation: Orientation::default(), ..crystal.clone() };
+    let leans = lean_words(&upright);
+    let by_x = leans.iter().any(|words| words.contains("end of X"));
     let mut lines = vec![
         "Mark on a side face, parallel to the plane of Z and the face normal: a line along the projection of Z, and an arrow from the input to the output face.".into(),
-        "Say which face is the input, and to which side the end of Z that points to the output leans.".into(),
+        format!(
+            "Say which face is the input, and to which side the end of {} that points to the output leans{}.",
+            if by_x { "X" } else { "Z" },
+            if by_x { ": mark it too, for the line of Z and the arrow fit two mountings that are not alike" } else { "" }
+        ),
     ];
-    lines.push(format!(
-        "As this job mounts it at roll 0, that end leans {}, looking along the beam.",
-        side_words(nalgebra::Vector3::new(lean.x, lean.y, 0.0))
-    ));
+    lines.extend(leans.iter().map(|words| format!("As this job mounts it at roll 0, {words}.")));
     lines
 }
 

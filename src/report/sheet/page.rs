@@ -90,8 +90,14 @@ impl Page {
                     out.push('\n');
                 }
                 Block::Figure(_, command) => {
-                    let _ =
-                        writeln!(out, "Drawing: `{command}` (it stands in the HTML form of this sheet)\n");
+                    let line = format!("Drawing: `{command}` ");
+                    // drawings of several crystals come of one command
+                    if !out.contains(&line) {
+                        let _ = writeln!(
+                            out,
+                            "{line}(it stands in the HTML form of this sheet; job.toml is the job at its end)\n"
+                        );
+                    }
                 }
                 Block::Verbatim(text) => {
                     let _ = writeln!(out, "```toml\n{}\n```\n", text.trim_end());

@@ -1,13 +1,14 @@
 //! What is seen if something is wrong, what to check then, and the test that decides.
 
-use super::facts::{Facts, deg, mm, plain_deg, ring_name, rings, same_order};
+use super::facts::{Facts, capital, deg, mm, plain_deg, ring_name, rings, same_order};
 use super::mount::{spot_per_turn, which};
 use super::page::Page;
 use crate::frame::Reversal;
 use crate::matching::{Actuator, Cones, ConesError, Photons, Want, cones, phase_matching_factor};
 use crate::optics::Crystal;
+use crate::picture::taken;
 use crate::quantity::{Angle, Temperature, Wavelength};
-use crate::report::angles::fixed;
+use crate::report::angles::{fixed, signed};
 use crate::report::{darkness, room_words};
 
 /// The part of the bench sheet.
@@ -16,8 +17,10 @@ use crate::report::{darkness, room_words};
 /// Indices that are not to be had.
 pub(super) fn trouble(page: &mut Page, facts: &Facts<'_>) -> Result<(), ConesError> {
     page.heading("If something is wrong");
-    let rows = [no_light(facts)?, wrong_size(facts)?, wrong_side(facts)?, no_coincidences(facts)];
-    page.table(&["what is seen", "likely, in this order", "the test that decides"], rows.into());
+    let mut rows = vec![no_light(facts)?, wrong_size(facts)?];
+    rows.extend(wrong_side(facts)?);
+    rows.push(no_coincidences(facts));
+    page.table(&["what is seen", "likely, in this order", "the test that decides"], rows);
     page.heading("What moves the rings");
     page.text(format!(
         "A turn by 0.1 deg moves the reflected spot by {} mm on a card 1000 mm before the crystal, by 0.5 deg {} mm, by 1 deg {} mm.",
@@ -64,19 +67,19 @@ fn alike(a: &Crystal, b: &Crystal) -> bool {
         && a.orientation.cross_tilt == b.orientation.cross_tilt
 }
 
-fn capital(text: &str) -> String {
-    let mut letters = text.chars();
-    letters.next().map_or(String::new(), |first| first.to_uppercase().chain(letters).collect())
-}
-
 fn no_light(facts: &Facts<'_>) -> Result<Vec<String>, ConesError> {
     let setup = facts.setup;
     let mut likely = String::from(
-        "pump polarization a quarter turn off; crystal rolled by 90 deg; a turn of the wrong sense; cut at the wrong phi; filter centred elsewhere, or a filter in the camera that stops the infrared",
+        "a turn of the wrong sense; cut at the wrong phi; filter centred elsewhere, or a filter in the camera that stops the infrared",
     );
-    let mut test = String::from(
-        "Turn the pump's half-wave plate: light from pairs rises and falls as sin^2 of twice the plate's angle, background does not.",
-    );
+    let mut test = match apart(facts) {
+        // sum of cos^2 of the field's angles from directions that differ is nowhere zero
+        Some(words) => words,
+        None => {
+            likely.insert_str(0, "pump polarization a quarter turn off; crystal rolled by 90 deg; ");
+            "Turn the pump's half-wave plate: light from pairs rises and falls as sin^2 of twice the plate's angle, background does not.".into()
+        }
+    };
     let cross = facts.tuning(&setup.crystals[0]) == Actuator::CrossTilt;
     let (key, turn) = match cross {
         true => ("cross tilt", setup.crystals[0].orientation.cross_tilt),
@@ -98,6 +101,49 @@ fn no_light(facts: &Facts<'_>) -> Result<Vec<String>, ConesError> {
         likely.insert_str(0, &format!("{dark} Else: "));
     }
     Ok(vec!["no light above background".into(), likely, test])
+}
+
+/// Crystals that take different polarizations of the pump: no turn of its half-wave plate darkens all of them, so what it does
+/// to each. `None` where they take the same one.
+fn apart(facts: &Facts<'_>) -> Option<String> {
+    let setup = facts.setup;
+    let axes: Vec<f64> = setup.crystals.iter().filter_map(|c| taken(setup, c)).map(f64::to_degrees).collect();
+    let differ = |a: f64, b: f64| {
+        let off = (a - b).rem_euclid(180.0);
+        off.min(180.0 - off)
+    };
+    let first = *axes.first()?;
+    let other = axes.iter().map(|a| differ(*a, first)).fold(0.0, f64::max);
+    if other < 1.0 {
+        return None;
+    }
+    // rings of one field per crystal are parted by a polarizer
+    let field = |index: usize| {
+        let own: Vec<f64> =
+            facts.cones.rings.iter().filter(|r| r.crystal == index).filter_map(|r| r.field_azimuth).collect();
+        let one = *own.first()?;
+        own.iter().all(|a| differ(*a, one) < 1.0).then_some(one)
+    };
+    let fields: Vec<Option<f64>> = (0..setup.crystals.len()).map(field).collect();
+    let parted = fields[0]
+        .filter(|a| fields[1..].iter().all(|b| b.is_some_and(|b| (differ(*a, b) - 90.0).abs() < 1.0)));
+    let alone = match parted {
+        Some(azimuth) => format!(
+            "Put a polarizer before the camera, its axis at {} deg from +x towards +y: it passes the pairs of {} alone",
+            fixed(azimuth, 1),
+            which(setup, 0)
+        ),
+        None => format!("Leave {} alone in the beam", which(setup, 0)),
+    };
+    let whole = if setup.crystals.len() == 2 && (other - 90.0).abs() < 1.0 {
+        "the light of one crystal falls as that of the other grows; of equal crystals the sum stays the same"
+    } else {
+        "it is dark at no setting, since the crystals take different polarizations"
+    };
+    Some(format!(
+        "Turning the pump's half-wave plate does not tell by itself: {whole}. {alone}, and these rise and fall as sin^2 of twice the \
+         plate's angle, background does not."
+    ))
 }
 
 fn wrong_size(facts: &Facts<'_>) -> Result<Vec<String>, ConesError> {
@@ -126,57 +172,89 @@ fn at_pump(facts: &Facts<'_>, pump: Wavelength) -> Result<Cones, ConesError> {
     cones(&setup.crystals, pump, &setup.signals.for_pump(pump), setup.interaction, Want::Rings)
 }
 
-fn wrong_side(facts: &Facts<'_>) -> Result<Vec<String>, ConesError> {
+/// What tells a crystal that is turned round; nothing where neither its ring nor a turn tells.
+fn wrong_side(facts: &Facts<'_>) -> Result<Option<Vec<String>>, ConesError> {
     let setup = facts.setup;
     let mut crystals = setup.crystals.clone();
     crystals[0].reversal = match crystals[0].reversal {
         Reversal::None | Reversal::AboutVertical => Reversal::AboutBeam,
         Reversal::AboutBeam | Reversal::AboutHorizontal => Reversal::None,
     };
+    let Some(first) = facts.cones.rings.first().and_then(|r| r.ring.as_ref().ok()) else { return Ok(None) };
     let other = rings(setup, &crystals)?;
     let place = |cones: &Cones| {
         let ring = cones.rings.first().and_then(|r| r.ring.as_ref().ok().map(|ring| (r, ring)));
         ring.map_or("no ring".into(), |(row, ring)| {
-            let c = ring.circle().0 * setup.screen.mm();
-            format!("{} centred at x {}, y {}", ring_name(setup, row), mm(c.x, 1), mm(c.y, 1))
+            let (c, r) = ring.circle();
+            let (c, r) = (c * setup.screen.mm(), r * setup.screen.mm());
+            format!(
+                "{} of radius {} mm, centred at x {}, y {}",
+                ring_name(setup, row),
+                fixed(r, 1),
+                mm(c.x, 1),
+                mm(c.y, 1)
+            )
         })
     };
+    let centred = first.circle().0.norm() < 0.01 * first.circle().1;
+    let (planned, turned) = (place(&facts.cones), place(&other));
     let crystal = &setup.crystals[0];
-    let (actuator, half) = growing(facts, crystal);
-    let first = facts.cones.rings.first().and_then(|r| r.ring.as_ref().ok());
-    let centred = first.is_none_or(|ring| ring.circle().0.norm() < 0.01 * ring.circle().1);
-    Ok(vec![
-        if centred {
-            "rings that shrink when they should grow".into()
-        } else {
-            "the e ring on the wrong side, or rings that shrink when they should grow".into()
-        },
-        format!(
-            "crystal turned by half a turn about the beam, or other face first with Z up. As planned: {}; turned about the beam: {}",
-            place(&facts.cones),
-            place(&other)
-        ),
-        format!(
+    let turn = telling_turn(facts, crystal, &crystals[0]);
+    if turn.is_none() && planned == turned {
+        return Ok(None);
+    }
+    let rings = if planned == turned {
+        "The ring of this setting is the same both ways; only a turn tells.".into()
+    } else {
+        format!("As planned: {planned}; turned about the beam: {turned}.")
+    };
+    let test = match turn {
+        Some((actuator, half)) => format!(
             "{} by 0.5 deg: the rings must grow. Turned round, they shrink or vanish: turn the crystal by half a turn about the beam.",
             capital(&room_words(crystal, actuator, half).replace(" by 0.5 deg", ""))
         ),
-    ])
+        None => {
+            "Compare the ring with both; a turn does not tell, since it changes the ring alike either way."
+                .into()
+        }
+    };
+    let seen = match (centred, turn.is_some()) {
+        (true, true) => "rings that shrink when they should grow",
+        (true, false) => "a ring of the other size",
+        (false, true) => "the e ring on the wrong side, or rings that shrink when they should grow",
+        (false, false) => "a ring on the wrong side",
+    };
+    Ok(Some(vec![
+        seen.into(),
+        format!(
+            "crystal turned by half a turn about the beam, or other face first so that its mark leans to the opposite side. {rings}"
+        ),
+        test,
+    ]))
 }
 
-/// The turn by half a degree of which the watched angle grows; more of the tuning turn where there is none.
-fn growing(facts: &Facts<'_>, crystal: &Crystal) -> (Actuator, Angle) {
+/// The turn by half a degree of which the ring grows and its opposite shrinks, while for the crystal that is turned round it
+/// is the other way; none where the turn cannot tell.
+fn telling_turn(facts: &Facts<'_>, crystal: &Crystal, round: &Crystal) -> Option<(Actuator, Angle)> {
     let actuator = facts.tuning(crystal);
+    let cross = actuator == Actuator::CrossTilt;
     let half = |sign: f64| Angle::from_degrees(0.5 * sign);
-    let reach = |sign: f64| {
+    let size = |crystal: &Crystal, sign: f64| {
         let mut turned = crystal.clone();
-        let cross = actuator == Actuator::CrossTilt;
         let turn = if cross { &mut turned.orientation.cross_tilt } else { &mut turned.orientation.tilt };
         *turn = Angle::radians(turn.si() + half(sign).si());
         facts.measure(&turned, facts.photons).half_angle
     };
-    let less = reach(-1.0).zip(reach(1.0)).is_some_and(|(less, more)| less > more);
-    let only_less = reach(1.0).is_none() && reach(-1.0).is_some();
-    (actuator, half(if less || only_less { -1.0 } else { 1.0 }))
+    let now = size(crystal, 0.0)?;
+    // a ring that vanishes has shrunk; a hundredth of its size is not seen
+    let grows = |sign: f64| size(crystal, sign).is_some_and(|a| a > 1.01 * now);
+    let shrinks = |sign: f64| size(crystal, sign).is_none_or(|a| a < 0.99 * now);
+    let sign = [1.0, -1.0].into_iter().find(|sign| grows(*sign) && shrinks(-sign))?;
+    // the mount's turn is the same, however the crystal sits in it
+    let before = size(round, 0.0);
+    let after = size(round, sign);
+    let told = before.is_none_or(|before| after.is_none_or(|after| after < 0.99 * before));
+    told.then_some((actuator, half(sign)))
 }
 
 fn no_coincidences(facts: &Facts<'_>) -> Vec<String> {
@@ -221,7 +299,10 @@ fn movers(facts: &Facts<'_>, crystal: &Crystal) -> Result<Vec<Vec<String>>, Cone
             *turn = Angle::radians(turn.si() + f64::to_radians(off));
             let way = room_words(crystal, actuator, Angle::from_degrees(off));
             let key = if cross { "cross tilt" } else { "tilt" };
-            rows.push(vec![format!("{key} {off:+} deg: {way}"), effect(&turned, facts.photons)?]);
+            let stage = setup.stage.filter(|_| !cross && std::ptr::eq(crystal, &raw const setup.crystals[0]));
+            let turns = stage.and_then(|s| s.turns(Angle::from_degrees(off)));
+            let turns = turns.map_or(String::new(), |t| format!(" ({} turns of the screw)", signed(t, 2)));
+            rows.push(vec![format!("{key} {off:+} deg: {way}{turns}"), effect(&turned, facts.photons)?]);
         }
     }
     if crystal.set().has_thermo_optics() {
@@ -250,7 +331,7 @@ fn movers(facts: &Facts<'_>, crystal: &Crystal) -> Result<Vec<Vec<String>>, Cone
 }
 
 /// The first ring of a crystal, or by how much its best direction misses.
-fn missing(facts: &Facts<'_>, crystal: &Crystal, photons: Photons) -> Result<String, ConesError> {
+pub(super) fn missing(facts: &Facts<'_>, crystal: &Crystal, photons: Photons) -> Result<String, ConesError> {
     let interaction = facts.setup.interaction;
     let found =
         cones(std::slice::from_ref(crystal), photons.pump, &[photons.signal], interaction, Want::Rings)?;
