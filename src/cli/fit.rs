@@ -243,7 +243,6 @@ fn answer(
     let views = other_views(question, fitted, known);
     let datasets = if args.all_datasets { other_datasets(question, fitted) } else { Vec::new() };
     let kept = kept(question, fitted);
-    args.experiment.write_job(&kept)?;
     let doubts = doubts(question, fitted);
     let target = args.target.target()?.or(question.setup.cut[0].target);
     // with several crystals no one turn is the answer
@@ -254,7 +253,9 @@ fn answer(
     if !args.image.image.is_empty() {
         conventions.uses(&["filter"]);
     }
-    if !finding.holds() {
+    if finding.holds() {
+        args.experiment.write_job(&kept)?;
+    } else {
         conventions.warnings.push("no fit: see the text of the answer".into());
     }
     let answer = Answer {

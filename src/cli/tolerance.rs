@@ -175,11 +175,14 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
             .map_err(|e| Failure::file("write", &path.display().to_string(), &e))?;
     }
     let advice = advise(&bench, &parts, &samples)?;
+    let all = chances(&samples, limit.si());
     let shifted = match advice.shift_theta {
-        Some(shift) => Some(output.on_threads(|| ordered_otherwise(&bench, &draw, shift, limit.si()))??),
+        // another theta may lie where no such light is at all
+        Some(shift) => output.on_threads(|| ordered_otherwise(&bench, &draw, shift, limit.si()))?.ok(),
         None => None,
     };
-    let all = chances(&samples, limit.si());
+    let shifted = shifted.filter(|other| other.dark < all.dark);
+    let solved = bench.turn.is_some();
     let finding = Finding {
         bench: &bench,
         errors: &errors,
@@ -200,7 +203,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         text: text(&setup, &finding),
         conventions,
         job: resolved_job(&setup),
-        solved: true,
+        solved,
     };
     output.outcome(&answer, None)
 }

@@ -129,6 +129,17 @@ impl Fitted {
     pub fn reduced(&self) -> Option<f64> {
         (self.freedom > 0.5).then(|| self.chi_square / self.freedom)
     }
+
+    /// Median of the squared pulls in units of what it is for normal errors, 0.6745^2: outliers, if they are few, do not
+    /// move it. `None` without measurements.
+    #[must_use]
+    pub fn typical(&self) -> Option<f64> {
+        const NORMAL: f64 = 0.6745 * 0.6745;
+        let pull = |r: &Residual| ((r.measured - r.fitted) / r.sigma).powi(2);
+        let mut pulls: Vec<f64> = self.residuals.iter().map(pull).collect();
+        pulls.sort_by(f64::total_cmp);
+        pulls.get(pulls.len() / 2).map(|median| median / NORMAL)
+    }
 }
 
 /// Fits. Measurements without a stated uncertainty get one from their scatter, with which the fit is made again: priors

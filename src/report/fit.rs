@@ -70,7 +70,10 @@ impl Finding<'_> {
     pub fn holds(&self) -> bool {
         let fitted = self.fitted;
         // of what was assumed, no more than of what was stated
+        let typical = fitted.typical().is_none_or(|typical| typical < 30.0);
         let described = match fitted.scatter {
+            // outliers that a robust fit was asked to bear with
+            _ if self.question.robust => typical,
             Some(scatter) => scatter * scatter < 30.0,
             None => fitted.reduced().is_none_or(|r| r < 30.0),
         };

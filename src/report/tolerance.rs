@@ -183,8 +183,9 @@ impl Line {
             .collect();
         let range = |f: fn(&Self) -> [Option<f64>; 2]| {
             let each = || lines.iter().map(|line| f(line)[0]);
+            // a set that has none is the least of all
             let least = each().try_fold(f64::INFINITY, |a, b| b.map(|b| a.min(b)));
-            [least, each().try_fold(f64::NEG_INFINITY, |a, b| b.map(|b| a.max(b)))]
+            [least, each().flatten().reduce(f64::max)]
         };
         let most = |f: fn(&Self) -> Option<f64>| {
             lines.iter().map(f).try_fold(f64::NEG_INFINITY, |a, b| b.map(|b| a.max(b)))
@@ -390,12 +391,17 @@ pub fn text(setup: &Setup, finding: &Finding<'_>) -> String {
     out.push_str(&format!(
         "\nOne error at a time, at both ends (degrees outside the crystal; re-tilt by {turn} from the setting)\n"
     ));
+    out.push_str(&prose(
+        "(shift: the most that rings and crossings move; left over: the most that light is off its place after the re-tilt)\n",
+    ));
     let crossings = bench.target.needs_two_rings();
+    let rings = bench.ring_polarizations().unwrap_or_default();
+    let half_angle = rings.first().map_or_else(|| "half angle".into(), |ring| format!("{ring} half angle"));
     let header = [
         "contribution",
         "error",
         "crossing",
-        "half angle",
+        &half_angle,
         "shift mm",
         "re-tilt",
         "left over",
@@ -408,7 +414,6 @@ pub fn text(setup: &Setup, finding: &Finding<'_>) -> String {
         "\nHow far each moves at minus .. plus the error (a ring: its middle and, on top, its radius; over data sets least \
          .. most)\n",
     );
-    let rings = bench.ring_polarizations().unwrap_or_default();
     let mut moving: Vec<usize> = (0..rings.len()).collect();
     let mut header = vec!["contribution".to_string()];
     for name in &rings {
@@ -478,6 +483,12 @@ fn percent(share: f64) -> String {
 fn suggestions(finding: &Finding<'_>) -> String {
     let Finding { advice, bench, chances, .. } = finding;
     let mut out = String::from("\n");
+    if bench.turn.is_none() {
+        out.push_str(
+            "No turn brings this crystal to the target, so no tolerance helps: `twincone cut` says which cut has it.\n",
+        );
+        return out;
+    }
     if let Some((cause, turn)) = advice.most_turn.filter(|(_, t)| *t > 1e-4) {
         out.push_str(&format!(
             "Most of the turning is asked for by {}: {} deg. ",
@@ -519,6 +530,9 @@ fn suggestions(finding: &Finding<'_>) -> String {
                     Angle::radians(t[2])
                 ))
             ));
+        }
+        _ if advice.shift_theta.is_some() => {
+            out.push_str("Another theta would not leave fewer samples dark.\n");
         }
         _ => out.push_str("No need to order the cut high or low: nearly every sample shows light at once.\n"),
     }
