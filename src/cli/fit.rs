@@ -37,7 +37,7 @@ pub struct Args {
     #[arg(long, value_name = "KEY=LIMIT")]
     prior: Vec<String>,
     /// Standard deviation of measurements whose line states none, in mm or deg
-    #[arg(long, value_name = "SIZE")]
+    #[arg(long, value_name = "SIZE", allow_hyphen_values = true)]
     sigma: Option<String>,
     /// By how much the picture is turned
     #[arg(long, value_enum, value_name = "DEG")]

@@ -33,7 +33,7 @@ pub struct Args {
     #[arg(long, value_name = "S", default_value = "1")]
     seed: u64,
     /// Furthest turn of the mount from its setting
-    #[arg(long, value_name = "ANGLE", default_value = "3deg")]
+    #[arg(long, value_name = "ANGLE", allow_hyphen_values = true, default_value = "3deg")]
     tilt_limit: String,
     /// Combine errors with the crystal's own data set alone
     #[arg(long)]
@@ -58,28 +58,28 @@ enum Meant {
 #[command(next_help_heading = "Errors, to both sides")]
 pub struct ErrorArgs {
     /// Of the cut's theta [default: 0.5 deg]
-    #[arg(long, value_name = "ANGLE")]
+    #[arg(long, value_name = "ANGLE", allow_hyphen_values = true)]
     theta_error: Option<String>,
     /// Of the cut's phi [default: 0.5 deg]
-    #[arg(long, value_name = "ANGLE")]
+    #[arg(long, value_name = "ANGLE", allow_hyphen_values = true)]
     phi_error: Option<String>,
     /// Of the pump's wavelength [default: 2 nm]
-    #[arg(long, value_name = "LENGTH")]
+    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
     pump_error: Option<String>,
     /// Of the crystal's temperature, such as 2K [default: 2 K, 0 where the data set has one temperature]
-    #[arg(long, value_name = "KELVIN")]
+    #[arg(long, value_name = "KELVIN", allow_hyphen_values = true)]
     temperature_error: Option<String>,
     /// Of the tilt's setting [default: 0.1 deg]
-    #[arg(long, value_name = "ANGLE")]
+    #[arg(long, value_name = "ANGLE", allow_hyphen_values = true)]
     tilt_error: Option<String>,
     /// Of the crystal's roll [default: 1 deg]
-    #[arg(long, value_name = "ANGLE")]
+    #[arg(long, value_name = "ANGLE", allow_hyphen_values = true)]
     roll_error: Option<String>,
     /// Of the crystal's length [default: 0.1 mm]
-    #[arg(long, value_name = "LENGTH")]
+    #[arg(long, value_name = "LENGTH", allow_hyphen_values = true)]
     length_error: Option<String>,
     /// Of the pump's direction, horizontally and vertically [default: 0.05 deg]
-    #[arg(long, value_name = "ANGLE")]
+    #[arg(long, value_name = "ANGLE", allow_hyphen_values = true)]
     pump_direction_error: Option<String>,
 }
 
@@ -157,6 +157,9 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     args.experiment.write_job(&setup)?;
     let errors = args.errors.errors(&setup)?;
     let limit: Angle = args.tilt_limit.parse().map_err(|e| Failure::usage(format!("--tilt-limit: {e}")))?;
+    if limit.si() < 0.0 {
+        return Err(Failure::usage("--tilt-limit: a limit is a size from 0 up; it acts to both sides"));
+    }
     let bench = Bench::new(&question, setup.screen)?;
     let parts = contributions(&bench, &errors)?;
     let draw = Draw {

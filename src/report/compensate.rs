@@ -69,6 +69,13 @@ pub fn text(answers: &Answers, rules: &[Proposal]) -> String {
         proposal.plates.iter().for_each(|designed| out.push_str(&prose(&mounting(designed))));
         out.push('\n');
     }
+    if answers.proposals.iter().all(|proposal| proposal.after < proposal.before) {
+        out.push_str(&prose(
+            "None of these plates is better than no plate: leave them out, or allow other materials, narrower filters or \
+             smaller irises.",
+        ));
+        out.push('\n');
+    }
     if answers.proposals.iter().any(|proposal| proposal.status == Status::NotConverged) {
         out.push_str(&prose(
             "Not converged: some of these visibilities may be far off, because the state turns too fast over the \
@@ -90,7 +97,9 @@ pub fn text(answers: &Answers, rules: &[Proposal]) -> String {
         )));
     }
     out.push_str(&prose(
-        "Plates stand across the beam; roll is counted from lab x (made perpendicular to the arm) and lays u, towards \
+        "Delay is that of the first history's wave in the plate minus that of the second's; the phase left is that of \
+         the nearest Bell state in the basis of the histories, as `twincone state` gives it; +1 %, -1 % and +1 deg are what visibility changes by for a thicker or thinner plate and \
+         for roll. Plates stand across the beam; roll is counted from lab x (made perpendicular to the arm) and lays u, towards \
          which Z leans, at that azimuth. Visibility is that between diagonal polarizers in the basis of the two \
          histories, the phase set for the best. A half-wave plate at 45 deg in one arm exchanges H and V there and so \
          makes |HV>, |VH> of |HH>, |VV>: with the two phases below all four Bell states are in reach.",

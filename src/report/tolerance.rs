@@ -397,16 +397,8 @@ pub fn text(setup: &Setup, finding: &Finding<'_>) -> String {
     let crossings = bench.target.needs_two_rings();
     let rings = bench.ring_polarizations().unwrap_or_default();
     let half_angle = rings.first().map_or_else(|| "half angle".into(), |ring| format!("{ring} half angle"));
-    let header = [
-        "contribution",
-        "error",
-        "crossing",
-        &half_angle,
-        "shift mm",
-        "re-tilt",
-        "left over",
-        "sensitivity",
-    ];
+    let header =
+        ["contribution", "error", "crossing", &half_angle, "shift mm", "re-tilt", "left over", "sensitivity"];
     let all = lines(finding);
     let rows: Vec<Vec<String>> = all.iter().map(|line| line.words(crossings)).collect();
     out.push_str(&grid(&header, &rows));

@@ -258,7 +258,10 @@ fn the_order_of_a_poled_crystal_is_about_its_period() {
     let dark = twincone(job).answer();
     let hot = twincone(&format!("{job} --temperature 50degC")).answer();
     for sheet in [&dark, &hot] {
-        assert_says(sheet, &["| period +0.05 um |", "| temperature +5 K", "leaves 2/pi of it", "kato-2002", "kato-1991"]);
+        assert_says(
+            sheet,
+            &["| period +0.05 um |", "| temperature +5 K", "leaves 2/pi of it", "kato-2002", "kato-1991"],
+        );
         assert!(!sheet.contains("How sure the cut is"), "{sheet}");
     }
     // as `cut --find poling` at this temperature
