@@ -169,8 +169,7 @@ fn tracks(
             let start = emission((&crystal, by_phi), photons, &triplet, 0.5);
             for roles in start.wanted(&crystal, interaction).map_err(ConesError::Description)? {
                 for target in targets {
-                    let stop =
-                        Stop { place, photons, triplet: triplet.clone(), process: start.process(roles) };
+                    let stop = Stop { place, photons, triplet, process: start.process(roles) };
                     let own = all[first..].iter_mut().find(|t| t.roles == roles && t.target == target);
                     match own {
                         Some(track) => track.stops.push(stop),
