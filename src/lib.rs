@@ -23,6 +23,7 @@
 //! | [`sweep`] | a report at every point of a grid of settings |
 //! | [`tolerance`] | what errors cost, and whether turning repairs it |
 
+pub(crate) mod columns;
 pub mod fit;
 pub mod frame;
 pub mod job;

@@ -179,13 +179,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
     }
     let advice = advise(&bench, &parts, &samples)?;
     let all = chances(&samples, limit.si());
-    let shifted = match advice.shift_theta {
-        // another theta may lie where no such light is at all
-        Some(shift) => output.on_threads(|| ordered_otherwise(&bench, &draw, shift, limit.si()))?.ok(),
-        None => None,
-    };
-    let shifted = shifted.filter(|other| other.dark < all.dark);
-    let solved = bench.turn.is_some();
+    let shifted = output.on_threads(|| ordered_otherwise(&bench, &draw, &advice, &all, limit.si()))?;
     let finding = Finding {
         bench: &bench,
         errors: &errors,
@@ -206,7 +200,7 @@ pub fn run(args: &Args, output: &OutputArgs) -> Result<Outcome, Failure> {
         text: text(&setup, &finding),
         conventions,
         job: resolved_job(&setup),
-        solved,
+        solved: bench.turn.is_some(),
     };
     output.outcome(&answer, None)
 }

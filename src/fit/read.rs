@@ -6,6 +6,7 @@ use nalgebra::Vector2;
 use thiserror::Error;
 
 use super::measured::{Label, Measurement, Seen, Settings};
+use crate::columns::Columns;
 use crate::matching::Landing;
 use crate::optics::Polarization;
 use crate::quantity::Wavelength;
@@ -115,35 +116,15 @@ const MEASURED: [&str; 16] = [
 /// # Errors
 /// What cannot be read, with its line; a table without measurements.
 pub fn read(text: &str, crystals: &[String]) -> Result<Vec<Measurement>, FileError> {
-    let text = text.trim_start_matches('\u{feff}');
-    let header =
-        text.lines().find(|line| !line.trim().is_empty() && !line.starts_with('#')).unwrap_or_default();
-    let delimiter = match (header.contains(';'), header.contains('\t')) {
-        (true, _) => b';',
-        (_, true) => b'\t',
-        _ => b',',
-    };
-    let mut reader = csv::ReaderBuilder::new()
-        .delimiter(delimiter)
-        .comment(Some(b'#'))
-        .trim(csv::Trim::All)
-        .from_reader(text.as_bytes());
-    let unreadable = |e: csv::Error| FileError(format!("the table cannot be read: {e}"));
-    let names: Vec<String> =
-        reader.headers().map_err(unreadable)?.iter().map(str::to_ascii_lowercase).collect();
+    let mut table = Columns::open(text).map_err(FileError)?;
+    let names = std::mem::take(&mut table.names);
+    let decimal_comma = table.decimal_comma;
     check_names(&names)?;
     let mut all = Vec::new();
-    for record in reader.records() {
-        let record = record.map_err(|e| match e.kind() {
-            csv::ErrorKind::UnequalLengths { pos, expected_len, len } => FileError(format!(
-                "line {}: {len} cells where the first line names {expected_len} columns",
-                pos.as_ref().map_or(0, csv::Position::line)
-            )),
-            _ => unreadable(e),
-        })?;
-        let line = record.position().map_or(0, |p| p.line() as usize);
+    for record in table.records() {
+        let (line, record) = record.map_err(FileError)?;
         let cells = names.iter().map(String::as_str).zip(record.iter().map(String::from)).collect();
-        let row = Row { line, crystals, cells, decimal_comma: delimiter != b',' };
+        let row = Row { line, crystals, cells, decimal_comma };
         measurements(&row, &mut all)?;
     }
     if all.is_empty() {

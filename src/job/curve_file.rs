@@ -1,5 +1,6 @@
 //! Curves over wavelength from files: traces of filters, spectra of pumps.
 
+use crate::columns::Columns;
 use crate::pairs::Trace;
 
 /// What the second column is.
@@ -31,22 +32,9 @@ impl Curve {
 /// # Errors
 /// What cannot be read, with its line.
 pub(super) fn read(text: &str, curve: Curve) -> Result<Trace, String> {
-    let text = text.trim_start_matches('\u{feff}');
-    let is_content = |line: &&str| !line.trim().is_empty() && !line.starts_with('#');
-    let first = text.lines().find(is_content).unwrap_or_default();
-    let delimiter = match (first.contains(';'), first.contains('\t')) {
-        (true, _) => b';',
-        (_, true) => b'\t',
-        _ => b',',
-    };
-    let mut reader = csv::ReaderBuilder::new()
-        .delimiter(delimiter)
-        .comment(Some(b'#'))
-        .trim(csv::Trim::All)
-        .from_reader(text.as_bytes());
-    let unreadable = |e: csv::Error| format!("the table cannot be read: {e}");
-    let names: Vec<String> =
-        reader.headers().map_err(unreadable)?.iter().map(str::to_ascii_lowercase).collect();
+    let mut table = Columns::open(text)?;
+    let names = std::mem::take(&mut table.names);
+    let decimal_comma = table.decimal_comma;
     let place = |name: &str| names.iter().position(|own| own == name);
     let wavelengths = [("wavelength_nm", 1e-9), ("wavelength_um", 1e-6)];
     let column =
@@ -56,12 +44,11 @@ pub(super) fn read(text: &str, curve: Curve) -> Result<Trace, String> {
     };
     let mut samples = Vec::new();
     let mut lines = Vec::new();
-    for record in reader.records() {
-        let record = record.map_err(unreadable)?;
-        let line = record.position().map_or(0, csv::Position::line);
+    for record in table.records() {
+        let (line, record) = record?;
         let number = |(index, factor): (usize, f64)| -> Result<f64, String> {
             let cell = record.get(index).unwrap_or_default();
-            let text = if delimiter == b',' { cell.to_string() } else { cell.replace(',', ".") };
+            let text = if decimal_comma { cell.replace(',', ".") } else { cell.to_string() };
             let value = text.parse::<f64>().map_err(|_| format!("line {line}: `{cell}` is no number"))?;
             Ok(value * factor)
         };

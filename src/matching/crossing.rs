@@ -5,9 +5,10 @@ use std::f64::consts::{FRAC_PI_2, TAU};
 
 use nalgebra::{Matrix2, Vector2, Vector3};
 
-use super::curve::{Along, Curve, cubic};
+use super::curve::{Curve, cubic};
 use super::mismatch::Mismatch;
 use super::root::bracketed;
+use super::survey::Along;
 use crate::frame::{Direction, Lab};
 
 /// Rings this close (radians) count as touching, or as lying on each other.

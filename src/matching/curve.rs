@@ -11,10 +11,9 @@ use fearless_simd::prelude::*;
 use nalgebra::Vector3;
 
 use super::Status;
-use super::count;
 use super::fit::Moments;
-use super::meridian::{FEW_SAMPLES, Fan, Hit, Meridians, Place, SAMPLES, azimuths, cos_sin, polar, settle};
-use super::mismatch::{Mismatch, Quadrics, Sample, Stationary};
+use super::meridian::{FEW_SAMPLES, Fan, Hit, Meridians, SAMPLES, azimuths, cos_sin, polar, settle};
+use super::mismatch::{Mismatch, Sample, Stationary};
 use super::seed::seeds;
 use crate::frame::{Direction, Lab, Tangential};
 use crate::number::{self, LANES, Number, Wide, strided, wide};
@@ -49,9 +48,9 @@ impl RingFault {
 pub struct Curve {
     pub(super) frame: Meridians,
     /// t = tan(psi/2) at equally spaced azimuths, the first `count` of them.
-    samples: [f64; SAMPLES],
+    pub(super) samples: [f64; SAMPLES],
     /// (d psi/d phi)/sin psi there: the tangent of the angle between the curve and a circle about the axis.
-    turns: [f64; SAMPLES],
+    pub(super) turns: [f64; SAMPLES],
     count: usize,
 }
 
@@ -459,45 +458,6 @@ impl Curve {
         Some((self.frame.point(t, cos_sin(phi)), self.tangent(t, turn, cos_sin(phi))))
     }
 
-    /// What another mismatch is at the samples.
-    pub(super) fn survey(&self, other: &Mismatch) -> [Along; SAMPLES] {
-        let mut all = [Along::default(); SAMPLES];
-        let fan = self.frame.on_face(other);
-        let k0 = other.k0_signal();
-        match other.quadrics() {
-            Some(field) => dispatch!(number::level(), simd => {
-                self.look_wide(simd, &fan, &field, k0, &mut all[..self.count]);
-            }),
-            None => {
-                let (cos, sin) = azimuths(self.count);
-                for (j, slot) in all[..self.count].iter_mut().enumerate() {
-                    let place = fan.place(self.samples[j], (cos[j], sin[j]));
-                    *slot = Along::new(&place, &other.sample(place.q), k0, self.turns[j]);
-                    if place.forward <= 0.0 {
-                        slot.value = f64::NAN;
-                    }
-                }
-            }
-        }
-        count::add(self.count);
-        all
-    }
-
-    #[inline(always)]
-    fn look_wide<S: Simd>(&self, simd: S, fan: &Fan, field: &Quadrics, k0: f64, all: &mut [Along]) {
-        let (cos, sin) = azimuths(self.count);
-        let (nowhere, none) = (Wide::splat(simd, f64::NAN), Wide::splat(simd, 0.0));
-        for (n, slots) in all.as_chunks_mut::<LANES>().0.iter_mut().enumerate() {
-            let j = n * LANES;
-            let place = fan.place(wide(simd, &self.samples, j), (wide(simd, cos, j), wide(simd, sin, j)));
-            let along = Along::new(&place, &field.sample(place.q), k0, wide(simd, &self.turns, j));
-            let value = place.forward.simd_gt(none).select(along.value, nowhere);
-            for (l, slot) in slots.iter_mut().enumerate() {
-                *slot = Along { value: value[l], slope: along.slope[l], scale: along.scale[l] };
-            }
-        }
-    }
-
     /// d point/d phi = sin psi (round + turn d point/d psi).
     fn tangent(&self, t: f64, turn: f64, (cos, sin): (f64, f64)) -> Vector3<f64> {
         let Meridians { axis, across: [first, second] } = &self.frame;
@@ -583,38 +543,6 @@ impl Curve {
         // t' = t turn is nearly linear: up to x + d, where it is zero, t grows by half of t' d
         let step = TAU / self.count as f64;
         t + 0.5 * t * turn * step * turn / (self.turns[here] - self.turns[next])
-    }
-}
-
-/// Another mismatch along a curve.
-#[derive(Debug, Clone, Copy, Default)]
-pub(super) struct Along<T = f64> {
-    /// Delta_k of the other process, rad/m: negative inside the other ring.
-    pub value: T,
-    /// Its change per radian of azimuth.
-    pub slope: T,
-    /// Size of its gradient, rad/m per radian of direction: near the other ring, value/scale is the angle off it.
-    pub scale: T,
-}
-
-impl<T: Number> Along<T> {
-    /// On a curve that turns outwards by `turn` from a circle about the axis.
-    #[inline(always)]
-    fn new(place: &Place<T>, here: &Sample<T>, k0: f64, turn: T) -> Self {
-        let [gu, gv] = here.slope;
-        let swing = gu * place.round.u + gv * place.round.v;
-        let rise = gu * place.out.u + gv * place.out.v;
-        // the gradient k0 (g_u u + g_v v) less its part along the direction, d.gradient = g.q
-        let inward = gu * place.q.u + gv * place.q.v;
-        let across = (gu * gu + gv * gv) * (k0 * k0) - inward * inward;
-        Self { value: here.value, slope: (swing + turn * rise) * place.sin, scale: across.root() }
-    }
-}
-
-impl Along {
-    /// Whether the other ring is nearer than an angle (radians).
-    pub fn within(&self, angle: f64) -> bool {
-        self.value.abs() < angle * self.scale
     }
 }
 

@@ -18,6 +18,7 @@ mod ring;
 mod root;
 mod seed;
 mod spread;
+mod survey;
 mod target;
 mod tuning;
 

@@ -78,15 +78,7 @@ impl<'a> Facts<'a> {
 
     /// The tuning turn that brings a changed crystal back to the watched angle: change in radians.
     pub fn repair(&self, changed: &Crystal, watched: Watched) -> Option<f64> {
-        let question = Tuning {
-            crystal: changed.clone(),
-            photons: self.photons,
-            fixed_signal: self.setup.signals.fixed(),
-            interaction: self.setup.interaction,
-            target: watched.target(),
-            actuator: None,
-        };
-        let tuned = tune(&question).ok()?;
+        let tuned = tune(&self.question(changed, watched, None)).ok()?;
         let turn = tuned.turns.first()?;
         let now = match tuned.actuator {
             Actuator::CrossTilt => changed.orientation.cross_tilt,
@@ -97,15 +89,19 @@ impl<'a> Facts<'a> {
 
     /// The temperature, degrees Celsius, that brings a changed crystal back to the watched angle.
     pub fn heat(&self, changed: &Crystal, watched: Watched) -> Option<f64> {
-        let question = Tuning {
+        let question = self.question(changed, watched, Some(Actuator::Temperature));
+        Some(tune(&question).ok()?.turns.first()?.setting)
+    }
+
+    fn question(&self, changed: &Crystal, watched: Watched, actuator: Option<Actuator>) -> Tuning {
+        Tuning {
             crystal: changed.clone(),
             photons: self.photons,
             fixed_signal: self.setup.signals.fixed(),
             interaction: self.setup.interaction,
             target: watched.target(),
-            actuator: Some(Actuator::Temperature),
-        };
-        Some(tune(&question).ok()?.turns.first()?.setting)
+            actuator,
+        }
     }
 
     /// In which light rings are as thick as the sheet says.
